@@ -1,0 +1,95 @@
+"""Wrong input: what it says, and where it points.
+
+Three kinds of trouble are kept apart everywhere in the package. Wrong input raises
+:class:`DiscrimError`, with the place, what was found, what is allowed and what to do. A numerical
+misfortune is a status in a record. A property of the data is a finding in the results.
+"""
+
+from __future__ import annotations
+
+import difflib
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where in the user's files something stands.
+
+    Attributes
+    ----------
+    file : name of the file as the user gave it ("" when the text did not come from a file)
+    line : line number, from 1; 0 when not known
+    column : first character of the span on that line, from 1; 0 when not known
+    length : number of characters to underline
+    text : the whole line (or the text that was parsed), for display
+    what : the thing in words, for example ``mechanism "dual site", step ads_A``
+    """
+
+    file: str = ""
+    line: int = 0
+    column: int = 0
+    length: int = 1
+    text: str = ""
+    what: str = ""
+
+    def __str__(self) -> str:
+        head = self.file
+        if self.line:
+            head += f", line {self.line}" if head else f"line {self.line}"
+        if self.what:
+            head += f", {self.what}" if head else self.what
+        return head
+
+
+class DiscrimError(Exception):
+    """The user's input is wrong. The message is complete: place, found, allowed, what to do.
+
+    Parameters
+    ----------
+    says : what is wrong, one short clause
+    place : where; its text line is shown with the span underlined
+    do : what to do about it, a full sentence or two
+    """
+
+    def __init__(self, says: str, *, place: Place | None = None, do: str = "") -> None:
+        self.says = says
+        self.place = place
+        self.do = do
+        super().__init__(self.message())
+
+    def message(self) -> str:
+        lines = []
+        head = str(self.place) if self.place is not None else ""
+        lines.append(f"{head}: {self.says}" if head else self.says)
+        if self.place is not None and self.place.text:
+            text, column = _clip(self.place.text, self.place.column)
+            lines.append("    " + text)
+            if column:
+                width = max(1, min(self.place.length, len(text) - column + 1))
+                lines.append("    " + " " * (column - 1) + "^" * width)
+        if self.do:
+            lines.append(self.do)
+        return "\n".join(lines)
+
+    def at(self, place: Place) -> DiscrimError:
+        """The same complaint, at a place that the raiser could not know."""
+        return type(self)(self.says, place=place, do=self.do)
+
+
+def _clip(text: str, column: int, width: int = 90) -> tuple[str, int]:
+    """At most ``width`` characters of a line around ``column``, printable, tabs made single."""
+    clean = "".join(ch if ch.isprintable() else " " for ch in text)
+    if len(clean) <= width:
+        return clean, column
+    start = max(0, min(column - 1 - width // 3, len(clean) - width)) if column else 0
+    cut = clean[start : start + width]
+    lead = "… " if start else ""
+    tail = " …" if start + width < len(clean) else ""
+    return lead + cut + tail, (column - start + len(lead)) if column else 0
+
+
+def nearest(word: str, known: Iterable[str]) -> str:
+    """A hint such as ``did you mean "units"?``, or an empty string when nothing is near."""
+    found = difflib.get_close_matches(word, list(known), n=1, cutoff=0.6)
+    return f'Did you mean "{found[0]}"?' if found else ""

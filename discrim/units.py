@@ -1,0 +1,1 @@
+"""Placeholder interface; see the module's owner."""
