@@ -1,0 +1,242 @@
+"""The terminal: the verdict first, then why, then the numbers; 80 columns."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from discrim.report import read, tables
+from discrim.report.content import Answer, Content, Law, build, law
+from discrim.report.numbers import factor, number
+from discrim.report.paper import WIDTH, Paper
+from discrim.report.read import Document
+
+#: Columns that only the HTML report shows.
+_WIDE = ("Law", "RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
+
+
+def summary(document: Document, *, width: int = WIDTH, colour: bool = False) -> str:
+    """What ``weigh`` and ``report`` print: verdicts, why, the candidates, the constants.
+
+    Parameters
+    ----------
+    document : as saved in ``evidence.json``
+    width : characters a line
+    colour : whether emphasis is written as terminal codes
+    """
+    content = build(document)
+    paper = Paper(width=width, colour=colour)
+    paper.say(content.title)
+    paper.say(content.scope)
+    for answer in content.answers:
+        _answer(paper, answer)
+    if not content.answers:
+        paper.blank()
+        paper.say("The study asks no question.")
+    if content.problems:
+        paper.heading("Not computed")
+        paper.bullets(content.problems)
+    _findings(paper, content)
+    _candidates(paper, content)
+    _constants(paper, content)
+    if content.cautions:
+        paper.heading("Before you act on this")
+        paper.bullets(content.cautions)
+    if content.not_checked:
+        paper.heading("Not checked")
+        paper.bullets(content.not_checked)
+    return str(paper)
+
+
+def verdicts(document: Document, *, width: int = WIDTH) -> str:
+    """One line or two for each question, for ``--quiet``."""
+    paper = Paper(width=width)
+    for answer in build(document).answers:
+        paper.ends(answer.asks, answer.verdict)
+    return str(paper) if paper.lines else ""
+
+
+def _answer(paper: Paper, answer: Answer) -> None:
+    paper.blank()
+    paper.ends(answer.asks, answer.verdict.upper())
+    paper.say(answer.sentence, indent=2)
+    if answer.why:
+        paper.blank()
+        paper.say("Why", indent=2)
+        paper.bullets(answer.why, indent=4)
+    if answer.settle:
+        paper.blank()
+        paper.say("What would settle it", indent=2)
+        paper.bullets(answer.settle, indent=4)
+    if answer.facts:
+        paper.blank()
+        paper.pairs(answer.facts)
+
+
+def _findings(paper: Paper, content: Content) -> None:
+    lines = list(content.lockstep)
+    lines += [f"{name}: {words}" for name, words in content.trade_offs]
+    if lines:
+        paper.heading("Conditioning of the runs")
+        paper.bullets(lines)
+    warnings = [
+        f"{where}: {says}" if where else says
+        for severity, where, says in content.findings
+        if severity == "warning"
+    ]
+    if warnings:
+        paper.heading("Warnings")
+        paper.bullets(warnings)
+
+
+def _candidates(paper: Paper, content: Content) -> None:
+    if content.candidates is None:
+        return
+    paper.heading("Candidates")
+    table = content.candidates
+    paper.table(table, drop=(*_WIDE, "Remark"))
+    if "Remark" in table.heads:
+        i = table.heads.index("Remark")
+        notes = [f"{row[0]}: {row[i]}" for row in table.rows if row[i]]
+        paper.blank()
+        paper.bullets(notes)
+    laws = [item for item in content.laws if item.text]
+    if len(laws) > 6:
+        laws = [item for item in laws if item.outcome == "stands"]
+    if laws:
+        paper.heading("Rate laws")
+        for item in laws:
+            paper.say(item.name, indent=2)
+            paper.say(item.text, indent=4, hang=8)
+
+
+def _constants(paper: Paper, content: Content) -> None:
+    standing = {item.name for item in content.laws if item.outcome == "stands"}
+    shown = [t for t in content.constants if t.title in standing] or list(content.constants)
+    for table in shown[:3]:
+        paper.heading(f"Constants, {table.title}")
+        paper.turned(table, drop=("Remark",))
+    if len(shown) > 3:
+        paper.say(f"Constants of {len(shown) - 3} more candidates are in the report.", indent=2)
+    if shown:
+        paper.blank()
+        paper.say(
+            f"Intervals at {content.level}; the reconciled one carries the verdicts.", indent=2
+        )
+
+
+def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = False) -> str:
+    """What ``derive`` prints: each law, how it follows from the steps, what is assumed."""
+    paper = Paper(width=width, colour=colour)
+    for candidate in candidates:
+        item = law(candidate)
+        paper.heading(item.name)
+        _law(paper, item)
+    shared = _shared(candidates)
+    if shared:
+        paper.heading("Same law")
+        paper.bullets(shared)
+    return str(paper)
+
+
+def _law(paper: Paper, item: Law) -> None:
+    paper.say(item.text, indent=2, hang=6)
+    if item.latex:
+        paper.blank()
+        paper.say("LaTeX", indent=2)
+        paper.say(item.latex, indent=4)
+    if item.step_text and item.step_text != item.text:
+        paper.blank()
+        paper.say("In the constants of the steps", indent=2)
+        paper.say(item.step_text, indent=4, hang=8)
+    _list(paper, "Constants that only occur together", [
+        f"{name} = {definition}" + (f" ({words})" if words else "")
+        for name, definition, words in item.combinations
+    ])  # fmt: skip
+    if item.steps:
+        paper.blank()
+        paper.say("Steps", indent=2)
+        paper.pairs(item.steps, indent=4)
+    if item.derivation:
+        paper.blank()
+        paper.say("Derivation", indent=2)
+        for words, formula, _ in item.derivation:
+            paper.bullets([words] if words else [], indent=4)
+            if formula:
+                paper.say(formula, indent=8, hang=12)
+    _list(paper, "Assumptions", item.assumptions)
+    _list(paper, "Conventions", item.conventions)
+    _list(paper, "Notes", item.notes)
+    _list(paper, "Source", [item.source] if item.source else [])
+
+
+def _list(paper: Paper, heading: str, lines: Sequence[str]) -> None:
+    if lines:
+        paper.blank()
+        paper.say(heading, indent=2)
+        paper.bullets(lines, indent=4)
+
+
+def _shared(candidates: Sequence[Document]) -> list[str]:
+    out = []
+    for c in candidates:
+        same = read.texts(c, "same_law_as")
+        if same:
+            names = " and ".join(f"“{n}”" for n in same)
+            out.append(f"“{read.text(c, 'name')}” is the same law as {names}")
+    return out
+
+
+def check(document: Document, *, width: int = WIDTH, colour: bool = False) -> str:
+    """What ``check`` prints: what the runs can and cannot decide, then how each law is conditioned.
+
+    Parameters
+    ----------
+    document : with the keys ``title``, ``runs``, ``laws``, ``findings``, ``can_decide``,
+        ``cannot_decide``
+    """
+    runs = read.part(document, "runs")
+    paper = Paper(width=width, colour=colour)
+    paper.say(read.text(document, "title", "Untitled study"))
+    n = int(read.value(runs, "n") or 0)
+    paper.say(f"{n} runs, before any fit")
+    for heading, key in (
+        ("These runs cannot decide", "cannot_decide"),
+        ("These runs can decide", "can_decide"),
+    ):
+        lines = read.texts(document, key)
+        if lines:
+            paper.heading(heading)
+            paper.bullets(lines)
+    lockstep = [read.text(item, "words") for item in read.records(runs, "lockstep")]
+    if any(lockstep):
+        paper.heading("Lockstep")
+        paper.bullets([line for line in lockstep if line])
+    for item in read.records(document, "laws"):
+        _conditioning(paper, item)
+    warnings = [
+        ": ".join(w for w in (read.text(f, "where"), read.text(f, "says")) if w)
+        for f in read.records(document, "findings")
+    ]
+    if warnings:
+        paper.heading("Findings")
+        paper.bullets(warnings)
+    if read.records(runs, "columns"):
+        paper.heading("Columns")
+        paper.table(tables.columns(runs))
+    return str(paper)
+
+
+def _conditioning(paper: Paper, item: Any) -> None:
+    paper.heading(read.text(item, "name", "unnamed"))
+    if read.text(item, "law"):
+        paper.say(read.text(item, "law"), indent=2, hang=6)
+    paper.pairs([
+        ("condition number", factor(read.value(item, "condition_number"))),
+        ("digits lost", number(read.value(item, "digits_lost"), 2)),
+    ])  # fmt: skip
+    lines = read.texts(item, "words")
+    lines += [read.text(t, "words") for t in read.records(item, "trade_offs")]
+    lines += [read.text(t, "words") for t in read.records(item, "lockstep")]
+    lines += read.texts(item, "trade_offs") + read.texts(item, "lockstep")
+    paper.bullets(list(dict.fromkeys(line for line in lines if line)))
