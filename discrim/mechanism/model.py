@@ -47,6 +47,9 @@ class Mechanism:
     steady : names of the intermediates at steady state ("" elements never occur); None lets
         :func:`discrim.ratelaw.derive.derive` take every species that is neither measured nor a
         reactant or product of the whole
+    overall_equilibrium : name of the constant with which a reversible law is written (its reverse
+        term divided by it), for a known equilibrium of the overall reaction; "" writes the reverse
+        term with a constant of its own, which can be zero
     """
 
     name: str
@@ -62,3 +65,4 @@ class Mechanism:
     formulas: Mapping[str, str] = field(default_factory=dict)
     charges: Mapping[str, int] = field(default_factory=dict)
     place: Place | None = None
+    overall_equilibrium: str = ""

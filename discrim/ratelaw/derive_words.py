@@ -1,0 +1,176 @@
+"""What is printed with every derived law: assumptions, conventions, the lines of the derivation."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import sympy
+from sympy import Rational
+
+from discrim.mechanism.check import net
+from discrim.mechanism.model import Species, Step
+from discrim.ratelaw.derive_network import Network
+from discrim.ratelaw.derive_solve import Monomial, Solution, backward, equilibrium, forward
+from discrim.ratelaw.model import amount
+
+
+def _listed(names: list[str]) -> str:
+    if len(names) == 1:
+        return names[0]
+    return f"{', '.join(names[:-1])} and {names[-1]}"
+
+
+def _steps(names: list[str]) -> str:
+    return f"Step {names[0]} is" if len(names) == 1 else f"Steps {_listed(names)} are"
+
+
+def assumptions(network: Network, solution: Solution) -> tuple[str, ...]:
+    """What is taken for granted of this mechanism, full sentences."""
+    out = []
+    if network.equilibrated:
+        names = [s.name for s in network.equilibrated]
+        so = " (all reversible steps but the limiting one)" if network.taken_as_equilibrated else ""
+        out.append(
+            f"{_steps(names)} quasi-equilibrated: fast in both directions against the rest{so}."
+        )
+    limiting = network.mechanism.limiting
+    if limiting:
+        out.append(f"Step {limiting} is limiting.")
+    if solution.unknowns:
+        names = [s.name for s in solution.unknowns]
+        verb = "is" if len(names) == 1 else "are"
+        out.append(
+            f"{_listed(names)} {verb} at steady state: made as fast as consumed, with an amount "
+            "that is small against that of the reactants."
+            if not network.families
+            else f"{_listed(names)} {verb} at steady state: made as fast as consumed."
+        )
+    one_way = [s.name for s in network.kinetic if not s.reversible]
+    if one_way:
+        out.append(f"{_steps(one_way)} in one direction only, as written.")
+    for family in network.families:
+        if family.kind == "sites":
+            out.append(
+                f"All sites {family.name} are alike and independent: adsorbed species do not "
+                "interact, spread at random, and no others take up sites."
+            )
+        else:
+            forms = _listed([s.name for s in family.weights])
+            out.append(
+                f"The total of {family.name} is constant and shared between {forms}; the amounts "
+                "of the other species are those not bound to it."
+            )
+    for name, others in solution.relations:
+        factors = " ".join(f"K_{n}^{e}" if e != 1 else f"K_{n}" for n, e in others.items()) or "1"
+        out.append(
+            f"The equilibrated steps close a cycle, so that K_{name} = {factors} and is not a "
+            "constant of its own."
+        )
+    if not network.intermediates and len(network.kinetic) > 1:
+        out.append("The steps run side by side and do not influence each other.")
+    return tuple(out)
+
+
+def conventions(network: Network) -> tuple[str, ...]:
+    """How the symbols are to be read, full sentences."""
+    out = [
+        "Mass action: the order of each species in a step is its coefficient; amounts stand for "
+        "activities.",
+        "The rate constant is that of the step as written: for 2 A -> B the consumption of A is "
+        "2 k [A]^2.",
+    ]
+    if network.equilibrated:
+        out.append("An equilibrium constant K is that of its step as written, left to right.")
+    if any(f.kind == "sites" for f in network.families):
+        out.append(
+            "Coverages are fractions of the sites of their kind and sum to 1; rate constants "
+            "include the density of sites."
+        )
+    for family in network.families:
+        if family.kind == "catalyst":
+            out.append(f"The rate is per total {family.name}.")
+    return tuple(out)
+
+
+def _rate_symbolic(step: Step) -> Any:
+    def side(parts: tuple[tuple[Species, int], ...]) -> Any:
+        return sympy.Mul(*(amount(s.name) ** n for s, n in parts))
+
+    ahead = forward(step) * side(step.left)
+    return ahead - backward(step) * side(step.right) if step.reversible else ahead
+
+
+def derivation(network: Network, solution: Solution, rate: Any) -> tuple[tuple[str, Any], ...]:
+    """Balance, equilibria, steady states, elimination, law; coverages stand as amounts."""
+    lines: list[tuple[str, Any]] = []
+    for step in network.kinetic:
+        lines.append((f"Net rate of step {step.name}: {step.text}", _rate_symbolic(step)))
+    for family in network.families:
+        total = sympy.Add(*(w * amount(s.name) for s, w in family.weights.items()))
+        words = (
+            f"Sites {family.name}: vacant and covered fractions sum to 1"
+            if family.kind == "sites"
+            else f"Forms of {family.name}, as fractions of its total, sum to 1"
+        )
+        lines.append((words, sympy.Eq(total, 1, evaluate=False)))
+    for step in network.equilibrated:
+        ratio = sympy.Mul(*(amount(s.name) ** n for s, n in step.right)) / sympy.Mul(
+            *(amount(s.name) ** n for s, n in step.left)
+        )
+        lines.append(
+            (f"Step {step.name} at equilibrium", sympy.Eq(equilibrium(step), ratio, evaluate=False))
+        )
+    lines += _steady_lines(network, solution)
+    lines += _elimination_lines(network, solution)
+    lines.append(("Rate law in the constants of the steps", rate))
+    return tuple(lines)
+
+
+def _steady_lines(network: Network, solution: Solution) -> list[tuple[str, Any]]:
+    held = {s for step in network.equilibrated for s in net(step)}
+    lines = []
+    for species in solution.unknowns:
+        if species in held:
+            lines.append(
+                (
+                    f"{species.name} and what is at equilibrium with it: made as fast as consumed",
+                    None,
+                )
+            )
+            continue
+        balance = sympy.Add(
+            *(net(s).get(species, 0) * _rate_symbolic(s) for s in network.kinetic)
+        )
+        lines.append((f"{species.name} at steady state", sympy.Eq(0, balance, evaluate=False)))
+    return lines
+
+
+def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, Any]]:
+    algebra = solution.algebra
+    lines: list[tuple[str, Any]] = []
+    references = [amount(f.reference.name) for f in network.families]
+    known = {f.reference for f in network.families}
+
+    def value(m: Monomial) -> Any:
+        powers = [s ** Rational(e.numerator, e.denominator) for s, e in m.symbols.items()]
+        powers += [references[k] ** Rational(e.numerator, e.denominator) for k, e in m.v.items()]
+        for u, e in m.u.items():
+            top, bottom = solution.values[u]
+            solved = algebra.expr(top) / algebra.expr(bottom)
+            powers.append(solved ** Rational(e.numerator, e.denominator))
+        return sympy.Mul(*powers)
+
+    for species, m in solution.monomials.items():
+        if species not in known:
+            lines.append(
+                (
+                    f"So for {species.name}",
+                    sympy.Eq(amount(species.name), value(m), evaluate=False),
+                )
+            )
+    for family, total in zip(network.families, solution.totals, strict=True):
+        what = "Vacant sites" if family.kind == "sites" else "Free catalyst, as fraction of all,"
+        words = f"{what} {family.reference.name} from the sum"
+        inverse = 1 / total.expr(algebra)
+        lines.append((words, sympy.Eq(amount(family.reference.name), inverse, evaluate=False)))
+    return lines
