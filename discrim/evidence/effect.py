@@ -1,0 +1,135 @@
+"""The effect of a species or pathway at named conditions, and the law written in terms of it.
+
+effect = (f - f0)/max(f, f0), with f0 the rate when the pathway or species is knocked out: -1 to 1.
+Replacing the constant of the knocked-out term by the effect itself turns every test and interval
+for a constant into one for the effect, with the other constants still nuisances: no ends of
+intervals are ever plugged into one another. The working coordinate is
+
+    T = log(f/f0),   effect = 1 - exp(-T) for T >= 0,   exp(T) - 1 for T < 0,
+
+monotone in the effect and unbounded.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from discrim.reactor.knocked import KnockedOut
+from discrim.reactor.model import Prediction, Predictor
+
+
+def effect_of(t: np.ndarray | float) -> np.ndarray:
+    """Effect from T = log(f/f0)."""
+    t = np.asarray(t, float)
+    with np.errstate(over="ignore"):
+        return np.where(t >= 0, -np.expm1(-np.abs(t)), np.expm1(-np.abs(t)))
+
+
+def t_of(effect: np.ndarray | float) -> np.ndarray:
+    """T from the effect."""
+    e = np.asarray(effect, float)
+    with np.errstate(divide="ignore"):
+        return np.where(e >= 0, -np.log1p(-np.abs(e)), np.log1p(-np.abs(e)))
+
+
+class InEffect:
+    """The same predictor with constant ``psi`` replaced by T, the log of f/f0 at one condition.
+
+    ``sign`` is 1 when the term can only add to the rate, -1 when it can only lower it, 0 when both.
+    """
+
+    def __init__(
+        self,
+        inner: Predictor,
+        psi: int,
+        knocked: KnockedOut,
+        condition: np.ndarray,
+        sign: int,
+        logarithmic: bool,
+    ) -> None:
+        self.inner, self.psi, self.knocked = inner, psi, knocked
+        self.condition, self.sign, self.logarithmic = condition, sign, logarithmic
+        self.names = tuple("effect" if j == psi else n for j, n in enumerate(inner.names))
+        self.lower = inner.lower.copy()
+        self.upper = inner.upper.copy()
+        self.lower[psi] = 0.0 if sign > 0 else -40.0
+        self.upper[psi] = 0.0 if sign < 0 else 40.0
+        self.linear = np.zeros(len(inner.names), bool)
+        self.scale = inner.scale.copy()
+        self.scale[psi] = 0.1
+        self.starts = np.zeros((0, len(inner.names)))
+
+    def to_inner(self, theta: np.ndarray) -> np.ndarray:
+        """Constants of the inner predictor, shape (S, p): solves f = exp(T) f0 for psi."""
+        out = theta.copy()
+        t = theta[:, self.psi]
+        out[:, self.psi] = 0.0
+        if self.logarithmic:
+            # order: log f is linear in psi, one step is exact
+            out[:, self.psi] = 1.0
+            f, f0, _, _ = self.knocked.gradients(out, self.condition)
+            with np.errstate(divide="ignore", invalid="ignore"):
+                out[:, self.psi] = t / np.log(f / f0)
+            return out
+        ratio = np.exp(t)
+        done = t == 0
+        for _ in range(60):
+            f, f0, g, _ = self.knocked.gradients(out, self.condition)
+            slope = g[:, self.psi]
+            with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+                up = (ratio * f0 - f) / slope
+                # inhibition: 1/f is close to linear in psi
+                down = (1.0 / (ratio * f0) - 1.0 / f) * (-(f**2) / slope)
+                step = np.where(t >= 0, up, down)
+            step = np.where(np.isfinite(step), step, 0.0)
+            new = np.maximum(out[:, self.psi] + step, 0.0)
+            change = np.abs(new - out[:, self.psi])
+            out[:, self.psi] = np.where(done, out[:, self.psi], new)
+            done |= change <= 1e-14 * np.abs(new)
+            if done.all():
+                break
+        return out
+
+    def from_inner(self, theta: np.ndarray) -> np.ndarray:
+        """The other way, shape (S, p)."""
+        out = theta.copy()
+        e = self.knocked.effect(theta, self.condition[None])[:, 0]
+        out[:, self.psi] = np.clip(t_of(e), self.lower[self.psi], self.upper[self.psi])
+        return out
+
+    def _chain(self, inner_theta: np.ndarray, t: np.ndarray) -> np.ndarray:
+        """d(inner constants)/d(T, others): row of psi, shape (S, p)."""
+        f, f0, g, g0 = self.knocked.gradients(inner_theta, self.condition)
+        ratio = np.exp(t)
+        slope = g[:, self.psi]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            row = -(g - ratio[:, None] * g0) / slope[:, None]
+            row[:, self.psi] = ratio * f0 / slope
+        return np.where(np.isfinite(row), row, 0.0)
+
+    def predict(
+        self,
+        theta: np.ndarray,
+        conditions: np.ndarray,
+        *,
+        constants: bool = True,
+        conditions_too: bool = False,
+        both: bool = False,
+    ) -> Prediction:
+        inner = self.to_inner(theta)
+        pred = self.inner.predict(
+            inner, conditions, constants=constants, conditions_too=conditions_too, both=both
+        )
+        if not (constants or both):
+            return pred
+        row = self._chain(inner, theta[:, self.psi])
+        by_constants, by_both = pred.by_constants, pred.by_both
+        if by_constants is not None:
+            own = by_constants[:, :, self.psi].copy()
+            by_constants = by_constants + own[..., None] * row[:, None, :]
+            by_constants[:, :, self.psi] = own * row[:, None, self.psi]
+        if by_both is not None:
+            own_b = by_both[..., self.psi].copy()
+            by_both = by_both + own_b[..., None] * row[:, None, None, :]
+            by_both[..., self.psi] = own_b * row[:, None, None, self.psi]
+        return Prediction(pred.values, by_constants, pred.by_conditions, by_both)

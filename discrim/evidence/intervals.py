@@ -1,0 +1,351 @@
+"""Intervals for one constant, side by side, each end saying how it was found.
+
+linearised : Wald, estimate -+ t s.e. (what most programs print)
+profile : values whose restricted objective is not too far above the minimum (Bates & Watts 1988, ch. 6)
+reconciled : values that the reconciled score test accepts; a two-sided set with a guard, because the
+    score alone also vanishes far from the optimum (evidence: `score`)
+guaranteed : see :mod:`discrim.evidence.guaranteed`
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from scipy import stats
+
+from discrim.evidence.curve import Curve, Points
+from discrim.fit.fit import Fit
+from discrim.fit.measurements import Scale
+
+CROSSED, BOUND, OPEN, FAILED = "crossed", "bound", "open", "failed"
+# the guard of the reconciled set: the overall fit may be rejected at this level only
+GUARD = 0.01
+
+
+@dataclass(frozen=True, slots=True)
+class Side:
+    """One end: its value (infinite when open) and how it was found."""
+
+    value: float
+    end: str
+
+
+@dataclass(frozen=True, slots=True)
+class Interval:
+    """A set of values: its hull, its pieces, and words when something is to be said.
+
+    ``empty`` is True when no value is accepted; ``low`` and ``high`` are then nan.
+    """
+
+    kind: str
+    low: Side
+    high: Side
+    pieces: tuple[tuple[float, float], ...] = ()
+    empty: bool = False
+    note: str = ""
+
+
+def nothing(kind: str, note: str) -> Interval:
+    """No interval of this kind, with the reason."""
+    nan = Side(float("nan"), FAILED)
+    return Interval(kind, nan, nan, note=note)
+
+
+def standard_errors(fit: Fit) -> np.ndarray:
+    """Standard errors of the constants from the SVD of the scaled Jacobian, shape (p,).
+
+    A constant at a bound is held there; its own standard error is that of the free fit's column.
+    Infinite for constants that these runs do not determine.
+    """
+    jac = fit.jacobian
+    n, p = jac.shape
+    norms = np.sqrt((jac**2).sum(axis=0))
+    out = np.full(p, np.inf)
+    use = norms > 0
+    if not use.any() or not np.isfinite(jac).all():
+        return out
+    u, s, vt = np.linalg.svd(jac[:, use] / norms[use], full_matrices=False)
+    if n < use.sum():
+        return out
+    tiny = s <= 1e-14 * s[0]
+    with np.errstate(divide="ignore"):
+        var = ((vt / np.where(tiny, 0.0, s)[:, None]) ** 2).sum(axis=0)
+    scale2 = fit.scale2 if _scale_from_fit(fit) else 1.0
+    out[use] = np.sqrt(var * scale2) / norms[use]
+    return out
+
+
+def _scale_from_fit(fit: Fit) -> bool:
+    """True when the whitened residuals still carry an unknown scale."""
+    return fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions
+
+
+def reference_df(fit: Fit) -> float:
+    """Degrees of freedom of the t reference: residual, of the replicates, or infinite."""
+    if fit.data.scale is Scale.ESTIMATED:
+        return float(fit.degrees_of_freedom)
+    if fit.data.scale is Scale.REPLICATES:
+        return float(fit.data.scale_df)
+    return float("inf")
+
+
+def quantile(fit: Fit, level: float) -> float:
+    """Two-sided t or normal quantile."""
+    df = reference_df(fit)
+    if df <= 0:
+        return float("inf")
+    q = 0.5 + level / 2.0
+    return float(stats.norm.ppf(q) if np.isinf(df) else stats.t.ppf(q, df))
+
+
+def linearised(fit: Fit, psi: int, se: float, level: float) -> Interval:
+    """Estimate -+ quantile times standard error; not cut at the bounds, so that its failure shows."""
+    half = quantile(fit, level) * se
+    if not np.isfinite(half):
+        return Interval(
+            "linearised",
+            Side(-np.inf, OPEN),
+            Side(np.inf, OPEN),
+            note="not determined by these runs",
+        )
+    x = float(fit.theta[psi])
+    return Interval("linearised", Side(x - half, CROSSED), Side(x + half, CROSSED))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Along:
+    """Both curve-based intervals of one constant, its one-sided bounds, and the raw points.
+
+    ``upper_one_sided`` and ``lower_one_sided``: ends of the hull of values not rejected by the
+    one-sided reconciled test at 1 - level, used by verdicts.
+    """
+
+    profile: Interval
+    reconciled: Interval
+    lower_one_sided: Side
+    upper_one_sided: Side
+    points: Points
+    lower_objective: float
+
+
+def along(
+    fit: Fit,
+    curve: Curve,
+    level: float,
+    *,
+    se: float,
+    estimate: float | None = None,
+    lower: float | None = None,
+    upper: float | None = None,
+) -> Along:
+    """Profile and reconciled intervals of the constant of ``curve``.
+
+    ``estimate``, ``lower``, ``upper`` default to those of the constant in the fit.
+    """
+    psi = curve.psi
+    x = float(fit.theta[psi]) if estimate is None else estimate
+    lo = float(fit.predictor.lower[psi]) if lower is None else lower
+    hi = float(fit.predictor.upper[psi]) if upper is None else upper
+    typical = float(fit.predictor.scale[psi])
+    grid = _grid(x, se, lo, hi, typical)
+    pts = curve.at(grid)
+    free = fit.objective
+    lowest = float(np.nanmin(pts.objective)) if np.isfinite(pts.objective).any() else free
+    base = min(free, lowest)
+    tests = _Acceptance(fit, base, level, lo)
+
+    def refine(accept: Callable[[Points], np.ndarray]) -> tuple[Interval, Side, Side]:
+        return _pieces(curve, pts, accept, lo, hi, x)
+
+    profile, *_ = refine(tests.profile)
+    recon, *_ = refine(tests.reconciled)
+    _, _, high1 = refine(tests.not_too_high)
+    _, low1, _ = refine(tests.not_too_low)
+    return Along(
+        _named(profile, "profile"),
+        _named(recon, "reconciled", tests, pts),
+        low1,
+        high1,
+        pts,
+        lowest,
+    )
+
+
+def _named(
+    interval: Interval, kind: str, tests: _Acceptance | None = None, pts: Points | None = None
+) -> Interval:
+    note = interval.note
+    if interval.empty and tests is not None and pts is not None:
+        if not tests.fits_somewhere(pts):
+            note = "empty: the law is rejected by these runs at every value (lack of fit)"
+        else:
+            note = "empty: accepted nowhere on the values tried; the estimate is on the edge"
+    elif len(interval.pieces) > 1:
+        note = f"{len(interval.pieces)} separate pieces; the hull is given"
+    return Interval(kind, interval.low, interval.high, interval.pieces, interval.empty, note)
+
+
+class _Acceptance:
+    """Margins (positive = accepted) of the sets of values, as functions of the points."""
+
+    def __init__(self, fit: Fit, base: float, level: float, lower: float) -> None:
+        self.base = base
+        self.lower = lower
+        self.known = fit.data.scale is not Scale.ESTIMATED
+        alpha = 1.0 - level
+        df = reference_df(fit)
+        self.limit = quantile(fit, level) ** 2
+        self.s2 = fit.scale2 if _scale_from_fit(fit) else 1.0
+        if _scale_from_fit(fit) and fit.degrees_of_freedom > 0:
+            self.s2 = base / fit.degrees_of_freedom
+        self.df = df
+        n, p = fit.n, fit.p
+        # a chi-squared limit on Q of a restricted fit; void where the scale is unknown
+        self.guard = (
+            float(stats.chi2.isf(GUARD, max(n - (p - 1), 1)))
+            if fit.data.scale is Scale.STATED
+            else np.inf
+        )
+        spend = GUARD if np.isfinite(self.guard) else 0.0
+        self.two = float(stats.norm.isf(max((alpha - spend), alpha / 2) / 2))
+        self.one = float(stats.norm.isf(max(alpha - spend, alpha / 2)))
+
+    def _q_ok(self, pts: Points) -> np.ndarray:
+        with np.errstate(invalid="ignore"):
+            margin = self.guard - pts.objective
+        return np.where(np.isfinite(pts.objective), margin, -np.inf)
+
+    def profile(self, pts: Points) -> np.ndarray:
+        rise = (pts.objective - self.base) / self.s2 if self.s2 > 0 else pts.objective
+        return np.where(np.isfinite(rise), self.limit - rise, -np.inf)
+
+    def reconciled(self, pts: Points) -> np.ndarray:
+        # on a lower bound only evidence for a larger value can exclude the bound itself
+        z = np.where(pts.values <= self.lower, np.maximum(pts.z, 0.0), pts.z)
+        m = self.two - np.abs(z)
+        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
+        # nan z with an unknown scale: no degrees of freedom, nothing is excluded
+        return self._with_guard(m, pts)
+
+    def not_too_high(self, pts: Points) -> np.ndarray:
+        m = self.one + pts.z
+        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
+        return self._with_guard(m, pts)
+
+    def not_too_low(self, pts: Points) -> np.ndarray:
+        m = self.one - pts.z
+        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
+        return self._with_guard(m, pts)
+
+    def _with_guard(self, m: np.ndarray, pts: Points) -> np.ndarray:
+        if not np.isfinite(self.guard):
+            return m
+        scaled = self._q_ok(pts) / max(self.guard, 1.0)
+        return np.minimum(m, np.where(np.isfinite(scaled), 10.0 * scaled, -np.inf))
+
+    def fits_somewhere(self, pts: Points) -> bool:
+        return bool((self._q_ok(pts) > 0).any())
+
+
+def _grid(x: float, se: float, lo: float, hi: float, typical: float) -> np.ndarray:
+    """Values to try: near the estimate in standard errors, far from it in decades."""
+    parts = [np.array([x])]
+    if np.isfinite(se) and se > 0:
+        k = np.array([0.25, 0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0, 20.0])
+        parts += [x + se * k, x - se * k]
+    size = max(abs(x), typical if np.isfinite(typical) else 0.0, 1e-300)
+    if lo >= 0:
+        parts.append(size * np.logspace(-6, 6, 25))
+        if x > 0:
+            parts.append(x * np.array([0.5, 0.8, 0.9, 0.95, 1.05, 1.1, 1.25, 2.0]))
+    else:
+        far = size * np.logspace(-1, 2, 7)
+        parts += [x + far, x - far]
+    if np.isfinite(lo):
+        parts.append(np.array([lo]))
+    if np.isfinite(hi):
+        parts.append(np.array([hi]))
+        if np.isfinite(lo):
+            parts.append(lo + (hi - lo) * np.linspace(0.05, 0.95, 10))
+    grid = np.unique(np.clip(np.concatenate(parts), lo, hi))
+    # values closer than rounding to one another add nothing
+    keep = np.concatenate([[True], np.diff(grid) > 1e-9 * np.maximum(np.abs(grid[1:]), 1e-300)])
+    return grid[keep]
+
+
+def _pieces(
+    curve: Curve,
+    pts: Points,
+    accept: Callable[[Points], np.ndarray],
+    lo: float,
+    hi: float,
+    x: float,
+) -> tuple[Interval, Side, Side]:
+    """Accepted pieces on the grid, their ends refined all together by a bracketed secant."""
+    v = pts.values
+    m = accept(pts)
+    yes = m > 0
+    if not yes.any():
+        nan = Side(float("nan"), FAILED)
+        return Interval("", nan, nan, empty=True), nan, nan
+    change = np.flatnonzero(yes[1:] != yes[:-1])
+    ends = _refine(curve, accept, v[change], v[change + 1], m[change], m[change + 1])
+    first = [-np.inf] if yes[0] else []
+    last = [np.inf] if yes[-1] else []
+    marks = [*first, *ends.tolist(), *last]
+    pieces = tuple((marks[k], marks[k + 1]) for k in range(0, len(marks) - 1, 2))
+
+    def side(value: float, edge: float) -> Side:
+        if np.isinf(value):
+            return Side(edge, BOUND) if np.isfinite(edge) else Side(value, OPEN)
+        return Side(value, CROSSED)
+
+    low, high = side(pieces[0][0], lo), side(pieces[-1][1], hi)
+    shown = tuple(
+        (max(a, lo) if np.isfinite(lo) else a, min(b, hi) if np.isfinite(hi) else b)
+        for a, b in pieces
+    )
+    return Interval("", low, high, shown), low, high
+
+
+def _refine(
+    curve: Curve,
+    accept: Callable[[Points], np.ndarray],
+    a: np.ndarray,
+    b: np.ndarray,
+    fa: np.ndarray,
+    fb: np.ndarray,
+) -> np.ndarray:
+    """Where the margin changes sign between a and b, all brackets as one batch (Illinois method)."""
+    if not len(a):
+        return a
+    a, b = a.astype(float).copy(), b.astype(float).copy()
+    fa, fb = _tame(fa), _tame(fb)
+    x = 0.5 * (a + b)
+    for k in range(24):
+        with np.errstate(divide="ignore", invalid="ignore"):
+            x = (a * fb - b * fa) / (fb - fa)
+        # bisection at first where the bracket spans decades, and whenever the secant leaves it
+        wide = (k < 3) & (np.abs(b - a) > 0.5 * (np.abs(a) + np.abs(b)))
+        geo = (a > 0) & (b > 0)
+        mid = np.where(geo, np.sqrt(np.abs(a * b)), 0.5 * (a + b))
+        inside = (x > np.minimum(a, b)) & (x < np.maximum(a, b))
+        x = np.where(wide | ~inside, mid, x)
+        fx = _tame(accept(curve.at(x, careful=False)))
+        same = (fx > 0) == (fa > 0)
+        fb = np.where(same, fb * np.where(k > 2, 0.5, 1.0), fx)
+        fa = np.where(same, fx, fa * np.where(k > 2, 0.5, 1.0))
+        b = np.where(same, b, x)
+        a = np.where(same, x, a)
+        if (np.abs(b - a) <= 1e-7 * np.maximum(np.abs(a), np.abs(b))).all():
+            break
+        if (np.abs(fx) <= 1e-7).all():
+            break
+    return x
+
+
+def _tame(m: np.ndarray) -> np.ndarray:
+    """Margins without infinities, so that a secant can be drawn."""
+    return np.clip(np.nan_to_num(m, nan=-1e3, posinf=1e3, neginf=-1e3), -1e3, 1e3)

@@ -1,0 +1,184 @@
+"""The reconciled score test, on which verdicts rest.
+
+For a constant psi with nuisance constants lambda, at the restricted optimum and the reconciled
+conditions, with whitened residual r = L^-1 e and sensitivities G = L^-1 df/dtheta,
+
+    S_psi.lambda = g' r,   I_psi.lambda = g' g,   z = g' r / sqrt(g' g),
+
+where g is the column of psi with its projection on the nuisance columns taken off. K = z^2 is
+chi-squared with one degree of freedom whether or not the runs identify the constants (Kleibergen,
+Econometrica 70 (2002) 1781; 73 (2005) 1103): the sensitivities at the reconciled conditions are
+asymptotically independent of the residuals, which those at the printed conditions are not.
+
+Every form is returned as an equivalent standard normal z, so that p = Phi(-z) one-sided.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy import stats
+from scipy.special import log_ndtr, ndtri_exp
+
+from discrim.fit.engine import Problem, Solution
+from discrim.fit.measurements import Scale
+
+# columns whose part outside the nuisance space is smaller than this carry only rounding error
+NO_INFORMATION = 1e-9
+RANK = 1e-10
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Score:
+    """One score per batch row.
+
+    Attributes
+    ----------
+    z : shape (S,) equivalent standard normal; nan where it cannot be tested
+    raw : shape (S,) the statistic before the conversion (z, or t)
+    information : shape (S,) square root of I_psi.lambda relative to that of psi alone: the fraction
+        of the sensitivity that is not in lockstep with the nuisance constants
+    df : degrees of freedom of the reference, inf for a normal
+    """
+
+    z: np.ndarray
+    raw: np.ndarray
+    information: np.ndarray
+    df: float
+
+
+def basis(columns: np.ndarray) -> np.ndarray:
+    """Orthonormal bases of the column spaces, shape (S, N, k); null directions are zero columns."""
+    if columns.shape[2] == 0:
+        return columns
+    norms = np.sqrt(np.einsum("snk,snk->sk", columns, columns))
+    scaled = columns / np.where(norms > 0, norms, 1.0)[:, None, :]
+    scaled = np.where(np.isfinite(scaled), scaled, 0.0)
+    u, s, _ = np.linalg.svd(scaled, full_matrices=False)
+    keep = s > RANK * np.maximum(s[:, :1], 1e-300)
+    return u * keep[:, None, :]
+
+
+def without(space: np.ndarray, x: np.ndarray) -> np.ndarray:
+    """x, shape (S, N), with its projection on the orthonormal ``space`` taken off (twice)."""
+    if space.shape[2] == 0:
+        return x
+    for _ in range(2):
+        x = x - np.einsum("snk,sk->sn", space, np.einsum("snk,sn->sk", space, x))
+    return x
+
+
+def to_normal(statistic: np.ndarray, df: float) -> np.ndarray:
+    """The standard normal value with the same tail probability as a t value with ``df``."""
+    if not np.isfinite(df):
+        return statistic
+    a = np.abs(statistic)
+    log_tail = stats.t.logsf(a, df)
+    log_tail = np.minimum(log_tail, np.log(0.5))
+    z = -ndtri_exp(log_tail)
+    return np.where(np.isnan(statistic), np.nan, np.sign(statistic) * np.maximum(z, 0.0))
+
+
+def p_one_sided(z: float) -> float:
+    """Upper-tail p-value of a standard normal."""
+    return float(np.exp(log_ndtr(-z)))
+
+
+def score(
+    problem: Problem,
+    solution: Solution,
+    psi: int,
+    *,
+    direction: np.ndarray | None = None,
+) -> Score:
+    """Score of constant ``psi`` at the restricted optima in ``solution``.
+
+    ``direction``, shape (S, N) unwhitened change of the predictions, is tested instead of a column
+    of the law when given (then ``psi`` is -1 and every constant is a nuisance).
+    """
+    data = problem.data
+    jac = solution.jacobian
+    p = jac.shape[2]
+    if direction is None:
+        g = jac[:, :, psi]
+        nuisance = np.delete(jac, psi, axis=2)
+    else:
+        from discrim.fit.covariance import Whitener
+
+        g = Whitener(solution.covariance).vector(direction)
+        nuisance = jac
+    space = basis(nuisance)
+    g_perp = without(space, g)
+    size = np.sqrt(np.einsum("sn,sn->s", g_perp, g_perp))
+    whole = np.sqrt(np.einsum("sn,sn->s", g, g))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        information = np.where(whole > 0, size / whole, 0.0)
+        s = np.einsum("sn,sn->s", g_perp, solution.residual)
+        z = np.where(information > NO_INFORMATION, s / size, 0.0)
+    df = np.inf
+    n, p_nuisance = data.n, nuisance.shape[2]
+    if data.scale is Scale.REPLICATES:
+        df = float(data.scale_df)
+    elif data.scale is Scale.ESTIMATED and not problem.with_conditions:
+        # F = (K/1)/((N - p_l - K)/(N - p)) with the scale from the restricted fit
+        df = float(n - p_nuisance - 1)
+        if df <= 0:
+            z = np.full_like(z, np.nan)
+        else:
+            rest = solution.objective - z**2
+            rest = np.where(rest > 1e-15 * solution.objective, rest, np.nan)
+            with np.errstate(divide="ignore", invalid="ignore"):
+                t = z / np.sqrt(rest / df)
+            # an exact fit once psi is free: as decisive as rounding allows
+            t = np.where(np.isnan(rest) & (z != 0), np.sign(z) * 1e8, t)
+            z = np.where((z == 0) & np.isnan(t), 0.0, t)
+    elif problem.joint_scale and direction is None:
+        z = _unknown_scale(problem, solution, psi, g_perp, space, s, size, p)
+    raw = np.where(np.isfinite(solution.objective), z, np.nan)
+    return Score(to_normal(raw, df), raw, information, df)
+
+
+def _unknown_scale(
+    problem: Problem,
+    sol: Solution,
+    psi: int,
+    g_perp: np.ndarray,
+    space: np.ndarray,
+    s: np.ndarray,
+    size: np.ndarray,
+    p: int,
+) -> np.ndarray:
+    """Unknown variance s^2 of the observations beside known errors of the conditions.
+
+    The score of psi is made orthogonal to that of s^2 as well:
+    z = [S + c (Q - (N - p_l))] / sqrt(I + 2 (N - p_l) c^2) with w = dV/ds^2 = 1,
+    D_j = -1/2 sum_i w_i (dV_i/dtheta_j)/V_i^2 and c = (D_psi - I_psi,l I_ll^-1 D_l)/sum(w_i/V_i).
+    """
+    data = problem.data
+    n, p_l = data.n, p - 1
+    v = sol.covariance
+    if v.ndim == 3:  # shared errors: the correction is left out, the normal form is kept
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.where(size > 0, s / size, 0.0)
+    pred = problem.predictor.predict(sol.theta, sol.conditions, conditions_too=True, both=True)
+    assert pred.by_conditions is not None and pred.by_both is not None
+    dv = np.zeros((*v.shape, p))
+    for src in data.of_conditions:
+        sd2 = src.sd(sol.conditions[..., src.target]) ** 2
+        f = pred.by_conditions[..., src.target]
+        dv += 2.0 * (sd2 * f)[..., None] * pred.by_both[:, :, src.target, :]
+    d = -0.5 * np.einsum("snp,sn->sp", dv, 1.0 / v**2)
+    g_l = np.delete(sol.jacobian, psi, axis=2)
+    d_l = np.delete(d, psi, axis=1)
+    # regression of the column of psi on the nuisance columns, by the pseudo-inverse of scaled columns
+    norms = np.sqrt(np.einsum("snk,snk->sk", g_l, g_l))
+    norms = np.where(norms > 0, norms, 1.0)
+    beta = np.einsum(
+        "skn,sn->sk", np.linalg.pinv(g_l / norms[:, None, :], rcond=RANK), sol.jacobian[:, :, psi]
+    )
+    beta = beta / norms
+    c = (d[:, psi] - np.einsum("sk,sk->s", beta, d_l)) / (1.0 / v).sum(axis=1)
+    top = s + c * (sol.objective - (n - p_l))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        return top / np.sqrt(size**2 + 2.0 * max(n - p_l, 1) * c**2)

@@ -1,0 +1,85 @@
+"""Covariances of residuals, and whitening with them, for a batch of S cases.
+
+A covariance is either a plain array of variances, shape (S, N), when no error is shared by two
+observations, or a full matrix, shape (S, N, N).
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from discrim.fit.measurements import ErrorSource
+
+
+def add_source(
+    total: np.ndarray, src: ErrorSource, spread: np.ndarray, sensitivity: np.ndarray | None
+) -> np.ndarray:
+    """Add one source to a covariance, in place; returns it.
+
+    ``spread`` shape (S, N) standard deviations; ``sensitivity`` shape (S, N), None for 1.
+    """
+    u = spread if sensitivity is None else spread * sensitivity
+    if total.ndim == 2:
+        total += u**2
+    elif src.individual:
+        idx = np.arange(u.shape[-1])
+        total[:, idx, idx] += u**2
+    else:
+        same = src.groups[:, None] == src.groups[None, :]
+        total += u[:, :, None] * u[:, None, :] * same
+    return total
+
+
+class Whitener:
+    """L^-1 applied to vectors and matrices, where V = L L'."""
+
+    def __init__(self, covariance: np.ndarray) -> None:
+        self.full = covariance.ndim == 3
+        self.ok = np.ones(covariance.shape[0], bool)
+        if not self.full:
+            with np.errstate(divide="ignore", invalid="ignore"):
+                self._inv = 1.0 / np.sqrt(covariance)
+            return
+        cov = covariance
+        finite = np.isfinite(cov).all(axis=(1, 2))
+        if not finite.all():
+            cov = np.where(finite[:, None, None], cov, np.eye(cov.shape[-1]))
+            self.ok = finite
+        try:
+            self._chol = np.linalg.cholesky(cov)
+        except np.linalg.LinAlgError:
+            chol = np.empty_like(cov)
+            for k, v in enumerate(cov):
+                chol[k], good = _cholesky(v)
+                self.ok[k] &= good
+            self._chol = chol
+
+    def vector(self, x: np.ndarray) -> np.ndarray:
+        """Shape (S, N)."""
+        if not self.full:
+            return x * self._inv
+        return np.linalg.solve(self._chol, x[..., None])[..., 0]
+
+    def matrix(self, x: np.ndarray) -> np.ndarray:
+        """Shape (S, N, k)."""
+        if not self.full:
+            return x * self._inv[..., None]
+        return np.linalg.solve(self._chol, x)
+
+    def transposed(self, x: np.ndarray) -> np.ndarray:
+        """L^-T x for x of shape (S, N): turns a whitened residual into V^-1 e."""
+        if not self.full:
+            return x * self._inv
+        return np.linalg.solve(np.swapaxes(self._chol, 1, 2), x[..., None])[..., 0]
+
+
+def _cholesky(v: np.ndarray) -> tuple[np.ndarray, bool]:
+    try:
+        return np.linalg.cholesky(v), True
+    except np.linalg.LinAlgError:
+        # singular to rounding: an error shared by all runs and nothing else
+        jitter = 1e-12 * float(np.trace(v)) / len(v)
+        try:
+            return np.linalg.cholesky(v + jitter * np.eye(len(v))), True
+        except np.linalg.LinAlgError:
+            return np.eye(len(v)), False

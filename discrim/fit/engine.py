@@ -1,0 +1,509 @@
+"""Bounded weighted least squares for a whole batch of problems at once.
+
+Levenberg-Marquardt with column scaling (Moré, in Lecture Notes in Mathematics 630, Springer 1978,
+p. 105) and the damping schedule of Nielsen (IMM report 1999-05, Technical University of Denmark),
+steps by QR, bounds by an active set, so that a constant reaches zero exactly and can leave it.
+
+Errors of *measured* conditions are reconciled inside each evaluation (Britt & Luecke, Technometrics 15
+(1973) 233): with e = y - f(c^) - F (c - c^) and V = W + F S_c F', the conditions move to
+c^ = c + S_c F' V^-1 e. At the fixed point G' V^-1 e is exactly minus half the gradient of the profiled
+objective, so the step needs no derivative of V. Errors of *set* conditions and relative errors of the
+observations are part of W, which follows the fit and is never differentiated: differentiating it
+would reward laws for being uncertain.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from discrim.fit.covariance import Whitener, add_source
+from discrim.fit.measurements import OBSERVATION, Measurements, Scale
+from discrim.reactor.model import Predictor
+
+RUNNING, CONVERGED, STEP_LIMIT, NOT_FINITE = 0, 1, 2, 3
+
+
+@dataclass(frozen=True, slots=True)
+class Options:
+    """How long and how closely to iterate."""
+
+    max_iterations: int = 80
+    gradient_tolerance: float = 1e-11  # cosine between residual and any free column
+    step_tolerance: float = 1e-11  # relative, in scaled constants
+    separate: bool = False  # solve linear constants exactly at each step (exact conditions only)
+
+
+@dataclass(slots=True, eq=False)
+class Solution:
+    """S solved problems (mutable only while the engine works on it).
+
+    Attributes
+    ----------
+    theta : shape (S, p)
+    objective : shape (S,) Q = e' V^-1 e
+    residual, jacobian : whitened, shapes (S, N) and (S, N, p); jacobian is d f / d theta
+    error : shape (S, N), e, in the units of the observations
+    values : shape (S, N) predicted at the reconciled conditions
+    conditions : shape (S, N, m) reconciled
+    covariance : V, shape (S, N) or (S, N, N)
+    scale2 : shape (S,) s^2 when it is estimated together with condition errors, else 1
+    state : shape (S,) RUNNING, CONVERGED, STEP_LIMIT or NOT_FINITE
+    iterations : shape (S,)
+    """
+
+    theta: np.ndarray
+    objective: np.ndarray
+    residual: np.ndarray
+    jacobian: np.ndarray
+    error: np.ndarray
+    values: np.ndarray
+    conditions: np.ndarray
+    covariance: np.ndarray
+    scale2: np.ndarray
+    state: np.ndarray
+    iterations: np.ndarray
+
+    def take(self, rows: np.ndarray) -> Solution:
+        return Solution(*(getattr(self, f)[rows] for f in _FIELDS))
+
+    def put(self, rows: np.ndarray, other: Solution) -> None:
+        for f in _FIELDS:
+            getattr(self, f)[rows] = getattr(other, f)
+
+
+_FIELDS = (
+    "theta objective residual jacobian error values conditions covariance scale2 state iterations"
+).split()
+
+
+class Problem:
+    """A predictor with measurements: evaluates residuals, covariances and reconciled conditions."""
+
+    def __init__(self, predictor: Predictor, data: Measurements) -> None:
+        self.predictor = predictor
+        self.data = data
+        obs = data.of_observations
+        self.obs_relative = any(s.relative.any() for s in obs)
+        self.set_sources = [s for s in data.of_conditions if s.origin == "set"]
+        self.measured = [s for s in data.of_conditions if s.origin != "set"]
+        self.diagonal = data.diagonal
+        self.with_conditions = bool(self.set_sources or self.measured)
+        self.estimated = data.scale is Scale.ESTIMATED
+        self.joint_scale = self.estimated and self.with_conditions
+        # does W change with the fit?
+        self.moving = self.obs_relative or bool(self.set_sources) or self.joint_scale
+        largest = np.max(np.abs(data.y), axis=-1, keepdims=True) if data.n else np.zeros((1,))
+        self.floor = 1e-4 * np.where(largest > 0, largest, 1.0)
+
+    # ---- pieces ---------------------------------------------------------------------------
+
+    def table(self, rows: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """y and conditions for the batch rows (broadcast views where shared)."""
+        d = self.data
+        y = d.y[rows] if d.y.ndim == 2 else d.y[None]
+        c = d.conditions[rows] if d.conditions.ndim == 3 else d.conditions[None]
+        return y, c
+
+    def base(self, shape: tuple[int, int]) -> np.ndarray:
+        s, n = shape
+        return np.zeros((s, n)) if self.diagonal else np.zeros((s, n, n))
+
+    def own_covariance(
+        self,
+        values: np.ndarray,
+        conditions: np.ndarray,
+        by_conditions: np.ndarray | None,
+        scale2: np.ndarray,
+    ) -> np.ndarray:
+        """W: observations (errors at the fitted values) and set conditions."""
+        w = self.base(values.shape)
+        if self.estimated:
+            if w.ndim == 2:
+                w += scale2[:, None]
+            else:
+                idx = np.arange(values.shape[1])
+                w[:, idx, idx] += scale2[:, None]
+        for s in self.data.of_observations:
+            floor = self.floor if self.floor.shape[0] in (1, len(values)) else self.floor[:1]
+            add_source(w, s, s.sd(np.maximum(np.abs(values), floor)), None)
+        if by_conditions is not None:
+            for s in self.set_sources:
+                add_source(w, s, s.sd(conditions[..., s.target]), by_conditions[..., s.target])
+        return w
+
+    def with_measured(
+        self, w: np.ndarray, conditions: np.ndarray, by_conditions: np.ndarray | None
+    ) -> np.ndarray:
+        """V = W + F S_measured F'."""
+        if by_conditions is None or not self.measured:
+            return w
+        v = w.copy()
+        for s in self.measured:
+            add_source(v, s, s.sd(conditions[..., s.target]), by_conditions[..., s.target])
+        return v
+
+    def moved(
+        self,
+        nominal: np.ndarray,
+        conditions: np.ndarray,
+        by_conditions: np.ndarray,
+        weighted: np.ndarray,
+    ) -> np.ndarray:
+        """Reconciled conditions: nominal + S_c F' V^-1 e, ``weighted`` = V^-1 e, shape (S, N)."""
+        out = np.array(np.broadcast_to(nominal, conditions.shape))
+        for s in self.measured:
+            sd = s.sd(conditions[..., s.target])
+            pull = sd * by_conditions[..., s.target] * weighted
+            if not s.individual:
+                same = (s.groups[:, None] == s.groups[None, :]).astype(float)
+                pull = pull @ same
+            out[..., s.target] += sd * pull
+        return out
+
+    def evaluate(
+        self,
+        theta: np.ndarray,
+        conditions: np.ndarray,
+        w: np.ndarray | None,
+        scale2: np.ndarray,
+        rows: np.ndarray,
+        passes: int = 2,
+    ) -> Solution:
+        """Everything at ``theta``, with W given (or made here when None)."""
+        y, nominal = self.table(rows)
+        s = len(theta)
+        if not self.with_conditions:
+            pred = self.predictor.predict(theta, conditions)
+            values = pred.values
+            error = y - values
+            if w is None:
+                w = self.own_covariance(values, conditions, None, scale2)
+            white = Whitener(w)
+            assert pred.by_constants is not None
+            r = white.vector(error)
+            g = white.matrix(pred.by_constants)
+            cov = w
+        else:
+            for k in range(passes):
+                pred = self.predictor.predict(theta, conditions, conditions_too=True)
+                values, f_c = pred.values, pred.by_conditions
+                assert f_c is not None and pred.by_constants is not None
+                if w is None:
+                    w = self.own_covariance(values, conditions, f_c, scale2)
+                error = y - values
+                if self.measured:
+                    error = error - np.einsum("snm,snm->sn", f_c, nominal - conditions)
+                cov = self.with_measured(w, conditions, f_c)
+                white = Whitener(cov)
+                r = white.vector(error)
+                if not self.measured or k == passes - 1:
+                    break
+                conditions = self.moved(nominal, conditions, f_c, white.transposed(r))
+            g = white.matrix(pred.by_constants)
+        q = np.einsum("sn,sn->s", r, r)
+        bad = ~(np.isfinite(q) & np.isfinite(g).all(axis=(1, 2)) & white.ok)
+        if bad.any():
+            q = np.where(bad, np.inf, q)
+        n = self.data.n
+        return Solution(
+            theta,
+            q,
+            r,
+            g,
+            np.broadcast_to(error, (s, n)),
+            values,
+            np.broadcast_to(conditions, (s, *nominal.shape[1:])),
+            np.broadcast_to(cov, (s, *cov.shape[1:])),
+            np.broadcast_to(scale2, (s,)),
+            np.zeros(s, int),
+            np.zeros(s, int),
+        )
+
+    def updated_scale(self, sol: Solution, free: np.ndarray) -> np.ndarray:
+        """s^2 >= 0 with Q(s^2) = N - p, the condition errors held (moment estimate)."""
+        df = np.maximum(self.data.n - free, 1)
+        e2 = sol.error**2
+        var = sol.covariance
+        if var.ndim == 3:
+            var = np.diagonal(var, axis1=1, axis2=2)
+        v = np.maximum(var - sol.scale2[:, None], 0.0)
+        lo = np.zeros(len(df))
+        hi = e2.sum(axis=1) / df
+        with np.errstate(divide="ignore", invalid="ignore"):
+            at_zero = np.where(e2 > 0, e2 / np.maximum(v, 1e-300), 0.0).sum(axis=1)
+        for _ in range(60):
+            mid = 0.5 * (lo + hi)
+            with np.errstate(divide="ignore", invalid="ignore"):
+                q = (e2 / np.maximum(v + mid[:, None], 1e-300)).sum(axis=1)
+            over = q > df
+            lo, hi = np.where(over, mid, lo), np.where(over, hi, mid)
+        return np.where(at_zero <= df, 0.0, 0.5 * (lo + hi))
+
+
+def solve(
+    problem: Problem,
+    start: np.ndarray,
+    *,
+    fixed: np.ndarray | None = None,
+    options: Options | None = None,
+    conditions: np.ndarray | None = None,
+    scale2: np.ndarray | None = None,
+) -> Solution:
+    """Minimise Q from each row of ``start``.
+
+    Parameters
+    ----------
+    start : shape (S, p); clipped into the bounds
+    fixed : shape (S, p) True for constants held at their start value
+    conditions : shape (S, N, m) where to begin reconciling; the nominal ones by default
+    scale2 : shape (S,) first guess of s^2 when it is estimated together with condition errors
+    """
+    opt = options or Options()
+    pred, data = problem.predictor, problem.data
+    s, p = start.shape
+    lower = np.broadcast_to(pred.lower, (s, p))
+    upper = np.broadcast_to(pred.upper, (s, p))
+    held = np.zeros((s, p), bool) if fixed is None else np.broadcast_to(fixed, (s, p))
+    theta = np.where(held, start, np.clip(start, lower, upper))
+    if conditions is None:
+        conditions = np.broadcast_to(
+            data.conditions if data.conditions.ndim == 3 else data.conditions[None],
+            (s, *data.conditions.shape[-2:]),
+        )
+    if scale2 is None:
+        scale2 = np.ones(s)
+        if problem.joint_scale:
+            scale2 = scale2 * np.var(data.y, axis=-1) * 0.01
+    everything = np.arange(s)
+    n_free = (~held).sum(axis=1)
+    best = problem.evaluate(theta, conditions, None, scale2, everything)
+    for f in _FIELDS:  # own, writable arrays
+        setattr(best, f, np.array(getattr(best, f)))
+    best.state[:] = np.where(np.isfinite(best.objective), RUNNING, NOT_FINITE)
+    separable = opt.separate and not problem.with_conditions and bool(pred.linear.any())
+
+    active = everything[best.state == RUNNING]
+    mu = np.full(s, 1e-3)
+    nu = np.full(s, 2.0)
+    d_max = np.zeros((s, p))
+    w_all: np.ndarray | None = None
+    quiet = np.zeros(s, int)
+    for iteration in range(opt.max_iterations):
+        if not len(active):
+            break
+        a = active
+        cur = best.take(a)
+        low, high, hold = lower[a], upper[a], held[a]
+        grad = np.einsum("snp,sn->sp", cur.jacobian, cur.residual)
+        norms = np.sqrt(np.einsum("snp,snp->sp", cur.jacobian, cur.jacobian))
+        d_max[a] = np.maximum(d_max[a], norms)
+        d = np.where(d_max[a] > 0, d_max[a], 1.0)
+        blocked = (
+            hold
+            | ((cur.theta <= low) & (grad <= 0))
+            | ((cur.theta >= high) & (grad >= 0))
+            | (norms == 0)
+        )
+        size = np.sqrt(cur.objective)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            cosine = np.abs(grad) / (norms * size[:, None])
+        cosine = np.where(blocked, 0.0, np.nan_to_num(cosine))
+        done = cosine.max(axis=1, initial=0.0) <= opt.gradient_tolerance
+        done |= cur.objective <= 1e-28 * _reference(problem, cur, a)
+        settled = quiet[a] >= 2
+        done = (done & ~_scale_pending(problem, quiet[a])) | settled
+        if done.any():
+            best.state[a[done]] = CONVERGED
+            keep = ~done
+            active = a[keep]
+            if not len(active):
+                break
+            a = active
+            cur = cur.take(keep)
+            low, high, hold, blocked, d = (
+                low[keep],
+                high[keep],
+                hold[keep],
+                blocked[keep],
+                d[keep],
+            )
+        r_mat, q_r = _triangle(cur.jacobian, cur.residual)
+        step, gain = bounded_step(
+            r_mat, q_r, d, mu[a], blocked, low - cur.theta, high - cur.theta
+        )
+        trial_theta = np.clip(cur.theta + step, low, high)
+        trial_theta = np.where(hold, cur.theta, trial_theta)
+        w = None if w_all is None else w_all[a]
+        if problem.moving and w is None:
+            w = _own(problem, cur)
+        trial = problem.evaluate(trial_theta, cur.conditions, w, cur.scale2, a)
+        if separable:
+            trial = _solve_linear(problem, trial, hold, low, high, w, a)
+        drop = cur.objective - trial.objective
+        with np.errstate(invalid="ignore", divide="ignore"):
+            ratio = drop / gain
+        # at the noise floor the sign of the drop is rounding
+        flat = np.abs(drop) <= 1e-13 * cur.objective
+        take = (drop > 0) | (flat & np.isfinite(trial.objective) & (gain <= 1e-12 * cur.objective))
+        moved = np.abs(trial.theta - cur.theta) * d
+        extent = np.abs(cur.theta) * d
+        small = moved.max(axis=1) <= opt.step_tolerance * np.maximum(
+            extent.max(axis=1), 1e-300
+        ) + 1e-13 * np.sqrt(cur.objective)
+        got = a[take]
+        if len(got):
+            new = trial.take(take)
+            if problem.moving:
+                new = _refreshed(problem, new, n_free[got], got)
+            new.iterations = best.iterations[got]
+            best.put(got, new)
+        with np.errstate(over="ignore", invalid="ignore"):
+            shrink = np.maximum(1.0 / 3.0, 1.0 - (2.0 * np.nan_to_num(ratio) - 1.0) ** 3)
+        grew = ~take
+        mu_a, nu_a = mu[a], nu[a]
+        mu[a] = np.clip(np.where(grew, mu_a * nu_a, mu_a * np.minimum(shrink, 1e3)), 1e-18, 1e18)
+        nu[a] = np.where(grew, nu_a * 2.0, 2.0)
+        stuck = grew & (mu[a] >= 1e15)
+        quiet[a] = np.where((small & (take | flat)) | stuck, quiet[a] + 1, 0)
+        quiet[a] = np.where(stuck, 3, quiet[a])
+        best.iterations[a] += 1
+    best.state[best.state == RUNNING] = STEP_LIMIT
+    if problem.measured:
+        best = _polished(problem, best, everything)
+    return best
+
+
+def _reference(problem: Problem, cur: Solution, rows: np.ndarray) -> np.ndarray:
+    """Weighted sum of squares of the observations, to tell an exact fit."""
+    y, _ = problem.table(rows)
+    var = cur.covariance
+    if var.ndim == 3:
+        var = np.diagonal(var, axis1=1, axis2=2)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        return np.nan_to_num((y**2 / var).sum(axis=1), posinf=0.0)
+
+
+def _scale_pending(problem: Problem, quiet: np.ndarray) -> np.ndarray:
+    # with W following the fit, a zero gradient must be seen again after W was refreshed
+    return np.zeros(len(quiet), bool)
+
+
+def _own(problem: Problem, cur: Solution) -> np.ndarray:
+    """W of the current point."""
+    f_c = None
+    if problem.with_conditions:
+        f_c = problem.predictor.predict(
+            cur.theta, cur.conditions, constants=False, conditions_too=True
+        ).by_conditions
+    return problem.own_covariance(cur.values, cur.conditions, f_c, cur.scale2)
+
+
+def _refreshed(problem: Problem, new: Solution, free: np.ndarray, rows: np.ndarray) -> Solution:
+    """The same point with W made anew, so that the next comparison uses one and the same W."""
+    if problem.joint_scale:
+        new.scale2 = problem.updated_scale(new, free)
+    return problem.evaluate(new.theta, new.conditions, None, new.scale2, rows)
+
+
+def _polished(problem: Problem, best: Solution, rows: np.ndarray) -> Solution:
+    """Reconciliation carried on to convergence at the final constants."""
+    for _ in range(12):
+        new = problem.evaluate(best.theta, best.conditions, None, best.scale2, rows, passes=2)
+        shift = 0.0
+        for s in problem.measured:
+            sd = s.sd(best.conditions[..., s.target])
+            with np.errstate(divide="ignore", invalid="ignore"):
+                d = np.abs(new.conditions[..., s.target] - best.conditions[..., s.target]) / sd
+            shift = max(shift, float(np.nanmax(np.where(np.isfinite(d), d, 0.0), initial=0.0)))
+        good = np.isfinite(new.objective)
+        new.state, new.iterations = best.state, best.iterations
+        if good.all():
+            best = new
+        else:
+            for f in _FIELDS:
+                setattr(best, f, np.array(getattr(best, f)))
+            best.put(rows[good], new.take(good))
+        if shift < 1e-9:
+            break
+    return best
+
+
+def _triangle(jacobian: np.ndarray, residual: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """R and Q'r of the whitened Jacobian, shapes (S, p, p) and (S, p)."""
+    s, n, p = jacobian.shape
+    both = np.concatenate([jacobian, residual[..., None]], axis=2)
+    if n < p + 1:
+        both = np.concatenate([both, np.zeros((s, p + 1 - n, p + 1))], axis=1)
+    r = np.linalg.qr(both, mode="r")
+    return r[:, :p, :p], r[:, :p, p]
+
+
+def bounded_step(
+    r_mat: np.ndarray,
+    q_r: np.ndarray,
+    d: np.ndarray,
+    mu: np.ndarray,
+    blocked: np.ndarray,
+    low: np.ndarray,
+    high: np.ndarray,
+) -> tuple[np.ndarray, np.ndarray]:
+    """Damped step within bounds: constants that would cross are put on their bound, the rest solved
+    again. Returns the step (S, p) and the decrease of the linearised objective (S,)."""
+    s, p = q_r.shape
+    step = np.zeros((s, p))
+    blocked = blocked.copy()
+    grad = np.einsum("sij,si->sj", r_mat, q_r)
+    idx = np.arange(p)
+    for _ in range(p + 1):
+        rhs = q_r - np.einsum("sij,sj->si", r_mat, np.where(blocked, step, 0.0))
+        upper_part = np.where(blocked[:, None, :], 0.0, r_mat)
+        stacked = np.zeros((s, 2 * p, p + 1))
+        stacked[:, :p, :p] = upper_part
+        stacked[:, :p, p] = rhs
+        stacked[:, p + idx, idx] = np.where(blocked, 1.0, np.sqrt(mu)[:, None] * d)
+        tri = np.linalg.qr(stacked, mode="r")
+        free = np.linalg.solve(tri[:, :p, :p], tri[:, :p, p : p + 1])[..., 0]
+        step = np.where(blocked, step, free)
+        out = ~blocked & ((step < low) | (step > high))
+        if not out.any():
+            break
+        step = np.where(out, np.clip(step, low, high), step)
+        blocked |= out
+    linear = np.einsum("sij,sj->si", r_mat, step)
+    gain = 2.0 * np.einsum("sj,sj->s", grad, step) - np.einsum("si,si->s", linear, linear)
+    return step, gain
+
+
+def _solve_linear(
+    problem: Problem,
+    trial: Solution,
+    hold: np.ndarray,
+    low: np.ndarray,
+    high: np.ndarray,
+    w: np.ndarray | None,
+    rows: np.ndarray,
+) -> Solution:
+    """Constants in which the law is linear, solved exactly at the trial point (separable least
+    squares in the manner of Ruhe & Wedin, SIAM Review 22 (1980) 318, algorithm 3)."""
+    ok = np.isfinite(trial.objective)
+    if not ok.any():
+        return trial
+    blocked = hold | ~problem.predictor.linear[None, :]
+    jac = np.where(ok[:, None, None], trial.jacobian, 0.0)
+    res = np.where(ok[:, None], trial.residual, 0.0)
+    r_mat, q_r = _triangle(jac, res)
+    norms = np.sqrt(np.einsum("snp,snp->sp", jac, jac))
+    step, _ = bounded_step(
+        r_mat,
+        q_r,
+        np.where(norms > 0, norms, 1.0),
+        np.full(len(jac), 1e-14),
+        blocked,
+        low - trial.theta,
+        high - trial.theta,
+    )
+    theta = np.clip(trial.theta + np.where(blocked, 0.0, step), low, high)
+    theta = np.where(hold, trial.theta, theta)
+    return problem.evaluate(theta, trial.conditions, w, trial.scale2, rows)

@@ -1,0 +1,119 @@
+"""A law made into fast array functions with exact derivatives.
+
+The expressions are differentiated symbolically and common subexpressions are shared between the
+value and all derivatives. Symbols are renamed to neutral ones first, so no text of the user's ever
+becomes part of generated code.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from typing import Any
+
+import numpy as np
+import sympy
+
+# Smallest amount at which logs and fractional powers are evaluated: [A]^n and its derivatives have
+# finite limits at zero for n > 0 that floating point would otherwise spoil with 0*inf.
+_TINY = 1e-200
+
+
+class CompiledLaw:
+    """Value and exact derivatives of one expression, as functions of arrays.
+
+    Parameters
+    ----------
+    expression : sympy expression
+    constants, conditions : the symbols to differentiate by; they must cover all free symbols
+
+    The functions are made on first use, one for each set of derivatives that is asked for.
+    """
+
+    def __init__(
+        self,
+        expression: Any,
+        constants: Sequence[sympy.Symbol],
+        conditions: Sequence[sympy.Symbol],
+    ) -> None:
+        self.expression = sympy.sympify(expression) if isinstance(expression, int) else expression
+        self.constants = tuple(constants)
+        self.conditions = tuple(conditions)
+        unknown = self.expression.free_symbols - set(self.constants) - set(self.conditions)
+        if unknown:
+            raise ValueError(f"symbols without a value: {sorted(map(str, unknown))}")
+        self._theta = [sympy.Symbol(f"t{i}", real=True) for i in range(len(self.constants))]
+        self._cond = [sympy.Symbol(f"c{i}", real=True) for i in range(len(self.conditions))]
+        swap = dict(zip(self.constants, self._theta, strict=True))
+        swap |= dict(zip(self.conditions, self._cond, strict=True))
+        self._neutral = self.expression.xreplace(swap)
+        self._needs_positive = bool(
+            self._neutral.has(sympy.log)
+            or any(not p.exp.is_Integer for p in self._neutral.atoms(sympy.Pow))
+        )
+        self._made: dict[tuple[bool, bool, bool], Callable[..., Any]] = {}
+        self._constant_outputs: dict[tuple[bool, bool, bool], list[int]] = {}
+
+    def _outputs(self, constants: bool, conditions: bool, both: bool) -> list[Any]:
+        f = self._neutral
+        out = [f]
+        if constants:
+            out += [f.diff(t) for t in self._theta]
+        if conditions:
+            out += [f.diff(c) for c in self._cond]
+        if both:
+            out += [f.diff(c).diff(t) for c in self._cond for t in self._theta]
+        return out
+
+    def _function(self, key: tuple[bool, bool, bool]) -> Callable[..., Any]:
+        if key not in self._made:
+            outputs = self._outputs(*key)
+            self._made[key] = sympy.lambdify(
+                [*self._theta, *self._cond], outputs, modules="numpy", cse=True
+            )
+        return self._made[key]
+
+    def __call__(
+        self,
+        theta: np.ndarray,
+        conditions: np.ndarray,
+        *,
+        constants: bool,
+        conditions_too: bool,
+        both: bool,
+    ) -> tuple[np.ndarray, np.ndarray | None, np.ndarray | None, np.ndarray | None]:
+        """Evaluate.
+
+        ``theta`` shape (S, 1, p) or (S, N, p); ``conditions`` shape (N, m) or (S, N, m).
+        Returns the value (S, N) and the derivatives asked for, (S, N, p), (S, N, m), (S, N, m, p).
+        """
+        key = (constants, conditions_too, both)
+        function = self._function(key)
+        if self._needs_positive:
+            conditions = np.where(conditions == 0.0, _TINY, conditions)
+        p, m = len(self.constants), len(self.conditions)
+        shape = np.broadcast_shapes(theta.shape[:-1], conditions.shape[:-1])
+        if len(shape) == 1:
+            shape = (1, *shape)
+        args = [theta[..., j] for j in range(p)] + [conditions[..., j] for j in range(m)]
+        with np.errstate(all="ignore"):
+            raw = function(*args)
+        value = np.empty(shape)
+        value[...] = raw[0]
+        at = 1
+        by_theta = by_cond = by_both = None
+        if constants:
+            by_theta = np.empty((*shape, p))
+            for j in range(p):
+                by_theta[..., j] = raw[at + j]
+            at += p
+        if conditions_too:
+            by_cond = np.empty((*shape, m))
+            for j in range(m):
+                by_cond[..., j] = raw[at + j]
+            at += m
+        if both:
+            by_both = np.empty((*shape, m, p))
+            for i in range(m):
+                for j in range(p):
+                    by_both[..., i, j] = raw[at + i * p + j]
+        return value, by_theta, by_cond, by_both
