@@ -1,0 +1,197 @@
+"""One look for all figures: colours, strokes, type, and how a figure becomes SVG or PNG bytes.
+
+Colour never carries a meaning alone: each has a marker, a stroke or a hatch that goes with it.
+Figures are drawn with matplotlib's object interface and no pyplot; the same document gives the
+same bytes.
+"""
+
+from __future__ import annotations
+
+import io
+import math
+import re
+import warnings
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import Any
+
+import matplotlib
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.backends.backend_svg import FigureCanvasSVG
+from matplotlib.figure import Figure
+from matplotlib.ticker import FixedLocator, FuncFormatter, MaxNLocator, NullLocator
+
+from discrim.report.numbers import number
+
+INK, MUTED, RULE, PAPER = "#20242c", "#5d6673", "#ccd2da", "#fefefe"
+BLUE, OCHRE, GREEN, PLUM = "#1f5fa8", "#b4570b", "#12796a", "#7d4a97"
+SHADE = "#dfe5ec"
+#: Colour, marker and stroke that go together, for the first, second, ... of several things.
+STYLES: tuple[tuple[str, str, Any], ...] = (
+    (BLUE, "o", "-"),
+    (OCHRE, "s", (0, (5, 2))),
+    (GREEN, "^", (0, (1, 1.4))),
+    (PLUM, "D", (0, (6, 2, 1, 2))),
+)
+HATCHES = ("", "////", "....", "xxxx")
+#: What each colour is called in the page's style sheet, which has a dark value for each.
+NAMES = {
+    INK: "ink",
+    MUTED: "muted",
+    RULE: "rule",
+    PAPER: "paper",
+    BLUE: "blue",
+    OCHRE: "ochre",
+    GREEN: "green",
+    PLUM: "plum",
+    SHADE: "shade",
+}
+WIDTH = 5.0  # inches; type stays readable when this is shown at half its size
+_RC: dict[str, Any] = {
+    "font.family": "sans-serif",
+    "font.sans-serif": ["DejaVu Sans"],
+    "font.size": 9.5,
+    "axes.titlesize": 9.5,
+    "axes.titleweight": "normal",
+    "axes.titlelocation": "left",
+    "axes.labelsize": 9.5,
+    "xtick.labelsize": 9,
+    "ytick.labelsize": 9,
+    "legend.fontsize": 9,
+    "legend.frameon": False,
+    "text.color": INK,
+    "text.parse_math": False,  # names come from the user: a dollar sign is a dollar sign
+    "axes.edgecolor": MUTED,
+    "axes.labelcolor": INK,
+    "axes.linewidth": 0.8,
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "axes.formatter.useoffset": False,
+    "xtick.color": MUTED,
+    "ytick.color": MUTED,
+    "xtick.labelcolor": INK,
+    "ytick.labelcolor": INK,
+    "grid.color": RULE,
+    "grid.linewidth": 0.6,
+    "hatch.linewidth": 0.7,
+    "figure.facecolor": PAPER,
+    "axes.facecolor": "none",
+    "savefig.facecolor": PAPER,
+    "svg.fonttype": "none",
+    "path.simplify": True,
+}
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Picture:
+    """A finished figure: file name without its ending, caption, description in words, SVG text."""
+
+    name: str
+    title: str
+    caption: str
+    alt: str
+    svg: str
+    figure: Figure
+
+    def png(self) -> bytes:
+        with style(self.name):
+            FigureCanvasAgg(self.figure)
+            out = io.BytesIO()
+            self.figure.savefig(out, format="png", dpi=160, metadata={"Software": None})
+        return out.getvalue()
+
+
+@contextmanager
+def style(name: str) -> Iterator[None]:
+    """The look of the figures, in force inside the block only."""
+    with warnings.catch_warnings(), matplotlib.rc_context(_RC | {"svg.hashsalt": name}):
+        # Names in a script that the font lacks are drawn as boxes in the PNG; that is no reason
+        # to lose the report.
+        warnings.filterwarnings("ignore", message=".*[Gg]lyph.*")
+        yield
+
+
+def finish(figure: Figure, name: str, *, title: str, caption: str, alt: str) -> Picture:
+    """Turn the figure into a picture; call inside :func:`style`."""
+    FigureCanvasSVG(figure)
+    out = io.StringIO()
+    figure.savefig(out, format="svg", metadata={"Date": None, "Creator": None})
+    text = out.getvalue()
+    return Picture(name, title, caption, alt, text[text.index("<svg") :], figure)
+
+
+def inline(picture: Picture) -> str:
+    """The SVG for a page: colours from the page's style sheet, ids that are the figure's own."""
+    text = re.sub(r'\bid="', f'id="{picture.name}-', picture.svg)
+    text = re.sub(r"url\(#", f"url(#{picture.name}-", text)
+    text = re.sub(r'(xlink:href|href)="#', rf'\1="#{picture.name}-', text)
+    for colour, name in NAMES.items():
+        text = text.replace(f": {colour}", f": var(--{name})")
+    text = text.replace("'DejaVu Sans'", "var(--type)").replace("<metadata>", "<metadata hidden=''>")
+    text = re.sub(r"<metadata.*?</metadata>", "", text, flags=re.DOTALL)
+    return re.sub(r'(<svg[^>]*?) width="[^"]*"', r"\1", re.sub(r'(<svg[^>]*?) height="[^"]*"', r"\1", text, count=1), count=1)
+
+
+def sheet(height: float, *, width: float = WIDTH) -> Figure:
+    return Figure(figsize=(width, height))
+
+
+def panels(n: int, *, across: int = 2, height: float = 1.9, left: float = 0.62,
+           gap: float = 0.62, below: float = 0.5, above: float = 0.28) -> tuple[Figure, list[Any]]:
+    """A figure with ``n`` panels, at most ``across`` side by side; all lengths in inches.
+
+    Set out by hand, because measuring the text to do so takes longer than drawing.
+    """
+    across = min(across, n)
+    down = math.ceil(n / across)
+    total = down * (height + below + above) + 0.02
+    figure = sheet(total)
+    wide = (WIDTH - left * across - 0.12 - (gap - left) * (across - 1)) / across
+    axes = []
+    for i in range(n):
+        row, col = divmod(i, across)
+        x = left + col * (wide + gap)
+        y = total - (row + 1) * (height + above) - row * below
+        axes.append(figure.add_axes((x / WIDTH, y / total, wide / WIDTH, height / total)))
+    return figure, axes
+
+
+def label(text: str, longest: int = 30) -> str:
+    """A name short enough for its place."""
+    return text if len(text) <= longest else text[: longest - 1].rstrip() + "…"
+
+
+_RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+
+
+def scale_of(values: Sequence[float | None]) -> tuple[float, str]:
+    """A factor and its name, such as (1e6, "10⁻⁶ "), so that tick labels stay short."""
+    largest = max((abs(v) for v in values if v is not None and math.isfinite(v)), default=0.0)
+    if largest == 0 or 0.01 <= largest < 1e4:
+        return 1.0, ""
+    power = 3 * math.floor(math.log10(largest) / 3)
+    if abs(power) > 290:
+        return 1.0, ""
+    return 10.0**-power, f"10{str(power).translate(_RAISED)} "
+
+
+def with_units(name: str, units: str, power: str = "") -> str:
+    """``k_a (10⁻⁶ s⁻¹)``."""
+    inside = (power + ("" if units in ("", "1") else units)).strip()
+    return f"{name} ({inside})" if inside else name
+
+
+def few_ticks(axis: Any, n: int = 5) -> None:
+    axis.set_major_locator(MaxNLocator(n))
+    axis.set_major_formatter(FuncFormatter(lambda x, _: number(round(x, 12))))
+
+
+def log_ticks(axis: Any, low: float, high: float) -> None:
+    """Ticks at 1, 2 and 5 of each decade in range (1 alone when there are many decades)."""
+    decades = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
+    steps = (1,) if len(decades) > 4 else (1, 3) if len(decades) > 2 else (1, 2, 5)
+    at = [s * 10.0**d for d in decades for s in steps if low <= s * 10.0**d <= high]
+    axis.set_major_locator(FixedLocator(at))
+    axis.set_minor_locator(NullLocator())
+    axis.set_major_formatter(FuncFormatter(lambda x, _: number(x, 3)))
