@@ -471,7 +471,9 @@ def _names(value: Any, key: str, where: Place) -> tuple[str, ...]:
     return tuple(value)
 
 
-def _species(given: Mapping[str, Any] | None, where: Place) -> tuple[dict[str, str], dict[str, int]]:
+def _species(
+    given: Mapping[str, Any] | None, where: Place
+) -> tuple[dict[str, str], dict[str, int]]:
     formulas: dict[str, str] = {}
     charges: dict[str, int] = {}
     known = ("formula", "charge")

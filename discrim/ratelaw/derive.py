@@ -108,11 +108,20 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         place=mechanism.place,
         findings=(*network.findings, *_silent(network, constants)),
     )
-    return lump(
+    lumped = lump(
         law,
         per_catalyst=any(f.kind == "catalyst" for f in network.families),
         equilibrium=mechanism.overall_equilibrium,
     )
+    wanted = mechanism.overall_equilibrium
+    if wanted and all(c.name != wanted for c in lumped.constants):
+        raise DiscrimError(
+            f'the law cannot be written with the overall equilibrium constant "{wanted}"',
+            place=mechanism.place,
+            do="It needs one forward and one reverse term. Write the steps that the overall "
+            "reaction can go back by with <=>, or leave overall_equilibrium out.",
+        )
+    return lumped
 
 
 def _ratio(x: Fraction) -> tuple[int, int]:
@@ -140,10 +149,7 @@ def _overall(network: Network) -> dict[Species, Fraction] | None:
     fluxes = _fluxes(network)
     of_fluid = changes(steps, network.fluid)
     made = [
-        [
-            sum((row[j] * flux[s.name] for j, s in enumerate(steps)), Fraction(0))
-            for row in of_fluid
-        ]
+        [sum((row[j] * flux[s.name] for j, s in enumerate(steps)), Fraction(0)) for row in of_fluid]
         for flux in fluxes
     ]
     rows = [v for v in made if any(v)]
@@ -195,7 +201,8 @@ def _production_rows(network: Network) -> Matrix:
     through = changes(network.equilibrated, network.fluid)
     return [
         [
-            direct[f][j] + sum((through[f][e] * of_equilibrated[e][j] for e in range(m)), Fraction(0))
+            direct[f][j]
+            + sum((through[f][e] * of_equilibrated[e][j] for e in range(m)), Fraction(0))
             for j in range(s)
         ]
         for f in range(len(network.fluid))
@@ -241,8 +248,11 @@ def _rate_parts(
             for s, q, c in zip(kinetic, rates, production_of[f], strict=True)
             if c
         ]
-        says = f"The rate is the sum over the pathways of {_equation(overall)}."
-        return _Parts(terms, says) if not solution.unknowns else _joined(terms, says)
+        if len(terms) == 1:
+            return _Parts(terms, f"The rate is that of the step {terms[0][0]} as written.")
+        if solution.unknowns:
+            return _joined(terms, f"The rate is that of the overall reaction {_equation(overall)}.")
+        return _Parts(terms, f"The rate is the sum over the pathways of {_equation(overall)}.")
     terms = [(s.name, q) for s, q in zip(kinetic, rates, strict=True)]
     if limiting:
         terms = [(n, q) for n, q in terms if n == limiting]
@@ -347,9 +357,7 @@ def _constants(network: Network, expressions: Sequence[Any]) -> tuple[Constant, 
             continue
         for symbol, word in ((forward(step), "ahead"), (backward(step), "back")):
             if symbol in used:
-                meaning = f"rate constant of {step.text}" + (
-                    f", {word}" if step.reversible else ""
-                )
+                meaning = f"rate constant of {step.text}" + (f", {word}" if step.reversible else "")
                 out.append(Constant(symbol.name, symbol, ConstantKind.RATE, meaning))
     return tuple(out)
 
@@ -363,5 +371,5 @@ def _silent(network: Network, constants: Sequence[Constant]) -> tuple[str, ...]:
     ]
     if not silent:
         return ()
-    which = f"step {silent[0]} does" if len(silent) == 1 else f"steps {', '.join(silent)} do"
-    return (f"The constants of {which} not stand in the law; rates say nothing about them.",)
+    which = f"step {silent[0]}" if len(silent) == 1 else f"steps {', '.join(silent)}"
+    return (f"No constant of {which} stands in the law; these rates say nothing about it.",)

@@ -95,7 +95,7 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
         polys = [p for p in parts if parts[p]]
         for i, a in enumerate(polys):
             for b in polys[i + 1 :]:
-                g = a.gcd(b)
+                g = common_factor(a, b)
                 if g.is_ground:
                     continue
                 ea, eb = parts.pop(a), parts.pop(b)
@@ -110,7 +110,7 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
     for factor, e in parts.items():
         left = e
         while left:
-            g = top.gcd(factor)
+            g = common_factor(top, factor)
             if g.is_ground:
                 break
             if g != factor and g != -factor:
@@ -130,6 +130,64 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
             kept[r(scale)] = 1
     ordered = sorted(kept.items(), key=lambda item: (len(item[0]), str(item[0])))
     return Quotient(top, tuple(ordered))
+
+
+# Points and modulus of the tests below: a common or repeated factor survives evaluation, so a
+# trivial image proves that there is none; the chance of a false alarm is about 1e-17 a test, and a
+# false alarm costs only time.
+_PRIME = 2**61 - 1
+
+
+def _image(poly: PolyElement, x: int) -> list[int]:
+    """Coefficients modulo the prime, highest first, of ``poly`` in generator ``x`` at the point."""
+    degree = poly.degree(x)
+    out = [0] * (degree + 1)
+    points = [pow(7, 1001 + 37 * i, _PRIME) for i in range(poly.ring.ngens)]
+    for monomial, c in poly.terms():
+        value = int(c) % _PRIME
+        for i, e in enumerate(monomial):
+            if e and i != x:
+                value = value * pow(points[i], e, _PRIME) % _PRIME
+        out[degree - monomial[x]] = (out[degree - monomial[x]] + value) % _PRIME
+    return out
+
+
+def _degree_of_gcd(a: list[int], b: list[int]) -> int:
+    """Degree of the greatest common divisor of two images, Euclid modulo the prime."""
+    while b:
+        inverse = pow(b[0], _PRIME - 2, _PRIME)
+        a = list(a)
+        while len(a) >= len(b):
+            f = a[0] * inverse % _PRIME
+            for i, y in enumerate(b):
+                a[i] = (a[i] - f * y) % _PRIME
+            while a and not a[0]:
+                a.pop(0)
+        a, b = b, a
+    return len(a) - 1
+
+
+def common_factor(a: PolyElement, b: PolyElement) -> PolyElement:
+    """Greatest common divisor; fast when there is none but a number."""
+    for x in range(a.ring.ngens):
+        if a.degree(x) > 0 and b.degree(x) > 0:
+            u, v = _image(a, x), _image(b, x)
+            if not u[0] or not v[0] or _degree_of_gcd(u, v) > 0:
+                return a.gcd(b)
+    return a.ring(ZZ.gcd(a.content(), b.content()))
+
+
+def _repeats(poly: PolyElement) -> bool:
+    """False when it is proven that no factor of ``poly`` is repeated."""
+    for x in range(poly.ring.ngens):
+        degree = poly.degree(x)
+        if degree < 2:
+            continue
+        u = _image(poly, x)
+        slope = [c * (degree - i) % _PRIME for i, c in enumerate(u[:-1])]
+        if not u[0] or _degree_of_gcd(u, slope) > 0:
+            return True
+    return False
 
 
 def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]:
@@ -153,6 +211,8 @@ def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]
         common = r.from_dict({lowest: ZZ(1)})
         primitive = primitive.exquo(common)
         gens = _square_free(common)[1]
+    if not _repeats(primitive):
+        return content, [*gens, (primitive, 1)]
     c, factors = primitive.sqf_list()
     return content * c, [*gens, *factors]
 
@@ -181,8 +241,10 @@ def times(a: Quotient, factor: Fraction) -> Quotient:
         return Quotient(r.zero)
     top = a.top * ZZ(factor.numerator)
     if factor.denominator == 1:
-        return Quotient(top, a.bottom) if not any(p.is_ground for p, _ in a.bottom) else quotient(
-            top, a.bottom
+        return (
+            Quotient(top, a.bottom)
+            if not any(p.is_ground for p, _ in a.bottom)
+            else quotient(top, a.bottom)
         )
     return quotient(top, [*a.bottom, (r(ZZ(factor.denominator)), 1)])
 
@@ -223,7 +285,7 @@ def solve_linear(
         if common.is_ground and abs(common.LC) == 1:
             break
         if x:
-            common = common.gcd(x)
+            common = common_factor(common, x)
     if determinant.exquo(common).LC < 0:
         common = -common
     return [x.exquo(common) for x in numerators], determinant.exquo(common)

@@ -132,7 +132,7 @@ def _steady(
         else:
             findings.append(
                 f"{species.name} is consumed first and made again later: its amount in the law is "
-                f'that of free {species.name}. If its total is what is known, write catalyst = '
+                f"that of free {species.name}. If its total is what is known, write catalyst = "
                 f'["{species.name}"].'
             )
     return found

@@ -53,7 +53,9 @@ class Monomial:
         )
 
 
-def _merge(a: Mapping[Any, Fraction], b: Mapping[Any, Fraction], p: Fraction) -> dict[Any, Fraction]:
+def _merge(
+    a: Mapping[Any, Fraction], b: Mapping[Any, Fraction], p: Fraction
+) -> dict[Any, Fraction]:
     out = dict(a)
     for key, e in b.items():
         out[key] = out.get(key, Fraction(0)) + p * e
@@ -398,8 +400,11 @@ def _totals(
                     network,
                     [species],
                     "it takes more or less than one "
-                    + ("site, so that the balance of sites" if family.kind == "sites"
-                       else "catalyst, so that the balance of the catalyst")
+                    + (
+                        "site, so that the balance of sites"
+                        if family.kind == "sites"
+                        else "catalyst, so that the balance of the catalyst"
+                    )
                     + " becomes quadratic",
                 )
             top, below = _powers(algebra, m, values)

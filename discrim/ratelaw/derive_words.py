@@ -138,9 +138,7 @@ def _steady_lines(network: Network, solution: Solution) -> list[tuple[str, Any]]
                 )
             )
             continue
-        balance = sympy.Add(
-            *(net(s).get(species, 0) * _rate_symbolic(s) for s in network.kinetic)
-        )
+        balance = sympy.Add(*(net(s).get(species, 0) * _rate_symbolic(s) for s in network.kinetic))
         lines.append((f"{species.name} at steady state", sympy.Eq(0, balance, evaluate=False)))
     return lines
 

@@ -1,4 +1,375 @@
+"""The identifiable form of a law: constants that only occur together become one.
+
+Write each denominator with one of its coefficients divided out. The remaining coefficients are all
+that rates can show. In the logarithms of their factors they span a space; its dimension is the
+number of constants that can be told apart, and the law is written in a basis of it made of constants
+of the steps where these lie in the space, and of named combinations where they do not.
+"""
+
 from __future__ import annotations
-from discrim.ratelaw.model import RateLaw
-def lump(law: RateLaw, *, per_catalyst: bool=False, equilibrium: str="") -> RateLaw:
-    return law
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from fractions import Fraction
+from typing import Any
+
+import sympy
+from sympy import Rational
+
+from discrim.ratelaw.derive_network import Matrix, row_reduce
+from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, order_of, read_form
+from discrim.ratelaw.lump_names import Candidate, candidates
+from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
+
+
+def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> RateLaw:
+    """``law`` with its rate, production and pathways in constants that rates can tell apart.
+
+    Parameters
+    ----------
+    law : its ``step_rate`` (or ``rate``) is a quotient of polynomials in the constants of the steps
+        and the amounts; other laws (bare laws with orders) are returned unchanged
+    per_catalyst : name saturation constants of a catalyst ``k_cat``, ``K_m_S``, ``K_i_S``
+    equilibrium : name of a constant to write a reversible law with: the ratio of the forward to the
+        reverse coefficient of the numerator
+
+    Returns
+    -------
+    RateLaw
+        ``constants`` are constants of the steps, or combinations with their ``definition``;
+        all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
+    """
+    known = law.step_constants or law.constants
+    names = list(law.production)
+    expressions = [law.rate, *(law.production[n] for n in names), *(p.rate for p in law.pathways)]
+    try:
+        form = read_form(expressions, [c.symbol for c in known])
+    except NotRational:
+        return law
+    if not known:
+        return law
+    decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
+    written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
+    rate, *others = written.expressions
+    production = dict(zip(names, others[: len(names)], strict=True))
+    if law.stoichiometry is not None:
+        # one expression, so that everything downstream sees that these are multiples of the rate
+        production = {n: law.stoichiometry.get(n, sympy.Integer(0)) * rate for n in names}
+    apart = others[len(names) :]
+    pathways = (
+        tuple(replace(p, rate=r) for p, r in zip(law.pathways, apart, strict=True)) if apart else ()
+    )
+    combined = [c for c in written.constants if c.definition is not None]
+    lines = list(law.derivation)
+    if combined:
+        for c in combined:
+            lines.append((f"Combined: {c.name}", sympy.Eq(c.symbol, c.definition, evaluate=False)))
+        lines.append(("Rate law in the constants that rates can tell apart", rate))
+    return replace(
+        law,
+        rate=rate,
+        production=production,
+        constants=written.constants,
+        pathways=pathways,
+        derivation=tuple(lines),
+        findings=(*law.findings, *written.findings),
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class _Written:
+    expressions: tuple[Any, ...]
+    constants: tuple[Constant, ...]
+    findings: tuple[str, ...]
+
+
+def _write(
+    form: Form, known: Sequence[Constant], decisive: int, *, per_catalyst: bool, equilibrium: str
+) -> _Written:
+    width = len(form.atoms)
+    space = _Space(_rows(_differences(form, decisive), width), width)
+    chosen: list[Candidate] = []
+    basis: Matrix = []
+    kept_single: set[int] = set()
+    for candidate in candidates(form, known, space.holds, per_catalyst, equilibrium):
+        if all(_Space(basis, width).holds_row(row) for row in space.rows):
+            break
+        if candidate.written:
+            inside = form.atoms[next(iter(candidate.vector))].free_symbols
+            if not inside <= {form.constants[i] for i in kept_single}:
+                continue
+        elif not space.holds(candidate.vector):
+            continue
+        row = dense(candidate.vector, width)
+        if len(row_reduce([*basis, row])[1]) > len(basis):
+            basis.append(row)
+            chosen.append(candidate)
+            if candidate.single is not None:
+                kept_single.add(candidate.single)
+    spanned = _Space(basis, width)
+    findings: list[str] = []
+    if not all(
+        spanned.holds_row(r) for r in _rows(_differences(form, len(form.expressions)), width)
+    ):
+        form = replace(form, expressions=form.expressions[:decisive])
+        findings.append(
+            "Some pathways have the same form: no measured rates could tell how much each carries, "
+            "so they are written as one."
+        )
+    norms = _norms(form, per_catalyst)
+    solver = _Solver(basis, width)
+    chosen, flipped = _positive(form, norms, chosen, solver)
+    if flipped:
+        solver = _Solver([dense(c.vector, width) for c in chosen], width)
+    constants = _constants(form, known, [c for c in chosen if not c.written])
+    order = {c.name: k for k, c in enumerate(known)}
+    rest = iter(constants)
+    symbols = [form.atoms[next(iter(c.vector))] if c.written else next(rest).symbol for c in chosen]
+    expressions = tuple(_expression(form, norms, e, solver, symbols) for e in form.expressions)
+    used = set().union(*(e.free_symbols for e in expressions))
+    kept = [c for c in constants if c.symbol in used]
+    kept.sort(key=lambda c: (c.kind is not ConstantKind.RATE, order.get(c.name, len(order))))
+    apparent = _functional_rank(form, [c.vector for c in chosen if not c.written])
+    if apparent < len(constants):
+        extra = len(constants) - apparent
+        relation = "a relation" if extra == 1 else f"{extra} relations"
+        findings.append(
+            f"The mechanism also implies {relation} between the constants of the law that the fit "
+            "does not impose; the fitted law is a little wider than the mechanism."
+        )
+    return _Written(expressions, tuple(kept), tuple(findings))
+
+
+def dense(vector: Vector, width: int) -> list[Fraction]:
+    return [vector.get(i, Fraction(0)) for i in range(width)]
+
+
+def _rows(vectors: Sequence[Vector], width: int) -> Matrix:
+    return [dense(v, width) for v in vectors]
+
+
+def subtract(a: Vector, b: Vector, times: Fraction = Fraction(1)) -> Vector:
+    out = dict(a)
+    for i, e in b.items():
+        out[i] = out.get(i, Fraction(0)) - times * e
+    return {i: e for i, e in out.items() if e}
+
+
+def _differences(form: Form, decisive: int) -> list[Vector]:
+    """Coefficients of the first ``decisive`` expressions, one of each denominator divided out."""
+    rows: list[Vector] = []
+    first = [next(iter(s.terms.values())).vector for s in form.sums]
+    for s, norm in zip(form.sums, first, strict=True):
+        rows += [subtract(c.vector, norm) for c in s.terms.values()]
+    for expression in form.expressions[:decisive]:
+        for term in expression:
+            scale: Vector = {}
+            for k, power in term.bottom:
+                scale = subtract(scale, first[k], Fraction(-power))
+            rows += [subtract(c.vector, scale) for c in term.top.terms.values()]
+    return [r for r in rows if r]
+
+
+class _Space:
+    """The span of some vectors, with a quick test of membership."""
+
+    def __init__(self, rows: Matrix, width: int) -> None:
+        reduced, pivots = row_reduce(rows) if rows else ([], [])
+        self.rows, self.pivots, self.width = reduced[: len(pivots)], pivots, width
+
+    def holds(self, vector: Vector) -> bool:
+        return self.holds_row(dense(vector, self.width))
+
+    def holds_row(self, left: list[Fraction]) -> bool:
+        for row, p in zip(self.rows, self.pivots, strict=True):
+            if left[p]:
+                f = left[p]
+                left = [x - f * y for x, y in zip(left, row, strict=True)]
+        return not any(left)
+
+
+class _Solver:
+    """Exponents of a vector in a basis."""
+
+    def __init__(self, basis: Matrix, width: int) -> None:
+        n = len(basis)
+        # columns = basis vectors, extended by the identity to carry the solution along
+        rows = [
+            [basis[j][i] for j in range(n)] + [Fraction(int(i == k)) for k in range(width)]
+            for i in range(width)
+        ]
+        self.rows, _ = row_reduce(rows, n) if n else ([], [])
+        self.n = n
+
+    def __call__(self, vector: Vector) -> list[Fraction]:
+        return [
+            sum((self.rows[r][self.n + i] * e for i, e in vector.items()), Fraction(0))
+            for r in range(self.n)
+        ]
+
+
+def _norms(form: Form, per_catalyst: bool) -> list[Vector]:
+    """For each denominator the coefficient that is written as 1."""
+    tops: dict[int, list[Any]] = {}
+    for term in form.expressions[0]:
+        lead = next((a for a, c in term.top.terms.items() if c.number > 0), None)
+        for k, _ in term.bottom:
+            if lead is not None:
+                tops.setdefault(k, []).append(lead)
+    out = []
+    for k, s in enumerate(form.sums):
+        choices = list(s.terms)
+        saturating = [a for a in tops.get(k, []) if a in s.terms]
+        if per_catalyst and saturating:
+            pick = saturating[0]
+        elif () in s.terms:
+            pick = ()
+        else:
+            within = [a for a in choices if any(_divides(a, t) for t in tops.get(k, []))]
+            pick = (within or choices)[0]
+        out.append(s.terms[pick].vector)
+    return out
+
+
+def _divides(a: Any, b: Any) -> bool:
+    powers = dict(b)
+    return all(powers.get(s, 0) >= e for s, e in a)
+
+
+def _scaled_terms(
+    form: Form, norms: Sequence[Vector], term: Term
+) -> list[tuple[Any, Fraction, Vector]]:
+    scale: Vector = {}
+    for k, power in term.bottom:
+        scale = subtract(scale, norms[k], Fraction(-power))
+    return [(a, c.number, subtract(c.vector, scale)) for a, c in term.top.terms.items()]
+
+
+def _positive(
+    form: Form, norms: Sequence[Vector], chosen: list[Candidate], solver: _Solver
+) -> tuple[list[Candidate], bool]:
+    """Turn round constants that the law only divides by, so that zero means "absent"."""
+    low = [Fraction(0)] * len(chosen)
+    high = [Fraction(0)] * len(chosen)
+
+    def note(vector: Vector) -> None:
+        for k, e in enumerate(solver(vector)):
+            low[k], high[k] = min(low[k], e), max(high[k], e)
+
+    for s, norm in zip(form.sums, norms, strict=True):
+        for c in s.terms.values():
+            note(subtract(c.vector, norm))
+    for expression in form.expressions:
+        for term in expression:
+            for _, _, vector in _scaled_terms(form, norms, term):
+                note(vector)
+    out = [
+        c.turned() if c.can_turn and low[k] < 0 and high[k] <= 0 else c
+        for k, c in enumerate(chosen)
+    ]
+    return out, out != chosen
+
+
+def _constants(
+    form: Form, known: Sequence[Constant], chosen: Sequence[Candidate]
+) -> tuple[Constant, ...]:
+    """The chosen constants as records; no combination takes the name of a constant of a step."""
+    taken = {c.name for c in known}
+    out = []
+    for c in chosen:
+        if c.single is not None:
+            out.append(known[c.single])
+            continue
+        name, n = c.name, 2
+        while name in taken:
+            name, n = f"{c.name}_{n}", n + 1
+        taken.add(name)
+        definition = sympy.Mul(
+            *(form.atoms[i] ** Rational(e.numerator, e.denominator) for i, e in c.vector.items())
+        )
+        symbol = sympy.Symbol(name, nonnegative=True)
+        out.append(Constant(name, symbol, c.kind, c.meaning, definition))
+    return tuple(out)
+
+
+def _expression(
+    form: Form,
+    norms: Sequence[Vector],
+    terms: Sequence[Term],
+    solver: Callable[[Vector], list[Fraction]],
+    symbols: Sequence[sympy.Symbol],
+) -> Any:
+    def value(amounts: Any, number: Fraction, vector: Vector) -> Any:
+        powers = [
+            s ** Rational(e.numerator, e.denominator)
+            for s, e in zip(symbols, solver(vector), strict=True)
+            if e
+        ]
+        powers += [s ** Rational(e.numerator, e.denominator) for s, e in amounts]
+        return sympy.Mul(Rational(number.numerator, number.denominator), *powers)
+
+    written: dict[int, Any] = {}
+
+    def below(k: int) -> Any:
+        if k not in written:
+            s = form.sums[k]
+            written[k] = sympy.Add(
+                *(value(a, c.number, subtract(c.vector, norms[k])) for a, c in s.terms.items())
+            )
+        return written[k]
+
+    parts = []
+    for term in terms:
+        pieces = [value(*t) for t in _scaled_terms(form, norms, term)]
+        parts.append(sympy.Mul(_common(pieces), *(below(k) ** -power for k, power in term.bottom)))
+    return sympy.Add(*parts)
+
+
+def _common(pieces: Sequence[Any]) -> Any:
+    """A sum with what all its terms share in front: k K (A B - C/K_eq)."""
+    if len(pieces) == 1:
+        return pieces[0]
+    powers: Mapping[Any, Any] = {}
+    for n, piece in enumerate(pieces):
+        here = {b: e for b, e in piece.as_powers_dict().items() if b.is_Symbol}
+        powers = (
+            here
+            if n == 0
+            else {
+                b: min(e, here[b]) for b, e in powers.items() if b in here and e > 0 and here[b] > 0
+            }
+        )
+    shared = sympy.Mul(*(b**e for b, e in powers.items() if e > 0))
+    if shared == 1:
+        return sympy.Add(*pieces)
+    return sympy.Mul(shared, sympy.Add(*(p / shared for p in pieces)), evaluate=True)
+
+
+def _functional_rank(form: Form, vectors: Sequence[Vector]) -> int:
+    """Rank of d log(lump)/d(constant) at a point, exact: how many lumps can move freely."""
+    used = sorted({i for v in vectors for i in v})
+    if all(i < len(form.constants) for i in used):
+        return len(vectors)
+    # squares of constants occur under roots; whole squares keep the point rational
+    point = {s: sympy.Integer((3 * k + 2) ** 2) for k, s in enumerate(form.constants)}
+    gradients: dict[int, list[Fraction]] = {}
+    for i in used:
+        atom = form.atoms[i]
+        at = atom.subs(point)
+        row = []
+        for s in form.constants:
+            slope = (atom.diff(s)).subs(point) / at if s in atom.free_symbols else sympy.Integer(0)
+            slope = sympy.nsimplify(slope) if not slope.is_Rational else slope
+            row.append(Fraction(int(slope.p), int(slope.q)))
+        gradients[i] = row
+    rows = [
+        [
+            sum((e * gradients[i][j] for i, e in v.items()), Fraction(0))
+            for j in range(len(form.constants))
+        ]
+        for v in vectors
+    ]
+    return len(row_reduce(rows)[1]) if rows else 0
+
+
+__all__ = ["dense", "lump", "order_of", "subtract"]

@@ -1,0 +1,240 @@
+"""A rate law as sums of coefficient times powers of amounts, over powers of such sums.
+
+Each coefficient, a polynomial in the constants of the steps, is split into a whole number and a
+product of *atoms*: single constants and polynomials that do not factor. In logarithms of the atoms
+every coefficient is then a vector, and what data can tell apart is linear algebra on these vectors.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from math import lcm
+from typing import Any
+
+import sympy
+from sympy import ZZ
+from sympy.polys.rings import PolyElement
+
+from discrim.ratelaw.derive_algebra import Algebra
+
+Amounts = tuple[tuple[sympy.Symbol, Fraction], ...]  # monomial in the amounts, sorted by name
+Vector = dict[int, Fraction]  # exponents of atoms, by index
+
+
+class NotRational(Exception):
+    """The law is no quotient of polynomials in its constants and amounts."""
+
+
+@dataclass(frozen=True, slots=True)
+class Coefficient:
+    """``number`` times the product of atoms to the powers ``vector``."""
+
+    number: Fraction
+    vector: Vector
+
+
+@dataclass(frozen=True, slots=True)
+class Sum:
+    """A polynomial in the amounts."""
+
+    terms: dict[Amounts, Coefficient]
+
+
+@dataclass(frozen=True, slots=True)
+class Term:
+    """``top`` over the product of ``sums[i]**power``."""
+
+    top: Sum
+    bottom: tuple[tuple[int, int], ...]  # (index into Form.sums, power)
+
+
+@dataclass(frozen=True, slots=True)
+class Form:
+    """Several expressions (the rate, productions, pathways) over shared denominators.
+
+    ``atoms`` are sympy expressions in the constants; the first ``len(constants)`` are the constants.
+    """
+
+    constants: tuple[sympy.Symbol, ...]
+    atoms: tuple[Any, ...]
+    sums: tuple[Sum, ...]
+    expressions: tuple[tuple[Term, ...], ...]
+
+    def coefficients(self) -> list[Coefficient]:
+        found = [c for s in self.sums for c in s.terms.values()]
+        return found + [c for e in self.expressions for t in e for c in t.top.terms.values()]
+
+
+def is_amount(symbol: sympy.Symbol) -> bool:
+    return symbol.name.startswith(("[", "{"))
+
+
+def read_form(expressions: Sequence[Any], constants: Sequence[sympy.Symbol]) -> Form:
+    """Bring rational expressions to :class:`Form`; raises :class:`NotRational`."""
+    roots: dict[sympy.Symbol, int] = dict.fromkeys(constants, 1)
+    for e in expressions:
+        _collect(e, roots)
+    for symbol in roots:
+        if symbol not in constants and not is_amount(symbol):
+            raise NotRational(str(symbol))
+    return _Reader(Algebra.over(roots), tuple(constants)).read(expressions)
+
+
+def _collect(e: Any, roots: dict[sympy.Symbol, int]) -> None:
+    if e.is_Symbol:
+        roots.setdefault(e, 1)
+    elif e.is_Pow:
+        if not e.exp.is_Rational:
+            raise NotRational(str(e))
+        if e.base.is_Symbol:
+            roots[e.base] = lcm(roots.get(e.base, 1), int(e.exp.q))
+        elif not e.exp.is_Integer:
+            raise NotRational(str(e))
+        else:
+            _collect(e.base, roots)
+    elif e.is_Add or e.is_Mul:
+        for a in e.args:
+            _collect(a, roots)
+    elif not e.is_Rational:
+        raise NotRational(str(e))
+
+
+class _Reader:
+    def __init__(self, algebra: Algebra, constants: tuple[sympy.Symbol, ...]) -> None:
+        self.algebra = algebra
+        self.ring = algebra.ring
+        self.constants = constants
+        self.n = len(constants)
+        self.atoms: list[Any] = list(constants)
+        self.atom_of: dict[PolyElement, int] = {}
+        self.sums: list[Sum] = []
+        self.sum_of: dict[PolyElement, int] = {}
+
+    def read(self, expressions: Sequence[Any]) -> Form:
+        out = []
+        for e in expressions:
+            grouped: dict[tuple[tuple[int, int], ...], list[tuple[PolyElement, int]]] = {}
+            for top, below in self.parts(e):
+                keys: dict[int, int] = {}
+                divisor = 1
+                for poly, power in below:
+                    if poly.is_ground:
+                        divisor *= int(poly.LC) ** power
+                        continue
+                    k = self.shared(poly)
+                    keys[k] = keys.get(k, 0) + power
+                grouped.setdefault(tuple(sorted(keys.items())), []).append((top, divisor))
+            terms = []
+            for key, pieces in grouped.items():
+                scale = lcm(*(d for _, d in pieces))
+                top = self.ring.zero
+                for piece, divisor in pieces:
+                    top = top + piece * (scale // divisor)
+                if top:
+                    terms.append(Term(self.sum(top, scale), key))
+            out.append(tuple(terms))
+        return Form(self.constants, tuple(self.atoms), tuple(self.sums), tuple(out))
+
+    def parts(self, e: Any) -> list[tuple[PolyElement, list[tuple[PolyElement, int]]]]:
+        """Additive parts of an expression as numerator and factors of the denominator."""
+        terms = e.args if e.is_Add else (e,)
+        return [self.part(t) for t in terms]
+
+    def part(self, e: Any) -> tuple[PolyElement, list[tuple[PolyElement, int]]]:
+        top = self.ring.one
+        below: list[tuple[PolyElement, int]] = []
+        for factor in e.args if e.is_Mul else (e,):
+            base, power = (factor.base, factor.exp) if factor.is_Pow else (factor, sympy.Integer(1))
+            if base.is_Symbol:
+                i = self.algebra.index[base]
+                whole = int(power * self.algebra.roots[i])
+                gen = self.ring.gens[i]
+                if whole >= 0:
+                    top = top * gen**whole
+                else:
+                    below.append((gen, -whole))
+            elif base.is_Rational:
+                number = base**power
+                top = top * ZZ(int(number.p))
+                if number.q != 1:
+                    below.append((self.ring(ZZ(int(number.q))), 1))
+            else:
+                poly = self.polynomial(base)
+                if power > 0:
+                    top = top * poly ** int(power)
+                else:
+                    below.append((poly, -int(power)))
+        return top, below
+
+    def polynomial(self, e: Any) -> PolyElement:
+        total = self.ring.zero
+        for top, below in self.parts(e):
+            if below:
+                raise NotRational("fractions within a sum")
+            total = total + top
+        return total
+
+    def shared(self, poly: PolyElement) -> int:
+        if poly not in self.sum_of:
+            self.sum_of[poly] = len(self.sums)
+            self.sums.append(self.sum(poly))
+        return self.sum_of[poly]
+
+    def sum(self, poly: PolyElement, divisor: int = 1) -> Sum:
+        apart: dict[tuple[int, ...], dict[tuple[int, ...], Any]] = {}
+        pad = (0,) * (self.ring.ngens - self.n)
+        for monomial, c in poly.terms():
+            apart.setdefault(monomial[self.n :], {})[(*monomial[: self.n], *pad)] = c
+        terms: dict[Amounts, Coefficient] = {}
+        for powers, inside in apart.items():
+            amounts = tuple(
+                (
+                    self.algebra.symbols[self.n + i],
+                    Fraction(e, self.algebra.roots[self.n + i]),
+                )
+                for i, e in enumerate(powers)
+                if e
+            )
+            amounts = tuple(sorted(amounts, key=lambda item: item[0].name))
+            terms[amounts] = self.coefficient(self.ring.from_dict(inside), divisor)
+        ordered = sorted(terms.items(), key=lambda item: order_of(item[0]))
+        return Sum(dict(ordered))
+
+    def coefficient(self, poly: PolyElement, divisor: int) -> Coefficient:
+        vector: Vector = {}
+        if len(poly) == 1:
+            monomial, c = next(iter(poly.terms()))
+            number = int(c)
+            self.powers(vector, monomial, 1)
+            return Coefficient(Fraction(number, divisor), vector)
+        content, factors = poly.factor_list()
+        number = int(content)
+        for factor, e in factors:
+            if len(factor) == 1:
+                monomial, c = next(iter(factor.terms()))
+                number *= int(c) ** e
+                self.powers(vector, monomial, e)
+                continue
+            if factor.LC < 0:
+                factor = -factor
+                number *= (-1) ** e
+            if factor not in self.atom_of:
+                self.atom_of[factor] = len(self.atoms)
+                self.atoms.append(self.algebra.expr(factor))
+            k = self.atom_of[factor]
+            vector[k] = vector.get(k, Fraction(0)) + e
+        return Coefficient(Fraction(number, divisor), vector)
+
+    def powers(self, vector: Vector, monomial: Sequence[int], times: int) -> None:
+        for i, e in enumerate(monomial[: self.n]):
+            if e:
+                share = Fraction(e * times, self.algebra.roots[i])
+                vector[i] = vector.get(i, Fraction(0)) + share
+
+
+def order_of(amounts: Amounts) -> tuple[Fraction, int, tuple[str, ...]]:
+    """Monomials by total power, then by name: 1, A, B, A B, ..."""
+    total = sum((e for _, e in amounts), Fraction(0))
+    return total, len(amounts), tuple(f"{s.name}^{e}" for s, e in amounts)
