@@ -1,8 +1,8 @@
 """The study file: reading it, and what later stages ask of it."""
 
-from discrim.study.load import (
+from discrim.study.load import load
+from discrim.study.lookup import (
     check_measured,
-    load,
     measured_species,
     to_shown,
     unit_of_species,

@@ -113,12 +113,12 @@ def _steps(node: Node, name: str) -> Mechanism:
 
 
 def _library(node: Node, folder: Path) -> Mechanism:
-    from discrim.mechanism.library import bind, load_mechanism
-
     written = node.needed("mechanism")
     place = node.place("mechanism")
     if "/" in written or "\\" in written or written.endswith(".toml") or written.startswith("~"):
         inside(folder, written, place)
+    from discrim.mechanism.library import bind, load_mechanism
+
     try:
         mechanism = load_mechanism(written, base=folder)
     except DiscrimError as error:
