@@ -120,7 +120,7 @@ def _library(node: Node, folder: Path) -> Mechanism:
     from discrim.mechanism.library import bind, load_mechanism
 
     try:
-        mechanism = load_mechanism(written, base=folder)
+        mechanism = load_mechanism(written, base=folder, place=place)
     except DiscrimError as error:
         raise _placed(error, place) from None
     if "bind" not in node.data:

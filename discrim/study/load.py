@@ -2,33 +2,33 @@
 
 from __future__ import annotations
 
-import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-
-from discrim.errors import DiscrimError, Place, nearest
-from discrim.runs.build import Exclusion, build_runs, listed, require_column
+from discrim.errors import DiscrimError, nearest
+from discrim.runs.build import Exclusion, build_runs, listed
 from discrim.runs.columns import (
-    CONDITIONS,
-    OBSERVATIONS,
     Declaration,
-    check_supported,
-    parse_is,
 )
-from discrim.runs.errors import Piece, parse_error
-from discrim.runs.model import Role, Runs
+from discrim.runs.model import Role
 from discrim.runs.read import RawTable, read_table
 from discrim.study.candidates import read_candidates
 from discrim.study.constants import read_constants, settings
+from discrim.study.declare import (
+    check_declared,
+    columns,
+    conditions,
+    findings,
+    pieces,
+    units_in_order,
+)
 from discrim.study.file import StudyFile, inside, read_toml
 from discrim.study.formulas import derived_units, names_of, parse_derived
 from discrim.study.model import Candidate, Derived, OtherEvidence, Study
 from discrim.study.node import Node
 from discrim.study.questions import read_questions
-from discrim.units import ParsedUnit, UnitSet, parse_quantity, parse_unit
+from discrim.units import UnitSet
 
 KEYS = (
     "title",
@@ -50,7 +50,6 @@ NOT_YET = ("runs", "window")
 REACTORS = ("rates", "differential")
 REACTORS_NOT_YET = ("stirred-tank", "batch", "semi-batch", "plug-flow")
 DEFAULT_LEVEL = 0.95
-_ONE_ONLY = (Role.RUN, Role.RUN_ORDER, Role.TEMPERATURE, Role.PH, Role.IONIC_STRENGTH)
 
 
 def load(path: str | Path) -> Study:
@@ -75,15 +74,15 @@ def load(path: str | Path) -> Study:
     root.check_keys(KEYS, NOT_YET)
     reactor = _reactor(root)
     raw = _table(file)
-    declared = _columns(root, raw) + _conditions(root, raw)
-    _check_declared(declared, root)
-    errors = {d.name: _pieces(d, root) for d in declared}
+    declared = columns(root, raw) + conditions(root, raw)
+    check_declared(declared, root)
+    errors = {d.name: pieces(d, root) for d in declared}
     derived_table = root.table("derived", "derived quantities")
     written_derived = derived_units(derived_table)
     constants = read_constants(root.table("constants", "constants"))
     stated = [u for u in written_derived.values() if u is not None]
     stated += [w.unit.unit for w in constants if w.unit is not None]
-    units = UnitSet.choose([*_units_in_order(declared), *stated])
+    units = UnitSet.choose([*units_in_order(declared), *stated])
     exclusions = _exclusions(root)
     runs = build_runs(raw, declared, errors, units, exclusions)
     by_name = {d.name: runs.find(d.name).unit for d in declared}
@@ -119,7 +118,7 @@ def load(path: str | Path) -> Study:
         units=units,
         sha256=file.sha256,
         exclusions=tuple((e.words, e.reason) for e in exclusions),
-        findings=(*_findings(runs, declared), *not_answered),
+        findings=(*findings(runs, declared), *not_answered),
     )
 
 
@@ -156,164 +155,6 @@ def _table(file: StudyFile) -> RawTable:
         )
     sheet = root.needed("sheet") if "sheet" in root.data else None
     return read_table(path, sheet=sheet, shown=written)
-
-
-# --- columns and conditions ----------------------------------------------------------------------
-
-
-def _columns(root: Node, raw: RawTable) -> list[Declaration]:
-    table = root.table("columns", "columns")
-    helpers = _error_columns(root)
-    out = []
-    for name in table.data:
-        node = table.table(name, f'column "{name}"')
-        node.check_keys(("is", "units", "error", "note"))
-        require_column(raw, name, node.place(key=True))
-        if "is" in node.data:
-            role, about = parse_is(node.needed("is"), node.place("is"))
-            check_supported(role, about, node.place("is"))
-        elif name in helpers:
-            role, about = Role.IGNORED, ""
-        else:
-            raise node.error(
-                f'"is" is missing: what is the column "{name}"?',
-                'Write for example is = "rate of P", or is = "A" for the amount of a species.',
-                key=True,
-            )
-        unit = None
-        if "units" in node.data:
-            unit = parse_unit(node.text("units"), node.place("units"))
-        out.append(
-            Declaration(
-                name,
-                role,
-                about,
-                unit,
-                node.data.get("error"),
-                None,
-                node.place("is") if "is" in node.data else node.place(key=True),
-                node.place("units"),
-                node.place("error"),
-            )
-        )
-    return out
-
-
-def _error_columns(root: Node) -> set[str]:
-    """Names of columns that some ``error = { column = ... }`` points at."""
-    out: set[str] = set()
-    for data in root.data.get("columns", {}).values():
-        error = data.get("error") if isinstance(data, dict) else None
-        for part in error if isinstance(error, list) else [error]:
-            if isinstance(part, dict) and isinstance(part.get("column"), str):
-                out.add(part["column"])
-    return out
-
-
-def _conditions(root: Node, raw: RawTable) -> list[Declaration]:
-    table = root.table("conditions", "conditions")
-    out = []
-    for name in table.data:
-        node = table.table(name, f'condition "{name}"')
-        node.check_keys(("is", "value", "error", "note"))
-        if name in raw.names:
-            raise node.error(
-                f'"{name}" is a column of the table too',
-                "Declare the column, or give the condition another name.",
-                key=True,
-            )
-        where = node.place("is") if "is" in node.data else node.place(key=True)
-        role, about = parse_is(node.text("is") or name, where)
-        check_supported(role, about, where)
-        if role not in CONDITIONS:
-            raise node.error(
-                f'"{role.value} {about}'.strip() + '" cannot be the same in all runs',
-                "Only conditions can: an amount, a temperature, a pH, an ionic strength.",
-                key=True,
-            )
-        if "value" not in node.data:
-            raise node.error(
-                f'the condition "{name}" has no value', 'Write value = "2.5 mmol/L".', key=True
-            )
-        value = parse_quantity(node.quantity_text("value"), node.place("value"))
-        out.append(
-            Declaration(
-                name,
-                role,
-                about,
-                value.unit,
-                node.data.get("error"),
-                value,
-                node.place("value"),
-                node.place("value"),
-                node.place("error"),
-            )
-        )
-    return out
-
-
-def _check_declared(declared: Sequence[Declaration], root: Node) -> None:
-    """One column a species, units of the right kind, something observed."""
-    seen: dict[tuple[Role, str], Declaration] = {}
-    for d in declared:
-        alone = d.role in _ONE_ONLY or bool(d.about)
-        if alone and (first := seen.setdefault((d.role, d.about), d)) is not d:
-            words = d.about if d.role is Role.SPECIES else f"{d.role.value} {d.about}".strip()
-            raise DiscrimError(
-                f'both "{first.name}" and "{d.name}" are {words}',
-                place=d.place,
-                do="Each can have one column; leave the other undeclared.",
-            )
-        _check_unit(d)
-    if not any(d.role in OBSERVATIONS for d in declared):
-        raise DiscrimError(
-            "no column is a rate",
-            place=root.place("columns", key=True),
-            do='Declare the observed column, for example [columns.rate] is = "rate of P".',
-        )
-
-
-def _check_unit(d: Declaration) -> None:
-    powers: Mapping[str, Any] = d.unit.exponents() if d.unit is not None else {}
-    text = d.unit.text if d.unit is not None else ""
-    if d.role is Role.TEMPERATURE and powers != {"temperature": 1}:
-        raise DiscrimError(f'a temperature in "{text}"', place=d.unit_place, do="Write K or °C.")
-    if d.role is Role.PH and powers:
-        raise DiscrimError(f'a pH in "{text}"', place=d.unit_place, do="A pH has no units.")
-    if d.role in (Role.SPECIES, Role.TOTAL) and "time" in powers:
-        raise DiscrimError(
-            f'the amount of {d.about} in "{text}"',
-            place=d.unit_place,
-            do="A concentration, partial pressure or fraction is needed. A rate is "
-            f'"rate of {d.about}"; flows are not yet supported.',
-        )
-
-
-def _pieces(d: Declaration, root: Node) -> tuple[Piece, ...] | None:
-    if d.error is None:
-        return None
-    section = "columns" if d.value is None else "conditions"
-    what = f'{section.rstrip("s")} "{d.name}"'
-
-    def locate(path: tuple[str | int, ...]) -> Place:
-        return root.doc.place((section, d.name, "error", *path), what=what)
-
-    return parse_error(d.error, d.error_place, locate)
-
-
-def _units_in_order(declared: Sequence[Declaration]) -> list[ParsedUnit]:
-    """Species first, then rates, then the rest: the first that uses a kind gives it its size."""
-
-    def rank(d: Declaration) -> int:
-        if d.role is Role.SPECIES:
-            return 0 if d.value is None else 1
-        return 2 if d.role in OBSERVATIONS else 3
-
-    return [
-        d.unit
-        for d in sorted(declared, key=rank)
-        if d.unit is not None and d.role is not Role.IGNORED
-    ]
 
 
 # --- the smaller tables --------------------------------------------------------------------------
@@ -405,34 +246,3 @@ def _check_totals(
                 do=f"Say how the free amounts follow from it under [derived], with "
                 f'"{d.name}" in a formula, or name {d.about} as catalyst of a candidate.',
             )
-
-
-def _findings(runs: Runs, declared: Sequence[Declaration]) -> list[str]:
-    out = []
-    for d in declared:
-        needs = d.role in OBSERVATIONS or d.role in (Role.SPECIES, Role.TOTAL, Role.CATALYST)
-        if needs and (d.unit is None or not d.unit.text):
-            out.append(
-                f'The units of "{d.name}" are not stated; its numbers are taken as they are.'
-            )
-        if d.value is not None and not _says_shared(d.error):
-            out.append(
-                f'The condition "{d.name}" has one value for all runs, so one error is taken to be '
-                "shared by all of them."
-            )
-    for column in runs.observations():
-        empty = int(np.count_nonzero(~np.isfinite(column.values)))
-        if empty:
-            out.append(
-                f'"{column.name}" is empty in {empty} of {runs.n} runs; they count as planned, not '
-                "as measured."
-            )
-    return out
-
-
-def _says_shared(error: Any) -> bool:
-    if isinstance(error, list):
-        return all(_says_shared(part) for part in error)
-    if isinstance(error, dict):
-        return "shared_by" in error
-    return bool(isinstance(error, str) and re.fullmatch(r"exact|0", error.strip())) or error == 0

@@ -1,0 +1,75 @@
+"""Numbers and quantities in text: ``0.600``, ``2.5 mmol/L``, ``1 % + 0.02 umol/L/s``."""
+
+from __future__ import annotations
+
+import math
+import re
+from dataclasses import dataclass
+
+from discrim.errors import DiscrimError, Place
+from discrim.units.model import ParsedUnit, Unit
+from discrim.units.read import parse_unit
+
+_NUMBER = re.compile(r"[-+−]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+−]?\d{1,4})?")
+
+
+@dataclass(frozen=True, slots=True)
+class Quantity:
+    """A number with its unit, as written; ``number`` keeps its digits."""
+
+    value: float
+    number: str
+    unit: ParsedUnit
+    percent: bool = False  # of something else: ``value`` is then the fraction
+
+    def internal(self, unit: Unit) -> float:
+        return float(self.unit.to_internal(self.value, unit))
+
+
+def parse_number(text: str, place: Place | None = None) -> float:
+    """A finite decimal number; messages name decimal commas, nan and overflow."""
+    clean = text.strip()
+    if _NUMBER.fullmatch(clean):
+        value = float(clean.replace("−", "-"))
+        if math.isfinite(value):
+            return value
+        raise DiscrimError(f'"{_short(clean)}" is too large for a number', place=place)
+    if re.fullmatch(r"[-+−]?\d{1,3}(,\d{3})+(\.\d+)?|[-+−]?\d*,\d+(?:[eE][-+−]?\d+)?", clean):
+        raise DiscrimError(
+            f'"{_short(clean)}" has a comma in a number',
+            place=place,
+            do="Write decimals with a point (0.5, not 0,5) and no separators of thousands.",
+        )
+    if re.fullmatch(r"[-+−]?(?:nan|inf(?:inity)?|n/?a|null|none)", clean, re.IGNORECASE):
+        raise DiscrimError(
+            f'"{clean}" is not a measured value',
+            place=place,
+            do="Leave the cell empty where a rate is not measured yet; else give the number.",
+        )
+    raise DiscrimError(f'"{_short(clean)}" stands where a number belongs', place=place)
+
+
+def parse_quantity(text: str, place: Place | None = None, *, percent: bool = False) -> Quantity:
+    """A number and a unit, ``2.5 mmol/L``; with ``percent`` also ``5 %`` (of something else)."""
+    clean = text.strip()
+    match = _NUMBER.match(clean)
+    rest = clean[match.end() :] if match else ""
+    if match is None or rest[:1] in (",", "_") or rest[:1].isdigit():
+        parse_number(clean.split(" ")[0] if clean else "", place)
+        raise DiscrimError(f'"{_short(clean)}" is no number with a unit', place=place)
+    value = parse_number(match[0], place)
+    unit = rest.strip()
+    if unit == "%" and percent:
+        return Quantity(value / 100, match[0], ParsedUnit("%", place=place), percent=True)
+    return Quantity(value, match[0], parse_unit(unit, place))
+
+
+def parse_sum(text: str, place: Place | None = None) -> tuple[Quantity, ...]:
+    """Terms joined by ``+``: ``1 % + 0.02 umol/L/s``."""
+    return tuple(
+        parse_quantity(term, place, percent=True) for term in re.split(r"\s\+\s", text.strip())
+    )
+
+
+def _short(text: str, most: int = 40) -> str:
+    return text if len(text) <= most else text[:most] + "…"
