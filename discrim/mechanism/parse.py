@@ -148,6 +148,15 @@ def parse_step(
     return Step(name, left, right, arrow.group() == "<=>", text, reader.place(0, len(text)))
 
 
+def is_species_name(text: str) -> bool:
+    """Whether ``text`` can be the name of a fluid species."""
+    try:
+        found = _Reader(text, Place(), ()).species(text, 0)
+    except DiscrimError:
+        return False
+    return found.name == text and " " not in text
+
+
 class _Reader:
     """The text of one step, with the means to point at any part of it."""
 

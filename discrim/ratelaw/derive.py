@@ -59,10 +59,11 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         each other by equilibrated steps.
     """
     network = classify(mechanism, measured)
-    solution = solve(network)
     overall = _overall(network)
+    fluxes = _fluxes(network)
+    solution = solve(network, _wanted(network, overall, fluxes))
     production_of = _production_rows(network)
-    parts = _rate_parts(network, solution, overall, production_of)
+    parts = _rate_parts(network, solution, overall, fluxes, production_of)
     algebra = solution.algebra
     rate = _grouped(algebra, [q for _, q in parts.terms])
     if rate == 0:
@@ -78,10 +79,12 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             production[species.name] = sympy.Rational(*_ratio(overall[species])) * rate
         else:
             pieces = [
-                times(q, c) for q, c in zip(solution.rates, production_of[f], strict=True) if c
+                times(solution.rates[s.name], c)
+                for s, c in zip(network.kinetic, production_of[f], strict=True)
+                if c
             ]
             production[species.name] = _grouped(algebra, _compact(network, pieces))
-    pathways = ()
+    pathways: tuple[Pathway, ...] = ()
     if len(parts.terms) > 1 and all(name for name, _ in parts.terms):
         pathways = tuple(
             Pathway(name, (name,), quotient.expr(algebra)) for name, quotient in parts.terms
@@ -106,7 +109,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         else {s.name: sympy.Rational(*_ratio(n)) for s, n in overall.items() if n},
         source=mechanism.source,
         place=mechanism.place,
-        findings=(*network.findings, *_silent(network, constants)),
+        findings=(*network.findings, *_silent(network, solution, constants)),
     )
     lumped = lump(
         law,
@@ -209,26 +212,31 @@ def _production_rows(network: Network) -> Matrix:
     ]
 
 
-def _simplicity(q: Quotient) -> tuple[int, int]:
-    return len(q.top), sum(len(d) for d, _ in q.bottom)
+def _wanted(
+    network: Network,
+    overall: Mapping[Species, Fraction] | None,
+    fluxes: Sequence[Mapping[str, Fraction]],
+) -> frozenset[str]:
+    """Kinetic steps whose net rates are needed: one is enough where all are in a fixed ratio."""
+    every = [s.name for s in network.kinetic]
+    if overall is None or len(fluxes) != 1:
+        return frozenset(every)
+    carrying = [s for s in network.kinetic if fluxes[0][s.name]]
+    simplest = min(carrying, key=lambda s: (s.name != network.mechanism.limiting, s.reversible))
+    return frozenset([simplest.name])
 
 
 def _rate_parts(
     network: Network,
     solution: Solution,
     overall: Mapping[Species, Fraction] | None,
+    fluxes: Sequence[Mapping[str, Fraction]],
     production_of: Matrix,
 ) -> _Parts:
-    kinetic, rates = network.kinetic, solution.rates
     limiting = network.mechanism.limiting
-    fluxes = _fluxes(network)
     if overall is not None and len(fluxes) == 1:
         scale = _flux_scale(network, overall, fluxes[0])
-        choices = [
-            times(q, scale / fluxes[0][s.name])
-            for s, q in zip(kinetic, rates, strict=True)
-            if fluxes[0][s.name]
-        ]
+        name, quotient = next(iter(solution.rates.items()))
         says = (
             f"The rate is that of the step {limiting} as written."
             if limiting
@@ -236,7 +244,9 @@ def _rate_parts(
             if len(network.mechanism.steps) == 1
             else f"The rate is that of the overall reaction {_equation(overall)}."
         )
-        return _Parts([("", min(choices, key=_simplicity))], says)
+        return _Parts([("", times(quotient, scale / fluxes[0][name]))], says)
+    kinetic = network.kinetic
+    rates = [solution.rates[s.name] for s in kinetic]
     if overall is not None:
         f = min(
             (f for f, s in enumerate(network.fluid) if overall[s]),
@@ -362,8 +372,8 @@ def _constants(network: Network, expressions: Sequence[Any]) -> tuple[Constant, 
     return tuple(out)
 
 
-def _silent(network: Network, constants: Sequence[Constant]) -> tuple[str, ...]:
-    names = {c.name for c in constants}
+def _silent(network: Network, solution: Solution, constants: Sequence[Constant]) -> tuple[str, ...]:
+    names = {c.name for c in constants} | {f"K_{name}" for name, _ in solution.relations}
     silent = [
         s.name
         for s in network.mechanism.steps

@@ -67,7 +67,7 @@ class Solution:
     """Everything eliminated: net rates of the kinetic steps and the intermediates."""
 
     algebra: Algebra
-    rates: tuple[Quotient, ...]  # net rate of each kinetic step
+    rates: Mapping[str, Quotient]  # net rate of each kinetic step that was asked for
     relations: tuple[tuple[str, Mapping[str, Fraction]], ...]  # K of a step, from others, in cycles
     unknowns: tuple[Species, ...]  # found from steady-state balances
     monomials: Mapping[Species, Monomial]
@@ -87,8 +87,8 @@ def equilibrium(step: Step) -> sympy.Symbol:
     return constant_symbol(f"K_{step.name}", ConstantKind.EQUILIBRIUM)
 
 
-def solve(network: Network) -> Solution:
-    """Eliminate all intermediates of ``network``.
+def solve(network: Network, wanted: frozenset[str]) -> Solution:
+    """Eliminate all intermediates of ``network``; net rates of the ``wanted`` kinetic steps.
 
     Raises ``DiscrimError`` when the balances are not linear in the intermediates, when they do not
     determine them, or when equilibrated steps put the measured species themselves at equilibrium.
@@ -110,10 +110,11 @@ def solve(network: Network) -> Solution:
     algebra = Algebra.over(ordered)
     values = _steady_state(network, algebra, free, sides)
     totals = _totals(network, algebra, monomials, values)
-    rates = tuple(
-        _net_rate(algebra, step, side, values, totals)
+    rates = {
+        step.name: _net_rate(algebra, step, side, values, totals)
         for step, side in zip(network.kinetic, sides, strict=True)
-    )
+        if step.name in wanted
+    }
     return Solution(algebra, rates, relations, free, monomials, values, totals)
 
 
@@ -140,7 +141,7 @@ def _equilibria(
     rows = [
         [of_inner[i][j] for i in range(n)]
         + [-of_outer[f][j] for f in range(len(outer))]
-        + [Fraction(int(j == l)) for l in range(m)]
+        + [Fraction(int(j == k)) for k in range(m)]
         for j in range(m)
     ]
     rows, pivots = row_reduce(rows, n)

@@ -2,8 +2,8 @@
 
 Write each denominator with one of its coefficients divided out. The remaining coefficients are all
 that rates can show. In the logarithms of their factors they span a space; its dimension is the
-number of constants that can be told apart, and the law is written in a basis of it made of constants
-of the steps where these lie in the space, and of named combinations where they do not.
+number of constants that can be told apart. The law is written in a basis of it: constants of the
+steps where these lie in the space, and named combinations where they do not.
 """
 
 from __future__ import annotations

@@ -54,7 +54,7 @@ class Term:
 class Form:
     """Several expressions (the rate, productions, pathways) over shared denominators.
 
-    ``atoms`` are sympy expressions in the constants; the first ``len(constants)`` are the constants.
+    ``atoms`` are sympy expressions in the constants, which are themselves the first of them.
     """
 
     constants: tuple[sympy.Symbol, ...]
