@@ -130,7 +130,7 @@ def _library(node: Node, folder: Path) -> Mechanism:
     try:
         return bind(mechanism, names)
     except DiscrimError as error:
-        raise _placed(error, node.place("bind")) from None
+        raise error.at(node.place("bind")) from None
 
 
 def _placed(error: DiscrimError, place: Place) -> DiscrimError:

@@ -27,6 +27,7 @@ _ONE_ONLY = (Role.RUN, Role.RUN_ORDER, Role.TEMPERATURE, Role.PH, Role.IONIC_STR
 
 
 def columns(root: Node, raw: RawTable) -> list[Declaration]:
+    """``[columns.X]``: each must be in the table and say what it is."""
     table = root.table("columns", "columns")
     helpers = _error_columns(root)
     out = []
@@ -76,6 +77,7 @@ def _error_columns(root: Node) -> set[str]:
 
 
 def conditions(root: Node, raw: RawTable) -> list[Declaration]:
+    """``[conditions.X]``: one value for all runs; without ``is`` the amount of species X."""
     table = root.table("conditions", "conditions")
     out = []
     for name in table.data:
@@ -155,6 +157,7 @@ def _check_unit(d: Declaration) -> None:
 
 
 def pieces(d: Declaration, root: Node) -> tuple[Piece, ...] | None:
+    """The ``error`` of a declaration as read; None where the study gives none."""
     if d.error is None:
         return None
     section = "columns" if d.value is None else "conditions"
@@ -182,6 +185,7 @@ def units_in_order(declared: Sequence[Declaration]) -> list[ParsedUnit]:
 
 
 def findings(runs: Runs, declared: Sequence[Declaration]) -> list[str]:
+    """What was assumed where the study is silent, in full sentences."""
     out = []
     for d in declared:
         needs = d.role in OBSERVATIONS or d.role in (Role.SPECIES, Role.TOTAL, Role.CATALYST)

@@ -83,10 +83,10 @@ def _syntax(error: tomllib.TOMLDecodeError, shown: str, text: str) -> DiscrimErr
     says = re.sub(r"\s*\(at .*\)$", "", str(error))
     place = Place(shown)
     if found := re.search(r"at line (\d+), column (\d+)", str(error)):
-        locator = Locator.__new__(Locator)
-        locator.file, locator.text = shown, text
-        locator._starts = [0, *(m.end() for m in re.finditer("\n", text))]
-        place = locator.line(int(found[1]), int(found[2]))
+        number, column = int(found[1]), int(found[2])
+        lines = text.split("\n")
+        line = lines[number - 1].rstrip("\r") if number <= len(lines) else ""
+        place = Place(shown, number, column, 1, line)
     return DiscrimError(
         f"not valid TOML: {says[:1].lower()}{says[1:200]}",
         place=place,

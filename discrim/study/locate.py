@@ -47,17 +47,6 @@ class Locator:
             path = path[:-1]
         return Place(self.file, what=what)
 
-    def at(self, offset: int, what: str = "") -> Place:
-        """Of one character."""
-        return self._place(offset, offset + 1, what)
-
-    def line(self, number: int, column: int = 0) -> Place:
-        """Of a line (from 1) and, if known, a column of it."""
-        if not 1 <= number <= len(self._starts):
-            return Place(self.file)
-        start = self._starts[number - 1]
-        return Place(self.file, number, column, 1, self._line_text(start))
-
     def _line_text(self, start: int) -> str:
         end = self.text.find("\n", start)
         return self.text[start : end if end >= 0 else len(self.text)].rstrip("\r")

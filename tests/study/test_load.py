@@ -375,3 +375,36 @@ def test_questions_that_are_not_answered_yet_are_findings(tmp_path):
     assert 'Question 3 ("equal") was read, but is not answered yet.' in findings
     assert 'Question 4 ("reversible") was read, but is not answered yet.' in findings
     assert any("empty in 1 of 5 runs" in f for f in findings)
+
+
+LIBRARY = """\
+table = "runs.csv"
+columns.p = { is = "H2", units = "kPa" }
+columns.rate = { is = "rate of Q", units = "mol/kg/s" }
+[[candidates]]
+name = "adsorbed"
+mechanism = "own/adsorbed.toml"
+bind = { A = "H2", P = "Q" }
+"""
+MECHANISM = """\
+title = "One adsorbed species reacts"
+source = "invented"
+sites = ["*"]
+[steps]
+ads_A = "A + * <=> A*"
+surface = "A* -> P + *"
+[assume]
+equilibrated = ["ads_A"]
+limiting = "surface"
+"""
+
+
+def test_mechanism_from_a_file_beside_the_study(tmp_path):
+    (tmp_path / "own").mkdir()
+    (tmp_path / "own" / "adsorbed.toml").write_text(MECHANISM)
+    mechanism = study(tmp_path, LIBRARY, "p,rate\n1,2\n2,3\n").candidates[0].mechanism
+    assert [s.text for s in mechanism.steps] == ["H2 + * <=> H2*", "H2* -> Q + *"]
+    with pytest.raises(DiscrimError, match=r"study\.toml, line 7(.|\n)*Species: A, P"):
+        study(tmp_path, LIBRARY.replace("{ A =", "{ B ="), "p,rate\n1,2\n2,3\n")
+    with pytest.raises(DiscrimError, match=r"study\.toml, line 6(.|\n)*cannot be read"):
+        study(tmp_path, LIBRARY.replace("own/ads", "own/abs"), "p,rate\n1,2\n2,3\n")
