@@ -229,8 +229,7 @@ class _Parser:
                 opening.end,
                 "Close the bracket where the group ends.",
             )
-        self.take()
-        return node
+        return replace(node, start=opening.start, end=self.take().end)
 
     def not_a_function(self, token: Token) -> NoReturn:
         word = token.text

@@ -29,6 +29,7 @@ from discrim.ratelaw.polynomials import (
     as_trees,
     collect,
     evaluate,
+    n_terms,
 )
 from discrim.ratelaw.printing import plain
 from discrim.ratelaw.solve import Progress, one_sign, put, put_fraction, solutions
@@ -37,6 +38,7 @@ _USUAL_ORDERS = tuple(sympy.Rational(p, q) for p, q in ((0, 1), (1, 2), (1, 1), 
 _MOST_CHOICES = 64  # combinations of values of orders that are tried
 _MOST_OPERATIONS = 1200  # of the two laws; beyond it a proof takes too long
 _MOST_PRODUCTS = 20_000  # terms multiplied to form one difference of two laws
+_MOST_EXPONENTS = 60_000  # terms of a law times variables; about a second of work
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -108,8 +110,9 @@ class Substitution:
 
 def _other_side(values: Mapping[str, sympy.Expr]) -> str:
     """A note where one name stands for a constant of each law."""
-    related = [v for n, v in values.items() if plain(v) != n]
-    if any(s.name in values for v in related for s in v.free_symbols):
+    renamed = {n for n, v in values.items() if plain(v) != n}
+    related = {s.name for n in renamed for s in values[n].free_symbols}
+    if related & renamed:
         return " (right of =: constants of the other law)"
     return ""
 
@@ -298,6 +301,9 @@ class _Case:
             return (2 if self._varies(key) else 1), 0, str(key)
 
         variables = collect(trees, ordering)
+        if max(n_terms(t) for t in trees) * len(variables.keys) > _MOST_EXPONENTS:
+            progress.dropped.append("the laws are too large to compare")
+            return
         try:
             fractions = [evaluate(t, variables) for t in trees]
         except ZeroDivisionError:
@@ -309,6 +315,14 @@ class _Case:
         n = len(larger)
         system = _System(self, choice, variables, open_)
         yield from system.solve(fractions[:n], fractions[n:], progress)
+
+    def without_effect(self, choice: Choice, zero: Sequence[str]) -> list[sympy.Symbol]:
+        """Held unknowns that no longer occur once the constants in ``zero`` are zero."""
+        if not choice or not zero:
+            return []
+        gone = {s: sympy.Integer(0) for s, name in self.names.items() if name in zero}
+        left = frozenset().union(*(e.xreplace(gone).free_symbols for e in self.larger))
+        return [s for s in choice if s not in left and s not in gone]
 
     def _varies(self, key: Key) -> bool:
         """Whether a variable changes from run to run: it holds a species or a quantity."""
@@ -383,6 +397,9 @@ class _System:
                 zero.append(name)
         vanish = [case.names[self.unknown[i]] for i in free if i not in tied]
         vanish += [case.names[s] for s in self.gone]
+        for symbol in case.without_effect(self.choice, zero):
+            vanish.append(case.names[symbol])
+            out.pop(case.names[symbol])
         fixed = {
             n: v for n, v in out.items() if v.is_number and n not in zero and n not in redundant
         }

@@ -11,7 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
-from math import lcm
+from math import comb, lcm, prod
 from typing import Any
 
 import sympy
@@ -77,6 +77,40 @@ def evaluate(tree: _Tree, variables: Variables) -> Any:
     for part in parts[1:]:
         out = out + part if op == "add" else out * part
     return out
+
+
+def n_terms(tree: _Tree) -> int:
+    """At most so many terms numerator and denominator have once multiplied out."""
+    above, below = _sizes(tree)
+    return above + prod(comb(n + power - 1, power) for n, power in below.values())
+
+
+def _sizes(tree: _Tree) -> tuple[int, dict[str, tuple[int, int]]]:
+    """Terms of the numerator; terms and power of each factor of the denominator."""
+    op = tree[0]
+    if op == "number" or op == "variable":
+        return 1, {}
+    if op == "pow":
+        above, below = _sizes(tree[1])
+        power = abs(tree[2])
+        raised = {name: (n, p * power) for name, (n, p) in below.items()}
+        if tree[2] >= 0:
+            return comb(above + power - 1, power), raised
+        out = {} if above == 1 else {str(tree[1]): (above, power)}
+        return prod(comb(n + p - 1, p) for n, p in raised.values()), out
+    parts = [_sizes(t) for t in tree[1]]
+    shared: dict[str, tuple[int, int]] = {}
+    for _, below in parts:
+        for name, (n, power) in below.items():
+            known = shared.get(name, (n, 0))[1]
+            shared[name] = n, (max(known, power) if op == "add" else known + power)
+    if op == "mul":
+        return prod(above for above, _ in parts), shared
+    total = 0
+    for above, below in parts:
+        missing = {name: p - below.get(name, (n, 0))[1] for name, (n, p) in shared.items()}
+        total += above * prod(comb(shared[name][0] + p - 1, p) for name, p in missing.items())
+    return total, shared
 
 
 def _roots(tree: _Tree, out: dict[Key, int]) -> None:
