@@ -47,6 +47,8 @@ NAMES = {
     PLUM: "plum",
     SHADE: "shade",
 }
+#: No more panels than this in one figure; the rest is in the tables.
+MOST_PANELS = 8
 WIDTH = 5.0  # inches; type stays readable when this is shown at half its size
 _RC: dict[str, Any] = {
     "font.family": "sans-serif",
@@ -105,7 +107,8 @@ class Picture:
 @contextmanager
 def style(name: str) -> Iterator[None]:
     """The look of the figures, in force inside the block only."""
-    with warnings.catch_warnings(), matplotlib.rc_context(_RC | {"svg.hashsalt": name}):
+    settings: Any = _RC | {"svg.hashsalt": name}
+    with warnings.catch_warnings(), matplotlib.rc_context(settings):
         # Names in a script that the font lacks are drawn as boxes in the PNG; that is no reason
         # to lose the report.
         warnings.filterwarnings("ignore", message=".*[Gg]lyph.*")
@@ -123,22 +126,32 @@ def finish(figure: Figure, name: str, *, title: str, caption: str, alt: str) -> 
 
 def inline(picture: Picture) -> str:
     """The SVG for a page: colours from the page's style sheet, ids that are the figure's own."""
-    text = re.sub(r'\bid="', f'id="{picture.name}-', picture.svg)
-    text = re.sub(r"url\(#", f"url(#{picture.name}-", text)
-    text = re.sub(r'(xlink:href|href)="#', rf'\1="#{picture.name}-', text)
+    text = re.sub(r"<metadata>.*?</metadata>", "", picture.svg, flags=re.DOTALL)
+    text = re.sub(r'\bid="', f'id="{picture.name}-', text)
+    text = re.sub(r'(url\(|href=")#', rf"\1#{picture.name}-", text)
     for colour, name in NAMES.items():
         text = text.replace(f": {colour}", f": var(--{name})")
-    text = text.replace("'DejaVu Sans'", "var(--type)").replace("<metadata>", "<metadata hidden=''>")
-    text = re.sub(r"<metadata.*?</metadata>", "", text, flags=re.DOTALL)
-    return re.sub(r'(<svg[^>]*?) width="[^"]*"', r"\1", re.sub(r'(<svg[^>]*?) height="[^"]*"', r"\1", text, count=1), count=1)
+        text = text.replace(f'fill="{colour}"', f'style="fill: var(--{name})"')
+    text = text.replace("'DejaVu Sans'", "var(--type)")
+    # The page sets the size; the viewBox keeps the shape.
+    head, rest = text.split(">", 1)
+    return re.sub(r' (width|height)="[^"]*"', "", head) + ">" + rest
 
 
 def sheet(height: float, *, width: float = WIDTH) -> Figure:
     return Figure(figsize=(width, height))
 
 
-def panels(n: int, *, across: int = 2, height: float = 1.9, left: float = 0.62,
-           gap: float = 0.62, below: float = 0.5, above: float = 0.28) -> tuple[Figure, list[Any]]:
+def panels(
+    n: int,
+    *,
+    across: int = 2,
+    height: float = 1.9,
+    left: float = 0.62,
+    gap: float = 0.62,
+    below: float = 0.5,
+    above: float = 0.28,
+) -> tuple[Figure, list[Any]]:
     """A figure with ``n`` panels, at most ``across`` side by side; all lengths in inches.
 
     Set out by hand, because measuring the text to do so takes longer than drawing.

@@ -89,6 +89,7 @@ class Content:
     problems: tuple[str, ...] = ()
     cautions: tuple[str, ...] = ()
     candidates: Table | None = None
+    criteria: Table | None = None
     laws: tuple[Law, ...] = ()
     lockstep: tuple[str, ...] = ()
     trade_offs: tuple[tuple[str, str], ...] = ()  # candidate, words
@@ -123,6 +124,7 @@ def build(document: Document) -> Content:
         problems=tuple(not_computed(document)),
         cautions=_cautions(document),
         candidates=tables.candidates(ordered),
+        criteria=tables.criteria(ordered),
         laws=tuple(law(c) for c in ordered),
         lockstep=tuple(_lockstep(item) for item in read.records(runs, "lockstep")),
         trade_offs=_trade_offs(ordered),
@@ -252,13 +254,20 @@ def _answer(question: Document, document: Document) -> Answer:
     return Answer(
         asks=_asks(question),
         verdict=shown,
-        decided=verdict in ("participates", "negligible", "stands", "rejected"),
+        decided=_decided(asks, verdict, len(standing), len(rejected)),
         sentence=sentence,
         why=tuple(read.texts(question, "why") or read.texts(question, "reasons")),
         settle=tuple(read.texts(question, "settle")),
         facts=tuple(_facts(question, standing, rejected)),
         details=tables.behind(question),
     )
+
+
+def _decided(asks: str, verdict: str, standing: int, rejected: int) -> bool:
+    """Whether the runs settled the question; rivals are settled when one alone stands."""
+    if asks == "stands" and standing + rejected:
+        return standing == 1
+    return verdict not in ("", "undecided")
 
 
 def _sentence(question: Document, verdict: str, about: str) -> str:

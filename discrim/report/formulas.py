@@ -9,14 +9,17 @@ from __future__ import annotations
 from html import escape
 from xml.etree import ElementTree
 
-_ELEMENTS = frozenset(
-    "math mrow mi mn mo mtext mspace ms mfrac msqrt mroot mstyle merror mpadded mphantom msub msup "
-    "msubsup munder mover munderover mmultiscripts mprescripts none mtable mtr mtd".split()
-)
-_ATTRIBUTES = frozenset(
-    "mathvariant stretchy fence separator form lspace rspace width linethickness columnalign "
-    "displaystyle accent".split()
-)
+# fmt: off
+_ELEMENTS = frozenset((
+    "math", "mrow", "mi", "mn", "mo", "mtext", "mspace", "ms", "mfrac", "msqrt", "mroot", "mstyle",
+    "merror", "mpadded", "mphantom", "msub", "msup", "msubsup", "munder", "mover", "munderover",
+    "mmultiscripts", "mprescripts", "none", "mtable", "mtr", "mtd",
+))
+_ATTRIBUTES = frozenset((
+    "mathvariant", "stretchy", "fence", "separator", "form", "lspace", "rspace", "width",
+    "linethickness", "columnalign", "displaystyle", "accent",
+))
+# fmt: on
 _LONGEST, _DEEPEST = 200_000, 120
 
 

@@ -14,7 +14,7 @@ from discrim.report.content import build
 from discrim.report.formulas import safe_mathml
 from discrim.report.read import Document
 
-_EXPONENT = re.compile(r"(?<=\d)e(-?)(\d+)\b")
+_EXPONENT = re.compile(r"(?<![\w.])(\d+(?:\.\d+)?)e(-?)(\d+)\b")
 _MINUS = re.compile(r"(?<![\w.)])-(?=[\d.])")
 
 
@@ -51,7 +51,9 @@ def _place(name: str) -> str:
 
 def numeral(text: str) -> Markup:
     """A number as print sets it: ``1.2e-5`` as 1.2 × 10⁻⁵, a true minus sign."""
-    out = _EXPONENT.sub(lambda m: f" × 10<sup>{'−' if m[1] else ''}{m[2]}</sup>", str(escape(text)))
+    out = _EXPONENT.sub(
+        lambda m: f"{m[1]} × 10<sup>{'−' if m[2] else ''}{m[3]}</sup>", str(escape(text))
+    )
     return Markup(_MINUS.sub("−", out))
 
 

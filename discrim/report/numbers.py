@@ -14,7 +14,7 @@ MISSING = "–"
 #: Digits of a number that comes without an uncertainty.
 DIGITS = 4
 # Outside these powers of ten a number is written with an exponent.
-_FIXED_FROM, _FIXED_TO = -4, 6
+_FIXED_FROM, _FIXED_TO = -3, 6
 _CONTEXT = Context(prec=60, rounding=ROUND_HALF_UP)
 
 
@@ -67,8 +67,8 @@ def number(x: Any, digits: int = DIGITS) -> str:
 
 
 def as_read(x: Any) -> str:
-    """A reading from the table: all its digits up to nine, no noise of the conversion of units."""
-    return number(x, 9)
+    """A reading from the table: its digits up to seven, no noise of the conversion of units."""
+    return number(x, 7)
 
 
 def interval(low: Any, high: Any, how: Any = None) -> str:
@@ -130,7 +130,7 @@ def probability(p: Any) -> str:
         return "< 0.0001"
     if v > 0.99:
         return "> 0.99"
-    return _at_place(v, max(_exponent(v) - 1, -4))
+    return f"{_quantized(v, max(_exponent(v) - 1, -4)):f}"
 
 
 def factor(x: Any) -> str:

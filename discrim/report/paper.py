@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import textwrap
 import unicodedata
 from collections.abc import Mapping, Sequence
@@ -15,17 +16,21 @@ WIDTH = 80
 _ASCII = {
     "–": "-", "—": "-", "−": "-", "“": '"', "”": '"', "‘": "'", "’": "'", "·": "*", "×": "x",
     "≥": ">=", "≤": "<=", "±": "+/-", "→": "->", "µ": "u", "μ": "u", "√": "sqrt", "…": "...",
-    "⇌": "<=>", "∞": "inf", "≈": "~", "≠": "!=", "°": "deg ", "•": "*", "−": "-", "′": "'",
-    "⁻": "-", "⁺": "+",
+    "⇌": "<=>", "∞": "inf", "≈": "~", "≠": "!=", "°": "deg ", "•": "*", "′": "'",
     "α": "alpha", "β": "beta", "γ": "gamma", "δ": "delta", "Δ": "Delta", "ε": "epsilon",
     "θ": "theta", "κ": "kappa", "λ": "lambda", "ν": "nu", "ρ": "rho", "σ": "sigma", "τ": "tau",
     "φ": "phi", "χ": "chi", "ψ": "psi", "ω": "omega", "Ω": "Omega",
 }  # fmt: skip
 
 
+_RAISED = re.compile("[⁻⁺⁰¹²³⁴⁵⁶⁷⁸⁹]+")
+_LOWERED = str.maketrans("⁻⁺⁰¹²³⁴⁵⁶⁷⁸⁹", "-+0123456789")
+
+
 def to_ascii(text: str) -> str:
     """The text in plain characters: signs by their usual stand-ins, accents dropped, else ``?``."""
-    out = "".join(_ASCII.get(ch, ch) for ch in text)
+    out = _RAISED.sub(lambda m: "^" + m[0].translate(_LOWERED), text)
+    out = "".join(_ASCII.get(ch, ch) for ch in out)
     out = unicodedata.normalize("NFKD", out)
     kept = "".join(ch for ch in out if not unicodedata.combining(ch))
     return kept.encode("ascii", "replace").decode("ascii")

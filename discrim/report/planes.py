@@ -93,7 +93,9 @@ def _band(
             handles.append((patch, "allowed by one run"))
     line = _points(band.get("line"), fx, fy)
     if len(line) > 1:
-        ax.plot([p[0] for p in line], [p[1] for p in line], color=BLUE, lw=0.7, alpha=0.75, zorder=2)
+        ax.plot(
+            [p[0] for p in line], [p[1] for p in line], color=BLUE, lw=0.7, alpha=0.75, zorder=2
+        )
 
 
 def _contours(
@@ -156,5 +158,3 @@ def _points(given: Any, fx: float, fy: float) -> list[tuple[float, float]]:
             if a is not None and b is not None:
                 out.append((a * fx, b * fy))
     return out
-
-

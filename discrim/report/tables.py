@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from decimal import Decimal
 from typing import Any
 
 from discrim.report import read
@@ -89,6 +91,7 @@ def outcome(candidate: Any) -> str:
 
 
 def candidates(ordered: Sequence[Any]) -> Table | None:
+    """What became of each candidate, and its law."""
     rows = []
     for c in ordered:
         near = read.texts(c, "inseparable_from")
@@ -96,24 +99,30 @@ def candidates(ordered: Sequence[Any]) -> Table | None:
         remark = f"inseparable from {'; '.join(near)}" if near else ""
         if special:
             remark += f"{'; ' if remark else ''}no better than {special}"
-        rows.append(
-            [
-                read.text(c, "name"),
-                outcome(c),
-                read.text(c, "n_constants"),
-                number(read.value(c, "objective")),
-                number(read.value(c, "rss")),
-                read.text(c, "degrees_of_freedom"),
-                probability(read.value(c, "fit_p")),
-                probability(read.value(read.part(c, "lack_of_fit"), "p")),
-                _fixed(read.value(c, "aic")),
-                _fixed(read.value(c, "aicc")),
-                _fixed(read.value(c, "bic")),
-                _weight(read.value(c, "weight")),
-                remark,
-                read.text(c, "law"),
-            ]
-        )
+        rows.append([read.text(c, "name"), outcome(c), remark, read.text(c, "law")])
+    heads = [("Candidate", False), ("Outcome", False), ("Remark", False), ("Law", False)]
+    return make("Candidates", heads, rows, marks=[outcome(c) for c in ordered])
+
+
+def criteria(ordered: Sequence[Any]) -> Table | None:
+    """How well each candidate fits, and the criteria that rank them."""
+    rows = [
+        [
+            read.text(c, "name"),
+            outcome(c),
+            read.text(c, "n_constants"),
+            number(read.value(c, "objective")),
+            number(read.value(c, "rss")),
+            read.text(c, "degrees_of_freedom"),
+            probability(read.value(c, "fit_p")),
+            probability(read.value(read.part(c, "lack_of_fit"), "p")),
+            _fixed(read.value(c, "aic")),
+            _fixed(read.value(c, "aicc")),
+            _fixed(read.value(c, "bic")),
+            _weight(read.value(c, "weight")),
+        ]
+        for c in ordered
+    ]
     heads = [
         ("Candidate", False),
         ("Outcome", False),
@@ -127,11 +136,9 @@ def candidates(ordered: Sequence[Any]) -> Table | None:
         ("AICc", True),
         ("BIC", True),
         ("Weight", True),
-        ("Remark", False),
-        ("Law", False),
     ]
     return make(
-        "Candidates",
+        "Fit and criteria",
         heads,
         rows,
         note="Q is the weighted sum of squares with the errors of the conditions in it. AIC, AICc, "
@@ -313,16 +320,18 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
     for c in ordered:
         rows = []
         for k in read.records(c, "constants"):
-            v, u = rounded(read.value(k, "value"), read.value(k, "standard_error"))
             found, ends = read.part(k, "intervals"), read.part(k, "interval_ends")
             notes = read.part(k, "interval_notes")
+            value, error = read.value(k, "value"), read.value(k, "standard_error")
+            power = _power([value, *(v for kind in KINDS for v in read.numbers(found, kind))])
+            v, u = rounded(_by(power, value), _by(power, error))
             row = [
                 read.text(k, "name"),
                 v + (" (bound)" if k.get("at_bound") is True else ""),
                 u,
-                read.text(k, "units"),
+                _power_words(power, read.text(k, "units")),
             ]
-            row += [_interval(found.get(kind), ends.get(kind)) for kind in KINDS]
+            row += [_interval(found.get(kind), ends.get(kind), power) for kind in KINDS]
             remarks = [f"{kind}: {read.text(notes, kind)}" for kind in KINDS if kind in notes]
             row.append("; ".join([w for w in [read.text(k, "meaning"), *remarks] if w]))
             rows.append(row)
@@ -340,10 +349,34 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
     return tuple(out)
 
 
-def _interval(ends: Any, how: Any) -> str:
+def _interval(ends: Any, how: Any, power: int) -> str:
     if not isinstance(ends, list | tuple) or len(ends) != 2:
         return MISSING
-    return interval(ends[0], ends[1], how)
+    return interval(_by(power, as_number(ends[0])), _by(power, as_number(ends[1])), how)
+
+
+def _power(values: Sequence[float | None]) -> int:
+    """The power of ten that is taken out of one constant and its intervals, 0 for none.
+
+    That of its value; of the largest end where the value is zero.
+    """
+    known = [abs(v) for v in values if v]
+    if not known:
+        return 0
+    power = math.floor(math.log10(abs(values[0]) if values[0] else max(known)))
+    return 0 if -3 <= power < 5 or abs(power) > 290 else power
+
+
+def _by(power: int, x: float | None) -> float | None:
+    """``x`` in units of that power; through decimal digits, so that 3e-6 becomes 3 exactly."""
+    return x if x is None or not power else float(Decimal(repr(x)).scaleb(-power))
+
+
+def _power_words(power: int, units: str) -> str:
+    if not power:
+        return units
+    raised = str(power).translate(str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"))
+    return f"10{raised} {'' if units == '1' else units}".strip()
 
 
 def behind(question: Mapping[str, Any]) -> tuple[Table, ...]:

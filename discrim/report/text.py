@@ -12,7 +12,7 @@ from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
 
 #: Columns that only the HTML report shows.
-_WIDE = ("Law", "RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
+_WIDE = ("RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
 
 
 def summary(document: Document, *, width: int = WIDTH, colour: bool = False) -> str:
@@ -90,11 +90,11 @@ def _findings(paper: Paper, content: Content) -> None:
 
 
 def _candidates(paper: Paper, content: Content) -> None:
-    if content.candidates is None:
+    table = content.candidates
+    if table is None:
         return
     paper.heading("Candidates")
-    table = content.candidates
-    paper.table(table, drop=(*_WIDE, "Remark"))
+    paper.table(content.criteria, drop=_WIDE)
     if "Remark" in table.heads:
         i = table.heads.index("Remark")
         notes = [f"{row[0]}: {row[i]}" for row in table.rows if row[i]]

@@ -186,8 +186,8 @@ def two_amines(*, decided: bool = False) -> Document:
         "why": ["The test rejects zero in the one candidate that stands (p < 0.0001).",
                 "The verdict holds up to 4.2 times the stated errors of the concentrations."]
         if decided
-        else ["[B]/[A] stays between 2.496 and 2.504; the two terms of the law are nearly copies of "
-              "each other.",
+        else ["[B]/[A] stays between 2.496 and 2.504; the two terms of the law are nearly "
+              "copies of each other.",
               "Anything from 0 to 100 % of the rate could come from B.",
               "E² explains these runs as well as E·B."],
         "settle": [] if decided else ["Runs at two or more other ratios of [B] to [A]."],
@@ -340,8 +340,8 @@ def catalyst() -> Document:
         "questions": [
             {"asks": "stands", "about": "all", "verdict": "stands",
              "standing": [names[0], names[1], names[4]], "rejected": [names[2], names[3]],
-             "sentence": "Three of six candidates stand; two of them cannot be told apart by rates. "
-             "These laws are not the only possible ones.",
+             "sentence": "Three of six candidates stand; two of them cannot be told apart by "
+             "rates. These laws are not the only possible ones.",
              "why": ["“A adsorbed, B from the gas” predicts the same rates within the errors."],
              "settle": ["Not a rate: isotope effect, labelling or spectroscopy of the surface."]},
             {"asks": "participates", "about": "P", "verdict": "negligible",
