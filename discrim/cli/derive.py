@@ -12,7 +12,7 @@ HELP = "print the rate laws and how they follow from the steps"
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     from discrim.cli.parser import common
 
-    common(parser, study="a study file or a mechanism file (TOML)")
+    common(parser, study="a study or mechanism file (TOML), or a mechanism of the library by name")
 
 
 def run(options: argparse.Namespace) -> int:
@@ -20,7 +20,9 @@ def run(options: argparse.Namespace) -> int:
     from discrim.report.text import laws
     from discrim.weigh import derive_all, derive_mechanism
 
-    if is_mechanism(Path(options.study)):
+    given = Path(options.study)
+    of_library = not given.exists() and not given.suffix and len(given.parts) == 1
+    if of_library or is_mechanism(given):
         found: list[dict[str, Any]] = [derive_mechanism(options.study)]
     else:
         from discrim.study import load

@@ -36,14 +36,14 @@ def look() -> dict[str, Any]:
 class Progress:
     """One line on a terminal's standard error, rewritten; elsewhere it does nothing.
 
-    Called as ``progress(done, total, words)``.
+    Called as ``progress(words, done, total)``.
     """
 
     def __init__(self, *, quiet: bool = False) -> None:
         self.on = not quiet and is_terminal(sys.stderr)
         self.shown = 0
 
-    def __call__(self, done: int = 0, total: int = 0, words: str = "") -> None:
+    def __call__(self, words: str, done: int = 0, total: int = 0) -> None:
         if not self.on:
             return
         line = f"{done}/{total} {words}" if total else words

@@ -33,7 +33,7 @@ def run(options: argparse.Namespace) -> int:
     progress = Progress(quiet=options.quiet)
     try:
         document = weigh(study, seed=options.seed, workers=options.workers, progress=progress)
-        progress(0, 0, "writing the results")
+        progress("writing the results")
         written = write_report(document, folder)
     finally:
         progress.close()

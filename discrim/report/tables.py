@@ -474,4 +474,4 @@ def _fixed(x: float | None, places: int = 1) -> str:
 def _weight(x: float | None) -> str:
     if x is None:
         return MISSING
-    return "< 0.001" if x < 0.001 else f"{x:.3f}"
+    return "< 0.001" if x < 0.001 else "> 0.999" if 0.999 < x < 1 else f"{x:.3f}"

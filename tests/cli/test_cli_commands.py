@@ -41,7 +41,7 @@ def stages(monkeypatch):
 
     def run(study, *, seed, workers, progress):
         calls.append(("weigh", study, seed, workers))
-        progress(1, 2, "fitting")
+        progress("fitting", 1, 2)
         return weigh.document
 
     weigh.document = DOCUMENT
@@ -150,6 +150,8 @@ def test_check_and_derive(stages, tmp_path, capsys):
     mechanism.write_text('title = "x"\n[steps]\na = "A + B -> P"\n')
     assert cli.main(["derive", str(mechanism), "--quiet"]) == 0
     assert capsys.readouterr().out == "mechanism: r = k*[A]*[B]\n"
+    assert cli.main(["derive", "two-parallel-pathways", "--quiet"]) == 0
+    assert capsys.readouterr().out == "mechanism: r = k*[A]*[B]\n"
     assert cli.main(["derive", "s.toml", "--json"]) == 0
     assert json.loads(capsys.readouterr().out) == [{"name": "one", "law": "r = k*[A]"}]
 
@@ -205,14 +207,14 @@ def test_progress_is_for_terminals(capsys, monkeypatch):
         def isatty(self):
             return True
 
-    Progress()(1, 2, "fitting")
+    Progress()("fitting", 1, 2)
     assert capsys.readouterr().err == ""
     monkeypatch.setattr(sys, "stderr", Terminal())
     quiet = Progress(quiet=True)
-    quiet(1, 2, "fitting")
+    quiet("fitting", 1, 2)
     assert sys.stderr.getvalue() == ""
     loud = Progress()
-    loud(1, 2, "fitting\x1b")
+    loud("fitting\x1b", 1, 2)
     loud.close()
     assert sys.stderr.getvalue() == "\r1/2 fitting \r            \r"
 
