@@ -74,7 +74,15 @@ class _System:
         if len(tidy[-1]) > MAX_TERMS:
             self.progress.dropped.append("an equation too large")
             return
-        for step in (self.monomial, self.linear, self.factors, self.bilinear, self.root):
+        for step in (
+            self.monomial,
+            lambda e: self.linear(e, certain=True),
+            self.factors,
+            lambda e: self.bilinear(e, certain=True),
+            self.linear,
+            self.bilinear,
+            self.root,
+        ):
             cases = step(tidy)
             if cases is not None:
                 for more, assigned in cases:
@@ -126,17 +134,37 @@ class _System:
                 ]
         return None
 
-    def linear(self, equations: list[Any]) -> list[tuple[list[Any], Values]] | None:
+    def linear(
+        self, equations: list[Any], *, certain: bool = False
+    ) -> list[tuple[list[Any], Values]] | None:
         """An unknown that stands linearly, with a coefficient of parameters alone."""
+        found = self.best(equations, bare=True, certain=certain)
+        return None if found is None else [self.assigned(equations, *found[1:])]
+
+    def best(
+        self, equations: list[Any], *, bare: bool, certain: bool
+    ) -> tuple[Any, int, Any, Any] | None:
+        """An equation with an unknown, its slope and the rest.
+
+        With ``certain``, only where the value is sure to be allowed: solving k_on*K = k_off + k_cat
+        for k_on keeps every value positive, solving for k_off would not. ``bare``: the slope holds
+        no unknown.
+        """
+        second: tuple[Any, int, Any, Any] | None = None
         for equation in equations:
             for i in sorted(self.unknowns(equation)):
                 split = linear_in(equation, i)
-                if split is None or self.unknowns(split[0]):
+                if split is None:
                     continue
-                if one_sign(split[0], self.signed) is None:
+                slope, rest = split
+                sign = one_sign(slope, self.signed)
+                if bare and (self.unknowns(slope) or sign is None):
                     continue  # the coefficient might vanish for some parameters
-                return [self.assigned(equations, i, *split)]
-        return None
+                against = one_sign(rest, self.signed) if rest else None
+                if not rest or i in self.signed or (sign and against == -sign):
+                    return equation, i, slope, rest
+                second = second or (equation, i, slope, rest)
+        return None if certain else second
 
     def assigned(
         self, equations: list[Any], i: int, slope: Any, rest: Any
@@ -156,20 +184,16 @@ class _System:
                 return [([f, *rest], ()) for f in found]
         return None
 
-    def bilinear(self, equations: list[Any]) -> list[tuple[list[Any], Values]] | None:
+    def bilinear(
+        self, equations: list[Any], *, certain: bool = False
+    ) -> list[tuple[list[Any], Values]] | None:
         """Linear in one unknown, its coefficient holding others: it vanishes, or it does not."""
-        for equation in equations:
-            for i in sorted(self.unknowns(equation)):
-                split = linear_in(equation, i)
-                if split is None:
-                    continue
-                slope, rest = split
-                others = [e for e in equations if e is not equation]
-                return [
-                    self.assigned(equations, i, slope, rest),
-                    ([slope, rest, *others], ()),
-                ]
-        return None
+        found = self.best(equations, bare=False, certain=certain)
+        if found is None:
+            return None
+        equation, i, slope, rest = found
+        others = [e for e in equations if e is not equation]
+        return [self.assigned(equations, i, slope, rest), ([slope, rest, *others], ())]
 
     def root(self, equations: list[Any]) -> list[tuple[list[Any], Values]] | None:
         """a*x^n = b with perfect powers a and b of parameters."""

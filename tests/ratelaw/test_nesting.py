@@ -81,6 +81,8 @@ SAME = [
     ("k*[A]/(1 + K*[A] + L*[A]^2)", "k*[A]/(1 + [A]*(K + L*[A]))", ""),
     ("k*[A]", "k*[A]", ""),
     ("k*[A]", "(k_1 + k_2)*[A]", "k = k_1 + k_2"),
+    # Briggs and Haldane, Biochem. J. 19 (1925) 338 (from memory): Km = (k_-1 + k_2)/k_1
+    (PLAIN, "k_1*k_2*[S]/(k_1*[S] + k_m1 + k_2)", "Vm = k_2, Km = (k_2 + k_m1)/k_1"),
 ]
 
 QUANTITIES = {"T": quantity("T"), "pH": quantity("pH")}
