@@ -6,7 +6,8 @@ summary and the HTML report both draw it and do no arithmetic of their own.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from typing import Any
 
 from discrim.report import read, tables
@@ -91,6 +92,7 @@ class Content:
     candidates: Table | None = None
     criteria: Table | None = None
     laws: tuple[Law, ...] = ()
+    conventions: tuple[str, ...] = ()  # those that hold for every law, said once
     lockstep: tuple[str, ...] = ()
     trade_offs: tuple[tuple[str, str], ...] = ()  # candidate, words
     replicates: str = ""
@@ -117,6 +119,7 @@ def build(document: Document) -> Content:
     study = read.part(document, "study")
     ordered = read.candidates_first_standing(document)
     level = percent(as_number(document.get("confidence")) or 0.95)
+    laws, shared = laws_of(ordered)
     return Content(
         title=read.text(document, "title", "Untitled study"),
         scope=_scope(document, level),
@@ -125,7 +128,8 @@ def build(document: Document) -> Content:
         cautions=_cautions(document),
         candidates=tables.candidates(ordered),
         criteria=tables.criteria(ordered),
-        laws=tuple(law(c) for c in ordered),
+        laws=laws,
+        conventions=shared,
         lockstep=tuple(_lockstep(item) for item in read.records(runs, "lockstep")),
         trade_offs=_trade_offs(ordered),
         replicates=_replicates(runs),
@@ -167,8 +171,21 @@ def not_computed(document: Document) -> list[str]:
     return out
 
 
+def laws_of(candidates: Sequence[Document]) -> tuple[tuple[Law, ...], tuple[str, ...]]:
+    """Each candidate's law (also what ``derive`` prints), and the conventions that all share."""
+    laws = [law(c) for c in candidates]
+    if len(laws) < 2:
+        return tuple(laws), ()
+    shared = [c for c in laws[0].conventions if all(c in other.conventions for other in laws)]
+    own = [
+        replace(item, conventions=tuple(c for c in item.conventions if c not in shared))
+        for item in laws
+    ]
+    return tuple(own), tuple(shared)
+
+
 def law(candidate: Document) -> Law:
-    """One candidate's law and how it follows from the steps (also what ``derive`` prints)."""
+    """One candidate's law and how it follows from the steps."""
     notes = []
     same = read.texts(candidate, "same_law_as")
     if same:

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from typing import Any
 
 from discrim.report import read, tables
-from discrim.report.content import Answer, Content, Law, build, law
+from discrim.report.content import Answer, Content, Law, build, laws_of
 from discrim.report.numbers import factor, number
 from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
@@ -128,10 +128,13 @@ def _constants(paper: Paper, content: Content) -> None:
 def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = False) -> str:
     """What ``derive`` prints: each law, how it follows from the steps, what is assumed."""
     paper = Paper(width=width, colour=colour)
-    for candidate in candidates:
-        item = law(candidate)
+    found, conventions = laws_of(candidates)
+    for item in found:
         paper.heading(item.name)
         _law(paper, item)
+    if conventions:
+        paper.heading("Conventions of all these laws")
+        paper.bullets(conventions)
     shared = _shared(candidates)
     if shared:
         paper.heading("Same law")
