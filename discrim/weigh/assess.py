@@ -1,0 +1,173 @@
+"""All facts about one candidate on the runs: fit, conditioning, intervals, criteria."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from discrim.evidence.adequacy import LackOfFit, lack_of_fit, objective_p
+from discrim.evidence.conditioning import (
+    Conditioning,
+    Lockstep,
+    TradeOff,
+    conditioning,
+    lockstep,
+    trade_offs,
+)
+from discrim.evidence.criteria import Criteria, criteria
+from discrim.evidence.curve import Curve
+from discrim.evidence.guaranteed import guaranteed
+from discrim.evidence.intervals import (
+    OPEN,
+    Interval,
+    Side,
+    along,
+    linearised,
+    nothing,
+    standard_errors,
+)
+from discrim.evidence.rivals import table_key
+from discrim.fit.fit import Fit, fit
+from discrim.fit.measurements import Measurements, Scale
+from discrim.weigh.bench import Bench, Bound
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Assessment:
+    """One candidate on the runs.
+
+    Attributes
+    ----------
+    fits : by reading of the condition errors ("stated", or "measured" and "set")
+    primary : the reading whose numbers are printed
+    intervals : for each constant, by kind
+    """
+
+    bound: Bound
+    fits: Mapping[str, Fit]
+    primary: str
+    standard_errors: np.ndarray
+    intervals: tuple[Mapping[str, Interval], ...]
+    conditioning: Conditioning
+    lockstep: tuple[Lockstep, ...]
+    trade_offs: tuple[TradeOff, ...]
+    criteria: Criteria
+    fit_p: float | None
+    lack_of_fit: LackOfFit | None
+
+    @property
+    def fit(self) -> Fit:
+        return self.fits[self.primary]
+
+
+def fits_of(bound: Bound, data: Measurements, *, seed: int) -> dict[str, Fit]:
+    """One fit for each way to read the condition errors."""
+    out: dict[str, Fit] = {}
+    near = None
+    for origin in data.origins():
+        found = fit(
+            bound.predictor,
+            data.as_origin(origin),
+            seed=seed,
+            near=near,
+            starts=16 if near is None else 4,
+        )
+        out[origin] = found
+        if found.ok:
+            near = found.theta[None]
+    return out
+
+
+def assess(
+    bound: Bound,
+    bench: Bench,
+    fits: Mapping[str, Fit],
+    *,
+    level: float,
+    common: Measurements,
+    common_fit: Fit,
+) -> Assessment:
+    """Facts about one candidate.
+
+    ``common`` and ``common_fit``: the measurements (and the fit to them) with one and the same scale
+    for all candidates, on which the criteria are computed.
+    """
+    primary = next(iter(fits))
+    one = fits[primary]
+    data = one.data
+    names = bound.names
+    se = standard_errors(one)
+    cond = conditioning(one.jacobian, names)
+    weight = 1.0 / np.sqrt(one.variances)
+    locks = tuple(lockstep(bound.predictor, data, one.theta, weight)) if one.ok else ()
+    intervals = _intervals(bound, fits, se, level) if one.ok else tuple({} for _ in names)
+    known = common.scale is not Scale.ESTIMATED
+    crit = criteria(
+        data=table_key(common),
+        n=data.n,
+        p=len(names),
+        objective=common_fit.objective,
+        scale_known=known,
+    )
+    return Assessment(
+        bound,
+        fits,
+        primary,
+        se,
+        intervals,
+        cond,
+        locks,
+        tuple(trade_offs(cond)),
+        crit,
+        objective_p(one) if one.ok else None,
+        lack_of_fit(one) if one.ok else None,
+    )
+
+
+def _intervals(
+    bound: Bound, fits: Mapping[str, Fit], se: np.ndarray, level: float
+) -> tuple[dict[str, Interval], ...]:
+    one = next(iter(fits.values()))
+    sure = guaranteed(
+        bound.predictor,
+        one.data,
+        1.0 - level,
+        one.scale2 if one.data.scale is Scale.ESTIMATED else 1.0,
+    )
+    out = []
+    for j in range(len(bound.names)):
+        by_origin = [
+            along(f, Curve.of(f, j), level, se=float(standard_errors(f)[j])) for f in fits.values()
+        ]
+        recon = by_origin[0].reconciled
+        for other in by_origin[1:]:
+            recon = hull(recon, other.reconciled)
+        if one.data.scale is Scale.ESTIMATED and one.degrees_of_freedom < 1:
+            profile = nothing("profile", "not computed: as many constants as runs, scale unknown")
+            recon = nothing("reconciled", "not computed: as many constants as runs, scale unknown")
+        else:
+            profile = by_origin[0].profile
+        out.append(
+            {
+                "linearised": linearised(one, j, float(se[j]), level),
+                "profile": profile,
+                "reconciled": recon,
+                "guaranteed": sure[j],
+            }
+        )
+    return tuple(out)
+
+
+def hull(a: Interval, b: Interval) -> Interval:
+    """What holds whichever of two readings of the errors is right."""
+    if a.empty:
+        return b
+    if b.empty:
+        return a
+    low = a.low if a.low.value <= b.low.value else b.low
+    high = a.high if a.high.value >= b.high.value else b.high
+    if not np.isfinite([a.low.value, a.high.value]).all():
+        low = Side(min(a.low.value, b.low.value), OPEN) if np.isinf(low.value) else low
+    return Interval(a.kind, low, high, a.pieces, False, a.note or b.note)

@@ -1,0 +1,103 @@
+"""Laws as plain records: text, LaTeX, MathML, derivation, assumptions."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from discrim.ratelaw.model import RateLaw
+from discrim.ratelaw.printing import latex, mathml, plain
+from discrim.study.model import Study
+from discrim.weigh.laws import CandidateLaw, laws_of
+
+
+def law_keys(c: CandidateLaw) -> dict[str, Any]:
+    """The keys of a candidate that come from its law alone."""
+    out = _of_law(c.law)
+    place = c.candidate.place
+    out["place"] = f"{place.file}, line {place.line}" if place.line else place.file
+    if c.candidate.law_text:
+        out["as_written"] = c.candidate.law_text
+    return out
+
+
+def _of_law(law: RateLaw) -> dict[str, Any]:
+    lumped = law.step_rate is not None and any(c.definition is not None for c in law.constants)
+    return {
+        "name": law.name,
+        "law": plain(law.rate),
+        "law_latex": latex(law.rate),
+        "law_mathml": mathml(law.rate),
+        "step_law": plain(law.step_rate) if lumped else "",
+        "step_law_latex": latex(law.step_rate) if lumped else "",
+        "step_law_mathml": mathml(law.step_rate) if lumped else "",
+        "steps": dict(law.steps),
+        "source": law.source,
+        "assumptions": list(law.assumptions),
+        "conventions": list(law.conventions),
+        "combinations": [
+            {
+                "name": c.name,
+                "definition": plain(c.definition),
+                "definition_latex": latex(c.definition),
+                "definition_mathml": mathml(c.definition),
+                "words": c.meaning,
+            }
+            for c in law.constants
+            if c.definition is not None
+        ],
+        "derivation": [
+            {
+                "words": words,
+                "text": "" if e is None else plain(e),
+                "latex": "" if e is None else latex(e),
+                "mathml": "" if e is None else mathml(e),
+            }
+            for words, e in law.derivation
+        ],
+        "constants_of_law": [
+            {"name": c.name, "kind": c.kind.value, "meaning": c.meaning} for c in law.constants
+        ],
+        "production": {k: plain(e) for k, e in law.production.items()},
+        "findings": list(law.findings),
+    }
+
+
+def derive_study(study: Study) -> list[dict[str, Any]]:
+    """Each candidate's law, and which are the same."""
+    laws = laws_of(study)
+    out = [law_keys(c) for c in laws]
+    same = _same(laws)
+    for i, d in enumerate(out):
+        d["same_law_as"] = [laws[j].law.name for j in same.get(i, [])]
+    return out
+
+
+def _same(laws: list[CandidateLaw]) -> dict[int, list[int]]:
+    from discrim.ratelaw.nesting import same_law
+
+    out: dict[int, list[int]] = {}
+    for i in range(len(laws)):
+        for j in range(i + 1, len(laws)):
+            a, b = laws[i], laws[j]
+            if same_law(a.bound, b.bound, a.law.constants, b.law.constants) is not None:
+                out.setdefault(i, []).append(j)
+                out.setdefault(j, []).append(i)
+    return out
+
+
+def derive_file(path: str) -> dict[str, Any]:
+    """The law of one mechanism file, or of one in the library by name."""
+    from discrim.mechanism.library import load_mechanism
+    from discrim.ratelaw.derive import derive
+
+    p = Path(path)
+    if p.suffix == ".toml" or p.parent != Path():
+        mechanism = load_mechanism("./" + p.name, base=p.parent.resolve())
+    else:
+        mechanism = load_mechanism(path, base=Path.cwd())
+    law = derive(mechanism)
+    out = _of_law(law)
+    out["title"] = mechanism.title
+    out["same_law_as"] = []
+    return out

@@ -1,0 +1,131 @@
+"""Properties of the data and of the fits that the reader must know, as sentences."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from discrim.evidence.intervals import CROSSED, OPEN
+from discrim.fit.fit import FitStatus
+from discrim.fit.measurements import Scale
+from discrim.runs.model import ErrorBasis, Role
+
+if TYPE_CHECKING:
+    from discrim.weigh.run import Weighed
+
+# a profile interval this much wider or narrower than the linearised one is a strong disagreement
+DISAGREE = 2.0
+
+Finding = tuple[str, str, str]
+
+
+def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
+    """(severity, where, says) in the order in which a reader needs them."""
+    out: list[Finding] = []
+    for c, a in zip(w.laws, w.assessments, strict=True):
+        where = f"candidate “{c.law.name}”"
+        if a.fit.status is not FitStatus.CONVERGED:
+            out.append(("warning", where, a.fit.status.value))
+        out += [("note", where, s) for s in (*c.law.findings, *a.bound.findings)]
+        zero = [n for n, b in zip(a.bound.names, a.fit.at_bound, strict=True) if b]
+        if zero:
+            out.append(
+                ("note", where, f"{', '.join(zero)} ended on a bound; intervals are one-sided there")
+            )
+        out += _intervals(w, where, c, a)
+        if a.fit.degrees_of_freedom <= 0:
+            out.append(
+                (
+                    "warning",
+                    where,
+                    f"{a.fit.p} constants for {a.fit.n} observations: the fit tests nothing",
+                )
+            )
+    out += _columns(w)
+    out += [
+        ("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused
+    ]
+    out += [("note", "study", s) for s in w.study.findings]
+    return tuple(dict.fromkeys(out))
+
+
+def _intervals(w: Weighed, where: str, c: object, a: object) -> list[Finding]:
+    out: list[Finding] = []
+    for name, kinds in zip(a.bound.names, a.intervals, strict=True):  # type: ignore[attr-defined]
+        lin, prof = kinds.get("linearised"), kinds.get("profile")
+        recon = kinds.get("reconciled")
+        if recon is not None and recon.note:
+            out.append(("note", where, f"reconciled interval of {name}: {recon.note}"))
+        if lin is None or prof is None:
+            continue
+        if prof.high.end == OPEN and lin.high.end == CROSSED:
+            out.append(
+                (
+                    "warning",
+                    where,
+                    f"the linearised interval of {name} is closed, but the runs set it no upper "
+                    "limit: its profile is open",
+                )
+            )
+            continue
+        ends = (lin.low, lin.high, prof.low, prof.high)
+        if any(s.end != CROSSED for s in ends):
+            continue
+        x = float(a.fit.theta[a.bound.names.index(name)])  # type: ignore[attr-defined]
+        up = (prof.high.value - x) / max(lin.high.value - x, 1e-300)
+        down = (x - prof.low.value) / max(x - lin.low.value, 1e-300)
+        for ratio, side in ((up, "upward"), (down, "downward")):
+            if ratio > DISAGREE or ratio < 1 / DISAGREE:
+                out.append(
+                    (
+                        "note",
+                        where,
+                        f"the profile interval of {name} reaches {ratio:.2g} times as far {side} as "
+                        "the linearised one: the law bends there, and standard errors mislead",
+                    )
+                )
+    return out
+
+
+def _columns(w: Weighed) -> list[Finding]:
+    out: list[Finding] = []
+    used = {s.name for s in w.bench.symbols}
+    for col in w.study.runs.columns:
+        if col.role is not Role.SPECIES:
+            continue
+        if col.basis is ErrorBasis.ASSUMED and f"[{col.about}]" in used:
+            out.append(
+                (
+                    "warning",
+                    f"column “{col.name}”",
+                    "its error is not stated and was assumed (the smaller of its digits and 1 %)",
+                )
+            )
+    sources = [
+        c
+        for c in w.study.runs.columns
+        if any(e.origin is None for e in c.errors) and f"[{c.about}]" in used
+    ]
+    if sources:
+        names = ", ".join(f"“{c.name}”" for c in sources)
+        out.append(
+            (
+                "note",
+                "errors",
+                f"the study does not say whether {names} were set or measured: both were computed, "
+                "and a decided verdict needs both to agree",
+            )
+        )
+    if w.bench.measurements.scale is Scale.ESTIMATED:
+        s2 = [a.fit.scale2 for a in w.assessments if np.isfinite(a.fit.scale2)]
+        if s2:
+            out.append(
+                (
+                    "note",
+                    "errors",
+                    "the error of the rate is not stated; its variance was estimated from the fits, "
+                    "so lack of fit cannot be told from noise",
+                )
+            )
+    return out

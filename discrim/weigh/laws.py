@@ -1,0 +1,98 @@
+"""From the candidates of a study to rate laws and the expressions that its columns observe."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+from discrim.errors import DiscrimError
+from discrim.ratelaw.bare import law_from_expression
+from discrim.ratelaw.derive import derive
+from discrim.ratelaw.model import RateLaw, amount, quantity
+from discrim.runs.model import Role
+from discrim.study.model import Candidate, Study
+from discrim.weigh.bench import observed_expression, put_in
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class CandidateLaw:
+    """A candidate with its law.
+
+    ``observed`` : one expression for each observed column, in symbols of species and constants;
+    ``bound`` : the same with derived quantities put in.
+    """
+
+    candidate: Candidate
+    law: RateLaw
+    observed: tuple[Any, ...]
+    bound: tuple[Any, ...]
+
+
+def measured_species(study: Study) -> frozenset[str]:
+    """Species whose amounts columns, conditions or derived quantities give."""
+    names = {c.about for c in study.runs.columns if c.role in (Role.SPECIES, Role.TOTAL)}
+    return frozenset(names | {d.name for d in study.derived})
+
+
+def law_of(candidate: Candidate, study: Study) -> CandidateLaw:
+    """Derive (or read) the law of one candidate and what each observed column is in it."""
+    if candidate.mechanism is not None:
+        law = derive(candidate.mechanism, measured=measured_species(study))
+        law = replace(law, name=candidate.name, place=law.place or candidate.place)
+        law = _per_amount_of_catalyst(law, candidate, study)
+    else:
+        law = law_from_expression(
+            candidate.name,
+            candidate.law,
+            overall=candidate.overall,
+            place=candidate.place,
+            text=candidate.law_text,
+        )
+    return observed(candidate, law, study)
+
+
+def observed(candidate: Candidate, law: RateLaw, study: Study) -> CandidateLaw:
+    """The expressions of the observed columns for a law."""
+    seen = tuple(observed_expression(c, law, study) for c in study.runs.observations())
+    if all(e == 0 for e in seen):
+        raise DiscrimError(
+            f'candidate "{candidate.name}" predicts a rate of zero in every run',
+            place=candidate.place,
+            do="Nothing in it makes or consumes what the rate column measures.",
+        )
+    return CandidateLaw(candidate, law, seen, tuple(put_in(e, study) for e in seen))
+
+
+def _per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) -> RateLaw:
+    """A law per total catalyst, times the catalyst where a column gives it."""
+    assert candidate.mechanism is not None
+    catalysts = candidate.mechanism.catalyst
+    if not catalysts:
+        return law
+    for column in study.runs.columns:
+        if column.role is Role.CATALYST or (column.role is Role.TOTAL and column.about in catalysts):
+            times = quantity(column.name)
+            break
+    else:
+        return law
+    words = f"The law per total {catalysts[0]} is multiplied by the column “{column.name}”."
+    return replace(
+        law,
+        rate=law.rate * times,
+        production={k: e * times for k, e in law.production.items()},
+        pathways=tuple(replace(p, rate=p.rate * times) for p in law.pathways),
+        conventions=(*law.conventions, words),
+    )
+
+
+def laws_of(study: Study) -> list[CandidateLaw]:
+    """All candidates, in the order of the study."""
+    return [law_of(c, study) for c in study.candidates]
+
+
+def in_law(law: RateLaw, about: str, study: Study) -> bool:
+    """Whether a species occurs in the law, itself or through a derived quantity."""
+    symbol = amount(about)
+    return symbol in law.rate.free_symbols or any(
+        symbol in e.free_symbols for e in law.production.values()
+    )

@@ -1,0 +1,309 @@
+"""The stages wired together: study -> laws -> fits -> evidence -> verdicts."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from discrim.evidence.participation import NestedF, nested_f
+from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
+from discrim.evidence.criteria import weights
+from discrim.fit.fit import Fit, fit
+from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.study.lookup import check_measured, unused_constants
+from discrim.study.model import Study
+from discrim.weigh.asked import Answer, answer, check_questions
+from discrim.weigh.assess import Assessment, assess, fits_of
+from discrim.weigh.bench import Bench, Bound, bind, build
+from discrim.weigh.laws import CandidateLaw, laws_of
+from discrim.weigh.sameness import Relations, relations
+
+Progress = Callable[[str, int, int], None]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Comparison:
+    """A proven special case against the larger law."""
+
+    smaller: int
+    larger: int
+    words: str
+    edge: bool
+    q: int
+    test: NestedF | None
+    note: str
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Weighed:
+    """Everything that one run of `weigh` found out."""
+
+    study: Study
+    bench: Bench
+    laws: tuple[CandidateLaw, ...]
+    bounds: tuple[Bound, ...]
+    assessments: tuple[Assessment, ...]
+    relations: Relations
+    standings: tuple[Standing, ...]
+    stands: tuple[bool, ...]
+    weights: tuple[float, ...]
+    rank: tuple[int, ...]
+    inseparable: tuple[tuple[int, ...], ...]
+    no_better: tuple[int | None, ...]
+    comparisons: tuple[Comparison, ...]
+    answers: tuple[Answer, ...]
+    common: Measurements
+    findings: tuple[tuple[str, str, str], ...]
+    seed: int
+
+
+def prepare(study: Study, *, planned: bool = False) -> tuple[list[CandidateLaw], Bench, list[Bound]]:
+    """Laws derived and checked, and bound to the runs."""
+    laws = laws_of(study)
+    for c in laws:
+        check_measured(c.law, study, place=c.candidate.place)
+    check_questions(study, laws)
+    bench = build(study, [e for c in laws for e in c.bound], planned=planned)
+    bounds = [bind(c.law, bench, c.bound) for c in laws]
+    return laws, bench, bounds
+
+
+def run(study: Study, *, seed: int = 1, progress: Progress | None = None) -> Weighed:
+    """Weigh a study. Wrong input raises; numerical misfortune is a status in the record."""
+    say = progress or (lambda words, done, total: None)
+    say("deriving rate laws", 0, 1)
+    laws, bench, bounds = prepare(study)
+    level, alpha = study.level, 1.0 - study.level
+    n = len(laws)
+    data = bench.measurements
+    if data.n == 0:
+        from discrim.errors import DiscrimError
+
+        raise DiscrimError(
+            f"no run in {study.runs.file} has a measured rate",
+            do="`discrim check` judges a planned table; `discrim weigh` needs measured rates.",
+        )
+    related = relations(bounds, study)
+    fits: list[dict[str, Fit]] = []
+    for i, b in enumerate(bounds):
+        say("fitting", i, n)
+        fits.append(fits_of(b, data, seed=seed))
+    fits = _no_larger_law_worse(bounds, fits, related, seed)
+    common, common_fits = _common_scale(bounds, fits, data, seed)
+    assessments = []
+    for i, b in enumerate(bounds):
+        say("intervals", i, n)
+        assessments.append(
+            assess(b, bench, fits[i], level=level, common=common, common_fit=common_fits[i][0])
+        )
+    say("comparing rivals", 0, 1)
+    standings, stands = _standing(common_fits, related, alpha, seed)
+    in_use = [
+        f.ok and not any((j, i) in related.same for j in range(i))
+        for i, f in enumerate(a.fit for a in assessments)
+    ]
+    w = weights([a.criteria for a in assessments], in_use)
+    for i, j in related.same:  # a law that appears twice is weighed once and shown twice
+        if in_use[i] and not in_use[j]:
+            w[j] = w[i]
+    order = sorted(range(n), key=lambda i: (assessments[i].criteria.aic, i))
+    rank = [order.index(i) + 1 for i in range(n)]
+    inseparable = _inseparable(common_fits, related, stands)
+    comparisons = _comparisons(bounds, fits, related)
+    no_better = _no_better(comparisons, related, stands, alpha)
+    answers = []
+    asked = [q for q in study.questions if q.asks == "participates"]
+    for k, q in enumerate(asked):
+        say("answering", k, len(asked))
+        answers.append(
+            answer(q, study, bench, laws, bounds, fits, stands, seed=seed)
+        )
+    from discrim.weigh.findings import findings_of
+
+    weighed = Weighed(
+        study,
+        bench,
+        tuple(laws),
+        tuple(bounds),
+        tuple(assessments),
+        related,
+        tuple(standings),
+        tuple(stands),
+        tuple(w),
+        tuple(rank),
+        inseparable,
+        no_better,
+        tuple(comparisons),
+        tuple(answers),
+        common,
+        (),
+        seed,
+    )
+    names = {name.split("[")[0] for b in bounds for name in b.names}
+    names |= {c.name for law in laws for c in law.law.constants}
+    unused = unused_constants(study, names | set(bench.known))
+    return replace(weighed, findings=findings_of(weighed, unused))
+
+
+def _no_larger_law_worse(
+    bounds: Sequence[Bound], fits: list[dict[str, Fit]], related: Relations, seed: int
+) -> list[dict[str, Fit]]:
+    """A law that contains another must fit at least as well: if not, start it from there."""
+    out = list(fits)
+    for (larger, smaller), nesting in related.contains.items():
+        for origin, big in out[larger].items():
+            small = out[smaller].get(origin)
+            if small is None or not small.ok:
+                continue
+            if big.ok and big.objective <= small.objective * (1 + 1e-9) + 1e-12:
+                continue
+            near = _embedded(bounds[smaller], bounds[larger], small.theta, nesting.values)
+            again = fit(bounds[larger].predictor, big.data, seed=seed + 1, starts=32, near=near)
+            if again.ok and (not big.ok or again.objective < big.objective):
+                out[larger] = {**out[larger], origin: again}
+    return out
+
+
+def _embedded(
+    smaller: Bound, larger: Bound, theta: np.ndarray, values: object
+) -> np.ndarray | None:
+    """The smaller law's constants as constants of the larger one."""
+    from collections.abc import Mapping
+
+    import sympy
+
+    assert isinstance(values, Mapping)
+    at = dict(zip(smaller.names, theta, strict=True))
+    row = []
+    for j, name in enumerate(larger.names):
+        expr = values.get(name)
+        if expr is None:
+            row.append(float(larger.predictor.scale[j]))
+            continue
+        expr = sympy.sympify(expr) if isinstance(expr, int | float) else expr
+        numbers = {s: at[s.name] for s in expr.free_symbols if s.name in at}
+        try:
+            row.append(float(expr.subs(numbers)))
+        except (TypeError, ValueError):
+            row.append(float(larger.predictor.scale[j]))
+    out = np.array([row])
+    return out if np.isfinite(out).all() else None
+
+
+def _common_scale(
+    bounds: Sequence[Bound], fits: Sequence[dict[str, Fit]], data: Measurements, seed: int
+) -> tuple[Measurements, list[list[Fit]]]:
+    """Fits with one scale for all candidates, for criteria and rivals, one for each reading.
+
+    Where the variance of the rates is unknown and conditions have errors, s^2 is taken from the
+    candidate with the most constants (the best of those), once for all; its degrees of freedom make
+    the reference a t.
+    """
+    origins = list(next(iter(fits)))
+    if data.scale is not Scale.ESTIMATED or data.exact_conditions:
+        first = data.as_origin(origins[0])
+        return first, [[f[o] for o in origins] for f in fits]
+    good = [f for f in fits if f[origins[0]].ok] or list(fits)
+    most = max(f[origins[0]].p for f in good)
+    general = min(
+        (f[origins[0]] for f in good if f[origins[0]].p == most), key=lambda f: f.scale2
+    )
+    df = max(general.degrees_of_freedom, 1)
+    typical = float(np.var(data.y)) * 1e-12
+    sd = float(np.sqrt(max(general.scale2, typical, 1e-300)))
+    common = replace(
+        data,
+        sources=(*data.of_conditions, source(OBSERVATION, data.n, absolute=sd)),
+        scale=Scale.REPLICATES,
+        scale_df=df,
+    )
+    out = []
+    for b, f in zip(bounds, fits, strict=True):
+        row = []
+        for o in origins:
+            near = f[o].theta[None] if f[o].ok else None
+            row.append(
+                fit(b.predictor, common.as_origin(o), seed=seed, starts=4, near=near)
+            )
+        out.append(row)
+    return common.as_origin(origins[0]), out
+
+
+def _standing(
+    common_fits: Sequence[Sequence[Fit]], related: Relations, alpha: float, seed: int
+) -> tuple[list[Standing], list[bool]]:
+    """A candidate stands if it does under any reading of the condition errors."""
+    contains = {k: True for k in related.contains}
+    same = {k: True for k in related.same}
+    readings = [
+        standing([f[r] for f in common_fits], contains, same, alpha=alpha, seed=seed)
+        for r in range(len(common_fits[0]))
+    ]
+    first = readings[0]
+    stands = [any(r[i].stands for r in readings) for i in range(len(first))]
+    for i, j in related.same:
+        stands[i] = stands[j] = stands[i] or stands[j]
+    return first, stands
+
+
+def _inseparable(
+    common_fits: Sequence[Sequence[Fit]], related: Relations, stands: Sequence[bool]
+) -> tuple[tuple[int, ...], ...]:
+    """The same law, or laws that both stand and differ by less than the errors in every run."""
+    n = len(common_fits)
+    out: list[list[int]] = [[] for _ in range(n)]
+    for i in range(n):
+        for j in range(i + 1, n):
+            same = (i, j) in related.same
+            close = False
+            if stands[i] and stands[j] and not same:
+                a, b = common_fits[i][0], common_fits[j][0]
+                close = a.ok and b.ok and apart(a, b) < INSEPARABLE
+            if same or close:
+                out[i].append(j)
+                out[j].append(i)
+    return tuple(tuple(x) for x in out)
+
+
+def _comparisons(
+    bounds: Sequence[Bound], fits: Sequence[dict[str, Fit]], related: Relations
+) -> list[Comparison]:
+    out = []
+    for (larger, smaller), nesting in sorted(related.contains.items()):
+        big = next(iter(fits[larger].values()))
+        small = next(iter(fits[smaller].values()))
+        q = big.p - small.p
+        test = nested_f(big, small, edge=nesting.edge) if q >= 1 else None
+        note = ""
+        if nesting.vanish:
+            note = (
+                f"{', '.join(nesting.vanish)} vanish with it: the F reference does not hold here, "
+                "the p-value is only a guide"
+            )
+        elif nesting.edge and q > 1:
+            note = "several constants on the edge: the p-value is conservative"
+        elif nesting.edge:
+            note = "on the edge: one-sided p is half the two-sided"
+        if test is None:
+            note = "not testable: no degrees of freedom left"
+        out.append(Comparison(smaller, larger, nesting.words(), nesting.edge, q, test, note))
+    return out
+
+
+def _no_better(
+    comparisons: Sequence[Comparison],
+    related: Relations,
+    stands: Sequence[bool],
+    alpha: float,
+) -> tuple[int | None, ...]:
+    """For each law that stands: a special case of it that stands and loses nothing."""
+    out: list[int | None] = [None] * len(stands)
+    for c in comparisons:
+        if not (stands[c.larger] and stands[c.smaller]):
+            continue
+        p = None if c.test is None else c.test.p_one_sided
+        if (p is None or p > alpha) and out[c.larger] is None:
+            out[c.larger] = c.smaller
+    return tuple(out)
