@@ -8,6 +8,7 @@ from dataclasses import replace
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.mechanism.formula import elements
 from discrim.mechanism.model import Mechanism, Species, Step
+from discrim.mechanism.step import side_text
 
 
 def check_mechanism(mechanism: Mechanism) -> None:
@@ -52,21 +53,19 @@ def _sites(step: Step, signs: tuple[str, ...]) -> None:
         if left == right:
             continue
         missing = abs(left - right)
-        vacant = sign if missing == 1 else f"{missing} {sign}"
         arrow = "<=>" if step.reversible else "->"
-        side_left, side_right = step.text.split(arrow, 1)
-        fixed = (
-            f"{step.text.rstrip()} + {vacant}"
-            if left > right
-            else f"{side_left.rstrip()} + {vacant} {arrow}{side_right.rstrip()}"
-        )
+        vacant = Species(sign, sign, 1)
+        sides = [dict(step.left), dict(step.right)]
+        short = sides[1] if left > right else sides[0]
+        short[vacant] = short.get(vacant, 0) + missing
+        fixed = f" {arrow} ".join(side_text(tuple(parts.items())) for parts in sides)
         do = (
             f"{left} site{_s(left)} on the left, {right} on the right. "
             f"Write the {'freed' if left > right else 'vacant'} "
-            f"site{_s(missing)} too: {fixed.strip()}"
+            f"site{_s(missing)} too: {fixed}"
         )
-        short = "right" if left > right else "left"
-        raise DiscrimError("sites do not balance", place=_side_place(step, arrow, short), do=do)
+        which = "right" if left > right else "left"
+        raise DiscrimError("sites do not balance", place=_side_place(step, arrow, which), do=do)
 
 
 def _s(n: int) -> str:

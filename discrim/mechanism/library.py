@@ -7,12 +7,12 @@ import tomllib
 from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
-from typing import Any
 
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.mechanism.check import species_of
 from discrim.mechanism.model import Mechanism, Species, Step
-from discrim.mechanism.parse import is_species_name, parse_mechanism
+from discrim.mechanism.parse import parse_mechanism
+from discrim.mechanism.step import is_species_name, side_text
 
 MAX_BYTES = 1_000_000
 KEYS = ("title", "source", "note", "sites", "catalyst", "steps", "assume", "species")
@@ -143,10 +143,8 @@ def mechanism_from_toml(text: str, *, file: str, name: str) -> Mechanism:
 
 def _toml_place(message: str, text: str, file: str) -> Place:
     m = re.search(r"line (\d+), column (\d+)", message)
-    if m is None:
-        return Place(file=file)
-    line, column = int(m.group(1)), int(m.group(2))
     rows = text.splitlines()
+    line, column = (int(m.group(1)), int(m.group(2))) if m else (len(rows), 1)
     shown = rows[line - 1] if 0 < line <= len(rows) else ""
     return Place(file=file, line=line, column=min(column, len(shown) + 1), text=shown)
 
@@ -214,7 +212,9 @@ def bind(mechanism: Mechanism, names_of: Mapping[str, str]) -> Mechanism:
         left = tuple((moved(s), n) for s, n in old.left)
         right = tuple((moved(s), n) for s, n in old.right)
         arrow = "<=>" if old.reversible else "->"
-        return replace(old, left=left, right=right, text=f"{_side(left)} {arrow} {_side(right)}")
+        return replace(
+            old, left=left, right=right, text=f"{side_text(left)} {arrow} {side_text(right)}"
+        )
 
     return replace(
         mechanism,
@@ -232,7 +232,3 @@ def _body(species: Species) -> str:
         if species.site
         else (species.name)
     )
-
-
-def _side(parts: Any) -> str:
-    return " + ".join(s.name if n == 1 else f"{n} {s.name}" for s, n in parts)

@@ -27,8 +27,8 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
 
     Parameters
     ----------
-    law : its ``step_rate`` (or ``rate``) is a quotient of polynomials in the constants of the steps
-        and the amounts; other laws (bare laws with orders) are returned unchanged
+    law : its ``rate`` is a quotient of polynomials in its constants and the amounts; other laws
+        (with orders to be found, say) are returned unchanged
     per_catalyst : name saturation constants of a catalyst ``k_cat``, ``K_m_S``, ``K_i_S``
     equilibrium : name of a constant to write a reversible law with: the ratio of the forward to the
         reverse coefficient of the numerator
@@ -36,10 +36,10 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     Returns
     -------
     RateLaw
-        ``constants`` are constants of the steps, or combinations with their ``definition``;
-        all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
+        ``constants`` are constants of ``law``, or combinations with their ``definition`` in the
+        constants of the steps; all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
     """
-    known = law.step_constants or law.constants
+    known = law.constants
     names = list(law.production)
     expressions = [law.rate, *(law.production[n] for n in names), *(p.rate for p in law.pathways)]
     try:
@@ -59,7 +59,14 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     pathways = (
         tuple(replace(p, rate=r) for p, r in zip(law.pathways, apart, strict=True)) if apart else ()
     )
-    combined = [c for c in written.constants if c.definition is not None]
+    before = {c.symbol: c.definition for c in known if c.definition is not None}
+    constants = tuple(
+        replace(c, definition=c.definition.xreplace(before))
+        if before and c.definition is not None and c not in known
+        else c
+        for c in written.constants
+    )
+    combined = [c for c in constants if c.definition is not None and c not in known]
     lines = list(law.derivation)
     if combined:
         for c in combined:
@@ -69,7 +76,7 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
         law,
         rate=rate,
         production=production,
-        constants=written.constants,
+        constants=constants,
         pathways=pathways,
         derivation=tuple(lines),
         findings=(*law.findings, *written.findings),
@@ -116,8 +123,8 @@ def _write(
             "Some pathways have the same form: no measured rates could tell how much each carries, "
             "so they are written as one."
         )
-    norms = _norms(form, per_catalyst)
     solver = _Solver(basis, width)
+    norms = _norms(form, per_catalyst, [k for k, c in enumerate(chosen) if not c.can_turn], solver)
     chosen, flipped = _positive(form, norms, chosen, solver)
     if flipped:
         solver = _Solver([dense(c.vector, width) for c in chosen], width)
@@ -208,8 +215,13 @@ class _Solver:
         ]
 
 
-def _norms(form: Form, per_catalyst: bool) -> list[Vector]:
-    """For each denominator the coefficient that is written as 1."""
+def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: _Solver) -> list[Vector]:
+    """For each denominator the coefficient that is written as 1.
+
+    For a catalyst that of the reactants that saturate it; else of the term without amounts; else of
+    one whose species stand in the numerator too. Another, if only so no constant is divided by that
+    cannot be turned round (``fixed``).
+    """
     tops: dict[int, list[Any]] = {}
     for term in form.expressions[0]:
         lead = next((a for a, c in term.top.terms.items() if c.number > 0), None)
@@ -220,13 +232,16 @@ def _norms(form: Form, per_catalyst: bool) -> list[Vector]:
     for k, s in enumerate(form.sums):
         choices = list(s.terms)
         saturating = [a for a in tops.get(k, []) if a in s.terms]
-        if per_catalyst and saturating:
-            pick = saturating[0]
-        elif () in s.terms:
-            pick = ()
-        else:
-            within = [a for a in choices if any(_divides(a, t) for t in tops.get(k, []))]
-            pick = (within or choices)[0]
+        within = [a for a in choices if any(_divides(a, t) for t in tops.get(k, []))]
+        constant = [()] if () in s.terms else []
+        order = [*(saturating if per_catalyst else []), *constant, *within, *choices]
+
+        def divides_by_none(pick: Any, s: Any = s) -> bool:
+            norm = s.terms[pick].vector
+            powers = [solver(subtract(c.vector, norm)) for c in s.terms.values()]
+            return all(p[i] >= 0 for p in powers for i in fixed)
+
+        pick = next((a for a in order if divides_by_none(a)), order[0])
         out.append(s.terms[pick].vector)
     return out
 

@@ -17,7 +17,7 @@ import sympy
 from sympy import ZZ
 from sympy.polys.rings import PolyElement
 
-from discrim.ratelaw.derive_algebra import Algebra
+from discrim.ratelaw.derive_algebra import Algebra, common_factor
 
 Amounts = tuple[tuple[sympy.Symbol, Fraction], ...]  # monomial in the amounts, sorted by name
 Vector = dict[int, Fraction]  # exponents of atoms, by index
@@ -161,20 +161,28 @@ class _Reader:
                 if number.q != 1:
                     below.append((self.ring(ZZ(int(number.q))), 1))
             else:
-                poly = self.polynomial(base)
-                if power > 0:
-                    top = top * poly ** int(power)
-                else:
-                    below.append((poly, -int(power)))
+                over, under = self.rational(base)
+                if power < 0:
+                    over, under = under, over
+                top = top * over ** abs(int(power))
+                if under != 1:
+                    below.append((under, abs(int(power))))
         return top, below
 
-    def polynomial(self, e: Any) -> PolyElement:
-        total = self.ring.zero
+    def rational(self, e: Any) -> tuple[PolyElement, PolyElement]:
+        """A sum as one numerator over one denominator."""
+        over, under = self.ring.zero, self.ring.one
         for top, below in self.parts(e):
-            if below:
-                raise NotRational("fractions within a sum")
-            total = total + top
-        return total
+            divisor = self.ring.one
+            for poly, power in below:
+                divisor = divisor * poly**power
+            if divisor == under:
+                over = over + top
+                continue
+            shared = common_factor(under, divisor)
+            left, right = divisor.exquo(shared), under.exquo(shared)
+            over, under = over * left + top * right, under * left
+        return over, under
 
     def shared(self, poly: PolyElement) -> int:
         if poly not in self.sum_of:

@@ -80,7 +80,7 @@ def candidates(
 
 def _single(i: int, constant: Constant) -> Candidate:
     step = constant.name.removeprefix("K_")
-    turn = constant.kind is ConstantKind.EQUILIBRIUM
+    turn = constant.kind is ConstantKind.EQUILIBRIUM and constant.definition is None
     return Candidate(
         constant.name,
         {i: Fraction(1)},

@@ -1,0 +1,134 @@
+"""The shipped mechanisms, files beside a study, and renaming."""
+
+import pytest
+
+from discrim.errors import DiscrimError, Place
+from discrim.mechanism.check import catalyst_forms
+from discrim.mechanism.library import bind, folder, load_mechanism, mechanism_from_toml, names
+from discrim.mechanism.parse import parse_mechanism
+
+
+def test_every_file_has_a_title_and_a_source(tmp_path):
+    assert len(names()) >= 16
+    for name in names():
+        mechanism = load_mechanism(name, tmp_path)
+        assert mechanism.title, name
+        assert len(mechanism.source) > 20, name
+    listed = folder() / "README.md"
+    if listed.exists():
+        text = listed.read_text(encoding="utf-8")
+        assert [n for n in names() if f"`{n}`" not in text] == []
+
+
+def test_unknown_name_gets_the_nearest(tmp_path):
+    with pytest.raises(DiscrimError) as caught:
+        load_mechanism("complex-then-produce", tmp_path, place=Place(file="study.toml", line=3))
+    assert 'Did you mean "complex-then-product"?' in str(caught.value)
+    assert str(caught.value).startswith("study.toml, line 3")
+
+
+TEXT = 'title = "t"\n[steps]\nads = "A + * <=> A*"\ngo = "A* -> P"\n'
+
+
+@pytest.mark.parametrize(
+    ("name", "says"),
+    [
+        ("../m.toml", "leads outside the folder"),
+        ("sub/../../m.toml", "leads outside the folder"),
+        ("/etc/passwd", "leads outside the folder"),
+        ("..\\m.toml", "leads outside the folder"),
+        ("C:/m.toml", "leads outside the folder"),
+        ("missing.toml", "cannot be read"),
+        ("bytes.toml", "is not text in UTF-8"),
+        ("big.toml", "is larger than"),
+        ("link.toml", "leads outside the folder"),
+    ],
+)
+def test_paths_stay_below_the_study(tmp_path, name, says):
+    base = tmp_path / "study"
+    base.mkdir()
+    (tmp_path / "m.toml").write_text(TEXT)
+    (base / "bytes.toml").write_bytes(b"\xff\xfe\x00")
+    (base / "big.toml").write_text("#" * 1_100_000)
+    (base / "link.toml").symlink_to(tmp_path / "m.toml")
+    with pytest.raises(DiscrimError, match=says):
+        load_mechanism(name, base)
+
+
+def test_a_step_of_a_file_is_pointed_at(tmp_path):
+    (tmp_path / "m.toml").write_text(TEXT)
+    with pytest.raises(DiscrimError) as caught:
+        load_mechanism("m.toml", tmp_path)
+    assert str(caught.value) == (
+        "m.toml, line 4, step go: sites do not balance\n"
+        '    go = "A* -> P"\n'
+        "                ^\n"
+        "1 site on the left, 0 on the right. Write the freed site too: A* -> P + *"
+    )
+
+
+@pytest.mark.parametrize(
+    ("text", "says", "line"),
+    [
+        ("title = 3\n[steps]\na = 'A -> B'", "title is not text", 1),
+        ("steps = 3", "steps is not a table", 1),
+        ("\ntilte = 'x'\n[steps]\na = 'A -> B'", 'unknown key "tilte"', 2),
+        ("[steps]\na = 'A -> B'\n[asume]\nlimiting = 'a'", 'unknown key "asume"', 3),
+        ("[steps]\na = A -> B", "no valid TOML", 2),
+        ("[steps]\na = 'A -> B'\na = 'B -> C'", "no valid TOML", 3),
+    ],
+)
+def test_files_that_are_wrong(text, says, line):
+    with pytest.raises(DiscrimError, match=says) as caught:
+        mechanism_from_toml(text, file="m.toml", name="m")
+    assert caught.value.place.file == "m.toml"
+    assert caught.value.place.line == line
+
+
+def test_bind_renames_everywhere(tmp_path):
+    mechanism = load_mechanism("surface-reaction-two-adsorbed", tmp_path)
+    bound = bind(mechanism, {"A": "H2", "B": "C2H4"})
+    assert [s.text for s in bound.steps] == [
+        "H2 + * <=> H2*",
+        "C2H4 + * <=> C2H4*",
+        "H2* + C2H4* -> P + 2 *",
+    ]
+    swapped = bind(mechanism, {"A": "B", "B": "A"})
+    assert swapped.steps[0].text == "B + * <=> B*"
+    enzyme = bind(load_mechanism("enzyme-one-substrate", tmp_path), {"E": "urease", "S": "urea"})
+    assert enzyme.catalyst == ("urease",)
+
+
+@pytest.mark.parametrize(
+    ("names_of", "says"),
+    [
+        ({"Q": "X"}, "no species of the mechanism"),
+        ({"A": "B"}, "one species"),
+        ({"A": "P"}, "one species"),
+        ({"A": "a b"}, "no name of a species"),
+        ({"A": "A*"}, "no name of a species"),
+        ({"A": "[A]"}, "no name of a species"),
+        ({"A": ""}, "no name of a species"),
+        ({"A": 3}, "no name of a species"),
+    ],
+)
+def test_bind_refuses(tmp_path, names_of, says):
+    mechanism = load_mechanism("surface-reaction-two-adsorbed", tmp_path)
+    with pytest.raises(DiscrimError, match=says):
+        bind(mechanism, names_of)
+
+
+@pytest.mark.parametrize(
+    ("steps", "forms"),
+    [
+        ({"b": "E + S <=> ES", "t": "ES -> E + P", "i": "E + I <=> EI"}, {"E", "ES", "EI"}),
+        (
+            {"a": "E + A <=> EA", "p": "EA <=> F + P", "b": "F + B <=> FB", "q": "FB <=> E + Q"},
+            {"E", "EA", "F", "FB"},
+        ),
+        ({"d": "E + I <=> EI", "f": "EI + I <=> EI2", "t": "E + S -> E + P"}, {"E", "EI", "EI2"}),
+    ],
+)
+def test_forms_of_a_catalyst(steps, forms):
+    mechanism = parse_mechanism(name="x", steps=steps, catalyst=["E"])
+    assert {s.name for s in catalyst_forms(mechanism, "E")} == forms
