@@ -20,6 +20,7 @@ from discrim.report.numbers import (
     percent,
     probability,
     rounded,
+    tiny_is_zero,
 )
 from discrim.report.read import Document
 from discrim.report.tables import Table
@@ -140,9 +141,7 @@ def build(document: Document) -> Content:
         comparisons=tables.comparisons(read.records(document, "comparisons")),
         constants=tables.constants(ordered, level),
         assumed=_assumed(study),
-        not_checked=tuple(
-            dict.fromkeys(read.texts(document, "not_checked") + read.texts(study, "not_checked"))
-        ),
+        not_checked=tuple(read.texts(document, "not_checked") or read.texts(study, "not_checked")),
         findings=tuple(
             (read.text(f, "severity", "note"), read.text(f, "where"), read.text(f, "says"))
             for f in read.records(document, "findings")
@@ -205,12 +204,12 @@ def law(candidate: Document) -> Law:
         name=read.text(candidate, "name", "unnamed"),
         outcome=tables.outcome(candidate),
         notes=tuple(notes),
-        text=read.text(candidate, "law"),
-        latex=read.text(candidate, "law_latex"),
-        mathml=read.text(candidate, "law_mathml"),
-        step_text=read.text(candidate, "step_law"),
-        step_mathml=read.text(candidate, "step_law_mathml"),
-        step_latex=read.text(candidate, "step_law_latex"),
+        text=tables.equation(read.text(candidate, "law")),
+        latex=tables.equation(read.text(candidate, "law_latex")),
+        mathml=_equation_mathml(read.text(candidate, "law_mathml")),
+        step_text=tables.equation(read.text(candidate, "step_law")),
+        step_mathml=_equation_mathml(read.text(candidate, "step_law_mathml")),
+        step_latex=tables.equation(read.text(candidate, "step_law_latex")),
         steps=tuple((str(read.clean(k)), read.text(steps, k)) for k in steps),
         assumptions=tuple(read.texts(candidate, "assumptions")),
         conventions=tuple(read.texts(candidate, "conventions")),
@@ -225,6 +224,12 @@ def law(candidate: Document) -> Law:
         source=read.text(candidate, "source"),
         place=read.text(candidate, "place"),
     )
+
+
+def _equation_mathml(formula: str) -> str:
+    if not formula or "<mo>=</mo>" in formula:
+        return formula
+    return f"<mrow><mi>r</mi><mo>=</mo>{formula}</mrow>"
 
 
 def _scope(document: Document, level: str) -> str:
@@ -311,7 +316,8 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         if low is not None and high is not None:
             words += f", interval {percent(low)} to {percent(high)}"
         run = read.text(effect, "run")
-        words += f", at run {run}" if run else ""
+        if run:
+            words += f", at {run}" if run.lower().startswith("run") else f", at run {run}"
         out.append(("Effect on the rate", words))
         matters = read.value(effect, "matters_above")
         out.append(
@@ -329,7 +335,7 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         )
     flip, typical = read.value(question, "flip_distance"), read.value(question, "flip_typical")
     if flip is not None:
-        words = f"{number(flip, 2)} times the stated errors"
+        words = f"{number(tiny_is_zero(flip), 2)} times the stated errors"
         words += f" ({number(typical, 2)} would be ordinary)" if typical is not None else ""
         out.append(("Flip distance", words))
     detectable = read.value(question, "detectable")

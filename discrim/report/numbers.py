@@ -7,7 +7,7 @@ place. Every function takes None for "open or unknown" and never raises on a num
 from __future__ import annotations
 
 import math
-from decimal import ROUND_HALF_UP, Context, Decimal
+from decimal import ROUND_CEILING, ROUND_FLOOR, ROUND_HALF_UP, Context, Decimal
 from typing import Any
 
 MISSING = "–"
@@ -66,15 +66,22 @@ def number(x: Any, digits: int = DIGITS) -> str:
     return mantissa + e + power
 
 
+def tiny_is_zero(x: Any, below: float = 1e-9) -> float | None:
+    """The number, or 0 where only the noise of the arithmetic is left of it."""
+    v = as_number(x)
+    return 0.0 if v is not None and abs(v) < below else v
+
+
 def as_read(x: Any) -> str:
     """A reading from the table: its digits up to seven, no noise of the conversion of units."""
     return number(x, 7)
 
 
-def interval(low: Any, high: Any, how: Any = None) -> str:
+def interval(low: Any, high: Any, how: Any = None, *, outward: bool = False) -> str:
     """An interval as text; says of each end when it is not an ordinary crossing.
 
-    ``how`` holds how each end was found: crossed, bound, open, failed.
+    ``how`` holds how each end was found: crossed, bound, open, failed. With ``outward`` the ends
+    get six digits and are rounded away from the middle, so that a guarantee stays one.
     """
     lo, hi = as_number(low), as_number(high)
     ends = list(how) if isinstance(how, list | tuple) and len(how) == 2 else ["", ""]
@@ -82,7 +89,7 @@ def interval(low: Any, high: Any, how: Any = None) -> str:
         if "failed" in ends:
             return "not found"
         return "open both ways" if "open" in ends else MISSING
-    texts = _ends(lo, hi)
+    texts = _outward(lo, hi) if outward else _ends(lo, hi)
     marks = [{"bound": " (bound)", "failed": " (not found)"}.get(str(end), "") for end in ends]
     if lo is None:
         return f"up to {texts[1]}{marks[1]}, {_no_end(ends[0])} below"
@@ -93,6 +100,18 @@ def interval(low: Any, high: Any, how: Any = None) -> str:
 
 def _no_end(how: Any) -> str:
     return "not found" if how == "failed" else "open"
+
+
+def _outward(lo: float | None, hi: float | None) -> tuple[str, str]:
+    out = []
+    for v, rounding in ((lo, ROUND_FLOOR), (hi, ROUND_CEILING)):
+        if not v:
+            out.append(number(v))
+            continue
+        # A double that is one step beside 3.0036 means 3.0036, hence the twelve digits first.
+        near = Context(prec=12).create_decimal(repr(v))
+        out.append(number(float(Context(prec=6, rounding=rounding).plus(near)), 6))
+    return out[0], out[1]
 
 
 def _ends(lo: float | None, hi: float | None) -> tuple[str, str]:
@@ -109,7 +128,7 @@ def _ends(lo: float | None, hi: float | None) -> tuple[str, str]:
 
 def percent(x: Any, digits: int = 2) -> str:
     """A fraction in per cent, two significant digits, at most one place after the point."""
-    v = as_number(x)
+    v = tiny_is_zero(x)
     if v is None:
         return MISSING
     if v == 0:

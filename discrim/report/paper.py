@@ -74,7 +74,8 @@ class Paper:
             return
         lead = min(max(len(a) for a, _ in pairs), self.width // 3) + 2
         for a, b in pairs:
-            self.say(f"{a:<{lead}}{b}", indent=indent, hang=indent + lead)
+            gap = " " * max(2, lead - len(a))
+            self.say(a + gap + b, indent=indent, hang=indent + lead)
 
     def heading(self, text: str) -> None:
         self.blank()

@@ -19,6 +19,7 @@ from discrim.report.numbers import (
     percent,
     probability,
     rounded,
+    tiny_is_zero,
 )
 
 #: The four kinds of interval, in the order in which they are shown, with what each is.
@@ -90,6 +91,11 @@ def outcome(candidate: Any) -> str:
     return "not fitted" if status and status != "converged" else MISSING
 
 
+def equation(law: str) -> str:
+    """A law with its left side, which the document leaves out."""
+    return f"r = {law}" if law and "=" not in law else law
+
+
 def candidates(ordered: Sequence[Any]) -> Table | None:
     """What became of each candidate, and its law."""
     rows = []
@@ -99,7 +105,7 @@ def candidates(ordered: Sequence[Any]) -> Table | None:
         remark = f"inseparable from {'; '.join(near)}" if near else ""
         if special:
             remark += f"{'; ' if remark else ''}no better than {special}"
-        rows.append([read.text(c, "name"), outcome(c), remark, read.text(c, "law")])
+        rows.append([read.text(c, "name"), outcome(c), remark, equation(read.text(c, "law"))])
     heads = [("Candidate", False), ("Outcome", False), ("Remark", False), ("Law", False)]
     return make("Candidates", heads, rows, marks=[outcome(c) for c in ordered])
 
@@ -111,7 +117,7 @@ def criteria(ordered: Sequence[Any]) -> Table | None:
             read.text(c, "name"),
             outcome(c),
             read.text(c, "n_constants"),
-            number(read.value(c, "objective")),
+            number(tiny_is_zero(read.value(c, "objective"))),
             number(read.value(c, "rss")),
             read.text(c, "degrees_of_freedom"),
             probability(read.value(c, "fit_p")),
@@ -173,11 +179,17 @@ def columns(runs: Mapping[str, Any]) -> Table | None:
         ("Is", False),
         ("Range", False),
         ("Units", False),
-        ("Error (one standard deviation)", False),
+        ("Error", False),
         ("Origin", False),
-        ("Basis of the error", False),
+        ("Basis", False),
     ]
-    return make("Columns", heads, rows)
+    return make(
+        "Columns",
+        heads,
+        rows,
+        note="Errors are standard deviations. Origin: set (weighed, pipetted) or measured. Basis: "
+        "where the size of the error comes from.",
+    )
 
 
 def runs(record: Mapping[str, Any]) -> Table | None:
@@ -331,7 +343,7 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
                 u,
                 _power_words(power, read.text(k, "units")),
             ]
-            row += [_interval(found.get(kind), ends.get(kind), power) for kind in KINDS]
+            row += [_interval(kind, found.get(kind), ends.get(kind), power) for kind in KINDS]
             remarks = [f"{kind}: {read.text(notes, kind)}" for kind in KINDS if kind in notes]
             row.append("; ".join([w for w in [read.text(k, "meaning"), *remarks] if w]))
             rows.append(row)
@@ -349,21 +361,23 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
     return tuple(out)
 
 
-def _interval(ends: Any, how: Any, power: int) -> str:
+def _interval(kind: str, ends: Any, how: Any, power: int) -> str:
     if not isinstance(ends, list | tuple) or len(ends) != 2:
         return MISSING
-    return interval(_by(power, as_number(ends[0])), _by(power, as_number(ends[1])), how)
+    low, high = (_by(power, as_number(end)) for end in ends)
+    return interval(low, high, how, outward=kind == "guaranteed")
 
 
 def _power(values: Sequence[float | None]) -> int:
     """The power of ten that is taken out of one constant and its intervals, 0 for none.
 
-    That of its value; of the largest end where the value is zero.
+    That of its value; of the largest end where the value is next to nothing beside it.
     """
     known = [abs(v) for v in values if v]
     if not known:
         return 0
-    power = math.floor(math.log10(abs(values[0]) if values[0] else max(known)))
+    first = abs(values[0] or 0.0)
+    power = math.floor(math.log10(first if first > 1e-6 * max(known) else max(known)))
     return 0 if -3 <= power < 5 or abs(power) > 290 else power
 
 

@@ -94,7 +94,8 @@ def _candidates(paper: Paper, content: Content) -> None:
     if table is None:
         return
     paper.heading("Candidates")
-    paper.table(content.criteria, drop=_WIDE)
+    has_aicc = content.criteria is not None and "AICc" in content.criteria.heads
+    paper.table(content.criteria, drop=[h for h in _WIDE if h != "AIC" or has_aicc])
     if "Remark" in table.heads:
         i = table.heads.index("Remark")
         notes = [f"{row[0]}: {row[i]}" for row in table.rows if row[i]]
@@ -233,7 +234,7 @@ def check(document: Document, *, width: int = WIDTH, colour: bool = False) -> st
 def _conditioning(paper: Paper, item: Any) -> None:
     paper.heading(read.text(item, "name", "unnamed"))
     if read.text(item, "law"):
-        paper.say(read.text(item, "law"), indent=2, hang=6)
+        paper.say(tables.equation(read.text(item, "law")), indent=2, hang=6)
     paper.pairs([
         ("condition number", factor(read.value(item, "condition_number"))),
         ("digits lost", number(read.value(item, "digits_lost"), 2)),

@@ -95,6 +95,20 @@ def test_an_interval_says_how_its_ends_were_found(low, high, how, expected):
 
 
 @pytest.mark.parametrize(
+    ("low", "high", "expected"),
+    [
+        # Worked by hand for two runs whose digits bound the constants.
+        (0.0, 5.405 / 1.7995, "0 (bound) to 3.00362"),
+        (2.99564, 3.003600000000001, "2.99564 to 3.0036"),
+        (-2.9956432, -1.0, "-2.99565 to -1"),
+    ],
+)
+def test_a_guaranteed_range_is_rounded_outward(low, high, expected):
+    how = ["bound" if low == 0 else "crossed", "crossed"]
+    assert interval(low, high, how, outward=True) == expected
+
+
+@pytest.mark.parametrize(
     ("function", "x", "expected"),
     [
         (percent, 0.05, "5 %"),
