@@ -5,8 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
-
+from discrim.evidence.distributions import chi2_upper, f_upper
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
@@ -44,7 +43,7 @@ def lack_of_fit(fit: Fit) -> LackOfFit | None:
         return None
     total = float((((y - fit.values) * weight) ** 2).sum())
     f = max(total - pure, 0.0) / df_lack / (pure / df_pure)
-    return LackOfFit(f, (df_lack, df_pure), float(stats.f.sf(f, df_lack, df_pure)))
+    return LackOfFit(f, (df_lack, df_pure), f_upper(f, df_lack, df_pure))
 
 
 def objective_p(fit: Fit) -> float | None:
@@ -52,4 +51,4 @@ def objective_p(fit: Fit) -> float | None:
     stated or nothing is left. Very conservative in lockstep: "it fits" is weak evidence there."""
     if fit.data.scale is not Scale.STATED or fit.degrees_of_freedom < 1:
         return None
-    return float(stats.chi2.sf(fit.objective, fit.degrees_of_freedom))
+    return chi2_upper(fit.objective, fit.degrees_of_freedom)

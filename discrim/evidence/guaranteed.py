@@ -16,8 +16,7 @@ from dataclasses import dataclass
 from itertools import product
 
 import numpy as np
-from scipy import stats
-
+from discrim.evidence.distributions import normal_quantile
 from discrim.evidence.intervals import BOUND, CROSSED, FAILED, OPEN, Interval, Side, nothing
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale
 from discrim.reactor.model import Predictor
@@ -41,7 +40,7 @@ def bounds_of(data: Measurements, alpha: float, scale2: float) -> Bounds:
             sds += len(np.unique(s.groups))
     if data.scale is Scale.ESTIMATED:
         sds += n
-    k = float(stats.norm.isf(alpha / (2 * max(sds, 1))))
+    k = normal_quantile(1.0 - alpha / (2 * max(sds, 1)))
     y = np.zeros(n)
     cond = np.zeros((n, m))
     for s in data.sources:

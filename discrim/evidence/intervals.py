@@ -13,9 +13,9 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
 
 from discrim.evidence.curve import Curve, Points
+from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile, t_quantile
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
@@ -96,8 +96,7 @@ def quantile(fit: Fit, level: float) -> float:
     df = reference_df(fit)
     if df <= 0:
         return float("inf")
-    q = 0.5 + level / 2.0
-    return float(stats.norm.ppf(q) if np.isinf(df) else stats.t.ppf(q, df))
+    return t_quantile(0.5 + level / 2.0, df)
 
 
 def linearised(fit: Fit, psi: int, se: float, level: float) -> Interval:
@@ -204,13 +203,13 @@ class _Acceptance:
         n, p = fit.n, fit.p
         # a chi-squared limit on Q of a restricted fit; void where the scale is unknown
         self.guard = (
-            float(stats.chi2.isf(GUARD, max(n - (p - 1), 1)))
+            chi2_quantile_upper(GUARD, max(n - (p - 1), 1))
             if fit.data.scale is Scale.STATED
             else np.inf
         )
         spend = GUARD if np.isfinite(self.guard) else 0.0
-        self.two = float(stats.norm.isf(max((alpha - spend), alpha / 2) / 2))
-        self.one = float(stats.norm.isf(max(alpha - spend, alpha / 2)))
+        self.two = normal_quantile(1.0 - max(alpha - spend, alpha / 2) / 2)
+        self.one = normal_quantile(1.0 - max(alpha - spend, alpha / 2))
 
     def _q_ok(self, pts: Points) -> np.ndarray:
         with np.errstate(invalid="ignore"):

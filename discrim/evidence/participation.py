@@ -6,9 +6,14 @@ from dataclasses import dataclass, replace
 from enum import Enum
 
 import numpy as np
-from scipy import stats
-
 from discrim.evidence.curve import Curve
+from discrim.evidence.distributions import (
+    chi2_upper,
+    f_upper,
+    normal_of_tail,
+    normal_quantile,
+    t_quantile,
+)
 from discrim.evidence.effect import InEffect, effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance
 from discrim.evidence.intervals import OPEN, Side, along, standard_errors
@@ -130,7 +135,7 @@ def nested_f(full: Fit, reduced: Fit, *, edge: bool) -> NestedF | None:
         f = float("inf") if rss0 > 0 else 0.0
     else:
         f = ((rss0 - rss1) / q) / (rss1 / df)
-    p = float(stats.f.sf(f, q, df))
+    p = f_upper(f, q, df)
     one = p / 2 if edge and q == 1 else p
     return NestedF(f, (q, df), p, one, edge)
 
@@ -242,13 +247,11 @@ def _several(term: Term, problem: Problem, full: Fit) -> tuple[float, float]:
         if df < 1:
             return float("nan"), 0.0
         f = (k / q) / (max(float(sol.objective[0]) - k, 1e-300) / df)
-        tail = float(stats.f.logsf(f, q, df))
+        tail = f_upper(f, q, df)
     else:
-        tail = float(stats.chi2.logsf(k, q))
+        tail = chi2_upper(k, q)
     size = np.sqrt((g**2).sum() / max((sol.jacobian[0][:, list(term.psi)] ** 2).sum(), 1e-300))
-    from scipy.special import ndtri_exp
-
-    return float(-ndtri_exp(min(tail - np.log(2.0), np.log(0.5)))), float(size)
+    return float(normal_of_tail(min(tail, 1.0) / 2)), float(size)
 
 
 def _vanishing(term: Term, null: Fit) -> list[np.ndarray]:
@@ -300,7 +303,7 @@ def _along_directions(
     replicate_df = data.scale_df if data.scale is Scale.REPLICATES else 0
     p = _joint_p(d, abs(float(seen[k])), df, estimated, replicate_df, seed)
     # two-sided joint p; one-sided on the edge is half of it at most
-    normal = float(stats.norm.isf(min(p / 2, 0.5)))
+    normal = float(normal_of_tail(min(p / 2, 0.5)))
     return float(np.sign(seen[k]) * normal), float(info[k])
 
 
@@ -400,12 +403,12 @@ def _detectable(
     if not size > 1e-9 * whole:
         return 1.0
     tail = alpha / 2 if term.kind is Kind.ORDER else alpha
-    need = float(stats.norm.isf(tail) + stats.norm.ppf(POWER))
+    need = normal_quantile(1.0 - tail) + normal_quantile(POWER)
     if problem.data.scale is Scale.ESTIMATED and not problem.with_conditions:
         df = full.degrees_of_freedom
         if df < 1 or not full.scale2 > 0:
             return float("nan")
-        need = float(stats.t.isf(tail, df) + stats.t.ppf(POWER, df)) * float(np.sqrt(full.scale2))
+        need = (t_quantile(1.0 - tail, df) + t_quantile(POWER, df)) * float(np.sqrt(full.scale2))
     theta = sol.theta.copy()
     theta[0, term.psi[0]] = need / size
     e = term.knocked.effect(theta, term.points)[0]
@@ -420,7 +423,7 @@ def _margin(
     term: Term, data: Measurements, full: Fit, seed: int, alpha: float, two_sided: bool
 ) -> float:
     """Factor on all condition errors at which the test stops rejecting."""
-    critical = float(stats.norm.isf(alpha / 2 if two_sided else alpha))
+    critical = normal_quantile(1.0 - (alpha / 2 if two_sided else alpha))
 
     def z_at(factor: float) -> float:
         problem = Problem(term.full, data.with_condition_errors_times(factor))

@@ -16,8 +16,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy import stats
-
+from discrim.evidence.distributions import chi2_upper, t_upper
 from discrim.evidence.score import NO_INFORMATION, basis, without
 from discrim.fit.covariance import Whitener
 from discrim.fit.fit import Fit, fit
@@ -147,7 +146,7 @@ def _judge(
     df_rest = null.degrees_of_freedom
     p_fit = None
     if data.scale is Scale.STATED and df_rest > 0:
-        p_fit = float(stats.chi2.sf(null.objective, df_rest))
+        p_fit = chi2_upper(null.objective, df_rest)
     unit, lengths, keep = [], [], []
     scale = 1.0
     if not known and not null.problem.with_conditions and null.scale2 > 0:
@@ -200,10 +199,10 @@ def _joint_p(
     """P(max |z| >= largest) over correlated unit directions, one-by-one exact for a single one."""
     if len(d) == 1 or _one_line(d):
         if estimated:
-            return float(2 * stats.t.sf(largest, df - 1)) if df > 1 else 1.0
+            return float(2 * t_upper(largest, df - 1)) if df > 1 else 1.0
         if replicate_df:
-            return float(2 * stats.t.sf(largest, replicate_df))
-        return float(2 * stats.norm.sf(largest))
+            return float(2 * t_upper(largest, replicate_df))
+        return float(2 * t_upper(largest, np.inf))
     # in the space of the directions: z = A x with x standard normal
     u, s, _ = np.linalg.svd(d, full_matrices=False)
     r = int((s > 1e-9 * s[0]).sum())
@@ -223,11 +222,11 @@ def _joint_p(
     simulated = (hits + 1) / (DRAWS + 1)
     # far in the tail the sum over directions is sharper than counting draws, and still valid
     if estimated:
-        single = float(2 * stats.t.sf(largest, df - 1))
+        single = float(2 * t_upper(largest, df - 1))
     elif replicate_df:
-        single = float(2 * stats.t.sf(largest, replicate_df))
+        single = float(2 * t_upper(largest, replicate_df))
     else:
-        single = float(2 * stats.norm.sf(largest))
+        single = float(2 * t_upper(largest, np.inf))
     bound = min(1.0, single * len(d))
     return min(bound, simulated) if hits < 20 else simulated
 

@@ -18,9 +18,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
-from scipy.special import log_ndtr, ndtri_exp
-
+from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
 from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
 
@@ -73,16 +71,13 @@ def to_normal(statistic: np.ndarray, df: float) -> np.ndarray:
     """The standard normal value with the same tail probability as a t value with ``df``."""
     if not np.isfinite(df):
         return statistic
-    a = np.abs(statistic)
-    log_tail = stats.t.logsf(a, df)
-    log_tail = np.minimum(log_tail, np.log(0.5))
-    z = -ndtri_exp(log_tail)
+    z = normal_of_tail(np.minimum(t_upper(np.abs(statistic), df), 0.5))
     return np.where(np.isnan(statistic), np.nan, np.sign(statistic) * np.maximum(z, 0.0))
 
 
 def p_one_sided(z: float) -> float:
     """Upper-tail p-value of a standard normal."""
-    return float(np.exp(log_ndtr(-z)))
+    return float(normal_upper(z))
 
 
 def score(

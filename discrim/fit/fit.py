@@ -140,11 +140,37 @@ def _rough_weight(data: Measurements) -> np.ndarray:
     return 1.0 / np.sqrt(np.where(var > 0, var, np.max(var)))
 
 
+# a constant whose whole effect on the predictions is under this many standard errors is on its bound
+ON_BOUND = 1e-6
+
+
+def _settled_on_bounds(problem: Problem, one: Solution) -> Solution:
+    """Constants that ended within rounding of a bound, put on it."""
+    theta = one.theta[0]
+    predictor = problem.predictor
+    norms = np.sqrt((one.jacobian[0] ** 2).sum(axis=0))
+    limit = ON_BOUND
+    if problem.estimated and not problem.with_conditions:
+        limit *= max(float(np.sqrt(one.objective[0] / max(problem.data.n, 1))), 1e-300)
+    new = theta.copy()
+    for bound in (predictor.lower, predictor.upper):
+        near = np.isfinite(bound) & (theta != bound)
+        gap = np.abs(theta - np.where(np.isfinite(bound), bound, 0.0)) * norms
+        new = np.where(near & (gap < limit) & np.isfinite(gap), bound, new)
+    if (new == theta).all() or not np.isfinite(one.objective[0]):
+        return one
+    moved = problem.evaluate(new[None], one.conditions, None, one.scale2, np.array([0]))
+    if not np.isfinite(moved.objective[0]):
+        return one
+    moved.state, moved.iterations = one.state, one.iterations
+    return moved
+
+
 def _record(problem: Problem, solution: Solution) -> Fit:
     data, predictor = problem.data, problem.predictor
     objective = np.where(np.isfinite(solution.objective), solution.objective, np.inf)
     k = int(np.argmin(objective))
-    one = solution.take(np.array([k]))
+    one = _settled_on_bounds(problem, solution.take(np.array([k])))
     state = int(one.state[0])
     status = FitStatus.CONVERGED if state == CONVERGED else FitStatus.STEP_LIMIT
     if state == NOT_FINITE or not np.isfinite(one.objective[0]):

@@ -368,7 +368,7 @@ def _stand_ins(
         data = _same_errors(here.measurements, own.data, here, bench).as_origin(origin)
         f_own = fit(host.predictor, data, seed=seed, starts=4, near=own.theta[None])
         f_rival = fit(rival.predictor, data, seed=seed, starts=8)
-        if not f_rival.ok or not f_own.ok:
+        if not f_rival.ok or not f_own.ok or _adds_nothing(f_rival):
             continue
         judged = standing([f_own, f_rival], {}, {}, alpha=alpha, seed=seed)
         ok = judged[1].stands
@@ -379,6 +379,17 @@ def _stand_ins(
         if len(found) == MOST_STAND_INS:
             break
     return found
+
+
+def _adds_nothing(f: Fit) -> bool:
+    """True when the stand-in only repeats a term that the law has anyway."""
+    jac = f.jacobian
+    norms = np.sqrt((jac**2).sum(axis=0))
+    moving = jac[:, norms > 0] / norms[norms > 0]
+    if moving.shape[1] < 2:
+        return False
+    s = np.linalg.svd(moving, compute_uv=False)
+    return bool(len(s) < moving.shape[1] or s[-1] <= 1e-9 * s[0])
 
 
 def _values_of(about: str, study: Study, bench: Bench) -> np.ndarray | None:

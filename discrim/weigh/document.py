@@ -6,7 +6,6 @@ them; what is not known, open or infinite is null.
 
 from __future__ import annotations
 
-import hashlib
 import math
 import sys
 from collections.abc import Mapping
@@ -19,7 +18,6 @@ from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 from discrim.runs.model import Column, ErrorBasis, Role
 from discrim.study.lookup import to_shown
-from discrim.units import parse_unit
 from discrim.verdict import sentence_standing
 from discrim.weigh.asked import Answer, InCandidate
 from discrim.weigh.derived import law_keys
@@ -40,6 +38,12 @@ def number(x: Any) -> float | None:
         return None
     v = float(x)
     return v if math.isfinite(v) else None
+
+
+def distance(x: float) -> float | None:
+    """A flip distance; what is only rounding is none at all."""
+    v = number(x)
+    return 0.0 if v is not None and abs(v) < 1e-6 else v
 
 
 def document(w: Weighed) -> dict[str, Any]:
@@ -484,7 +488,7 @@ def _comparison(w: Weighed, k: int) -> dict[str, Any]:
 
 def _reconciled_p(w: Weighed, larger: int, smaller: int) -> float | None:
     """From the score of the smaller law in the direction of the larger one."""
-    from scipy import stats
+    from discrim.evidence.distributions import t_upper
 
     zs = [abs(a.z) for a in w.standings[smaller].against if a.rival == larger]
     if not zs:
@@ -493,7 +497,7 @@ def _reconciled_p(w: Weighed, larger: int, smaller: int) -> float | None:
     if w.common.scale is Scale.ESTIMATED:
         df = w.assessments[smaller].fit.degrees_of_freedom - 1
     z = max(zs)
-    single = 2 * (stats.t.sf(z, df) if df > 0 else stats.norm.sf(z))
+    single = 2 * float(t_upper(z, df if df > 0 else np.inf))
     return float(min(1.0, single * len(zs)))
 
 
@@ -619,8 +623,8 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
             }
         margins = [r.error_margin for r in readings if r.error_margin == r.error_margin]
         margin = number(min(margins)) if margins else None
-        flip, typical = number(first.flip), number(first.flip_typical)
-        matters = number(first.flip_matters)
+        flip, typical = distance(first.flip), distance(first.flip_typical)
+        matters = distance(first.flip_matters)
         detectable = number(max((r.detectable for r in readings), default=float("nan")))
     flip_shown = matters if v.outcome == "negligible" else flip
     return {
@@ -695,11 +699,3 @@ def _not_checked(w: Weighed) -> list[str]:
         if c.role is Role.SPECIES and c.basis is ErrorBasis.ASSUMED:
             out.append(f"the error of “{c.name}”: assumed, not stated")
     return out
-
-
-def sha(text: str) -> str:
-    return hashlib.sha256(text.encode()).hexdigest()
-
-
-def unit_text(text: str) -> str:
-    return parse_unit(text).text() if hasattr(parse_unit(text), "text") else text

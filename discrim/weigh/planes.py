@@ -8,8 +8,6 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from scipy import stats
-
 from discrim.fit.measurements import Scale
 
 if TYPE_CHECKING:
@@ -120,7 +118,7 @@ def _plane(w: Weighed, i: int) -> dict[str, Any]:
             "y": [_n(v) for v in gy],
             "distance": [[_n(v, 4) for v in row] for row in q],
         },
-        "levels": [float(stats.chi2.ppf(level, 2))],
+        "levels": [-2.0 * float(np.log1p(-level))],
         "best": [_n(fit.theta[jx]), _n(fit.theta[jy])],
         "trade_off": _direction(w, i, jx, jy, (x0, x1, y0, y1)),
         "corner": None,
