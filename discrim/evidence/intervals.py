@@ -9,7 +9,7 @@ guaranteed : see :mod:`discrim.evidence.guaranteed`
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -155,13 +155,8 @@ def along(
     base = min(free, lowest)
     tests = _Acceptance(fit, base, level, lo)
 
-    def refine(accept: Callable[[Points], np.ndarray]) -> tuple[Interval, Side, Side]:
-        return _pieces(curve, pts, accept, lo, hi, x)
-
-    profile, *_ = refine(tests.profile)
-    recon, *_ = refine(tests.reconciled)
-    _, _, high1 = refine(tests.not_too_high)
-    _, low1, _ = refine(tests.not_too_low)
+    accepts = (tests.profile, tests.reconciled, tests.not_too_high, tests.not_too_low)
+    (profile, *_), (recon, *_), (_, _, high1), (_, low1, _) = _sets(curve, pts, accepts, lo, hi)
     return Along(
         _named(profile, "profile"),
         _named(recon, "reconciled", tests, pts),
@@ -274,23 +269,32 @@ def _grid(x: float, se: float, lo: float, hi: float, typical: float) -> np.ndarr
     return grid[keep]
 
 
-def _pieces(
-    curve: Curve,
-    pts: Points,
-    accept: Callable[[Points], np.ndarray],
-    lo: float,
-    hi: float,
-    x: float,
-) -> tuple[Interval, Side, Side]:
-    """Accepted pieces on the grid, their ends refined all together by a bracketed secant."""
+Accept = Callable[[Points], np.ndarray]
+
+
+def _sets(
+    curve: Curve, pts: Points, accepts: Sequence[Accept], lo: float, hi: float
+) -> list[tuple[Interval, Side, Side]]:
+    """The accepted set of each criterion: pieces on the grid, the ends of all of them refined
+    together as one batch."""
     v = pts.values
-    m = accept(pts)
-    yes = m > 0
+    margins = [accept(pts) for accept in accepts]
+    changes = [np.flatnonzero((m[1:] > 0) != (m[:-1] > 0)) for m in margins]
+    which = np.concatenate([np.full(len(c), k) for k, c in enumerate(changes)]).astype(int)
+    at = np.concatenate(changes).astype(int)
+    fa = np.array([margins[k][j] for k, j in zip(which, at, strict=True)])
+    fb = np.array([margins[k][j + 1] for k, j in zip(which, at, strict=True)])
+    ends = _refine(curve, accepts, which, v[at], v[at + 1], fa, fb)
+    return [_pieces(margins[k] > 0, ends[which == k], lo, hi) for k in range(len(accepts))]
+
+
+def _pieces(
+    yes: np.ndarray, ends: np.ndarray, lo: float, hi: float
+) -> tuple[Interval, Side, Side]:
+    """Pieces and hull from what is accepted on the grid and where that changes."""
     if not yes.any():
         nan = Side(float("nan"), FAILED)
         return Interval("", nan, nan, empty=True), nan, nan
-    change = np.flatnonzero(yes[1:] != yes[:-1])
-    ends = _refine(curve, accept, v[change], v[change + 1], m[change], m[change + 1])
     first = [-np.inf] if yes[0] else []
     last = [np.inf] if yes[-1] else []
     marks = [*first, *ends.tolist(), *last]
@@ -311,38 +315,47 @@ def _pieces(
 
 def _refine(
     curve: Curve,
-    accept: Callable[[Points], np.ndarray],
+    accepts: Sequence[Accept],
+    which: np.ndarray,
     a: np.ndarray,
     b: np.ndarray,
     fa: np.ndarray,
     fb: np.ndarray,
 ) -> np.ndarray:
-    """Where the margin changes sign between a and b, all brackets as one batch (Illinois method)."""
+    """Where the margin of criterion ``which`` changes sign between a and b (Illinois method)."""
     if not len(a):
         return a
     a, b = a.astype(float).copy(), b.astype(float).copy()
     fa, fb = _tame(fa), _tame(fb)
-    x = 0.5 * (a + b)
-    for k in range(24):
+    out = 0.5 * (a + b)
+    live = np.arange(len(a))
+    for k in range(40):
+        la, lb, lfa, lfb = a[live], b[live], fa[live], fb[live]
         with np.errstate(divide="ignore", invalid="ignore"):
-            x = (a * fb - b * fa) / (fb - fa)
+            x = (la * lfb - lb * lfa) / (lfb - lfa)
         # bisection at first where the bracket spans decades, and whenever the secant leaves it
-        wide = (k < 3) & (np.abs(b - a) > 0.5 * (np.abs(a) + np.abs(b)))
-        geo = (a > 0) & (b > 0)
-        mid = np.where(geo, np.sqrt(np.abs(a * b)), 0.5 * (a + b))
-        inside = (x > np.minimum(a, b)) & (x < np.maximum(a, b))
-        x = np.where(wide | ~inside, mid, x)
-        fx = _tame(accept(curve.at(x, careful=False)))
-        same = (fx > 0) == (fa > 0)
-        fb = np.where(same, fb * np.where(k > 2, 0.5, 1.0), fx)
-        fa = np.where(same, fx, fa * np.where(k > 2, 0.5, 1.0))
-        b = np.where(same, b, x)
-        a = np.where(same, x, a)
-        if (np.abs(b - a) <= 1e-7 * np.maximum(np.abs(a), np.abs(b))).all():
+        wide = (k < 3) & (np.abs(lb - la) > 0.5 * (np.abs(la) + np.abs(lb)))
+        positive = (la > 0) & (lb > 0)
+        mid = np.where(positive, np.sqrt(np.abs(la * lb)), 0.5 * (la + lb))
+        inside = (x > np.minimum(la, lb)) & (x < np.maximum(la, lb))
+        x = np.where(wide | ~inside | (k % 8 == 7), mid, x)
+        pts = curve.at(x, careful=False)
+        every = [_tame(accept(pts)) for accept in accepts]
+        fx = np.array([every[w][i] for i, w in enumerate(which[live])])
+        same = (fx > 0) == (lfa > 0)
+        half = 0.5 if k > 2 else 1.0
+        fb[live] = np.where(same, lfb * half, fx)
+        fa[live] = np.where(same, fx, lfa * half)
+        b[live] = np.where(same, lb, x)
+        a[live] = np.where(same, x, la)
+        moved = np.abs(x - out[live])
+        out[live] = x
+        narrow = np.abs(b[live] - a[live]) <= 1e-6 * np.maximum(np.abs(x), 1e-300)
+        settled = (k > 3) & (moved <= 1e-7 * np.abs(x)) & ~wide
+        live = live[~(narrow | (np.abs(fx) <= 1e-7) | settled)]
+        if not len(live):
             break
-        if (np.abs(fx) <= 1e-7).all():
-            break
-    return x
+    return out
 
 
 def _tame(m: np.ndarray) -> np.ndarray:
