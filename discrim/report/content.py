@@ -171,11 +171,15 @@ def not_computed(document: Document) -> list[str]:
 
 
 def laws_of(candidates: Sequence[Document]) -> tuple[tuple[Law, ...], tuple[str, ...]]:
-    """Each candidate's law (also what ``derive`` prints), and the conventions that all share."""
+    """Each candidate's law (also what ``derive`` prints), and the conventions that they share.
+
+    Bare laws come without conventions and do not count.
+    """
     laws = [law(c) for c in candidates]
-    if len(laws) < 2:
+    stated = [item.conventions for item in laws if item.conventions]
+    if len(stated) < 2:
         return tuple(laws), ()
-    shared = [c for c in laws[0].conventions if all(c in other.conventions for other in laws)]
+    shared = [c for c in stated[0] if all(c in other for other in stated)]
     own = [
         replace(item, conventions=tuple(c for c in item.conventions if c not in shared))
         for item in laws
@@ -196,9 +200,10 @@ def law(candidate: Document) -> Law:
             "them: isotope effect, labelling, trapping, spectroscopy."
         )
     special = read.text(candidate, "no_better_than")
-    if special:
+    reasons = read.texts(candidate, "reasons")
+    if special and not any("no better than" in reason for reason in reasons):
         notes.append(f"Stands, but no better than its special case “{special}”.")
-    notes += read.texts(candidate, "reasons") + read.texts(candidate, "note")
+    notes += reasons + read.texts(candidate, "note")
     steps = read.part(candidate, "steps")
     return Law(
         name=read.text(candidate, "name", "unnamed"),
@@ -315,6 +320,8 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         words = percent(read.value(effect, "value"))
         if low is not None and high is not None:
             words += f", interval {percent(low)} to {percent(high)}"
+        bound = read.value(effect, "bound")
+        words += f", one-sided bound {percent(bound)}" if bound is not None else ""
         run = read.text(effect, "run")
         if run:
             words += f", at {run}" if run.lower().startswith("run") else f", at run {run}"

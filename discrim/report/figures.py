@@ -143,7 +143,7 @@ def residuals(name: str, document: Document, standing: Sequence[Any]) -> Picture
     if not shown or not columns:
         return None
     columns = columns[:MOST_PANELS]
-    figure, axes = panels(len(columns), height=1.35, left=0.5, gap=0.42, below=0.55,
+    figure, axes = panels(len(columns), height=1.35, left=0.58, gap=0.44, below=0.55,
                           above=0.12)  # fmt: skip
     legend = len(shown) > 1
     most = max(abs(v) for _, points in shown for _, v in points)

@@ -48,8 +48,10 @@ def rounded(value: Any, uncertainty: Any = None) -> tuple[str, str]:
     if not u:
         return number(v), ""
     place = _place(abs(u))
-    shown_u = _at_place(abs(u), place)
-    return _at_place(v, place), shown_u
+    shown = _at_place(v, place)
+    # Both in the same notation, so that their places can be compared at a glance.
+    alike = "e" not in shown and -9 <= place <= 0
+    return shown, f"{_quantized(abs(u), place):f}" if alike else _at_place(abs(u), place)
 
 
 def number(x: Any, digits: int = DIGITS) -> str:

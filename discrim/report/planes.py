@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+from matplotlib.patches import Patch
+
 from discrim.report import read
 from discrim.report.canvas import (
     BLUE,
@@ -34,11 +36,13 @@ def plane(name: str, record: Any) -> Picture | None:
     fx, px = scale_of(list(x_range))
     fy, py = scale_of(list(y_range))
     figure = sheet(3.9)
-    ax = figure.add_axes((0.135, 0.27, 0.84, 0.715))
+    ax = figure.add_axes((0.165, 0.27, 0.81, 0.715))
     handles: list[tuple[Any, str]] = []
     bands = read.records(record, "bands")
+    # All bands together stay light enough to see the lines and contours on them.
+    depth = min(0.14, max(0.025, 0.8 / max(len(bands), 1)))
     for i, band in enumerate(bands[:MOST_BANDS]):
-        _band(ax, band, fx, fy, first=i == 0, handles=handles)
+        _band(ax, band, fx, fy, depth, first=i == 0, handles=handles)
     corner = _points(record.get("corner"), fx, fy)
     if len(corner) > 2:
         (patch,) = ax.fill([p[0] for p in corner], [p[1] for p in corner], fc="none", ec=GREEN,
@@ -76,25 +80,39 @@ def plane(name: str, record: Any) -> Picture | None:
         figure, name,
         title=f"Plane of {label(names, 60)}" + (f", {who}" if who else ""),
         alt=_alt(record, names, bands, drawn, trade, (fx, fy)) + (f" {words}" if words else ""),
-        caption=words or "Each band: what one run allows with its errors. Bands that lie on one "
-        "another fix only one combination of the two constants; where they cross, both.",
+        caption="Each band: what one run allows with its errors. Bands that lie on one "
+        "another fix only one combination of the two constants; where they cross, both."
+        + (f" {words}" if words else ""),
     )  # fmt: skip
 
 
 def _band(
-    ax: Any, band: Any, fx: float, fy: float, *, first: bool, handles: list[tuple[Any, str]]
+    ax: Any,
+    band: Any,
+    fx: float,
+    fy: float,
+    depth: float,
+    *,
+    first: bool,
+    handles: list[tuple[Any, str]],
 ) -> None:
+    """One run's band; ``depth`` is how opaque it and (five times as much) its middle line are."""
     low, high = _points(band.get("low"), fx, fy), _points(band.get("high"), fx, fy)
     if len(low) > 1 and len(high) > 1:
         around = low + high[::-1]
-        (patch,) = ax.fill([p[0] for p in around], [p[1] for p in around], color=BLUE, alpha=0.12,
+        ax.fill([p[0] for p in around], [p[1] for p in around], color=BLUE, alpha=depth,
                            lw=0, zorder=1)  # fmt: skip
         if first:
-            handles.append((patch, "allowed by one run"))
+            handles.append((Patch(color=BLUE, alpha=0.25, lw=0), "allowed by one run"))
     line = _points(band.get("line"), fx, fy)
     if len(line) > 1:
         ax.plot(
-            [p[0] for p in line], [p[1] for p in line], color=BLUE, lw=0.7, alpha=0.75, zorder=2
+            [p[0] for p in line],
+            [p[1] for p in line],
+            color=BLUE,
+            lw=0.7,
+            alpha=min(0.75, 5 * depth),
+            zorder=2,
         )
 
 

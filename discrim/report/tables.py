@@ -118,7 +118,7 @@ def criteria(ordered: Sequence[Any]) -> Table | None:
             outcome(c),
             read.text(c, "n_constants"),
             number(tiny_is_zero(read.value(c, "objective"))),
-            number(read.value(c, "rss")),
+            number(_rss(c)),
             read.text(c, "degrees_of_freedom"),
             probability(read.value(c, "fit_p")),
             probability(read.value(read.part(c, "lack_of_fit"), "p")),
@@ -151,6 +151,12 @@ def criteria(ordered: Sequence[Any]) -> Table | None:
         "BIC and weights rank candidates on the same runs; they never reject one.",
         marks=[outcome(c) for c in ordered],
     )
+
+
+def _rss(c: Any) -> float | None:
+    """The residual sum of squares; it has units, so Q tells when only noise is left of it."""
+    q = read.value(c, "objective")
+    return 0.0 if q is not None and tiny_is_zero(q) == 0 else read.value(c, "rss")
 
 
 def columns(runs: Mapping[str, Any]) -> Table | None:
@@ -195,7 +201,7 @@ def columns(runs: Mapping[str, Any]) -> Table | None:
 def runs(record: Mapping[str, Any]) -> Table | None:
     labels = [read.clean(x) for x in read.items(record, "labels")]
     kept = read.items(record, "kept")
-    shown = read.records(record, "columns")
+    shown = [c for c in read.records(record, "columns") if read.text(c, "is") != "run"]
     rows = []
     for i, label in enumerate(labels):
         row = [label]
@@ -225,16 +231,14 @@ def conditioning(ordered: Sequence[Any]) -> tuple[Table, ...]:
             read.text(c, "name"),
             factor(read.value(c, "condition_number")),
             number(read.value(c, "digits_lost"), 2),
-            _rank(c),
         ]
         for c in ordered
-        if read.value(c, "condition_number") is not None or read.value(c, "rank") is not None
+        if read.value(c, "condition_number") is not None
     ]
     heads = [
         ("Candidate", False),
         ("Condition number", True),
         ("Digits lost", True),
-        ("Constants fixed by the runs", True),
     ]
     first = make(
         "Conditioning of the runs",
@@ -249,13 +253,6 @@ def conditioning(ordered: Sequence[Any]) -> tuple[Table, ...]:
         if table:
             out.append(table)
     return tuple(out)
-
-
-def _rank(c: Any) -> str:
-    rank, n = read.value(c, "rank"), read.text(c, "n_constants")
-    if rank is None:
-        return MISSING
-    return f"{int(rank)} of {n}" if n else str(int(rank))
 
 
 def _proportions(c: Any) -> Table | None:
@@ -410,14 +407,14 @@ def _tests(question: Mapping[str, Any]) -> Table | None:
         for k in origins
     ]
     for name, t in listed:
-        statistic = read.value(t, "statistic")
+        statistic = tiny_is_zero(read.value(t, "statistic"))
         df = [read.clean(x) for x in read.items(t, "df")] or read.texts(t, "df")
         rows.append(
             [
                 name,
                 number(statistic, 3),
                 ", ".join(df),
-                number(read.value(t, "z"), 3),
+                number(tiny_is_zero(read.value(t, "z")), 3),
                 probability(read.value(t, "p")),
                 read.text(t, "words"),
             ]

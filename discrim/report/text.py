@@ -134,7 +134,7 @@ def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = F
         paper.heading(item.name)
         _law(paper, item)
     if conventions:
-        paper.heading("Conventions of all these laws")
+        paper.heading("Conventions")
         paper.bullets(conventions)
     shared = _shared(candidates)
     if shared:
