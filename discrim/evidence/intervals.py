@@ -70,10 +70,13 @@ def standard_errors(fit: Fit) -> np.ndarray:
     if n < use.sum():
         return out
     tiny = s <= 1e-14 * s[0]
-    with np.errstate(divide="ignore"):
-        var = ((vt / np.where(tiny, 0.0, s)[:, None]) ** 2).sum(axis=0)
+    # a null direction leaves the constants that carry it undetermined, and no other
+    share = vt / np.where(tiny, 1.0, s)[:, None]
+    share = np.where(tiny[:, None], np.where(np.abs(vt) > 1e-8, np.inf, 0.0), share)
+    var = (share**2).sum(axis=0)
     scale2 = fit.scale2 if _scale_from_fit(fit) else 1.0
-    out[use] = np.sqrt(var * scale2) / norms[use]
+    fixed = np.isfinite(var)  # an exact fit (scale 0) does not determine what the runs leave open
+    out[use] = np.where(fixed, np.sqrt(np.where(fixed, var, 0.0) * scale2), np.inf) / norms[use]
     return out
 
 

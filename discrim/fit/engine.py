@@ -298,7 +298,9 @@ def solve(
         low, high, hold = lower[a], upper[a], held[a]
         grad = np.einsum("snp,sn->sp", cur.jacobian, cur.residual)
         norms = np.sqrt(np.einsum("snp,snp->sp", cur.jacobian, cur.jacobian))
-        d_max[a] = np.maximum(d_max[a], norms)
+        # eliminating linear constants can change them by powers of ten in one step: the largest
+        # length seen so far is no scale then
+        d_max[a] = norms if separable else np.maximum(d_max[a], norms)
         d = np.where(d_max[a] > 0, d_max[a], 1.0)
         blocked = (
             hold

@@ -43,6 +43,7 @@ def starting_values(predictor: Predictor, count: int, seed: int) -> np.ndarray:
     return out
 
 
+@np.errstate(over="ignore", invalid="ignore", divide="ignore")  # a wild start is dropped, not reported
 def scout(
     predictor: Predictor,
     data: Measurements,
