@@ -101,7 +101,7 @@ def fit(
     problem = Problem(predictor, data)
     rows = _basins(predictor, data, starts, seed, near)
     solution = solve(problem, rows, options=options)
-    return _record(problem, solution)
+    return of_solution(problem, solution)
 
 
 def _basins(
@@ -166,7 +166,8 @@ def _settled_on_bounds(problem: Problem, one: Solution) -> Solution:
     return moved
 
 
-def _record(problem: Problem, solution: Solution) -> Fit:
+def of_solution(problem: Problem, solution: Solution) -> Fit:
+    """The record of the best of the solved problems in a batch."""
     data, predictor = problem.data, problem.predictor
     objective = np.where(np.isfinite(solution.objective), solution.objective, np.inf)
     k = int(np.argmin(objective))
