@@ -284,8 +284,11 @@ def solve(
     best.state[:] = np.where(np.isfinite(best.objective), RUNNING, NOT_FINITE)
     separable = opt.separate and not problem.with_conditions and bool(pred.linear.any())
 
+    # a linear law needs no damping: one step solves it, a second one refines the solution, which in
+    # badly conditioned tables restores the digits that the first has lost
+    one_step = bool(pred.linear.all()) and not problem.measured
     active = everything[best.state == RUNNING]
-    mu = np.full(s, 1e-3)
+    mu = np.full(s, 1e-18 if one_step else 1e-3)
     nu = np.full(s, 2.0)
     d_max = np.zeros((s, p))
     w_all: np.ndarray | None = None
@@ -315,6 +318,8 @@ def solve(
         done = cosine.max(axis=1, initial=0.0) <= opt.gradient_tolerance
         done |= cur.objective <= 1e-28 * _reference(problem, cur, a)
         settled = quiet[a] >= 2
+        if one_step:
+            done &= best.iterations[a] >= 2
         done = (done & ~_scale_pending(problem, quiet[a])) | settled
         if done.any():
             best.state[a[done]] = CONVERGED
