@@ -11,7 +11,7 @@ from discrim.mechanism.check import check_mechanism
 from discrim.mechanism.model import Mechanism, Step
 from discrim.mechanism.step import SITE_SIGNS, clipped, is_name, parse_step
 
-MAX_STEPS = 200
+MAX_STEPS = 60  # the largest mechanism for which a law in closed form is of use
 ASSUME_KEYS = ("equilibrated", "limiting", "steady", "overall_equilibrium")
 
 

@@ -15,7 +15,13 @@ import sympy
 from sympy import ZZ, Rational
 from sympy.polys.rings import PolyElement, PolyRing, ring
 
+MAX_TERMS = 250  # a law with more terms is of no use to anybody, and takes minutes
+
 Exponents = Mapping[sympy.Symbol, Fraction]
+
+
+class TooLarge(Exception):
+    """A polynomial has more than ``MAX_TERMS`` terms."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -190,6 +196,35 @@ def _repeats(poly: PolyElement) -> bool:
     return False
 
 
+def factors_of(poly: PolyElement) -> tuple[int, list[tuple[PolyElement, int]]]:
+    """Content and irreducible factors.
+
+    A polynomial a x + b is irreducible if a and b have no common factor; steady states give
+    polynomials of degree one in each constant, so that this settles nearly all of them.
+    """
+    r = poly.ring
+    content, rest = poly.primitive()
+    if rest.LC < 0:
+        content, rest = -content, -rest
+    lowest = tuple(min(m[i] for m in rest.monoms()) for i in range(r.ngens))
+    out = [(r.gens[i], e) for i, e in enumerate(lowest) if e]
+    rest = rest.exquo(r.from_dict({lowest: ZZ(1)}))
+    if rest.is_ground:
+        return int(content), out
+    for x in range(r.ngens):
+        if rest.degree(x) != 1:
+            continue
+        slope = r.from_dict({(*m[:x], 0, *m[x + 1 :]): c for m, c in rest.terms() if m[x] == 1})
+        constant = r.from_dict({m: c for m, c in rest.terms() if m[x] == 0})
+        common = common_factor(slope, constant)
+        if common.is_ground:
+            return int(content), [*out, (rest, 1)]
+        number, inner = factors_of(common)
+        return int(content) * number, [*out, *inner, *factors_of(rest.exquo(common))[1]]
+    number, found = rest.factor_list()
+    return int(content) * int(number), [*out, *found]
+
+
 def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]:
     r = poly.ring
     if poly.is_ground:
@@ -215,6 +250,23 @@ def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]
         return content, [*gens, (primitive, 1)]
     c, factors = primitive.sqf_list()
     return content * c, [*gens, *factors]
+
+
+def ratio(
+    above: Iterable[tuple[PolyElement, int]], below: Iterable[tuple[PolyElement, int]]
+) -> Quotient:
+    """Quotient of products of powers; equal factors cancel before anything is multiplied out."""
+    powers: dict[PolyElement, int] = {}
+    for sign, parts in ((1, above), (-1, below)):
+        for poly, e in parts:
+            powers[poly] = powers.get(poly, 0) + sign * e
+    top = None
+    for poly, e in powers.items():
+        if e > 0:
+            top = poly**e if top is None else top * poly**e
+    if top is None:
+        top = next(iter(powers)).ring.one
+    return quotient(top, [(poly, -e) for poly, e in powers.items() if e < 0])
 
 
 def add(a: Quotient, b: Quotient) -> Quotient:
@@ -275,8 +327,8 @@ def solve_linear(
                 (pivot * x - f * y).exquo(previous) if (x or y) else x
                 for x, y in zip(rows[i], rows[k], strict=True)
             ]
-        for i in range(k):
-            assert rows[i][i] == pivot
+        if max(len(x) for row in rows for x in row) > MAX_TERMS:
+            raise TooLarge
         previous = pivot
     determinant = rows[n - 1][n - 1] if n else one
     numerators = [rows[i][n] for i in range(n)]

@@ -24,7 +24,15 @@ from sympy.polys.rings import PolyElement
 
 from discrim.errors import DiscrimError
 from discrim.mechanism.model import Species, Step
-from discrim.ratelaw.derive_algebra import Algebra, Quotient, add, quotient, solve_linear
+from discrim.ratelaw.derive_algebra import (
+    MAX_TERMS,
+    Algebra,
+    Quotient,
+    TooLarge,
+    add,
+    ratio,
+    solve_linear,
+)
 from discrim.ratelaw.derive_network import (
     Matrix,
     Network,
@@ -292,7 +300,14 @@ def _steady_state(
         right.append(b)
     solved = None
     if len(matrix) == len(unknowns):
-        solved = solve_linear(matrix, right, algebra.ring.one)
+        try:
+            solved = solve_linear(matrix, right, algebra.ring.one)
+        except TooLarge:
+            raise DiscrimError(
+                f"the law would have more than {MAX_TERMS} terms",
+                place=network.mechanism.place,
+                do="Take the fast steps as equilibrated, or leave out steps that cannot matter.",
+            ) from None
     if solved is None:
         names = ", ".join(s.name for s in unknowns)
         raise DiscrimError(
@@ -362,12 +377,16 @@ def _balance_row(
     return row, right
 
 
+Factors = list[tuple[PolyElement, int]]
+
+
 def _powers(
     algebra: Algebra, m: Monomial, values: Mapping[int, tuple[PolyElement, PolyElement]]
-) -> tuple[PolyElement, list[tuple[PolyElement, int]]]:
-    """Numerator and denominators of a monomial without its references."""
+) -> tuple[Factors, Factors]:
+    """Factors above and below of a monomial without its references."""
     top, bottom = algebra.monomial(m.symbols)
-    below: list[tuple[PolyElement, int]] = [(bottom, 1)]
+    above: Factors = [(top, 1)]
+    below: Factors = [(bottom, 1)]
     for u, e in m.u.items():
         if e.denominator != 1:
             raise DiscrimError(
@@ -375,13 +394,9 @@ def _powers(
                 do="Such a law is not yet supported; write the rate law itself as law = ....",
             )
         y, d = values[u]
-        if e > 0:
-            top = top * y ** int(e)
-            below.append((d, int(e)))
-        else:
-            top = top * d ** int(-e)
-            below.append((y, int(-e)))
-    return top, below
+        above.append((y, int(e)))
+        below.append((d, int(e)))
+    return above, below
 
 
 def _totals(
@@ -408,8 +423,8 @@ def _totals(
                     )
                     + " becomes quadratic",
                 )
-            top, below = _powers(algebra, m, values)
-            total = add(total, quotient(top * weight, below))
+            above, below = _powers(algebra, m, values)
+            total = add(total, ratio([*above, (algebra.ring(weight), 1)], below))
         totals.append(total)
     return tuple(totals)
 
@@ -425,7 +440,7 @@ def _net_rate(
     for sign, m in ((1, side[0]), (-1, side[1])):
         if m is None:
             continue
-        top, below = _powers(algebra, m, values)
+        above, below = _powers(algebra, m, values)
         for k, e in m.v.items():
             if e.denominator != 1:
                 raise DiscrimError(
@@ -433,9 +448,7 @@ def _net_rate(
                     place=step.place,
                     do="Such a law is not yet supported; write the rate law itself as law = ....",
                 )
-            over = [(totals[k].top, int(e))]
-            for poly, power in totals[k].bottom:
-                top = top * poly ** (power * int(e))
-            below.extend(over)
-        total = add(total, quotient(top * sign, below))
+            above += [(poly, power * int(e)) for poly, power in totals[k].bottom]
+            below.append((totals[k].top, int(e)))
+        total = add(total, ratio([*above, (algebra.ring(sign), 1)], below))
     return total

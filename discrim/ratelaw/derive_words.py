@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from fractions import Fraction
 from typing import Any
 
 import sympy
@@ -61,7 +63,7 @@ def assumptions(network: Network, solution: Solution) -> tuple[str, ...]:
                 "of the other species are those not bound to it."
             )
     for name, others in solution.relations:
-        factors = " ".join(f"K_{n}^{e}" if e != 1 else f"K_{n}" for n, e in others.items()) or "1"
+        factors = _product(others)
         out.append(
             f"The equilibrated steps close a cycle, so that K_{name} = {factors} and is not a "
             "constant of its own."
@@ -69,6 +71,19 @@ def assumptions(network: Network, solution: Solution) -> tuple[str, ...]:
     if not network.intermediates and len(network.kinetic) > 1:
         out.append("The steps run side by side and do not influence each other.")
     return tuple(out)
+
+
+def _product(powers: Mapping[str, Fraction]) -> str:
+    """Equilibrium constants multiplied and divided, as text."""
+
+    def factor(name: str, e: Fraction) -> str:
+        return (
+            f"K_{name}" if e == 1 else f"K_{name}^({e})" if e.denominator > 1 else f"K_{name}^{e}"
+        )
+
+    above = [factor(n, e) for n, e in sorted(powers.items()) if e > 0]
+    below = [factor(n, -e) for n, e in sorted(powers.items()) if e < 0]
+    return " ".join(above or ["1"]) + "".join(f"/{f}" for f in below)
 
 
 def conventions(network: Network) -> tuple[str, ...]:

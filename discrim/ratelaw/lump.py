@@ -17,7 +17,7 @@ import sympy
 from sympy import Rational
 
 from discrim.ratelaw.derive_network import Matrix, row_reduce
-from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, order_of, read_form
+from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
 from discrim.ratelaw.lump_names import Candidate, candidates
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
 
@@ -361,30 +361,12 @@ def _common(pieces: Sequence[Any]) -> Any:
 
 
 def _functional_rank(form: Form, vectors: Sequence[Vector]) -> int:
-    """Rank of d log(lump)/d(constant) at a point, exact: how many lumps can move freely."""
-    used = sorted({i for v in vectors for i in v})
-    if all(i < len(form.constants) for i in used):
-        return len(vectors)
-    # squares of constants occur under roots; whole squares keep the point rational
-    point = {s: sympy.Integer((3 * k + 2) ** 2) for k, s in enumerate(form.constants)}
-    gradients: dict[int, list[Fraction]] = {}
-    for i in used:
-        atom = form.atoms[i]
-        at = atom.subs(point)
-        row = []
-        for s in form.constants:
-            slope = (atom.diff(s)).subs(point) / at if s in atom.free_symbols else sympy.Integer(0)
-            slope = sympy.nsimplify(slope) if not slope.is_Rational else slope
-            row.append(Fraction(int(slope.p), int(slope.q)))
-        gradients[i] = row
+    """Rank of d log(lump)/d log(constant) at a point, exact: how many lumps can move freely."""
     rows = [
         [
-            sum((e * gradients[i][j] for i, e in v.items()), Fraction(0))
+            sum((e * form.slopes[i][j] for i, e in v.items()), Fraction(0))
             for j in range(len(form.constants))
         ]
         for v in vectors
     ]
     return len(row_reduce(rows)[1]) if rows else 0
-
-
-__all__ = ["dense", "lump", "order_of", "subtract"]

@@ -17,7 +17,7 @@ import sympy
 from sympy import ZZ
 from sympy.polys.rings import PolyElement
 
-from discrim.ratelaw.derive_algebra import Algebra, common_factor
+from discrim.ratelaw.derive_algebra import Algebra, common_factor, factors_of
 
 Amounts = tuple[tuple[sympy.Symbol, Fraction], ...]  # monomial in the amounts, sorted by name
 Vector = dict[int, Fraction]  # exponents of atoms, by index
@@ -59,6 +59,7 @@ class Form:
 
     constants: tuple[sympy.Symbol, ...]
     atoms: tuple[Any, ...]
+    slopes: tuple[tuple[Fraction, ...], ...]  # d log(atom)/d log(constant) at one point, exact
     sums: tuple[Sum, ...]
     expressions: tuple[tuple[Term, ...], ...]
 
@@ -135,7 +136,8 @@ class _Reader:
                 if top:
                     terms.append(Term(self.sum(top, scale), key))
             out.append(tuple(terms))
-        return Form(self.constants, tuple(self.atoms), tuple(self.sums), tuple(out))
+        slopes = tuple(self.slope(k) for k in range(len(self.atoms)))
+        return Form(self.constants, tuple(self.atoms), slopes, tuple(self.sums), tuple(out))
 
     def parts(self, e: Any) -> list[tuple[PolyElement, list[tuple[PolyElement, int]]]]:
         """Additive parts of an expression as numerator and factors of the denominator."""
@@ -217,7 +219,7 @@ class _Reader:
             number = int(c)
             self.powers(vector, monomial, 1)
             return Coefficient(Fraction(number, divisor), vector)
-        content, factors = poly.factor_list()
+        content, factors = factors_of(poly)
         number = int(content)
         for factor, e in factors:
             if len(factor) == 1:
@@ -234,6 +236,25 @@ class _Reader:
             k = self.atom_of[factor]
             vector[k] = vector.get(k, Fraction(0)) + e
         return Coefficient(Fraction(number, divisor), vector)
+
+    def slope(self, k: int) -> tuple[Fraction, ...]:
+        """d log(atom k)/d log(constant) where the roots of the constants are 2, 5, 8, ..."""
+        if k < self.n:
+            return tuple(Fraction(int(i == k)) for i in range(self.n))
+        poly = next(p for p, index in self.atom_of.items() if index == k)
+        total = 0
+        weighted = [0] * self.n
+        for monomial, c in poly.terms():
+            value = int(c)
+            for i in range(self.n):
+                value *= (3 * i + 2) ** monomial[i]
+            total += value
+            for i in range(self.n):
+                weighted[i] += monomial[i] * value
+        return tuple(
+            Fraction(w, total * self.algebra.roots[i]) if total else Fraction(0)
+            for i, w in enumerate(weighted)
+        )
 
     def powers(self, vector: Vector, monomial: Sequence[int], times: int) -> None:
         for i, e in enumerate(monomial[: self.n]):
