@@ -50,6 +50,8 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
         return law
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
+    if written is None:
+        return law
     rate, *others = written.expressions
     production = dict(zip(names, others[: len(names)], strict=True))
     if law.stoichiometry is not None:
@@ -92,7 +94,12 @@ class _Written:
 
 def _write(
     form: Form, known: Sequence[Constant], decisive: int, *, per_catalyst: bool, equilibrium: str
-) -> _Written:
+) -> _Written | None:
+    """Every expression in a basis of what can be told apart.
+
+    None when the constants as they are can all be told apart, while products of powers of them
+    cannot express the law without more constants than there are.
+    """
     width = len(form.atoms)
     space = _Space(_rows(_differences(form, decisive), width), width)
     chosen: list[Candidate] = []
@@ -123,6 +130,16 @@ def _write(
             "Some pathways have the same form: no measured rates could tell how much each carries, "
             "so they are written as one."
         )
+    apparent = _functional_rank(form, [c.vector for c in chosen if not c.written])
+    extra = sum(not c.written for c in chosen) - apparent
+    if extra and apparent == len(known):
+        return None
+    if extra:
+        relation = "a relation" if extra == 1 else f"{extra} relations"
+        findings.append(
+            f"The mechanism also implies {relation} between the constants of the law that the fit "
+            "does not impose; the fitted law is wider than the mechanism."
+        )
     solver = _Solver(basis, width)
     norms = _norms(form, per_catalyst, [k for k, c in enumerate(chosen) if not c.can_turn], solver)
     chosen, flipped = _positive(form, norms, chosen, solver)
@@ -136,14 +153,6 @@ def _write(
     used = set().union(*(e.free_symbols for e in expressions))
     kept = [c for c in constants if c.symbol in used]
     kept.sort(key=lambda c: (c.kind is not ConstantKind.RATE, order.get(c.name, len(order))))
-    apparent = _functional_rank(form, [c.vector for c in chosen if not c.written])
-    if apparent < len(constants):
-        extra = len(constants) - apparent
-        relation = "a relation" if extra == 1 else f"{extra} relations"
-        findings.append(
-            f"The mechanism also implies {relation} between the constants of the law that the fit "
-            "does not impose; the fitted law is a little wider than the mechanism."
-        )
     return _Written(expressions, tuple(kept), tuple(findings))
 
 

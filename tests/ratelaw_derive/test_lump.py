@@ -172,3 +172,18 @@ def test_an_absorbed_amount_joins_its_constant():
         "a_A": k[0] * k[1] / k[2],
         "b_A": k[3] / k[2],
     }
+
+
+def test_relations_that_are_not_imposed_are_told():
+    """Ordered addition with all products: 9 combinations of 10 constants, of which 8 are free."""
+    steps = {
+        "bind_A": "E + A <=> EA",
+        "bind_B": "EA + B <=> EAB",
+        "turn": "EAB <=> EPQ",
+        "out_P": "EPQ <=> EQ + P",
+        "out_Q": "EQ <=> E + Q",
+    }
+    law = derive(parse_mechanism(name="x", steps=steps, catalyst=["E"]))
+    assert len(law.step_constants) == 10
+    assert len(law.constants) == 9
+    assert "wider than the mechanism" in law.findings[-1]
