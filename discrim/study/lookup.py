@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Collection
 from typing import Any
 
 import numpy as np
@@ -18,18 +19,21 @@ def measured_species(study: Study) -> frozenset[str]:
     return frozenset(study.runs.species()) | {d.name for d in study.derived}
 
 
-def unmeasured(law: Any, study: Study) -> tuple[str, ...]:
+def unmeasured(law: Any, study: Study, cancelled: Collection[str] = ()) -> tuple[str, ...]:
     """Species in a law that nothing measures; also those behind derived quantities.
 
-    ``law`` is a :class:`discrim.ratelaw.model.RateLaw`.
+    ``law`` is a :class:`discrim.ratelaw.model.RateLaw`; ``cancelled`` are species whose amount
+    drops out of what is observed, as that of S does from ``k_obs of S``.
     """
-    known = measured_species(study)
+    known = measured_species(study) | set(cancelled)
     return tuple(species for species in law.species if species not in known)
 
 
-def check_measured(law: Any, study: Study, place: Place | None = None) -> None:
+def check_measured(
+    law: Any, study: Study, place: Place | None = None, cancelled: Collection[str] = ()
+) -> None:
     """Raise ``DiscrimError`` for the first species in a law that nothing measures."""
-    missing = unmeasured(law, study)
+    missing = unmeasured(law, study, cancelled)
     if not missing:
         return
     by_column = {c.name: c.about for c in study.runs.columns if c.role is Role.SPECIES}
@@ -40,7 +44,7 @@ def check_measured(law: Any, study: Study, place: Place | None = None) -> None:
             f'The column "{first}" is the species "{by_column[first]}": write [{by_column[first]}].'
         )
     else:
-        have = listed([f"{c.about} ({c.name})" for c in study.runs.species().values()])
+        have = listed([f"{c.about} ({c.name})" for c in study.runs.species().values()]) or "none"
         do = (
             f"{nearest(first, known)} Measured are {have}. Declare the column that gives it, a "
             f"[conditions.{first}] value, or how it follows from others under [derived]."

@@ -14,7 +14,7 @@ from discrim.errors import DiscrimError, nearest
 from discrim.evidence.participation import Kind, Participation, Term, participation
 from discrim.evidence.rivals import standing
 from discrim.fit.fit import Fit, fit
-from discrim.fit.measurements import Measurements
+from discrim.fit.measurements import OBSERVATION, Measurements
 from discrim.ratelaw.compile import CompiledLaw
 from discrim.ratelaw.knockout import KnockOut, KnockOutKind, contains, knock_out
 from discrim.ratelaw.lump import lump
@@ -111,7 +111,7 @@ def answer(
         if what == "species"
         else []
     )
-    facts = [_facts(study, laws[k.index], k, stands[k.index]) for k in per]
+    facts = [_facts(study, bench, laws[k.index], k, stands[k.index]) for k in per]
     detect = [
         p.detectable
         for k in per
@@ -280,7 +280,9 @@ def _points(
     return table[pick], tuple(f"run {study.runs.labels[bench.runs[i]]}" for i in pick)
 
 
-def _facts(study: Study, c: CandidateLaw, k: InCandidate, stands: bool) -> CandidateFacts:
+def _facts(
+    study: Study, bench: Bench, c: CandidateLaw, k: InCandidate, stands: bool
+) -> CandidateFacts:
     readings = []
     for origin, p in k.by_origin.items():
         bound = p.effect.bound if p.effect is not None else 1.0
@@ -292,9 +294,7 @@ def _facts(study: Study, c: CandidateLaw, k: InCandidate, stands: bool) -> Candi
             "no error of the rate is stated"
         )
         readings = []
-    exact = all(
-        col.basis is ErrorBasis.EXACT for col in study.runs.columns if col.role is Role.SPECIES
-    )
+    exact = all(s.target == OBSERVATION for s in bench.measurements.sources)
     return CandidateFacts(
         c.law.name,
         stands,
@@ -426,12 +426,13 @@ def _proxies(
             continue
         x = _values_of(d.name, study, bench)
         if x is not None and np.isfinite(x).all() and (x > 0).any():
-            base.append((d.name, put_in(amount(d.name), study), np.asarray(x)))
+            formula = fixed_put_in(put_in(amount(d.name), study), study)
+            base.append((d.name, formula, np.asarray(x)))
     tries = list(base)
     species = [b for b in base if not b[0].startswith("column")]
     tries += [(f"{n} squared", e**2, x**2) for n, e, x in species]
     own = amount(about)
-    own_expr = put_in(own, study)
+    own_expr = fixed_put_in(put_in(own, study), study)
     tries.append((f"{about} squared", own_expr**2, values**2))
     tries += [
         (f"{a[0]} times {b[0]}", a[1] * b[1], a[2] * b[2]) for a, b in combinations(species, 2)

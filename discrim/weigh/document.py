@@ -432,7 +432,10 @@ def _factor(col: Column) -> float:
 
 
 def _pathways(w: Weighed, i: int) -> list[dict[str, Any]]:
+    import sympy
+
     from discrim.ratelaw.compile import CompiledLaw
+    from discrim.ratelaw.model import amount
     from discrim.weigh.bench import fixed_put_in, put_in
 
     law, bound, bench = w.laws[i].law, w.bounds[i], w.bench
@@ -443,7 +446,10 @@ def _pathways(w: Weighed, i: int) -> list[dict[str, Any]]:
     symbols = [c.symbol for c in bound.constants]
     rates = []
     for p in law.pathways:
-        e = fixed_put_in(put_in(p.rate, w.study), w.study)
+        seen = p.rate
+        if bench.responses[0].role is Role.K_OBS_OF:
+            seen = sympy.cancel(seen / amount(bench.responses[0].about))
+        e = fixed_put_in(put_in(seen, w.study), w.study)
         compiled = CompiledLaw(e, symbols, list(bench.symbols))
         theta = fit.theta[None][:, bound.column_of[rows]]
         value = compiled(

@@ -12,6 +12,8 @@ from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
 from discrim.evidence.criteria import weights
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.ratelaw.model import amount
+from discrim.runs.model import Role
 from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
 from discrim.weigh.asked import Answer, answer, check_questions
@@ -63,7 +65,14 @@ def prepare(study: Study, *, planned: bool = False) -> tuple[list[CandidateLaw],
     """Laws derived and checked, and bound to the runs."""
     laws = laws_of(study)
     for c in laws:
-        check_measured(c.law, study, place=c.candidate.place)
+        # k_obs of S is the rate divided by [S], which a law of first order in S then lacks
+        cancelled = [
+            column.about
+            for column in study.runs.observations()
+            if column.role is Role.K_OBS_OF
+            and not any(amount(column.about) in e.free_symbols for e in c.bound)
+        ]
+        check_measured(c.law, study, place=c.candidate.place, cancelled=cancelled)
     check_questions(study, laws)
     bench = build(study, [e for c in laws for e in c.bound], planned=planned)
     bounds = [bind(c.law, bench, c.bound) for c in laws]
