@@ -30,7 +30,7 @@ class Options:
     """How long and how closely to iterate."""
 
     max_iterations: int = 80
-    gradient_tolerance: float = 1e-11  # cosine between residual and any free column
+    gradient_tolerance: float = 1e-9  # cosine between residual and any free column
     step_tolerance: float = 1e-11  # relative, in scaled constants
     separate: bool = False  # solve linear constants exactly at each step (exact conditions only)
 

@@ -8,6 +8,7 @@ becomes part of generated code.
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -16,6 +17,24 @@ import sympy
 # Smallest amount at which logs and fractional powers are evaluated: [A]^n and its derivatives have
 # finite limits at zero for n > 0 that floating point would otherwise spoil with 0*inf.
 _TINY = 1e-200
+
+
+@lru_cache(maxsize=1)
+def _printer() -> Any:
+    """Small integer powers as products: numpy's general power costs ten multiplications."""
+    from sympy.printing.numpy import NumPyPrinter
+
+    class Products(NumPyPrinter):  # type: ignore[misc]
+        def _print_Pow(self, expr: Any, rational: bool = False) -> str:
+            base, n = expr.base, expr.exp
+            if base.is_Symbol and n.is_Integer and 2 <= abs(int(n)) <= 6:
+                product = "*".join([self._print(base)] * abs(int(n)))
+                return f"({product})" if n > 0 else f"(1.0/({product}))"
+            return str(super()._print_Pow(expr, rational=rational))
+
+    return Products(
+        {"fully_qualified_modules": False, "inline": True, "allow_unknown_functions": True}
+    )
 
 
 class CompiledLaw:
@@ -68,7 +87,11 @@ class CompiledLaw:
         if key not in self._made:
             outputs = self._outputs(*key)
             self._made[key] = sympy.lambdify(
-                [*self._theta, *self._cond], outputs, modules="numpy", cse=True
+                [*self._theta, *self._cond],
+                outputs,
+                modules="numpy",
+                printer=_printer(),
+                cse=True,
             )
         return self._made[key]
 
