@@ -51,8 +51,9 @@ def basis(columns: np.ndarray) -> np.ndarray:
     if columns.shape[2] == 0:
         return columns
     norms = np.sqrt(np.einsum("snk,snk->sk", columns, columns))
-    scaled = columns / np.where(norms > 0, norms, 1.0)[:, None, :]
-    scaled = np.where(np.isfinite(scaled), scaled, 0.0)
+    usable = (norms > 0) & np.isfinite(norms)
+    scaled = np.where(np.isfinite(columns), columns, 0.0) / np.where(usable, norms, 1.0)[:, None, :]
+    scaled = np.where(usable[:, None, :], scaled, 0.0)
     u, s, _ = np.linalg.svd(scaled, full_matrices=False)
     keep = s > RANK * np.maximum(s[:, :1], 1e-300)
     return u * keep[:, None, :]
