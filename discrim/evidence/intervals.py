@@ -10,7 +10,7 @@ guaranteed : see :mod:`discrim.evidence.guaranteed`
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -161,13 +161,26 @@ def along(
     accepts = (tests.profile, tests.reconciled, tests.not_too_high, tests.not_too_low)
     (profile, *_), (recon, *_), (_, _, high1), (_, low1, _) = _sets(curve, pts, accepts, lo, hi)
     return Along(
-        _named(profile, "profile"),
+        _around(profile, x),
         _named(recon, "reconciled", tests, pts),
         low1,
         high1,
         pts,
         lowest,
     )
+
+
+def _around(profile: Interval, x: float) -> Interval:
+    """The piece of a profile that holds the estimate, as a trace from the estimate gives it; others
+    (two terms of one form changing places, say) are named in the note and kept as pieces."""
+    pieces = profile.pieces
+    if len(pieces) < 2:
+        return replace(profile, kind="profile")
+    k = min(range(len(pieces)), key=lambda i: max(pieces[i][0] - x, x - pieces[i][1], 0.0))
+    low = profile.low if k == 0 else Side(pieces[k][0], CROSSED)
+    high = profile.high if k == len(pieces) - 1 else Side(pieces[k][1], CROSSED)
+    elsewhere = "; ".join(f"{a:.4g} to {b:.4g}" for i, (a, b) in enumerate(pieces) if i != k)
+    return Interval("profile", low, high, pieces, False, f"also consistent: {elsewhere}")
 
 
 def _named(
