@@ -17,6 +17,8 @@ ERROR_MARGIN = 1.5
 ASSUMED_SPREAD = 0.10
 # A sensitivity with less than this fraction outside lockstep is called conditioning, not noise.
 CONDITIONING_FRACTION = 0.10
+# A fraction below this is rounding of the arithmetic.
+NOTHING_APART = 1e-9
 # Fewer runs than constants plus this are called too few.
 FEW_RUNS = 3
 
@@ -286,10 +288,13 @@ def _undecided(
             )
     if information < CONDITIONING_FRACTION and not_rejecting:
         because.append("conditioning")
-        why.append(
-            "conditioning is to blame: over these runs only "
-            f"{_percent(information)} of the sensitivity to it is not in lockstep with the rest"
+        apart = (
+            "none of the sensitivity to it is apart from the rest (lockstep)"
+            if information < NOTHING_APART
+            else f"only {_percent(information)} of the sensitivity to it is not in lockstep with the "
+            "rest"
         )
+        why.append(f"conditioning is to blame: over these runs {apart}")
         settle.append("runs in which it is varied on its own, the other conditions held")
     elif not_rejecting:
         if n_runs < n_constants + FEW_RUNS:
@@ -308,7 +313,7 @@ def _undecided(
     if without and tested:
         because.append("disagreement")
         names = ", ".join(f"“{c.name}”" for c in without)
-        why.append(f"{names} stands without it")
+        why.append(f"{names} {'stands' if len(without) == 1 else 'stand'} without it")
         if not settle:
             settle.append("runs that separate the candidates that stand")
     elif "participates" in kinds and len(kinds) > 1:

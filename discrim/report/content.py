@@ -322,8 +322,10 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
             words += f", interval {percent(low)} to {percent(high)}"
         bound = read.value(effect, "bound")
         words += f", one-sided bound {percent(bound)}" if bound is not None else ""
-        run = read.text(effect, "run")
-        if run:
+        run, where = read.text(effect, "run"), read.text(effect, "words")
+        if where:
+            words += f", {where}"
+        elif run:
             words += f", at {run}" if run.lower().startswith("run") else f", at run {run}"
         out.append(("Effect on the rate", words))
         matters = read.value(effect, "matters_above")

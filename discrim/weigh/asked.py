@@ -273,7 +273,7 @@ def _points(
             symbol = amount(species)
             if symbol in bench.symbols:
                 row[bench.condition(symbol)] = value
-        return row[None], ("as asked",)
+        return row[None], ("the conditions asked about",)
     rows = np.flatnonzero(bench.response == 0)
     _, first = np.unique(table[rows], axis=0, return_index=True)
     pick = rows[np.sort(first)]

@@ -660,10 +660,18 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
 
 
 def _lead_candidate(w: Weighed, a: Answer) -> InCandidate | None:
-    """The candidate whose numbers head the answer: stands, contains it, best ranked."""
+    """The candidate whose numbers head the answer: stands, contains it, best ranked.
+
+    Of an undecided question the one that leaves it most open, so that the numbers agree with why.
+    """
     tested = [k for k in a.per_candidate if k.by_origin]
     if not tested:
         return None
+    standing = [k for k in tested if w.stands[k.index]]
+    if a.verdict.outcome == "undecided" and standing:
+        return max(
+            standing, key=lambda k: (max(r.p for r in k.by_origin.values()), -w.rank[k.index])
+        )
     return min(tested, key=lambda k: (not w.stands[k.index], w.rank[k.index]))
 
 
