@@ -18,6 +18,10 @@ from discrim.reactor.knocked import KnockedOut
 from discrim.reactor.model import Prediction, Predictor
 
 
+# an effect of 0.999994: beyond it nothing more is to be told
+FARTHEST = 12.0
+
+
 def effect_of(t: np.ndarray | float) -> np.ndarray:
     """Effect from T = log(f/f0)."""
     t = np.asarray(t, float)
@@ -30,6 +34,11 @@ def t_of(effect: np.ndarray | float) -> np.ndarray:
     e = np.asarray(effect, float)
     with np.errstate(divide="ignore"):
         return np.where(e >= 0, -np.log1p(-np.abs(e)), np.log1p(-np.abs(e)))
+
+
+# |T| beyond which the sensitivities to the effect and to the rest agree to rounding: the score would see
+# nothing there and accept every value. It is an effect of 1 - 1e-7.
+FARTHEST = 16.0
 
 
 class InEffect:
@@ -52,8 +61,8 @@ class InEffect:
         self.names = tuple("effect" if j == psi else n for j, n in enumerate(inner.names))
         self.lower = inner.lower.copy()
         self.upper = inner.upper.copy()
-        self.lower[psi] = 0.0 if sign > 0 else -40.0
-        self.upper[psi] = 0.0 if sign < 0 else 40.0
+        self.lower[psi] = 0.0 if sign > 0 else -FARTHEST
+        self.upper[psi] = 0.0 if sign < 0 else FARTHEST
         self.linear = np.zeros(len(inner.names), bool)
         self.scale = inner.scale.copy()
         self.scale[psi] = 0.1
@@ -61,34 +70,42 @@ class InEffect:
 
     def to_inner(self, theta: np.ndarray) -> np.ndarray:
         """Constants of the inner predictor, shape (S, p): solves f = exp(T) f0 for psi."""
+        return self._solved(theta)[0]
+
+    def _solved(self, theta: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """Inner constants and the derivatives of psi by (T, others), both shape (S, p)."""
+        psi = self.psi
         out = theta.copy()
-        t = theta[:, self.psi]
-        out[:, self.psi] = 0.0
-        if self.logarithmic:
-            # order: log f is linear in psi, one step is exact
-            out[:, self.psi] = 1.0
-            f, f0, _, _ = self.knocked.gradients(out, self.condition)
-            with np.errstate(divide="ignore", invalid="ignore"):
-                out[:, self.psi] = t / np.log(f / f0)
-            return out
-        ratio = np.exp(t)
-        done = t == 0
-        for _ in range(60):
-            f, f0, g, _ = self.knocked.gradients(out, self.condition)
-            slope = g[:, self.psi]
-            with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-                up = (ratio * f0 - f) / slope
-                # inhibition: 1/f is close to linear in psi
-                down = (1.0 / (ratio * f0) - 1.0 / f) * (-(f**2) / slope)
-                step = np.where(t >= 0, up, down)
-            step = np.where(np.isfinite(step), step, 0.0)
-            new = np.maximum(out[:, self.psi] + step, 0.0)
-            change = np.abs(new - out[:, self.psi])
-            out[:, self.psi] = np.where(done, out[:, self.psi], new)
-            done |= change <= 1e-14 * np.abs(new)
-            if done.all():
-                break
-        return out
+        t = theta[:, psi]
+        out[:, psi] = 1.0 if self.logarithmic else 0.0
+        f0, g0 = self.knocked.with_gradient(out, self.condition, knocked_out=True)
+        f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            ratio = np.exp(t)
+            target = ratio * f0
+            if self.logarithmic:  # an order: log f is linear in psi, one step is exact
+                out[:, psi] = t / np.log(f / f0)
+                f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+            else:
+                for _ in range(60):
+                    slope = g[:, psi]
+                    # what adds is close to linear in psi, what inhibits has 1/f close to linear
+                    up = (target - f) / slope
+                    down = (1.0 / target - 1.0 / f) * (-(f**2) / slope)
+                    step = np.where(t >= 0, up, down)
+                    step = np.where(np.isfinite(step), step, 0.0)
+                    new = np.maximum(out[:, psi] + step, 0.0)
+                    moved = np.abs(new - out[:, psi]) > 1e-13 * np.abs(new)
+                    if not moved.any():
+                        break
+                    out[:, psi] = new
+                    f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+                    if (np.abs(f - target) <= 1e-13 * np.abs(target)).all():
+                        break
+            slope = g[:, psi]
+            row = -(g - ratio[:, None] * g0) / slope[:, None]
+            row[:, psi] = target / slope
+        return out, np.where(np.isfinite(row), row, 0.0)
 
     def from_inner(self, theta: np.ndarray) -> np.ndarray:
         """The other way, shape (S, p)."""
@@ -96,16 +113,6 @@ class InEffect:
         e = self.knocked.effect(theta, self.condition[None])[:, 0]
         out[:, self.psi] = np.clip(t_of(e), self.lower[self.psi], self.upper[self.psi])
         return out
-
-    def _chain(self, inner_theta: np.ndarray, t: np.ndarray) -> np.ndarray:
-        """d(inner constants)/d(T, others): row of psi, shape (S, p)."""
-        f, f0, g, g0 = self.knocked.gradients(inner_theta, self.condition)
-        ratio = np.exp(t)
-        slope = g[:, self.psi]
-        with np.errstate(divide="ignore", invalid="ignore"):
-            row = -(g - ratio[:, None] * g0) / slope[:, None]
-            row[:, self.psi] = ratio * f0 / slope
-        return np.where(np.isfinite(row), row, 0.0)
 
     def predict(
         self,
@@ -116,13 +123,12 @@ class InEffect:
         conditions_too: bool = False,
         both: bool = False,
     ) -> Prediction:
-        inner = self.to_inner(theta)
+        inner, row = self._solved(theta)
         pred = self.inner.predict(
             inner, conditions, constants=constants, conditions_too=conditions_too, both=both
         )
         if not (constants or both):
             return pred
-        row = self._chain(inner, theta[:, self.psi])
         by_constants, by_both = pred.by_constants, pred.by_both
         if by_constants is not None:
             own = by_constants[:, :, self.psi].copy()
