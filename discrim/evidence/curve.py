@@ -55,48 +55,85 @@ class Curve:
             norms = np.where(norms > 0, norms, 1.0)
             follow, *_ = np.linalg.lstsq(cols / norms, -jacobian[:, psi], rcond=1e-10)
             self.slope[self.others] = np.nan_to_num(follow / norms)
-        self._known: list[np.ndarray] = []
+        # what is solved already, by rising value: later points start between their neighbours
+        self._values = np.empty(0)
+        self._theta = np.empty((0, p))
+        self._conditions: np.ndarray | None = None
 
     @classmethod
     def of(cls, fit: Fit, psi: int) -> Curve:
         return cls(fit.problem, fit.theta, psi, fit.jacobian)
 
     def at(self, values: np.ndarray, *, careful: bool = True) -> Points:
-        """Restricted optima at each of ``values``, shape (S,)."""
+        """Restricted optima at each of ``values``, shape (S,).
+
+        ``careful`` searches each from several starts; without it each starts between its solved
+        neighbours, which is enough where a first pass was careful.
+        """
         values = np.atleast_1d(np.asarray(values, float))
         problem, psi = self.problem, self.psi
         s, p = len(values), len(self.theta)
         fixed = np.zeros(p, bool)
         fixed[psi] = True
+        if not careful and len(self._values) > 1:
+            start, conditions = self._between(values)
+            sol = solve(problem, start, fixed=fixed, options=_OPTIONS, conditions=conditions)
+            return self._points(values, sol)
         start_a = np.tile(self.theta, (s, 1))
         start_a[:, psi] = values
         if p == 1:
-            sol = solve(problem, start_a, fixed=fixed, options=_OPTIONS)
-            return self._points(values, sol)
+            return self._points(values, solve(problem, start_a, fixed=fixed, options=_OPTIONS))
         start_b = self.theta + self.slope * (values - self.theta[psi])[:, None]
         start_b[:, psi] = values
-        sol = solve(problem, np.vstack([start_a, start_b]), fixed=fixed, options=_OPTIONS)
-        sol = _better(sol.take(np.arange(s)), sol.take(np.arange(s, 2 * s)))
-        if careful and s > 2 and not bool(problem.predictor.linear.all()):
+        both = solve(problem, np.vstack([start_a, start_b]), fixed=fixed, options=_OPTIONS)
+        sol = _better(both.take(np.arange(s)), both.take(np.arange(s, 2 * s)))
+        if s > 2 and not bool(problem.predictor.linear.all()):
             # continue from both neighbours: catches a restricted fit caught in a side valley
             order = np.argsort(values, kind="stable")
+            back = np.empty(s, int)
+            back[order] = np.arange(s)
             for shift in (1, -1):
                 source = order[np.clip(np.arange(s) + shift, 0, s - 1)]
-                start = sol.theta[source].copy()
-                back = np.empty(s, int)
-                back[order] = np.arange(s)
-                start = start[back]
+                start = sol.theta[source][back]
                 start[:, psi] = values
-                again = solve(problem, start, fixed=fixed, options=_OPTIONS)
+                again = solve(
+                    problem,
+                    start,
+                    fixed=fixed,
+                    options=_OPTIONS,
+                    conditions=sol.conditions[source][back],
+                )
                 sol = _better(sol, again)
         return self._points(values, sol)
 
+    def _between(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray | None]:
+        """Starts interpolated between the solved neighbours of each value."""
+        known = self._values
+        right = np.clip(np.searchsorted(known, values), 1, len(known) - 1)
+        left = right - 1
+        gap = known[right] - known[left]
+        share = np.clip((values - known[left]) / np.where(gap > 0, gap, 1.0), 0.0, 1.0)
+        theta = self._theta[left] + share[:, None] * (self._theta[right] - self._theta[left])
+        theta[:, self.psi] = values
+        nearest = np.where(share > 0.5, right, left)
+        return theta, None if self._conditions is None else self._conditions[nearest]
+
     def _points(self, values: np.ndarray, sol: Solution) -> Points:
         sc = score(self.problem, sol, self.psi)
+        good = np.isfinite(sol.objective)
+        every = np.concatenate([self._values, values[good]])
+        order = np.argsort(every, kind="stable")
+        self._values = every[order]
+        self._theta = np.concatenate([self._theta, sol.theta[good]])[order]
+        if self.problem.measured:
+            old = self._conditions
+            new = np.asarray(sol.conditions[good])
+            self._conditions = (new if old is None else np.concatenate([old, new]))[order]
         return Points(values, sol.objective, sc.z, sc, sol)
 
 
-_OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-9, step_tolerance=1e-10)
+# the score takes out what is left of the gradient of the others, so 1e-6 is plenty
+_OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
 
 
 def _better(a: Solution, b: Solution) -> Solution:

@@ -143,6 +143,11 @@ def _ranges(
     return out
 
 
+def _usable(sensitivities: np.ndarray, width: np.ndarray) -> bool:
+    """False at a point with an infinite slope, as that of a square root at zero."""
+    return bool(np.isfinite(sensitivities).all() and np.isfinite(width).all())
+
+
 def flip_distance(
     predictor: Predictor,
     data: Measurements,
@@ -194,7 +199,7 @@ def flip_distance(
     theta = theta.astype(float).copy()
     e, g, width = look(theta)
     best = worst(e, width)
-    if not np.isfinite(best) or not len(free):
+    if not np.isfinite(best) or not len(free) or not _usable(g, width):
         return best
     trust = 1.0
     size = np.maximum(np.abs(theta[free]), 1e-3 * np.where(predictor.scale[free] > 0, predictor.scale[free], 1.0))
@@ -217,7 +222,7 @@ def flip_distance(
         )
         e_t, g_t, w_t = look(trial)
         new = worst(e_t, w_t)
-        if new < best:
+        if new < best and _usable(g_t, w_t):
             gain = best - new
             theta, e, g, width, best = trial, e_t, g_t, w_t, new
             size = np.maximum(np.abs(theta[free]), 1e-3 * size)

@@ -16,7 +16,7 @@ def add_source(
 ) -> np.ndarray:
     """Add one source to a covariance, in place; returns it.
 
-    ``spread`` shape (S, N) standard deviations; ``sensitivity`` shape (S, N), None for 1.
+    ``spread`` shape (N,) or (S, N) standard deviations; ``sensitivity`` shape (S, N), None for 1.
     """
     u = spread if sensitivity is None else spread * sensitivity
     if total.ndim == 2:
@@ -26,6 +26,7 @@ def add_source(
         total[:, idx, idx] += u**2
     else:
         same = src.groups[:, None] == src.groups[None, :]
+        u = np.atleast_2d(u)
         total += u[:, :, None] * u[:, None, :] * same
     return total
 
@@ -46,31 +47,31 @@ class Whitener:
             cov = np.where(finite[:, None, None], cov, np.eye(cov.shape[-1]))
             self.ok = finite
         try:
-            self._chol = np.linalg.cholesky(cov)
+            chol = np.linalg.cholesky(cov)
         except np.linalg.LinAlgError:
             chol = np.empty_like(cov)
             for k, v in enumerate(cov):
                 chol[k], good = _cholesky(v)
                 self.ok[k] &= good
-            self._chol = chol
+        self._inverse = np.linalg.inv(chol)
 
     def vector(self, x: np.ndarray) -> np.ndarray:
         """Shape (S, N)."""
         if not self.full:
             return x * self._inv
-        return np.linalg.solve(self._chol, x[..., None])[..., 0]
+        return (self._inverse @ x[..., None])[..., 0]
 
     def matrix(self, x: np.ndarray) -> np.ndarray:
         """Shape (S, N, k)."""
         if not self.full:
             return x * self._inv[..., None]
-        return np.linalg.solve(self._chol, x)
+        return self._inverse @ x
 
     def transposed(self, x: np.ndarray) -> np.ndarray:
         """L^-T x for x of shape (S, N): turns a whitened residual into V^-1 e."""
         if not self.full:
             return x * self._inv
-        return np.linalg.solve(np.swapaxes(self._chol, 1, 2), x[..., None])[..., 0]
+        return (x[..., None, :] @ self._inverse)[..., 0, :]
 
 
 def _cholesky(v: np.ndarray) -> tuple[np.ndarray, bool]:

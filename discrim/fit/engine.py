@@ -85,7 +85,7 @@ class Problem:
         self.predictor = predictor
         self.data = data
         obs = data.of_observations
-        self.obs_relative = any(s.relative.any() for s in obs)
+        self.obs_relative = any(s.proportional for s in obs)
         self.set_sources = [s for s in data.of_conditions if s.origin == "set"]
         self.measured = [s for s in data.of_conditions if s.origin != "set"]
         self.diagonal = data.diagonal

@@ -10,7 +10,7 @@ source, so that errors shared by several runs fill the blocks between those runs
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from enum import Enum
 
 import numpy as np
@@ -48,11 +48,15 @@ class ErrorSource:
     origin: str | None
     groups: np.ndarray
     individual: bool
+    proportional: bool = field(init=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "proportional", bool(self.relative.any()))
 
     def sd(self, value: np.ndarray) -> np.ndarray:
-        """Standard deviation at ``value``, shape of ``value``."""
-        if not self.relative.any():
-            return np.broadcast_to(self.absolute, value.shape)
+        """Standard deviation at ``value``; shape of ``value``, or (N,) where it does not depend on it."""
+        if not self.proportional:
+            return self.absolute
         return np.sqrt(self.absolute**2 + (self.relative * value) ** 2)
 
 

@@ -34,18 +34,21 @@ class KnockedOut:
             e = (f - f0) / top
         return np.where(top > 0, e, 0.0)
 
-    def gradients(
-        self, theta: np.ndarray, condition: np.ndarray
-    ) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
-        """f, f0 (S,) and their derivatives by all p constants (S, p), at one condition (m,)."""
-        t = theta[:, None, self.columns]
-        c = condition[None, :]
-        out = []
-        for law in (self.full, self.without):
-            v, g, _, _ = law(t, c, constants=True, conditions_too=False, both=False)
-            assert g is not None
-            grad = np.zeros(theta.shape)
-            for j, k in enumerate(self.columns):
-                grad[:, k] += g[:, 0, j]
-            out += [v[:, 0], grad]
-        return out[0], out[2], out[1], out[3]
+    def with_gradient(
+        self, theta: np.ndarray, condition: np.ndarray, *, knocked_out: bool
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """f (or f0 when ``knocked_out``), shape (S,), and its derivatives by all p constants, shape
+        (S, p), at one condition, shape (m,)."""
+        law = self.without if knocked_out else self.full
+        v, g, _, _ = law(
+            theta[:, None, self.columns],
+            condition[None, :],
+            constants=True,
+            conditions_too=False,
+            both=False,
+        )
+        assert g is not None
+        grad = np.zeros(theta.shape)
+        for j, k in enumerate(self.columns):
+            grad[:, k] += g[:, 0, j]
+        return v[:, 0], grad
