@@ -23,6 +23,9 @@ LOCKSTEP_RELATIVE = 0.01
 STRONG_INDEX = 30.0
 # proportion of variance from which a constant counts as involved in it (same place)
 INVOLVED = 0.5
+# a sensitivity below this fraction of its largest over the runs is none at all: amounts of zero are
+# nudged off zero under roots and logarithms
+NO_SENSITIVITY = 1e-60
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -120,6 +123,8 @@ def lockstep(
     pred = predictor.predict(theta[None], conditions, conditions_too=True, both=True)
     assert pred.by_constants is not None and pred.by_both is not None
     g = pred.by_constants[0]
+    largest = np.max(np.abs(np.where(np.isfinite(g), g, 0.0)), axis=0)
+    g = np.where(np.abs(g) <= NO_SENSITIVITY * largest, 0.0, g)
     dg = pred.by_both[0]  # (N, m, p)
     found = []
     for j in range(p):

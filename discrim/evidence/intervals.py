@@ -141,10 +141,12 @@ def along(
     estimate: float | None = None,
     lower: float | None = None,
     upper: float | None = None,
+    with_profile: bool = True,
 ) -> Along:
     """Profile and reconciled intervals of the constant of ``curve``.
 
-    ``estimate``, ``lower``, ``upper`` default to those of the constant in the fit.
+    ``estimate``, ``lower``, ``upper`` default to those of the constant in the fit; ``with_profile``
+    False leaves the profile out.
     """
     psi = curve.psi
     x = float(fit.theta[psi]) if estimate is None else estimate
@@ -158,8 +160,11 @@ def along(
     base = min(free, lowest)
     tests = _Acceptance(fit, base, level, lo)
 
-    accepts = (tests.profile, tests.reconciled, tests.not_too_high, tests.not_too_low)
-    (profile, *_), (recon, *_), (_, _, high1), (_, low1, _) = _sets(curve, pts, accepts, lo, hi)
+    accepts = (tests.reconciled, tests.not_too_high, tests.not_too_low)
+    if with_profile:
+        accepts = (*accepts, tests.profile)
+    (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi)
+    profile = rest[0][0] if rest else nothing("profile", "not asked for")
     return Along(
         _around(profile, x),
         _named(recon, "reconciled", tests, pts),

@@ -387,7 +387,7 @@ def _effect(term: Term, problem: Problem, full: Fit, level: float) -> Effect | N
         return Effect(value, -1.0, 1.0, 1.0, label, True)
     j = term.psi[0]
     se = float(standard_errors(shifted)[j])
-    result = along(shifted, Curve.of(shifted, j), level, se=se)
+    result = along(shifted, Curve.of(shifted, j), level, se=se, with_profile=False)
 
     def e(side: Side, otherwise: float) -> float:
         return float(effect_of(side.value)) if np.isfinite(side.value) else otherwise

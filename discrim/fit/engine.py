@@ -47,7 +47,7 @@ class Solution:
     error : shape (S, N), e, in the units of the observations
     values : shape (S, N) predicted at the reconciled conditions
     conditions : shape (S, N, m) reconciled
-    covariance : V, shape (S, N) or (S, N, N)
+    covariance : V, shape (S, N) or (S, N, N); own : W, the part of it that is held during a step
     scale2 : shape (S,) s^2 when it is estimated together with condition errors, else 1
     state : shape (S,) RUNNING, CONVERGED, STEP_LIMIT or NOT_FINITE
     iterations : shape (S,)
@@ -61,6 +61,7 @@ class Solution:
     values: np.ndarray
     conditions: np.ndarray
     covariance: np.ndarray
+    own: np.ndarray
     scale2: np.ndarray
     state: np.ndarray
     iterations: np.ndarray
@@ -74,7 +75,7 @@ class Solution:
 
 
 _FIELDS = (
-    "theta objective residual jacobian error values conditions covariance scale2 state iterations"
+    "theta objective residual jacobian error values conditions covariance own scale2 state iterations"
 ).split()
 
 
@@ -216,6 +217,7 @@ class Problem:
             values,
             np.broadcast_to(conditions, (s, *nominal.shape[1:])),
             np.broadcast_to(cov, (s, *cov.shape[1:])),
+            np.broadcast_to(w, (s, *w.shape[1:])),
             np.broadcast_to(scale2, (s,)),
             np.zeros(s, int),
             np.zeros(s, int),
@@ -291,7 +293,6 @@ def solve(
     mu = np.full(s, 1e-18 if one_step else 1e-3)
     nu = np.full(s, 2.0)
     d_max = np.zeros((s, p))
-    w_all: np.ndarray | None = None
     quiet = np.zeros(s, int)
     for iteration in range(opt.max_iterations):
         if not len(active):
@@ -317,10 +318,9 @@ def solve(
         cosine = np.where(blocked, 0.0, np.nan_to_num(cosine))
         done = cosine.max(axis=1, initial=0.0) <= opt.gradient_tolerance
         done |= cur.objective <= 1e-28 * _reference(problem, cur, a)
-        settled = quiet[a] >= 2
         if one_step:
             done &= best.iterations[a] >= 2
-        done = (done & ~_scale_pending(problem, quiet[a])) | settled
+        done |= quiet[a] >= 2
         if done.any():
             best.state[a[done]] = CONVERGED
             keep = ~done
@@ -342,9 +342,7 @@ def solve(
         )
         trial_theta = np.clip(cur.theta + step, low, high)
         trial_theta = np.where(hold, cur.theta, trial_theta)
-        w = None if w_all is None else w_all[a]
-        if problem.moving and w is None:
-            w = _own(problem, cur)
+        w = cur.own if problem.moving else None
         trial = problem.evaluate(trial_theta, cur.conditions, w, cur.scale2, a)
         if separable:
             trial = _solve_linear(problem, trial, hold, low, high, w, a)
@@ -390,21 +388,6 @@ def _reference(problem: Problem, cur: Solution, rows: np.ndarray) -> np.ndarray:
         var = np.diagonal(var, axis1=1, axis2=2)
     with np.errstate(divide="ignore", invalid="ignore"):
         return np.nan_to_num((y**2 / var).sum(axis=1), posinf=0.0)
-
-
-def _scale_pending(problem: Problem, quiet: np.ndarray) -> np.ndarray:
-    # with W following the fit, a zero gradient must be seen again after W was refreshed
-    return np.zeros(len(quiet), bool)
-
-
-def _own(problem: Problem, cur: Solution) -> np.ndarray:
-    """W of the current point."""
-    f_c = None
-    if problem.with_conditions:
-        f_c = problem.predictor.predict(
-            cur.theta, cur.conditions, constants=False, conditions_too=True
-        ).by_conditions
-    return problem.own_covariance(cur.values, cur.conditions, f_c, cur.scale2)
 
 
 def _refreshed(problem: Problem, new: Solution, free: np.ndarray, rows: np.ndarray) -> Solution:

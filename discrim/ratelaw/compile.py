@@ -37,6 +37,35 @@ def _printer() -> Any:
     )
 
 
+@lru_cache(maxsize=512)
+def _function_of(
+    neutral: Any, n_theta: int, n_cond: int, key: tuple[bool, bool, bool]
+) -> Callable[..., Any]:
+    """The array function of an expression in t0, t1, ..., c0, c1, ... with its derivatives.
+
+    Kept by expression: the same law is bound many times in one study.
+    """
+    constants, conditions, both = key
+    theta = [sympy.Symbol(f"t{i}", real=True) for i in range(n_theta)]
+    cond = [sympy.Symbol(f"c{i}", real=True) for i in range(n_cond)]
+    outputs = [neutral]
+    if constants:
+        outputs += [neutral.diff(t) for t in theta]
+    if conditions:
+        outputs += [neutral.diff(c) for c in cond]
+    if both:
+        outputs += [neutral.diff(c).diff(t) for c in cond for t in theta]
+    made: Callable[..., Any] = sympy.lambdify(
+        [*theta, *cond],
+        outputs,
+        modules="numpy",
+        printer=_printer(),
+        cse=True,
+        docstring_limit=-1,
+    )
+    return made
+
+
 class CompiledLaw:
     """Value and exact derivatives of one expression, as functions of arrays.
 
@@ -65,34 +94,15 @@ class CompiledLaw:
         swap = dict(zip(self.constants, self._theta, strict=True))
         swap |= dict(zip(self.conditions, self._cond, strict=True))
         self._neutral = self.expression.xreplace(swap)
-        self._needs_positive = bool(
-            self._neutral.has(sympy.log)
-            or any(not p.exp.is_Integer for p in self._neutral.atoms(sympy.Pow))
-        )
+        delicate = [a.args[0] for a in self._neutral.atoms(sympy.log)]
+        delicate += [p for p in self._neutral.atoms(sympy.Pow) if not p.exp.is_Integer]
+        inside: set[Any] = set().union(*(e.free_symbols for e in delicate))
+        self._positive = np.array([c in inside for c in self._cond], dtype=bool)
         self._made: dict[tuple[bool, bool, bool], Callable[..., Any]] = {}
-        self._constant_outputs: dict[tuple[bool, bool, bool], list[int]] = {}
-
-    def _outputs(self, constants: bool, conditions: bool, both: bool) -> list[Any]:
-        f = self._neutral
-        out = [f]
-        if constants:
-            out += [f.diff(t) for t in self._theta]
-        if conditions:
-            out += [f.diff(c) for c in self._cond]
-        if both:
-            out += [f.diff(c).diff(t) for c in self._cond for t in self._theta]
-        return out
 
     def _function(self, key: tuple[bool, bool, bool]) -> Callable[..., Any]:
         if key not in self._made:
-            outputs = self._outputs(*key)
-            self._made[key] = sympy.lambdify(
-                [*self._theta, *self._cond],
-                outputs,
-                modules="numpy",
-                printer=_printer(),
-                cse=True,
-            )
+            self._made[key] = _function_of(self._neutral, len(self._theta), len(self._cond), key)
         return self._made[key]
 
     def __call__(
@@ -111,8 +121,8 @@ class CompiledLaw:
         """
         key = (constants, conditions_too, both)
         function = self._function(key)
-        if self._needs_positive:
-            conditions = np.where(conditions == 0.0, _TINY, conditions)
+        if self._positive.any():
+            conditions = np.where((conditions == 0.0) & self._positive, _TINY, conditions)
         p, m = len(self.constants), len(self.conditions)
         shape = np.broadcast_shapes(theta.shape[:-1], conditions.shape[:-1])
         if len(shape) == 1:
