@@ -81,6 +81,12 @@ def prepare(study: Study, *, planned: bool = False) -> tuple[list[CandidateLaw],
 
 def run(study: Study, *, seed: int = 1, progress: Progress | None = None) -> Weighed:
     """Weigh a study. Wrong input raises; numerical misfortune is a status in the record."""
+    # Trial steps may run to where a law overflows; they are rejected there, so no warning is due.
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        return _run(study, seed, progress)
+
+
+def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
     say = progress or (lambda words, done, total: None)
     say("deriving rate laws", 0, 1)
     laws, bench, bounds = prepare(study)
