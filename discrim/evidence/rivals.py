@@ -24,8 +24,8 @@ from discrim.fit.measurements import ErrorSource, Measurements, Scale
 
 SHARE_OVERALL = 0.2  # of alpha, spent on the overall fit; the rest on the directions
 DRAWS = 20_000
-# a direction whose whitened length is under this (in standard errors of one combination of all
-# runs) could not show a difference at all
+# Two laws that are less than this many standard errors apart, all runs together, could not be told
+# apart whatever the data; the length does not depend on the residuals, so leaving them out is fair.
 TOO_SHORT = 0.5
 # rivals whose predictions differ by less than this many standard deviations in every run
 INSEPARABLE = 1.0
@@ -83,6 +83,8 @@ def standing(
         for j, rival in enumerate(fits):
             if j == i or same.get((min(i, j), max(i, j))) or not rival.ok:
                 continue
+            if contains.get((i, j)):
+                continue  # a special case of i says nothing that i does not
             for u in directions(null, rival):
                 rows.append(u)
                 who.append(j)
@@ -153,7 +155,7 @@ def _judge(
         scale = float(np.sqrt(null.scale2))
     for row, j in zip(rows, who, strict=True):
         size = float(np.sqrt(row @ row))
-        if size / scale > 1e-6:
+        if size / scale > TOO_SHORT:
             unit.append(row / size)
             lengths.append(size / scale)
             keep.append(j)

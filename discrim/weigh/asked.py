@@ -409,7 +409,10 @@ def _values_of(about: str, study: Study, bench: Bench) -> np.ndarray | None:
 def _proxies(
     about: str, study: Study, bench: Bench, values: np.ndarray
 ) -> list[tuple[str, Any, np.ndarray, tuple[Any, ...]]]:
-    """What moved with the species: (name, expression, values, symbols), closest first."""
+    """What moved with the species: (name, expression, values, symbols), closest first.
+
+    Powers of the species itself are left out: where they explain the runs, it still takes part.
+    """
     base: list[tuple[str, Any, np.ndarray]] = []
     for col in study.runs.columns:
         if col.role in (Role.RATE_OF, Role.CONSUMPTION_OF, Role.K_OBS_OF, Role.RUN):
@@ -431,9 +434,6 @@ def _proxies(
     tries = list(base)
     species = [b for b in base if not b[0].startswith("column")]
     tries += [(f"{n} squared", e**2, x**2) for n, e, x in species]
-    own = amount(about)
-    own_expr = fixed_put_in(put_in(own, study), study)
-    tries.append((f"{about} squared", own_expr**2, values**2))
     tries += [
         (f"{a[0]} times {b[0]}", a[1] * b[1], a[2] * b[2]) for a, b in combinations(species, 2)
     ]
