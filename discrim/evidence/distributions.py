@@ -41,6 +41,11 @@ def f_upper(x: float, df1: float, df2: float) -> float:
     return float(special.fdtrc(df1, df2, x)) if np.isfinite(x) else 0.0
 
 
+def f_quantile_upper(p: float, df1: float, df2: float) -> float:
+    """x with P(F > x) = p."""
+    return float(special.fdtri(df1, df2, 1.0 - p))
+
+
 def chi2_upper(x: float, df: float) -> float:
     """P(chi-squared > x)."""
     return float(special.chdtrc(df, x)) if np.isfinite(x) else 0.0

@@ -15,7 +15,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from discrim.evidence.curve import Curve, Points
-from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile, t_quantile
+from discrim.evidence.distributions import (
+    chi2_quantile_upper,
+    f_quantile_upper,
+    normal_quantile,
+    t_quantile,
+)
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
@@ -217,13 +222,17 @@ class _Acceptance:
             self.s2 = base / fit.degrees_of_freedom
         self.df = df
         n, p = fit.n, fit.p
-        # a chi-squared limit on Q of a restricted fit; void where the scale is unknown
-        self.guard = (
-            chi2_quantile_upper(GUARD, max(n - (p - 1), 1))
-            if fit.data.scale is Scale.STATED
-            else np.inf
-        )
-        spend = GUARD if np.isfinite(self.guard) else 0.0
+        # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
+        # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960) 41),
+        # which never binds for a linear law, so nothing is spent on it. Else void.
+        self.guard, self.unit, spend = np.inf, 1.0, 0.0
+        if fit.data.scale is Scale.STATED:
+            self.guard, spend = chi2_quantile_upper(GUARD, max(n - (p - 1), 1)), GUARD
+            self.unit = max(self.guard, 1.0)
+        elif _scale_from_fit(fit) and fit.degrees_of_freedom > 0 and base > 0:
+            dof = fit.degrees_of_freedom
+            f = f_quantile_upper(min(GUARD, alpha / 2), p, dof)
+            self.guard = self.unit = base * (1.0 + p * f / dof)
         self.two = normal_quantile(1.0 - max(alpha - spend, alpha / 2) / 2)
         self.one = normal_quantile(1.0 - max(alpha - spend, alpha / 2))
 
@@ -257,7 +266,7 @@ class _Acceptance:
     def _with_guard(self, m: np.ndarray, pts: Points) -> np.ndarray:
         if not np.isfinite(self.guard):
             return m
-        scaled = self._q_ok(pts) / max(self.guard, 1.0)
+        scaled = self._q_ok(pts) / self.unit
         return np.minimum(m, np.where(np.isfinite(scaled), 10.0 * scaled, -np.inf))
 
     def fits_somewhere(self, pts: Points) -> bool:
