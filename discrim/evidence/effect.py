@@ -18,10 +18,6 @@ from discrim.reactor.knocked import KnockedOut
 from discrim.reactor.model import Prediction, Predictor
 
 
-# an effect of 0.999994: beyond it nothing more is to be told
-FARTHEST = 12.0
-
-
 def effect_of(t: np.ndarray | float) -> np.ndarray:
     """Effect from T = log(f/f0)."""
     t = np.asarray(t, float)
