@@ -194,10 +194,12 @@ def _participates(
 ) -> Verdict:
     worst = max(r.p for c in standing for r in c.readings)
     margins = [r.margin for c in standing for r in c.readings if r.margin == r.margin]
-    how = "the one candidate that stands contains it" if len(standing) == 1 else (
-        f"all {len(standing)} candidates that stand contain it"
-    )
-    why = [f"{how}, and each rejects a rate without it ({_p(worst)}, limit {alpha:g})"]
+    how = "the one candidate that stands contains it"
+    if len(standing) > 1:
+        both = "both" if len(standing) == 2 else f"all {len(standing)}"
+        how = f"{both} candidates that stand contain it"
+    rejects = "rejects" if len(standing) == 1 else "each rejects"
+    why = [f"{how}, and {rejects} a rate without it ({_p(worst)}, limit {alpha:g})"]
     if margins:
         m = min(margins)
         at_least = "more than 10" if m == float("inf") else f"{m:.2g}"

@@ -262,6 +262,13 @@ class _Reader:
                 end,
                 f"Separate a coefficient by a space: write {m.group(1)} {m.group(2)}{signs}",
             )
+        if body.isdigit() and signs and set(signs) <= set(self.sites):
+            raise self.error(
+                f'"{clipped(word)}" is a number on a site',
+                at,
+                end,
+                f"For {clipped(body)} vacant sites write {clipped(body)} {signs}",
+            )
         if word[0] in self.sites:
             raise self.error(
                 f'"{clipped(word)}" begins with the sign of a site',

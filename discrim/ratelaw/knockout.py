@@ -79,7 +79,7 @@ def knock_out(law: RateLaw, about: str, typical: float) -> KnockOut | None:
         return None
     for pathway in law.pathways:
         if pathway.name == about:
-            return _by_constants(law, about, _owned(law, pathway.rate))
+            return _by_constants(law, about, _owned(law, about))
     if about in law.steps:
         names = [
             c.name
@@ -90,10 +90,10 @@ def knock_out(law: RateLaw, about: str, typical: float) -> KnockOut | None:
     return _species(law, about, typical)
 
 
-def _owned(law: RateLaw, part: Any) -> list[str]:
-    """Constants that occur in this part of the rate and nowhere else in it."""
-    rest = law.rate - part
-    elsewhere = rest.free_symbols
+def _owned(law: RateLaw, name: str) -> list[str]:
+    """Constants that occur in this pathway and in no other."""
+    part = next(p.rate for p in law.pathways if p.name == name)
+    elsewhere = set().union(*(p.rate.free_symbols for p in law.pathways if p.name != name))
     return [
         c.name for c in law.constants if c.symbol in part.free_symbols and c.symbol not in elsewhere
     ]
