@@ -15,7 +15,7 @@ from discrim.evidence.distributions import (
     normal_quantile,
     t_quantile,
 )
-from discrim.evidence.effect import InEffect, effect_of, t_of
+from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance
 from discrim.evidence.intervals import GUARD, OPEN, Side, along, standard_errors
 from discrim.evidence.rivals import Against, _joint_p, _studentised, directions
@@ -155,7 +155,7 @@ def participation(
 ) -> Participation:
     """Facts about ``term`` on ``data`` (origins of the condition errors resolved).
 
-    ``brief`` leaves out margin and flip distances.
+    ``brief`` leaves out effect, margin and flip distances (a law that does not stand).
     """
     alpha = 1.0 - level
     problem = Problem(term.full, data)
@@ -169,7 +169,9 @@ def participation(
     f = None
     if term.kind is not Kind.FACTOR:
         f = nested_f(full, reduced, edge=edge)
-    effect = _effect(term, problem, full, level) if term.kind is not Kind.FACTOR else None
+    effect = None
+    if term.kind is not Kind.FACTOR and not brief:
+        effect = _effect(term, problem, full, level)
     if term.kind is Kind.FACTOR:
         effect = Effect(1.0, 1.0, 1.0, 1.0, "every run", False)
     detectable = _detectable(term, problem, full, effect, alpha)
@@ -390,7 +392,7 @@ def _effect(term: Term, problem: Problem, full: Fit, level: float) -> Effect | N
     result = along(shifted, Curve.of(shifted, j), level, se=se, with_profile=False)
 
     def e(side: Side, otherwise: float) -> float:
-        return float(effect_of(side.value)) if np.isfinite(side.value) else otherwise
+        return float(effect_of(side.value)) if abs(side.value) < FARTHEST else otherwise
 
     low, high = e(result.reconciled.low, -1.0), e(result.reconciled.high, 1.0)
     if result.reconciled.empty:
