@@ -17,7 +17,9 @@ from tests.reference.outside import column, digits, measurements, predictor, sou
 
 def _design(table: str, variables: list[str]) -> np.ndarray:
     n = len(column(table, variables[-1]))
-    return np.column_stack([np.ones(n) if v == "intercept" else column(table, v) for v in variables])
+    return np.column_stack(
+        [np.ones(n) if v == "intercept" else column(table, v) for v in variables]
+    )
 
 
 @pytest.mark.parametrize(("table", "decimals"), [("nist_longley", 7e-7), ("bodyfat", 5e-8)])
@@ -63,7 +65,11 @@ def test_hilbert_matrices(n: int) -> None:
     i = np.arange(1, n + 1)
     hilbert = 1.0 / (i[:, None] + i[None, :] - 1)
     published = dict(
-        zip(column("hilbert_condition", "n"), column("hilbert_condition", "condition_2"), strict=True)
+        zip(
+            column("hilbert_condition", "n"),
+            column("hilbert_condition", "condition_2"),
+            strict=True,
+        )
     )
     assert np.linalg.cond(hilbert) == pytest.approx(published[n], rel=1e-4)
     scaled = hilbert / np.sqrt((hilbert**2).sum(axis=0))

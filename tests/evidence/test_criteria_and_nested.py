@@ -77,9 +77,7 @@ def test_puromycin_fits(name: str) -> None:
         assert digits(found.theta, entry["published"]["estimates"]) >= 5
 
 
-@pytest.mark.parametrize(
-    "name", [c["name"] for c in sources()["puromycin"]["comparisons"]]
-)
+@pytest.mark.parametrize("name", [c["name"] for c in sources()["puromycin"]["comparisons"]])
 def test_puromycin_extra_sum_of_squares(name: str) -> None:
     entry = comparison("puromycin", name)
     full, reduced = _puromycin(entry["full"]), _puromycin(entry["reduced"])

@@ -26,7 +26,9 @@ k_A, k_B, A, B = symbols("k_A k_B A B")
 LAW = k_A * A + k_B * B
 
 
-def _bounded(y: list[float], dy: list[float], c: list[list[float]], dc: list[list[float]]) -> Measurements:
+def _bounded(
+    y: list[float], dy: list[float], c: list[list[float]], dc: list[list[float]]
+) -> Measurements:
     """Hard bounds on everything."""
     n = len(y)
     half, widths = np.array(dy), np.array(dc)
@@ -49,9 +51,7 @@ def test_bounds_on_everything() -> None:
     """Worked by hand here. Run 1: A = 1 exactly, B = 0, rate 2 +- 0.2, so k_A is 1.8 to 2.2. Run 2: A and
     B = 1 +- 0.1, rate 5 +- 0.3: by Oettli & Prager |k_A + k_B - 5| <= 0.1 (k_A + k_B) + 0.3, that is k_A +
     k_B is 4.7/1.1 to 5.3/0.9, and k_B is 4.7/1.1 - 2.2 to 5.3/0.9 - 1.8."""
-    data = _bounded(
-        [2.0, 5.0], [0.2, 0.3], [[1.0, 0.0], [1.0, 1.0]], [[0.0, 0.0], [0.1, 0.1]]
-    )
+    data = _bounded([2.0, 5.0], [0.2, 0.3], [[1.0, 0.0], [1.0, 1.0]], [[0.0, 0.0], [0.1, 0.1]])
     first, second = _ranges(data)
     assert first == pytest.approx((1.8, 2.2))
     assert second == pytest.approx((4.7 / 1.1 - 2.2, 5.3 / 0.9 - 1.8))
@@ -63,9 +63,7 @@ def test_bounds_that_only_the_sign_closes() -> None:
     data = _bounded([5.0], [0.5], [[1.0, 1.0]], [[0.0, 0.0]])
     assert _ranges(data) == [pytest.approx((0.0, 5.5)), pytest.approx((0.0, 5.5))]
     blind = _bounded([5.0], [0.5], [[0.0, 1.0]], [[0.0, 0.0]])
-    first, second = guaranteed(
-        predictor(LAW, (k_A, k_B), (A, B), 1, lower=0.0), blind, 0.05, 1.0
-    )
+    first, second = guaranteed(predictor(LAW, (k_A, k_B), (A, B), 1, lower=0.0), blind, 0.05, 1.0)
     assert (first.low.value, first.low.end, first.high.end) == (0.0, "bound", "open")
     assert (second.low.value, second.high.value) == pytest.approx((4.5, 5.5))
 
@@ -142,9 +140,7 @@ def _additive(data: Measurements, at: list[float]) -> Participation:
         CompiledLaw(k_A * A, (k_A, k_B), (A, B)),
         np.array([0, 1]),
     )
-    term = Term(
-        Kind.ZERO, full, reduced, (1,), (), knocked, np.array([at]), ("as asked",)
-    )
+    term = Term(Kind.ZERO, full, reduced, (1,), (), knocked, np.array([at]), ("as asked",))
     return participation(
         term,
         data,
