@@ -18,15 +18,16 @@ HERE = Path(__file__).resolve().parent
 
 
 def write(path: Path, header: Sequence[str], rows: Iterable[Sequence[str]]) -> None:
-    """A CSV file with the same line ends everywhere."""
+    """A CSV file with the same line ends everywhere; lines with # are comments."""
     with path.open("w", newline="", encoding="utf-8") as out:
+        out.write("# Invented data, made by demo/make_data.py.\n")
         writer = csv.writer(out, lineterminator="\n")
         writer.writerow(header)
         writer.writerows(rows)
 
 
 def digits(value: float, significant: int) -> str:
-    """``value`` rounded to so many significant digits, never in exponential form."""
+    """``value`` with so many significant digits, never in exponential form."""
     places = significant - 1 - int(np.floor(np.log10(abs(value))))
     return f"{round(value, places):.{max(places, 0)}f}"
 
@@ -55,7 +56,7 @@ def buffer_runs(seed: int = 20417) -> None:
     for stock, totals in amounts.items():
         base = STOCKS[stock]
         made = 1 + WEIGHING * rng.standard_normal()
-        ph = PKA + np.log10(base / (1 - base)) + PH_ERROR * rng.standard_normal()
+        ph = PKA + float(np.log10(base / (1 - base))) + PH_ERROR * rng.standard_normal()
         for total in totals:
             true = total / 1000 * made * (1 + DILUTION * rng.standard_normal())
             k = (K_WATER + K_BASE * base * true) * (1 + RATE_ERROR * rng.standard_normal())

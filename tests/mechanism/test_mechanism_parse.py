@@ -62,6 +62,7 @@ def test_steps(text):
 # text -> (says, underlined, part of what to do)
 BAD = {
     "2O* -> O2": ('"2O*" begins with a number', "2O*", "write 2 O*"),
+    "O2 + 2* <=> 2 O*": ('"2*" is a number on a site', "2*", "write 2 *"),
     "E+ B -> C": ('"E+ B" has no + with a space', "E+ B", "write E + B"),
     "E +B -> C": ('"E +B" has no + with a space', "+B", "write E + B"),
     "E+B -> C": ('"E+B" has a + inside', "E+B", "E + B"),

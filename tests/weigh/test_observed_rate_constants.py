@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 import pytest
 import statsmodels.api as sm
+
 from discrim.mechanism.parse import parse_mechanism
 from discrim.ratelaw.derive import derive
 from discrim.ratelaw.knockout import KnockOutKind, knock_out
