@@ -88,22 +88,20 @@ class Curve:
         both = solve(problem, np.vstack([start_a, start_b]), fixed=fixed, options=_OPTIONS)
         sol = _better(both.take(np.arange(s)), both.take(np.arange(s, 2 * s)))
         if s > 2 and not bool(problem.predictor.linear.all()):
-            # continue from both neighbours: catches a restricted fit caught in a side valley
+            # continue from the better neighbour: catches a restricted fit caught in a side valley
             order = np.argsort(values, kind="stable")
-            back = np.empty(s, int)
-            back[order] = np.arange(s)
-            for shift in (1, -1):
-                source = order[np.clip(np.arange(s) + shift, 0, s - 1)]
-                start = sol.theta[source][back]
-                start[:, psi] = values
-                again = solve(
-                    problem,
-                    start,
-                    fixed=fixed,
-                    options=_OPTIONS,
-                    conditions=sol.conditions[source][back],
-                )
-                sol = _better(sol, again)
+            q = np.where(np.isfinite(sol.objective), sol.objective, np.inf)[order]
+            before, after = np.r_[np.inf, q[:-1]], np.r_[q[1:], np.inf]
+            source = np.empty(s, int)
+            source[order] = order[
+                np.clip(np.where(before <= after, -1, 1) + np.arange(s), 0, s - 1)
+            ]
+            start = sol.theta[source].copy()
+            start[:, psi] = values
+            again = solve(
+                problem, start, fixed=fixed, options=_OPTIONS, conditions=sol.conditions[source]
+            )
+            sol = _better(sol, again)
         return self._points(values, sol)
 
     def _between(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray | None]:

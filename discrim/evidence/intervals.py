@@ -281,7 +281,7 @@ def _grid(x: float, se: float, lo: float, hi: float, typical: float) -> np.ndarr
         parts += [x + se * k, x - se * k]
     size = max(abs(x), typical if np.isfinite(typical) else 0.0, 1e-300)
     if lo >= 0:
-        parts.append(size * np.logspace(-6, 6, 25))
+        parts.append(size * np.logspace(-5, 5, 21))
         if x > 0:
             parts.append(x * np.array([0.5, 0.8, 0.9, 0.95, 1.05, 1.1, 1.25, 2.0]))
     else:

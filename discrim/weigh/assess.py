@@ -88,11 +88,13 @@ def assess(
     level: float,
     common: Measurements,
     common_fit: Fit,
+    stands: bool = True,
 ) -> Assessment:
     """Facts about one candidate.
 
     ``common`` and ``common_fit``: the measurements (and the fit to them) with one and the same scale
-    for all candidates, on which the criteria are computed.
+    for all candidates, on which the criteria are computed. Of a law that does not stand only the
+    linearised intervals are computed: the others would describe constants of a rejected law.
     """
     primary = next(iter(fits))
     one = fits[primary]
@@ -102,7 +104,12 @@ def assess(
     cond = conditioning(one.jacobian, names)
     weight = 1.0 / np.sqrt(one.variances)
     locks = tuple(lockstep(bound.predictor, data, one.theta, weight)) if one.ok else ()
-    intervals = _intervals(bound, fits, se, level) if one.ok else tuple({} for _ in names)
+    if not one.ok:
+        intervals: tuple[dict[str, Interval], ...] = tuple({} for _ in names)
+    elif stands:
+        intervals = _intervals(bound, fits, se, level)
+    else:
+        intervals = _linearised_only(one, se, level)
     known = common.scale is not Scale.ESTIMATED
     crit = criteria(
         data=table_key(common),
@@ -123,6 +130,17 @@ def assess(
         crit,
         objective_p(one) if one.ok else None,
         lack_of_fit(one) if one.ok else None,
+    )
+
+
+def _linearised_only(one: Fit, se: np.ndarray, level: float) -> tuple[dict[str, Interval], ...]:
+    why = "not computed: the law is rejected by these runs"
+    return tuple(
+        {
+            "linearised": linearised(one, j, float(se[j]), level),
+            **{kind: nothing(kind, why) for kind in ("profile", "reconciled", "guaranteed")},
+        }
+        for j in range(one.p)
     )
 
 

@@ -107,14 +107,22 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
         fits.append(fits_of(b, data, seed=seed))
     fits = _no_larger_law_worse(bounds, fits, related, seed)
     common, common_fits = _common_scale(bounds, fits, data, seed)
+    say("comparing rivals", 0, 1)
+    standings, stands = _standing(common_fits, related, alpha, seed)
     assessments = []
     for i, b in enumerate(bounds):
         say("intervals", i, n)
         assessments.append(
-            assess(b, bench, fits[i], level=level, common=common, common_fit=common_fits[i][0])
+            assess(
+                b,
+                bench,
+                fits[i],
+                level=level,
+                common=common,
+                common_fit=common_fits[i][0],
+                stands=stands[i],
+            )
         )
-    say("comparing rivals", 0, 1)
-    standings, stands = _standing(common_fits, related, alpha, seed)
     in_use = [
         f.ok and not any((j, i) in related.same for j in range(i))
         for i, f in enumerate(a.fit for a in assessments)
