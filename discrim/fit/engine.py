@@ -93,8 +93,12 @@ class Problem:
         self.with_conditions = bool(self.set_sources or self.measured)
         self.estimated = data.scale is Scale.ESTIMATED
         self.joint_scale = self.estimated and self.with_conditions
-        # does W change with the fit?
-        self.moving = self.obs_relative or bool(self.set_sources) or self.joint_scale
+        # relative errors of measured conditions follow the reconciled conditions
+        self.following = any(s.proportional for s in self.measured)
+        # do the covariances change with the fit?
+        self.moving = (
+            self.obs_relative or bool(self.set_sources) or self.joint_scale or self.following
+        )
         largest = np.max(np.abs(data.y), axis=-1, keepdims=True) if data.n else np.zeros((1,))
         self.floor = 1e-4 * np.where(largest > 0, largest, 1.0)
 
@@ -137,7 +141,7 @@ class Problem:
     def with_measured(
         self, w: np.ndarray, conditions: np.ndarray, by_conditions: np.ndarray | None
     ) -> np.ndarray:
-        """V = W + F S_measured F'."""
+        """V = W + F S_measured F', the errors taken at ``conditions``."""
         if by_conditions is None or not self.measured:
             return w
         v = w.copy()
@@ -152,7 +156,8 @@ class Problem:
         by_conditions: np.ndarray,
         weighted: np.ndarray,
     ) -> np.ndarray:
-        """Reconciled conditions: nominal + S_c F' V^-1 e, ``weighted`` = V^-1 e, shape (S, N)."""
+        """Reconciled conditions: nominal + S_c F' V^-1 e, the errors S_c taken at ``conditions``;
+        ``weighted`` = V^-1 e, shape (S, N)."""
         out = np.array(np.broadcast_to(nominal, conditions.shape))
         for s in self.measured:
             sd = s.sd(conditions[..., s.target])
@@ -171,8 +176,14 @@ class Problem:
         scale2: np.ndarray,
         rows: np.ndarray,
         passes: int = 2,
+        errors_at: np.ndarray | None = None,
     ) -> Solution:
-        """Everything at ``theta``, with W given (or made here when None)."""
+        """Everything at ``theta``, with W given (or made here when None).
+
+        ``errors_at``: conditions at which relative errors of measured conditions are taken; those of
+        each pass when None. Like W they are held while two points are compared: Q with errors that
+        follow the reconciled conditions is not what the step descends on.
+        """
         y, nominal = self.table(rows)
         s = len(theta)
         if not self.with_conditions:
@@ -196,12 +207,13 @@ class Problem:
                 error = y - values
                 if self.measured:
                     error = error - np.einsum("snm,snm->sn", f_c, nominal - conditions)
-                cov = self.with_measured(w, conditions, f_c)
+                there = conditions if errors_at is None else errors_at
+                cov = self.with_measured(w, there, f_c)
                 white = Whitener(cov)
                 r = white.vector(error)
                 if not self.measured or k == passes - 1:
                     break
-                conditions = self.moved(nominal, conditions, f_c, white.transposed(r))
+                conditions = self.moved(nominal, there, f_c, white.transposed(r))
             g = white.matrix(pred.by_constants)
         q = np.einsum("sn,sn->s", r, r)
         bad = ~(np.isfinite(q) & np.isfinite(g).all(axis=(1, 2)) & white.ok)
@@ -343,7 +355,10 @@ def solve(
         trial_theta = np.clip(cur.theta + step, low, high)
         trial_theta = np.where(hold, cur.theta, trial_theta)
         w = cur.own if problem.moving else None
-        trial = problem.evaluate(trial_theta, cur.conditions, w, cur.scale2, a)
+        there = cur.conditions if problem.following else None
+        trial = problem.evaluate(
+            trial_theta, cur.conditions, w, cur.scale2, a, errors_at=there
+        )
         if separable:
             trial = _solve_linear(problem, trial, hold, low, high, w, a)
         drop = cur.objective - trial.objective
