@@ -1,9 +1,9 @@
 """Conditioning against published condition indices and variance proportions.
 
-Sources: Belsley, Kuh & Welsch, Regression Diagnostics, Wiley 1980 (method; the condition number 43 275 of
-the Longley table, from memory); body fat of Neter, Wasserman & Kutner, with the indices and proportions
-printed for it; condition numbers of Hilbert matrices, Higham, Accuracy and Stability of Numerical
-Algorithms, 2nd ed. 2002, sec. 28.1. Figures in SOURCES.toml.
+Sources: Belsley, Kuh & Welsch, Regression Diagnostics, Wiley 1980 (method; condition number 43275
+of the Longley table, from memory); body fat of Neter, Wasserman & Kutner, with the indices and
+proportions printed for it; condition numbers of Hilbert matrices, Higham, Accuracy and Stability of
+Numerical Algorithms, 2nd ed. 2002, sec. 28.1. Figures in SOURCES.toml.
 """
 
 from __future__ import annotations
@@ -59,9 +59,10 @@ def test_scaling_of_columns_does_not_matter() -> None:
 
 @pytest.mark.parametrize("n", range(2, 9))
 def test_hilbert_matrices(n: int) -> None:
-    """Condition numbers of the matrices themselves (columns as they are), which `conditioning` sees when
-    its columns have unit length already: so the columns are scaled first and the number compared with
-    numpy's of the same scaled matrix; and numpy's number of the plain matrix with the published one."""
+    """Condition numbers of the matrices themselves (columns as they are), which `conditioning` sees
+    when its columns have unit length already: so the columns are scaled first and the number
+    compared with numpy's of the same scaled matrix; and numpy's number of the plain matrix with the
+    published one."""
     i = np.arange(1, n + 1)
     hilbert = 1.0 / (i[:, None] + i[None, :] - 1)
     published = dict(
@@ -75,13 +76,13 @@ def test_hilbert_matrices(n: int) -> None:
     scaled = hilbert / np.sqrt((hilbert**2).sum(axis=0))
     found = conditioning(hilbert, tuple(f"c{k}" for k in i))
     assert found.condition_number == pytest.approx(np.linalg.cond(scaled), rel=1e-5)
-    # Van der Sluis (Numer. Math. 14 (1969) 14, from memory): equal column lengths are within sqrt(n)
-    # of the best scaling, so scaling never costs more than that against the plain matrix
+    # Van der Sluis (Numer. Math. 14 (1969) 14, from memory): equal column lengths are within
+    # sqrt(n) of the best scaling, so scaling never costs more than that against the plain matrix
     assert found.condition_number <= np.sqrt(n) * published[n] * (1 + 1e-6)
 
 
 def test_two_unit_columns_by_hand() -> None:
-    """Worked by hand here: columns (1, 0) and (cos t, sin t) have singular values sqrt(1 +- cos t)."""
+    """Worked by hand here: (1, 0) and (cos t, sin t) have singular values sqrt(1 +- cos t)."""
     t = 0.1
     columns = np.array([[1.0, np.cos(t)], [0.0, np.sin(t)]])
     found = conditioning(columns, ("a", "b"))

@@ -1,8 +1,8 @@
 """Criteria and nested tests against statsmodels, published tables and one simulation.
 
 Sources: SOURCES.toml (Puromycin and others of Bates & Watts 1988; corrected AIC of Bezerra, Fraga &
-Dias, Comput. Methods Programs Biomed. 109 (2013) 26; ethylene hydrogenation of Fogler). General-purpose
-reference: statsmodels OLS, compare_f_test.
+Dias, Comput. Methods Programs Biomed. 109 (2013) 26; ethylene hydrogenation of Fogler). General-
+purpose reference: statsmodels OLS, compare_f_test.
 """
 
 from __future__ import annotations
@@ -103,8 +103,8 @@ def _criteria(f: Fit) -> Criteria:
 
 @pytest.mark.parametrize("name", PUROMYCIN)
 def test_criteria_of_fits(name: str) -> None:
-    """The variance counted as a constant: aic_full of SOURCES.toml. Its aic and aicc leave a constant
-    n ln(2 pi) + n out (and aic the variance), which differences do not see."""
+    """The variance counted as a constant: aic_full of SOURCES.toml. Its aic and aicc leave a
+    constant n ln(2 pi) + n out (and aic the variance), which differences do not see."""
     found = _criteria(_puromycin(name))
     entry = model("puromycin", name)["refit"]
     n = entry["n"]
@@ -200,8 +200,9 @@ def test_nested_f_against_statsmodels(small: int, large: int) -> None:
 @pytest.mark.parametrize("q", [1, 2, 3])
 @pytest.mark.parametrize("value", [0.0, 0.7])
 def test_score_is_the_extra_sum_of_squares_for_linear_laws(q: int, value: float) -> None:
-    """With exact conditions and unknown scale the F form of the score, (K/1)/((N - p_l - K)/(N - p)), is
-    the extra-sum-of-squares F of a linear law; signed, its t. Here of "constant = value" in statsmodels.
+    """With exact conditions and unknown scale the F form of the score, (K/1)/((N - p_l - K)/(N -
+    p)), is the extra-sum-of-squares F of a linear law; signed, its t. Here of "constant = value" in
+    statsmodels.
     """
     found, other = _linear(q)
     for j in range(q + 1):
@@ -232,8 +233,8 @@ def test_lack_of_fit_by_hand() -> None:
     """Worked by hand here: y = k x; runs (1; 1.0, 1.2), (2; 1.9, 2.1), (3; 3.6, 3.4).
 
     Pure error: 2 * 0.1^2 three times, 0.06 with 3 degrees of freedom. k = sum xy / sum xx =
-    (2.2 + 8.0 + 21.0)/28 = 31.2/28; rss = sum yy - k * 31.2 = 34.98 - 31.2^2/28. Lack of fit: rss - 0.06
-    with 3 - 1 degrees of freedom.
+    (2.2 + 8.0 + 21.0)/28 = 31.2/28; rss = sum yy - k * 31.2 = 34.98 - 31.2^2/28. Lack of fit: rss -
+    0.06 with 3 - 1 degrees of freedom.
     """
     from dataclasses import replace
 
@@ -250,9 +251,10 @@ def test_lack_of_fit_by_hand() -> None:
 
 
 def test_half_p_on_the_edge() -> None:
-    """Self & Liang (J. Am. Stat. Assoc. 82 (1987) 605): with one constant on the edge of its range and
-    the others inside, the statistic is half 0 and half chi-squared with one degree of freedom. 4 000
-    tables of r = k_A A + k_B B with k_B = 0, stated errors; share below 0.05 of half the two-sided p.
+    """Self & Liang (J. Am. Stat. Assoc. 82 (1987) 605, from memory): with one constant on the edge of its range
+    and the others inside, the statistic is half 0 and half chi-squared with one degree of freedom.
+    4 000 tables of r = k_A A + k_B B with k_B = 0, stated errors; share below 0.05 of half the two-
+    sided p.
     """
     rng = np.random.default_rng(11)
     n, tables = 8, 4000

@@ -1,8 +1,8 @@
 """Effects and guaranteed ranges against theorems and examples worked by hand.
 
-Sources: Oettli & Prager, Numer. Math. 6 (1964) 405 (solutions of linear equations with bounds on all
-coefficients); Fieller, J. R. Stat. Soc. B 16 (1954) 175 (interval of a ratio), both from memory. The
-examples are invented and worked by hand here.
+Sources: Oettli & Prager, Numer. Math. 6 (1964) 405 (solutions of linear equations with bounds on
+all coefficients); Fieller, J. R. Stat. Soc. B 16 (1954) 175 (interval of a ratio), both from
+memory. The examples are invented and worked by hand here.
 """
 
 from __future__ import annotations
@@ -48,9 +48,9 @@ def _ranges(data: Measurements) -> list[tuple[float, float]]:
 
 
 def test_bounds_on_everything() -> None:
-    """Worked by hand here. Run 1: A = 1 exactly, B = 0, rate 2 +- 0.2, so k_A is 1.8 to 2.2. Run 2: A and
-    B = 1 +- 0.1, rate 5 +- 0.3: by Oettli & Prager |k_A + k_B - 5| <= 0.1 (k_A + k_B) + 0.3, that is k_A +
-    k_B is 4.7/1.1 to 5.3/0.9, and k_B is 4.7/1.1 - 2.2 to 5.3/0.9 - 1.8."""
+    """Worked by hand here. Run 1: A = 1 exactly, B = 0, rate 2 +- 0.2, so k_A is 1.8 to 2.2. Run 2:
+    A and B = 1 +- 0.1, rate 5 +- 0.3: by Oettli & Prager |k_A + k_B - 5| <= 0.1 (k_A + k_B) + 0.3,
+    that is k_A + k_B is 4.7/1.1 to 5.3/0.9, and k_B is 4.7/1.1 - 2.2 to 5.3/0.9 - 1.8."""
     data = _bounded([2.0, 5.0], [0.2, 0.3], [[1.0, 0.0], [1.0, 1.0]], [[0.0, 0.0], [0.1, 0.1]])
     first, second = _ranges(data)
     assert first == pytest.approx((1.8, 2.2))
@@ -58,8 +58,8 @@ def test_bounds_on_everything() -> None:
 
 
 def test_bounds_that_only_the_sign_closes() -> None:
-    """Worked by hand here: one run A = B = 1 exactly, rate 5 +- 0.5: k_A + k_B is 4.5 to 5.5, and with
-    both at or above zero each is 0 to 5.5. With A = 0 nothing bounds k_A above."""
+    """Worked by hand here: one run A = B = 1 exactly, rate 5 +- 0.5: k_A + k_B is 4.5 to 5.5, and
+    with both at or above zero each is 0 to 5.5. With A = 0 nothing bounds k_A above."""
     data = _bounded([5.0], [0.5], [[1.0, 1.0]], [[0.0, 0.0]])
     assert _ranges(data) == [pytest.approx((0.0, 5.5)), pytest.approx((0.0, 5.5))]
     blind = _bounded([5.0], [0.5], [[0.0, 1.0]], [[0.0, 0.0]])
@@ -78,8 +78,8 @@ def test_bounds_that_contradict_one_another() -> None:
 
 
 def test_standard_deviations_become_bounds_that_hold_together() -> None:
-    """One constant, M measurements with standard deviations: each bounded at Phi^-1(1 - 0.05/(2 M)).
-    Worked by hand here: y = k with y = 4 and 5, sd 1: k is 5 - z to 4 + z, z at 1 - 0.05/4."""
+    """One constant, M measurements with standard deviations: each bounded at Phi^-1(1 - 0.05/(2
+    M)). Worked by hand here: y = k with y = 4 and 5, sd 1: k is 5 - z to 4 + z, z at 1 - 0.05/4."""
     data = measurements(np.array([4.0, 5.0]), np.ones((2, 1)), sd=1.0)
     (found,) = guaranteed(predictor(k_A * A, (k_A,), (A,), 2, lower=0.0), data, 0.05, 1.0)
     z = stats.norm.ppf(1 - 0.05 / 4)
@@ -95,9 +95,10 @@ def test_no_range_for_a_law_that_is_not_linear() -> None:
 
 
 def test_flip_distance_by_hand() -> None:
-    """Worked by hand here: y = k A, runs (1; 1 +- 0.1) and (1; 2 +- 0.3), A exact: with each moved by m
-    errors they meet where 1 + 0.1 m = 2 - 0.3 m, m = 2.5. With A = 1 +- 0.05 as well: 1 + 0.1 m = k (1 -
-    0.05 m) and 2 - 0.3 m = k (1 + 0.05 m); with both k from the two, m solves a quadratic."""
+    """Worked by hand here: y = k A, runs (1; 1 +- 0.1) and (1; 2 +- 0.3), A exact: with each moved
+    by m errors they meet where 1 + 0.1 m = 2 - 0.3 m, m = 2.5. With A = 1 +- 0.05 as well: 1 + 0.1
+    m = k (1 - 0.05 m) and 2 - 0.3 m = k (1 + 0.05 m); with both k from the two, m solves a
+    quadratic."""
     law = predictor(k_A * A, (k_A,), (A,), 2, lower=0.0)
     y, c = np.array([1.0, 2.0]), np.ones((2, 1))
     data = measurements(y, c, sd=np.array([0.1, 0.3]))
@@ -170,8 +171,8 @@ def _fieller(y: np.ndarray, c: np.ndarray, at: list[float], t: float) -> tuple[f
 
 
 def test_effect_interval_is_fiellers_for_a_linear_law() -> None:
-    """Exact conditions, unknown scale: "effect = e" restricts the constants linearly, so the interval is
-    Fieller's with the t quantile; effect = rho/(1 + rho)."""
+    """Exact conditions, unknown scale: "effect = e" restricts the constants linearly, so the
+    interval is Fieller's with the t quantile; effect = rho/(1 + rho)."""
     rng = np.random.default_rng(3)
     c = np.column_stack([np.linspace(1, 4, 10), rng.uniform(1, 4, 10)])
     y = c @ [3.0, 1.0] + 0.3 * rng.standard_normal(10)
@@ -192,8 +193,8 @@ def test_effect_interval_is_fiellers_for_a_linear_law() -> None:
 
 def test_detectable_effect_is_found_four_times_in_five() -> None:
     """Worked by hand here for one constant in question, k_A known to all intents (huge runs without
-    B would fix it): stated errors, the estimate of k_B has sd s, and k_B = (1.645 + 0.842) s is found
-    with probability 0.8 by the one-sided 5 % test."""
+    B would fix it): stated errors, the estimate of k_B has sd s, and k_B = (1.645 + 0.842) s is
+    found with probability 0.8 by the one-sided 5 % test."""
     c = np.array([[1.0, 0.0]] * 6 + [[1.0, 1.0]] * 6)
     y = c @ [3.0, 0.5]
     data = measurements(y, c, sd=0.1)
@@ -206,8 +207,9 @@ def test_detectable_effect_is_found_four_times_in_five() -> None:
 
 
 def test_error_margin_by_hand() -> None:
-    """Worked by hand here: set conditions, k_A A with A exact and k_B B with a shared error of B never
-    matters at k_B = 0; so the margin is unlimited there and the test is that of exact conditions."""
+    """Worked by hand here: set conditions, k_A A with A exact and k_B B with a shared error of B
+    never matters at k_B = 0; so the margin is unlimited there and the test is that of exact
+    conditions."""
     c = np.array([[1.0, 0.0]] * 6 + [[1.0, 1.0]] * 6)
     y = c @ [3.0, 0.5]
     exact = _additive(measurements(y, c, sd=0.1), [1.0, 1.0])

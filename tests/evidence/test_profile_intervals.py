@@ -1,10 +1,11 @@
 """Profile intervals against published and independently computed ones.
 
 Sources: Bates & Watts, Nonlinear Regression Analysis and Its Applications, Wiley 1988 (Puromycin,
-biochemical oxygen demand, n-pentane isomerization of Carr, Ind. Eng. Chem. 52 (1960) 391, sulfisoxazole);
-Fogler, Elements of Chemical Reaction Engineering (ethylene hydrogenation, silane deposition); data set
-vmkmki of Baty et al., J. Stat. Softw. 66(5) (2015). Limits in SOURCES.toml, each reached there by an
-independent profile; the published ones were computed with interpolation and agree to 3.5 digits.
+biochemical oxygen demand, n-pentane isomerization of Carr, Ind. Eng. Chem. 52 (1960) 391,
+sulfisoxazole); Fogler, Elements of Chemical Reaction Engineering (ethylene hydrogenation, silane
+deposition); data set vmkmki of Baty et al., J. Stat. Softw. 66(5) (2015). Limits in SOURCES.toml,
+each reached there by an independent profile; the published ones were computed with interpolation
+and agree to 3.5 digits.
 """
 
 from __future__ import annotations
@@ -23,7 +24,7 @@ from tests.reference.outside import column, digits, labels, measurements, model,
 
 conc, time, t, P = symbols("conc time t P")
 pE, pEA, pH, pC5, pI = symbols("pE pEA pH pC5 pI")
-S, I = symbols("S I")
+S, inhibitor = symbols("S I")
 Vm, K, h, A, k, KEA, KE, Vmax, Km, Ki, a, b = symbols("Vm K h A k KEA KE Vmax Km Ki a b")
 b1, b2, b3, b4, c0, c1, c2, c3 = symbols("b1 b2 b3 b4 c0 c1 c2 c3")
 
@@ -45,12 +46,12 @@ LAWS: dict[tuple[str, str], tuple[Expr, tuple[Any, ...]]] = {
         (pH, pC5, pI),
     ),
     ("enzyme_inhibition_vmkmki", "competitive"): (
-        Vmax * S / (S + Km * (1 + I / Ki)),
-        (S, I),
+        Vmax * S / (S + Km * (1 + inhibitor / Ki)),
+        (S, inhibitor),
     ),
     ("enzyme_inhibition_vmkmki", "mixed"): (
-        Vmax * S / (Km * (1 + a * I) + S * (1 + b * I)),
-        (S, I),
+        Vmax * S / (Km * (1 + a * inhibitor) + S * (1 + b * inhibitor)),
+        (S, inhibitor),
     ),
     ("sulfisoxazole", "two_exponentials"): (b1 * exp(-b2 * t) + b3 * exp(-b4 * t), (t,)),
     ("silane_deposition", "saturation"): (k * P / (1 + K * P), (P,)),
@@ -104,8 +105,8 @@ def test_profile_limits(table: str, name: str, constant: str) -> None:
 
 
 def test_two_exponentials_that_change_places() -> None:
-    """The law is the same with its terms exchanged: the interval of each constant is the piece around
-    its estimate, and the other piece is named beside it."""
+    """The law is the same with its terms exchanged: the interval of each constant is the piece
+    around its estimate, and the other piece is named beside it."""
     found = fitted("sulfisoxazole", "two_exponentials")
     entry = model("sulfisoxazole", "two_exponentials")["refit"]["profile_95"]
     result = curves(found, 3).profile
@@ -136,10 +137,10 @@ def test_open_ends_are_called_open() -> None:
 
 
 def test_linearised_interval_of_a_badly_conditioned_law_fails_where_the_profile_does_not() -> None:
-    """n-Pentane isomerization, four constants (Bates & Watts 1988, table 2.2: b2 = 0.071 +- 0.178): the
-    linearised 95 % interval of each adsorption constant reaches far below zero, which adsorption
-    constants cannot; the profile of b1 is lopsided, from 26.8 to 67.0, where the linearised one is
-    35.9 -+ 17.1. Adsorption constants held at or above zero."""
+    """n-Pentane isomerization, four constants (Bates & Watts 1988, table 2.2: b2 = 0.071 +- 0.178):
+    the linearised 95 % interval of each adsorption constant reaches far below zero, which
+    adsorption constants cannot; the profile of b1 is lopsided, from 26.8 to 67.0, where the
+    linearised one is 35.9 -+ 17.1. Adsorption constants held at or above zero."""
     law = b1 * b3 * _DRIVING / (1 + b2 * pH + b3 * pC5 + b4 * pI)
     table = "isomerization_npentane"
     entry = model(table, "single_site_surface_reaction")
@@ -188,8 +189,8 @@ def test_profile_against_lmfit() -> None:
 
 
 def test_linear_law_has_one_interval_by_every_method() -> None:
-    """A law linear in its constants, exact conditions, scale unknown: the profile, the linearised and the
-    reconciled interval are the t interval, here that of statsmodels OLS."""
+    """A law linear in its constants, exact conditions, scale unknown: the profile, the linearised
+    and the reconciled interval are the t interval, here that of statsmodels OLS."""
     sm = pytest.importorskip("statsmodels.api")
     x1, x2 = symbols("x1 x2")
     table = "bodyfat"

@@ -1,7 +1,8 @@
 """A short seeded calibration: size of the score test and coverage of its interval in lockstep.
 
-r = k_A A + k_B B, B = 2.5 A (1 + spread N(0, 1)), 12 runs, 1 % error of the rate, invented. True numbers
-are known because they are drawn; bounds are binomial. The long run is in ``tests/calibration``.
+r = k_A A + k_B B, B = 2.5 A (1 + spread N(0, 1)), 12 runs, 1 % error of the rate, invented. True
+numbers are known because they are drawn; bounds are binomial. The long run is in
+``tests/calibration``.
 """
 
 from __future__ import annotations
@@ -81,7 +82,7 @@ def no_more_than(count: int, n: int, p: float) -> bool:
 
 @pytest.mark.parametrize("cell", CELLS)
 def test_size_at_zero(cell: Cell) -> None:
-    """False "the rate depends on B" in at most 5 % (and not far fewer: the test is exact, not timid)."""
+    """False "the rate depends on B" in at most 5 % (and not far fewer: exact, not timid)."""
     studies = 1500
     z, _ = at(draw(cell, studies, 0.0, 21), 0.0)
     assert np.isfinite(z).all()
@@ -92,7 +93,7 @@ def test_size_at_zero(cell: Cell) -> None:
 
 @pytest.mark.parametrize("cell", CELLS)
 def test_coverage_away_from_zero(cell: Cell) -> None:
-    """The two-sided set holds the true k_B = 1 in 95 %: score and guard together, as it is printed."""
+    """The two-sided set holds the true k_B = 1 in 95 %: score and guard together, as printed."""
     studies = 1500
     z, held = at(draw(cell, studies, 1.0, 22), 1.0)
     kept = np.abs(z) <= stats.norm.ppf(1 - 0.04 / 2)
@@ -101,8 +102,8 @@ def test_coverage_away_from_zero(cell: Cell) -> None:
 
 
 def test_textbook_f_fails_where_the_score_does_not() -> None:
-    """The reason for all this: conditions taken as exact, the F test claims B in more than a third of
-    the studies without B (two-sided 5 % and k_B > 0 is 2.5 %)."""
+    """The reason for all this: conditions taken as exact, the F test claims B in more than a third
+    of the studies without B (two-sided 5 % and k_B > 0 is 2.5 %)."""
     data = draw(CELLS[0], 1000, 0.0, 23)
     problem = Problem(law(-np.inf), data.without_condition_errors())
     start = np.tile([K_A, 0.0], (1000, 1))
@@ -130,3 +131,15 @@ def test_one_study_and_a_batch_agree() -> None:
                 crossing = abs(float(edge.z[0])) - stats.norm.ppf(0.98)
                 guard = float(edge.objective[0]) - stats.chi2.isf(0.01, N - 1)
                 assert min(abs(crossing), abs(guard) / 10) < 1e-4
+
+
+def test_restricted_fits_do_not_depend_on_the_start() -> None:
+    """Relative errors follow fit and reconciled conditions, yet the fixed point is one."""
+    for cell in CELLS[:3]:
+        batch = draw(cell, 1, 1.0, 25)
+        one = replace(batch, y=batch.y[0], conditions=batch.conditions[0])
+        problem = Problem(law(), one)
+        start = np.array([[2.0, 0.4], [4.0, 0.4], [4.5, 0.4], [9.0, 0.4]])
+        held = solve(problem, start, fixed=np.array([False, True]))
+        assert np.ptp(held.theta[:, 0]) <= 1e-8 * held.theta[0, 0]
+        assert np.ptp(score(problem, held, 1).z) <= 1e-6

@@ -1,10 +1,10 @@
 """Linear laws in badly conditioned tables, and fits with errors in the conditions.
 
-Sources: certified values of the National Institute of Standards and Technology (Statistical Reference
-Datasets, linear regression: Longley, Wampler1, Wampler3, Wampler5); Neter, Wasserman & Kutner, Applied
-Linear Statistical Models, table 7.1 (body fat); York, Can. J. Phys. 44 (1966) 1079 with the standard
-errors of York et al., Am. J. Phys. 72 (2004) 367 (from memory; the figures are in SOURCES.toml); User's
-Reference Guide for ODRPACK version 2.01, NISTIR 4834 (1992), p. 39.
+Sources: certified values of the National Institute of Standards and Technology (Statistical
+Reference Datasets, linear regression: Longley, Wampler1, Wampler3, Wampler5); Neter, Wasserman &
+Kutner, Applied Linear Statistical Models, table 7.1 (body fat); York, Can. J. Phys. 44 (1966) 1079
+with the standard errors of York et al., Am. J. Phys. 72 (2004) 367 (from memory; the figures are in
+SOURCES.toml); User's Reference Guide for ODRPACK version 2.01, NISTIR 4834 (1992), p. 39.
 """
 
 from __future__ import annotations
@@ -108,9 +108,22 @@ def test_line_with_errors_in_both_variables(name: str, published_digits: float) 
         assert digits(found.objective / 8, published["reduced_chi_square"]) >= 9
 
 
+@pytest.mark.parametrize("name", ["unweighted_y_on_x", "weighted_y_only"])
+def test_line_with_errors_in_one_variable(name: str) -> None:
+    """The same ten points with x exact: published solutions beside York's."""
+    a, b, x = symbols("a b x")
+    entry = model("pearson_york", name)
+    sd = None if "weight" not in entry else 1 / np.sqrt(column("pearson_york", "weight_y"))
+    data = measurements(column("pearson_york", "y"), column("pearson_york", "x")[:, None], sd=sd)
+    found = fit(predictor(a + b * x, [a, b], [x], 10, scale=[5, 0.5]), data)
+    assert digits(found.theta, entry["published"]["estimates"]) >= 8
+    assert digits(found.theta, entry["refit"]["estimates"]) >= 9
+    assert digits(found.rss, entry["refit"]["rss"]) >= 9
+
+
 def test_reconciled_points_lie_where_york_puts_them() -> None:
-    """At the solution the reconciled x is x + (b/w_x) e /(1/w_y + b^2/w_x) (York 1966, written out for
-    uncorrelated errors): worked here from the fitted line."""
+    """At the solution the reconciled x is x + (b/w_x) e /(1/w_y + b^2/w_x) (York 1966, written out
+    for uncorrelated errors): worked here from the fitted line."""
     found, _ = _york("york_weights")
     a, b = found.theta
     x, y = column("pearson_york", "x"), column("pearson_york", "y")
@@ -174,9 +187,9 @@ def test_curve_against_an_independent_orthogonal_regression() -> None:
 
 
 def test_errors_shared_by_runs_against_generalised_least_squares() -> None:
-    """Set conditions with a shared error, law linear in the condition: V = sy^2 I + b^2 (s1^2 I + s2^2 J)
-    is known once b is, and the fit must be the generalised least-squares solution for it (statsmodels
-    GLS, iterated to its own fixed point)."""
+    """Set conditions with a shared error, law linear in the condition: V = sy^2 I + b^2 (s1^2 I +
+    s2^2 J) is known once b is, and the fit must be the generalised least-squares solution for it
+    (statsmodels GLS, iterated to its own fixed point)."""
     sm = pytest.importorskip("statsmodels.api")
     from dataclasses import replace
 
@@ -205,9 +218,9 @@ def test_errors_shared_by_runs_against_generalised_least_squares() -> None:
 
 
 def test_relative_errors_follow_the_fit() -> None:
-    """Worked by hand here: one constant, y = k x, relative error r of the fitted value. The weights are
-    1/(r k x)^2, so the fitted k is the plain mean of y/x; with x = (1, 2, 4), y = (3, 5, 14):
-    k = (3 + 5/2 + 7/2)/3 = 3."""
+    """Worked by hand here: one constant, y = k x, relative error r of the fitted value. The weights
+    are 1/(r k x)^2, so the fitted k is the plain mean of y/x; with x = (1, 2, 4), y = (3, 5, 14): k
+    = (3 + 5/2 + 7/2)/3 = 3."""
     from dataclasses import replace
 
     from discrim.fit.measurements import OBSERVATION, source

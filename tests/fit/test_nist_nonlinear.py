@@ -1,7 +1,8 @@
 """The fit engine against certified solutions of nonlinear least-squares problems.
 
 Source: National Institute of Standards and Technology, Statistical Reference Datasets, nonlinear
-regression; data, starts and certified values in ``tests/reference/SOURCES.toml`` (11 certified digits).
+regression; data, starts and certified values in ``tests/reference/SOURCES.toml`` (11 certified
+digits).
 """
 
 from __future__ import annotations
@@ -52,8 +53,8 @@ CASES = [(name, k) for name in LAWS for k in (0, 1)]
 
 # From this start only the elimination of the linear constant leads down the curved valley.
 SEPARATE = {("mgh10", 0)}
-# No descent from this start alone gets there: b2 = 1 is so far off that the first step overshoots to
-# a horizontal line. Several starts spread around it, as every fit of discrim makes them, do.
+# No descent from this start alone gets there: b2 = 1 is so far off that the first step overshoots
+# to a horizontal line. Several starts spread around it, as every fit of discrim makes them, do.
 SEVERAL_STARTS = {("boxbod", 0)}
 # Generated with errors below double precision: rss is 1e-25 of a sum of squares of 16, and double
 # precision carries the certified estimates but 3 digits of their standard errors.
@@ -94,8 +95,8 @@ def test_certified_solution_from_both_starts(name: str, k: int) -> None:
 
 @pytest.mark.parametrize("name", ["boxbod", "misra1a", "rat43", "mgh17"])
 def test_derivatives_agree_with_differences(name: str) -> None:
-    """Exact derivatives by constants and conditions against central differences, once for each kind of
-    law."""
+    """Exact derivatives by constants and conditions against central differences, once for each kind
+    of law."""
     found, _ = _fitted(name, 1)
     law, c = found.predictor, found.data.conditions
     exact = law.predict(found.theta[None], c, conditions_too=True, both=True)

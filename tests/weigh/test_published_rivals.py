@@ -1,8 +1,8 @@
 """Whole studies of published rival-law data: the verdicts agree with what the sources conclude.
 
-Sources, figures and the words of ``expected``: ``tests/reference/SOURCES.toml``. The studies are beside
-their tables in ``tests/reference/studies``. No source states an error of the conditions: they are
-exact there, and the variance of the rates is estimated.
+Sources, figures and the words of ``expected``: ``tests/reference/SOURCES.toml``. The studies are
+beside their tables in ``tests/reference/studies``. No source states an error of the conditions:
+they are exact there, and the variance of the rates is estimated.
 """
 
 from __future__ import annotations
@@ -93,8 +93,8 @@ def test_fits_and_criteria(study: str, name: str, entry: str) -> None:
 
 
 def test_constants_reach_the_page_in_their_units() -> None:
-    """Published estimates and standard errors of ethylene hydrogenation, law b, through a whole study
-    (pressures in atm, rate in mol/(kg s))."""
+    """Published estimates and standard errors of ethylene hydrogenation, law b, through a whole
+    study (pressures in atm, rate in mol/(kg s))."""
     found = candidate("ethylene_hydrogenation", "ethylene adsorbed")
     published = model("ethylene_hydrogenation", "b_ethylene_adsorbed")["published"]
     by_name = {c["name"]: c for c in found["constants"]}
@@ -146,7 +146,7 @@ def test_puromycin_verdict() -> None:
 
 
 def test_ethylene_verdict() -> None:
-    """Expected: laws c and d are far worse; a against b is undecided, the interval of K_EA covers zero."""
+    """Expected: laws c and d are far worse; a against b is undecided, K_EA covers zero."""
     name = "ethylene_hydrogenation"
     assert sources()[name]["expected"].startswith(
         "laws c and d are far worse; a against b is undecided"
@@ -197,8 +197,8 @@ def test_ethylene_f_and_criteria_point_both_ways() -> None:
 
 
 def test_isomerization_verdict() -> None:
-    """Expected: hydrogen adsorption is clearly needed; the unity term is not supported; single-site and
-    dual-site laws stay undecided."""
+    """Expected: hydrogen adsorption is clearly needed; the unity term is not supported; single-site
+    and dual-site laws stay undecided."""
     name = "isomerization_npentane"
     assert sources()[name]["expected"].startswith("hydrogen adsorption is clearly needed")
     assert outcomes(name) == {
@@ -217,8 +217,8 @@ def test_isomerization_verdict() -> None:
 
 
 def test_isomerization_linearised_and_profile_intervals_differ() -> None:
-    """Four constants, condition number 292 of the scaled sensitivities: absolute adsorption constants
-    are not determined, and only the profile (open above) says so."""
+    """Four constants, condition number 292 of the scaled sensitivities: absolute adsorption
+    constants are not determined, and only the profile (open above) says so."""
     found = candidate("isomerization_npentane", "single site")
     exact = model("isomerization_npentane", "single_site_surface_reaction")
     b1, b2, b3, b4 = exact["refit"]["estimates"]
@@ -239,8 +239,8 @@ def test_isomerization_linearised_and_profile_intervals_differ() -> None:
     said = [f["says"] for f in weighed("isomerization_npentane")["findings"]]
     for constant in ("K_H", "K_N", "K_I"):
         assert (
-            f"the linearised interval of {constant} is closed, but the runs set it no upper limit: its "
-            "profile is open"
+            f"the linearised interval of {constant} is closed, but the runs set it no upper limit: "
+            "its profile is open"
         ) in said
     # k = b1 b3 in place of b1: the condition number is of these four columns
     assert 100 < found["condition_number"] < 2000
@@ -251,7 +251,7 @@ def test_isomerization_linearised_and_profile_intervals_differ() -> None:
 
 
 def test_inhibition_verdict() -> None:
-    """Expected: competitive and plain non-competitive are rejected against mixed; uncompetitive is not."""
+    """Expected: competitive and plain non-competitive are rejected, uncompetitive is not."""
     name = "enzyme_inhibition_vmkmki"
     assert outcomes(name) == {
         "no inhibition": "rejected",
@@ -276,8 +276,9 @@ def test_inhibition_verdict() -> None:
     ],
 )
 def test_inhibition_f(smaller: str, entry: str) -> None:
-    """The published mixed fit has a < 0, which an inhibition constant cannot have: with a at its bound of
-    0 its sum of squares is 42.105 in place of 41.882, and the F against it changes accordingly."""
+    """The published mixed fit has a < 0, which an inhibition constant cannot have: with a at its
+    bound of 0 its sum of squares is 42.105 in place of 41.882, and the F against it changes
+    accordingly."""
     found = compared("enzyme_inhibition_vmkmki", "mixed", smaller)
     exact = comparison("enzyme_inhibition_vmkmki", entry)["refit"]
     rss = {

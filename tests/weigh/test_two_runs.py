@@ -1,8 +1,8 @@
 """Two runs in lockstep, and a third that breaks it: worked by hand here, through a study file.
 
-Invented numbers. r = k_A A + k_B B, runs (A, B, r) = (0.600, 1.500, 1.80) and (1.800, 4.503, 5.40), every
-value known to half a unit in its last place. Solving gives k_A = 3, k_B = 0; with 1.81 in place of 1.80
-it gives k_A = 28, k_B = -10: (1.81 - 0.6 k_A)/1.5 = (5.40 - 1.8 k_A)/4.503.
+Invented numbers. r = k_A A + k_B B, runs (A, B, r) = (0.600, 1.500, 1.80) and (1.800, 4.503, 5.40),
+every value known to half a unit in its last place. Solving gives k_A = 3, k_B = 0; with 1.81 in
+place of 1.80 it gives k_A = 28, k_B = -10: (1.81 - 0.6 k_A)/1.5 = (5.40 - 1.8 k_A)/4.503.
 """
 
 from __future__ import annotations
@@ -76,8 +76,8 @@ def _ranges(document: dict[str, Any]) -> dict[str, list[float]]:
 
 
 def _by_linear_program(rows: str) -> list[tuple[float, float]]:
-    """The same polytope (Oettli & Prager 1964, from memory) written down directly: lower bounds of A and
-    B with the upper bound of the rate, and the reverse."""
+    """The same polytope (Oettli & Prager 1964, from memory) written down directly: lower bounds of
+    A and B with the upper bound of the rate, and the reverse."""
     table = np.array([[float(v) for v in line.split(",")] for line in rows.split()])
     c, y = table[:, :2], table[:, 2]
     a = np.vstack([c - 0.0005, -(c + 0.0005)])
