@@ -251,10 +251,10 @@ def test_lack_of_fit_by_hand() -> None:
 
 
 def test_half_p_on_the_edge() -> None:
-    """Self & Liang (J. Am. Stat. Assoc. 82 (1987) 605, from memory): with one constant on the edge of its range
-    and the others inside, the statistic is half 0 and half chi-squared with one degree of freedom.
-    4 000 tables of r = k_A A + k_B B with k_B = 0, stated errors; share below 0.05 of half the two-
-    sided p.
+    """Self & Liang (J. Am. Stat. Assoc. 82 (1987) 605, from memory): with one constant on the edge
+    of its range and the others inside, the statistic is half 0 and half chi-squared with one degree
+    of freedom. 4 000 tables of r = k_A A + k_B B with k_B = 0, stated errors; share below 0.05 of
+    half the two- sided p.
     """
     rng = np.random.default_rng(11)
     n, tables = 8, 4000
