@@ -15,7 +15,7 @@ from discrim.study.model import Study
 from discrim.weigh.bench import Bench, Bound
 from discrim.weigh.document import _column, _is_words, number
 from discrim.weigh.run import prepare
-from discrim.weigh.words import trade_off_words
+from discrim.weigh.words import share, trade_off_words
 
 
 def checked(study: Study) -> dict[str, Any]:
@@ -24,8 +24,8 @@ def checked(study: Study) -> dict[str, Any]:
     planned = not np.isfinite(bench.measurements.y).all()
     out_laws = []
     findings: list[dict[str, str]] = []
-    can: list[str] = []
-    cannot: list[str] = []
+    can: list[tuple[str, str]] = []
+    cannot: list[tuple[str, str]] = []
     for c, b in zip(laws, bounds, strict=True):
         theta, how = _where(b, bench, planned)
         record, columns = _law(c.law.name, plain(c.law.rate), b, bench, theta, how)
@@ -35,7 +35,9 @@ def checked(study: Study) -> dict[str, Any]:
                 continue
             sentence, ok = _decides(q.about, c, b, bench, columns)
             if sentence:
-                (can if ok else cannot).append(sentence)
+                (can if ok else cannot).append((q.about, sentence))
+    # one candidate in which the term is in lockstep leaves its question open
+    open_ones = {about for about, _ in cannot}
     if planned:
         findings.append(
             {
@@ -57,8 +59,8 @@ def checked(study: Study) -> dict[str, Any]:
         },
         "laws": out_laws,
         "findings": findings,
-        "can_decide": list(dict.fromkeys(can)),
-        "cannot_decide": list(dict.fromkeys(cannot)),
+        "can_decide": list(dict.fromkeys(s for about, s in can if about not in open_ones)),
+        "cannot_decide": list(dict.fromkeys(s for _, s in cannot)),
     }
 
 
@@ -95,12 +97,7 @@ def _law(
             for j, s in enumerate(bench.symbols)
             if np.ptp(data.conditions[:, j]) >= 0 and _in_terms(b, lock.first, lock.second, s)
         ]
-        words = (
-            f"the terms of {b.names[lock.first]} and {b.names[lock.second]} keep one ratio: it varies by "
-            f"{100 * lock.variation:.2g} %"
-        )
-        if lock.error > 0:
-            words += f", its stated error is {100 * lock.error:.2g} %"
+        words = lockstep_words(b.names[lock.first], b.names[lock.second], lock)
         locks.append(
             {
                 "terms": [b.names[lock.first], b.names[lock.second]],
@@ -151,7 +148,7 @@ def _decides(
 ) -> tuple[str, bool]:
     """Whether the term of a species is outside lockstep with the rest of the law."""
     from discrim.evidence.score import basis, without
-    from discrim.verdict import CONDITIONING_FRACTION
+    from discrim.verdict import CONDITIONING_FRACTION, NOTHING_APART
 
     ko = knock_out(c.law, about, bench.typical(about))
     if ko is None or len(ko.psi) != 1:
@@ -163,15 +160,15 @@ def _decides(
     g = columns[None, :, j]
     space = basis(np.delete(columns, j, axis=1)[None])
     left = float(np.sqrt((without(space, g) ** 2).sum() / max((g**2).sum(), 1e-300)))
-    percent = f"{100 * left:.2g} %"
     if left < CONDITIONING_FRACTION:
+        part = f"only {share(left)}" if left > NOTHING_APART else "none"
         return (
-            f"whether {about} takes part, with “{c.law.name}”: only {percent} of the sensitivity to "
-            f"{b.names[j]} is not in lockstep with the other terms",
+            f"whether {about} takes part, with “{c.law.name}”: {part} of the sensitivity to "
+            f"{b.names[j]} is apart from the other terms (lockstep)",
             False,
         )
     return (
-        f"whether {about} takes part, with “{c.law.name}”: {percent} of the sensitivity to "
+        f"whether {about} takes part, with “{c.law.name}”: {share(left)} of the sensitivity to "
         f"{b.names[j]} is its own",
         True,
     )

@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 
+from discrim.evidence.conditioning import Lockstep
 from discrim.evidence.intervals import Interval
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
@@ -28,6 +29,7 @@ from discrim.weigh.words import (
     CONTROLS,
     references,
     settings_words,
+    share,
     trade_off_words,
 )
 
@@ -156,12 +158,7 @@ def lockstep_keys(w: Weighed, i: int) -> list[dict[str, Any]]:
     for lock in w.assessments[i].lockstep:
         columns, ratio = _columns_behind(w, i, lock.first, lock.second)
         a, b = bound.names[lock.first], bound.names[lock.second]
-        words = (
-            f"the terms of {a} and {b} keep one ratio over the runs: it varies by "
-            f"{100 * lock.variation:.2g} %"
-        )
-        if lock.error > 0:
-            words += f", its stated error is {100 * lock.error:.2g} %"
+        words = lockstep_words(a, b, lock)
         out.append(
             {
                 "terms": [a, b],
@@ -174,6 +171,19 @@ def lockstep_keys(w: Weighed, i: int) -> list[dict[str, Any]]:
             }
         )
     return out
+
+
+def lockstep_words(a: str, b: str, lock: Lockstep) -> str:
+    """Two terms in lockstep, as a sentence."""
+    if lock.variation < 1e-6:
+        return f"the terms of {a} and {b} keep exactly one ratio over the runs"
+    words = (
+        f"the terms of {a} and {b} keep nearly one ratio over the runs: it varies by "
+        f"{share(lock.variation)}"
+    )
+    if lock.error > 0:
+        words += f", its stated error is {share(lock.error)}"
+    return words
 
 
 def _columns_behind(
@@ -224,7 +234,7 @@ def _column(c: Column) -> dict[str, Any]:
         sd = [number(x) for x in np.atleast_1d(sd_shown)]
     origins = {e.origin for e in c.errors}
     origin = ""
-    if c.errors and c.role is Role.SPECIES:
+    if c.errors and c.role not in (Role.RATE_OF, Role.CONSUMPTION_OF, Role.K_OBS_OF):
         origin = "not stated" if None in origins else " and ".join(sorted(o for o in origins if o))
     return {
         "name": c.name,
@@ -547,24 +557,51 @@ def _questions(w: Weighed) -> list[dict[str, Any]]:
 
 
 def _standing_why(w: Weighed, yes: list[str]) -> list[str]:
+    """Groups of laws that these runs, or any runs, cannot separate; laws that gain nothing."""
     out = []
-    pairs = set()
-    for i, c in enumerate(w.laws):
-        if c.law.name not in yes:
-            continue
-        for j in w.inseparable[i]:
-            pairs.add((min(i, j), max(i, j)))
-    for i, j in sorted(pairs):
-        a, b = w.laws[i].law.name, w.laws[j].law.name
-        how = "are the same law" if (i, j) in w.relations.same else "cannot be separated by these runs"
-        out.append(f"“{a}” and “{b}” {how}")
+    names = [c.law.name for c in w.laws]
+    inside = {i for i, n in enumerate(names) if n in yes}
+    for same in (True, False):
+        for group in _groups(w, inside, same):
+            listed = _listed([f"“{names[i]}”" for i in group])
+            if same:
+                out.append(f"{listed} are the same law")
+            elif len(group) == len(inside) > 2:
+                out.append("these runs cannot separate any two of the laws that stand")
+            else:
+                out.append(f"these runs cannot separate {listed}")
     for i, nb in enumerate(w.no_better):
-        if nb is not None:
+        if nb is not None and i in inside:
             out.append(
-                f"“{w.laws[i].law.name}” stands, but no better than its special case "
-                f"“{w.laws[nb].law.name}”"
+                f"“{names[i]}” stands, but no better than its special case “{names[nb]}”"
             )
     return out
+
+
+def _groups(w: Weighed, inside: set[int], same: bool) -> list[list[int]]:
+    """Sets of candidates each pair of which is the same law, or inseparable by these runs."""
+
+    def linked(i: int, j: int) -> bool:
+        return (min(i, j), max(i, j)) in w.relations.same if same else j in w.inseparable[i]
+
+    groups: list[list[int]] = []
+    for i in sorted(inside):
+        for g in groups:
+            if all(linked(i, j) for j in g):
+                g.append(i)
+                break
+        else:
+            groups.append([i])
+    return [
+        g
+        for g in groups
+        if len(g) > 1
+        and (same or not all((a, b) in w.relations.same for a in g for b in g if a < b))
+    ]
+
+
+def _listed(items: list[str]) -> str:
+    return items[0] if len(items) == 1 else ", ".join(items[:-1]) + " and " + items[-1]
 
 
 def _separate(w: Weighed, yes: list[str]) -> list[str]:

@@ -34,6 +34,14 @@ CONTROLS = {
 }
 
 
+ROUNDING = 1e-12  # a fraction below this comes from the arithmetic
+
+
+def share(fraction: float) -> str:
+    """A fraction in percent, two digits; what is only rounding is none."""
+    return "0 %" if fraction < ROUNDING else f"{100 * fraction:.2g} %"
+
+
 def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
     """A weak direction as a sentence with units."""
     names, units = bound.names, bound.units
