@@ -14,32 +14,41 @@ from typing import Any
 import pytest
 
 from discrim.cli import main
+from tests.demo import quotes
 
 DEMO = Path(__file__).resolve().parents[2] / "demo"
 BUFFER = DEMO / "buffer-hydrolysis"
 CATALYST = DEMO / "supported-catalyst"
 
 
-def evidence(study: Path, out: Path) -> dict[str, Any]:
-    """The evidence of a study, weighed by the command as a user would."""
-    assert main(["weigh", str(study), "--out", str(out), "--quiet"]) == 0
-    loaded: dict[str, Any] = json.loads((out / "evidence.json").read_text(encoding="utf-8"))
-    return loaded
+class Printed(quotes.Printed):
+    """What commands print, and the evidence that they save."""
+
+    def evidence(self, study: str) -> dict[str, Any]:
+        assert self[f"discrim weigh {study}"]
+        saved = quotes.results_of(study, self.folder) / "evidence.json"
+        loaded: dict[str, Any] = json.loads(saved.read_text(encoding="utf-8"))
+        return loaded
 
 
 @pytest.fixture(scope="module")
-def first(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Any]:
-    return evidence(BUFFER / "first.toml", tmp_path_factory.mktemp("first") / "out")
+def said(tmp_path_factory: pytest.TempPathFactory) -> Printed:
+    return Printed(tmp_path_factory.mktemp("results"))
 
 
 @pytest.fixture(scope="module")
-def second(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Any]:
-    return evidence(BUFFER / "second.toml", tmp_path_factory.mktemp("second") / "out")
+def first(said: Printed) -> dict[str, Any]:
+    return said.evidence("demo/buffer-hydrolysis/first.toml")
 
 
 @pytest.fixture(scope="module")
-def catalyst(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Any]:
-    return evidence(CATALYST / "study.toml", tmp_path_factory.mktemp("catalyst") / "out")
+def second(said: Printed) -> dict[str, Any]:
+    return said.evidence("demo/buffer-hydrolysis/second.toml")
+
+
+@pytest.fixture(scope="module")
+def catalyst(said: Printed) -> dict[str, Any]:
+    return said.evidence("demo/supported-catalyst/study.toml")
 
 
 def question(found: dict[str, Any], about: str) -> dict[str, Any]:
@@ -167,6 +176,14 @@ def test_every_file_says_that_it_is_invented() -> None:
         assert "Invented data" in path.read_text(encoding="utf-8"), path
 
 
+@pytest.mark.parametrize("page", quotes.PAGES, ids=["README", "demo"])
+def test_what_the_pages_quote_is_what_is_printed(page: Path, said: Printed) -> None:
+    """If a change was meant: ``python -m tests.demo.quotes``, and read the pages again."""
+    text = page.read_text(encoding="utf-8")
+    assert text.count("<!-- printed:") >= 2
+    assert quotes.renewed(text, said) == text
+
+
 def contents(folder: Path) -> dict[str, bytes]:
     return {
         str(p.relative_to(folder)): p.read_bytes() for p in sorted(folder.rglob("*")) if p.is_file()
@@ -183,7 +200,7 @@ def copied(tmp_path: Path) -> Path:
 
 def test_the_same_seed_writes_the_same_bytes(copied: Path, tmp_path: Path) -> None:
     for out in ("one", "two"):
-        evidence(copied, tmp_path / out)
+        assert main(["weigh", str(copied), "--out", str(tmp_path / out), "--quiet"]) == 0
     one, two = contents(tmp_path / "one"), contents(tmp_path / "two")
     assert {"report.html", "evidence.json", "candidates.csv", "constants.csv", "runs.csv"} <= {*one}
     assert any(name.endswith(".svg") for name in one)
