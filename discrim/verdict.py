@@ -92,6 +92,10 @@ def _p(p: float) -> str:
     return "p < 0.0001" if p < 1e-4 else f"p = {p:.2g}"
 
 
+def _listed(items: Sequence[str]) -> str:
+    return items[0] if len(items) == 1 else ", ".join(items[:-1]) + " and " + items[-1]
+
+
 def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[str, list[str]]:
     """What one candidate says, and why it says no more."""
     if not c.contains:
@@ -170,6 +174,7 @@ def judge_participation(
     if agree == {"negligible"} and matters_above is not None:
         return _negligible(about, what, standing, matters_above, is_reactant, votes)
     return _undecided(
+        about,
         subject,
         standing,
         said,
@@ -194,12 +199,12 @@ def _participates(
 ) -> Verdict:
     worst = max(r.p for c in standing for r in c.readings)
     margins = [r.margin for c in standing for r in c.readings if r.margin == r.margin]
-    how = "the one candidate that stands contains it"
+    how = f"the one candidate that stands contains {about}"
     if len(standing) > 1:
         both = "both" if len(standing) == 2 else f"all {len(standing)}"
-        how = f"{both} candidates that stand contain it"
+        how = f"{both} candidates that stand contain {about}"
     rejects = "rejects" if len(standing) == 1 else "each rejects"
-    why = [f"{how}, and {rejects} a rate without it ({_p(worst)}, limit {alpha:g})"]
+    why = [f"{how}, and {rejects} a rate without {about} ({_p(worst)}, limit {alpha:g})"]
     if margins:
         m = min(margins)
         at_least = "more than 10" if m == float("inf") else f"{m:.2g}"
@@ -243,15 +248,16 @@ def _negligible(
         )
     if bounds:
         why = (
-            f"its effect is at most {_percent(max(bounds))} in every candidate that stands "
+            f"the effect of {about} is at most {_percent(max(bounds))} in every candidate that stands "
             f"(smallest that matters: {_percent(matters_above)})",
         )
     else:
-        why = ("no candidate that stands contains it",)
+        why = (f"no candidate that stands contains {about}",)
     return Verdict("negligible", sentence, why, votes=tuple(votes))
 
 
 def _undecided(
+    about: str,
     subject: str,
     standing: Sequence[CandidateFacts],
     said: dict[str, str],
@@ -273,7 +279,7 @@ def _undecided(
     information = min((r.information for c in tested for r in c.readings), default=1.0)
     if not_rejecting:
         worst = max(r.p for c in not_rejecting for r in c.readings)
-        why.append(f"a rate without it is not excluded ({_p(worst)}, limit {alpha:g})")
+        why.append(f"a rate without {about} is not excluded ({_p(worst)}, limit {alpha:g})")
     if tested:
         bound = max(r.bound for c in tested for r in c.readings)
         if matters_above is None:
@@ -286,36 +292,38 @@ def _undecided(
                 f"nor is an effect of up to {_percent(bound)} (smallest that matters: "
                 f"{_percent(matters_above)})"
                 if not_rejecting
-                else f"its effect could be as large as {_percent(bound)}"
+                else f"the effect of {about} could be as large as {_percent(bound)}"
             )
     if information < CONDITIONING_FRACTION and not_rejecting:
         because.append("conditioning")
         apart = (
-            "none of the sensitivity to it is apart from the rest (lockstep)"
+            f"none of the sensitivity to {about} is apart from the rest of the law (lockstep)"
             if information < NOTHING_APART
-            else f"only {_percent(information)} of the sensitivity to it is not in lockstep with the "
-            "rest"
+            else f"only {_percent(information)} of the sensitivity to {about} is not in lockstep with "
+            "the rest of the law"
         )
         why.append(f"conditioning is to blame: over these runs {apart}")
-        settle.append("runs in which it is varied on its own, the other conditions held")
+        settle.append(f"runs in which {about} is varied on its own, the other conditions held")
     elif not_rejecting:
         if n_runs < n_constants + FEW_RUNS:
             because.append("too few runs")
             why.append(f"{n_runs} runs for {n_constants} constants leave little to test with")
-            settle.append("more runs, spread widely in it")
+            settle.append(f"more runs, spread widely in {about}")
         else:
             because.append("noise")
-            settle.append("replicates, or runs at more extreme amounts of it")
+            settle.append(f"replicates, or runs at more extreme amounts of {about}")
     if others:
         because.append("stand-in")
-        why += [s.words for s in others]
-        settle.append("runs that break the link between it and " + ", ".join(s.name for s in others))
+        names = [s.name for s in others]
+        verb = "explains" if len(names) == 1 else "each explain"
+        why.append(f"in place of {about}, {_listed(names)} {verb} these runs as well")
+        settle.append(f"runs that break the link between {about} and {_listed(names)}")
     kinds = {said[c.name] for c in standing}
     without = [c for c in standing if not c.contains]
     if without and tested:
         because.append("disagreement")
-        names = ", ".join(f"“{c.name}”" for c in without)
-        why.append(f"{names} {'stands' if len(without) == 1 else 'stand'} without it")
+        listed = _listed([f"“{c.name}”" for c in without])
+        why.append(f"{listed} {'stands' if len(without) == 1 else 'stand'} without {about}")
         if not settle:
             settle.append("runs that separate the candidates that stand")
     elif "participates" in kinds and len(kinds) > 1:

@@ -190,17 +190,17 @@ def laws_of(candidates: Sequence[Document]) -> tuple[tuple[Law, ...], tuple[str,
 def law(candidate: Document) -> Law:
     """One candidate's law and how it follows from the steps."""
     notes = []
-    same = read.texts(candidate, "same_law_as")
-    if same:
-        notes.append(f"Same law as {_quoted(same)}: no rate experiment can tell them apart.")
-    near = read.texts(candidate, "inseparable_from")
-    if near:
-        notes.append(
-            f"Inseparable from {_quoted(near)} by these runs. What is not a rate could separate "
-            "them: isotope effect, labelling, trapping, spectroscopy."
-        )
-    special = read.text(candidate, "no_better_than")
     reasons = read.texts(candidate, "reasons")
+    same = read.texts(candidate, "same_law_as")
+    if same and not any("the same law as" in reason for reason in reasons):
+        notes.append(
+            f"Same law as {_quoted(same)}: no rate can tell them apart, only isotope effects, labelling, "
+            "trapping or spectroscopy."
+        )
+    near = [n for n in read.texts(candidate, "inseparable_from") if n not in same]
+    if near and not any("cannot separate" in reason for reason in reasons):
+        notes.append(f"Inseparable from {_quoted(near)} by these runs.")
+    special = read.text(candidate, "no_better_than")
     if special and not any("no better than" in reason for reason in reasons):
         notes.append(f"Stands, but no better than its special case “{special}”.")
     notes += reasons + read.texts(candidate, "note")

@@ -229,11 +229,15 @@ def conditioning(ordered: Sequence[Any]) -> tuple[Table, ...]:
     rows = [
         [
             read.text(c, "name"),
-            factor(read.value(c, "condition_number")),
-            number(read.value(c, "digits_lost"), 2),
+            factor(read.value(c, "condition_number"))
+            if read.value(c, "condition_number") is not None
+            else "infinite",
+            number(read.value(c, "digits_lost"), 2)
+            if read.value(c, "digits_lost") is not None
+            else "all",
         ]
         for c in ordered
-        if read.value(c, "condition_number") is not None
+        if read.value(c, "condition_number") is not None or read.numbers(c, "condition_indices")
     ]
     heads = [
         ("Candidate", False),
@@ -286,20 +290,18 @@ def comparisons(found: Sequence[Any]) -> Table | None:
             how = "nested, on the edge" if c.get("edge") is True else "nested, inside"
         else:
             how = "not nested" if c.get("nested") is False else ""
-        remark = "; ".join(w for w in (read.text(c, "words"), read.text(c, "p_note")) if w)
+        test = number(read.value(c, "F"), 3) + (f" ({', '.join(df)})" if df else "")
         rows.append(
             [
                 read.text(c, "smaller"),
                 read.text(c, "larger"),
                 read.text(c, "restriction"),
                 how,
-                number(read.value(c, "F"), 3),
-                ", ".join(df),
-                probability(read.value(c, "p")),
-                probability(read.value(c, "p_one_sided")),
+                test,
+                probability(read.value(c, "p_one_sided") or read.value(c, "p")),
                 probability(read.value(c, "p_reconciled")),
                 probability(read.value(c, "p_bootstrap")),
-                remark,
+                _brief(read.text(c, "p_note")),
             ]
         )
     heads = [
@@ -307,21 +309,24 @@ def comparisons(found: Sequence[Any]) -> Table | None:
         ("Larger law", False),
         ("What is set", False),
         ("Relation", False),
-        ("F", True),
-        ("Degrees of freedom", True),
-        ("p, F", True),
-        ("p, one-sided", True),
-        ("p, reconciled", True),
-        ("p, bootstrap", True),
+        ("F (degrees of freedom)", True),
+        ("p of F", True),
+        ("p reconciled", True),
+        ("p bootstrap", True),
         ("Remark", False),
     ]
     return make(
         "Comparisons of laws",
         heads,
         rows,
-        note="F is the extra sum of squares and takes the conditions as exact; verdicts rest on "
-        "the reconciled test.",
+        note="F is the extra sum of squares and takes the conditions as exact; on the edge with one "
+        "constant its p is one-sided. Verdicts rest on the reconciled test.",
     )
+
+
+def _brief(remark: str) -> str:
+    """Remarks that the note below the table makes for all rows are not repeated in each."""
+    return "" if remark.startswith("on the edge") else remark
 
 
 def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:

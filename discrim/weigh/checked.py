@@ -13,7 +13,7 @@ from discrim.ratelaw.knockout import contains, knock_out
 from discrim.ratelaw.printing import plain
 from discrim.study.model import Study
 from discrim.weigh.bench import Bench, Bound
-from discrim.weigh.document import _column, _is_words, number
+from discrim.weigh.document import _column, _is_words, lockstep_words, number
 from discrim.weigh.run import prepare
 from discrim.weigh.words import share, trade_off_words
 

@@ -58,6 +58,8 @@ def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
         # k_a + ratio k_b stays put along the direction
         number = f"{abs(ratio):.4g}"
         factor = f"({number}{unit})·" if unit else f"{number}·"
+        if factor == "1·":
+            factor = ""
         return f"{everywhere} fix only {names[a]} {sign} {factor}{names[b]}, not the two apart"
     parts = []
     for j in involved:
