@@ -12,6 +12,7 @@ measurements together, and the range is then called worst-case.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from itertools import product
 
@@ -79,11 +80,43 @@ def coefficient_range(
     return low, high
 
 
-def guaranteed(predictor: Predictor, data: Measurements, alpha: float, scale2: float) -> list[Interval]:
-    """The range of each constant; with a note (and no range) where it cannot be had."""
+@dataclass(frozen=True, slots=True, eq=False)
+class Cleared:
+    """A law with its denominator cleared, as arrays (see `ratelaw.cleared`).
+
+    Attributes
+    ----------
+    shapes : conditions (N, m) -> functions of the conditions in numerator (N, a) and denominator
+        (N, b), and the known numerator (N, 1) or (N, 0)
+    power : of the denominator
+    exponents : shape (a + b, p) of the constants in each coefficient; factor : shape (a + b,)
+    """
+
+    shapes: Callable[[np.ndarray], tuple[np.ndarray, np.ndarray, np.ndarray]]
+    power: int
+    exponents: np.ndarray
+    factor: np.ndarray
+
+
+WORST_CASE = "worst-case: errors given as standard deviations, all bounded together"
+
+
+def guaranteed(
+    predictor: Predictor,
+    data: Measurements,
+    alpha: float,
+    scale2: float,
+    cleared: Cleared | None = None,
+) -> list[Interval]:
+    """The range of each constant; with a note (and no range) where it cannot be had.
+
+    A law that is not linear in its constants needs ``cleared``; its range is then an outer bound,
+    since the rate enters with several coefficients.
+    """
     p = len(predictor.names)
+    linear = bool(predictor.linear.all())
     reason = ""
-    if not bool(predictor.linear.all()):
+    if not linear and cleared is None:
         reason = "not computed: the law is not linear in its constants"
     elif (predictor.lower < 0).any():
         reason = "not computed: a constant may be negative"
@@ -94,18 +127,33 @@ def guaranteed(predictor: Predictor, data: Measurements, alpha: float, scale2: f
     if reason:
         return [nothing("guaranteed", reason) for _ in range(p)]
     half = bounds_of(data, alpha, scale2)
-    low, high = coefficient_range(predictor, data, half.conditions)
-    return _ranges(predictor, data, half, low, high)
+    words = "" if half.hard else WORST_CASE
+    if linear:
+        low, high = coefficient_range(predictor, data, half.conditions)
+        ends = _ends(
+            low, data.y + half.y, high, data.y - half.y, predictor.lower, predictor.upper
+        )
+        return [_interval(e, words) for e in ends]
+    assert cleared is not None
+    return _from_cleared(cleared, predictor, data, half, words)
 
 
-def _ranges(
-    predictor: Predictor, data: Measurements, half: Bounds, low: np.ndarray, high: np.ndarray
-) -> list[Interval]:
+End = tuple[Side, Side]
+
+
+def _ends(
+    low: np.ndarray,
+    at_most: np.ndarray,
+    high: np.ndarray,
+    at_least: np.ndarray,
+    lower: np.ndarray,
+    upper: np.ndarray,
+) -> list[End]:
+    """Ends of each x >= 0 with low x <= at_most and high x >= at_least, by linear programs."""
     from scipy.optimize import linprog
 
-    p = len(predictor.names)
     a = np.vstack([low, -high])
-    b = np.concatenate([data.y + half.y, -(data.y - half.y)])
+    b = np.concatenate([at_most, -at_least])
     # rows and columns scaled: the program sees numbers near one
     col = np.max(np.abs(a), axis=0)
     col = np.where(col > 0, col, 1.0)
@@ -115,32 +163,144 @@ def _ranges(
     a, b = a / row[:, None], b / row
     box = [
         (lo * c, None if np.isinf(hi) else hi * c)
-        for lo, hi, c in zip(predictor.lower, predictor.upper, col, strict=True)
+        for lo, hi, c in zip(lower, upper, col, strict=True)
     ]
-    words = "" if half.hard else "worst-case: errors given as standard deviations, all bounded together"
     out = []
-    for j in range(p):
+    for j in range(a.shape[1]):
         ends = []
         for sign in (1.0, -1.0):
-            cost = np.zeros(p)
+            cost = np.zeros(a.shape[1])
             cost[j] = sign
             res = linprog(cost, A_ub=a, b_ub=b, bounds=box, method="highs")
             if res.status == 0:
                 value = float(res.x[j] / col[j])
-                at = value <= predictor.lower[j] if sign > 0 else value >= predictor.upper[j]
+                at = value <= lower[j] if sign > 0 else value >= upper[j]
                 ends.append(Side(value, BOUND if at else CROSSED))
             elif res.status == 3:
                 ends.append(Side(np.inf if sign < 0 else -np.inf, OPEN))
             else:
                 ends.append(Side(float("nan"), FAILED))
-        note = words
-        empty = any(e.end == FAILED for e in ends)
-        if empty:
-            note = "empty: no value fits every run within its bounds" + (
-                f" ({words})" if words else ""
-            )
-        out.append(Interval("guaranteed", ends[0], ends[1], (), empty, note))
+        out.append((ends[0], ends[1]))
     return out
+
+
+def _interval(ends: End, words: str) -> Interval:
+    empty = any(e.end == FAILED for e in ends)
+    note = words
+    if empty:
+        note = "empty: no value fits every run within its bounds" + (f" ({words})" if words else "")
+    return Interval("guaranteed", ends[0], ends[1], (), empty, note)
+
+
+def _from_cleared(
+    cleared: Cleared, predictor: Predictor, data: Measurements, half: Bounds, words: str
+) -> list[Interval]:
+    """(N/y)^(1/n) = D over the box of all errors; constants from the coefficients."""
+    n = cleared.power
+    y_low, y_high = np.maximum(data.y - half.y, 0.0), data.y + half.y
+    low_n, high_n, low_d, high_d, low_k, high_k = _shape_range(cleared, data, half.conditions)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        if low_k.shape[1]:
+            # sum_j b_j w_j (y/N)^(1/n) = 1
+            low = low_d * (y_low[:, None] / high_k) ** (1.0 / n)
+            high = high_d * (y_high[:, None] / low_k) ** (1.0 / n)
+        else:
+            # coefficients of a^(1/n) are (m/y)^(1/n), of b are -w; their sum is 1
+            low = np.hstack([(low_n / y_high[:, None]) ** (1.0 / n), -high_d])
+            high = np.hstack([(high_n / y_low[:, None]) ** (1.0 / n), -low_d])
+    # A run whose rate or driving force may be zero within its errors cannot be divided by: what it
+    # would demand is left out, which can only make the range wider.
+    sound = (y_high > 0) & (low_n >= 0).all(axis=1) & (low_d >= 0).all(axis=1)
+    sound &= (low_k > 0).all(axis=1)
+    use_low = sound & np.isfinite(low).all(axis=1)
+    use_high = sound & np.isfinite(high).all(axis=1)
+    if not use_low.any() and not use_high.any():
+        why = "not computed: no run has a rate that is above zero within its errors"
+        return [nothing("guaranteed", why) for _ in predictor.names]
+    low = np.where(use_low[:, None], low, 0.0)
+    high = np.where(use_high[:, None], high, 0.0)
+    q = low.shape[1]
+    at_least = np.where(use_high, 1.0, -1.0)
+    ends = _ends(low, np.ones(data.n), high, at_least, np.zeros(q), np.full(q, np.inf))
+    note = "outer bound, by clearing the denominator" + (f"; {words}" if words else "")
+    a = low_n.shape[1]
+    # ends of the coefficients themselves, numeric factors taken off
+    power = np.where(np.arange(q) < a, n, 1)
+    coefficients = [
+        (
+            e[0].value ** power[k] / cleared.factor[k] if e[0].end != FAILED else np.nan,
+            e[1].value ** power[k] / cleared.factor[k] if e[1].end != FAILED else np.nan,
+        )
+        for k, e in enumerate(ends)
+    ]
+    return [
+        _interval(_constant_ends(j, cleared.exponents, coefficients), note)
+        for j in range(len(predictor.names))
+    ]
+
+
+def _shape_range(
+    cleared: Cleared, data: Measurements, half: np.ndarray
+) -> tuple[np.ndarray, ...]:
+    """Smallest and largest functions of the conditions over the corners of the box of errors:
+    numerator, denominator, known numerator, each low then high."""
+    moving = [j for j in range(data.m) if half[:, j].any()]
+    corners = []
+    for signs in product((-1.0, 1.0), repeat=len(moving)):
+        c = data.conditions.copy()
+        for sign, j in zip(signs, moving, strict=True):
+            c[:, j] = np.maximum(c[:, j] + sign * half[:, j], 0.0)
+        corners.append(cleared.shapes(c))
+    out = []
+    for part in zip(*corners, strict=True):
+        out += [np.min(part, axis=0), np.max(part, axis=0)]
+    return tuple(out)
+
+
+def _constant_ends(
+    j: int, exponents: np.ndarray, coefficients: list[tuple[float, float]]
+) -> End:
+    """Ends of constant j as a product of powers of coefficients (interval arithmetic)."""
+    p = exponents.shape[1]
+    target = np.zeros(p)
+    target[j] = 1.0
+    # the fewest coefficients that give the constant: exact where it is one alone
+    w = _powers(exponents, target)
+    if w is None:
+        return Side(float("nan"), FAILED), Side(float("nan"), FAILED)
+    low, high = 1.0, 1.0
+    for k, power in enumerate(w):
+        if abs(power) < 1e-12:
+            continue
+        lo, hi = coefficients[k]
+        if np.isnan(lo) or np.isnan(hi):
+            return Side(float("nan"), FAILED), Side(float("nan"), FAILED)
+        with np.errstate(divide="ignore", over="ignore"):
+            ends = np.array([lo, hi]) ** power
+        low, high = low * float(ends.min()), high * float(ends.max())
+    if np.isnan(high):  # zero times infinity
+        high = float("inf")
+    if np.isnan(low):
+        low = 0.0
+    left = Side(low, BOUND if low <= 0 else CROSSED)
+    right = Side(high, OPEN if np.isinf(high) else CROSSED)
+    return left, right
+
+
+def _powers(exponents: np.ndarray, target: np.ndarray) -> np.ndarray | None:
+    """w with w @ exponents = target, a single row if one does, else by least squares."""
+    q = len(exponents)
+    for k in range(q):
+        row = exponents[k]
+        hit = np.flatnonzero(row)
+        if len(hit) == 1 and target[hit[0]] != 0:
+            w = np.zeros(q)
+            w[k] = 1.0 / row[hit[0]]
+            return w
+    w, *_ = np.linalg.lstsq(exponents.T, target, rcond=None)
+    if np.abs(w @ exponents - target).max() > 1e-9:
+        return None
+    return np.where(np.abs(w) < 1e-9, 0.0, w)
 
 
 def _usable(sensitivities: np.ndarray, width: np.ndarray) -> bool:

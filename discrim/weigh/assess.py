@@ -18,7 +18,7 @@ from discrim.evidence.conditioning import (
 )
 from discrim.evidence.criteria import Criteria, criteria
 from discrim.evidence.curve import Curve
-from discrim.evidence.guaranteed import guaranteed
+from discrim.evidence.guaranteed import Cleared, guaranteed
 from discrim.evidence.intervals import (
     OPEN,
     Interval,
@@ -31,6 +31,8 @@ from discrim.evidence.intervals import (
 from discrim.evidence.rivals import table_key
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.ratelaw.cleared import cleared
+from discrim.ratelaw.compile import CompiledLaw
 from discrim.weigh.bench import Bench, Bound
 
 
@@ -153,6 +155,7 @@ def _intervals(
         one.data,
         1.0 - level,
         one.scale2 if one.data.scale is Scale.ESTIMATED else 1.0,
+        cleared_of(bound),
     )
     out = []
     for j in range(len(bound.names)):
@@ -176,6 +179,39 @@ def _intervals(
             }
         )
     return tuple(out)
+
+
+def cleared_of(bound: Bound) -> Cleared | None:
+    """The law with its denominator cleared, where it is one law for all observations."""
+    if bool(bound.predictor.linear.all()) or len(bound.compiled) != 1:
+        return None
+    if bound.predictor.index is not None:
+        return None
+    law = bound.compiled[0]
+    form = cleared(law.expression, law.constants, law.conditions)
+    if form is None:
+        return None
+    known = () if form.known is None else (form.known,)
+    groups = [
+        [CompiledLaw(e, [], list(law.conditions)) for e in part]
+        for part in (form.numerator, form.denominator, known)
+    ]
+
+    def shapes(conditions: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        n = len(conditions)
+        none = np.zeros((1, 1, 0))
+
+        def columns(part: list[CompiledLaw]) -> np.ndarray:
+            out = np.empty((n, len(part)))
+            for k, f in enumerate(part):
+                out[:, k] = f(
+                    none, conditions, constants=False, conditions_too=False, both=False
+                )[0][0]
+            return out
+
+        return columns(groups[0]), columns(groups[1]), columns(groups[2])
+
+    return Cleared(shapes, form.power, form.exponents, form.factor)
 
 
 def hull(a: Interval, b: Interval) -> Interval:
