@@ -208,9 +208,7 @@ def _participates(
     if margins:
         m = min(margins)
         at_least = "more than 10" if m == float("inf") else f"{m:.2g}"
-        why.append(
-            f"this holds until the condition errors are {at_least} times as large as stated"
-        )
+        why.append(f"this holds until the condition errors are {at_least} times as large as stated")
     below = False
     sentence = f"The rate depends on {subject}."
     if matters_above is not None:
@@ -220,7 +218,9 @@ def _participates(
                 f"The rate depends on {subject}, but by less than the {_percent(matters_above)} "
                 "that matters."
             )
-    return Verdict("participates", sentence, tuple(why), below_what_matters=below, votes=tuple(votes))
+    return Verdict(
+        "participates", sentence, tuple(why), below_what_matters=below, votes=tuple(votes)
+    )
 
 
 def _negligible(

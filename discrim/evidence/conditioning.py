@@ -63,7 +63,9 @@ def conditioning(columns: np.ndarray, names: tuple[str, ...]) -> Conditioning:
         scaled = np.vstack([scaled, np.zeros((p - n, p))])
     if p == 0 or not np.isfinite(scaled).all():
         empty = np.zeros((0, p))
-        return Conditioning(names, float("nan"), float("nan"), np.zeros(0), empty, empty, norms, np.zeros(0))
+        return Conditioning(
+            names, float("nan"), float("nan"), np.zeros(0), empty, empty, norms, np.zeros(0)
+        )
     _, s, vt = np.linalg.svd(scaled, full_matrices=False)
     floor = s[0] * 1e-16
     safe = np.maximum(s, floor)
@@ -129,7 +131,11 @@ def lockstep(
     found = []
     for j in range(p):
         for k in range(j + 1, p):
-            use = (np.abs(g[:, j]) > 0) & (np.abs(g[:, k]) > 0) & np.isfinite(g[:, [j, k]]).all(axis=1)
+            use = (
+                (np.abs(g[:, j]) > 0)
+                & (np.abs(g[:, k]) > 0)
+                & np.isfinite(g[:, [j, k]]).all(axis=1)
+            )
             used_any = (g[:, j] != 0) | (g[:, k] != 0)
             if use.sum() < 2 or use.sum() < used_any.sum():
                 continue

@@ -130,9 +130,7 @@ def guaranteed(
     words = "" if half.hard else WORST_CASE
     if linear:
         low, high = coefficient_range(predictor, data, half.conditions)
-        ends = _ends(
-            low, data.y + half.y, high, data.y - half.y, predictor.lower, predictor.upper
-        )
+        ends = _ends(low, data.y + half.y, high, data.y - half.y, predictor.lower, predictor.upper)
         return [_interval(e, words) for e in ends]
     assert cleared is not None
     return _from_cleared(cleared, predictor, data, half, words)
@@ -239,9 +237,7 @@ def _from_cleared(
     ]
 
 
-def _shape_range(
-    cleared: Cleared, data: Measurements, half: np.ndarray
-) -> tuple[np.ndarray, ...]:
+def _shape_range(cleared: Cleared, data: Measurements, half: np.ndarray) -> tuple[np.ndarray, ...]:
     """Smallest and largest functions of the conditions over the corners of the box of errors:
     numerator, denominator, known numerator, each low then high."""
     moving = [j for j in range(data.m) if half[:, j].any()]
@@ -257,9 +253,7 @@ def _shape_range(
     return tuple(out)
 
 
-def _constant_ends(
-    j: int, exponents: np.ndarray, coefficients: list[tuple[float, float]]
-) -> End:
+def _constant_ends(j: int, exponents: np.ndarray, coefficients: list[tuple[float, float]]) -> End:
     """Ends of constant j as a product of powers of coefficients (interval arithmetic)."""
     p = exponents.shape[1]
     target = np.zeros(p)
@@ -362,13 +356,17 @@ def flip_distance(
     if not np.isfinite(best) or not len(free) or not _usable(g, width):
         return best
     trust = 1.0
-    size = np.maximum(np.abs(theta[free]), 1e-3 * np.where(predictor.scale[free] > 0, predictor.scale[free], 1.0))
+    size = np.maximum(
+        np.abs(theta[free]), 1e-3 * np.where(predictor.scale[free] > 0, predictor.scale[free], 1.0)
+    )
     for _ in range(rounds):
         ok = width > 0
         gw = g[ok][:, free] / width[ok, None] * size
         ew = e[ok] / width[ok]
         k = len(free)
-        a = np.vstack([np.hstack([-gw, -np.ones((len(ew), 1))]), np.hstack([gw, -np.ones((len(ew), 1))])])
+        a = np.vstack(
+            [np.hstack([-gw, -np.ones((len(ew), 1))]), np.hstack([gw, -np.ones((len(ew), 1))])]
+        )
         b = np.concatenate([-ew, ew])
         lo = np.maximum((predictor.lower[free] - theta[free]) / size, -trust)
         hi = np.minimum((predictor.upper[free] - theta[free]) / size, trust)

@@ -318,9 +318,7 @@ def _sets(
     return [_pieces(margins[k] > 0, ends[which == k], lo, hi) for k in range(len(accepts))]
 
 
-def _pieces(
-    yes: np.ndarray, ends: np.ndarray, lo: float, hi: float
-) -> tuple[Interval, Side, Side]:
+def _pieces(yes: np.ndarray, ends: np.ndarray, lo: float, hi: float) -> tuple[Interval, Side, Side]:
     """Pieces and hull from what is accepted on the grid and where that changes."""
     if not yes.any():
         nan = Side(float("nan"), FAILED)

@@ -180,9 +180,7 @@ def participation(
         if np.isfinite(p) and p < alpha and not data.exact_conditions:
             margin = _margin(term, data, full, seed, alpha, two_sided)
         s2 = full.scale2 if data.scale is Scale.ESTIMATED else 1.0
-        flip = flip_distance(
-            term.reduced, data, s2, reduced.theta, fixed=np.zeros(reduced.p, bool)
-        )
+        flip = flip_distance(term.reduced, data, s2, reduced.theta, fixed=np.zeros(reduced.p, bool))
         typical = _typical_flip(term, data, reduced, s2, seed)
         if matters_above is not None and effect is not None and term.kind is not Kind.FACTOR:
             matters = _flip_to_effect(term, problem, full, s2, matters_above)

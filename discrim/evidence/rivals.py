@@ -248,7 +248,15 @@ def apart(a: Fit, b: Fit) -> float:
     return float(np.nanmax(gap))
 
 
-__all__ = ["INSEPARABLE", "NO_INFORMATION", "Against", "Standing", "apart", "directions", "standing"]
+__all__ = [
+    "INSEPARABLE",
+    "NO_INFORMATION",
+    "Against",
+    "Standing",
+    "apart",
+    "directions",
+    "standing",
+]
 
 
 def table_key(data: Measurements) -> str:

@@ -349,16 +349,12 @@ def solve(
                 d[keep],
             )
         r_mat, q_r = _triangle(cur.jacobian, cur.residual)
-        step, gain = bounded_step(
-            r_mat, q_r, d, mu[a], blocked, low - cur.theta, high - cur.theta
-        )
+        step, gain = bounded_step(r_mat, q_r, d, mu[a], blocked, low - cur.theta, high - cur.theta)
         trial_theta = np.clip(cur.theta + step, low, high)
         trial_theta = np.where(hold, cur.theta, trial_theta)
         w = cur.own if problem.moving else None
         there = cur.conditions if problem.following else None
-        trial = problem.evaluate(
-            trial_theta, cur.conditions, w, cur.scale2, a, errors_at=there
-        )
+        trial = problem.evaluate(trial_theta, cur.conditions, w, cur.scale2, a, errors_at=there)
         if separable:
             trial = _solve_linear(problem, trial, hold, low, high, w, a)
         drop = cur.objective - trial.objective

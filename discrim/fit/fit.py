@@ -116,7 +116,9 @@ def _basins(
         return np.zeros((1, 0))
     weight = _rough_weight(data)
     if bool(predictor.linear.all()):
-        first = np.clip(np.where(np.isfinite(predictor.scale), predictor.scale, 1.0)[None], *_box(predictor))
+        first = np.clip(
+            np.where(np.isfinite(predictor.scale), predictor.scale, 1.0)[None], *_box(predictor)
+        )
         return first if near is None else np.vstack([near, first])
     begin = starting_values(predictor, starts, seed)
     if near is not None:
@@ -182,9 +184,7 @@ def of_solution(problem: Problem, solution: Solution) -> Fit:
     q = float(one.objective[0])
     if problem.with_conditions:
         exact = Problem(predictor, data.without_condition_errors())
-        rss = float(
-            solve(exact, theta[None], options=Options(max_iterations=40)).objective[0]
-        )
+        rss = float(solve(exact, theta[None], options=Options(max_iterations=40)).objective[0])
     else:
         rss = q
     scale2 = 1.0

@@ -7,9 +7,7 @@ from typing import Any
 from discrim.study.model import Study
 
 
-def weigh(
-    study: Study, *, seed: int = 1, workers: int = 1, progress: Any = None
-) -> dict[str, Any]:
+def weigh(study: Study, *, seed: int = 1, workers: int = 1, progress: Any = None) -> dict[str, Any]:
     """Derive, fit, compare and answer; the document that is saved as ``evidence.json``.
 
     The answer does not depend on ``workers``.

@@ -97,14 +97,16 @@ def answer(
     """One participation question."""
     level = study.level
     about = question.about
-    is_pathway = any(
-        about == p.name for c in laws for p in c.law.pathways
-    ) or any(about in c.law.steps for c in laws)
+    is_pathway = any(about == p.name for c in laws for p in c.law.pathways) or any(
+        about in c.law.steps for c in laws
+    )
     what = "pathway" if is_pathway and amount(about) not in _all_symbols(laws) else "species"
     per: list[InCandidate] = []
     for i, c in enumerate(laws):
         per.append(
-            _in_candidate(question, study, bench, c, bounds[i], fits[i], i, seed, brief=not stands[i])
+            _in_candidate(
+                question, study, bench, c, bounds[i], fits[i], i, seed, brief=not stands[i]
+            )
         )
     tried = (
         _stand_ins(about, study, bench, laws, bounds, fits, per, stands, seed)
@@ -127,7 +129,9 @@ def answer(
         level=level,
         matters_above=question.matters_above,
         n_runs=bench.measurements.n,
-        n_constants=max((len(b.names) for b, ok in zip(bounds, stands, strict=True) if ok), default=0),
+        n_constants=max(
+            (len(b.names) for b, ok in zip(bounds, stands, strict=True) if ok), default=0
+        ),
         detectable=max(detect, default=float("nan")),
         is_reactant=_is_reactant(about, laws),
     )
@@ -236,9 +240,7 @@ def _term(
     return Term(kind, bound.predictor, reduced.predictor, psi, vanish, knocked, points, labels)
 
 
-def _knocked(
-    study: Study, bench: Bench, c: CandidateLaw, bound: Bound, ko: KnockOut
-) -> KnockedOut:
+def _knocked(study: Study, bench: Bench, c: CandidateLaw, bound: Bound, ko: KnockOut) -> KnockedOut:
     """Rates of the first response with and without the term."""
     reduced_law = replace(c.law, rate=ko.rate, production=ko.production)
     column = bench.responses[0]
@@ -257,17 +259,12 @@ def _gross(e: Any) -> Any:
     return sympy.Integer(e) if isinstance(e, int) else e
 
 
-def _points(
-    question: Question, study: Study, bench: Bench
-) -> tuple[np.ndarray, tuple[str, ...]]:
+def _points(question: Question, study: Study, bench: Bench) -> tuple[np.ndarray, tuple[str, ...]]:
     """Named conditions: those asked for, else each distinct run as printed."""
     table = bench.measurements.conditions
     if question.at:
         row = np.array(
-            [
-                np.exp(np.log(x[x > 0]).mean()) if (x > 0).any() else x.mean()
-                for x in table.T
-            ]
+            [np.exp(np.log(x[x > 0]).mean()) if (x > 0).any() else x.mean() for x in table.T]
         )
         for species, value in question.at.items():
             symbol = amount(species)
@@ -354,9 +351,7 @@ def _stand_ins(
         factor = float(np.median(values[values > 0]) / np.median(x[x > 0]))
         swapped = _swapped(laws[lead.index].law, about, symbol_expr * sympy.Float(factor, 17))
         extra = [s for s in symbols if s not in bench.symbols]
-        if all(s in used_here for s in symbols) and _already(
-            swapped, laws[lead.index].law
-        ):
+        if all(s in used_here for s in symbols) and _already(swapped, laws[lead.index].law):
             continue
         here = build(study, [e for c in laws for e in c.bound], extra=[*bench.symbols, *extra])
         try:
@@ -474,8 +469,6 @@ def _already(a: RateLaw, b: RateLaw) -> bool:
     return bool(a.rate == b.rate)
 
 
-def _same_errors(
-    new: Measurements, own: Measurements, here: Bench, bench: Bench
-) -> Measurements:
+def _same_errors(new: Measurements, own: Measurements, here: Bench, bench: Bench) -> Measurements:
     """The wider table, its observations with the scale that the original fit had."""
     return replace(new, scale=own.scale, scale_df=own.scale_df)

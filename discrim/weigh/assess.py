@@ -204,9 +204,9 @@ def cleared_of(bound: Bound) -> Cleared | None:
         def columns(part: list[CompiledLaw]) -> np.ndarray:
             out = np.empty((n, len(part)))
             for k, f in enumerate(part):
-                out[:, k] = f(
-                    none, conditions, constants=False, conditions_too=False, both=False
-                )[0][0]
+                out[:, k] = f(none, conditions, constants=False, conditions_too=False, both=False)[
+                    0
+                ][0]
             return out
 
         return columns(groups[0]), columns(groups[1]), columns(groups[2])

@@ -110,8 +110,10 @@ def observed_expression(column: Column, law: RateLaw, study: Study) -> Any:
     else:
         expr = -made_rate
         if column.role is Role.K_OBS_OF:
-            expr = sympy.cancel(expr / amount(about)) if expr.is_rational_function() else (
-                expr / amount(about)
+            expr = (
+                sympy.cancel(expr / amount(about))
+                if expr.is_rational_function()
+                else (expr / amount(about))
             )
     return expr
 
@@ -342,7 +344,9 @@ def bind(
     expressions = [fixed_put_in(e, study) for e in expressions]
     in_use = set().union(*(e.free_symbols for e in expressions))
     constants = tuple(
-        c for c in _all_constants(law, expressions) if c.symbol in in_use and c.name not in bench.known
+        c
+        for c in _all_constants(law, expressions)
+        if c.symbol in in_use and c.name not in bench.known
     )
     names, column_of = _grouped(constants, bench)
     compiled = tuple(
@@ -422,12 +426,7 @@ def _all_constants(law: RateLaw, expressions: Sequence[Any]) -> tuple[Constant, 
     """The law's constants, and any that came in with derived formulas."""
     have = {c.symbol for c in law.constants}
     new = sorted(
-        {
-            s
-            for e in expressions
-            for s in e.free_symbols
-            if s not in have and not _is_condition(s)
-        },
+        {s for e in expressions for s in e.free_symbols if s not in have and not _is_condition(s)},
         key=lambda s: s.name,
     )
     return law.constants + tuple(
@@ -441,9 +440,7 @@ def _typical(x: np.ndarray) -> float:
     return float(np.exp(np.log(x).mean())) if len(x) else 1.0
 
 
-def _grouped(
-    constants: Sequence[Constant], bench: Bench
-) -> tuple[tuple[str, ...], np.ndarray]:
+def _grouped(constants: Sequence[Constant], bench: Bench) -> tuple[tuple[str, ...], np.ndarray]:
     """Free constants: one for each law constant, or one for each label of its ``per`` column."""
     n = len(bench.runs)
     names: list[str] = []

@@ -143,9 +143,7 @@ def _weights(data: Any, values: np.ndarray, by_conditions: np.ndarray) -> np.nda
     return 1.0 / np.sqrt(np.where(var > 0, var, 1.0))
 
 
-def _decides(
-    about: str, c: Any, b: Bound, bench: Bench, columns: np.ndarray
-) -> tuple[str, bool]:
+def _decides(about: str, c: Any, b: Bound, bench: Bench, columns: np.ndarray) -> tuple[str, bool]:
     """Whether the term of a species is outside lockstep with the rest of the law."""
     from discrim.evidence.score import basis, without
     from discrim.verdict import CONDITIONING_FRACTION, NOTHING_APART

@@ -265,7 +265,9 @@ def _candidate(w: Weighed, i: int) -> dict[str, Any]:
             "name": law.name,
             "note": w.laws[i].candidate.note,
             "same_law_as": [
-                w.laws[j].law.name for j in range(len(w.laws)) if (min(i, j), max(i, j)) in w.relations.same
+                w.laws[j].law.name
+                for j in range(len(w.laws))
+                if (min(i, j), max(i, j)) in w.relations.same
             ],
             "status": fit.status.value,
             "n_constants": len(bound.names),
@@ -290,15 +292,15 @@ def _candidate(w: Weighed, i: int) -> dict[str, Any]:
             "condition_number": number(a.conditioning.condition_number),
             "digits_lost": number(a.conditioning.digits_lost),
             "condition_indices": [number(x) for x in a.conditioning.indices],
-            "variance_proportions": [[number(x) for x in row] for row in a.conditioning.proportions],
+            "variance_proportions": [
+                [number(x) for x in row] for row in a.conditioning.proportions
+            ],
             "correlations": {"names": list(bound.names), "matrix": _correlations(fit)},
             "trade_offs": [
                 {
                     "singular_value": number(t.singular_value),
                     "words": trade_off_words(bound, t, fit.theta),
-                    "direction": {
-                        n: number(x) for n, x in zip(bound.names, t.change, strict=True)
-                    },
+                    "direction": {n: number(x) for n, x in zip(bound.names, t.change, strict=True)},
                 }
                 for t in a.trade_offs
             ],
@@ -309,9 +311,7 @@ def _candidate(w: Weighed, i: int) -> dict[str, Any]:
             "outcome": "stands" if w.stands[i] else "rejected",
             "p_joint": number(s.p_joint),
             "inseparable_from": [w.laws[j].law.name for j in w.inseparable[i]],
-            "no_better_than": None
-            if w.no_better[i] is None
-            else w.laws[w.no_better[i]].law.name,  # type: ignore[index]
+            "no_better_than": None if w.no_better[i] is None else w.laws[w.no_better[i]].law.name,  # type: ignore[index]
             "reasons": _reasons(w, i),
         }
     )
@@ -407,9 +407,9 @@ def _fitted(w: Weighed, i: int) -> list[dict[str, Any]]:
     bench, fit = w.bench, w.assessments[i].fit
     data = bench.measurements
     # predictions at the printed conditions are what a reader compares with the table
-    at_printed = w.bounds[i].predictor.predict(
-        fit.theta[None], data.conditions, constants=False
-    ).values[0]
+    at_printed = (
+        w.bounds[i].predictor.predict(fit.theta[None], data.conditions, constants=False).values[0]
+    )
     var = fit.variances
     if fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions:
         var = var * fit.scale2
@@ -463,7 +463,11 @@ def _pathways(w: Weighed, i: int) -> list[dict[str, Any]]:
         compiled = CompiledLaw(e, symbols, list(bench.symbols))
         theta = fit.theta[None][:, bound.column_of[rows]]
         value = compiled(
-            theta, bench.measurements.conditions[rows], constants=False, conditions_too=False, both=False
+            theta,
+            bench.measurements.conditions[rows],
+            constants=False,
+            conditions_too=False,
+            both=False,
         )[0][0]
         rates.append(value)
     total = np.sum(np.abs(rates), axis=0)
@@ -572,9 +576,7 @@ def _standing_why(w: Weighed, yes: list[str]) -> list[str]:
                 out.append(f"these runs cannot separate {listed}")
     for i, nb in enumerate(w.no_better):
         if nb is not None and i in inside:
-            out.append(
-                f"“{names[i]}” stands, but no better than its special case “{names[nb]}”"
-            )
+            out.append(f"“{names[i]}” stands, but no better than its special case “{names[nb]}”")
     return out
 
 
@@ -744,7 +746,9 @@ def _by_candidate(w: Weighed, a: Answer, k: InCandidate) -> dict[str, Any]:
 
 def _not_checked(w: Weighed) -> list[str]:
     out = [
-        f"{name}: not checked ({words})" for name, words in CONTROLS.items() if name not in w.study.controls
+        f"{name}: not checked ({words})"
+        for name, words in CONTROLS.items()
+        if name not in w.study.controls
     ]
     for c in w.study.runs.columns:
         if c.role is Role.SPECIES and c.basis is ErrorBasis.ASSUMED:

@@ -31,7 +31,11 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
         zero = [n for n, b in zip(a.bound.names, a.fit.at_bound, strict=True) if b]
         if zero:
             out.append(
-                ("note", where, f"{', '.join(zero)} ended on a bound; intervals are one-sided there")
+                (
+                    "note",
+                    where,
+                    f"{', '.join(zero)} ended on a bound; intervals are one-sided there",
+                )
             )
         out += _intervals(w, where, c, a)
         if a.fit.degrees_of_freedom <= 0:
@@ -43,9 +47,7 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
                 )
             )
     out += _columns(w)
-    out += [
-        ("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused
-    ]
+    out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
     return tuple(dict.fromkeys(out))
 

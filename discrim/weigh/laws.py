@@ -70,7 +70,9 @@ def _per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) ->
     if not catalysts:
         return law
     for column in study.runs.columns:
-        if column.role is Role.CATALYST or (column.role is Role.TOTAL and column.about in catalysts):
+        if column.role is Role.CATALYST or (
+            column.role is Role.TOTAL and column.about in catalysts
+        ):
             times = quantity(column.name)
             break
     else:

@@ -61,7 +61,9 @@ class Weighed:
     seed: int
 
 
-def prepare(study: Study, *, planned: bool = False) -> tuple[list[CandidateLaw], Bench, list[Bound]]:
+def prepare(
+    study: Study, *, planned: bool = False
+) -> tuple[list[CandidateLaw], Bench, list[Bound]]:
     """Laws derived and checked, and bound to the runs."""
     laws = laws_of(study)
     for c in laws:
@@ -140,9 +142,7 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
     asked = [q for q in study.questions if q.asks == "participates"]
     for k, q in enumerate(asked):
         say("answering", k, len(asked))
-        answers.append(
-            answer(q, study, bench, laws, bounds, fits, stands, seed=seed)
-        )
+        answers.append(answer(q, study, bench, laws, bounds, fits, stands, seed=seed))
     from discrim.weigh.findings import findings_of
 
     weighed = Weighed(
@@ -230,9 +230,7 @@ def _common_scale(
         return first, [[f[o] for o in origins] for f in fits]
     good = [f for f in fits if f[origins[0]].ok] or list(fits)
     most = max(f[origins[0]].p for f in good)
-    general = min(
-        (f[origins[0]] for f in good if f[origins[0]].p == most), key=lambda f: f.scale2
-    )
+    general = min((f[origins[0]] for f in good if f[origins[0]].p == most), key=lambda f: f.scale2)
     df = max(general.degrees_of_freedom, 1)
     typical = float(np.var(data.y)) * 1e-12
     sd = float(np.sqrt(max(general.scale2, typical, 1e-300)))
@@ -247,9 +245,7 @@ def _common_scale(
         row = []
         for o in origins:
             near = f[o].theta[None] if f[o].ok else None
-            row.append(
-                fit(b.predictor, common.as_origin(o), seed=seed, starts=4, near=near)
-            )
+            row.append(fit(b.predictor, common.as_origin(o), seed=seed, starts=4, near=near))
         out.append(row)
     return common.as_origin(origins[0]), out
 

@@ -75,7 +75,9 @@ def _free(bound: Bound) -> list[Constant]:
 def _symbol(base: Constant, name: str) -> Any:
     if name == base.name:
         return base.symbol
-    return sympy.Symbol(name, nonnegative=True) if base.lower >= 0 else sympy.Symbol(name, real=True)
+    return (
+        sympy.Symbol(name, nonnegative=True) if base.lower >= 0 else sympy.Symbol(name, real=True)
+    )
 
 
 def _at_row(bound: Bound, i: int, study: Study) -> Any:

@@ -66,9 +66,7 @@ def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
         up = "raising" if t.change[j] > 0 else "lowering"
         size = abs(t.change[j]) / t.singular_value if t.singular_value > 0 else abs(t.change[j])
         parts.append(f"{up} {names[j]} by {size:.2g}{(' ' + units[j]) if units[j] else ''}")
-    return (
-        f"{', '.join(parts)} together changes the predicted rates by no more than one standard error in all"
-    )
+    return f"{', '.join(parts)} together changes the predicted rates by no more than one standard error in all"
 
 
 def _ratio_unit(a: str, b: str) -> str:
@@ -131,5 +129,7 @@ def references(w: Weighed) -> list[dict[str, str]]:
         ("Rounding of results", "JCGM 100:2008 (GUM), section 7.2.6"),
     ]
     if w.common.scale is Scale.STATED:
-        out.insert(2, ("Guard by the overall fit", "Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46"))
+        out.insert(
+            2, ("Guard by the overall fit", "Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46")
+        )
     return [{"method": m, "source": s} for m, s in out]

@@ -51,7 +51,9 @@ def compare(repeats: int = 5, seed: int = 1) -> dict[str, float]:
         names=tuple(c.name for c in law.constants),
         lower=np.zeros(p),
         upper=np.full(p, np.inf),
-        linear=np.isin([c.name for c in law.constants], linear_constants([law.rate], law.constants)),
+        linear=np.isin(
+            [c.name for c in law.constants], linear_constants([law.rate], law.constants)
+        ),
         scale=np.ones(p),
         starts=np.zeros((0, p)),
     )
@@ -118,7 +120,9 @@ def ratios(tables: int = 9) -> dict[str, float]:
         "times faster than plain": float(np.median([r["plain"] / r["discrim"] for r in rows])),
         "times faster than expert": float(np.median([r["expert"] / r["discrim"] for r in rows])),
         "best optimum reached": float(
-            np.mean([r["discrim objective"] <= b * (1 + 1e-8) for r, b in zip(rows, best, strict=True)])
+            np.mean(
+                [r["discrim objective"] <= b * (1 + 1e-8) for r, b in zip(rows, best, strict=True)]
+            )
         ),
     }
 

@@ -32,7 +32,9 @@ def test_form(law, power, terms):
     assert (form.power, (len(form.numerator), len(form.denominator))) == (power, terms)
     # put together again at random values the law comes back
     rng = np.random.default_rng(1)
-    values = {s: float(v) for s, v in zip((K, KA, KB, A, B, C), rng.uniform(0.5, 2, 6), strict=True)}
+    values = {
+        s: float(v) for s, v in zip((K, KA, KB, A, B, C), rng.uniform(0.5, 2, 6), strict=True)
+    }
     logs = np.log([values[K], values[KA], values[KB]])
     coefficients = form.factor * np.exp(form.exponents @ logs)
     top = sum(
