@@ -1,7 +1,8 @@
 """From evidence to verdicts. Every threshold that is an opinion stands in this file.
 
 Nothing here computes statistics: it reads facts from `evidence` and says what follows, with the
-numbers and thresholds in the reasons, so that a chemist can dispute a threshold by reading one file.
+numbers and thresholds in the reasons, so that a chemist can dispute a threshold by reading one
+file.
 """
 
 from __future__ import annotations
@@ -10,7 +11,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
-# The stated errors of the conditions must be able to grow by this factor before "participates" falls.
+# The stated errors of the conditions must be able to grow by this factor before "participates"
+# falls.
 ERROR_MARGIN = 1.5
 # Where condition errors were only assumed, the conditions must vary on their own by at least this
 # fraction (ten times the assumed 1 %) for "participates".
@@ -29,8 +31,8 @@ Outcome = Literal["participates", "negligible", "undecided"]
 class Reading:
     """What one candidate says of a species or pathway, errors read one way ("set" or "measured").
 
-    ``p``: that it is absent (one-sided unless ``two_sided``); ``bound``: one-sided bound of the size
-    of its effect; ``information``: fraction of the sensitivity outside lockstep.
+    ``p``: that it is absent (one-sided unless ``two_sided``); ``bound``: one-sided bound of the
+    size of its effect; ``information``: fraction of the sensitivity outside lockstep.
     """
 
     origin: str
@@ -156,7 +158,7 @@ def judge_participation(
         votes.append((c.name, v))
         if c.stands:
             stops += [x for x in s if x not in stops]
-    said = {name: v for name, v in votes}
+    said = dict(votes)
     subject = about if what == "species" else f"the pathway “{about}”"
     if not standing:
         return Verdict(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+
 from discrim.evidence.distributions import chi2_upper, f_upper
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale

@@ -1,9 +1,9 @@
 """How well the runs condition a law: before any fit is believed.
 
-Everything is computed on the weighted sensitivities with columns of unit length, from singular values.
-Condition indices and variance-decomposition proportions follow Belsley, Kuh & Welsch (Regression
-Diagnostics, Wiley 1980, ch. 3); lockstep is judged on the terms of the law against the stated errors
-of the conditions.
+Everything is computed on the weighted sensitivities with columns of unit length, from singular
+values. Condition indices and variance-decomposition proportions follow Belsley, Kuh & Welsch
+(Regression Diagnostics, Wiley 1980, ch. 3); lockstep is judged on the terms of the law against the
+stated errors of the conditions.
 """
 
 from __future__ import annotations
@@ -123,7 +123,8 @@ def lockstep(
     p = len(theta)
     conditions = data.conditions
     pred = predictor.predict(theta[None], conditions, conditions_too=True, both=True)
-    assert pred.by_constants is not None and pred.by_both is not None
+    assert pred.by_constants is not None
+    assert pred.by_both is not None
     g = pred.by_constants[0]
     largest = np.max(np.abs(np.where(np.isfinite(g), g, 0.0)), axis=0)
     g = np.where(np.abs(g) <= NO_SENSITIVITY * largest, 0.0, g)

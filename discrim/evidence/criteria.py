@@ -1,10 +1,11 @@
 """Criteria for rivals on one and the same table: they rank, they never reject.
 
-With stated errors -2 ln L = Q + a constant common to all candidates (ln|V| is left out where V depends
-on the law: it rewards laws that are insensitive to noisy conditions). With an unknown scale and exact
-conditions -2 ln L = N (ln(2 pi RSS/N) + 1), the variance counted as one constant. AIC: Akaike, IEEE Trans.
-Autom. Control 19 (1974) 716; AICc: Hurvich & Tsai, Biometrika 76 (1989) 297; BIC: Schwarz, Ann. Stat. 6
-(1978) 461; weights: Burnham & Anderson, Model Selection and Multimodel Inference, Springer 2002.
+With stated errors -2 ln L = Q + a constant common to all candidates (ln|V| is left out where V
+depends on the law: it rewards laws that are insensitive to noisy conditions). With an unknown
+scale and exact conditions -2 ln L = N (ln(2 pi RSS/N) + 1), the variance counted as one constant.
+AIC: Akaike, IEEE Trans. Autom. Control 19 (1974) 716; AICc: Hurvich & Tsai, Biometrika 76 (1989)
+297; BIC: Schwarz, Ann. Stat. 6 (1978) 461; weights: Burnham & Anderson, Model Selection and
+Multimodel Inference, Springer 2002.
 """
 
 from __future__ import annotations

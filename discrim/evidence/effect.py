@@ -32,8 +32,8 @@ def t_of(effect: np.ndarray | float) -> np.ndarray:
         return np.where(e >= 0, -np.log1p(-np.abs(e)), np.log1p(-np.abs(e)))
 
 
-# |T| beyond which the sensitivities to the effect and to the rest agree to rounding: the score would see
-# nothing there and accept every value. It is an effect of 1 - 1e-7.
+# |T| beyond which the sensitivities to the effect and to the rest agree to rounding: the score
+# would see nothing there and accept every value. It is an effect of 1 - 1e-7.
 FARTHEST = 16.0
 
 

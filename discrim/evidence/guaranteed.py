@@ -1,12 +1,12 @@
 """Guaranteed ranges: every value of a constant that is consistent with hard bounds on all errors.
 
-For a law linear in constants theta >= 0 whose coefficients C are known to lie within [C_lo, C_hi] and
-observations within [y_lo, y_hi], the consistent theta are the polytope
+For a law linear in constants theta >= 0 whose coefficients C are known to lie within [C_lo, C_hi]
+and observations within [y_lo, y_hi], the consistent theta are the polytope
 
     C_lo theta <= y_hi,   C_hi theta >= y_lo
 
-(Oettli & Prager, Numer. Math. 6 (1964) 405), and each end of a range is a linear program. Digits and
-limits are hard bounds; a standard deviation becomes one at +- Phi^-1(1 - alpha/(2 M)) for M
+(Oettli & Prager, Numer. Math. 6 (1964) 405), and each end of a range is a linear program. Digits
+and limits are hard bounds; a standard deviation becomes one at +- Phi^-1(1 - alpha/(2 M)) for M
 measurements together, and the range is then called worst-case.
 """
 
@@ -17,6 +17,7 @@ from dataclasses import dataclass
 from itertools import product
 
 import numpy as np
+
 from discrim.evidence.distributions import normal_quantile
 from discrim.evidence.intervals import BOUND, CROSSED, FAILED, OPEN, Interval, Side, nothing
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale
@@ -314,13 +315,13 @@ def flip_distance(
     """Smallest m such that, each measurement moved by at most m stated errors, the law fits exactly.
 
     min over theta of max_i |e_i| / (dy_i + sum_j |F_ij| dc_ij), by a sequence of linear programs
-    with a shrinking trust region. ``fixed``, shape (p,), holds constants (at their value in ``theta``).
-    Errors are the stated ones: an sd counts as one, a hard bound as one. Returns nan when nothing is
-    stated.
+    with a shrinking trust region. ``fixed``, shape (p,), holds constants (at their value in
+    ``theta``). Errors are the stated ones: an sd counts as one, a hard bound as one. Returns nan
+    when nothing is stated.
     """
     from scipy.optimize import linprog
 
-    n, p = data.n, len(theta)
+    n, _p = data.n, len(theta)
     dy = np.zeros(n)
     dc = np.zeros((n, data.m))
     for s in data.sources:

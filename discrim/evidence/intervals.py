@@ -1,8 +1,10 @@
 """Intervals for one constant, side by side, each end saying how it was found.
 
 linearised : Wald, estimate -+ t s.e. (what most programs print)
-profile : values whose restricted objective is not too far above the minimum (Bates & Watts 1988, ch. 6)
-reconciled : values that the reconciled score test accepts; a two-sided set with a guard, because the
+profile : values whose restricted objective is not too far above the minimum (Bates & Watts 1988,
+ch. 6)
+reconciled : values that the reconciled score test accepts; a two-sided set with a guard, because
+the
     score alone also vanishes far from the optimum (evidence: `score`)
 guaranteed : see :mod:`discrim.evidence.guaranteed`
 """
@@ -71,7 +73,7 @@ def standard_errors(fit: Fit) -> np.ndarray:
     use = norms > 0
     if not use.any() or not np.isfinite(jac).all():
         return out
-    u, s, vt = np.linalg.svd(jac[:, use] / norms[use], full_matrices=False)
+    _u, s, vt = np.linalg.svd(jac[:, use] / norms[use], full_matrices=False)
     if n < use.sum():
         return out
     tiny = s <= 1e-14 * s[0]
@@ -165,9 +167,9 @@ def along(
     base = min(free, lowest)
     tests = _Acceptance(fit, base, level, lo)
 
-    accepts = (tests.reconciled, tests.not_too_high, tests.not_too_low)
+    accepts: list[Accept] = [tests.reconciled, tests.not_too_high, tests.not_too_low]
     if with_profile:
-        accepts = (*accepts, tests.profile)
+        accepts.append(tests.profile)
     (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi)
     profile = rest[0][0] if rest else nothing("profile", "not asked for")
     return Along(
@@ -223,8 +225,8 @@ class _Acceptance:
         self.df = df
         n, p = fit.n, fit.p
         # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
-        # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960) 41),
-        # which never binds for a linear law, so nothing is spent on it. Else void.
+        # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960)
+        # 41), which never binds for a linear law, so nothing is spent on it. Else void.
         self.guard, self.unit, spend = np.inf, 1.0, 0.0
         if fit.data.scale is Scale.STATED:
             self.guard, spend = chi2_quantile_upper(GUARD, max(n - (p - 1), 1)), GUARD

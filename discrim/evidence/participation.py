@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 from enum import Enum
 
 import numpy as np
+
 from discrim.evidence.curve import Curve
 from discrim.evidence.distributions import (
     chi2_quantile_upper,
@@ -97,9 +98,11 @@ class Participation:
         it cannot be tested; p : its p-value, one-sided unless ``two_sided``
     information : fraction of the sensitivity to the term that is not in lockstep with the rest
     detectable : effect that the test would have found with probability 0.8; nan if not known
-    error_margin : factor on all condition errors at which the test stops rejecting; inf when it still
+    error_margin : factor on all condition errors at which the test stops rejecting; inf when it
+    still
         rejects at the largest factor tried, nan when it never rejected or conditions are exact
-    flip, flip_typical : smallest m such that all measurements moved by m stated errors are reproduced
+    flip, flip_typical : smallest m such that all measurements moved by m stated errors are
+    reproduced
         exactly without the term; its median when the term is absent
     flip_matters : the same for an effect of ``matters_above``
     """
@@ -234,8 +237,9 @@ def _by_objective(
 
     The score test holds its level everywhere but can lose all power far from the truth: the
     conditions are then reconciled to where the sensitivities say nothing. The objective of the
-    restricted fit (Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46) does not, and is the guard of the
-    reconciled interval too. Used at its own level of 0.01 only, which is all it can add to the size.
+    restricted fit (Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46) does not, and is the guard of
+    the reconciled interval too. Used at its own level of 0.01 only, which is all it can add to the
+    size.
     """
     known = problem.data.scale is Scale.STATED and problem.with_conditions
     if term.kind not in (Kind.ZERO, Kind.ORDER) or not known or reduced.degrees_of_freedom < 1:

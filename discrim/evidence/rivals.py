@@ -1,11 +1,11 @@
 """Which rivals stand: a confidence set of laws.
 
-For each candidate i taken as the truth: it is rejected when its Q rejects it at alpha/5 (stated scale
-only), or when the largest |z_ij| over the other candidates j exceeds its joint quantile at 4 alpha/5.
-z_ij is the score of i along what j would say: j is fitted to the *predictions* of i at i's reconciled
-conditions, not to the data (Fisher & McAleer, J. Econometrics 16 (1981) 103), and the difference of
-the two predictions is the direction tested. For a rival that contains i that difference is nothing;
-its extra sensitivities are the directions then.
+For each candidate i taken as the truth: it is rejected when its Q rejects it at alpha/5 (stated
+scale only), or when the largest |z_ij| over the other candidates j exceeds its joint quantile at 4
+alpha/5. z_ij is the score of i along what j would say: j is fitted to the *predictions* of i at i's
+reconciled conditions, not to the data (Fisher & McAleer, J. Econometrics 16 (1981) 103), and the
+difference of the two predictions is the direction tested. For a rival that contains i that
+difference is nothing; its extra sensitivities are the directions then.
 
 The true law, if listed, stands with probability at least 1 - alpha, whatever the number of rivals.
 """
@@ -16,6 +16,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
+
 from discrim.evidence.distributions import chi2_upper, t_upper
 from discrim.evidence.score import NO_INFORMATION, basis, without
 from discrim.fit.covariance import Whitener
@@ -35,8 +36,8 @@ INSEPARABLE = 1.0
 class Against:
     """Candidate i as the truth, tried in the direction of rival ``rival``.
 
-    ``z`` equivalent normal; ``length`` whitened length of the direction left after i's own constants:
-    how many standard errors the two laws are apart at i's optimum.
+    ``z`` equivalent normal; ``length`` whitened length of the direction left after i's own
+    constants: how many standard errors the two laws are apart at i's optimum.
     """
 
     rival: int
@@ -49,8 +50,8 @@ class Against:
 class Standing:
     """Whether one candidate stands.
 
-    ``p_fit`` of Q (None: scale not stated); ``largest`` |z| with the rival it came from; ``p_joint``
-    chance of a larger |z| in any of the directions; ``against`` all directions.
+    ``p_fit`` of Q (None: scale not stated); ``largest`` |z| with the rival it came from;
+    ``p_joint`` chance of a larger |z| in any of the directions; ``against`` all directions.
     """
 
     stands: bool

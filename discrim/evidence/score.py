@@ -18,6 +18,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+
 from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
 from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
@@ -158,7 +159,8 @@ def _unknown_scale(
         with np.errstate(divide="ignore", invalid="ignore"):
             return np.where(size > 0, s / size, 0.0)
     pred = problem.predictor.predict(sol.theta, sol.conditions, conditions_too=True, both=True)
-    assert pred.by_conditions is not None and pred.by_both is not None
+    assert pred.by_conditions is not None
+    assert pred.by_both is not None
     dv = np.zeros((*v.shape, p))
     for src in data.of_conditions:
         sd2 = src.sd(sol.conditions[..., src.target]) ** 2
@@ -167,7 +169,8 @@ def _unknown_scale(
     d = -0.5 * np.einsum("snp,sn->sp", dv, 1.0 / v**2)
     g_l = np.delete(sol.jacobian, psi, axis=2)
     d_l = np.delete(d, psi, axis=1)
-    # regression of the column of psi on the nuisance columns, by the pseudo-inverse of scaled columns
+    # regression of the column of psi on the nuisance columns, by the pseudo-inverse of scaled
+    # columns
     norms = np.sqrt(np.einsum("snk,snk->sk", g_l, g_l))
     norms = np.where(norms > 0, norms, 1.0)
     beta = np.einsum(

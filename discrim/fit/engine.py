@@ -4,12 +4,12 @@ Levenberg-Marquardt with column scaling (Moré, in Lecture Notes in Mathematics 
 p. 105) and the damping schedule of Nielsen (IMM report 1999-05, Technical University of Denmark),
 steps by QR, bounds by an active set, so that a constant reaches zero exactly and can leave it.
 
-Errors of *measured* conditions are reconciled inside each evaluation (Britt & Luecke, Technometrics 15
-(1973) 233): with e = y - f(c^) - F (c - c^) and V = W + F S_c F', the conditions move to
-c^ = c + S_c F' V^-1 e. At the fixed point G' V^-1 e is exactly minus half the gradient of the profiled
-objective, so the step needs no derivative of V. Errors of *set* conditions and relative errors of the
-observations are part of W, which follows the fit and is never differentiated: differentiating it
-would reward laws for being uncertain.
+Errors of *measured* conditions are reconciled inside each evaluation (Britt & Luecke,
+Technometrics 15 (1973) 233): with e = y - f(c^) - F (c - c^) and V = W + F S_c F', the conditions
+move to c^ = c + S_c F' V^-1 e. At the fixed point G' V^-1 e is exactly minus half the gradient of
+the profiled objective, so the step needs no derivative of V. Errors of *set* conditions and
+relative errors of the observations are part of W, which follows the fit and is never
+differentiated: differentiating it would reward laws for being uncertain.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from discrim.fit.covariance import Whitener, add_source
-from discrim.fit.measurements import OBSERVATION, Measurements, Scale
+from discrim.fit.measurements import Measurements, Scale
 from discrim.reactor.model import Predictor
 
 RUNNING, CONVERGED, STEP_LIMIT, NOT_FINITE = 0, 1, 2, 3
@@ -180,9 +180,9 @@ class Problem:
     ) -> Solution:
         """Everything at ``theta``, with W given (or made here when None).
 
-        ``errors_at``: conditions at which relative errors of measured conditions are taken; those of
-        each pass when None. Like W they are held while two points are compared: Q with errors that
-        follow the reconciled conditions is not what the step descends on.
+        ``errors_at``: conditions at which relative errors of measured conditions are taken; those
+        of each pass when None. Like W they are held while two points are compared: Q with errors
+        that follow the reconciled conditions is not what the step descends on.
         """
         y, nominal = self.table(rows)
         s = len(theta)
@@ -201,7 +201,8 @@ class Problem:
             for k in range(passes):
                 pred = self.predictor.predict(theta, conditions, conditions_too=True)
                 values, f_c = pred.values, pred.by_conditions
-                assert f_c is not None and pred.by_constants is not None
+                assert f_c is not None
+                assert pred.by_constants is not None
                 if w is None:
                     w = self.own_covariance(values, conditions, f_c, scale2)
                 error = y - values
@@ -214,7 +215,10 @@ class Problem:
                 if not self.measured or k == passes - 1:
                     break
                 conditions = self.moved(nominal, there, f_c, white.transposed(r))
-            g = white.matrix(pred.by_constants)
+            by_constants = pred.by_constants
+            assert by_constants is not None
+            g = white.matrix(by_constants)
+        assert w is not None
         q = np.einsum("sn,sn->s", r, r)
         bad = ~(np.isfinite(q) & np.isfinite(g).all(axis=(1, 2)) & white.ok)
         if bad.any():
@@ -306,7 +310,7 @@ def solve(
     nu = np.full(s, 2.0)
     d_max = np.zeros((s, p))
     quiet = np.zeros(s, int)
-    for iteration in range(opt.max_iterations):
+    for _iteration in range(opt.max_iterations):
         if not len(active):
             break
         a = active
@@ -437,7 +441,7 @@ def _triangle(jacobian: np.ndarray, residual: np.ndarray) -> tuple[np.ndarray, n
     both = np.concatenate([jacobian, residual[..., None]], axis=2)
     if n < p + 1:
         both = np.concatenate([both, np.zeros((s, p + 1 - n, p + 1))], axis=1)
-    r = np.linalg.qr(both, mode="r")
+    r = np.asarray(np.linalg.qr(both, mode="r"))
     return r[:, :p, :p], r[:, :p, p]
 
 
@@ -464,7 +468,7 @@ def bounded_step(
         stacked[:, :p, :p] = upper_part
         stacked[:, :p, p] = rhs
         stacked[:, p + idx, idx] = np.where(blocked, 1.0, np.sqrt(mu)[:, None] * d)
-        tri = np.linalg.qr(stacked, mode="r")
+        tri = np.asarray(np.linalg.qr(stacked, mode="r"))
         free = np.linalg.solve(tri[:, :p, :p], tri[:, :p, p : p + 1])[..., 0]
         step = np.where(blocked, step, free)
         out = ~blocked & ((step < low) | (step > high))

@@ -142,7 +142,8 @@ def _rough_weight(data: Measurements) -> np.ndarray:
     return 1.0 / np.sqrt(np.where(var > 0, var, np.max(var)))
 
 
-# a constant whose whole effect on the predictions is under this many standard errors is on its bound
+# a constant whose whole effect on the predictions is under this many standard errors is on its
+# bound
 ON_BOUND = 1e-6
 
 

@@ -4,8 +4,8 @@ The covariance of the differences between observed and predicted values is
 
     V(theta) = S_y + F S_c F',     F = d f / d conditions
 
-(York, Can. J. Phys. 44 (1966) 1079; Barker & Diana, Am. J. Phys. 42 (1974) 224), built here source by
-source, so that errors shared by several runs fill the blocks between those runs.
+(York, Can. J. Phys. 44 (1966) 1079; Barker & Diana, Am. J. Phys. 42 (1974) 224), built here source
+by source, so that errors shared by several runs fill the blocks between those runs.
 """
 
 from __future__ import annotations

@@ -62,8 +62,8 @@ def scout(
 ) -> np.ndarray:
     """The most promising distinct points reached from ``starts``, best first, shape (<= KEEP, p).
 
-    ``weight`` shape (N,): one over the standard deviation of each observation. Constants that may be
-    anything above zero move in their logarithm, in which the valleys of rate laws are straight;
+    ``weight`` shape (N,): one over the standard deviation of each observation. Constants that may
+    be anything above zero move in their logarithm, in which the valleys of rate laws are straight;
     zero itself is reached by the iterations that follow.
     """
     lower, upper = predictor.lower, predictor.upper

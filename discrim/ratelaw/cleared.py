@@ -1,9 +1,9 @@
 """A law with its denominator cleared: linear in products of powers of its constants.
 
-Many rate laws are N/D^n with N a sum of terms (one term if n > 1) and D = 1 + sum of terms, each a product
-of powers of constants times a function of the conditions. Then (N/y)^(1/n) = D is linear in the
-coefficients, which is what guaranteed ranges need. Where D holds no 1 but N holds no constant, the 1
-is on the other side: sum_j b_j w_j (y/N)^(1/n) = 1.
+Many rate laws are N/D^n with N a sum of terms (one term if n > 1) and D = 1 + sum of terms, each a
+product of powers of constants times a function of the conditions. Then (N/y)^(1/n) = D is linear
+in the coefficients, which is what guaranteed ranges need. Where D holds no 1 but N holds no
+constant, the 1 is on the other side: sum_j b_j w_j (y/N)^(1/n) = 1.
 """
 
 from __future__ import annotations
@@ -23,7 +23,8 @@ class ClearedLaw:
     Attributes
     ----------
     numerator, denominator : functions of the conditions m_i and w_j, sympy expressions
-    known : the numerator when it holds no constant (then ``numerator`` is empty and D has no 1), else
+    known : the numerator when it holds no constant (then ``numerator`` is empty and D has no 1),
+    else
         None
     power : n, a positive integer; 1 if the numerator has several terms
     exponents : shape (q, p): the logarithm of each coefficient (a first, then b) in the logarithms

@@ -24,7 +24,7 @@ def _printer() -> Any:
     """Small integer powers as products: numpy's general power costs ten multiplications."""
     from sympy.printing.numpy import NumPyPrinter
 
-    class Products(NumPyPrinter):  # type: ignore[misc]
+    class Products(NumPyPrinter):
         def _print_Pow(self, expr: Any, rational: bool = False) -> str:
             base, n = expr.base, expr.exp
             if base.is_Symbol and n.is_Integer and 2 <= abs(int(n)) <= 6:

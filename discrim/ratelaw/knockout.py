@@ -118,7 +118,7 @@ def _species(law: RateLaw, about: str, typical: float) -> KnockOut | None:
     symbol = amount(about)
     orders = _orders_only(law, symbol)
     if orders:
-        out = _set(law, {o: 0 for o in orders})
+        out = _set(law, dict.fromkeys(orders, 0))
         if out is not None:
             names = tuple(c.name for c in law.constants if c.symbol in orders)
             kind = KnockOutKind.ORDER if len(names) == 1 else KnockOutKind.SEVERAL

@@ -50,9 +50,10 @@ class Derived:
 class ConstantSetting:
     """``[constants]``: what the user knows or demands of one constant (internal units).
 
-    ``value`` with ``sd`` 0: fixed. ``value`` with ``sd`` > 0: known with an uncertainty, enters like
-    a measured condition shared by all runs. Neither: estimated between ``at_least`` and ``at_most``
-    (None: the default of its kind), from ``start`` if given, one for each label of column ``per``.
+    ``value`` with ``sd`` 0: fixed. ``value`` with ``sd`` > 0: known with an uncertainty, enters
+    like a measured condition shared by all runs. Neither: estimated between ``at_least`` and
+    ``at_most`` (None: the default of its kind), from ``start`` if given, one for each label of
+    column ``per``.
     """
 
     name: str

@@ -94,9 +94,9 @@ def assess(
 ) -> Assessment:
     """Facts about one candidate.
 
-    ``common`` and ``common_fit``: the measurements (and the fit to them) with one and the same scale
-    for all candidates, on which the criteria are computed. Of a law that does not stand only the
-    linearised intervals are computed: the others would describe constants of a rejected law.
+    ``common`` and ``common_fit``: the measurements (and the fit to them) with one and the same
+    scale for all candidates, on which the criteria are computed. Of a law that does not stand only
+    the linearised intervals are computed: the others would describe constants of a rejected law.
     """
     primary = next(iter(fits))
     one = fits[primary]

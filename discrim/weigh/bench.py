@@ -1,7 +1,7 @@
 """Laws bound to the runs of a study: the one place where chemistry is handed to statistics.
 
-`Bench` holds what is the same for all candidates (observations, conditions, errors); `bind` makes the
-predictor of one law over it.
+`Bench` holds what is the same for all candidates (observations, conditions, errors); `bind` makes
+the predictor of one law over it.
 """
 
 from __future__ import annotations
@@ -230,9 +230,10 @@ def build(
                 )
             )
             continue
-        column = column_of_symbol(s, study)
-        if column is None:
+        given = column_of_symbol(s, study)
+        if given is None:
             raise _unmeasured(s, study)
+        column = given
         conditions[:, j] = column.values[runs]
         if not np.isfinite(conditions[:, j]).all():
             row = runs[int(np.flatnonzero(~np.isfinite(conditions[:, j]))[0])]

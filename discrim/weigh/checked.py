@@ -85,7 +85,8 @@ def _law(
 ) -> tuple[dict[str, Any], np.ndarray]:
     data = bench.measurements.as_origin(bench.measurements.origins()[0])
     pred = b.predictor.predict(theta[None], data.conditions, conditions_too=True)
-    assert pred.by_constants is not None and pred.by_conditions is not None
+    assert pred.by_constants is not None
+    assert pred.by_conditions is not None
     values = pred.values[0]
     weight = _weights(data, values, pred.by_conditions[0])
     columns = pred.by_constants[0] * weight[:, None]

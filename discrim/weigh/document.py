@@ -110,7 +110,7 @@ def _study(w: Weighed) -> dict[str, Any]:
             if not runs.kept[i] and runs.excluded_because[i] == reason
         ]
         exclusions.append({"where": where, "reason": reason, "runs": labels})
-    done = {k: v for k, v in study.controls.items()}
+    done = dict(study.controls.items())
     return {
         "file": study.path.name,
         "table": runs.file,
@@ -195,7 +195,8 @@ def _columns_behind(
     pred = bound.predictor.predict(
         fit.theta[None], bench.measurements.conditions, conditions_too=True, both=True
     )
-    assert pred.by_constants is not None and pred.by_both is not None
+    assert pred.by_constants is not None
+    assert pred.by_both is not None
     g = pred.by_constants[0]
     with np.errstate(divide="ignore", invalid="ignore"):
         ratio = g[:, second] / g[:, first]
@@ -373,7 +374,9 @@ def _correlations(fit: Fit) -> list[list[float | None]]:
 
 def interval_keys(kinds: Mapping[str, Interval]) -> tuple[dict, dict, dict]:
     """(ends, how each was found, notes) by kind; open and unknown ends are None."""
-    values, ends, notes = {}, {}, {}
+    values: dict[str, list[float | None]] = {}
+    ends: dict[str, list[str]] = {}
+    notes: dict[str, str] = {}
     for kind, it in kinds.items():
         if it.empty:
             values[kind], ends[kind] = [None, None], ["failed", "failed"]

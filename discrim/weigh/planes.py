@@ -8,6 +8,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+
 from discrim.fit.measurements import Scale
 
 if TYPE_CHECKING:

@@ -7,9 +7,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from discrim.evidence.criteria import weights
 from discrim.evidence.participation import NestedF, nested_f
 from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
-from discrim.evidence.criteria import weights
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.ratelaw.model import amount
@@ -254,8 +254,8 @@ def _standing(
     common_fits: Sequence[Sequence[Fit]], related: Relations, alpha: float, seed: int
 ) -> tuple[list[Standing], list[bool]]:
     """A candidate stands if it does under any reading of the condition errors."""
-    contains = {k: True for k in related.contains}
-    same = {k: True for k in related.same}
+    contains = dict.fromkeys(related.contains, True)
+    same = dict.fromkeys(related.same, True)
     readings = [
         standing([f[r] for f in common_fits], contains, same, alpha=alpha, seed=seed)
         for r in range(len(common_fits[0]))

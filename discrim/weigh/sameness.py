@@ -11,8 +11,8 @@ import sympy
 
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.nesting import Nesting, Substitution, nested
-from discrim.weigh.bench import Bound, fixed_put_in
 from discrim.study.model import Study
+from discrim.weigh.bench import Bound, fixed_put_in
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -66,7 +66,10 @@ def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
         up = "raising" if t.change[j] > 0 else "lowering"
         size = abs(t.change[j]) / t.singular_value if t.singular_value > 0 else abs(t.change[j])
         parts.append(f"{up} {names[j]} by {size:.2g}{(' ' + units[j]) if units[j] else ''}")
-    return f"{', '.join(parts)} together changes the predicted rates by no more than one standard error in all"
+    return (
+        f"{', '.join(parts)} together changes the predicted rates by no more than one standard "
+        "error in all"
+    )
 
 
 def _ratio_unit(a: str, b: str) -> str:

@@ -1,7 +1,7 @@
 """Size and coverage where two terms move in lockstep: r = k_A A + k_B B with k_B = 0.
 
-B = 2.5 A (1 + spread N(0, 1)), 12 runs, rate error 1 %. All studies of a cell are one batch through the
-package's own engine and score; nothing here is a reimplementation of the test.
+B = 2.5 A (1 + spread N(0, 1)), 12 runs, rate error 1 %. All studies of a cell are one batch
+through the package's own engine and score; nothing here is a reimplementation of the test.
 """
 
 from __future__ import annotations

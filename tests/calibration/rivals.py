@@ -1,7 +1,8 @@
 """How often the true law stands among its rivals: Langmuir-type laws of a bimolecular surface reaction.
 
-The true law is one of the candidates; the rest are rivals, some of which contain it. What is counted is
-how often the true law is rejected, for stated errors and for a variance estimated from the fit.
+The true law is one of the candidates; the rest are rivals, some of which contain it. What is
+counted is how often the true law is rejected, for stated errors and for a variance estimated from
+the fit.
 """
 
 from __future__ import annotations

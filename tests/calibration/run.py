@@ -28,8 +28,19 @@ def main() -> None:
     with open(args.out / "figures.csv", "w", newline="", encoding="utf-8") as file:
         writer = csv.writer(file, lineterminator="\n")
         writer.writerow(
-            "origin shared spread condition_error studies textbook_false textbook_cover score_false "
-            "score_cover interval_cover excluded".split()
+            [
+                "origin",
+                "shared",
+                "spread",
+                "condition_error",
+                "studies",
+                "textbook_false",
+                "textbook_cover",
+                "score_false",
+                "score_cover",
+                "interval_cover",
+                "excluded",
+            ]
         )
         for r in results:
             c = r.cell

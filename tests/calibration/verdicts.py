@@ -1,8 +1,8 @@
 """Verdicts of whole studies, through the study file and everything behind it.
 
-Two pathways, r = k_A A + k_B B, 12 runs, concentrations measured, rate error 1 %. B matters above 5 % of the
-rate. A verdict is wrong when it is `participates` though k_B = 0, or `negligible` though B carries more
-than 5 % in some run.
+Two pathways, r = k_A A + k_B B, 12 runs, concentrations measured, rate error 1 %. B matters above
+5 % of the rate. A verdict is wrong when it is `participates` though k_B = 0, or `negligible`
+though B carries more than 5 % in some run.
 """
 
 from __future__ import annotations

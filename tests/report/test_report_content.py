@@ -4,13 +4,13 @@ import copy
 
 import numpy as np
 import pytest
-import sample
 
 from discrim.report.content import build, not_computed
 from discrim.report.figures import draw
 from discrim.report.folder import candidate_rows, constant_rows, run_rows
 from discrim.report.html import page
 from discrim.report.text import check, laws, summary
+from tests.report import sample
 
 JUNK = [None, "text", [], {}, 3, [None, "x", 3], float("nan"), True, {"a": [1]}, [[1, 2], [3]]]
 

@@ -3,10 +3,10 @@
 import sys
 
 import pytest
-import sample
 
 from discrim.report.canvas import label, scale_of, with_units
 from discrim.report.figures import draw
+from tests.report import sample
 
 
 def by_name(document):

@@ -4,11 +4,11 @@ import csv
 import json
 
 import pytest
-import sample
 
 from discrim.errors import DiscrimError
 from discrim.report import figures, folder
 from discrim.report.folder import as_json, cell, load_evidence, run_rows, write_report
+from tests.report import sample
 
 
 @pytest.fixture

@@ -4,12 +4,12 @@ import re
 from html.parser import HTMLParser
 
 import pytest
-import sample
 
 from discrim.report.canvas import NAMES
 from discrim.report.figures import draw
 from discrim.report.formulas import safe_mathml
 from discrim.report.html import numeral, page
+from tests.report import sample
 
 HOSTILE = '"><script>alert(1)</script><img src=x onerror=alert(1)>{{ 7*7 }}'
 VOID = {"meta", "link", "br", "img", "hr", "input"}

@@ -3,11 +3,11 @@
 import io
 
 import pytest
-import sample
 
 from discrim.report.paper import Paper, to_ascii, wants_colour, write
 from discrim.report.tables import make
 from discrim.report.text import summary, verdicts
+from tests.report import sample
 
 
 @pytest.mark.parametrize("name", sample.ALL)
