@@ -20,6 +20,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
+from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
 
@@ -101,8 +102,6 @@ def score(
         g = jac[:, :, psi]
         nuisance = np.delete(jac, psi, axis=2)
     else:
-        from discrim.fit.covariance import Whitener
-
         g = Whitener(solution.covariance).vector(direction)
         nuisance = jac
     space = basis(nuisance)
@@ -149,24 +148,34 @@ def _unknown_scale(
     """Unknown variance s^2 of the observations beside known errors of the conditions.
 
     The score of psi is made orthogonal to that of s^2 as well:
-    z = [S + c (Q - (N - p_l))] / sqrt(I + 2 (N - p_l) c^2) with w = dV/ds^2 = 1,
-    D_j = -1/2 sum_i w_i (dV_i/dtheta_j)/V_i^2 and c = (D_psi - I_psi,l I_ll^-1 D_l)/sum(w_i/V_i).
+    z = [S + c (Q - (N - p_l))] / sqrt(I + 2 (N - p_l) c^2) with dV/ds^2 = 1,
+    D_j = -1/2 tr(V^-2 dV/dtheta_j) and c = (D_psi - I_psi,l I_ll^-1 D_l)/tr(V^-1). Only *measured*
+    conditions, whose reconciling needs s^2, are part of dV/dtheta: with set ones the score has mean zero
+    whatever s^2 is.
     """
     data = problem.data
     n, p_l = data.n, p - 1
     v = sol.covariance
-    if v.ndim == 3:  # shared errors: the correction is left out, the normal form is kept
-        with np.errstate(divide="ignore", invalid="ignore"):
-            return np.where(size > 0, s / size, 0.0)
     pred = problem.predictor.predict(sol.theta, sol.conditions, conditions_too=True, both=True)
     assert pred.by_conditions is not None
     assert pred.by_both is not None
-    dv = np.zeros((*v.shape, p))
-    for src in data.of_conditions:
-        sd2 = src.sd(sol.conditions[..., src.target]) ** 2
-        f = pred.by_conditions[..., src.target]
-        dv += 2.0 * (sd2 * f)[..., None] * pred.by_both[:, :, src.target, :]
-    d = -0.5 * np.einsum("snp,sn->sp", dv, 1.0 / v**2)
+    if v.ndim == 2:
+        inverse_trace = (1.0 / v).sum(axis=1)
+    else:
+        white = Whitener(v)
+        inverse = white.transposed_matrix(white.matrix(np.broadcast_to(np.eye(n), v.shape)))
+        inverse_trace = np.einsum("snn->s", inverse)
+    d = np.zeros((len(v), p))
+    for src in problem.measured:
+        sd = src.sd(sol.conditions[..., src.target])
+        u = sd * pred.by_conditions[..., src.target]
+        du = (sd[..., None] if sd.ndim == 2 else sd[:, None]) * pred.by_both[:, :, src.target, :]
+        if v.ndim == 2:
+            d -= np.einsum("sn,snp->sp", u / v**2, du)
+        else:
+            same = src.groups[:, None] == src.groups[None, :]
+            squared = (inverse @ inverse) * same
+            d -= np.einsum("sn,snk,skp->sp", u, squared, du)
     g_l = np.delete(sol.jacobian, psi, axis=2)
     d_l = np.delete(d, psi, axis=1)
     # regression of the column of psi on the nuisance columns, by the pseudo-inverse of scaled
@@ -177,7 +186,7 @@ def _unknown_scale(
         "skn,sn->sk", np.linalg.pinv(g_l / norms[:, None, :], rcond=RANK), sol.jacobian[:, :, psi]
     )
     beta = beta / norms
-    c = (d[:, psi] - np.einsum("sk,sk->s", beta, d_l)) / (1.0 / v).sum(axis=1)
+    c = (d[:, psi] - np.einsum("sk,sk->s", beta, d_l)) / inverse_trace
     top = s + c * (sol.objective - (n - p_l))
     with np.errstate(divide="ignore", invalid="ignore"):
         return top / np.sqrt(size**2 + 2.0 * max(n - p_l, 1) * c**2)

@@ -73,6 +73,12 @@ class Whitener:
             return x * self._inv
         return (x[..., None, :] @ self._inverse)[..., 0, :]
 
+    def transposed_matrix(self, x: np.ndarray) -> np.ndarray:
+        """L^-T x for x of shape (S, N, k)."""
+        if not self.full:
+            return x * self._inv[..., None]
+        return np.swapaxes(self._inverse, 1, 2) @ x
+
 
 def _cholesky(v: np.ndarray) -> tuple[np.ndarray, bool]:
     try:

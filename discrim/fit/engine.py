@@ -240,13 +240,24 @@ class Problem:
         )
 
     def updated_scale(self, sol: Solution, free: np.ndarray) -> np.ndarray:
-        """s^2 >= 0 with Q(s^2) = N - p, the condition errors held (moment estimate)."""
+        """s^2 >= 0 with Q(s^2) = N - p, the condition errors held (moment estimate).
+
+        With errors shared by runs Q is taken in the eigenvectors of the rest of V: its diagonal alone
+        counts an error that all runs share as if it scattered them, and s^2 came out as zero.
+        """
         df = np.maximum(self.data.n - free, 1)
-        e2 = sol.error**2
-        var = sol.covariance
-        if var.ndim == 3:
-            var = np.diagonal(var, axis1=1, axis2=2)
-        v = np.maximum(var - sol.scale2[:, None], 0.0)
+        if sol.covariance.ndim == 3:
+            idx = np.arange(self.data.n)
+            rest = np.array(sol.covariance)
+            rest[:, idx, idx] -= sol.scale2[:, None]
+            usable = np.isfinite(rest).all(axis=(1, 2))
+            rest[~usable] = np.eye(self.data.n)
+            v, vectors = np.linalg.eigh(rest)
+            v = np.maximum(v, 0.0)
+            e2 = np.einsum("snk,sn->sk", vectors, sol.error) ** 2
+        else:
+            v = np.maximum(sol.covariance - sol.scale2[:, None], 0.0)
+            e2 = sol.error**2
         lo = np.zeros(len(df))
         hi = e2.sum(axis=1) / df
         with np.errstate(divide="ignore", invalid="ignore"):
