@@ -79,11 +79,14 @@ def as_read(x: Any) -> str:
     return number(x, 7)
 
 
-def interval(low: Any, high: Any, how: Any = None, *, outward: bool = False) -> str:
+def interval(
+    low: Any, high: Any, how: Any = None, *, outward: bool = False, digits: int | None = None
+) -> str:
     """An interval as text; says of each end when it is not an ordinary crossing.
 
     ``how`` holds how each end was found: crossed, bound, open, failed. With ``outward`` the ends
-    get six digits and are rounded away from the middle, so that a guarantee stays one.
+    are rounded away from the middle, so that a guarantee stays one: with ``digits``
+    digits, or to the place of three digits of the width.
     """
     lo, hi = as_number(low), as_number(high)
     ends = list(how) if isinstance(how, list | tuple) and len(how) == 2 else ["", ""]
@@ -91,7 +94,7 @@ def interval(low: Any, high: Any, how: Any = None, *, outward: bool = False) -> 
         if "failed" in ends:
             return "not found"
         return "open both ways" if "open" in ends else MISSING
-    texts = _outward(lo, hi) if outward else _ends(lo, hi)
+    texts = _outward(lo, hi, digits) if outward else _ends(lo, hi)
     marks = [{"bound": " (bound)", "failed": " (not found)"}.get(str(end), "") for end in ends]
     if lo is None:
         return f"up to {texts[1]}{marks[1]}, {_no_end(ends[0])} below"
@@ -104,15 +107,19 @@ def _no_end(how: Any) -> str:
     return "not found" if how == "failed" else "open"
 
 
-def _outward(lo: float | None, hi: float | None) -> tuple[str, str]:
+def _outward(lo: float | None, hi: float | None, digits: int | None) -> tuple[str, str]:
     out = []
+    width = abs(hi - lo) if lo is not None and hi is not None else 0.0
     for v, rounding in ((lo, ROUND_FLOOR), (hi, ROUND_CEILING)):
         if not v:
             out.append(number(v))
             continue
+        shown = digits or 6
+        if digits is None and width > 0:
+            shown = min(max(_exponent(v) - _exponent(width) + 3, 1), 6)
         # A double that is one step beside 3.0036 means 3.0036, hence the twelve digits first.
         near = Context(prec=12).create_decimal(repr(v))
-        out.append(number(float(Context(prec=6, rounding=rounding).plus(near)), 6))
+        out.append(number(float(Context(prec=shown, rounding=rounding).plus(near)), shown))
     return out[0], out[1]
 
 

@@ -345,7 +345,10 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
                 u,
                 _power_words(power, read.text(k, "units")),
             ]
-            row += [_interval(kind, found.get(kind), ends.get(kind), power) for kind in KINDS]
+            row += [
+                _interval(kind, found.get(kind), ends.get(kind), power, read.text(notes, kind))
+                for kind in KINDS
+            ]
             remarks = [f"{kind}: {read.text(notes, kind)}" for kind in KINDS if kind in notes]
             row.append("; ".join([w for w in [read.text(k, "meaning"), *remarks] if w]))
             rows.append(row)
@@ -363,11 +366,16 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
     return tuple(out)
 
 
-def _interval(kind: str, ends: Any, how: Any, power: int) -> str:
+def _interval(kind: str, ends: Any, how: Any, power: int, note: str = "") -> str:
     if not isinstance(ends, list | tuple) or len(ends) != 2:
         return MISSING
+    if all(end is None for end in ends):
+        for word in ("not computed", "empty"):
+            if note.startswith(word):
+                return word
     low, high = (_by(power, as_number(end)) for end in ends)
-    return interval(low, high, how, outward=kind == "guaranteed")
+    # hard bounds on all errors are exact and shown as such; those made from standard deviations not
+    return interval(low, high, how, outward=kind == "guaranteed", digits=None if note else 6)
 
 
 def _power(values: Sequence[float | None]) -> int:

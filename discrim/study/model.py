@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from importlib import import_module
 from pathlib import Path
 from typing import Any
 
@@ -115,3 +116,10 @@ class Study:
     def kept(self) -> np.ndarray:
         """Indices of the runs that are not excluded."""
         return np.flatnonzero(self.runs.kept)
+
+    def weigh(self, *, seed: int = 1) -> dict[str, Any]:
+        """The evidence document of this study, as ``discrim weigh`` saves it.
+
+        The one call that goes up the layers, for whoever has a study in hand.
+        """
+        return import_module("discrim.weigh").weigh(self, seed=seed)

@@ -13,9 +13,10 @@ def weigh(study: Study, *, seed: int = 1, workers: int = 1, progress: Any = None
     The answer does not depend on ``workers``.
     """
     from discrim.weigh.document import document
-    from discrim.weigh.run import run
+    from discrim.weigh.run import run, with_all_runs
 
-    return document(run(study, seed=seed, progress=progress))
+    weighed = run(study, seed=seed, progress=progress)
+    return document(weighed, with_all_runs(study, seed=seed))
 
 
 def check(study: Study) -> dict[str, Any]:

@@ -48,10 +48,50 @@ def distance(x: float) -> float | None:
     return 0.0 if v is not None and abs(v) < 1e-6 else v
 
 
-def document(w: Weighed) -> dict[str, Any]:
-    """The whole document of one weighed study."""
-    study = w.study
+def document(w: Weighed, every_run: Weighed | str | None = None) -> dict[str, Any]:
+    """The whole document of one weighed study.
+
+    ``every_run``: the study weighed again with its excluded runs, or why it could not be.
+    """
     candidates = [_candidate(w, i) for i in range(len(w.laws))]
+    out = _assembled(w, candidates)
+    if every_run is not None:
+        _add_excluded(out, w, every_run)
+    return out
+
+
+def _add_excluded(out: dict[str, Any], w: Weighed, every_run: Weighed | str) -> None:
+    """What the excluded runs change, in each question and as findings."""
+    if isinstance(every_run, str):
+        for q in out["questions"]:
+            q["with_excluded_runs"] = None
+        out["findings"].append(
+            {
+                "severity": "note",
+                "where": "excluded runs",
+                "says": f"verdicts with them: {every_run}",
+            }
+        )
+        return
+    for q, again in zip(out["questions"], _questions(every_run), strict=True):
+        q["with_excluded_runs"] = again["verdict"]
+        q["sentence_with_excluded_runs"] = again["sentence"]
+        about = f"question about {q['about']}"
+        if q["asks"] == "stands":
+            same = q.get("standing") == again.get("standing")
+        else:
+            same = q["verdict"] == again["verdict"]
+        if same:
+            says = "the answer is the same with the excluded runs put back"
+        else:
+            says = f"with the excluded runs put back the answer changes: {again['sentence']}"
+        out["findings"].append(
+            {"severity": "note" if same else "warning", "where": about, "says": says}
+        )
+
+
+def _assembled(w: Weighed, candidates: list[dict[str, Any]]) -> dict[str, Any]:
+    study = w.study
     return {
         "format": 1,
         "title": study.title,

@@ -18,16 +18,20 @@ ACROSS = 33  # points along the horizontal constant
 DOWN = 241  # points tried for the vertical one
 GRID = 41
 MOST_RUNS = 40
+MOST_PLANES = 2
 
 
 def planes(w: Weighed) -> list[dict[str, Any]]:
-    """One plane for each candidate that stands and has two constants or more (at most four)."""
+    """A plane for each of the few candidates that stand and have two constants or more.
+
+    Those with terms in lockstep come first: they show what the runs cannot tell apart.
+    """
     out = []
-    order = sorted(range(len(w.laws)), key=lambda i: w.rank[i])
+    order = sorted(range(len(w.laws)), key=lambda i: (not w.assessments[i].lockstep, w.rank[i]))
     for i in order:
         if w.stands[i] and w.assessments[i].fit.ok and len(w.bounds[i].names) >= 2:
             out.append(_plane(w, i))
-        if len(out) == 4:
+        if len(out) == MOST_PLANES:
             break
     return out
 

@@ -7,13 +7,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from discrim.errors import DiscrimError
 from discrim.evidence.criteria import weights
 from discrim.evidence.participation import NestedF, nested_f
 from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.ratelaw.model import amount
-from discrim.runs.model import Role
+from discrim.runs.model import Role, frozen
 from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
 from discrim.weigh.asked import Answer, answer, check_questions
@@ -61,6 +62,20 @@ class Weighed:
     seed: int
 
 
+def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
+    """The same study with its excluded runs put back, so that the reader sees what that changes.
+
+    None when nothing is excluded; a sentence when the excluded runs cannot be weighed.
+    """
+    if bool(study.runs.kept.all()):
+        return None
+    runs = replace(study.runs, kept=frozen(np.ones(study.runs.n, bool), bool))
+    try:
+        return run(replace(study, runs=runs), seed=seed)
+    except DiscrimError as trouble:
+        return f"not computed: {trouble.says}"
+
+
 def prepare(
     study: Study, *, planned: bool = False
 ) -> tuple[list[CandidateLaw], Bench, list[Bound]]:
@@ -96,8 +111,6 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
     n = len(laws)
     data = bench.measurements
     if data.n == 0:
-        from discrim.errors import DiscrimError
-
         raise DiscrimError(
             f"no run in {study.runs.file} has a measured rate",
             do="`discrim check` judges a planned table; `discrim weigh` needs measured rates.",

@@ -106,7 +106,19 @@ def test_an_interval_says_how_its_ends_were_found(low, high, how, expected):
 )
 def test_a_guaranteed_range_is_rounded_outward(low, high, expected):
     how = ["bound" if low == 0 else "crossed", "crossed"]
-    assert interval(low, high, how, outward=True) == expected
+    assert interval(low, high, how, outward=True, digits=6) == expected
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "expected"),
+    [
+        (0.15583384, 0.59839405, "0.155 to 0.599"),  # width 0.44: to its third digit, outward
+        (20.864740, 50.503133, "20.8 to 50.6"),
+        (2.99564, 3.0036, "2.99564 to 3.0036"),
+    ],
+)
+def test_a_worst_case_range_has_three_digits_of_its_width(low, high, expected):
+    assert interval(low, high, ["crossed", "crossed"], outward=True) == expected
 
 
 @pytest.mark.parametrize(
