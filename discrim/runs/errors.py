@@ -235,6 +235,9 @@ def error_parts(
     sd_of : standard deviations, internal units, from the cells of another column
     """
     n = len(cells.values)
+    planned = declared.role in OBSERVATIONS and not any(cells.texts)
+    if planned and pieces is not None and any(p.how in ("digits", "replicates") for p in pieces):
+        pieces = None  # nothing is measured yet, so there is nothing to take an error from
     if pieces is None:
         if declared.role in OBSERVATIONS:
             return (), ErrorBasis.ESTIMATED, 0

@@ -1,0 +1,72 @@
+"""Makes the speed figures that the repository keeps: ``python -m tests.benchmarks.run``.
+
+Writes ``figures.md`` beside this file (under a minute). Run it on an otherwise idle machine.
+"""
+
+from __future__ import annotations
+
+import datetime
+import os
+import platform
+import subprocess
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+import numpy as np
+
+from tests.benchmarks.fit_speed import RUNS, STARTS, ratios
+
+HERE = Path(__file__).parent
+DEMO = HERE.parents[1] / "demo" / "buffer-hydrolysis" / "first.toml"
+IMPORTS = "import scipy.optimize, sympy, pandas, matplotlib.pyplot"
+
+
+def seconds(command: list[str], times: int = 5) -> float:
+    """Median wall time of a command."""
+    took = []
+    for _ in range(times):
+        start = time.perf_counter()
+        subprocess.run(command, check=True, stdout=subprocess.DEVNULL)
+        took.append(time.perf_counter() - start)
+    return float(np.median(took))
+
+
+def main() -> None:
+    fit = ratios()
+    with tempfile.TemporaryDirectory() as folder:
+        weigh = seconds(
+            [sys.executable, "-m", "discrim", "weigh", str(DEMO), "--out", f"{folder}/results"]
+        )
+    bare = seconds([sys.executable, "-c", IMPORTS])
+    lines = [
+        "# Speed",
+        "",
+        f"{datetime.date.today().isoformat()}, {platform.machine()}, {os.cpu_count()} cores, Python "
+        f"{platform.python_version()}, numpy {np.__version__}. Made by "
+        "`python -m tests.benchmarks.run`.",
+        "",
+        f"One fit of a derived four-constant law (two adsorbed reactants, product inhibits) on {RUNS} "
+        f"runs from the same {STARTS} starts; medians over nine tables. Plain: "
+        "scipy.optimize.least_squares with bounds and finite differences. Expert: MINPACK through "
+        '`method="lm"` on logarithms of the constants with exact derivatives.',
+        "",
+        "| what | figure | asked |",
+        "| --- | --- | --- |",
+        f"| fit, discrim | {1e3 * fit['seconds']:.2f} ms | |",
+        f"| fit, plain script | {1e3 * fit['plain seconds']:.0f} ms | |",
+        f"| fit, expert script | {1e3 * fit['expert seconds']:.1f} ms | |",
+        f"| times faster than plain | {fit['times faster than plain']:.0f} | 50 |",
+        f"| times faster than expert | {fit['times faster than expert']:.1f} | 5 |",
+        f"| tables with an optimum as good as any | {100 * fit['best optimum reached']:.0f} % | |",
+        f"| `discrim weigh` on the first demo | {weigh:.2f} s | |",
+        f"| bare imports (`{IMPORTS}`) | {bare:.2f} s | |",
+        f"| weigh over imports | {weigh / bare:.2f} | at most 4 |",
+    ]
+    (HERE / "figures.md").write_text("\n".join(lines) + "\n", encoding="utf-8")
+    print("\n".join(lines))
+
+
+if __name__ == "__main__":
+    main()
