@@ -8,6 +8,7 @@ misfortune is a status in a record. A property of the data is a finding in the r
 from __future__ import annotations
 
 import difflib
+import unicodedata
 from collections.abc import Iterable
 from dataclasses import dataclass
 
@@ -90,6 +91,33 @@ def _clip(text: str, column: int, width: int = 90) -> tuple[str, int]:
 
 
 def nearest(word: str, known: Iterable[str]) -> str:
-    """A hint such as ``did you mean "units"?``, or an empty string when nothing is near."""
-    found = difflib.get_close_matches(word, list(known), n=1, cutoff=0.6)
+    """A hint such as ``did you mean "units"?``, or an empty string when nothing is near.
+
+    A word that only looks like a known one (a Cyrillic letter, an accent as a character of its own)
+    is told apart by the names of its characters.
+    """
+    names = list(known)
+    if not all(map(str.isascii, (word, *names))):
+        for name in names:
+            if name != word and _as_seen(name) == _as_seen(word):
+                return _differs(word, name)
+    found = difflib.get_close_matches(word, names, n=1, cutoff=0.6)
     return f'Did you mean "{found[0]}"?' if found else ""
+
+
+# Letters that look like Latin ones. From the shapes of the characters, no source.
+_SAME_SHAPE = str.maketrans(
+    "АВЕЅІЈКМНОРСТУХасеіјорѕухΑΒΕΖΗΙΚΜΝΟΡΤΥΧον−–‐",
+    "ABESIJKMHOPCTYXaceijopsyxABEZHIKMNOPTYXov---",
+)
+
+
+def _as_seen(text: str) -> str:
+    return unicodedata.normalize("NFKC", text).translate(_SAME_SHAPE)
+
+
+def _differs(word: str, name: str) -> str:
+    """Which characters of ``word`` only look like those of ``name``."""
+    strange = [ch for ch in word if ch not in name] or [ch for ch in name if ch not in word]
+    what = ", ".join(f"U+{ord(ch):04X} {unicodedata.name(ch, '')}".strip() for ch in strange[:3])
+    return f'"{name}" looks the same but is written with other characters ({what}): type it again.'

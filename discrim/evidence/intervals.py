@@ -27,8 +27,15 @@ from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
 CROSSED, BOUND, OPEN, FAILED = "crossed", "bound", "open", "failed"
-# the guard of the reconciled set: the overall fit may be rejected at this level only
+# the guard of the reconciled set: the overall fit may be rejected at this level only, and at no more
+# than this share of 1 - confidence
 GUARD = 0.01
+GUARD_SHARE = 0.2
+
+
+def guard_level(alpha: float) -> float:
+    """Level at which the objective alone may exclude, of the ``alpha`` that there is to spend."""
+    return min(GUARD, GUARD_SHARE * alpha)
 
 
 @dataclass(frozen=True, slots=True)
@@ -229,14 +236,15 @@ class _Acceptance:
         # 41), which never binds for a linear law, so nothing is spent on it. Else void.
         self.guard, self.unit, spend = np.inf, 1.0, 0.0
         if fit.data.scale is Scale.STATED:
-            self.guard, spend = chi2_quantile_upper(GUARD, max(n - (p - 1), 1)), GUARD
+            spend = guard_level(alpha)
+            self.guard = chi2_quantile_upper(spend, max(n - (p - 1), 1))
             self.unit = max(self.guard, 1.0)
         elif _scale_from_fit(fit) and fit.degrees_of_freedom > 0 and base > 0:
             dof = fit.degrees_of_freedom
-            f = f_quantile_upper(min(GUARD, alpha / 2), p, dof)
+            f = f_quantile_upper(guard_level(alpha), p, dof)
             self.guard = self.unit = base * (1.0 + p * f / dof)
-        self.two = normal_quantile(1.0 - max(alpha - spend, alpha / 2) / 2)
-        self.one = normal_quantile(1.0 - max(alpha - spend, alpha / 2))
+        self.two = normal_quantile(1.0 - (alpha - spend) / 2)
+        self.one = normal_quantile(1.0 - (alpha - spend))
 
     def _q_ok(self, pts: Points) -> np.ndarray:
         with np.errstate(invalid="ignore"):

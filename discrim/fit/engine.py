@@ -380,8 +380,8 @@ def solve(
         take = (drop > 0) | (flat & np.isfinite(trial.objective) & (gain <= 1e-12 * cur.objective))
         moved = np.abs(trial.theta - cur.theta) * d
         extent = np.abs(cur.theta) * d
-        small = moved.max(axis=1) <= opt.step_tolerance * np.maximum(
-            extent.max(axis=1), 1e-300
+        small = moved.max(axis=1, initial=0.0) <= opt.step_tolerance * np.maximum(
+            extent.max(axis=1, initial=0.0), 1e-300
         ) + 1e-13 * np.sqrt(cur.objective)
         got = a[take]
         if len(got):

@@ -8,12 +8,16 @@ constant, the 1 is on the other side: sum_j b_j w_j (y/N)^(1/n) = 1.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 import sympy
+
+
+MAX_TERMS = 200  # of a numerator or denominator when expanded; laws in use have a dozen
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -44,6 +48,8 @@ def cleared(
 ) -> ClearedLaw | None:
     """The cleared form of a law, or None when it does not have one."""
     top, bottom = sympy.together(expression).as_numer_denom()
+    if max(_terms_when_expanded(top), _terms_when_expanded(bottom)) > MAX_TERMS:
+        return None
     top, bottom = sympy.factor_terms(top), bottom
     base, power = _base(bottom, constants)
     if base is None:
@@ -92,6 +98,21 @@ def cleared(
         np.array(exponents, float),
         np.array(factor, float),
     )
+
+
+def _terms_when_expanded(e: Any) -> int:
+    """At most how many terms the expanded expression has; no more than MAX_TERMS are counted."""
+    if e.is_Add:
+        return min(sum(map(_terms_when_expanded, e.args)), MAX_TERMS + 1)
+    if e.is_Mul:
+        count = 1
+        for factor in e.args:
+            count = min(count * _terms_when_expanded(factor), MAX_TERMS + 1)
+        return count
+    if e.is_Pow and e.exp.is_Integer and e.exp > 0:
+        n = _terms_when_expanded(e.base)
+        return min(math.comb(n + int(e.exp) - 1, int(e.exp)), MAX_TERMS + 1)
+    return 1
 
 
 def _base(bottom: Any, constants: Sequence[Any]) -> tuple[Any, int]:

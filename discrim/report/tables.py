@@ -207,7 +207,11 @@ def runs(record: Mapping[str, Any]) -> Table | None:
         row = [label]
         for c in shown:
             values, words = read.items(c, "values"), read.items(c, "labels")
-            cell = as_read(as_number(values[i])) if i < len(values) else MISSING
+            # as the table has it where that is known: trailing zeros say how well it was read
+            cells = read.items(c, "cells")
+            cell = read.clean(cells[i]) if i < len(cells) else ""
+            if not cell:
+                cell = as_read(as_number(values[i])) if i < len(values) else MISSING
             if cell == MISSING and i < len(words):
                 cell = read.clean(words[i])
             row.append(cell)

@@ -231,13 +231,30 @@ def _values(raw: RawTable, name: str, d: Declaration | None, units: UnitSet) -> 
     written = _written(d)
     out = np.asarray(written.to_internal(out, units.unit(written)), dtype=float)
     for row, text in enumerate(texts):
-        if text and not np.isfinite(out[row]):
-            raise DiscrimError(f'"{text}" is too large for a number', place=raw.place(row, name))
+        if text:
+            check_size(float(out[row]), text, raw.place(row, name))
     if d.role in NOT_NEGATIVE and np.any(out < 0):
         first = int(np.flatnonzero(out < 0)[0])
         where = raw.place(first, name)
         raise DiscrimError(_negative(d, texts[first]), place=where, do=_NEGATIVE_DO)
     return out
+
+
+# Squares and products of a few such numbers still fit into double precision (IEEE 754: 1e±308).
+MAX_DECADES = 60
+
+
+def check_size(value: float, text: str, place: Place | None) -> None:
+    """Refuse a number that is too large or too small to compute with."""
+    size = abs(value)
+    if size == 0 or 10.0**-MAX_DECADES <= size <= 10.0**MAX_DECADES:
+        return
+    raise DiscrimError(
+        f'"{text}" is too {"small" if size < 1 else "large"} to compute with',
+        place=place,
+        do=f"Numbers lie between 1e-{MAX_DECADES} and 1e{MAX_DECADES} in the units of the study, "
+        "or are 0. Check the exponent, or use other units.",
+    )
 
 
 _NEGATIVE_DO = "Check the sign. A reading below zero after a blank is taken off counts as 0."
@@ -266,6 +283,7 @@ def _number(raw: RawTable, row: int, name: str, text: str) -> float:
 def _condition(d: Declaration, n: int, units: UnitSet) -> np.ndarray:
     assert d.value is not None
     value = d.value.internal(units.unit(d.value.unit))
+    check_size(value, d.value.number, d.place)
     if d.role in NOT_NEGATIVE and value < 0:
         raise DiscrimError(_negative(d, d.value.number), place=d.place, do=_NEGATIVE_DO)
     return np.full(n, value)

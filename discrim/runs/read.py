@@ -9,7 +9,7 @@ from __future__ import annotations
 import csv
 import hashlib
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from discrim.errors import DiscrimError, Place
@@ -154,7 +154,8 @@ def _read_text(text: str, ending: str, file: str, sha256: str) -> RawTable:
     separator = "\t" if ending == ".tsv" else _separator(useful)
     records = list(_records(lines, separator, file))
     first, header = records[0]
-    names = _names(header, [row for _, row in records[1:]], file, first, lines[first - 1])
+    rest = [row for _, row in records[1:]]
+    names = _names(header, rest, file, first, lines[first - 1], separator)
     rows, numbers, sources = [], [], []
     for number, cells in records[1:]:
         source = lines[number - 1]
@@ -219,7 +220,12 @@ def _records(lines: list[str], separator: str, file: str) -> Iterator[tuple[int,
 
 
 def _names(
-    header: list[str], rows: list[list[str]], file: str, line: int, source: str
+    header: list[str],
+    rows: list[list[str]],
+    file: str,
+    line: int,
+    source: str,
+    separator: str = ",",
 ) -> tuple[str, ...]:
     """Column names, checked; columns at the end that have neither name nor cells are dropped."""
     place = Place(file, line, 0, 1, source)
@@ -236,10 +242,9 @@ def _names(
                 do="Name every column in the first line.",
             )
         if names.index(name) != number - 1:
-            column = source.rfind(name) + 1
             raise DiscrimError(
                 f'two columns are called "{name}"',
-                place=Place(file, line, column, len(name), source),
+                place=Place(file, line, *_span(source, separator, number - 1), source),
                 do="Give each column its own name.",
             )
     if names and all(_is_number(name) for name in names):
@@ -263,6 +268,9 @@ def _fitted(cells: list[str], wanted: int, separator: str, place: Place) -> tupl
             place=place,
             do="Clear the cells beside the table, or name their columns in its first row.",
         )
+    if len(cells) > wanted:  # underline what is too many
+        start, _ = _span(place.text, separator, wanted)
+        place = replace(place, column=start, length=len(place.text.rstrip()) - start + 1)
     do = f"Each line needs {wanted} cells, separated by a {_SEPARATORS[separator]}."
     if len(cells) > wanted and separator == ",":
         do += (

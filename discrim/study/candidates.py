@@ -84,14 +84,21 @@ def _candidate(
         law = names.parse(text, node.place("law"), bare_names(derived))
         changes = harmonised([law, *(d.formula for d in derived)])
         overall = _overall(node, name) if "overall" in node.data else None
-        return Candidate(name, None, law.xreplace(changes), text, overall, place, note)
+        # complaints about the law point at its text, with all of it underlined
+        return Candidate(
+            name, None, law.xreplace(changes), text, overall, node.place("law"), note
+        )
     mechanism = _steps(node, name) if ways[0] == "steps" else _library(node, folder)
     return Candidate(name, mechanism, None, "", None, place, note)
 
 
 def _steps(node: Node, name: str) -> Mechanism:
-    from discrim.mechanism.parse import parse_mechanism
+    from discrim.mechanism.parse import ASSUME_KEYS, parse_mechanism
 
+    node.table("assume").check_keys(ASSUME_KEYS)
+    species = node.table("species")
+    for key in species.data:
+        species.table(key).check_keys(("formula", "charge"))
     steps = node.table("steps")
     texts = {key: steps.needed(key) for key in steps.data}
     return parse_mechanism(
@@ -104,7 +111,7 @@ def _steps(node: Node, name: str) -> Mechanism:
         sites=node.texts("sites"),
         catalyst=node.texts("catalyst"),
         assume=dict(node.table("assume").data),
-        species=dict(node.table("species").data),
+        species=dict(species.data),
         title=node.text("title"),
         source=node.text("source"),
         note=node.text("note"),

@@ -17,12 +17,16 @@ from discrim.runs.columns import (
     check_supported,
     parse_is,
 )
+from discrim.runs.errors import KEYS as ERROR_KEYS
 from discrim.runs.errors import Piece, parse_error
 from discrim.runs.model import Role, Runs
 from discrim.runs.read import RawTable
 from discrim.study.node import Node
 from discrim.units import ParsedUnit, parse_quantity, parse_unit
 
+KINDS = frozenset(
+    {"amount", "volume", "mass", "time", "pressure", "temperature", "length", "area", "energy"}
+)
 _ONE_ONLY = (Role.RUN, Role.RUN_ORDER, Role.TEMPERATURE, Role.PH, Role.IONIC_STRENGTH)
 
 
@@ -147,6 +151,15 @@ def _check_unit(d: Declaration) -> None:
         raise DiscrimError(f'a temperature in "{text}"', place=d.unit_place, do="Write K or °C.")
     if d.role is Role.PH and powers:
         raise DiscrimError(f'a pH in "{text}"', place=d.unit_place, do="A pH has no units.")
+    # A unit of the user's own may hold a time; one of known kinds alone can be judged.
+    if d.role in OBSERVATIONS and powers and powers.keys() <= KINDS and powers.get("time", 0) >= 0:
+        words = f"{d.role.value} {d.about}"
+        raise DiscrimError(
+            f'the {words} in "{text}", which is not per time',
+            place=d.unit_place,
+            do="Write for example mol/L/s, mol/(kg s), kPa/min, or 1/s for a k_obs. If it is an "
+            f'amount, it is not "{words}".',
+        )
     if d.role in (Role.SPECIES, Role.TOTAL) and "time" in powers:
         raise DiscrimError(
             f'the amount of {d.about} in "{text}"',
@@ -164,7 +177,8 @@ def pieces(d: Declaration, root: Node) -> tuple[Piece, ...] | None:
     what = f'{section.rstrip("s")} "{d.name}"'
 
     def locate(path: tuple[str | int, ...]) -> Place:
-        return root.doc.place((section, d.name, "error", *path), what=what)
+        unknown = isinstance(path[-1], str) and path[-1] not in ERROR_KEYS
+        return root.doc.place((section, d.name, "error", *path), key=unknown, what=what)
 
     return parse_error(d.error, d.error_place, locate)
 

@@ -79,6 +79,10 @@ def read_toml(path: Path, shown: str) -> StudyFile:
     return StudyFile(path, Node(root, (), locator, ""), digest)
 
 
+_QUOTES = 'Texts stand in quotes, tables in [brackets], for example is = "rate of P".'
+_REPEATED = "A name can stand only once in its table: rename one of the two, or take it out."
+
+
 def _syntax(error: tomllib.TOMLDecodeError, shown: str, text: str) -> DiscrimError:
     says = re.sub(r"\s*\(at .*\)$", "", str(error))
     place = Place(shown)
@@ -90,7 +94,7 @@ def _syntax(error: tomllib.TOMLDecodeError, shown: str, text: str) -> DiscrimErr
     return DiscrimError(
         f"not valid TOML: {says[:1].lower()}{says[1:200]}",
         place=place,
-        do='Texts stand in quotes, tables in [brackets], for example is = "rate of P".',
+        do=_REPEATED if re.search("twice|overwrite|already", says) else _QUOTES,
     )
 
 

@@ -218,7 +218,7 @@ def _level(root: Node) -> float:
     node.check_keys(("level",))
     if "level" not in node.data:
         return DEFAULT_LEVEL
-    level = node.number("level")
+    level = node.number("level", "Write level = 0.95.")
     if not 0.5 <= level <= 0.9999:
         raise node.error(
             f"a level of {level:g}", "It lies between 0.5 and 0.9999, usually 0.95.", "level"

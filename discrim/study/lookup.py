@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Collection
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -39,6 +40,9 @@ def check_measured(
     by_column = {c.name: c.about for c in study.runs.columns if c.role is Role.SPECIES}
     known = sorted(measured_species(study))
     first = missing[0]
+    place = law.place if place is None else place
+    if place is not None and (at := place.text.find(f"[{first}]", max(place.column - 1, 0))) >= 0:
+        place = replace(place, column=at + 1, length=len(first) + 2)
     if first in by_column:
         do = (
             f'The column "{first}" is the species "{by_column[first]}": write [{by_column[first]}].'
@@ -51,7 +55,7 @@ def check_measured(
         ).lstrip()
     raise DiscrimError(
         f'the law of "{law.name}" contains {listed(missing)}, which no column measures',
-        place=law.place if place is None else place,
+        place=place,
         do=do,
     )
 

@@ -11,6 +11,12 @@ from discrim.errors import DiscrimError, Place, nearest
 from discrim.study.locate import Locator
 from discrim.study.locate import Path as KeyPath
 
+_HOW = {
+    str: 'Write {} = "...".',
+    bool: "Write {} = true.",
+    dict: "Write [{0}] on a line of its own, or {0} = {{ ... }}.",
+    list: "Write {} = [...].",
+}
 _WORDS = {str: "a text in quotes", bool: "true or false", dict: "a table", list: "a list"}
 
 
@@ -49,7 +55,7 @@ class Node:
     def _typed(self, key: str, wanted: type) -> Any:
         value = self.data[key]
         if not isinstance(value, wanted):
-            raise self.error(f'"{key}" must be {_WORDS[wanted]}', "", key)
+            raise self.error(f'"{key}" must be {_WORDS[wanted]}', _HOW[wanted].format(key), key)
         return value
 
     def text(self, key: str, default: str = "") -> str:
@@ -59,22 +65,25 @@ class Node:
     def needed(self, key: str, do: str = "") -> str:
         """A text that must be there and not be empty."""
         if key not in self.data or not self._typed(key, str).strip():
-            raise self.error(f'"{key}" is missing in {self.what}', do, key)
+            state = "is empty" if key in self.data else "is missing"
+            raise self.error(
+                f'"{key}" {state}', do or f'Write a text in quotes: {key} = "...".', key
+            )
         return self._typed(key, str)
 
     def flag(self, key: str) -> bool:
         return bool(self._typed(key, bool)) if key in self.data else False
 
-    def number(self, key: str) -> float:
+    def number(self, key: str, do: str = "Write it without quotes and without a unit.") -> float:
         value = self.data[key]
         if isinstance(value, bool) or not isinstance(value, int | float):
-            raise self.error(f'"{key}" must be a number', "", key)
+            raise self.error(f'"{key}" must be a number', do, key)
         try:
             number = float(value)
         except OverflowError:
             number = math.inf
         if not math.isfinite(number):
-            raise self.error(f'"{key}" must be a finite number', "", key)
+            raise self.error(f'"{key}" must be a finite number', do, key)
         return number
 
     def quantity_text(self, key: str) -> str:
@@ -93,7 +102,9 @@ class Node:
         if isinstance(value, str):
             return (value,)
         if not isinstance(value, list) or not all(isinstance(v, str) for v in value):
-            raise self.error(f'"{key}" must be a text or a list of texts', "", key)
+            raise self.error(
+                f'"{key}" must be a text or a list of texts', f'Write {key} = ["...", "..."].', key
+            )
         return tuple(value)
 
     def table(self, key: str, what: str = "") -> Node:
@@ -105,7 +116,12 @@ class Node:
         """The elements of ``[[key]]``."""
         value = self.data.get(key, [])
         if not isinstance(value, list) or not all(isinstance(v, dict) for v in value):
-            raise self.error(f'"{key}" must be written [[{key}]]', "", key, key=True)
+            raise self.error(
+                f'"{key}" must be written [[{key}]]',
+                f"Head each {what} with a line [[{key}]].",
+                key,
+                key=True,
+            )
         return [
             Node(part, (*self.path, key, i), self.doc, f"{what} {i + 1}")
             for i, part in enumerate(value)

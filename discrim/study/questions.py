@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 
 from discrim.errors import DiscrimError, nearest
 from discrim.runs.build import listed
-from discrim.runs.columns import Declaration
+from discrim.runs.columns import CONDITIONS, Declaration
 from discrim.runs.model import Role
 from discrim.study.candidates import contents
 from discrim.study.model import Candidate, Derived, Question
@@ -104,24 +104,30 @@ def _question(
     return Question(asks, "", matters, at, place=place)
 
 
+_MATTERS = 'It is the size of an effect, between 0 and 100 % of the rate, for example "5 %".'
+
+
 def _matters(node: Node) -> float:
     """The smallest effect that matters, as a fraction."""
     written = node.data["matters_above"]
     place = node.place("matters_above")
     if isinstance(written, str):
-        quantity = parse_quantity(written, place, percent=True)
+        try:
+            quantity = parse_quantity(written, place, percent=True)
+        except DiscrimError as error:
+            raise DiscrimError(error.says, place=place, do=_MATTERS) from None
         if quantity.unit.text not in ("%", ""):
             raise DiscrimError(
                 f'"{written}" is no fraction', place=place, do='Write for example "5 %".'
             )
         value = quantity.value
     else:
-        value = node.number("matters_above")
+        value = node.number("matters_above", _MATTERS)
     if not 0 < value < 1:
         raise DiscrimError(
             f"matters_above is {written}",
             place=place,
-            do='It is the size of an effect, between 0 and 100 % of the rate, for example "5 %".',
+            do=_MATTERS,
         )
     return value
 
@@ -151,7 +157,7 @@ def _at(node: Node, declared: Sequence[Declaration], units: Mapping[str, Unit]) 
     by_name = {
         (d.about if d.role is Role.SPECIES else d.name): d
         for d in declared
-        if d.name in units and d.role is not Role.IGNORED
+        if d.name in units and d.role in CONDITIONS
     }
     out: dict[str, float] = {}
     for name in table.data:
@@ -172,6 +178,8 @@ def _at(node: Node, declared: Sequence[Declaration], units: Mapping[str, Unit]) 
             )
         value = quantity.internal(units[d.name])
         if value < 0 and d.role is not Role.PH:
-            raise table.error("a negative condition", "", name)
+            raise table.error(
+                f"a negative condition: {quantity.number}", "Amounts are 0 or more.", name
+            )
         out[name] = value
     return out

@@ -10,7 +10,7 @@ from discrim.errors import DiscrimError, Place
 from discrim.units.model import ParsedUnit, Unit
 from discrim.units.read import parse_unit
 
-_NUMBER = re.compile(r"[-+−]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+−]?\d{1,4})?")
+_NUMBER = re.compile(r"[-+−]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+−]?\d{1,4})?", re.ASCII)
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,9 +31,17 @@ def parse_number(text: str, place: Place | None = None) -> float:
     clean = text.strip()
     if _NUMBER.fullmatch(clean):
         value = float(clean.replace("−", "-"))
-        if math.isfinite(value):
+        if math.isfinite(value) and (value or not _digits(clean)):
             return value
-        raise DiscrimError(f'"{_short(clean)}" is too large for a number', place=place)
+        if not value:
+            raise DiscrimError(
+                f'"{_short(clean)}" is too small for a number',
+                place=place,
+                do="Write 0 if that is meant, or use other units.",
+            )
+        raise DiscrimError(
+            f'"{_short(clean)}" is too large for a number', place=place, do="Use other units."
+        )
     if re.fullmatch(r"[-+−]?\d{1,3}(,\d{3})+(\.\d+)?|[-+−]?\d*,\d+(?:[eE][-+−]?\d+)?", clean):
         raise DiscrimError(
             f'"{_short(clean)}" has a comma in a number',
@@ -55,8 +63,12 @@ def parse_quantity(text: str, place: Place | None = None, *, percent: bool = Fal
     match = _NUMBER.match(clean)
     rest = clean[match.end() :] if match else ""
     if match is None or rest[:1] in (",", "_") or rest[:1].isdigit():
-        parse_number(clean.split(" ")[0] if clean else "", place)
-        raise DiscrimError(f'"{_short(clean)}" is no number with a unit', place=place)
+        do = f'Write a number and its unit, for example "{"5 %" if percent else "2.5 mmol/L"}".'
+        try:
+            parse_number(clean.split(" ")[0] if clean else "", place)
+        except DiscrimError as error:
+            raise DiscrimError(error.says, place=place, do=error.do or do) from None
+        raise DiscrimError(f'"{_short(clean)}" is no number with a unit', place=place, do=do)
     value = parse_number(match[0], place)
     unit = rest.strip()
     if unit == "%" and percent:
@@ -69,6 +81,11 @@ def parse_sum(text: str, place: Place | None = None) -> tuple[Quantity, ...]:
     return tuple(
         parse_quantity(term, place, percent=True) for term in re.split(r"\s\+\s", text.strip())
     )
+
+
+def _digits(text: str) -> bool:
+    """Whether a digit other than 0 stands before the exponent."""
+    return any(ch in "123456789" for ch in text.lower().partition("e")[0])
 
 
 def _short(text: str, most: int = 40) -> str:

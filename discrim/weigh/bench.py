@@ -22,7 +22,7 @@ from discrim.ratelaw.model import Constant, ConstantKind, RateLaw, amount, quant
 from discrim.ratelaw.scale import typical_scale
 from discrim.reactor.rates import RatePredictor
 from discrim.runs.model import Column, ErrorBasis, Role
-from discrim.study.model import Study
+from discrim.study.model import ConstantSetting, Study
 from discrim.units import Unit
 
 
@@ -378,6 +378,7 @@ def bind(
                     lower[j] = setting.at_least
                 if setting.at_most is not None:
                     upper[j] = setting.at_most
+                _check_bounds(setting, lower[j])
                 if setting.start is not None:
                     start[j] = setting.start
     scale = np.where(np.isfinite(scale) & (scale > 0), scale, 1.0)
@@ -417,10 +418,38 @@ def _unit_words(
             setting = bench.study.constants.get(s.name)
             if setting is not None and setting.unit is not None:
                 given[s] = setting.unit
-    found = find_units(
-        [(e, bench.responses[k].unit) for k, e in enumerate(expressions)], given, place=law.place
-    )
+    parts = [(e, bench.responses[k].unit) for k, e in enumerate(expressions)]
+    try:
+        found = find_units(parts, given, place=law.place)
+    except DiscrimError:
+        stated = [s for s in given if s not in bench.units]
+        for s in stated:  # is it the unit that the study states for one constant?
+            without = {k: unit for k, unit in given.items() if k is not s}
+            try:
+                find_units(parts, without, place=law.place)
+            except DiscrimError:
+                continue
+            setting = bench.study.constants[s.name]
+            raise DiscrimError(
+                f'the unit of "{s.name}", {setting.shown}, does not fit the law of "{law.name}"',
+                place=setting.place,
+                do="Check it against the law and the units of the columns.",
+            ) from None
+        raise
     return found.words, found.findings
+
+
+def _check_bounds(setting: ConstantSetting, least: float) -> None:
+    """Refuse what is stated below the least value that the constant can have."""
+    stated = {"at_most": setting.at_most, "start": setting.start}
+    for key, value in stated.items():
+        if value is not None and (value < least or (key == "at_most" and value == least)):
+            raise DiscrimError(
+                f'{key} of "{setting.name}" is {value:g}, but it is at least {least:g}',
+                place=setting.place,
+                do="Rate and equilibrium constants are 0 or more; only orders, in an exponent, "
+                "can be negative. Where a term is to be subtracted, write the minus in the law.",
+            )
 
 
 def _all_constants(law: RateLaw, expressions: Sequence[Any]) -> tuple[Constant, ...]:

@@ -283,6 +283,7 @@ def _column(c: Column) -> dict[str, Any]:
         "units": _shown_units(c),
         "values": [number(x) for x in np.atleast_1d(values)] if numeric else [None] * len(c.values),
         "labels": None if numeric else list(c.labels),
+        "cells": list(c.labels) if numeric and c.in_table else None,
         "sd": sd,
         "error": "; ".join(e.words for e in c.errors),
         "origin": origin,

@@ -14,6 +14,9 @@ from discrim.study.model import Candidate, Study
 from discrim.weigh.bench import observed_expression, put_in
 
 
+MAX_CONSTANTS = 30  # of one law, known ones too; laws in use have up to a dozen
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class CandidateLaw:
     """A candidate with its law.
@@ -47,6 +50,14 @@ def law_of(candidate: Candidate, study: Study) -> CandidateLaw:
             overall=candidate.overall,
             place=candidate.place,
             text=candidate.law_text,
+        )
+    if len(law.constants) > MAX_CONSTANTS:
+        raise DiscrimError(
+            f'the law of "{candidate.name}" has {len(law.constants)} constants, at most '
+            f"{MAX_CONSTANTS} are read",
+            place=candidate.place,
+            do="Rates do not pin down so many. Assume steps at equilibrium, name a limiting step, "
+            "or fix what is known.",
         )
     return observed(candidate, law, study)
 

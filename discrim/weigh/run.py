@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from discrim.errors import DiscrimError
+from discrim.errors import DiscrimError, Place
 from discrim.evidence.criteria import weights
 from discrim.evidence.participation import NestedF, nested_f
 from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
@@ -80,6 +80,12 @@ def prepare(
     study: Study, *, planned: bool = False
 ) -> tuple[list[CandidateLaw], Bench, list[Bound]]:
     """Laws derived and checked, and bound to the runs."""
+    if not study.candidates:
+        raise DiscrimError(
+            "the study has no candidates",
+            place=Place(file=str(study.path)),
+            do="Write each mechanism or law that could explain the runs under [[candidates]].",
+        )
     laws = laws_of(study)
     for c in laws:
         # k_obs of S is the rate divided by [S], which a law of first order in S then lacks
