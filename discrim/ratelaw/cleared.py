@@ -16,7 +16,6 @@ from typing import Any
 import numpy as np
 import sympy
 
-
 MAX_TERMS = 200  # of a numerator or denominator when expanded; laws in use have a dozen
 
 

@@ -85,9 +85,7 @@ def _candidate(
         changes = harmonised([law, *(d.formula for d in derived)])
         overall = _overall(node, name) if "overall" in node.data else None
         # complaints about the law point at its text, with all of it underlined
-        return Candidate(
-            name, None, law.xreplace(changes), text, overall, node.place("law"), note
-        )
+        return Candidate(name, None, law.xreplace(changes), text, overall, node.place("law"), note)
     mechanism = _steps(node, name) if ways[0] == "steps" else _library(node, folder)
     return Candidate(name, mechanism, None, "", None, place, note)
 

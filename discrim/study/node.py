@@ -14,7 +14,7 @@ from discrim.study.locate import Path as KeyPath
 _HOW = {
     str: 'Write {} = "...".',
     bool: "Write {} = true.",
-    dict: "Write [{0}] on a line of its own, or {0} = {{ ... }}.",
+    dict: "Write [{1}] on a line of its own, or {0} = {{ ... }}.",
     list: "Write {} = [...].",
 }
 _WORDS = {str: "a text in quotes", bool: "true or false", dict: "a table", list: "a list"}
@@ -55,7 +55,9 @@ class Node:
     def _typed(self, key: str, wanted: type) -> Any:
         value = self.data[key]
         if not isinstance(value, wanted):
-            raise self.error(f'"{key}" must be {_WORDS[wanted]}', _HOW[wanted].format(key), key)
+            parts = [part for part in (*self.path, key) if isinstance(part, str)]
+            do = _HOW[wanted].format(key, ".".join(parts))
+            raise self.error(f'"{key}" must be {_WORDS[wanted]}', do, key)
         return value
 
     def text(self, key: str, default: str = "") -> str:

@@ -13,7 +13,6 @@ from discrim.runs.model import Role
 from discrim.study.model import Candidate, Study
 from discrim.weigh.bench import observed_expression, put_in
 
-
 MAX_CONSTANTS = 30  # of one law, known ones too; laws in use have up to a dozen
 
 

@@ -99,6 +99,14 @@ def prepare(
     check_questions(study, laws)
     bench = build(study, [e for c in laws for e in c.bound], planned=planned)
     bounds = [bind(c.law, bench, c.bound) for c in laws]
+    for c, b in zip(laws, bounds, strict=True):
+        if not b.names:
+            raise DiscrimError(
+                f'nothing in the law of "{c.law.name}" is left to estimate',
+                place=c.candidate.place,
+                do="Leave at least one constant of each candidate open: start = in place of "
+                "value =, or a constant in front of the law.",
+            )
     return laws, bench, bounds
 
 
