@@ -1,6 +1,6 @@
 """Bounded weighted least squares for a whole batch of problems at once.
 
-Levenberg-Marquardt with column scaling (Moré, in Lecture Notes in Mathematics 630, Springer 1978,
+Levenberg-Marquardt with column scaling (Moré, in Numerical Analysis, ed. Watson, Springer 1978,
 p. 105) and the damping schedule of Nielsen (IMM report 1999-05, Technical University of Denmark),
 steps by QR, bounds by an active set, so that a constant reaches zero exactly and can leave it.
 

@@ -83,7 +83,7 @@ class CompiledLaw:
         constants: Sequence[sympy.Symbol],
         conditions: Sequence[sympy.Symbol],
     ) -> None:
-        self.expression = sympy.sympify(expression) if isinstance(expression, int) else expression
+        self.expression = sympy.Integer(expression) if isinstance(expression, int) else expression
         self.constants = tuple(constants)
         self.conditions = tuple(conditions)
         unknown = self.expression.free_symbols - set(self.constants) - set(self.conditions)

@@ -59,7 +59,7 @@ Layout = Number | Name | Sum | Product | Power | Call | Equation
 
 def lay_out(expr: sympy.Basic) -> Layout:
     """The pieces of ``expr`` in reading order."""
-    expr = sympy.sympify(expr) if isinstance(expr, int) else expr
+    expr = sympy.Integer(expr) if isinstance(expr, int) else expr
     if isinstance(expr, sympy.Equality):
         return Equation(lay_out(expr.lhs), lay_out(expr.rhs))
     negative, size = _sign(expr)

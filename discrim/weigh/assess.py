@@ -33,7 +33,8 @@ from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
 from discrim.ratelaw.cleared import cleared
 from discrim.ratelaw.compile import CompiledLaw
-from discrim.weigh.bench import Bench, Bound
+from discrim.weigh.bench import Bench
+from discrim.weigh.bind import Bound
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -12,8 +12,10 @@ from discrim.fit.measurements import Scale
 from discrim.ratelaw.knockout import contains, knock_out
 from discrim.ratelaw.printing import plain
 from discrim.study.model import Study
-from discrim.weigh.bench import Bench, Bound
-from discrim.weigh.document import _column, _is_words, lockstep_words, number
+from discrim.weigh.bench import Bench
+from discrim.weigh.bind import Bound
+from discrim.weigh.document_candidates import lockstep_words
+from discrim.weigh.document_values import column_record, is_words, number
 from discrim.weigh.run import prepare
 from discrim.weigh.words import share, trade_off_words
 
@@ -53,8 +55,8 @@ def checked(study: Study) -> dict[str, Any]:
             "n": int(runs.kept.sum()),
             "labels": list(runs.labels),
             "kept": [bool(k) for k in runs.kept],
-            "observation": "; ".join(_is_words(c) for c in bench.responses),
-            "columns": [_column(c) for c in runs.columns],
+            "observation": "; ".join(is_words(c) for c in bench.responses),
+            "columns": [column_record(c) for c in runs.columns],
             "lockstep": [x for law in out_laws for x in law["lockstep"]],
         },
         "laws": out_laws,

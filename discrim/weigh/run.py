@@ -19,7 +19,8 @@ from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
 from discrim.weigh.asked import Answer, answer, check_questions
 from discrim.weigh.assess import Assessment, assess, fits_of
-from discrim.weigh.bench import Bench, Bound, bind, build
+from discrim.weigh.bench import Bench, build
+from discrim.weigh.bind import Bound, bind
 from discrim.weigh.laws import CandidateLaw, laws_of
 from discrim.weigh.sameness import Relations, relations
 

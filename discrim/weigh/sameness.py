@@ -12,7 +12,8 @@ import sympy
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.nesting import Nesting, Substitution, nested
 from discrim.study.model import Study
-from discrim.weigh.bench import Bound, fixed_put_in
+from discrim.weigh.bench import fixed_put_in
+from discrim.weigh.bind import Bound
 
 
 @dataclass(frozen=True, slots=True, eq=False)

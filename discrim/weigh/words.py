@@ -11,7 +11,7 @@ from discrim.evidence.conditioning import TradeOff
 from discrim.fit.measurements import Scale
 
 if TYPE_CHECKING:
-    from discrim.weigh.bench import Bound
+    from discrim.weigh.bind import Bound
     from discrim.weigh.run import Weighed
 
 CAUTIONS = (
