@@ -197,25 +197,37 @@ def _studentised(z: np.ndarray, norm2: float | np.ndarray, df: int) -> np.ndarra
 
 
 def _joint_p(
-    d: np.ndarray, largest: float, df: int, estimated: bool, replicate_df: int, seed: int
+    d: np.ndarray,
+    largest: float,
+    df: int,
+    estimated: bool,
+    replicate_df: int,
+    seed: int,
+    *,
+    two_sided: bool = True,
 ) -> float:
-    """P(max |z| >= largest) over correlated unit directions, one-by-one exact for a single one."""
-    if len(d) == 1 or _one_line(d):
-        if estimated:
-            return float(2 * t_upper(largest, df - 1)) if df > 1 else 1.0
-        if replicate_df:
-            return float(2 * t_upper(largest, replicate_df))
-        return float(2 * t_upper(largest, np.inf))
+    """P(max |z| >= largest) over correlated unit directions, one-by-one exact for a single one.
+
+    P(max z >= largest) when not ``two_sided``. That is not half the other: of two directions that are
+    opposite to one another, one always has z = |z|.
+    """
+    sides = 2 if two_sided else 1
+    reference = float(df - 1) if estimated else float(replicate_df) if replicate_df else np.inf
+    if estimated and df < 2:
+        return 1.0
+    single = sides * float(t_upper(largest, reference))
+    if len(d) == 1 or (_one_line(d) and (two_sided or bool((d @ d[0] > 0).all()))):
+        return single
     # in the space of the directions: z = A x with x standard normal
     u, s, _ = np.linalg.svd(d, full_matrices=False)
     r = int((s > 1e-9 * s[0]).sum())
     a = u[:, :r] * s[:r]
     rng = np.random.default_rng(seed)
     x = rng.standard_normal((DRAWS, r))
-    z = np.abs(x @ a.T)
+    z = x @ a.T
+    if two_sided:
+        z = np.abs(z)
     if estimated:
-        if df < 2:
-            return 1.0
         rest = rng.chisquare(max(df - r, 1), DRAWS) if df > r else np.zeros(DRAWS)
         total = (x**2).sum(axis=1) + rest
         z = _studentised(z, total[:, None], df)
@@ -224,12 +236,6 @@ def _joint_p(
     hits = int((z.max(axis=1) >= largest).sum())
     simulated = (hits + 1) / (DRAWS + 1)
     # far in the tail the sum over directions is sharper than counting draws, and still valid
-    if estimated:
-        single = float(2 * t_upper(largest, df - 1))
-    elif replicate_df:
-        single = float(2 * t_upper(largest, replicate_df))
-    else:
-        single = float(2 * t_upper(largest, np.inf))
     bound = min(1.0, single * len(d))
     return min(bound, simulated) if hits < 20 else simulated
 

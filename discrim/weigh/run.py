@@ -233,7 +233,7 @@ def _embedded(
         if expr is None:
             row.append(float(larger.predictor.scale[j]))
             continue
-        expr = sympy.sympify(expr) if isinstance(expr, int | float) else expr
+        expr = sympy.Float(expr) if isinstance(expr, int | float) else expr
         numbers = {s: at[s.name] for s in expr.free_symbols if s.name in at}
         try:
             row.append(float(expr.subs(numbers)))
