@@ -19,6 +19,8 @@ from discrim.reactor.model import Predictor
 LOCKSTEP_ERRORS = 3.0
 # or by less than this fraction, whatever the errors are said to be
 LOCKSTEP_RELATIVE = 0.01
+# but never when it varies by more than this: errors that large say that the ratio crosses zero
+LOCKSTEP_MOST = 0.20
 # condition index from which a near-dependency is named (Belsley, Kuh & Welsch 1980, sec. 3.2)
 STRONG_INDEX = 30.0
 # proportion of variance from which a constant counts as involved in it (same place)
@@ -158,7 +160,7 @@ def lockstep(
                     rel = dg[use, s.target, k] / g[use, k] - dg[use, s.target, j] / g[use, j]
                 var += (sd * np.nan_to_num(rel)) ** 2
             error = float(np.sqrt((w * var).sum()))
-            limit = max(LOCKSTEP_ERRORS * error, LOCKSTEP_RELATIVE)
+            limit = min(max(LOCKSTEP_ERRORS * error, LOCKSTEP_RELATIVE), LOCKSTEP_MOST)
             if variation <= limit:
                 found.append(
                     Lockstep(

@@ -77,11 +77,13 @@ def _plane(w: Weighed, i: int) -> dict[str, Any]:
         ys = np.linspace(0.0 if y0 < 0.5 * y1 else y0, y1 + 0.5 * (y1 - y0), DOWN)
     n = data.n
     shown = np.unique(np.linspace(0, n - 1, min(n, MOST_RUNS)).round().astype(int))
-    theta = np.tile(fit.theta, (ACROSS * DOWN, 1))
-    theta[:, jx] = np.repeat(xs, DOWN)
-    theta[:, jy] = np.tile(ys, ACROSS)
-    f = bound.predictor.predict(theta, data.conditions, constants=False).values[:, shown]
-    f = f.reshape(ACROSS, DOWN, len(shown))
+    f = np.empty((ACROSS, DOWN, len(shown)))
+    theta = np.tile(fit.theta, (DOWN, 1))
+    theta[:, jy] = ys
+    for k, x in enumerate(xs):  # one column at a time: a table of 500 runs stays small
+        theta[:, jx] = x
+        all_runs = bound.predictor.predict(theta, data.conditions, constants=False).values
+        f[k] = all_runs[:, shown]
     scale = 1.0
     if fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions:
         scale = float(np.sqrt(fit.scale2)) if fit.scale2 > 0 else 0.0
