@@ -45,7 +45,7 @@ def is_mechanism(path: Path) -> bool:
     import tomllib
 
     try:
-        if path.stat().st_size > 2_000_000:
+        if not path.is_file() or path.stat().st_size > 2_000_000:
             return False
         top = tomllib.loads(path.read_text(encoding="utf-8"))
     except (OSError, ValueError, RecursionError):

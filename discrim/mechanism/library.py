@@ -74,6 +74,8 @@ def _under(base: Path, name: str, place: Place | None) -> Path:
 def read_mechanism(path: Path, *, shown: str, place: Place | None = None) -> Mechanism:
     """Read one file; ``shown`` is its name in messages."""
     try:
+        if path.exists() and not path.is_file():  # a pipe or a device could be read for ever
+            raise DiscrimError(f'"{shown}" is no file', place=place, do="Give a mechanism's file.")
         if path.stat().st_size > MAX_BYTES:
             raise DiscrimError(
                 f'"{shown}" is larger than {MAX_BYTES // 1000} kB',

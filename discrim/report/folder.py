@@ -86,7 +86,10 @@ def load_evidence(path: Path) -> dict[str, Any]:
     place = Place(file=str(file))
     again = "Run `discrim weigh` on the study to make it."
     try:
-        document = json.loads(file.read_text(encoding="utf-8"))
+        if file.exists() and not file.is_file():  # a pipe or a device could be read for ever
+            raise OSError("no file")
+        text = file.read_text(encoding="utf-8")
+        document = json.loads(text, parse_constant=_no_number)
     except FileNotFoundError:
         raise DiscrimError("there is no saved evidence here", place=place, do=again) from None
     except (OSError, ValueError, RecursionError) as problem:
@@ -104,6 +107,10 @@ def load_evidence(path: Path) -> dict[str, Any]:
             do="Use the version of discrim that wrote it, or run `discrim weigh` again.",
         )
     return document
+
+
+def _no_number(word: str) -> Any:
+    raise ValueError(f"it holds {word}")
 
 
 def _short(problem: Exception) -> str:
@@ -147,7 +154,7 @@ def _move_into_place(staged: Path, out: Path) -> None:
     out.rename(old)
     try:
         staged.rename(out)
-    except OSError:
+    except BaseException:  # an interruption too
         old.rename(out)
         raise
     for entry in list(old.iterdir()):

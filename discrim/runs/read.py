@@ -17,6 +17,7 @@ from discrim.runs.workbook import MAX_CELL, MAX_ROWS, SHEET_ERRORS, letters_of, 
 
 MAX_BYTES = 64 * 1024 * 1024
 MAX_COLUMNS = 2_000
+MAX_NAME = 120  # characters of a column's name
 
 
 _SEPARATORS = {"\t": "tab", ";": "semicolon", ",": "comma"}
@@ -212,6 +213,12 @@ def _records(lines: list[str], separator: str, file: str) -> Iterator[tuple[int,
             yield start, [cell.strip() for cell in cells]
             start = 0
     except csv.Error as error:
+        if "field larger" in str(error):
+            raise DiscrimError(
+                f"a cell of more than {MAX_CELL:,} characters",
+                place=Place(file, start or last, 0, 1, lines[(start or last) - 1]),
+                do="Look for a quote that is not closed, or a line that is no run.",
+            ) from None
         raise DiscrimError(
             f"the line cannot be cut into cells ({error})",
             place=Place(file, start or last, 0, 1, lines[(start or last) - 1]),
@@ -240,6 +247,12 @@ def _names(
                 f"column {number} has no name",
                 place=place,
                 do="Name every column in the first line.",
+            )
+        if len(name) > MAX_NAME:
+            raise DiscrimError(
+                f"column {number} has a name of {len(name):,} characters",
+                place=place,
+                do=f"At most {MAX_NAME} are read.",
             )
         if names.index(name) != number - 1:
             raise DiscrimError(

@@ -13,6 +13,11 @@ from discrim.study.locate import Locator
 from discrim.study.node import Node
 
 MAX_BYTES = 2_000_000
+# Reading a dotted key takes tomllib a time that grows with the square of its parts. The repeats are
+# possessive and start at the beginning of a word, so that the search itself takes linear time.
+_LONG_KEY = re.compile(
+    r"""(?<![\w.-])(?:(?:[\w-]++|"[^"\n]{0,80}+"|'[^'\n]{0,80}+')[ \t]*+\.[ \t]*+){41}"""
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,6 +51,8 @@ def read_toml(path: Path, shown: str) -> StudyFile:
                 place=here,
                 do="Give the path of a study file (.toml); discrim new TABLE writes one to start.",
             )
+        if not path.is_file():  # a pipe or a device could be read for ever
+            raise DiscrimError("this is no file", place=here, do="Give a study file (.toml).")
         size = path.stat().st_size
         if size > MAX_BYTES:
             raise DiscrimError(
@@ -67,6 +74,12 @@ def read_toml(path: Path, shown: str) -> StudyFile:
             place=Place(shown, line),
             do="A study is a text file; save it with the encoding UTF-8.",
         ) from None
+    if found := _LONG_KEY.search(text):
+        raise DiscrimError(
+            "a key with more than 40 dots",
+            place=Place(shown, text.count("\n", 0, found.start()) + 1),
+            do="Keys of a study have a few parts, as columns.rate.units.",
+        )
     try:
         root = tomllib.loads(text)
         locator = Locator(shown, text)

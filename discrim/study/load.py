@@ -50,6 +50,7 @@ NOT_YET = ("runs", "window")
 REACTORS = ("rates", "differential")
 REACTORS_NOT_YET = ("stirred-tank", "batch", "semi-batch", "plug-flow")
 DEFAULT_LEVEL = 0.95
+MAX_TITLE = 300
 
 
 def load(path: str | Path) -> Study:
@@ -72,6 +73,11 @@ def load(path: str | Path) -> Study:
     file = read_toml(Path(path), str(path))
     root = file.root
     root.check_keys(KEYS, NOT_YET)
+    title = root.text("title")
+    if len(title) > MAX_TITLE:
+        raise root.error(
+            f"a title of {len(title):,} characters", f"At most {MAX_TITLE} are read.", "title"
+        )
     reactor = _reactor(root)
     raw = _table(file)
     declared = columns(root, raw) + conditions(root, raw)
@@ -105,7 +111,7 @@ def load(path: str | Path) -> Study:
     )
     return Study(
         path=file.path,
-        title=root.text("title") or file.path.stem,
+        title=title or file.path.stem,
         reactor=reactor,
         runs=runs,
         candidates=candidates,

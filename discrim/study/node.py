@@ -11,6 +11,8 @@ from discrim.errors import DiscrimError, Place, nearest
 from discrim.study.locate import Locator
 from discrim.study.locate import Path as KeyPath
 
+MAX_TEXT = 5_000  # of any text but a law, which has its own limit
+_LAWS = ("law", "formula")
 _HOW = {
     str: 'Write {} = "...".',
     bool: "Write {} = true.",
@@ -58,6 +60,10 @@ class Node:
             parts = [part for part in (*self.path, key) if isinstance(part, str)]
             do = _HOW[wanted].format(key, ".".join(parts))
             raise self.error(f'"{key}" must be {_WORDS[wanted]}', do, key)
+        if isinstance(value, str) and len(value) > MAX_TEXT and key not in _LAWS:
+            raise self.error(
+                f'"{key}" has {len(value):,} characters', f"At most {MAX_TEXT:,} are read.", key
+            )
         return value
 
     def text(self, key: str, default: str = "") -> str:
