@@ -59,6 +59,7 @@ def write_report(document: Document, folder: str | os.PathLike[str]) -> Path:
 def check_free(out: Path) -> None:
     """Raise a ``DiscrimError`` unless ``out`` is absent, empty, or a results folder of ours."""
     if not out.exists():
+        _check_parent(out)
         return
     if not out.is_dir():
         raise DiscrimError(
@@ -72,6 +73,7 @@ def check_free(out: Path) -> None:
             place=Place(file=str(out)),
             do="Choose a new or empty folder with --out.",
         )
+    _check_parent(out)
 
 
 def load_evidence(path: Path) -> dict[str, Any]:
@@ -115,6 +117,18 @@ def _no_number(word: str) -> Any:
 
 def _short(problem: Exception) -> str:
     return " ".join(str(problem).split())[:120] or type(problem).__name__
+
+
+def _check_parent(out: Path) -> None:
+    """Raise unless the folder that would hold ``out`` is one, or can be made."""
+    holder = next((p for p in out.parents if p.exists()), out.parent)
+    if not holder.is_dir():
+        says = "a file stands where a folder of the results should be"
+    elif not os.access(holder, os.W_OK | os.X_OK):
+        says = "nothing can be written in this folder"
+    else:
+        return
+    raise DiscrimError(says, place=Place(file=str(holder)), do="Choose another folder with --out.")
 
 
 def _is_ours(out: Path) -> bool:

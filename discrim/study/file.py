@@ -49,7 +49,7 @@ def read_toml(path: Path, shown: str) -> StudyFile:
             raise DiscrimError(
                 "there is no such file",
                 place=here,
-                do="Give the path of a study file (.toml); discrim new TABLE writes one to start.",
+                do="Give the path of a study file (.toml).",
             )
         if not path.is_file():  # a pipe or a device could be read for ever
             raise DiscrimError("this is no file", place=here, do="Give a study file (.toml).")

@@ -12,11 +12,15 @@ def weigh(study: Study, *, seed: int = 1, workers: int = 1, progress: Any = None
 
     The answer does not depend on ``workers``.
     """
+    import numpy as np
+
     from discrim.weigh.document import document
     from discrim.weigh.run import run, with_all_runs
 
     weighed = run(study, seed=seed, progress=progress)
-    return document(weighed, with_all_runs(study, seed=seed))
+    # A law may overflow at a fit; the record then holds no number there, so no warning is due.
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        return document(weighed, with_all_runs(study, seed=seed))
 
 
 def check(study: Study) -> dict[str, Any]:
