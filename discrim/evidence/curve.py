@@ -86,11 +86,12 @@ class Curve:
         start_b = self.theta + self.slope * (values - self.theta[psi])[:, None]
         start_b[:, psi] = values
         both = solve(problem, np.vstack([start_a, start_b]), fixed=fixed, options=_OPTIONS)
-        sol = _better(both.take(np.arange(s)), both.take(np.arange(s, 2 * s)))
+        sol = _better(problem, both.take(np.arange(s)), both.take(np.arange(s, 2 * s)))
         if s > 2 and not bool(problem.predictor.linear.all()):
             # continue from the better neighbour: catches a restricted fit caught in a side valley
             order = np.argsort(values, kind="stable")
-            q = np.where(np.isfinite(sol.objective), sol.objective, np.inf)[order]
+            merit = problem.merit(sol)
+            q = np.where(np.isfinite(merit), merit, np.inf)[order]
             before, after = np.r_[np.inf, q[:-1]], np.r_[q[1:], np.inf]
             source = np.empty(s, int)
             source[order] = order[
@@ -101,7 +102,7 @@ class Curve:
             again = solve(
                 problem, start, fixed=fixed, options=_OPTIONS, conditions=sol.conditions[source]
             )
-            sol = _better(sol, again)
+            sol = _better(problem, sol, again)
         return self._points(values, sol)
 
     def _between(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray | None]:
@@ -134,8 +135,8 @@ class Curve:
 _OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
 
 
-def _better(a: Solution, b: Solution) -> Solution:
-    rows = np.flatnonzero(b.objective < a.objective)
+def _better(problem: Problem, a: Solution, b: Solution) -> Solution:
+    rows = np.flatnonzero(problem.merit(b) < problem.merit(a))
     if len(rows):
         for name in a.__slots__:
             setattr(a, name, np.array(getattr(a, name)))

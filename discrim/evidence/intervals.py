@@ -24,6 +24,7 @@ from discrim.evidence.distributions import (
     t_quantile,
 )
 from discrim.fit.fit import Fit
+from discrim.fit.fit import fit as refit
 from discrim.fit.measurements import Scale
 
 CROSSED, BOUND, OPEN, FAILED = "crossed", "bound", "open", "failed"
@@ -175,10 +176,14 @@ def along(
     tests = _Acceptance(fit, base, level, lo)
 
     accepts: list[Accept] = [tests.reconciled, tests.not_too_high, tests.not_too_low]
-    if with_profile:
+    held = with_profile and fit.problem.joint_scale
+    if with_profile and not held:
         accepts.append(tests.profile)
     (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi)
-    profile = rest[0][0] if rest else nothing("profile", "not asked for")
+    if held:
+        profile = _profile_at_variance(fit, psi, level, se)
+    else:
+        profile = rest[0][0] if rest else nothing("profile", "not asked for")
     return Along(
         _around(profile, x),
         _named(recon, "reconciled", tests, pts),
@@ -187,6 +192,20 @@ def along(
         pts,
         lowest,
     )
+
+
+def _profile_at_variance(fit: Fit, psi: int, level: float, se: float) -> Interval:
+    """Profile where s^2 is estimated beside known errors of the conditions: s^2 held at its estimate.
+
+    With s^2 estimated anew at each value the objective is N - p everywhere and says nothing.
+    """
+    if fit.degrees_of_freedom < 1:
+        return nothing("profile", "not computed: as many constants as runs, scale unknown")
+    data = fit.data.with_variance(fit.scale2, fit.degrees_of_freedom)
+    again = refit(fit.predictor, data, starts=1, near=fit.theta[None])
+    if not again.ok:
+        return nothing("profile", "not computed: the fit with the variance held failed")
+    return along(again, Curve.of(again, psi), level, se=se).profile
 
 
 def _around(profile: Interval, x: float) -> Interval:

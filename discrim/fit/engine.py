@@ -239,6 +239,16 @@ class Problem:
             np.zeros(s, int),
         )
 
+    def merit(self, sol: Solution) -> np.ndarray:
+        """What optima are chosen by, the least first, shape (S,): Q, or, where s^2 is estimated
+        together with condition errors and Q is therefore N - p at every optimum, s^2 (after those that
+        need none)."""
+        if not self.joint_scale:
+            return sol.objective
+        size = max(float(np.mean(self.data.y**2)), 1e-300)
+        worse = self.data.n * (1.0 + sol.scale2 / size)
+        return np.where(np.isfinite(sol.objective) & (sol.scale2 > 0), worse, sol.objective)
+
     def updated_scale(self, sol: Solution, free: np.ndarray) -> np.ndarray:
         """s^2 >= 0 with Q(s^2) = N - p, the condition errors held (moment estimate).
 
@@ -311,6 +321,8 @@ def solve(
     for f in _FIELDS:  # own, writable arrays
         setattr(best, f, np.array(getattr(best, f)))
     best.state[:] = np.where(np.isfinite(best.objective), RUNNING, NOT_FINITE)
+    if problem.joint_scale:  # the guess of s^2 must not outlive a start that needs no step
+        best = _rescaled(problem, best, n_free)
     separable = opt.separate and not problem.with_conditions and bool(pred.linear.any())
 
     # a linear law needs no damping: one step solves it, a second one refines the solution, which in
@@ -402,7 +414,7 @@ def solve(
         best.iterations[a] += 1
     best.state[best.state == RUNNING] = STEP_LIMIT
     if problem.measured:
-        best = _polished(problem, best, everything)
+        best = _polished(problem, best, everything, n_free)
     return best
 
 
@@ -423,9 +435,25 @@ def _refreshed(problem: Problem, new: Solution, free: np.ndarray, rows: np.ndarr
     return problem.evaluate(new.theta, new.conditions, None, new.scale2, rows)
 
 
-def _polished(problem: Problem, best: Solution, rows: np.ndarray) -> Solution:
-    """Reconciliation carried on to convergence at the final constants."""
+def _rescaled(problem: Problem, best: Solution, free: np.ndarray) -> Solution:
+    """The starts with s^2 from their own residuals, where those are finite."""
+    rows = np.flatnonzero(np.isfinite(best.objective))
+    if len(rows):
+        old = best.take(rows)
+        new = _refreshed(problem, old, free[rows], rows)
+        new.state, new.iterations = old.state, old.iterations
+        good = np.isfinite(new.objective)
+        for f in _FIELDS:
+            setattr(best, f, np.array(getattr(best, f)))
+        best.put(rows[good], new.take(good))
+    return best
+
+
+def _polished(problem: Problem, best: Solution, rows: np.ndarray, free: np.ndarray) -> Solution:
+    """Reconciliation (and s^2, where it is estimated) carried on to convergence at the final constants."""
     for _ in range(12):
+        if problem.joint_scale:
+            best = _rescaled(problem, best, free)
         new = problem.evaluate(best.theta, best.conditions, None, best.scale2, rows, passes=2)
         shift = 0.0
         for s in problem.measured:

@@ -78,6 +78,15 @@ class Fit:
         return self.status is not FitStatus.NOT_FINITE
 
     @property
+    def badness(self) -> float:
+        """To compare fits of different laws to one table: Q, or s^2 (N - p) in units of the mean square
+        of the observations where s^2 is estimated together with condition errors."""
+        if not self.problem.joint_scale:
+            return self.objective
+        size = max(float(np.mean(self.data.y**2)), 1e-300)
+        return self.scale2 * max(self.degrees_of_freedom, 1) / size
+
+    @property
     def variances(self) -> np.ndarray:
         """Diagonal of V, shape (N,)."""
         v = self.covariance
@@ -172,8 +181,8 @@ def _settled_on_bounds(problem: Problem, one: Solution) -> Solution:
 def of_solution(problem: Problem, solution: Solution) -> Fit:
     """The record of the best of the solved problems in a batch."""
     data, predictor = problem.data, problem.predictor
-    objective = np.where(np.isfinite(solution.objective), solution.objective, np.inf)
-    k = int(np.argmin(objective))
+    merit = problem.merit(solution)
+    k = int(np.argmin(np.where(np.isfinite(merit), merit, np.inf)))
     one = _settled_on_bounds(problem, solution.take(np.array([k])))
     state = int(one.state[0])
     status = FitStatus.CONVERGED if state == CONVERGED else FitStatus.STEP_LIMIT

@@ -162,6 +162,17 @@ class Measurements:
             ),
         )
 
+    def with_variance(self, variance: float, df: int) -> Measurements:
+        """The unknown variance of the observations held at an estimate with ``df`` degrees of freedom."""
+        least = 1e-12 * float(np.var(self.y))
+        sd = float(np.sqrt(max(variance, least, 1e-300)))
+        return replace(
+            self,
+            sources=(*self.of_conditions, source(OBSERVATION, self.n, absolute=sd)),
+            scale=Scale.REPLICATES,
+            scale_df=df,
+        )
+
     def without_condition_errors(self) -> Measurements:
         """Conditions taken as exact, as the textbook tests do."""
         return replace(self, sources=self.of_observations)

@@ -208,11 +208,11 @@ def _no_larger_law_worse(
             small = out[smaller].get(origin)
             if small is None or not small.ok:
                 continue
-            if big.ok and big.objective <= small.objective * (1 + 1e-9) + 1e-12:
+            if big.ok and big.badness <= small.badness * (1 + 1e-9) + 1e-12:
                 continue
             near = _embedded(bounds[smaller], bounds[larger], small.theta, nesting.values)
             again = fit(bounds[larger].predictor, big.data, seed=seed + 1, starts=32, near=near)
-            if again.ok and (not big.ok or again.objective < big.objective):
+            if again.ok and (not big.ok or again.badness < big.badness):
                 out[larger] = {**out[larger], origin: again}
     return out
 
