@@ -6,12 +6,17 @@ with a seed, so the truth is known. Bounds are binomial.
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from scipy import stats
 
+from discrim.evidence.curve import Curve
+from discrim.evidence.intervals import along, standard_errors
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, solve
+from discrim.fit.fit import fit
 from discrim.fit.measurements import Measurements, Scale, source
 from tests.reference.outside import predictor, symbols
 
@@ -59,3 +64,40 @@ def test_size_with_shared_errors(origin: str, shared: str, n: int) -> None:
     assert stats.binomtest(false, STUDIES, 0.06, alternative="greater").pvalue > 0.001
     if shared != "by no two runs":
         assert 0.6 < np.median(held.scale2) / sd**2 < 1.3
+
+
+@pytest.mark.parametrize("origin", ["set", "measured"])
+def test_a_law_of_one_constant(origin: str) -> None:
+    """With its only constant held, no step is ever taken, and s^2 stayed at its first guess: 55 % of
+    the intervals missed the truth (5 % are due)."""
+    rng = np.random.default_rng(8)
+    n = 12
+    a = rng.uniform(0.5, 2.0, (STUDIES, n))
+    shaken = a * (1 + 0.02 * rng.standard_normal((STUDIES, n)))
+    true, shown = (shaken, a) if origin == "set" else (a, shaken)
+    y = 3.0 * true + 0.5 * rng.standard_normal((STUDIES, n))
+    error = source(0, n, relative=0.02, origin=origin)
+    table = Measurements(y, shown[:, :, None], (error,), Scale.ESTIMATED, ("A",))
+    problem = Problem(predictor(k_A * A, (k_A,), (A,), n), table)
+    held = solve(problem, np.full((STUDIES, 1), 3.0), fixed=np.array([True]))
+    missed = int((np.abs(score(problem, held, 0).z) > stats.norm.ppf(0.975)).sum())
+    assert stats.binomtest(missed, STUDIES, 0.05, alternative="greater").pvalue > 0.001
+    assert np.median(held.scale2) == pytest.approx(0.25, rel=0.2)
+
+
+def test_profile_intervals_close() -> None:
+    """s^2 estimated anew at every value makes the objective N - p everywhere: such profiles were open
+    to both sides. Here they lie near the reconciled interval, which does without them."""
+    n = 12
+    table = drawn(n, "measured", np.arange(n), 0.05, 9)
+    law = predictor(k_A * A, (k_A,), (A, B), n)
+    for i in range(5):
+        one = replace(table, y=table.y[i], conditions=table.conditions[i])
+        found = fit(law, one)
+        both = along(found, Curve.of(found, 0), 0.95, se=float(standard_errors(found)[0]))
+        for ours, other in (
+            (both.profile.low, both.reconciled.low),
+            (both.profile.high, both.reconciled.high),
+        ):
+            assert ours.end == "crossed"
+            assert ours.value == pytest.approx(other.value, rel=0.02)
