@@ -46,6 +46,8 @@ class Assessment:
     fits : by reading of the condition errors ("stated", or "measured" and "set")
     primary : the reading whose numbers are printed
     intervals : for each constant, by kind
+    below : constants, shape (p,), of a point on a profile that fits better than the fit, or None; the
+        fit has to be made again from there
     """
 
     bound: Bound
@@ -59,16 +61,22 @@ class Assessment:
     criteria: Criteria
     fit_p: float | None
     lack_of_fit: LackOfFit | None
+    below: np.ndarray | None = None
 
     @property
     def fit(self) -> Fit:
         return self.fits[self.primary]
 
 
-def fits_of(bound: Bound, data: Measurements, *, seed: int) -> dict[str, Fit]:
-    """One fit for each way to read the condition errors."""
+# a point on a profile this much below the fit, relative, says that the fit was not the optimum
+BETTER = 1e-5
+
+
+def fits_of(
+    bound: Bound, data: Measurements, *, seed: int, near: np.ndarray | None = None
+) -> dict[str, Fit]:
+    """One fit for each way to read the condition errors; ``near``, shape (k, p), adds starts."""
     out: dict[str, Fit] = {}
-    near = None
     for origin in data.origins():
         found = fit(
             bound.predictor,
@@ -107,10 +115,11 @@ def assess(
     cond = conditioning(one.jacobian, names)
     weight = 1.0 / np.sqrt(one.variances)
     locks = tuple(lockstep(bound.predictor, data, one.theta, weight)) if one.ok else ()
+    below = None
     if not one.ok:
         intervals: tuple[dict[str, Interval], ...] = tuple({} for _ in names)
     elif stands:
-        intervals = _intervals(bound, fits, se, level)
+        intervals, below = _intervals(bound, fits, se, level)
     else:
         intervals = _linearised_only(one, se, level)
     known = common.scale is not Scale.ESTIMATED
@@ -133,6 +142,7 @@ def assess(
         crit,
         objective_p(one) if one.ok else None,
         lack_of_fit(one) if one.ok else None,
+        below,
     )
 
 
@@ -149,8 +159,10 @@ def _linearised_only(one: Fit, se: np.ndarray, level: float) -> tuple[dict[str, 
 
 def _intervals(
     bound: Bound, fits: Mapping[str, Fit], se: np.ndarray, level: float
-) -> tuple[dict[str, Interval], ...]:
+) -> tuple[tuple[dict[str, Interval], ...], np.ndarray | None]:
     one = next(iter(fits.values()))
+    below: np.ndarray | None = None
+    lowest = one.objective * (1.0 - BETTER)
     sure = guaranteed(
         bound.predictor,
         one.data,
@@ -163,6 +175,10 @@ def _intervals(
         by_origin = [
             along(f, Curve.of(f, j), level, se=float(standard_errors(f)[j])) for f in fits.values()
         ]
+        points = by_origin[0].points
+        if by_origin[0].lower_objective < lowest:
+            lowest = by_origin[0].lower_objective
+            below = points.solution.theta[int(np.nanargmin(points.objective))]
         recon = by_origin[0].reconciled
         for other in by_origin[1:]:
             recon = hull(recon, other.reconciled)
@@ -179,7 +195,7 @@ def _intervals(
                 "guaranteed": sure[j],
             }
         )
-    return tuple(out)
+    return tuple(out), below
 
 
 def cleared_of(bound: Bound) -> Cleared | None:

@@ -126,14 +126,6 @@ def column_of_symbol(symbol: Any, study: Study) -> Column | None:
     return None
 
 
-def catalyst_column(law_catalysts: Sequence[str], study: Study) -> Column | None:
-    """The column that a law per total catalyst is to be multiplied with."""
-    for c in study.runs.columns:
-        if c.role is Role.CATALYST or (c.role is Role.TOTAL and c.about in law_catalysts):
-            return c
-    return None
-
-
 def known_constants(study: Study) -> dict[str, tuple[float, float, float | None]]:
     """Constants known with an uncertainty: name -> (value, sd, hard bound or None)."""
     return {

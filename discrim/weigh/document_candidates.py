@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from discrim.evidence.conditioning import Lockstep
+from discrim.evidence.conditioning import Lockstep, collinearity_index
 from discrim.evidence.intervals import Interval
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
@@ -59,6 +59,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
             },
             "condition_number": number(a.conditioning.condition_number),
             "digits_lost": number(a.conditioning.digits_lost),
+            "collinearity_index": number(collinearity_index(fit.jacobian)) if fit.ok else None,
             "condition_indices": [number(x) for x in a.conditioning.indices],
             "variance_proportions": [
                 [number(x) for x in row] for row in a.conditioning.proportions

@@ -8,8 +8,9 @@ from typing import Any
 from discrim.errors import DiscrimError
 from discrim.ratelaw.bare import law_from_expression
 from discrim.ratelaw.derive import derive
-from discrim.ratelaw.model import RateLaw, amount, quantity
+from discrim.ratelaw.model import RateLaw, quantity
 from discrim.runs.model import Role
+from discrim.study.lookup import measured_species
 from discrim.study.model import Candidate, Study
 from discrim.weigh.bench import observed_expression, put_in
 
@@ -30,16 +31,16 @@ class CandidateLaw:
     bound: tuple[Any, ...]
 
 
-def measured_species(study: Study) -> frozenset[str]:
-    """Species whose amounts columns, conditions or derived quantities give."""
-    names = {c.about for c in study.runs.columns if c.role in (Role.SPECIES, Role.TOTAL)}
-    return frozenset(names | {d.name for d in study.derived})
+def _measured(study: Study) -> frozenset[str]:
+    """Species that are no intermediates: measured, derived, or known by their total."""
+    totals = {c.about for c in study.runs.columns if c.role is Role.TOTAL}
+    return measured_species(study) | totals
 
 
 def law_of(candidate: Candidate, study: Study) -> CandidateLaw:
     """Derive (or read) the law of one candidate and what each observed column is in it."""
     if candidate.mechanism is not None:
-        law = derive(candidate.mechanism, measured=measured_species(study))
+        law = derive(candidate.mechanism, measured=_measured(study))
         law = replace(law, name=candidate.name, place=law.place or candidate.place)
         law = _per_amount_of_catalyst(law, candidate, study)
     else:
@@ -100,11 +101,3 @@ def _per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) ->
 def laws_of(study: Study) -> list[CandidateLaw]:
     """All candidates, in the order of the study."""
     return [law_of(c, study) for c in study.candidates]
-
-
-def in_law(law: RateLaw, about: str, study: Study) -> bool:
-    """Whether a species occurs in the law, itself or through a derived quantity."""
-    symbol = amount(about)
-    return symbol in law.rate.free_symbols or any(
-        symbol in e.free_symbols for e in law.production.values()
-    )

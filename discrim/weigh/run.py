@@ -136,14 +136,17 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
         say("fitting", i, n)
         fits.append(fits_of(b, data, seed=seed))
     fits = _no_larger_law_worse(bounds, fits, related, seed)
-    common, common_fits = _common_scale(bounds, fits, data, seed)
+    shared = _common_scale(fits, data)
+    common_fits = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
+    common = shared.as_origin(next(iter(fits[0])))
     say("comparing rivals", 0, 1)
     standings, stands = _standing(common_fits, related, alpha, seed)
     assessments = []
     for i, b in enumerate(bounds):
         say("intervals", i, n)
-        assessments.append(
-            assess(
+
+        def judged(i: int = i, b: Bound = b) -> Assessment:
+            return assess(
                 b,
                 bench,
                 fits[i],
@@ -152,7 +155,14 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
                 common_fit=common_fits[i][0],
                 stands=stands[i],
             )
-        )
+
+        found = judged()
+        if found.below is not None:
+            # a profile went below the optimum: the starts had missed it
+            fits[i] = fits_of(b, data, seed=seed, near=found.below[None])
+            common_fits[i] = _on_common(b, fits[i], shared, data, seed)
+            found = judged()
+        assessments.append(found)
     in_use = [
         f.ok and not any((j, i) in related.same for j in range(i))
         for i, f in enumerate(a.fit for a in assessments)
@@ -243,39 +253,46 @@ def _embedded(
     return out if np.isfinite(out).all() else None
 
 
-def _common_scale(
-    bounds: Sequence[Bound], fits: Sequence[dict[str, Fit]], data: Measurements, seed: int
-) -> tuple[Measurements, list[list[Fit]]]:
-    """Fits with one scale for all candidates, for criteria and rivals, one for each reading.
+def _common_scale(fits: Sequence[dict[str, Fit]], data: Measurements) -> Measurements:
+    """The measurements with one scale for all candidates, for criteria and rivals.
 
     Where the variance of the rates is unknown and conditions have errors, s^2 is taken from the
     candidate with the most constants (the best of those), once for all; its degrees of freedom make
     the reference a t.
     """
-    origins = list(next(iter(fits)))
     if data.scale is not Scale.ESTIMATED or data.exact_conditions:
-        first = data.as_origin(origins[0])
-        return first, [[f[o] for o in origins] for f in fits]
-    good = [f for f in fits if f[origins[0]].ok] or list(fits)
-    most = max(f[origins[0]].p for f in good)
-    general = min((f[origins[0]] for f in good if f[origins[0]].p == most), key=lambda f: f.scale2)
+        return data
+    first = [next(iter(f.values())) for f in fits]
+    good = [f for f in first if f.ok] or first
+    most = max(f.p for f in good)
+    general = min((f for f in good if f.p == most), key=lambda f: f.scale2)
     df = max(general.degrees_of_freedom, 1)
     typical = float(np.var(data.y)) * 1e-12
     sd = float(np.sqrt(max(general.scale2, typical, 1e-300)))
-    common = replace(
+    return replace(
         data,
         sources=(*data.of_conditions, source(OBSERVATION, data.n, absolute=sd)),
         scale=Scale.REPLICATES,
         scale_df=df,
     )
-    out = []
-    for b, f in zip(bounds, fits, strict=True):
-        row = []
-        for o in origins:
-            near = f[o].theta[None] if f[o].ok else None
-            row.append(fit(b.predictor, common.as_origin(o), seed=seed, starts=4, near=near))
-        out.append(row)
-    return common.as_origin(origins[0]), out
+
+
+def _on_common(
+    bound: Bound, fits: dict[str, Fit], common: Measurements, data: Measurements, seed: int
+) -> list[Fit]:
+    """One law fitted to the measurements with the common scale, one fit for each reading."""
+    if common is data:
+        return list(fits.values())
+    return [
+        fit(
+            bound.predictor,
+            common.as_origin(origin),
+            seed=seed,
+            starts=4,
+            near=f.theta[None] if f.ok else None,
+        )
+        for origin, f in fits.items()
+    ]
 
 
 def _standing(

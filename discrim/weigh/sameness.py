@@ -6,7 +6,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-import numpy as np
 import sympy
 
 from discrim.ratelaw.model import Constant
@@ -89,11 +88,3 @@ def _at_row(bound: Bound, i: int, study: Study) -> Any:
         if name != c.name:
             swap[c.symbol] = _symbol(c, name)
     return e.xreplace(swap) if swap else e
-
-
-def as_matrix(r: Relations, n: int) -> np.ndarray:
-    """contains as an (n, n) boolean array, for tests."""
-    out = np.zeros((n, n), bool)
-    for i, j in r.contains:
-        out[i, j] = True
-    return out
