@@ -19,6 +19,8 @@ ERROR_MARGIN = 1.5
 ASSUMED_SPREAD = 0.10
 # A sensitivity with less than this fraction outside lockstep is called conditioning, not noise.
 CONDITIONING_FRACTION = 0.10
+# Combinations of the other constants that the runs do not tell apart: the test allows for one.
+MOST_WEAK = 1
 # A fraction below this is rounding of the arithmetic.
 NOTHING_APART = 1e-9
 # Fewer runs than constants plus this are called too few.
@@ -40,6 +42,7 @@ class Reading:
     bound: float
     information: float
     margin: float
+    weak: int = 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,6 +118,12 @@ def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[
                     f"{r.margin:.2g} times as large as stated (at least {ERROR_MARGIN:g} is asked)"
                 )
                 break
+        most = max(r.weak for r in c.readings)
+        if most > MOST_WEAK:
+            stops.append(
+                f"in “{c.name}” {most} combinations of the other constants are in lockstep with one "
+                f"another within the errors of the conditions (the test allows for {MOST_WEAK})"
+            )
         weakest = min(r.information for r in c.readings)
         if c.assumed_errors and weakest < ASSUMED_SPREAD:
             stops.append(

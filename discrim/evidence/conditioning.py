@@ -90,6 +90,10 @@ def collinearity_index(columns: np.ndarray) -> float:
     """One over the smallest singular value of the unit-length columns (Brun, Reichert & Künsch,
     Water Resour. Res. 37 (2001) 1015)."""
     norms = np.sqrt((columns**2).sum(axis=0))
+    if not np.isfinite(norms).all():
+        return float("nan")
+    if (norms == 0).any() or not len(norms):
+        return float("inf")
     s = np.linalg.svd(columns / norms, compute_uv=False)
     return float(1.0 / s[-1]) if s[-1] > 0 else float("inf")
 

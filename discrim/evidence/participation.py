@@ -7,7 +7,7 @@ from enum import Enum
 
 import numpy as np
 
-from discrim.evidence.curve import Curve
+from discrim.evidence.curve import Curve, Points
 from discrim.evidence.distributions import (
     chi2_quantile_upper,
     chi2_upper,
@@ -18,6 +18,7 @@ from discrim.evidence.distributions import (
 )
 from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance
+from discrim.evidence.projected import projected, weak_nuisance
 from discrim.evidence.intervals import OPEN, Side, along, guard_level, standard_errors
 from discrim.evidence.rivals import Against, _joint_p, _studentised, directions
 from discrim.evidence.score import basis, p_one_sided, score, to_normal, without
@@ -105,6 +106,8 @@ class Participation:
     reproduced
         exactly without the term; its median when the term is absent
     flip_matters : the same for an effect of ``matters_above``
+    weak : combinations of the *other* constants that the runs do not tell apart from the errors of the
+        conditions; with one the test is the projected one, with more it does not hold its level
     """
 
     kind: Kind
@@ -121,6 +124,7 @@ class Participation:
     flip_typical: float
     flip_matters: float
     words: str
+    weak: int = 0
 
 
 MARGIN_FACTORS = (1.0, 1.25, 1.5, 2.0, 3.0, 5.0, 10.0)
@@ -163,7 +167,7 @@ def participation(
     alpha = 1.0 - level
     problem = Problem(term.full, data)
     two_sided = term.kind in (Kind.ORDER, Kind.FACTOR, Kind.SEVERAL)
-    z, information, words = _test(term, problem, full, reduced, seed)
+    z, information, words, weak = _test(term, problem, full, reduced, seed, alpha)
     p = float("nan")
     if np.isfinite(z):
         p = 2 * p_one_sided(abs(z)) if two_sided else p_one_sided(z)
@@ -202,6 +206,7 @@ def participation(
         typical,
         matters,
         words,
+        weak,
     )
 
 
@@ -209,17 +214,19 @@ def participation(
 
 
 def _test(
-    term: Term, problem: Problem, full: Fit, reduced: Fit, seed: int
-) -> tuple[float, float, str]:
+    term: Term, problem: Problem, full: Fit, reduced: Fit, seed: int, alpha: float
+) -> tuple[float, float, str, int]:
+    """Equivalent normal, information, which test it was, and how many weak nuisance directions."""
     if term.kind in (Kind.ZERO, Kind.ORDER):
         pts = Curve(problem, full.theta, term.psi[0], full.jacobian).at(np.array([0.0]))
-        return (
-            float(pts.z[0]),
-            float(pts.score.information[0]),
-            "reconciled score test",
-        )
+        z, weak = _at_zero(term, problem, pts, alpha)
+        words = "reconciled score test"
+        if weak:
+            words += ", the least significant over other constants in lockstep with one another"
+        return z, float(pts.score.information[0]), words, weak
     if term.kind is Kind.SEVERAL:
-        return (*_several(term, problem, full), "reconciled score test, several constants at once")
+        words = "reconciled score test, several constants at once"
+        return (*_several(term, problem, full), words, 0)
     null = reduced
     if term.kind is Kind.FACTOR:
         rows = directions(null, full)
@@ -227,7 +234,27 @@ def _test(
     else:
         rows = _vanishing(term, null)
         words = "largest reconciled score over the constants that vanish with it"
-    return (*_along_directions(null, rows, term.kind is Kind.VANISH, seed), words)
+    return (*_along_directions(null, rows, term.kind is Kind.VANISH, seed), words, 0)
+
+
+def _at_zero(term: Term, problem: Problem, pts: Points, alpha: float) -> tuple[float, int]:
+    """The score at zero, projected where other constants are in lockstep with one another."""
+    z = float(pts.z[0])
+    if not np.isfinite(z):
+        return z, 0
+    psi = term.psi[0]
+    weak = weak_nuisance(problem, pts.solution, psi)
+    if not weak.count:
+        return z, 0
+    outside = guard_level(alpha)
+    every = projected(problem, pts.solution, psi, weak.constant, outside=outside)
+    if term.kind is Kind.ZERO:  # only a rise counts
+        tail = p_one_sided(float(every.min())) if len(every) else 0.0
+        return float(normal_of_tail(min(tail + outside, 1.0))), weak.count
+    same_side = len(every) > 0 and (every.min() > 0 or every.max() < 0)
+    tail = 2.0 * p_one_sided(float(np.abs(every).min())) if same_side else float(len(every) > 0)
+    side = np.sign(every[0]) if len(every) else np.sign(z)
+    return float(side * normal_of_tail(min(tail + outside, 1.0) / 2.0)), weak.count
 
 
 def _by_objective(
@@ -410,7 +437,41 @@ def _effect(term: Term, problem: Problem, full: Fit, level: float) -> Effect | N
     open_ended = OPEN in (result.reconciled.low.end, result.reconciled.high.end)
     if not np.isfinite(bound) or result.upper_one_sided.end == "failed":
         bound, open_ended = 1.0, True
+    bound = _projected_bound(wrapped, shifted, min(abs(bound), 1.0), level)
     return Effect(value, low, high, min(abs(bound), 1.0), label, open_ended)
+
+
+# how far beyond its plain bound an effect is looked for where other constants are in lockstep
+WIDER = (1.0, 1.1, 1.25, 1.5, 2.0, 3.0, 5.0, 10.0, 30.0, 100.0)
+
+
+def _projected_bound(wrapped: InEffect, shifted: Fit, bound: float, level: float) -> float:
+    """The bound of the size of an effect, where other constants are in lockstep with one another: the
+    next value that the projected test rejects as well."""
+    psi = wrapped.psi
+    problem, alpha = shifted.problem, 1.0 - level
+    if bound >= 1.0 or not weak_nuisance(problem, shifted.solution, psi).count:
+        return bound
+    outside = guard_level(alpha)
+    need = normal_quantile(1.0 - (alpha - outside))
+    curve = Curve.of(shifted, psi)
+    for factor in WIDER:
+        size = factor * max(bound, 1e-3)
+        if size >= 1.0:
+            break
+        rejected = True
+        for sign in (1.0, -1.0):
+            if wrapped.sign not in (0, int(sign)):
+                continue
+            pts = curve.at(np.array([float(t_of(sign * size))]))
+            weak = weak_nuisance(problem, pts.solution, psi)
+            every = pts.z
+            if weak.count:
+                every = projected(problem, pts.solution, psi, weak.constant, outside=outside)
+            rejected &= not (sign * every >= -need).any()
+        if rejected:
+            return size
+    return 1.0
 
 
 def _detectable(
@@ -456,7 +517,7 @@ def _margin(
         problem = Problem(term.full, data.with_condition_errors_times(factor))
         if term.kind in (Kind.ZERO, Kind.ORDER):
             pts = Curve(problem, full.theta, term.psi[0], full.jacobian).at(np.array([0.0]))
-            z = float(pts.z[0])
+            z = _at_zero(term, problem, pts, alpha)[0]
             if not (abs(z) if two_sided else z) > critical and pts.objective[0] > guard:
                 # see _by_objective
                 without_it = fit(term.reduced, problem.data, starts=4)
@@ -467,7 +528,7 @@ def _margin(
         again = full
         if term.kind is Kind.FACTOR:
             again = fit(term.full, problem.data, starts=4, near=full.theta[None])
-        return _test(term, problem, again, reduced, seed)[0]
+        return _test(term, problem, again, reduced, seed, alpha)[0]
 
     last, last_z = 1.0, float("nan")
     for factor in MARGIN_FACTORS:

@@ -29,6 +29,7 @@ from discrim.ratelaw.tokens import (
     MAX_BITS,
     MAX_DECADES,
     MAX_EXPONENT,
+    MAX_LAYERS,
     MAX_LENGTH,
     MAX_NESTING,
     Source,
@@ -83,6 +84,7 @@ def parse_expression(
         )
     source = Source(text, place)
     tree = _Parser(source).parse()
+    _check_layers(tree, 0, source)
     orders: set[str] = set()
     _names_in_exponents(tree, False, orders)
     try:
@@ -276,6 +278,26 @@ class _Parser:
             token.end,
             "A number, a name, a [species] or an opening bracket must stand here.",
         )
+
+
+_ATOMS = ("number", "name", "species")
+_LAYERS = (*FUNCTIONS, "power")
+
+
+def _check_layers(node: _Node, above: int, source: Source) -> None:
+    """Refuse functions and powers of sums that stand too deep in one another: their derivatives
+    grow beyond any use, and so does the time to find them."""
+    layer = node.op in _LAYERS and any(part.op not in _ATOMS for part in node.parts)
+    depth = above + layer
+    if depth > MAX_LAYERS:
+        source.fail(
+            "too many functions or powers inside one another",
+            node.start,
+            node.end,
+            f"At most {MAX_LAYERS} are read.",
+        )
+    for part in node.parts:
+        _check_layers(part, depth, source)
 
 
 def _names_in_exponents(node: _Node, inside: bool, out: set[str]) -> None:

@@ -10,6 +10,7 @@ import sympy
 from discrim.ratelaw.model import Constant, ConstantKind
 
 _SEED = 20240229  # of the points at which a second derivative is tried before it is proven
+_DIGITS = 60  # of the numbers at that point
 _EXACT_LIMIT = 400  # operations up to which a doubtful second derivative is simplified
 
 
@@ -68,7 +69,8 @@ def _no_second(slope: sympy.Expr, symbol: sympy.Symbol) -> bool:
         s: sympy.Rational(_SEED % (97 + 2 * i), 61 + 4 * i) + sympy.Rational(1, 3)
         for i, s in enumerate(sorted(second.free_symbols, key=str))
     }
-    value = second.xreplace(point)
+    # Floats of many digits, not exact numbers, whose size explodes in powers of sums.
+    value = second.xreplace({s: sympy.Float(x, _DIGITS) for s, x in point.items()})
     if value.is_number and abs(sympy.N(value, 30)) > sympy.Float("1e-15"):
         return False
     if sympy.count_ops(second) > _EXACT_LIMIT:

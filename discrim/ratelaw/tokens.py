@@ -11,7 +11,8 @@ from discrim.errors import DiscrimError, Place
 
 # Limits on hostile or mistaken input; far above what a rate law needs.
 MAX_LENGTH = 20_000  # characters of one expression
-MAX_NESTING = 100  # brackets, signs and exponents inside one another
+MAX_NESTING = 40  # brackets, signs and exponents inside one another
+MAX_LAYERS = 6  # functions and powers of sums inside one another; laws in use have one or two
 MAX_EXPONENT = 50  # largest numeral as an exponent
 MAX_DECADES = 300  # numbers lie between 1e-300 and 1e300, as in double precision
 MAX_NUMERAL = 60  # characters of one number

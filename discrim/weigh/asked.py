@@ -278,7 +278,7 @@ def _facts(
     readings = []
     for origin, p in k.by_origin.items():
         bound = p.effect.bound if p.effect is not None else 1.0
-        readings.append(Reading(origin, p.p, bound, p.information, p.error_margin))
+        readings.append(Reading(origin, p.p, bound, p.information, p.error_margin, p.weak))
     untestable = k.note
     if any(r.p != r.p for r in readings):
         untestable = (

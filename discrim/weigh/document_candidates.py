@@ -129,7 +129,7 @@ def _correlations(fit: Fit) -> list[list[float | None]]:
     jac = fit.jacobian
     n, p = jac.shape
     norms = np.sqrt((jac**2).sum(axis=0))
-    if n < p or not np.isfinite(jac).all() or (norms == 0).any():
+    if n < p or not np.isfinite(norms).all() or (norms == 0).any():
         return [[None] * p for _ in range(p)]
     _, s, vt = np.linalg.svd(jac / norms, full_matrices=False)
     if s[-1] <= 1e-14 * s[0]:

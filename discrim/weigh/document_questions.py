@@ -18,13 +18,14 @@ def question_records(w: Weighed) -> list[dict[str, Any]]:
             out.append(_participates(w, next(answers)))
         elif q.asks == "stands":
             names = [c.law.name for c in w.laws]
-            about = names if q.about in ("all", "") else [n for n in names if n == q.about]
+            wanted = set(q.names) or ({q.about} if q.about not in ("all", "") else set(names))
+            about = [n for n in names if n in wanted]
             yes = [n for n, s in zip(names, w.stands, strict=True) if s and n in about]
             no = [n for n, s in zip(names, w.stands, strict=True) if not s and n in about]
             out.append(
                 {
                     "asks": "stands",
-                    "about": q.about or "all",
+                    "about": "all" if len(about) == len(names) else ", ".join(about),
                     "verdict": "stands" if yes else "rejected",
                     "sentence": sentence_standing(yes, no),
                     "standing": yes,
