@@ -34,7 +34,8 @@ class Reading:
     """What one candidate says of a species or pathway, errors read one way ("set" or "measured").
 
     ``p``: that it is absent (one-sided unless ``two_sided``); ``bound``: one-sided bound of the
-    size of its effect; ``information``: fraction of the sensitivity outside lockstep.
+    size of its effect; ``information``: fraction of the sensitivity outside lockstep; ``weak``:
+    combinations of the other constants that are in lockstep with one another.
     """
 
     origin: str

@@ -18,8 +18,8 @@ from discrim.evidence.distributions import (
 )
 from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance
-from discrim.evidence.projected import projected, weak_nuisance
 from discrim.evidence.intervals import OPEN, Side, along, guard_level, standard_errors
+from discrim.evidence.projected import projected, weak_nuisance
 from discrim.evidence.rivals import Against, _joint_p, _studentised, directions
 from discrim.evidence.score import basis, p_one_sided, score, to_normal, without
 from discrim.fit.covariance import Whitener
