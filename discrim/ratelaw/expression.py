@@ -280,18 +280,38 @@ class _Parser:
         )
 
 
+def size_of(expr: sympy.Basic) -> tuple[int, int]:
+    """(number of nodes when written out, depth); each shared part is visited once."""
+    sizes: dict[sympy.Basic, tuple[int, int]] = {}
+    stack: list[tuple[sympy.Basic, bool]] = [(expr, False)]
+    while stack:
+        e, seen = stack.pop()
+        if e in sizes:
+            continue
+        if seen:
+            parts = [sizes[a] for a in e.args]
+            sizes[e] = 1 + sum(n for n, _ in parts), 1 + max((d for _, d in parts), default=0)
+        else:
+            stack.append((e, True))
+            stack += [(a, False) for a in e.args if a not in sizes]
+    return sizes[expr]
+
+
 _ATOMS = ("number", "name", "species")
 _LAYERS = (*FUNCTIONS, "power")
 
 
 def _check_layers(node: _Node, above: int, source: Source) -> None:
-    """Refuse functions and powers of sums that stand too deep in one another: their derivatives
+    """Refuse functions, fractions and powers of sums too deep in one another: their derivatives
     grow beyond any use, and so does the time to find them."""
-    layer = node.op in _LAYERS and any(part.op not in _ATOMS for part in node.parts)
+    if node.op == "inverse":
+        layer = node.parts[0].op == "sum"
+    else:
+        layer = node.op in _LAYERS and any(part.op not in _ATOMS for part in node.parts)
     depth = above + layer
     if depth > MAX_LAYERS:
         source.fail(
-            "too many functions or powers inside one another",
+            "too many functions, fractions or powers inside one another",
             node.start,
             node.end,
             f"At most {MAX_LAYERS} are read.",

@@ -11,7 +11,7 @@ from typing import Any
 import sympy
 
 from discrim.errors import DiscrimError, Place
-from discrim.ratelaw.expression import parse_expression
+from discrim.ratelaw.expression import parse_expression, size_of
 from discrim.ratelaw.model import ConstantKind, amount, constant_symbol, quantity
 from discrim.runs.columns import CONDITIONS, OBSERVATIONS, Declaration, check_species
 from discrim.runs.model import Role
@@ -19,6 +19,8 @@ from discrim.study.model import Derived
 from discrim.study.node import Node
 from discrim.units import ParsedUnit, Unit, UnitSet, parse_unit
 
+MAX_SIZE = 2_000  # signs and symbols of a formula written out; formulas in use have a few dozen
+MAX_DEPTH = 30  # a root of a sum of products is four deep
 _NAME = re.compile(r"[^\W\d]\w*")
 _BRACKETED = re.compile(r"\[([^\[\]]+)\]")
 
@@ -120,6 +122,13 @@ def parse_derived(
             if other in mentioned and not (other == name and other in names.quantities):
                 put(other, (*above, name))
         expression = names.parse(text, place, substitutions(done.values()))
+        size, depth = size_of(expression)
+        if size > MAX_SIZE or depth > MAX_DEPTH:
+            raise DiscrimError(
+                "the formula is too long or too deep once the others are put into it",
+                place=place,
+                do="Use fewer derived quantities inside one another.",
+            )
         unit, factor = _unit(expression, node, units, parsed_units[name], names, constant_units)
         done[name] = Derived(name, expression * factor, text, unit, node.place(key=True))
 
