@@ -12,6 +12,8 @@ import unicodedata
 from collections.abc import Iterable
 from dataclasses import dataclass
 
+MAX_SAYS, MAX_DO = 400, 2_000  # characters of a message; ours are shorter, names in them may not be
+
 
 @dataclass(frozen=True, slots=True)
 class Place:
@@ -62,7 +64,8 @@ class DiscrimError(Exception):
     def message(self) -> str:
         lines = []
         head = str(self.place) if self.place is not None else ""
-        lines.append(f"{head}: {self.says}" if head else self.says)
+        says = _short(self.says, MAX_SAYS)
+        lines.append(_printable(f"{_short(head, MAX_SAYS)}: {says}" if head else says))
         if self.place is not None and self.place.text:
             text, column = _clip(self.place.text, self.place.column)
             lines.append("    " + text)
@@ -70,7 +73,7 @@ class DiscrimError(Exception):
                 width = max(1, min(self.place.length, len(text) - column + 1))
                 lines.append("    " + " " * (column - 1) + "^" * width)
         if self.do:
-            lines.append(self.do)
+            lines.append(_printable(_short(self.do, MAX_DO)))
         return "\n".join(lines)
 
     def at(self, place: Place) -> DiscrimError:
@@ -78,9 +81,19 @@ class DiscrimError(Exception):
         return type(self)(self.says, place=place, do=self.do)
 
 
+def _short(text: str, most: int) -> str:
+    """The text with its middle left out where it is too long, as it is when it quotes a file."""
+    return text if len(text) <= most else f"{text[: most * 2 // 3]} … {text[-most // 4 :]}"
+
+
+def _printable(text: str) -> str:
+    """Names come from files: what a terminal would obey, or a line break, becomes a space."""
+    return "".join(ch if ch.isprintable() else " " for ch in text)
+
+
 def _clip(text: str, column: int, width: int = 90) -> tuple[str, int]:
     """At most ``width`` characters of a line around ``column``, printable, tabs made single."""
-    clean = "".join(ch if ch.isprintable() else " " for ch in text)
+    clean = _printable(text)
     if len(clean) <= width:
         return clean, column
     start = max(0, min(column - 1 - width // 3, len(clean) - width)) if column else 0

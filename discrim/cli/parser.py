@@ -27,7 +27,8 @@ class Parser(argparse.ArgumentParser):
         )
 
     def error(self, message: str) -> NoReturn:
-        self.exit(2, f"{self.prog}: {message}\nSee `{self.prog} --help`.\n")
+        shown = "".join(ch if ch.isprintable() else " " for ch in message)
+        self.exit(2, f"{self.prog}: {shown}\nSee `{self.prog} --help`.\n")
 
     def parse_args(self, args: Any = None, namespace: Any = None) -> Any:
         options, unknown = self.parse_known_args(args, namespace)

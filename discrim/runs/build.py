@@ -217,6 +217,8 @@ def _values(raw: RawTable, name: str, d: Declaration | None, units: UnitSet) -> 
                 out[row] = parse_number(text) if text else np.nan
             except DiscrimError:
                 return np.full(raw.n, np.nan)  # a column of words
+        if np.nanmax(np.abs(out), initial=0.0) > 10.0**MAX_DECADES:
+            return np.full(raw.n, np.nan)  # numbers that cannot be computed with: words as well
         return out
     for row, text in enumerate(texts):
         if text:

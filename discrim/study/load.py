@@ -206,7 +206,7 @@ def _other_evidence(root: Node, candidates: Sequence[Candidate]) -> tuple[OtherE
     out = []
     for node in root.tables("other_evidence", "other evidence"):
         node.check_keys(("says", "source", "against"))
-        against = node.texts("against")
+        against = tuple(name.strip() for name in node.texts("against"))  # as candidates' names are
         for i, name in enumerate(against):
             if name not in names:
                 raise node.error(

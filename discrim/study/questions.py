@@ -73,7 +73,7 @@ def _question(
         if key in node.data and asks == "stands":
             raise node.error(f'"{key}" belongs to other questions', "Take it out.", key, key=True)
     if asks == "stands":
-        wanted = node.texts("stands")
+        wanted = tuple(name.strip() for name in node.texts("stands"))  # as candidates' names are
         every = [c.name for c in candidates]
         if wanted == ("all",):
             return Question(asks, "all", place=place)
