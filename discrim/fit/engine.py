@@ -20,7 +20,7 @@ import numpy as np
 
 from discrim.fit.covariance import Whitener, add_source
 from discrim.fit.measurements import Measurements, Scale
-from discrim.reactor.model import Predictor
+from discrim.reactor.model import Prediction, Predictor
 
 RUNNING, CONVERGED, STEP_LIMIT, NOT_FINITE = 0, 1, 2, 3
 
@@ -168,6 +168,26 @@ class Problem:
             out[..., s.target] += sd * pull
         return out
 
+    def _predicted(
+        self, theta: np.ndarray, conditions: np.ndarray
+    ) -> tuple[Prediction, np.ndarray]:
+        """Predictions with sensitivities to conditions, and the conditions they are made at.
+
+        Where the law has no finite slope (the root of an amount read as zero, or reconciled to below
+        it), a measured condition under one stated error is taken at one stated error instead.
+        """
+        pred = self.predictor.predict(theta, conditions, conditions_too=True)
+        assert pred.by_conditions is not None
+        bad = ~(np.isfinite(pred.values) & np.isfinite(pred.by_conditions).all(axis=2))
+        if not self.measured or not bad.any():
+            return pred, conditions
+        raised = np.array(np.broadcast_to(conditions, (len(theta), *conditions.shape[-2:])))
+        for s in self.measured:
+            here = raised[..., s.target]
+            sd = np.broadcast_to(s.sd(here), here.shape)
+            raised[..., s.target] = np.where(bad & (here < sd), sd, here)
+        return self.predictor.predict(theta, raised, conditions_too=True), raised
+
     def evaluate(
         self,
         theta: np.ndarray,
@@ -199,7 +219,7 @@ class Problem:
             cov = w
         else:
             for k in range(passes):
-                pred = self.predictor.predict(theta, conditions, conditions_too=True)
+                pred, conditions = self._predicted(theta, conditions)
                 values, f_c = pred.values, pred.by_conditions
                 assert f_c is not None
                 assert pred.by_constants is not None

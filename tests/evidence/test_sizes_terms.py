@@ -65,3 +65,20 @@ def test_the_guard_never_spends_what_the_score_needs(level: float) -> None:
     alpha = 1.0 - level
     assert 0 < guard_level(alpha) <= 0.2 * alpha * (1 + 1e-12)
     assert guard_level(0.05) == pytest.approx(0.01)
+
+
+def test_the_root_of_an_amount_read_as_zero() -> None:
+    """sqrt(A) has no finite slope at A = 0, nor a value below it, where reconciling may lead."""
+    n = 10
+    rng = np.random.default_rng(32)
+    a = np.r_[0.0, 0.0, np.linspace(0.1, 2.0, n - 2)]
+    shown = np.maximum(a + 0.02 * rng.standard_normal((20, n)), 0.0)
+    shown[:, 0] = 0.0
+    y = 3.0 * np.sqrt(a) + 0.03 * rng.standard_normal((20, n))
+    law = predictor(k_A * A**0.5, (k_A,), (A,), n)
+    errors = (source(OBSERVATION, n, absolute=0.03), source(0, n, absolute=0.02, origin="measured"))
+    for i in range(20):
+        found = fit(law, Measurements(y[i], shown[i][:, None], errors, Scale.STATED, ("A",)))
+        assert found.ok
+        assert found.theta[0] == pytest.approx(3.0, abs=0.3)
+        assert (found.conditions >= 0.0).all()
