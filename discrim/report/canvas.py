@@ -201,7 +201,7 @@ def with_units(name: str, units: str, power: str = "") -> str:
 
 def few_ticks(axis: Any, n: int = 5) -> None:
     axis.set_major_locator(MaxNLocator(n))
-    axis.set_major_formatter(FuncFormatter(lambda x, _: number(round(x, 12))))
+    axis.set_major_formatter(FuncFormatter(lambda x, _: number(round(float(x), 12))))
 
 
 def log_ticks(axis: Any, low: float, high: float) -> None:

@@ -13,7 +13,7 @@ from discrim.runs.columns import CONDITIONS, LABELS, NOT_NEGATIVE, OBSERVATIONS,
 from discrim.runs.errors import Cells, Piece, error_parts, label_key, same_label
 from discrim.runs.model import Column, ErrorBasis, ErrorPart, Role, Runs, frozen
 from discrim.runs.read import RawTable
-from discrim.units import ParsedUnit, Unit, UnitSet, parse_number
+from discrim.units import MAX_DECADES, ParsedUnit, Unit, UnitSet, check_size, parse_number
 
 DIMENSIONLESS = ParsedUnit("")
 
@@ -240,23 +240,6 @@ def _values(raw: RawTable, name: str, d: Declaration | None, units: UnitSet) -> 
         where = raw.place(first, name)
         raise DiscrimError(_negative(d, texts[first]), place=where, do=_NEGATIVE_DO)
     return out
-
-
-# Squares and products of a few such numbers still fit into double precision (IEEE 754: 1e±308).
-MAX_DECADES = 60
-
-
-def check_size(value: float, text: str, place: Place | None) -> None:
-    """Refuse a number that is too large or too small to compute with."""
-    size = abs(value)
-    if size == 0 or 10.0**-MAX_DECADES <= size <= 10.0**MAX_DECADES:
-        return
-    raise DiscrimError(
-        f'"{text}" is too {"small" if size < 1 else "large"} to compute with',
-        place=place,
-        do=f"Numbers lie between 1e-{MAX_DECADES} and 1e{MAX_DECADES} in the units of the study, "
-        "or are 0. Check the exponent, or use other units.",
-    )
 
 
 _NEGATIVE_DO = "Check the sign. A reading below zero after a blank is taken off counts as 0."

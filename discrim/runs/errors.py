@@ -17,7 +17,7 @@ import numpy as np
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.runs.columns import OBSERVATIONS, Declaration
 from discrim.runs.model import ErrorBasis, ErrorPart, Origin, Role, frozen
-from discrim.units import ParsedUnit, Quantity, Unit, parse_sum
+from discrim.units import ParsedUnit, Quantity, Unit, check_size, parse_sum
 
 How = Literal["sd", "limits", "expanded", "digits", "replicates", "column", "exact"]
 KEYS = ("sd", "limits", "expanded", "k", "column", "origin", "shared_by")
@@ -176,6 +176,7 @@ def _parse_size(written: Any, how: How, place: Place | None) -> Piece:
     for term in terms:
         if term.value < 0:
             raise DiscrimError(f'"{text}" is negative', place=place, do="An error is 0 or more.")
+        check_size(term.value, term.number, place)
     if all(term.value == 0 for term in terms):
         return Piece("exact", words="exact", place=place)
     words = f"limits ± {text}" if how == "limits" else text

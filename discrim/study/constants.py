@@ -11,7 +11,7 @@ from discrim.runs.build import listed
 from discrim.runs.errors import half_a_digit, parse_error
 from discrim.study.model import ConstantSetting
 from discrim.study.node import Node
-from discrim.units import Quantity, Unit, UnitSet, parse_quantity
+from discrim.units import Quantity, Unit, UnitSet, check_size, parse_quantity
 
 KEYS = ("value", "error", "fixed", "start", "at_least", "at_most", "per", "note")
 _VALUES = ("value", "start", "at_least", "at_most")
@@ -87,6 +87,8 @@ def settings(
         named = w.unit
         unit = units.unit(named.unit) if named else None
         numbers = {key: _internal(q, unit, w, key) for key, q in w.quantities.items()}
+        for key, number in numbers.items():
+            check_size(number, w.quantities[key].number, w.node.place(key))
         sd, bound = _error(w, unit, numbers.get("value", 0.0))
         per = w.node.text("per") or None
         if per is not None and per not in columns:

@@ -11,7 +11,7 @@ from discrim.runs.model import Role
 from discrim.study.candidates import contents
 from discrim.study.model import Candidate, Derived, Question
 from discrim.study.node import Node
-from discrim.units import Unit, parse_quantity
+from discrim.units import Unit, check_size, parse_quantity
 
 ASKS = ("participates", "stands", "equal", "constant", "reversible")
 KEYS = (*ASKS, "matters_above", "at", "value", "note")
@@ -177,6 +177,7 @@ def _at(node: Node, declared: Sequence[Declaration], units: Mapping[str, Unit]) 
                 f'"{quantity.number}" of what?', f'Write "{quantity.number} {written.text}".', name
             )
         value = quantity.internal(units[d.name])
+        check_size(value, quantity.number, table.place(name))
         if value < 0 and d.role is not Role.PH:
             raise table.error(
                 f"a negative condition: {quantity.number}", "Amounts are 0 or more.", name

@@ -7,15 +7,24 @@ in the user's own units. Factors and dimensions of single units come from pint; 
 """
 
 from discrim.units.model import Base, ParsedUnit, Unit, UnitSet
-from discrim.units.quantity import Quantity, parse_number, parse_quantity, parse_sum
+from discrim.units.quantity import (
+    MAX_DECADES,
+    Quantity,
+    check_size,
+    parse_number,
+    parse_quantity,
+    parse_sum,
+)
 from discrim.units.read import parse_unit
 
 __all__ = [
+    "MAX_DECADES",
     "Base",
     "ParsedUnit",
     "Quantity",
     "Unit",
     "UnitSet",
+    "check_size",
     "parse_number",
     "parse_quantity",
     "parse_sum",

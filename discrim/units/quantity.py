@@ -83,6 +83,23 @@ def parse_sum(text: str, place: Place | None = None) -> tuple[Quantity, ...]:
     )
 
 
+# Squares and products of a few such numbers still fit into double precision (IEEE 754: 1e±308).
+MAX_DECADES = 60
+
+
+def check_size(value: float, text: str, place: Place | None = None) -> None:
+    """Refuse a number that is too large or too small to compute with."""
+    size = abs(value)
+    if size == 0 or 10.0**-MAX_DECADES <= size <= 10.0**MAX_DECADES:
+        return
+    raise DiscrimError(
+        f'"{text}" is too {"small" if size < 1 else "large"} to compute with',
+        place=place,
+        do=f"Numbers lie between 1e-{MAX_DECADES} and 1e{MAX_DECADES} in the units of the study, "
+        "or are 0. Check the exponent, or use other units.",
+    )
+
+
 def _digits(text: str) -> bool:
     """Whether a digit other than 0 stands before the exponent."""
     return any(ch in "123456789" for ch in text.lower().partition("e")[0])

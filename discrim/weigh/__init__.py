@@ -25,9 +25,12 @@ def weigh(study: Study, *, seed: int = 1, workers: int = 1, progress: Any = None
 
 def check(study: Study) -> dict[str, Any]:
     """The conditioning of the runs, before any fit is believed; works on a planned table."""
+    import numpy as np
+
     from discrim.weigh.checked import checked
 
-    return checked(study)
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):  # as in weigh
+        return checked(study)
 
 
 def derive_all(study: Study) -> list[dict[str, Any]]:

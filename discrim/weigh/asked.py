@@ -178,6 +178,16 @@ def _in_candidate(
         reduced_law = _lumped(reduced_law)
     reduced = bind_law(reduced_law, study, bench)
     term = _term(question, study, bench, c, bound, ko, reduced)
+    if term.kind is not Kind.FACTOR and not term.psi:
+        return InCandidate(
+            index,
+            True,
+            ko,
+            {},
+            None,
+            f"“{c.law.name}”: {', '.join(sorted(ko.psi))} is given in the study, so these runs are "
+            "not asked about it",
+        )
     by_origin = {}
     for origin, full in fits.items():
         data = full.data

@@ -118,3 +118,26 @@ def test_errors_out_of_all_proportion(error: str, desk: Desk) -> None:
     study = STUDY.replace('error = "2 %"', f'error = "{error}"')
     document = weighed(desk, study, TABLE)
     assert document["questions"][0]["verdict"] in ("participates", "negligible", "undecided")
+
+
+def test_a_question_about_a_constant_that_is_given(desk: Desk) -> None:
+    """The study says that the pathway is there, so the runs are not asked."""
+    given = 'k_by_b = { value = "1.5e-4 1/s", fixed = true }'
+    study = STUDY.replace('k_by_a = { start = "1e-4 1/s", at_most = "1e3 1/s" }', given)
+    question = weighed(desk, study, TABLE)["questions"][0]
+    assert question["verdict"] == "undecided"
+    assert "k_by_b is given in the study, so these runs are not asked about it" in str(question)
+
+
+def test_all_but_the_constant_in_question_is_given(desk: Desk) -> None:
+    given = 'k_by_a = { value = "1e-4 1/s", error = "1 %" }'
+    study = STUDY.replace('k_by_a = { start = "1e-4 1/s", at_most = "1e3 1/s" }', given)
+    assert weighed(desk, study, TABLE)["questions"][0]["verdict"] == "participates"
+
+
+def test_a_column_of_no_effect(desk: Desk) -> None:
+    """The constant of a pathway whose species is nowhere has no sensitivity at all."""
+    table = rows(*(f"{i},0,{i},x,{i}" for i in range(1, 7)))
+    assert weighed(desk, ALL_RUNS, table)["questions"][0]["verdict"] == "participates"
+    code, _, err = desk.run("check", "study.toml")
+    assert (code, err) == (0, "")

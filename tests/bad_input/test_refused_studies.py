@@ -287,6 +287,7 @@ CONSTANTS: dict[str, Case] = {
         "write the minus in the law",
     ),
     "starts below zero": ('"1e-4 1/s"', '"-1 1/s"', "is -1, but it is at least 0", "k_by_a", "0"),
+    "huge": ('"1e-4 1/s"', '"1e300 1/s"', "too large to compute with", "1e300 1/s", "1e60"),
     "word": ('"1e3 1/s"', '"many"', '"many" stands where', "many", "Write a number and its unit"),
     "fixed and bounded": (
         'start = "1e-4 1/s"',
@@ -298,6 +299,8 @@ CONSTANTS: dict[str, Case] = {
 }
 ERRORS: dict[str, Case] = {
     "no unit": ('"2 %"', '"2"', '"2" of what?', "2", 'Write "2 umol/L/s" or "2 %".'),
+    "huge": ('"2 %"', '"1e300 %"', '"1e300" is too large', "1e300 %", "between 1e-60 and 1e60"),
+    "tiny": ('"2 %"', '"1e-300 %"', '"1e-300" is too small', "1e-300 %", "1e-60 and 1e60"),
     "number": ('"2 %"', "2", '"2" of what?', "2", 'Write "2 umol/L/s" or "2 %".'),
     "negative": ('"2 %"', '"-1 %"', '"-1 %" is negative', "-1 %", "An error is 0 or more."),
     "word": ('"2 %"', '"digit"', '"digit" is no error', "digit", 'Did you mean "digits"?'),
@@ -327,6 +330,7 @@ QUESTIONS: dict[str, Case] = {
     "nan": ('"5 %"', "nan", "must be a finite number", "nan", MATTERS),
     "at no condition": ("at = { A", "at = { Q", '"Q" is no condition', "Q", '"A", "B", "W"'),
     "at the rate": ("at = { A", "at = { rate", '"rate" is no condition', "rate", '"A", "B", "W"'),
+    "at the end of the world": ('"20 m', '"1e99 m', "too large", "1e99 mmol/L", "1e60"),
     "at below zero": ('"20 mmol/L"', '"-20 mmol/L"', "a negative condition", "-20 mmol/L", "0 or"),
     "stands": ('"all"', '["A alon"]', 'no candidate "A alon"', '["A alon"]', 'mean "A alone"?'),
     "two in one": (
