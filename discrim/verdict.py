@@ -109,7 +109,11 @@ def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[
     if c.untestable or not c.readings:
         return "undecided", [c.untestable or f"“{c.name}”: the test could not be computed"]
     rejects = [r.p < alpha for r in c.readings]
-    small = [matters_above is not None and r.bound < matters_above for r in c.readings]
+    # a bound that rests on two combinations in lockstep among the other constants is not carried
+    small = [
+        matters_above is not None and r.bound < matters_above and r.weak <= MOST_WEAK
+        for r in c.readings
+    ]
     stops: list[str] = []
     if all(rejects):
         for r in c.readings:
