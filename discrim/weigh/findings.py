@@ -46,10 +46,28 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
                     f"{a.fit.p} constants for {a.fit.n} observations: the fit tests nothing",
                 )
             )
+    out += _weak(w)
     out += _columns(w)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
     return tuple(dict.fromkeys(out))
+
+
+def _weak(w: Weighed) -> list[Finding]:
+    """Laws whose other constants are in lockstep with one another: what that does to intervals."""
+    out: list[Finding] = []
+    for answer in w.answers:
+        for k in answer.per_candidate:
+            if any(r.weak for r in k.by_origin.values()):
+                out.append(
+                    (
+                        "note",
+                        f"candidate “{w.laws[k.index].law.name}”",
+                        "some of its constants are in lockstep with one another: tests and bounds of "
+                        "effects allow for that, the two-sided intervals shown may be too short",
+                    )
+                )
+    return out
 
 
 def _intervals(w: Weighed, where: str, c: object, a: object) -> list[Finding]:
