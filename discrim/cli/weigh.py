@@ -14,7 +14,11 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     common(parser)
     results(parser)
     parser.add_argument(
-        "--workers", type=whole(1), default=1, metavar="N", help="processes to use (default 1)"
+        "--workers",
+        type=whole(1),
+        default=1,
+        metavar="N",
+        help="processes to use; weigh still runs in one, and answers never depend on it",
     )
     parser.add_argument(
         "--seed", type=whole(0), default=1, metavar="N", help="seed of random numbers (default 1)"
