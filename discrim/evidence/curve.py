@@ -87,7 +87,7 @@ class Curve:
         start_b[:, psi] = values
         both = solve(problem, np.vstack([start_a, start_b]), fixed=fixed, options=_OPTIONS)
         sol = _better(problem, both.take(np.arange(s)), both.take(np.arange(s, 2 * s)))
-        if s > 2 and not bool(problem.predictor.linear.all()):
+        if s > 2 and not self._linear():
             # continue from the better neighbour: catches a restricted fit caught in a side valley
             order = np.argsort(values, kind="stable")
             merit = problem.merit(sol)
@@ -104,6 +104,11 @@ class Curve:
             )
             sol = _better(problem, sol, again)
         return self._points(values, sol)
+
+    def _linear(self) -> bool:
+        """Whether the restricted problem is linear, so that it has one optimum only."""
+        predictor = self.problem.predictor
+        return bool(predictor.linear.all()) or bool(getattr(predictor, "linear_when_held", False))
 
     def _between(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray | None]:
         """Starts interpolated between the solved neighbours of each value."""

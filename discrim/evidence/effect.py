@@ -60,6 +60,8 @@ class InEffect:
         self.lower[psi] = 0.0 if sign > 0 else -FARTHEST
         self.upper[psi] = 0.0 if sign < 0 else FARTHEST
         self.linear = np.zeros(len(inner.names), bool)
+        # with T held, psi is proportional to a linear form of the others: they stay linear
+        self.linear_when_held = bool(inner.linear.all()) and not logarithmic
         self.scale = inner.scale.copy()
         self.scale[psi] = 0.1
         self.starts = np.zeros((0, len(inner.names)))

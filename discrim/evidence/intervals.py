@@ -157,18 +157,19 @@ def along(
     lower: float | None = None,
     upper: float | None = None,
     with_profile: bool = True,
+    closeness: float = 1e-6,
 ) -> Along:
     """Profile and reconciled intervals of the constant of ``curve``.
 
     ``estimate``, ``lower``, ``upper`` default to those of the constant in the fit; ``with_profile``
-    False leaves the profile out.
+    False leaves the profile out; ends are found to a relative ``closeness``.
     """
     psi = curve.psi
     x = float(fit.theta[psi]) if estimate is None else estimate
     lo = float(fit.predictor.lower[psi]) if lower is None else lower
     hi = float(fit.predictor.upper[psi]) if upper is None else upper
     typical = float(fit.predictor.scale[psi])
-    grid = _grid(x, se, lo, hi, typical)
+    grid = _grid(x, se, lo, hi, typical, coarse=closeness > 1e-5)
     pts = curve.at(grid)
     free = fit.objective
     lowest = float(np.nanmin(pts.objective)) if np.isfinite(pts.objective).any() else free
@@ -179,7 +180,7 @@ def along(
     held = with_profile and fit.problem.joint_scale
     if with_profile and not held:
         accepts.append(tests.profile)
-    (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi)
+    (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi, closeness)
     if held:
         profile = _profile_at_variance(fit, psi, level, se)
     else:
@@ -302,15 +303,19 @@ class _Acceptance:
         return bool((self._q_ok(pts) > 0).any())
 
 
-def _grid(x: float, se: float, lo: float, hi: float, typical: float) -> np.ndarray:
+def _grid(
+    x: float, se: float, lo: float, hi: float, typical: float, *, coarse: bool = False
+) -> np.ndarray:
     """Values to try: near the estimate in standard errors, far from it in decades."""
     parts = [np.array([x])]
     if np.isfinite(se) and se > 0:
         k = np.array([0.25, 0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 4.0, 6.0, 10.0, 20.0])
+        if coarse:
+            k = k[[1, 2, 4, 6, 7, 9]]
         parts += [x + se * k, x - se * k]
     size = max(abs(x), typical if np.isfinite(typical) else 0.0, 1e-300)
     if lo >= 0:
-        parts.append(size * np.logspace(-5, 5, 21))
+        parts.append(size * np.logspace(-5, 5, 11 if coarse else 21))
         if x > 0:
             parts.append(x * np.array([0.5, 0.8, 0.9, 0.95, 1.05, 1.1, 1.25, 2.0]))
     else:
@@ -332,7 +337,12 @@ Accept = Callable[[Points], np.ndarray]
 
 
 def _sets(
-    curve: Curve, pts: Points, accepts: Sequence[Accept], lo: float, hi: float
+    curve: Curve,
+    pts: Points,
+    accepts: Sequence[Accept],
+    lo: float,
+    hi: float,
+    closeness: float,
 ) -> list[tuple[Interval, Side, Side]]:
     """The accepted set of each criterion: pieces on the grid, the ends of all of them refined
     together as one batch."""
@@ -343,7 +353,7 @@ def _sets(
     at = np.concatenate(changes).astype(int)
     fa = np.array([margins[k][j] for k, j in zip(which, at, strict=True)])
     fb = np.array([margins[k][j + 1] for k, j in zip(which, at, strict=True)])
-    ends = _refine(curve, accepts, which, v[at], v[at + 1], fa, fb)
+    ends = _refine(curve, accepts, which, v[at], v[at + 1], fa, fb, closeness)
     return [_pieces(margins[k] > 0, ends[which == k], lo, hi) for k in range(len(accepts))]
 
 
@@ -378,6 +388,7 @@ def _refine(
     b: np.ndarray,
     fa: np.ndarray,
     fb: np.ndarray,
+    closeness: float,
 ) -> np.ndarray:
     """Where the margin of criterion ``which`` changes sign between a and b (Illinois method)."""
     if not len(a):
@@ -407,8 +418,8 @@ def _refine(
         a[live] = np.where(same, x, la)
         moved = np.abs(x - out[live])
         out[live] = x
-        narrow = np.abs(b[live] - a[live]) <= 1e-6 * np.maximum(np.abs(x), 1e-300)
-        settled = (k > 3) & (moved <= 1e-7 * np.abs(x)) & ~wide
+        narrow = np.abs(b[live] - a[live]) <= closeness * np.maximum(np.abs(x), 1e-300)
+        settled = (k > 3) & (moved <= 0.1 * closeness * np.abs(x)) & ~wide
         live = live[~(narrow | (np.abs(fx) <= 1e-7) | settled)]
         if not len(live):
             break

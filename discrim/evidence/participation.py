@@ -419,7 +419,7 @@ def _effect(term: Term, problem: Problem, full: Fit, level: float) -> Effect | N
         return Effect(value, -1.0, 1.0, 1.0, label, True)
     j = term.psi[0]
     se = float(standard_errors(shifted)[j])
-    result = along(shifted, Curve.of(shifted, j), level, se=se, with_profile=False)
+    result = along(shifted, Curve.of(shifted, j), level, se=se, with_profile=False, closeness=1e-4)
 
     def e(side: Side, otherwise: float) -> float:
         return float(effect_of(side.value)) if abs(side.value) < FARTHEST else otherwise
@@ -544,7 +544,7 @@ def _margin(
 
 
 def _typical_flip(
-    term: Term, data: Measurements, reduced: Fit, s2: float, seed: int, draws: int = 9
+    term: Term, data: Measurements, reduced: Fit, s2: float, seed: int, draws: int = 5
 ) -> float:
     """Median flip distance of tables drawn from the law without the term."""
     if not reduced.ok:

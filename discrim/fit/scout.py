@@ -44,7 +44,7 @@ def starting_values(predictor: Predictor, count: int, seed: int) -> np.ndarray:
 
 
 # a gain below this fraction of Q, twice running, ends a start
-SMALL_GAIN = 1e-3
+SMALL_GAIN = 1e-2
 # longest step in a logarithm: a factor of about 50
 LONGEST = 4.0
 ROUNDS = 40
@@ -154,7 +154,7 @@ def scout(
             if ended[best]:
                 # what predicts the same as an ended and better one has nothing more to tell
                 gap = f - f[best]
-                near = np.einsum("sn,sn->s", gap, gap) <= 0.25 * q[best]
+                near = np.einsum("sn,sn->s", gap, gap) <= q[best]
                 ended |= near & (q <= 1.5 * q[best])
                 if ended.all():
                     break

@@ -100,7 +100,7 @@ class Picture:
         with style(self.name):
             FigureCanvasAgg(self.figure)
             out = io.BytesIO()
-            self.figure.savefig(out, format="png", dpi=160, metadata={"Software": None}, **_FAST)
+            self.figure.savefig(out, format="png", dpi=130, metadata={"Software": None}, **_FAST)
         return out.getvalue()
 
 
