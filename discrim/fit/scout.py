@@ -101,7 +101,7 @@ def scout(
         f_y = f @ y
         f_f = np.einsum("sn,sn->s", f, f)
         size = t if every_log else np.where(log, t, 1.0)
-        gt = np.swapaxes(g, 1, 2)
+        gt = g.transpose(0, 2, 1)
         if amplitude >= 0:
             # the law is proportional to this constant: its best value is a quotient
             ratio = f_y / f_f
@@ -126,6 +126,7 @@ def scout(
         mu = np.full(len(u), 1e-2)
         quiet = np.zeros(len(u), int)
         eye = np.eye(p)
+        parked: list[tuple[np.ndarray, ...]] = []
         for k in range(ROUNDS):
             if bounded:
                 blocked = ((u <= low) & (grad <= 0)) | ((u >= high) & (grad >= 0))
@@ -158,6 +159,17 @@ def scout(
                 ended |= near & (q <= 1.5 * q[best])
                 if ended.all():
                     break
+                if len(q) > 4 and 2 * int(ended.sum()) >= len(q):
+                    # the rest goes on without those that have ended (the best stays to compare with)
+                    go = ~ended
+                    go[best] = True
+                    parked.append((u[~go], f[~go], q[~go], h[~go], grad[~go]))
+                    u, f, q, h, grad = u[go], f[go], q[go], h[go], grad[go]
+                    mu, quiet, dead = mu[go], quiet[go], dead[go]
+        if parked:
+            u, f, q, h, grad = (
+                np.concatenate(parts) for parts in zip((u, f, q, h, grad), *parked, strict=True)
+            )
         theta = np.exp(u) if every_log else np.where(log, np.exp(np.where(log, u, 0.0)), u)
         kept = _distinct(theta, f, q, n)
         if not len(kept):
@@ -243,7 +255,8 @@ def _solved(a: np.ndarray, grad: np.ndarray) -> np.ndarray:
             out = np.linalg.solve(safe, grad[:, :, None])[:, :, 0]
         except np.linalg.LinAlgError:
             out = np.zeros_like(grad)
-    out[~np.isfinite(out)] = 0.0
+    if not np.isfinite(out.sum()):
+        out[~np.isfinite(out)] = 0.0
     return out
 
 
