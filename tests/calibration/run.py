@@ -1,7 +1,7 @@
 """Makes the calibration figures that the repository keeps: ``python -m tests.calibration.run``.
 
 Writes ``figures.csv`` (size and coverage in lockstep) and ``figures.md`` (all tables) beside this file,
-in about a quarter of an hour on two cores; ``--only lockstep`` takes seconds and prints its table
+in about six minutes on two cores; ``--only lockstep`` takes seconds and prints its table
 without writing.
 """
 
@@ -179,7 +179,7 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--only", choices=["lockstep", "terms", "rivals", "verdicts"])
     parser.add_argument("--studies", type=int, default=4000, help="a cell, of the lockstep table")
-    parser.add_argument("--whole", type=int, default=200, help="a cell, of whole studies")
+    parser.add_argument("--whole", type=int, default=150, help="a cell, of whole studies")
     parser.add_argument("--seed", type=int, default=1)
     args = parser.parse_args()
     lines = head(args.seed)
