@@ -20,12 +20,12 @@ from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance
 from discrim.evidence.intervals import OPEN, Side, along, guard_level, standard_errors
 from discrim.evidence.projected import projected, weak_nuisance
-from discrim.evidence.rivals import Against, _joint_p, _studentised, directions
-from discrim.evidence.score import basis, p_one_sided, score, to_normal, without
+from discrim.evidence.rivals import directions, joint_p, studentised
+from discrim.evidence.score import basis, p_one_sided, without
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, solve
 from discrim.fit.fit import Fit, fit
-from discrim.fit.measurements import OBSERVATION, Measurements, Scale
+from discrim.fit.measurements import Measurements, Scale
 from discrim.reactor.knocked import KnockedOut
 from discrim.reactor.model import Predictor
 
@@ -348,15 +348,15 @@ def _along_directions(
     z = d @ null.residual
     data = null.data
     estimated = data.scale is Scale.ESTIMATED and not null.problem.with_conditions
-    seen = _studentised(z, float(null.residual @ null.residual), df) if estimated else z
+    seen = studentised(z, float(null.residual @ null.residual), df) if estimated else z
     if estimated and df < 2:
         return float("nan"), 0.0
     k = int(np.argmax(seen if unwhitened else np.abs(seen)))
     replicate_df = data.scale_df if data.scale is Scale.REPLICATES else 0
     if unwhitened:  # on the edge only a rise counts
-        p = _joint_p(d, float(seen[k]), df, estimated, replicate_df, seed, two_sided=False)
+        p = joint_p(d, float(seen[k]), df, estimated, replicate_df, seed, two_sided=False)
         return float(normal_of_tail(p)), float(info[k])
-    p = _joint_p(d, abs(float(seen[k])), df, estimated, replicate_df, seed)
+    p = joint_p(d, abs(float(seen[k])), df, estimated, replicate_df, seed)
     return float(np.sign(seen[k]) * normal_of_tail(min(p / 2, 0.5))), float(info[k])
 
 
@@ -601,18 +601,3 @@ def _flip_to_effect(
         fixed[term.psi[0]] = True
         best = min(best, flip_distance(wrapped, problem.data, s2, theta, fixed=fixed, rounds=12))
     return best
-
-
-__all__ = [
-    "OBSERVATION",
-    "Against",
-    "Effect",
-    "Kind",
-    "NestedF",
-    "Participation",
-    "Term",
-    "nested_f",
-    "participation",
-    "score",
-    "to_normal",
-]

@@ -18,7 +18,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from discrim.evidence.distributions import chi2_upper, t_upper
-from discrim.evidence.score import NO_INFORMATION, basis, without
+from discrim.evidence.score import basis, without
 from discrim.fit.covariance import Whitener
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import ErrorSource, Measurements, Scale
@@ -169,12 +169,12 @@ def _judge(
     estimated = not known and not null.problem.with_conditions
     observed = np.abs(z)
     if estimated:
-        observed = _studentised(observed, norm2, df_rest)
+        observed = studentised(observed, norm2, df_rest)
     elif data.scale is Scale.REPLICATES:
         observed = np.abs(z)
     k = int(np.argmax(observed))
     largest = float(observed[k])
-    p_joint = _joint_p(
+    p_joint = joint_p(
         d, largest, df_rest, estimated, data.scale_df if data.scale is Scale.REPLICATES else 0, seed
     )
     spend = alpha * (1.0 - SHARE_OVERALL) if p_fit is not None else alpha
@@ -186,7 +186,7 @@ def _judge(
     return Standing(stands, p_fit, largest, keep[k], p_joint, against)
 
 
-def _studentised(z: np.ndarray, norm2: float | np.ndarray, df: int) -> np.ndarray:
+def studentised(z: np.ndarray, norm2: float | np.ndarray, df: int) -> np.ndarray:
     """t of each direction, the scale from what is left of the residual; df - 1 degrees of freedom."""
     if df < 2:
         return np.zeros_like(z)
@@ -196,7 +196,7 @@ def _studentised(z: np.ndarray, norm2: float | np.ndarray, df: int) -> np.ndarra
     return np.nan_to_num(t)
 
 
-def _joint_p(
+def joint_p(
     d: np.ndarray,
     largest: float,
     df: int,
@@ -230,7 +230,7 @@ def _joint_p(
     if estimated:
         rest = rng.chisquare(max(df - r, 1), DRAWS) if df > r else np.zeros(DRAWS)
         total = (x**2).sum(axis=1) + rest
-        z = _studentised(z, total[:, None], df)
+        z = studentised(z, total[:, None], df)
     elif replicate_df:
         z = z / np.sqrt(rng.chisquare(replicate_df, DRAWS) / replicate_df)[:, None]
     hits = int((z.max(axis=1) >= largest).sum())
@@ -253,17 +253,6 @@ def apart(a: Fit, b: Fit) -> float:
     with np.errstate(divide="ignore", invalid="ignore"):
         gap = np.abs(a.values - b.values) / sd
     return float(np.nanmax(gap))
-
-
-__all__ = [
-    "INSEPARABLE",
-    "NO_INFORMATION",
-    "Against",
-    "Standing",
-    "apart",
-    "directions",
-    "standing",
-]
 
 
 def table_key(data: Measurements) -> str:

@@ -13,7 +13,7 @@ from scipy import stats
 
 from discrim.evidence.intervals import guard_level
 from discrim.evidence.participation import Kind, Term, _along_directions, _vanishing
-from discrim.evidence.rivals import _joint_p
+from discrim.evidence.rivals import joint_p
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from tests.reference.outside import predictor, symbols
@@ -32,7 +32,7 @@ def test_joint_tails_of_two_directions(x: float, angle: float) -> None:
     one = 1.0 - float(pair.cdf([x, x]))
     box = pair.cdf([x, x]) - pair.cdf([x, -x]) - pair.cdf([-x, x]) + pair.cdf([-x, -x])
     for expected, two_sided in ((one, False), (1.0 - float(box), True)):
-        got = _joint_p(d, x, 10, False, 0, 1, two_sided=two_sided)
+        got = joint_p(d, x, 10, False, 0, 1, two_sided=two_sided)
         assert got == pytest.approx(expected, abs=0.012, rel=0.01)
 
 
