@@ -1,4 +1,7 @@
-"""Print each rate law, how it was derived, what it assumes, and which candidates are the same."""
+"""Print each rate law, how it was derived, what it assumes, and which candidates are the same.
+
+With --library: list the mechanisms that come with discrim, or those that all the words match.
+"""
 
 from __future__ import annotations
 
@@ -6,16 +9,37 @@ import argparse
 from pathlib import Path
 from typing import Any
 
+from discrim.errors import DiscrimError
+
 HELP = "print the rate laws and how they follow from the steps"
 
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     from discrim.cli.parser import common
 
-    common(parser, study="a study or mechanism file (TOML), or a mechanism of the library by name")
+    common(
+        parser,
+        study="a study or mechanism file (TOML), or a mechanism of the library by name",
+        needed=False,
+    )
+    parser.add_argument(
+        "--library",
+        nargs="*",
+        metavar="WORD",
+        help="list the library; with words, what matches all of them: by name, description, "
+        "field, source or species",
+    )
 
 
 def run(options: argparse.Namespace) -> int:
+    if options.library is not None:
+        return _library(options)
+    if options.study is None:
+        raise DiscrimError(
+            "derive what?",
+            do="Name a study, a mechanism file or a mechanism of the library, as in `discrim derive "
+            "enzyme-competitive`. `discrim derive --library` lists the library.",
+        )
     from discrim.cli.output import look, show, show_json
     from discrim.report.text import laws
     from discrim.weigh import derive_all, derive_mechanism
@@ -37,8 +61,29 @@ def run(options: argparse.Namespace) -> int:
     return 0
 
 
+def _library(options: argparse.Namespace) -> int:
+    from dataclasses import asdict
+
+    from discrim.cli.output import look, show, show_json
+    from discrim.mechanism.catalogue import entries, search, suggestions
+    from discrim.report.listing import listing
+
+    words = [w for w in (options.study, *options.library) if w and w.strip()]
+    every = entries()
+    found = search(words, every)
+    if options.json:
+        show_json([asdict(e) for e in found])
+    elif options.quiet:
+        if found:
+            show("\n".join(e.name for e in found))
+    else:
+        hints = [] if found else suggestions(words, every)
+        show(listing(found, words, hints, **look()))
+    return 0
+
+
 def is_mechanism(path: Path) -> bool:
-    """Whether the file is a mechanism (it has steps at the top and no table, as a study has).
+    """Whether the file is a mechanism (it has steps or a law at the top and nothing of a study).
 
     Anything that cannot be read as TOML counts as a study, whose reader says what is wrong.
     """
@@ -50,4 +95,6 @@ def is_mechanism(path: Path) -> bool:
         top = tomllib.loads(path.read_text(encoding="utf-8"))
     except (OSError, ValueError, RecursionError):
         return False
-    return "steps" in top and not {"table", "candidates", "columns"} & top.keys()
+    return (
+        bool({"steps", "law"} & top.keys()) and not {"table", "candidates", "columns"} & top.keys()
+    )

@@ -101,9 +101,14 @@ def build() -> Parser:
     return parser
 
 
-def common(parser: argparse.ArgumentParser, *, study: str = "the study file (TOML)") -> None:
-    """The options that every command has."""
-    parser.add_argument("study", metavar="STUDY", help=study)
+def common(
+    parser: argparse.ArgumentParser,
+    *,
+    study: str = "the study file (TOML)",
+    needed: bool = True,
+) -> None:
+    """The options that every command has; a command can do without a study if not ``needed``."""
+    parser.add_argument("study", metavar="STUDY", help=study, nargs=None if needed else "?")
     parser.add_argument("--json", action="store_true", help="print the records as JSON")
     parser.add_argument("--quiet", action="store_true", help="print the least, and no progress")
 

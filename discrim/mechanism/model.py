@@ -1,9 +1,10 @@
-"""Records of a mechanism: species and elementary steps, as the chemist wrote them."""
+"""Records of a mechanism: species and elementary steps, as the chemist wrote them; written laws."""
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 from discrim.errors import Place
 
@@ -50,6 +51,7 @@ class Mechanism:
     overall_equilibrium : name of the constant with which a reversible law is written (its reverse
         term divided by it), for a known equilibrium of the overall reaction; "" writes the reverse
         term with a constant of its own, which can be zero
+    field : branch of kinetics that the library lists it under, or ""
     """
 
     name: str
@@ -62,7 +64,30 @@ class Mechanism:
     steady: tuple[str, ...] | None = None
     source: str = ""
     note: str = ""
-    formulas: Mapping[str, str] = field(default_factory=dict)
-    charges: Mapping[str, int] = field(default_factory=dict)
+    formulas: Mapping[str, str] = dataclasses.field(default_factory=dict)
+    charges: Mapping[str, int] = dataclasses.field(default_factory=dict)
     place: Place | None = None
     overall_equilibrium: str = ""
+    field: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class WrittenLaw:
+    """A rate law as written, where no elementary steps give one.
+
+    Attributes
+    ----------
+    text : in the grammar of :mod:`discrim.ratelaw.expression`; species in square brackets
+    overall : the reaction that the law is the rate of, None where it is not said
+    place : where the law stands
+    field : as in :class:`Mechanism`
+    """
+
+    name: str
+    title: str
+    text: str
+    overall: Step | None = None
+    source: str = ""
+    note: str = ""
+    place: Place | None = None
+    field: str = ""

@@ -4,12 +4,45 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping
+from dataclasses import replace
+from typing import Any
 
 import sympy
 
 from discrim.errors import DiscrimError, Place
-from discrim.ratelaw.model import Constant, ConstantKind, Pathway, RateLaw, amount
+from discrim.mechanism.check import net
+from discrim.mechanism.model import WrittenLaw
+from discrim.ratelaw.expression import parse_expression
+from discrim.ratelaw.model import Constant, ConstantKind, Pathway, RateLaw, amount, quantity
 from discrim.ratelaw.printing import plain
+
+#: Conditions that a law in a file can hold; every other name in it is a constant of its own.
+CONDITIONS = ("pH", "temperature", "catalyst")
+
+
+def law_as_written(written: WrittenLaw) -> RateLaw:
+    """The record of a law from a file, read without a study."""
+    law = law_from_expression(
+        written.name,
+        written_expression(written, {word: quantity(word) for word in CONDITIONS}),
+        overall=written_overall(written),
+        place=written.place,
+        text=written.text,
+    )
+    return replace(law, source=written.source)
+
+
+def written_expression(written: WrittenLaw, conditions: Mapping[str, Any]) -> Any:
+    """The expression of a law from a file; ``conditions`` are symbols for :data:`CONDITIONS`."""
+    known = {word: conditions[word] for word in CONDITIONS if word in conditions}
+    return parse_expression(written.text, written.place or Place(text=written.text), known)
+
+
+def written_overall(written: WrittenLaw) -> dict[str, int] | None:
+    """Net coefficient of each species in the reaction that the law is the rate of."""
+    if written.overall is None:
+        return None
+    return {species.name: n for species, n in net(written.overall).items()}
 
 
 def law_from_expression(

@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from discrim.errors import DiscrimError, Place
-from discrim.mechanism.model import Mechanism
+from discrim.mechanism.model import Mechanism, WrittenLaw
 from discrim.study.file import inside
 from discrim.study.formulas import Names, bare_names, harmonised
 from discrim.study.model import Candidate, Derived
@@ -82,12 +82,25 @@ def _candidate(
     if ways[0] == "law":
         text = node.needed("law")
         law = names.parse(text, node.place("law"), bare_names(derived))
-        changes = harmonised([law, *(d.formula for d in derived)])
         overall = _overall(node, name) if "overall" in node.data else None
         # complaints about the law point at its text, with all of it underlined
-        return Candidate(name, None, law.xreplace(changes), text, overall, node.place("law"), note)
-    mechanism = _steps(node, name) if ways[0] == "steps" else _library(node, folder)
-    return Candidate(name, mechanism, None, "", None, place, note)
+        return Candidate(
+            name, None, _one_symbol_each(law, derived), text, overall, node.place("law"), note
+        )
+    record = _steps(node, name) if ways[0] == "steps" else _library(node, folder)
+    if isinstance(record, Mechanism):
+        return Candidate(name, record, None, "", None, place, note, record.source)
+    from discrim.ratelaw.bare import written_expression, written_overall
+
+    law = _one_symbol_each(written_expression(record, names.quantities), derived)
+    overall = written_overall(record)
+    place = node.place("mechanism")
+    return Candidate(name, None, law, record.text, overall, place, note, record.source)
+
+
+def _one_symbol_each(law: Any, derived: Sequence[Derived]) -> Any:
+    """The law with one symbol for a constant that it shares with derived quantities."""
+    return law.xreplace(harmonised([law, *(d.formula for d in derived)]))
 
 
 def _steps(node: Node, name: str) -> Mechanism:
@@ -117,23 +130,24 @@ def _steps(node: Node, name: str) -> Mechanism:
     )
 
 
-def _library(node: Node, folder: Path) -> Mechanism:
+def _library(node: Node, folder: Path) -> Mechanism | WrittenLaw:
     written = node.needed("mechanism")
     place = node.place("mechanism")
     if "/" in written or "\\" in written or written.endswith(".toml") or written.startswith("~"):
         inside(folder, written, place)
-    from discrim.mechanism.library import bind, load_mechanism
+    from discrim.mechanism.library import load
+    from discrim.mechanism.rename import bind
 
     try:
-        mechanism = load_mechanism(written, base=folder, place=place)
+        record = load(written, base=folder, place=place)
     except DiscrimError as error:
         raise _placed(error, place) from None
     if "bind" not in node.data:
-        return mechanism
+        return record
     table = node.table("bind")
     names = {key: table.needed(key) for key in table.data}
     try:
-        return bind(mechanism, names)
+        return bind(record, names)
     except DiscrimError as error:
         raise error.at(node.place("bind")) from None
 

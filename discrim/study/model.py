@@ -21,7 +21,8 @@ class Candidate:
     """One mechanism or bare law. Exactly one of ``mechanism`` and ``law`` is given.
 
     ``law`` is a sympy expression read by our own parser (`ratelaw.expression`); ``overall`` the
-    stoichiometry of a bare law by species, or None.
+    stoichiometry of a bare law by species, or None. ``source`` is where a law from a file was
+    published.
     """
 
     name: str
@@ -31,6 +32,7 @@ class Candidate:
     overall: Mapping[str, int] | None
     place: Place
     note: str = ""
+    source: str = ""
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -88,16 +88,19 @@ def _same(laws: list[CandidateLaw]) -> dict[int, list[int]]:
 
 def derive_file(path: str) -> dict[str, Any]:
     """The law of one mechanism file, or of one in the library by name."""
-    from discrim.mechanism.library import load_mechanism
+    from discrim.mechanism.library import load
+    from discrim.mechanism.model import Mechanism
+    from discrim.ratelaw.bare import law_as_written
     from discrim.ratelaw.derive import derive
 
     p = Path(path)
     if p.suffix == ".toml" or p.parent != Path():
-        mechanism = load_mechanism("./" + p.name, base=p.parent.resolve())
+        record = load("./" + p.name, base=p.parent.resolve())
     else:
-        mechanism = load_mechanism(path, base=Path.cwd())
-    law = derive(mechanism)
+        record = load(path, base=Path.cwd())
+    law = derive(record) if isinstance(record, Mechanism) else law_as_written(record)
     out = _of_law(law)
-    out["title"] = mechanism.title
+    out["title"] = record.title
+    out["note"] = [text for text in (record.title and f"{record.title}.", record.note) if text]
     out["same_law_as"] = []
     return out

@@ -51,6 +51,7 @@ def law_of(candidate: Candidate, study: Study) -> CandidateLaw:
             place=candidate.place,
             text=candidate.law_text,
         )
+        law = replace(law, source=candidate.source)
     if len(law.constants) > MAX_CONSTANTS:
         raise DiscrimError(
             f'the law of "{candidate.name}" has {len(law.constants)} constants, at most '

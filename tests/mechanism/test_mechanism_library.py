@@ -4,8 +4,10 @@ import pytest
 
 from discrim.errors import DiscrimError, Place
 from discrim.mechanism.check import catalyst_forms
-from discrim.mechanism.library import bind, folder, load_mechanism, mechanism_from_toml, names
+from discrim.mechanism.library import folder, load_mechanism, names
 from discrim.mechanism.parse import parse_mechanism
+from discrim.mechanism.rename import bind
+from discrim.mechanism.written import from_toml
 
 
 def test_every_file_has_a_title_and_a_source(tmp_path):
@@ -80,7 +82,7 @@ def test_a_step_of_a_file_is_pointed_at(tmp_path):
 )
 def test_files_that_are_wrong(text, says, line):
     with pytest.raises(DiscrimError, match=says) as caught:
-        mechanism_from_toml(text, file="m.toml", name="m")
+        from_toml(text, file="m.toml", name="m")
     assert caught.value.place.file == "m.toml"
     assert caught.value.place.line == line
 
