@@ -1,0 +1,355 @@
+"""Limiting laws and apparent orders against published limits, sympy's limits and steep numbers."""
+
+import time
+from pathlib import Path
+
+import mpmath
+import numpy as np
+import pytest
+import sympy
+
+from discrim.errors import Place
+from discrim.mechanism.library import load_mechanism, names
+from discrim.ratelaw.bare import law_from_expression
+from discrim.ratelaw.derive import derive
+from discrim.ratelaw.expression import parse_expression
+from discrim.ratelaw.implicit import ImplicitValue
+from discrim.ratelaw.leading import NoLeadingTerm, leading
+from discrim.ratelaw.limits import (
+    apparent_order,
+    apparent_orders,
+    forward_part,
+    limit,
+    limits_of,
+    order_text,
+)
+from discrim.ratelaw.model import ConstantKind, amount, constant_symbol, quantity
+
+
+def read(text, orders=()):
+    rate = parse_expression(text, Place())
+    return rate.xreplace({
+        s: constant_symbol(s.name, ConstantKind.ORDER)
+        for s in rate.free_symbols if s.name in orders
+    })  # fmt: skip
+
+
+@pytest.fixture(autouse=True)
+def many_digits():
+    with mpmath.workdps(120):
+        yield
+
+
+def equal(a, b):
+    return sympy.simplify(a - b) == 0
+
+
+# law; species; (order, law) at low and at high amount
+PUBLISHED = {
+    # I. Langmuir, Trans. Faraday Soc. 17 (1922) 607, one reactant adsorbed: first order on a
+    # bare surface, zero order on a covered one (from memory)
+    "bare and covered surface": (
+        "k*K_A*[A]/(1 + K_A*[A] + K_B*[B])", "A",
+        ("1", "k*K_A*[A]/(1 + K_B*[B])"), ("0", "k"),
+    ),
+    # the same law seen from the inhibitor: the rate falls inversely with it (Langmuir 1922, CO in
+    # the oxidation of CO on platinum; from memory)
+    "strongly adsorbed inhibitor": (
+        "k*K_A*[A]/(1 + K_A*[A] + K_B*[B])", "B",
+        ("0", "k*K_A*[A]/(1 + K_A*[A])"), ("-1", "k*K_A*[A]/(K_B*[B])"),
+    ),
+    # C. N. Hinshelwood, The Kinetics of Chemical Change (1940): two reactants on the same sites,
+    # first order at low coverage, order -1 where one covers the surface (from memory)
+    "two reactants on the same sites": (
+        "k*K_A*K_B*[A]*[B]/(1 + K_A*[A] + K_B*[B])^2", "A",
+        ("1", "k*K_A*K_B*[A]*[B]/(1 + K_B*[B])^2"), ("-1", "k*K_B*[B]/(K_A*[A])"),
+    ),
+    # F. A. Lindemann, Trans. Faraday Soc. 17 (1922) 598: second order in all at low pressure,
+    # first at high; with M = A (from memory)
+    "activation by collision": (
+        "k1*k2*[A]^2/(k2 + k_1*[A])", "A", ("2", "k1*[A]^2"), ("1", "k1*k2*[A]/k_1"),
+    ),
+    # M. Bodenstein and S. C. Lind, Z. phys. Chem. 57 (1907) 168: k [H2][Br2]^(1/2)/(1 + k'[HBr]/
+    # [Br2]), order 3/2 in bromine where HBr prevails and 1/2 without it (from memory)
+    "hydrogen and bromine": (
+        "k*[H2]*[Br2]^0.5/(1 + m*[HBr]/[Br2])", "Br2",
+        ("3/2", "k*[H2]*[Br2]^1.5/(m*[HBr])"), ("1/2", "k*[H2]*[Br2]^0.5"),
+    ),
+    # L. Michaelis and M. L. Menten, Biochem. Z. 49 (1913) 333 (from memory)
+    "one substrate": (
+        "V*[S]/(Km + [S])", "S", ("1", "V*[S]/Km"), ("0", "V"),
+    ),
+    # J. B. S. Haldane, Enzymes (1930): inhibition by the substrate (from memory)
+    "inhibition by the substrate": (
+        "V*[S]/(Km + [S] + [S]^2/Ki)", "S", ("1", "V*[S]/Km"), ("-1", "V*Ki/[S]"),
+    ),
+    # dissociative adsorption, sqrt(K p) for the coverage (Langmuir, J. Am. Chem. Soc. 40 (1918)
+    # 1361; from memory)
+    "dissociative adsorption": (
+        "k*K*[H2]*[A]/(1 + sqrt(K*[H2]))^3", "H2",
+        ("1", "k*K*[H2]*[A]"), ("-1/2", "k*[A]/sqrt(K*[H2])"),
+    ),
+    # F. O. Rice and K. F. Herzfeld, J. Am. Chem. Soc. 56 (1934) 284: three halves order (from
+    # memory)
+    "three halves": ("k*[A]^1.5", "A", ("3/2", "k*[A]^1.5"), ("3/2", "k*[A]^1.5")),
+    # worked by hand: specific catalysis beside an uncatalysed reaction
+    "catalysed and not": (
+        "[S]*(k0 + kH*[H+])", "H+", ("0", "k0*[S]"), ("1", "kH*[S]*[H+]"),
+    ),
+    # worked by hand: dimer in equilibrium with the monomer that reacts, total amount measured,
+    # M = 2 T/(1 + sqrt(1 + 8 K T))
+    "reacts from a dimer's monomer": (
+        "2*k*[T]/(1 + sqrt(1 + 8*K*[T]))", "T",
+        ("1", "k*[T]"), ("1/2", "k*sqrt([T])/sqrt(2*K)"),
+    ),
+    # worked by hand: the leading terms cancel identically, 1/(1+x) - 1 + x = x^2/(1+x)
+    "leading terms cancel": (
+        "k*(1/(1 + K*[A]) - 1 + K*[A])", "A", ("2", "k*K^2*[A]^2"), ("1", "k*K*[A]"),
+    ),
+    "cancels behind brackets": (
+        "k*((a + b)*[A] - a*[A] - b*[A]/(1 + [A]))", "A", ("2", "k*b*[A]^2"), ("1", "k*b*[A]"),
+    ),
+    "net rate": (
+        "k*[A] - m*[P]", "A", ("0", "-m*[P]"), ("1", "k*[A]"),
+    ),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("name", PUBLISHED)
+def test_published_limits(name):
+    text, species, low, high = PUBLISHED[name]
+    rate = read(text)
+    for where, (order, law) in (("low", low), ("high", high)):
+        found = limit(rate, species, where)
+        assert order_text(found.order) == order
+        assert equal(found.law, read(law)), found.law
+
+
+@pytest.mark.parametrize("name", [n for n in PUBLISHED if "dimer" not in n])
+def test_the_rate_over_its_limit_tends_to_one(name):
+    """sympy's limits are the reference; it cannot do the root of a sum with symbols."""
+    text, species, *_ = PUBLISHED[name]
+    x = sympy.Symbol("x", positive=True)
+    rate = read(text)
+    positive = {s: sympy.Symbol(f"p{i}", positive=True) for i, s in
+                enumerate(sorted(rate.free_symbols, key=str)) if s != amount(species)}  # fmt: skip
+    positive[amount(species)] = x
+    for where, end in (("low", 0), ("high", sympy.oo)):
+        law = limit(rate, species, where).law
+        ratio = sympy.simplify((rate / law).xreplace(positive))
+        assert sympy.limit(ratio, x, end, "+" if end == 0 else "-") == 1
+
+
+def slope(rate, values, x, at):
+    """d ln|r| / d ln x by central differences, with 120 digits."""
+    f = sympy.lambdify(x, rate.xreplace(values), "mpmath")
+    h = mpmath.mpf(10) ** -25
+    up, down = mpmath.mpf(f(at * (1 + h))), mpmath.mpf(f(at * (1 - h)))
+    return (mpmath.log(abs(up)) - mpmath.log(abs(down))) / (2 * h), f(at)
+
+
+@pytest.mark.parametrize("name", names())
+def test_limits_of_the_library_by_numbers(name):
+    """Order and law at amounts of 1e-60 and 1e60 against the law's own numbers."""
+    law = derive(load_mechanism(name, base=Path.cwd()))
+    found = limits_of(law)
+    assert found
+    rng = np.random.default_rng(11)
+    ahead = forward_part(law.rate)
+    for item in found:
+        assert item.law is not None
+        rate = ahead if item.forward else law.rate
+        x = amount(item.species)
+        values = {
+            s: sympy.Rational(int(rng.integers(200, 5000)), 1000)
+            for s in sorted(rate.free_symbols, key=str)
+            if s != x
+        }
+        at = mpmath.mpf(10) ** (-60 if item.where == "low" else 60)
+        order, rated = slope(rate, values, x, at)
+        assert abs(order - mpmath.mpf(item.order.p) / item.order.q) < 1e-20
+        shown = sympy.lambdify(x, item.law.xreplace(values), "mpmath")(at)
+        assert abs(rated / shown - 1) < 1e-15
+        assert (rated < 0) == item.reverse
+
+
+def random_law(rng):
+    """A ratio of sums of monomials with positive coefficients, powers in halves."""
+
+    def total(n):
+        return sympy.Add(*(
+            sympy.Integer(int(rng.integers(1, 9))) * sympy.Mul(*(
+                amount(s) ** sympy.Rational(int(rng.integers(0, 7)), 2) for s in "ABC"
+            )) * sympy.Symbol(f"k{int(rng.integers(1, 6))}", nonnegative=True)
+            for _ in range(n)
+        ))  # fmt: skip
+
+    power = sympy.Rational(int(rng.integers(1, 5)), 2)
+    return total(int(rng.integers(1, 4))) / total(int(rng.integers(2, 6))) ** power + total(1)
+
+
+@pytest.mark.parametrize("seed", range(25))
+def test_random_laws_by_numbers(seed):
+    rng = np.random.default_rng(seed)
+    rate = random_law(rng)
+    values = {s: sympy.Rational(int(rng.integers(200, 5000)), 1000) for s in
+              sorted(rate.free_symbols, key=str)}  # fmt: skip
+    for species in "ABC":
+        x = amount(species)
+        if x not in values:
+            continue
+        others = {s: v for s, v in values.items() if s != x}
+        for where, at in (("low", mpmath.mpf(10) ** -160), ("high", mpmath.mpf(10) ** 160)):
+            found = limit(rate, species, where)
+            order, rated = slope(rate, others, x, at)
+            assert abs(order - mpmath.mpf(found.order.p) / found.order.q) < 1e-20
+            shown = sympy.lambdify(x, found.law.xreplace(others), "mpmath")(at)
+            assert abs(rated / shown - 1) < 1e-20
+
+
+@pytest.mark.parametrize(
+    ("law", "species", "order"),
+    [
+        # each is d ln r/d ln x by the quotient rule, worked by hand
+        ("k*K_A*[A]/(1 + K_A*[A] + K_B*[B])", "A", "(1 + K_B*[B])/(1 + K_A*[A] + K_B*[B])"),
+        ("k*K_A*[A]/(1 + K_A*[A] + K_B*[B])", "B", "-K_B*[B]/(1 + K_A*[A] + K_B*[B])"),
+        (
+            "k*K_A*K_B*[A]*[B]/(1 + K_A*[A] + K_B*[B])^2",
+            "A",
+            "(1 - K_A*[A] + K_B*[B])/(1 + K_A*[A] + K_B*[B])",
+        ),
+        ("k*[A]^1.5*[B]", "A", "3/2"),
+        ("k1*[A] + k2*[B]", "A", "k1*[A]/(k1*[A] + k2*[B])"),
+        (
+            "k*[A]*[B]/((1 + K_A*[A])*(1 + K_C*[A]))",
+            "A",
+            "1 - K_A*[A]/(1 + K_A*[A]) - K_C*[A]/(1 + K_C*[A])",
+        ),
+    ],
+)
+def test_apparent_order_in_between(law, species, order):
+    assert equal(apparent_order(read(law), species), read(order))
+
+
+@pytest.mark.parametrize("name", names())
+def test_apparent_orders_of_the_library_are_the_logarithmic_slope(name):
+    law = derive(load_mechanism(name, base=Path.cwd()))
+    rate = forward_part(law.rate) or law.rate
+    for item in apparent_orders(law):
+        x = amount(item.species)
+        assert equal(item.order, x * sympy.diff(rate, x) / rate)
+
+
+def test_orders_that_are_constants():
+    rate = read("k*[A]^n*[B]/(1 + K*[A])", orders=("n",))
+    low, high = limit(rate, "A", "low"), limit(rate, "A", "high")
+    assert (order_text(low.order), low.words) == ("n", "order n in A")
+    assert equal(high.order, read("n - 1", orders=("n",)))
+    hidden = limit(read("k/(1 + K*[A]^n)", orders=("n",)), "A", "low")
+    assert hidden.law is None
+    assert hidden.words == ("not given: which term dominates depends on an order that is not given")
+
+
+def test_amounts_in_an_exponent_have_no_limit():
+    found = limit(read("k*exp(-[A])*[B]"), "A", "high")
+    assert (found.order, found.law) == (None, None)
+    assert found.words == "not given: its amount stands in an exponent or a function"
+    assert limit(read("k*exp(-[A])*[B]"), "B", "high").order == 1
+
+
+def test_a_law_that_vanishes_has_no_limit():
+    k, a = sympy.symbols("k a")
+    with pytest.raises(NoLeadingTerm, match="the law vanishes"):
+        leading(k * (a + 1) * amount("A") - k * a * amount("A") - k * amount("A"), amount("A"),
+                high=False)  # fmt: skip
+
+
+def test_forward_part():
+    assert equal(forward_part(read("k*([A]*[B] - [P]/K)/(1 + [A])")), read("k*[A]*[B]/(1 + [A])"))
+    assert equal(forward_part(read("k*[A] - m*[P]")), read("k*[A]"))
+    assert forward_part(read("k*[A]/(1 + [A])")) is None
+    assert forward_part(read("k*[A]/(1 - [A])")) is None  # a difference below: not a reverse rate
+    assert forward_part(read("(a - [A])*(b - [B])")) is None
+
+
+def test_a_formula_that_was_given_has_no_forward_part():
+    """What is subtracted in a bare law need not be a reverse reaction."""
+    law = law_from_expression("given", read("k*[A] - m*[A]^2"), overall=None, place=None)
+    assert [item.forward for item in limits_of(law)] == [False, False]
+
+
+def implicit(cubic, values, x):
+    """The law with the positive root of a polynomial in z, by mpmath with 120 digits."""
+    z = cubic[0]
+
+    def f(at):
+        with mpmath.workdps(150):
+            poly = sympy.Poly(cubic[1].xreplace(values | {x: sympy.Rational(str(at))}), z)
+            roots = mpmath.polyroots(
+                [mpmath.mpf(c.p) / c.q for c in poly.all_coeffs()], maxsteps=2000, extraprec=2000
+            )
+            (root,) = [r.real for r in roots if abs(r.imag) < abs(r) * 1e-60 and r.real > 0]
+            return root
+
+    return f
+
+
+@pytest.mark.parametrize(
+    ("balance", "species", "low", "high"),
+    [
+        # radical R made from A with B, lost by R + A and by 3 R; orders from the terms that balance
+        # one another: B A = z^3 or B A = z A (worked by hand)
+        ("a*z^3 + b*[A]*z - c*[A]*[B]", "A", "1/3", "0"),
+        ("a*z^3 + b*[A]*z - c*[A]*[B]", "B", "1", "1/3"),
+        # vacant fraction beside molecular and bridged species: 1 = z + K1 A z + K2 A^2 z^3, so
+        # z -> 1 at low A; at high A, K1 A z = 1 leaves K2 A^2 z^3 ~ 1/A small (worked by hand)
+        ("K2*[A]^2*z^3 + K1*[A]*z + z - 1", "A", "0", "-1"),
+        ("K2*[A]^3*z^3 + K1*[A]*z - 1", "A", "-1", "-1"),
+        ("a*z^4 + b*z^2*[A] + c*z*[A] - [B]*[A]^3", "A", "2", "3/4"),
+    ],
+)
+def test_implicit_unknown_by_the_terms_that_balance(balance, species, low, high):
+    z = sympy.Dummy("[R]", positive=True)
+    equation = read(balance).xreplace({constant_symbol("z"): z})
+    rate = ImplicitValue(0, (z,), (equation,))
+    x = amount(species)
+    values = {s: sympy.Rational(i + 3, 7) for i, s in
+              enumerate(sorted(rate.free_symbols, key=str)) if s != x}  # fmt: skip
+    root = implicit((z, equation), values, x)
+    for where, expected, exponent in (("low", low, -50), ("high", high, 50)):
+        found = limit(rate, species, where)
+        assert order_text(found.order) == expected
+        at = sympy.Rational(10) ** exponent
+        law = found.law.xreplace(values)
+        for inner in law.atoms(ImplicitValue):
+            (u,), (e,) = inner.unknowns, inner.equations
+            solved = implicit((u, e), {}, x)(at)
+            law = law.xreplace({inner: sympy.Float(solved, 60)})
+        shown = law.xreplace({x: at})
+        assert abs(sympy.Float(root(at), 40) / sympy.N(shown, 40) - 1) < 1e-12
+
+
+def test_unknowns_of_several_balances_have_no_closed_form():
+    z, y = sympy.Dummy("[R]", positive=True), sympy.Dummy("[S]", positive=True)
+    rate = ImplicitValue(0, (z, y), (z**3 + y - amount("A"), y**3 - z))
+    found = limit(rate, "A", "low")
+    assert (found.order, found.law, found.words) == (None, None, "not given: no closed form")
+
+
+def test_conditions_that_are_no_amounts_stay_as_they_are():
+    rate = read("k*[A]/(1 + K*[A])") * sympy.Pow(10, -quantity("pH"))
+    assert equal(limit(rate, "A", "high").law, read("k/K") * sympy.Pow(10, -quantity("pH")))
+
+
+def test_the_library_is_quick():
+    """Under 2 ms for a typical law: the median over the library, the best of three."""
+    laws = [derive(load_mechanism(name, base=Path.cwd())) for name in names()]
+    took = []
+    for law in laws:
+        each = []
+        for _ in range(3):
+            start = time.perf_counter()
+            limits_of(law)
+            each.append(time.perf_counter() - start)
+        took.append(min(each))
+    assert sorted(took)[len(took) // 2] < 2e-3
