@@ -52,52 +52,6 @@ def mathml(expr: sympy.Basic) -> str:
     )
 
 
-def wrap(text: str, width: int = 80, indent: str = "    ") -> str:
-    """``text`` (from :func:`plain`) in lines of at most ``width``, broken at operators.
-
-    Lines after the first start with ``indent``. Of the operators that fit, one outside of the
-    innermost brackets is taken. A piece without an operator stays whole, even if too long.
-    """
-    lines: list[str] = []
-    rest, lead = text, ""
-    while len(lead) + len(rest) > width:
-        at = _break(rest, width - len(lead))
-        if at is None:
-            break
-        lines.append(lead + rest[:at].rstrip())
-        rest, lead = rest[at:].lstrip(), indent
-    lines.append(lead + rest)
-    return "\n".join(lines)
-
-
-def _break(text: str, room: int) -> int | None:
-    """Where to break, or None. The shallowest operator in the latter half of the line, else any."""
-    places: list[tuple[int, int]] = []  # (depth, position of the first character of the next line)
-    depth, inside = 0, False
-    for i, ch in enumerate(text):
-        if ch == "[":
-            inside = True
-        elif ch == "]":
-            inside = False
-        elif inside:
-            continue
-        elif ch == "(":
-            depth += 1
-        elif ch == ")":
-            depth -= 1
-        elif (ch in "+-" and i > 0 and text[i - 1] == " ") or (ch == "/" and i > 0):
-            places.append((depth, i))
-        elif ch == "*":
-            places.append((depth, i + 1))
-    fits = [p for p in places if 0 < p[1] <= room]
-    late = [p for p in fits if 2 * p[1] >= room]
-    if late:
-        return min(late, key=lambda p: (p[0], -p[1]))[1]
-    if fits:
-        return max(p[1] for p in fits)
-    return min((p[1] for p in places if p[1] > room), default=None)
-
-
 # Plain text
 
 

@@ -8,7 +8,8 @@ import sympy
 from discrim.errors import Place
 from discrim.ratelaw.expression import parse_expression
 from discrim.ratelaw.model import amount, constant_symbol, quantity
-from discrim.ratelaw.printing import latex, mathml, plain, wrap
+from discrim.ratelaw.printing import latex, mathml, plain
+from discrim.report.wrapping import wrap
 
 QUANTITIES = {"pH": quantity("pH"), "T": quantity("T")}
 
