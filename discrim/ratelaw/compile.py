@@ -1,8 +1,9 @@
 """A law made into fast array functions with exact derivatives.
 
 The expressions are differentiated symbolically and common subexpressions are shared between the
-value and all derivatives. Symbols are renamed to neutral ones first, so no text of the user's ever
-becomes part of generated code.
+value and all derivatives. What only balances fix is solved for numerically, see
+:mod:`discrim.ratelaw.compile_implicit`. Symbols are renamed to neutral ones first, so no text of
+the user's ever becomes part of generated code.
 """
 
 from __future__ import annotations
@@ -13,6 +14,9 @@ from typing import Any
 
 import numpy as np
 import sympy
+
+from discrim.ratelaw.compile_implicit import ImplicitFunctions
+from discrim.ratelaw.implicit import ImplicitValue
 
 # Smallest amount at which logs and fractional powers are evaluated: [A]^n and its derivatives have
 # finite limits at zero for n > 0 that floating point would otherwise spoil with 0*inf.
@@ -58,8 +62,12 @@ def _function_of(
         outputs += [neutral.diff(c) for c in cond]
     if both:
         outputs += [neutral.diff(c).diff(t) for c in cond for t in theta]
+    return _array_function([*theta, *cond], outputs)
+
+
+def _array_function(inputs: Sequence[Any], outputs: list[Any]) -> Callable[..., Any]:
     made: Callable[..., Any] = sympy.lambdify(
-        [*theta, *cond],
+        inputs,
         outputs,
         modules="numpy",
         printer=_printer(),
@@ -67,6 +75,14 @@ def _function_of(
         docstring_limit=-1,
     )
     return made
+
+
+@lru_cache(maxsize=128)
+def _implicit_functions_of(neutral: Any, n_theta: int, n_cond: int) -> ImplicitFunctions:
+    """The same for an expression that holds implicit values."""
+    theta = [sympy.Symbol(f"t{i}", real=True) for i in range(n_theta)]
+    cond = [sympy.Symbol(f"c{i}", real=True) for i in range(n_cond)]
+    return ImplicitFunctions(neutral, theta, cond, _array_function)
 
 
 class CompiledLaw:
@@ -103,6 +119,11 @@ class CompiledLaw:
         self._positive = np.array([c in inside for c in self._cond], dtype=bool)
         self._any_positive = bool(self._positive.any())
         self._made: dict[tuple[bool, bool, bool], Callable[..., Any]] = {}
+        self._implicit: ImplicitFunctions | None = None
+        if self._neutral.has(ImplicitValue):
+            self._implicit = _implicit_functions_of(
+                self._neutral, len(self._theta), len(self._cond)
+            )
 
     def _function(self, key: tuple[bool, bool, bool]) -> Callable[..., Any]:
         if key not in self._made:
@@ -122,9 +143,8 @@ class CompiledLaw:
 
         ``theta`` shape (S, 1, p) or (S, N, p); ``conditions`` shape (N, m) or (S, N, m).
         Returns the value (S, N) and the derivatives asked for, (S, N, p), (S, N, m), (S, N, m, p).
+        Not a number where an implicit value has no positive solution.
         """
-        key = (constants, conditions_too, both)
-        function = self._function(key)
         if self._any_positive:
             conditions = np.where((conditions == 0.0) & self._positive, _TINY, conditions)
         p, m = len(self.constants), len(self.conditions)
@@ -133,6 +153,12 @@ class CompiledLaw:
             batch = conditions.shape[0]
         shape = (batch, conditions.shape[-2])
         args = [theta[..., j] for j in range(p)] + [conditions[..., j] for j in range(m)]
+        if self._implicit is not None:
+            with np.errstate(all="ignore"):
+                return self._implicit(
+                    args, shape, constants=constants, conditions=conditions_too, both=both
+                )
+        function = self._function((constants, conditions_too, both))
         with np.errstate(all="ignore"):
             raw = function(*args)
         value = raw[0]
