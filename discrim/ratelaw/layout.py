@@ -9,8 +9,11 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from functools import lru_cache
 
 import sympy
+
+from discrim.ratelaw.implicit import ImplicitValue
 
 _HALF = sympy.Rational(1, 2)
 
@@ -57,14 +60,20 @@ class Equation:
 Layout = Number | Name | Sum | Product | Power | Call | Equation
 
 
+@lru_cache(maxsize=4096)  # the same law is printed in three notations, and its parts recur
 def lay_out(expr: sympy.Basic) -> Layout:
-    """The pieces of ``expr`` in reading order."""
+    """The pieces of ``expr`` in reading order; an implicit value is read as its unknown."""
     expr = sympy.Integer(expr) if isinstance(expr, int) else expr
+    values = expr.atoms(ImplicitValue)
+    return _lay_out(expr.xreplace({v: v.unknown for v in values}) if values else expr)
+
+
+def _lay_out(expr: sympy.Basic) -> Layout:
     if isinstance(expr, sympy.Equality):
-        return Equation(lay_out(expr.lhs), lay_out(expr.rhs))
+        return Equation(_lay_out(expr.lhs), _lay_out(expr.rhs))
     negative, size = _sign(expr)
     if negative:
-        return Sum(((True, lay_out(size)),))
+        return Sum(((True, _lay_out(size)),))
     if expr.is_Symbol:
         return Name(expr.name)
     if expr.is_Number:
@@ -73,13 +82,13 @@ def lay_out(expr: sympy.Basic) -> Layout:
         return Call("exp", (Number("1"),))
     if expr.is_Add:
         terms = sorted((_sign(t) for t in expr.args), key=_term_key)
-        return Sum(tuple((minus, lay_out(t)) for minus, t in terms))
+        return Sum(tuple((minus, _lay_out(t)) for minus, t in terms))
     if isinstance(expr, sympy.exp):
-        return Call("exp", (lay_out(expr.args[0]),))
+        return Call("exp", (_lay_out(expr.args[0]),))
     if expr.is_Mul or expr.is_Pow:
         return _product(expr)
     if expr.is_Function:
-        return Call(type(expr).__name__, tuple(lay_out(a) for a in expr.args))
+        return Call(type(expr).__name__, tuple(_lay_out(a) for a in expr.args))
     return Name(str(expr))
 
 
@@ -167,18 +176,18 @@ def _factors(factors: list[sympy.Expr]) -> list[Layout]:
     if roots:
         under = sympy.Mul(*roots)  # sqrt(K*[A]) reads better than sqrt(K)*sqrt([A])
         last = max(_factor_key(r) for r in roots)
-        keyed.append(((last[0], 1, *last[2:]), Call("sqrt", (lay_out(under),))))
+        keyed.append(((last[0], 1, *last[2:]), Call("sqrt", (_lay_out(under),))))
     return [layout for _, layout in sorted(keyed, key=lambda pair: pair[0])]
 
 
 def _factor(factor: sympy.Expr) -> Layout:
     if factor.is_Pow and not isinstance(factor, sympy.exp):
         if factor.base is sympy.E:
-            return Call("exp", (lay_out(factor.exp),))
+            return Call("exp", (_lay_out(factor.exp),))
         if factor.exp == _HALF:
-            return Call("sqrt", (lay_out(factor.base),))
-        return Power(lay_out(factor.base), lay_out(factor.exp))
-    return lay_out(factor)
+            return Call("sqrt", (_lay_out(factor.base),))
+        return Power(_lay_out(factor.base), _lay_out(factor.exp))
+    return _lay_out(factor)
 
 
 def _natural(text: str) -> tuple[tuple[int, int, str], ...]:

@@ -6,7 +6,7 @@ d ln r / d ln [A] in between. Both are exact. Limits hold the other amounts fixe
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -85,6 +85,36 @@ def apparent_orders(law: RateLaw) -> tuple[ApparentOrder, ...]:
         order = apparent_order(rate, species)
         if order is not None and order.free_symbols:
             out.append(ApparentOrder(species, order, ahead is not None))
+    return tuple(out)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Case:
+    """One limit, or both ends where the law is the same there."""
+
+    limits: tuple[Limit, ...]
+
+
+def told(limits: Sequence[Limit]) -> tuple[Case, ...]:
+    """The limits that are worth a line each: none twice, ends that are the same together.
+
+    Of the net rate of a reversible law only those that differ from its forward part.
+    """
+    ahead = {(x.species, x.where): x for x in limits if x.forward}
+    out: list[Case] = []
+    for x in limits:
+        if x.law is None:
+            continue
+        if not x.forward and (x.species, x.where) in ahead:
+            other = ahead[x.species, x.where]
+            if x.law == other.law:
+                continue
+        last = out[-1].limits[0] if out else None
+        same = last is not None and (last.species, last.forward) == (x.species, x.forward)
+        if same and last is not None and last.law == x.law:
+            out[-1] = Case((last, x))
+        else:
+            out.append(Case((x,)))
     return tuple(out)
 
 

@@ -44,6 +44,11 @@ def latex(expr: sympy.Basic) -> str:
     return _latex(lay_out(expr))
 
 
+def latex_layout(node: Layout) -> str:
+    """LaTeX of a piece that is laid out already."""
+    return _latex(node)
+
+
 def mathml(expr: sympy.Basic) -> str:
     """A ``<math>`` element in presentation MathML; every name from a file is escaped."""
     return (

@@ -8,7 +8,7 @@ _LATEX_GAP = re.compile(r"(?<!\\) +|\\,")  # not the blank of a name, which is "
 
 
 def wrap(text: str, width: int = 80, indent: str = "    ") -> str:
-    """``text`` (from :func:`discrim.ratelaw.printing.plain`) in lines of at most ``width``, broken at operators.
+    """Plain ``text`` of a formula in lines of at most ``width``, broken at operators.
 
     Lines after the first start with ``indent``. Of the operators that fit, one outside of the
     innermost brackets is taken. A piece without an operator stays whole, even if too long.

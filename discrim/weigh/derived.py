@@ -5,8 +5,10 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
+from discrim.ratelaw.limits import Limit, apparent_orders, limits_of, order_text
 from discrim.ratelaw.model import RateLaw
 from discrim.ratelaw.printing import latex, mathml, plain
+from discrim.ratelaw.supporting import supporting
 from discrim.study.model import Study
 from discrim.weigh.laws import CandidateLaw, laws_of
 
@@ -22,6 +24,7 @@ def law_keys(c: CandidateLaw) -> dict[str, Any]:
 
 
 def _of_law(law: RateLaw) -> dict[str, Any]:
+    limits, orders = limits_of(law), apparent_orders(law)
     lumped = law.step_rate is not None and any(c.definition is not None for c in law.constants)
     return {
         "name": law.name,
@@ -58,8 +61,45 @@ def _of_law(law: RateLaw) -> dict[str, Any]:
         "constants_of_law": [
             {"name": c.name, "kind": c.kind.value, "meaning": c.meaning} for c in law.constants
         ],
+        "derivation_latex": supporting(law, limits, orders),
+        "routes": [
+            {
+                "name": r.name,
+                "equation": r.text,
+                "steps": dict(r.steps),
+                "words": r.words(),
+                "overall": dict(r.overall),
+            }
+            for r in getattr(law, "routes", ())
+        ],
+        "limits": [_limit(x) for x in limits],
+        "apparent_orders": [
+            {
+                "species": o.species,
+                "order": plain(o.order),
+                "order_latex": latex(o.order),
+                "order_mathml": mathml(o.order),
+                "forward": o.forward,
+            }
+            for o in orders
+        ],
         "production": {k: plain(e) for k, e in law.production.items()},
         "findings": list(law.findings),
+    }
+
+
+def _limit(x: Limit) -> dict[str, Any]:
+    given = x.law is not None
+    return {
+        "species": x.species,
+        "where": x.where,
+        "order": order_text(x.order) if given else "",
+        "words": x.words,
+        "forward": x.forward,
+        "reverse": x.reverse,
+        "law": plain(x.law) if given else "",
+        "law_latex": latex(x.law) if given else "",
+        "law_mathml": mathml(x.law) if given else "",
     }
 
 
