@@ -16,6 +16,8 @@ from typing import Any
 import numpy as np
 import sympy
 
+from discrim.ratelaw.implicit import ImplicitValue
+
 MAX_TERMS = 200  # of a numerator or denominator when expanded; laws in use have a dozen
 
 
@@ -46,6 +48,8 @@ def cleared(
     expression: Any, constants: Sequence[sympy.Symbol], conditions: Sequence[sympy.Symbol]
 ) -> ClearedLaw | None:
     """The cleared form of a law, or None when it does not have one."""
+    if expression.has(ImplicitValue):
+        return None
     top, bottom = sympy.together(expression).as_numer_denom()
     if max(_terms_when_expanded(top), _terms_when_expanded(bottom)) > MAX_TERMS:
         return None

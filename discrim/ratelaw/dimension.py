@@ -4,7 +4,7 @@ The terms of a sum have one unit, an observed expression has the unit of its col
 functions and exponents have none. With each unit a vector of powers of kinds (amount, volume,
 time, ...), these are linear equations for the constants' units, solved exactly over fractions. A
 unit that depends on an order is kept in parts: k in k*[B]^n has the unit of the rate times
-(unit of [B])^-n.
+(unit of [B])^-n. Unknowns of balances without a closed form are found along with the constants.
 
 People write numbers for constants (``1 + 0.5*[A]``). What follows only from a number having no
 unit is therefore given up, with a finding, where it contradicts the rest.
@@ -15,10 +15,12 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
+from typing import Any
 
 import sympy
 
 from discrim.errors import DiscrimError, Place
+from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.printing import plain
 from discrim.units import Unit
 
@@ -217,6 +219,7 @@ class _Walk:
         self.known = known
         self.equations: list[_Equation] = []
         self.powers: list[sympy.Expr] = []  # what units were raised to, beside numbers
+        self.systems: list[Any] = []  # of balances, already gone through
 
     @staticmethod
     def is_order(symbol: sympy.Symbol) -> bool:
@@ -242,6 +245,12 @@ class _Walk:
         self.equal(form, _Form(), says, soft=doubt > 0, doubt=doubt)
 
     def form(self, expr: sympy.Expr) -> _Form:
+        if isinstance(expr, ImplicitValue):
+            if expr.system not in self.systems:
+                self.systems.append(expr.system)
+                for equation in expr.equations:
+                    self.form(equation)
+            return self.form(expr.unknown)
         if expr.is_number:
             return _Form()
         if expr.is_Symbol:

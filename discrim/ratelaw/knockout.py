@@ -14,7 +14,9 @@ from typing import Any
 
 import sympy
 
+from discrim.ratelaw.implicit import named
 from discrim.ratelaw.model import ConstantKind, RateLaw, amount
+from discrim.ratelaw.settle import settled
 
 
 class KnockOutKind(Enum):
@@ -175,8 +177,8 @@ def _orders_only(law: RateLaw, symbol: Any) -> set[Any]:
 
 def _set(law: RateLaw, values: Mapping[Any, Any]) -> tuple[Any, dict[str, Any]] | None:
     """The law with symbols replaced; None when it is then not finite."""
-    rate = law.rate.subs(values)
-    production = {k: e.subs(values) for k, e in law.production.items()}
+    rate = settled(law.rate.subs(values))
+    production = {k: settled(e.subs(values)) for k, e in law.production.items()}
     for e in (rate, *production.values()):
         if e.has(sympy.nan, sympy.zoo, sympy.oo, -sympy.oo):
             return None
@@ -189,6 +191,6 @@ def _nothing(reduced: tuple[Any, Mapping[str, Any]]) -> bool:
 
 def _same(a: tuple[Any, Mapping[str, Any]], b: tuple[Any, Mapping[str, Any]]) -> bool:
     def zero(e: Any) -> bool:
-        return e == 0 or sympy.cancel(sympy.together(e)) == 0
+        return e == 0 or sympy.cancel(sympy.together(named(e)[0])) == 0
 
     return zero(a[0] - b[0]) and all(zero(a[1][k] - b[1][k]) for k in a[1])

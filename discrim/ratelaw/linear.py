@@ -7,6 +7,7 @@ from itertools import combinations
 
 import sympy
 
+from discrim.ratelaw.implicit import named
 from discrim.ratelaw.model import Constant, ConstantKind
 
 _SEED = 20240229  # of the points at which a second derivative is tried before it is proven
@@ -19,6 +20,7 @@ def linear_constants(exprs: Sequence[sympy.Expr], constants: Sequence[Constant])
 
     Affine in L: all second derivatives with respect to pairs within L (a constant with itself
     included) are zero, so that for given other constants the fit over L is a linear problem.
+    A constant under a root of a sum, or in balances without a closed form, does not count.
 
     Parameters
     ----------
@@ -31,8 +33,10 @@ def linear_constants(exprs: Sequence[sympy.Expr], constants: Sequence[Constant])
     constants, then with the earliest constants.
     """
     symbols = [c.symbol for c in constants]
-    first = [[sympy.diff(e, s) for s in symbols] for e in exprs]
-    used = [any(row[i] != 0 for row in first) for i in range(len(symbols))]
+    opened = [_without_roots(e) for e in exprs]
+    within = set().union(*(inside for _, inside in opened))
+    first = [[sympy.diff(e, s) for s in symbols] for e, _ in opened]
+    used = [any(row[i] != 0 for row in first) and s not in within for i, s in enumerate(symbols)]
 
     def affine(i: int, j: int) -> bool:
         return all(_no_second(row[i], symbols[j]) for row in first)
@@ -55,6 +59,16 @@ def linear_constants(exprs: Sequence[sympy.Expr], constants: Sequence[Constant])
         for n, i in enumerate(rest):
             stack.append(((*chosen, i), [j for j in rest[n + 1 :] if (i, j) in together]))
     return tuple(constants[i].name for i in best)
+
+
+def _without_roots(expr: sympy.Expr) -> tuple[sympy.Expr, set[sympy.Symbol]]:
+    """The law with symbols for roots of sums and for implicit values, and what stands in these."""
+    bare, values = named(expr)
+    inside: set[sympy.Symbol] = set().union(*(v.free_symbols for v in values.values()))
+    roots = [p for p in bare.atoms(sympy.Pow) if p.exp.is_Rational and not p.exp.is_Integer]
+    swap = {p: sympy.Dummy("root") for p in roots if p.base.has(sympy.Add)}
+    inside |= set().union(*(p.free_symbols for p in swap))
+    return bare.xreplace(swap), inside
 
 
 def _no_second(slope: sympy.Expr, symbol: sympy.Symbol) -> bool:

@@ -64,6 +64,8 @@ def _plain(node: Layout) -> str:
     if isinstance(node, Number):
         return node.text
     if isinstance(node, Name):
+        if ratio_parts(node.text):
+            return f"({node.text})"
         return node.text[1:-1] if node.text.startswith("{") else node.text
     if isinstance(node, Sum):
         out = ""
@@ -146,6 +148,9 @@ def _latex_text(text: str) -> str:
 
 
 def _latex_name(name: str) -> str:
+    ratio = ratio_parts(name)
+    if ratio:
+        return rf"\left({_latex_name(ratio[0])}/{_latex_name(ratio[1])}\right)"
     if name.startswith("["):
         parts = []
         for kind, text in species_parts(name[1:-1]):
@@ -218,6 +223,10 @@ def _upright(text: str) -> str:
 
 
 def _mathml_name(name: str) -> str:
+    ratio = ratio_parts(name)
+    if ratio:
+        inner = f"{_mathml_name(ratio[0])}<mo>/</mo>{_mathml_name(ratio[1])}"
+        return f"<mrow><mo>(</mo>{inner}<mo>)</mo></mrow>"
     if name.startswith("["):
         out = ""
         parts = species_parts(name[1:-1])
@@ -257,6 +266,14 @@ def _greek(letter: str) -> str:
 
 
 # Names
+
+
+def ratio_parts(name: str) -> tuple[str, str] | None:
+    """The two names of an unknown that stands relative to another, such as [A*]/[*]."""
+    over = name.find("]/[")
+    if not name.startswith("[") or over < 0:
+        return None
+    return name[: over + 1], name[over + 2 :]
 
 
 def name_parts(name: str) -> tuple[str, str, str]:

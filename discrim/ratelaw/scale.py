@@ -4,9 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from typing import Any
 
 import numpy as np
 import sympy
+
+from discrim.ratelaw.implicit import ImplicitValue
 
 _Row = tuple[dict[sympy.Symbol, float], float]  # logarithm: powers of constants, and a number
 _WEAK = 1e-3  # weight of "of size one", which decides only what nothing else does
@@ -20,7 +23,8 @@ def typical_scale(
 
     The terms of each sum are made equal in size, and each expression as large as what was
     measured: linear equations in the logarithms of the constants, solved by least squares since
-    they are often more than the constants. For the start of a fit; needs no units.
+    they are often more than the constants. For the start of a fit; needs no units. Unknowns of
+    balances without a closed form count like constants.
 
     Parameters
     ----------
@@ -48,9 +52,10 @@ def typical_scale(
         key=lambda s: s.name,
     )
     out = {s.name: walk.orders.get(s, 1.0) for s in constants}
-    found = [s for s in constants if s.is_nonnegative]
-    if not found:
+    named = [s for s in constants if s.is_nonnegative]
+    if not named:
         return out
+    found = [*named, *walk.unknowns]
     matrix = np.zeros((len(walk.rows) + len(found), len(found)))
     right = np.zeros(len(matrix))
     for i, (powers, value) in enumerate(walk.rows):
@@ -59,7 +64,7 @@ def typical_scale(
             matrix[i, j] = powers.get(s, 0.0)
     matrix[len(walk.rows) :] = _WEAK * np.eye(len(found))
     logs = np.linalg.lstsq(matrix, right, rcond=None)[0]
-    for s, value in zip(found, np.clip(logs, -600.0, 600.0), strict=True):
+    for s, value in zip(named, np.clip(logs, -600.0, 600.0), strict=False):
         out[s.name] = math.exp(value)
     return out
 
@@ -71,8 +76,14 @@ class _Walk:
         self.typical = typical
         self.rows: list[_Row] = []
         self.orders: dict[sympy.Symbol, float] = {}
+        self.unknowns: list[sympy.Symbol] = []
+        self.systems: list[Any] = []
 
     def log(self, expr: sympy.Expr) -> _Row:
+        if isinstance(expr, ImplicitValue):
+            return self.implicit(expr)
+        if expr in self.unknowns:
+            return {expr: 1.0}, 0.0
         if expr.is_number:
             size = abs(float(expr))
             return {}, math.log(size) if size > 0 and math.isfinite(size) else 0.0
@@ -110,6 +121,15 @@ class _Walk:
             apart = {s: powers.get(s, 0.0) - mean[s] for s in mean}
             self.rows.append((apart, middle - log_size))
         return mean, middle + math.log(n)
+
+    def implicit(self, value: ImplicitValue) -> _Row:
+        """Its unknown, of the size at which the terms of its balances are equal."""
+        if value.system not in self.systems:
+            self.systems.append(value.system)
+            self.unknowns += value.unknowns
+            for equation in value.equations:
+                self.log(equation)
+        return {value.unknown: 1.0}, 0.0
 
     def function(self, argument: sympy.Expr) -> _Row:
         """An argument of size one; the value, then, as well."""
