@@ -11,18 +11,20 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
-from math import comb, lcm, prod
+from math import comb, gcd, lcm, prod
 from typing import Any
 
 import sympy
 from sympy.polys.domains import ZZ
-from sympy.polys.fields import FracField
+from sympy.polys.rings import PolyRing
 
 from discrim.ratelaw.printing import plain
 
 # A piece of the law: ("number", p, q), ("variable", key, power), ("add" | "mul", pieces),
 # or ("pow", piece, integer).
 _Tree = tuple[Any, ...]
+_PRIME = 2**31 - 1
+
 Key = tuple[sympy.Basic, sympy.Basic]  # base and the symbolic part of the exponent
 
 
@@ -32,14 +34,14 @@ class NotRational(Exception):
 
 @dataclass(frozen=True, slots=True)
 class Variables:
-    """The independent variables of a set of laws, and the field of their rational functions.
+    """The independent variables of a set of laws, and the ring of their polynomials.
 
     ``roots`` gives for each key the q for which the variable stands for key^(1/q).
     """
 
     keys: tuple[Key, ...]
     roots: dict[Key, int]
-    field: Any
+    ring: Any
     generators: dict[Key, Any]
 
 
@@ -58,25 +60,158 @@ def collect(trees: Sequence[_Tree], ordering: Any) -> Variables:
         _roots(tree, roots)
     keys = tuple(sorted(roots, key=ordering))
     names = [f"v{i}" for i in range(len(keys))] or ["v0"]
-    field = FracField(names, ZZ, "lex")
-    return Variables(keys, roots, field, dict(zip(keys, field.gens, strict=False)))
+    ring = PolyRing(names, ZZ, "lex")
+    return Variables(keys, roots, ring, dict(zip(keys, ring.gens, strict=False)))
 
 
-def evaluate(tree: _Tree, variables: Variables) -> Any:
-    """The rational function, cancelled, as an element of the field."""
-    op = tree[0]
+def ratio(tree: _Tree, variables: Variables) -> tuple[Any, dict[Any, int]]:
+    """Numerator, and the factors of the denominator with their powers, in the ring.
+
+    Nothing is cancelled, so that no common divisor has to be searched for; see `reduced`.
+    Raises `ZeroDivisionError` where a denominator is zero.
+    """
+    op, ring = tree[0], variables.ring
     if op == "number":
-        return variables.field(tree[1]) / variables.field(tree[2])
+        return ring(tree[1]), {} if tree[2] == 1 else {ring(tree[2]): 1}
     if op == "variable":
         _, key, power = tree
-        return variables.generators[key] ** int(power * variables.roots[key])
+        generator, n = variables.generators[key], int(power * variables.roots[key])
+        return (generator**n, {}) if n >= 0 else (ring.one, {generator: -n})
     if op == "pow":
-        return evaluate(tree[1], variables) ** tree[2]
-    parts = [evaluate(t, variables) for t in tree[1]]
-    out = parts[0]
-    for part in parts[1:]:
-        out = out + part if op == "add" else out * part
+        return _raised(tree[1], tree[2], variables)
+    parts = [ratio(t, variables) for t in tree[1]]
+    bottom: dict[Any, int] = {}
+    for _, below in parts:
+        for factor, power in below.items():
+            have = bottom.get(factor, 0)
+            bottom[factor] = max(have, power) if op == "add" else have + power
+    top = ring.zero if op == "add" else ring.one
+    for above, below in parts:
+        if op == "add":
+            for factor, power in bottom.items():
+                above = above * factor ** (power - below.get(factor, 0))
+            top = top + above
+        else:
+            top = top * above
+    return top, bottom
+
+
+def _raised(tree: _Tree, n: int, variables: Variables) -> tuple[Any, dict[Any, int]]:
+    """A power of a piece; of a product, the power of each of its factors."""
+    if tree[0] == "mul":
+        return ratio(("mul", [("pow", t, n) for t in tree[1]]), variables)
+    if tree[0] == "pow":
+        return _raised(tree[1], tree[2] * n, variables)
+    above, below = ratio(tree, variables)
+    if n >= 0:
+        return above**n, {factor: power * n for factor, power in below.items()}
+    if not above:
+        raise ZeroDivisionError
+    top = variables.ring.one
+    for factor, power in below.items():
+        top = top * factor ** (power * -n)
+    return top, {above: -n}
+
+
+def reduced(top: Any, bottom: dict[Any, int]) -> tuple[Any, Any]:
+    """Numerator and denominator without the factors that they visibly share."""
+    below = top.ring.one
+    for factor, power in bottom.items():
+        left = power
+        while left and len(factor) > 1 and top:
+            quotient = divided(top, factor)
+            if quotient is None:
+                break
+            top, left = quotient, left - 1
+        below = below * factor**left
+    top, below = without_common((top, below))
+    if below.LC < 0 and top:
+        return -top, -below
+    return top, below
+
+
+def divided(poly: Any, by: Any) -> Any | None:
+    """The exact quotient, or None."""
+    if any(a > b for a, b in zip(by.degrees(), poly.degrees(), strict=True)):
+        return None
+    quotient, rest = poly.div(by)
+    return None if rest else quotient
+
+
+def without_common(polys: Sequence[Any]) -> tuple[Any, ...]:
+    """Polynomials divided by the product of powers and the number that all share."""
+    some = [p for p in polys if p]
+    if not some:
+        return tuple(polys)
+    low = [min(col) for col in zip(*(m for p in some for m in p), strict=True)]
+    number = gcd(*(int(c) for p in some for c in p.values()))
+    if number == 1 and not any(low):
+        return tuple(polys)
+    return tuple(
+        p.ring.from_dict(
+            {tuple(a - b for a, b in zip(m, low, strict=True)): c // number for m, c in p.items()}
+        )
+        for p in polys
+    )
+
+
+def coprime(polys: Sequence[Any], generators: Sequence[int]) -> bool:
+    """Whether it is proven that the polynomials share no factor that holds one of the generators.
+
+    For each generator x the others are set to integers: what the polynomials share then still
+    divides all of them, and keeps its degree in x if one leading coefficient is not zero, so a
+    greatest common divisor of degree zero there is a proof (modulo a prime, likewise).
+    """
+    some = [p for p in polys if p]
+    return all(_coprime_in(some, i) for i in generators)
+
+
+def _coprime_in(polys: Sequence[Any], i: int) -> bool:
+    if any(all(m[i] == 0 for m in p) for p in polys):
+        return True
+    for attempt in range(3):
+        rows = [_at_numbers(p, i, attempt) for p in polys]
+        # _at_numbers drops zeros at the top: then the degree fell and proves nothing
+        if all(len(row) <= max(m[i] for m in p) for row, p in zip(rows, polys, strict=True)):
+            continue
+        rows = [row for row in rows if row]
+        shared = rows[0]
+        for row in rows[1:]:
+            shared = _gcd_mod(shared, row)
+        if len(shared) == 1:
+            return True
+    return False
+
+
+def _at_numbers(poly: Any, i: int, attempt: int) -> list[int]:
+    """Coefficients by powers of generator ``i``, the other generators at integers, mod a prime."""
+    points = [pow(3 + attempt, 7 * j + 5, _PRIME) for j in range(poly.ring.ngens)]
+    out: list[int] = []
+    for monomial, c in poly.items():
+        value = int(c) % _PRIME
+        for j, e in enumerate(monomial):
+            if e and j != i:
+                value = value * pow(points[j], e, _PRIME) % _PRIME
+        out += [0] * (monomial[i] + 1 - len(out))
+        out[monomial[i]] = (out[monomial[i]] + value) % _PRIME
+    while out and not out[-1]:
+        out.pop()
     return out
+
+
+def _gcd_mod(a: list[int], b: list[int]) -> list[int]:
+    while b:
+        inverse = pow(b[-1], -1, _PRIME)
+        while len(a) >= len(b):
+            times, shift = a[-1] * inverse % _PRIME, len(a) - len(b)
+            a = [
+                (c - times * b[k - shift]) % _PRIME if k >= shift else c
+                for k, c in enumerate(a)
+            ]
+            while a and not a[-1]:
+                a.pop()
+        a, b = b, a
+    return a
 
 
 def n_terms(tree: _Tree) -> int:

@@ -1,0 +1,223 @@
+"""Two laws made comparable: one ring for both, and values to try for constants in exponents."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from itertools import product
+from math import prod
+from typing import Any
+
+import sympy
+
+from discrim.ratelaw.exponents import Layout
+from discrim.ratelaw.model import Constant
+from discrim.ratelaw.polynomials import (
+    Key,
+    NotRational,
+    Variables,
+    as_trees,
+    collect,
+    n_terms,
+    ratio,
+    reduced,
+)
+from discrim.ratelaw.printing import plain
+from discrim.ratelaw.relation import Nesting
+from discrim.ratelaw.solve import Progress
+
+_USUAL_ORDERS = tuple(sympy.Rational(p, q) for p, q in ((0, 1), (1, 2), (1, 1), (2, 1), (-1, 1)))
+_MOST_CHOICES = 64  # combinations of values of orders that are tried
+_MOST_EXPONENTS = 60_000  # terms of a law times variables; about a second of work
+
+Choice = dict[sympy.Symbol, sympy.Expr]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Prepared:
+    """Both laws as polynomials for one choice of the constants in exponents.
+
+    Attributes
+    ----------
+    open_ : unknowns without a chosen value
+    unknown : those that occur, in the order of the first generators of the ring
+    larger, smaller : (numerator, denominator) of each expression
+    independent : no product of powers or sum relates the variables, for generic values of the
+        constants of the smaller law, so that comparing coefficients loses nothing
+    """
+
+    choice: Choice
+    variables: Variables
+    open_: list[sympy.Symbol]
+    unknown: list[sympy.Symbol]
+    larger: list[tuple[Any, Any]]
+    smaller: list[tuple[Any, Any]]
+    layout: Layout
+    independent: bool
+
+
+class Case:
+    """Two laws being compared; the larger law's constants made unlike any other symbol."""
+
+    def __init__(
+        self,
+        smaller: Sequence[sympy.Expr],
+        larger: Sequence[sympy.Expr],
+        constants_smaller: Sequence[Constant],
+        constants_larger: Sequence[Constant],
+    ) -> None:
+        self.smaller = list(smaller)
+        self.small = {c.symbol for c in constants_smaller}
+        self.names = {}  # the unlike symbol -> the constant's name
+        rename = {}
+        for c in constants_larger:
+            positive = bool(c.symbol.is_nonnegative)
+            unlike = sympy.Dummy(c.name, **({"nonnegative": True} if positive else {"real": True}))
+            rename[c.symbol] = unlike
+            self.names[unlike] = c.name
+        self.larger = [e.xreplace(rename) for e in larger]
+        occurring = frozenset().union(*(e.free_symbols for e in self.larger))
+        self.unknown = [s for s in rename.values() if s in occurring]
+        self.n_restrictions = len(constants_larger) - len(constants_smaller)
+        self.held = self._held()
+
+    def _held(self) -> list[sympy.Symbol]:
+        """Unknowns that stand in exponents or functions, where their values must be tried."""
+        found: set[sympy.Symbol] = set()
+        for e in self.larger:
+            for piece in e.atoms(sympy.Pow, sympy.Function):
+                if piece.is_Pow and piece.exp.is_Integer and piece.base is not sympy.E:
+                    continue
+                if piece.is_Pow and piece.exp.is_Rational and piece.base.is_Symbol:
+                    continue
+                inside = piece.exp if piece.is_Pow and not piece.exp.is_Rational else piece
+                found |= inside.free_symbols
+        return [s for s in self.unknown if s in found]
+
+    def choices(self) -> Iterator[list[Choice]]:
+        """Lists of values to try for the held unknowns, the likely ones first."""
+        if not self.held:
+            yield [{}]
+            return
+        likely = [self._likely(s) for s in self.held]
+        for options in (
+            likely,
+            [self._wider(s, o) for s, o in zip(self.held, likely, strict=True)],
+        ):
+            if prod(len(o) for o in options) <= _MOST_CHOICES:
+                yield [dict(zip(self.held, values, strict=True)) for values in product(*options)]
+
+    def _likely(self, symbol: sympy.Symbol) -> list[sympy.Expr]:
+        own = [s for s in self.small if s.name == symbol.name]
+        if symbol.is_nonnegative:
+            return [*own, *(s for s in self._held_small() if s not in own), sympy.Integer(0)]
+        bases: set[sympy.Symbol] = set()
+        for e in self.larger:
+            for power in e.atoms(sympy.Pow):
+                if symbol in power.exp.free_symbols:
+                    bases |= power.base.free_symbols
+        out: dict[sympy.Expr, None] = dict.fromkeys(own)
+        for e in self.smaller:
+            if e.free_symbols & bases:
+                out[sympy.Integer(1)] = None
+            for power in e.atoms(sympy.Pow):
+                if power.base.free_symbols & bases:
+                    for part in (power.exp, *power.exp.free_symbols):
+                        if part.is_Rational or (part in self.small and not part.is_nonnegative):
+                            out[part] = None
+        out[sympy.Integer(0)] = None
+        return list(out)
+
+    def _wider(self, symbol: sympy.Symbol, likely: list[sympy.Expr]) -> list[sympy.Expr]:
+        more = () if symbol.is_nonnegative else _USUAL_ORDERS
+        return list(dict.fromkeys([*likely, *more]))
+
+    def _held_small(self) -> list[sympy.Symbol]:
+        found: set[sympy.Symbol] = set()
+        for e in self.smaller:
+            for piece in e.atoms(sympy.exp, sympy.log):
+                found |= piece.free_symbols
+            for piece in e.atoms(sympy.Pow):
+                if piece.exp.is_Rational and not piece.exp.is_Integer and piece.base.is_Add:
+                    found |= piece.free_symbols
+        return sorted((s for s in found if s in self.small and s.is_nonnegative), key=str)
+
+    def rank(self, found: Nesting) -> tuple[int, int, int, list[int]]:
+        order = list(self.names.values())
+        zero = [order.index(n) for n in found.zero]
+        return len(found.infinite), len(found.zero), len(found.vanish), zero
+
+    def prepare(self, choice: Choice, progress: Progress) -> Prepared | None:
+        """The laws as polynomials; None, with the reason in ``progress``, where they are not."""
+        larger = [e.xreplace(choice) for e in self.larger]
+        if any(e.has(sympy.zoo, sympy.nan, sympy.oo) for e in larger):
+            return None
+        open_ = [s for s in self.unknown if s not in choice]
+        try:
+            trees = as_trees((*larger, *self.smaller), frozenset(open_))
+        except NotRational as reason:
+            progress.dropped.append(f"the larger law holds {reason}")
+            return None
+        left = {s: i for i, s in enumerate(open_)}
+
+        def ordering(key: Key) -> tuple[int, int, str]:
+            if key[0] in left:
+                return 0, left[key[0]], ""
+            return (2 if varies(key) else 1), 0, str(key)
+
+        variables = collect(trees, ordering)
+        if max(n_terms(t) for t in trees) * len(variables.keys) > _MOST_EXPONENTS:
+            progress.dropped.append("the laws are too large to compare")
+            return None
+        try:
+            pairs = [reduced(*ratio(t, variables)) for t in trees]
+        except ZeroDivisionError:
+            return None
+        unknown = [base for base, _ in variables.keys if base in left]
+        if len(set(unknown)) < len(unknown):
+            progress.dropped.append("a constant stands with two different symbolic powers")
+            return None
+        n = len(larger)
+        keys = variables.keys
+        layout = Layout(
+            n_unknown=len(unknown),
+            n_parameter=sum(not varies(k) for k in keys) - len(unknown),
+            n=max(len(keys), 1),
+            signed=frozenset(
+                i for i, (base, power) in enumerate(keys) if power == 1 and not base.is_nonnegative
+            ),
+        )
+        independent = _independent(keys[len(unknown) :])
+        return Prepared(
+            choice, variables, open_, unknown, pairs[:n], pairs[n:], layout, independent
+        )
+
+    def without_effect(self, choice: Choice, zero: Sequence[str]) -> list[sympy.Symbol]:
+        """Held unknowns that no longer occur once the constants in ``zero`` are zero."""
+        if not choice or not zero:
+            return []
+        gone = {s: sympy.Integer(0) for s, name in self.names.items() if name in zero}
+        left = frozenset().union(*(e.xreplace(gone).free_symbols for e in self.larger))
+        return [s for s in choice if s not in left and s not in gone]
+
+
+def varies(key: Key) -> bool:
+    """Whether a variable changes from run to run: it holds a species or a quantity."""
+    return any(s.name[0] in "[{" for s in key[0].free_symbols | key[1].free_symbols)
+
+
+def _independent(keys: Sequence[Key]) -> bool:
+    """Whether the variables are algebraically independent, for generic constants.
+
+    Symbols are; so are symbols to different symbolic orders; so is a function of symbols that
+    stand nowhere else.
+    """
+    for key in keys:
+        base, power = key
+        if base.is_Symbol and (power == 1 or (power.is_Symbol and not varies((power, power)))):
+            continue
+        own = base.free_symbols | power.free_symbols
+        others = set().union(*(b.free_symbols | p.free_symbols for b, p in keys if (b, p) != key))
+        if not own or own & others:
+            return False
+    return True
