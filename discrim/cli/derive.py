@@ -23,6 +23,11 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         needed=False,
     )
     parser.add_argument(
+        "--latex",
+        action="store_true",
+        help="print each derivation as LaTeX, for the supporting information of a paper",
+    )
+    parser.add_argument(
         "--library",
         nargs="*",
         metavar="WORD",
@@ -54,6 +59,8 @@ def run(options: argparse.Namespace) -> int:
         found = derive_all(load(options.study))
     if options.json:
         show_json(found)
+    elif options.latex:
+        show("\n".join(c.get("derivation_latex", "") for c in found))
     elif options.quiet:
         show("\n".join(f"{c.get('name', '')}: {c.get('law', '')}" for c in found))
     else:

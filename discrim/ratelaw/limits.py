@@ -33,6 +33,7 @@ class Limit:
     forward : whether it is the limit of the forward part of a reversible law
     words : "first order in A", or why there is no limit
     reverse : whether the rate is negative there, so that the reverse reaction is what is left
+    exact : whether the limit is the law itself, so that it holds at any amount
     """
 
     species: str
@@ -42,6 +43,7 @@ class Limit:
     forward: bool
     words: str
     reverse: bool = False
+    exact: bool = False
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -136,7 +138,8 @@ def limit(rate: Any, species: str, where: str, *, forward: bool = False) -> Limi
     words, reverse = order_words(lead.order, species), sign_of(lead.coefficient) < 0
     if reverse:
         words += ", in reverse"
-    return Limit(species, where, lead.order, reduced, forward, words, reverse)
+    exact = bool(reduced == rate or reduced == tidy(rate))
+    return Limit(species, where, lead.order, reduced, forward, words, reverse, exact)
 
 
 def order_words(order: Any, species: str) -> str:

@@ -42,7 +42,8 @@ _ARROW = {"<=>": r"$\rightleftharpoons$", "->": r"$\rightarrow$", "<-": r"$\left
 
 def supporting(law: RateLaw, limits: Sequence[Limit], orders: Sequence[ApparentOrder]) -> str:
     """The whole argument: steps, assumptions, derivation, law, limiting cases."""
-    out: list[str] = ["% needs \\usepackage{amsmath}", r"\begingroup\allowdisplaybreaks"]
+    name = "".join(c if c.isprintable() else " " for c in law.name)
+    out: list[str] = [f"% {name}; needs amsmath", r"\begingroup\allowdisplaybreaks"]
     if law.steps:
         rows = [rf"\text{{{text(n)}}}\colon\quad & {equation(t)}" for n, t in law.steps.items()]
         out += [r"\paragraph{Steps}", *_aligned(rows)]
@@ -143,7 +144,8 @@ def _case(case: Case) -> str:
     first = case.limits[0]
     x = latex(amount(first.species))
     if len(case.limits) == 2:
-        lead = rf"\text{{any }} {x}\colon\quad r ={{}} & "
+        when = rf"\text{{any }} {x}" if first.exact else rf"{x} \to 0 \text{{ or }} \infty"
+        lead = rf"{when}\colon\quad r {'=' if first.exact else chr(92) + 'to '}{{}} & "
     else:
         end = "0" if first.where == LOW else r"\infty"
         lead = rf"{x} \to {end}\colon\quad r \to {{}} & "

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 from discrim.report import read, tables
+from discrim.report.cases import Case, groups
 from discrim.report.numbers import (
     as_number,
     count,
@@ -79,6 +80,12 @@ class Law:
     combinations: tuple[tuple[str, str, str], ...]  # name, definition, words
     source: str
     place: str
+    routes: tuple[tuple[str, str], ...] = ()  # overall equation, steps
+    limits: tuple[tuple[str, tuple[Case, ...]], ...] = ()  # heading, lines
+
+    def derives(self, text: str) -> bool:
+        """Whether the derivation holds this formula, so that it need not be said again."""
+        return any(_bare(t) == _bare(text) for _, t, _ in self.derivation)
 
 
 @dataclass(frozen=True, slots=True)
@@ -228,7 +235,16 @@ def law(candidate: Document) -> Law:
         ),
         source=read.text(candidate, "source"),
         place=read.text(candidate, "place"),
+        routes=tuple(
+            (read.text(r, "equation"), read.text(r, "words"))
+            for r in read.records(candidate, "routes")
+        ),
+        limits=groups(candidate),
     )
+
+
+def _bare(formula: str) -> str:
+    return formula.removeprefix("r = ")
 
 
 def _equation_mathml(formula: str) -> str:

@@ -10,6 +10,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any, TextIO
 
 from discrim.report.tables import Table
+from discrim.report.wrapping import wrap
 
 WIDTH = 80
 
@@ -63,6 +64,31 @@ class Paper:
             subsequent_indent=" " * (indent if hang is None else hang),
             break_on_hyphens=False,
         )
+
+    def formula(
+        self, text: str, *, indent: int = 0, head: str = "", most: int = 0, rest: str = ""
+    ) -> None:
+        """A formula broken at its operators, on the line of ``head`` if it fits there.
+
+        With ``most``, only that many lines, and how many follow with the words ``rest``.
+        """
+        room = self.width - indent
+        if head and len(head) + len(text) > room:
+            self.say(head.rstrip(), indent=indent)
+            indent += 4
+            room -= 4
+        elif head:
+            self.lines.append((" " * indent + head + text).rstrip())
+            return
+        lines = wrap(text, room).splitlines()
+        if most and len(lines) > most + 1:
+            left = len(lines) - most
+            lines = [*lines[:most], f"    ... {left} more lines{rest}"]
+        for line in lines:
+            if len(line) <= room:
+                self.lines.append(" " * indent + line)
+            else:  # one long name
+                self.say(line.strip(), indent=indent + len(line) - len(line.lstrip()))
 
     def bullets(self, lines: Sequence[str], *, indent: int = 2) -> None:
         for line in lines:

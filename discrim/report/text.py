@@ -6,11 +6,15 @@ from collections.abc import Sequence
 from typing import Any
 
 from discrim.report import read, tables
+from discrim.report.cases import Case
 from discrim.report.content import Answer, Content, Law, build, laws_of
 from discrim.report.numbers import factor, number
 from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
+from discrim.report.wrapping import wrap_latex
 
+#: Lines of a long formula that are printed, and where the rest is.
+_MOST, _FEW, _REST = 12, 6, "; all of it with --json"
 #: Columns that only the HTML report shows.
 _WIDE = ("RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
 
@@ -108,7 +112,7 @@ def _candidates(paper: Paper, content: Content) -> None:
         paper.heading("Rate laws")
         for item in laws:
             paper.say(item.name, indent=2)
-            paper.say(item.text, indent=4, hang=8)
+            paper.formula(item.text, indent=4, most=_FEW, rest=" in the report")
 
 
 def _constants(paper: Paper, content: Content) -> None:
@@ -144,34 +148,67 @@ def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = F
 
 
 def _law(paper: Paper, item: Law) -> None:
-    paper.say(item.text, indent=2, hang=6)
-    if item.latex:
-        paper.blank()
-        paper.say("LaTeX", indent=2)
-        paper.say(item.latex, indent=4)
-    if item.step_text and item.step_text != item.text:
+    paper.formula(item.text, indent=2, most=_MOST, rest=_REST)
+    if item.step_text and item.step_text != item.text and not item.derives(item.step_text):
         paper.blank()
         paper.say("In the constants of the steps", indent=2)
-        paper.say(item.step_text, indent=4, hang=8)
-    _list(paper, "Constants that only occur together", [
-        f"{name} = {definition}" + (f" ({words})" if words else "")
-        for name, definition, words in item.combinations
-    ])  # fmt: skip
+        paper.formula(item.step_text, indent=4, most=_MOST, rest=_REST)
+    if item.combinations:
+        paper.blank()
+        paper.say("Constants that only occur together", indent=2)
+        for name, definition, words in item.combinations:
+            line = f"- {name} = {definition}"
+            if words and len(line) + len(words) + 3 <= paper.width - 4:
+                line, words = f"{line} ({words})", ""
+            paper.formula(line, indent=4, most=_FEW, rest=_REST)
+            if words:
+                paper.say(f"({words})", indent=6)
     if item.steps:
         paper.blank()
         paper.say("Steps", indent=2)
         paper.pairs(item.steps, indent=4)
-    if item.derivation:
+    if item.routes:
         paper.blank()
-        paper.say("Derivation", indent=2)
-        for words, formula, _ in item.derivation:
-            paper.bullets([words] if words else [], indent=4)
-            if formula:
-                paper.say(formula, indent=8, hang=12)
+        paper.say("Pathways" if len(item.routes) > 1 else "Overall", indent=2)
+        paper.pairs(item.routes, indent=4)
+    _derivation(paper, item)
+    for heading, lines in item.limits:
+        _cases(paper, heading, lines)
     _list(paper, "Assumptions", item.assumptions)
     _list(paper, "Conventions", item.conventions)
     _list(paper, "Notes", item.notes)
     _list(paper, "Source", [item.source] if item.source else [])
+    if item.latex:
+        typeset = wrap_latex(item.latex, paper.width - 4).splitlines()
+        paper.blank()
+        paper.say("LaTeX (the whole derivation: --latex)", indent=2)
+        if len(typeset) > _MOST:
+            paper.say(f"{len(typeset)} lines{_REST}", indent=4)
+        else:
+            paper.lines += [f"    {line}" for line in typeset]
+
+
+def _derivation(paper: Paper, item: Law) -> None:
+    if not item.derivation:
+        return
+    paper.blank()
+    paper.say("Derivation", indent=2)
+    lead = len(str(len(item.derivation)))
+    for i, (words, formula, _) in enumerate(item.derivation, 1):
+        paper.say(f"{i:>{lead}}. {words}", indent=4, hang=6 + lead)
+        if formula:
+            paper.formula(formula, indent=6 + lead, most=_FEW, rest=_REST)
+
+
+def _cases(paper: Paper, heading: str, lines: Sequence[Case]) -> None:
+    """Range, order and law under one another; a law that is too long stands on its own lines."""
+    paper.blank()
+    paper.say(heading, indent=2)
+    where = max(len(c.where) for c in lines)
+    order = max(len(c.order) for c in lines if c.text or len(c.order) < 24)
+    for c in lines:
+        head = f"{c.where:<{where}}  {c.order:<{order}}  " if c.order else f"{c.where:<{where}}  "
+        paper.formula(c.text, head=head, indent=4, most=_FEW, rest=_REST)
 
 
 def _list(paper: Paper, heading: str, lines: Sequence[str]) -> None:

@@ -26,8 +26,9 @@ def wrap(text: str, width: int = 80, indent: str = "    ") -> str:
 
 
 def _break(text: str, room: int) -> int | None:
-    """Where to break, or None. The shallowest operator in the latter half of the line, else any."""
-    places: list[tuple[int, int]] = []  # (depth, position of the first character of the next line)
+    """Where to break, or None: in the last two thirds of the line at the shallowest operator, a sign
+    or a slash rather than a product; else the last that fits."""
+    places: list[tuple[int, bool, int]] = []  # (depth, product, first character of the next line)
     depth, inside = 0, False
     for i, ch in enumerate(text):
         if ch == "[":
@@ -41,16 +42,16 @@ def _break(text: str, room: int) -> int | None:
         elif ch == ")":
             depth -= 1
         elif (ch in "+-" and i > 0 and text[i - 1] == " ") or (ch == "/" and i > 0):
-            places.append((depth, i))
+            places.append((depth, False, i))
         elif ch == "*":
-            places.append((depth, i + 1))
-    fits = [p for p in places if 0 < p[1] <= room]
-    late = [p for p in fits if 2 * p[1] >= room]
+            places.append((depth, True, i + 1))
+    fits = [p for p in places if 0 < p[2] <= room]
+    late = [p for p in fits if 3 * p[2] >= room]
     if late:
-        return min(late, key=lambda p: (p[0], -p[1]))[1]
+        return min(late, key=lambda p: (p[0], p[1], -p[2]))[2]
     if fits:
-        return max(p[1] for p in fits)
-    return min((p[1] for p in places if p[1] > room), default=None)
+        return max(p[2] for p in fits)
+    return min((p[2] for p in places if p[2] > room), default=None)
 
 
 def wrap_latex(text: str, width: int = 80) -> str:

@@ -97,6 +97,7 @@ def _limit(x: Limit) -> dict[str, Any]:
         "words": x.words,
         "forward": x.forward,
         "reverse": x.reverse,
+        "exact": x.exact,
         "law": plain(x.law) if given else "",
         "law_latex": latex(x.law) if given else "",
         "law_mathml": mathml(x.law) if given else "",
