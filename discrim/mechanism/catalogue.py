@@ -40,7 +40,7 @@ class Entry:
 
     @property
     def texts(self) -> tuple[str, ...]:
-        return (self.name, self.title, self.field, self.note, self.source)
+        return (self.name, self.title, self.field, self.note)
 
 
 def entries() -> tuple[Entry, ...]:
@@ -68,27 +68,38 @@ def entries() -> tuple[Entry, ...]:
 def search(words: Sequence[str], among: Sequence[Entry]) -> tuple[Entry, ...]:
     """The entries that every word matches.
 
-    A word matches a species by its whole name as written, and the name, title, field, note and
-    source of a file where it begins a word there, in small or capital letters. A single letter
-    stands for a species alone.
+    A word matches a species by its whole name as written, and the name, title, field and note of a
+    file where it begins a word there, in small or capital letters. A single letter stands for a
+    species alone. Where nothing matches so, the sources are searched too (for an author).
     """
-    return tuple(e for e in among if all(_matches(word, e) for word in words))
+    for with_source in (False, True):
+        found = tuple(e for e in among if all(_matches(w, e, with_source) for w in words))
+        if found:
+            return found
+    return ()
 
 
-def _matches(word: str, entry: Entry) -> bool:
+def _matches(word: str, entry: Entry, with_source: bool) -> bool:
     if word in entry.species:
         return True
     parts = [p.lower() for p in _WORD.findall(word)]
     if len("".join(parts)) < 2:
         return False
-    found = [w.lower() for text in entry.texts for w in _WORD.findall(text)]
+    texts = (*entry.texts, entry.source) if with_source else entry.texts
+    found = [w.lower() for text in texts for w in _WORD.findall(text)]
     return all(any(w.startswith(part) for w in found) for part in parts)
 
 
 def suggestions(words: Sequence[str], among: Sequence[Entry]) -> list[str]:
     """What to try when the words together match nothing: full sentences, the fields last."""
     vocabulary = sorted(
-        {w.lower() for e in among for text in e.texts for w in _WORD.findall(text) if len(w) > 3}
+        {
+            w.lower()
+            for e in among
+            for text in (*e.texts, e.source)
+            for w in _WORD.findall(text)
+            if len(w) > 3
+        }
     )
     out = []
     for word in words:

@@ -8,7 +8,7 @@ from itertools import groupby
 from discrim.mechanism.catalogue import Entry
 from discrim.report.paper import WIDTH, Paper
 
-_LEAD = 36  # characters of the names' column; longer names push their description to the right
+_LEAD = 38  # the most characters that names take; a longer one pushes its description on
 
 
 def listing(
@@ -32,13 +32,12 @@ def listing(
         paper.say(f"Nothing in the library matches “{about[:60]}”.")
         paper.bullets(hints)
         return str(paper)
+    column = 2 + min(_LEAD, 2 + max(len(e.name) for e in found))
     for field, group in groupby(found, key=lambda e: e.field):
         paper.heading(field[:1].upper() + field[1:] or "Other")
         for entry in group:
-            lead = 2 + max(_LEAD, len(entry.name) + 2)
-            paper.say(
-                f"{entry.name:<{lead - 2}}{entry.title}", indent=2, hang=min(lead, width // 2)
-            )
+            gap = max(2, column - 2 - len(entry.name))
+            paper.say(entry.name + " " * gap + entry.title, indent=2, hang=column)
     n = len(found)
     paper.blank()
     paper.say(
