@@ -8,6 +8,7 @@ from typing import Any
 
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.mechanism.check import check_mechanism
+from discrim.mechanism.claims import check_claims
 from discrim.mechanism.model import Mechanism, Step
 from discrim.mechanism.step import SITE_SIGNS, clipped, is_name, parse_step
 
@@ -84,6 +85,7 @@ def parse_mechanism(
         overall_equilibrium=equilibrium,
     )
     check_mechanism(mechanism)
+    check_claims(mechanism)
     return mechanism
 
 
