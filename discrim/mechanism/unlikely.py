@@ -21,16 +21,17 @@ def warnings_of(mechanism: Mechanism, routes: Routes) -> tuple[str, ...]:
     return tuple(dict.fromkeys(out))
 
 
-def notes_of(mechanism: Mechanism, routes: Routes) -> tuple[str, ...]:
-    """What else a reader should know of the pathways, sentences."""
+def notes_of(
+    mechanism: Mechanism, routes: Routes, measured: frozenset[str] | None = None
+) -> tuple[str, ...]:
+    """What else a reader should know, sentences; ``measured`` as for the derivation."""
     out = []
-    steps = {s.name: s for s in mechanism.steps}
-    for cycle in routes.cycles:
-        if all(steps[name].reversible for name in cycle):
-            out.append(
-                f"Steps {_listed(list(cycle))} close a circle in which nothing is consumed or "
-                "made: it is no pathway."
-            )
+    unused = [n for n in mechanism.steady or () if measured and n in measured]
+    if unused:
+        out.append(
+            f"{_listed(unused)} {'is' if len(unused) == 1 else 'are'} measured, but taken at "
+            "steady state: the law does not use the measured amounts."
+        )
     if not routes.complete:
         out.append(
             "The mechanism has more pathways than are listed."

@@ -10,6 +10,7 @@ from typing import Any
 import sympy
 
 from discrim.errors import Place
+from discrim.mechanism.routes import Route
 
 
 class ConstantKind(Enum):
@@ -77,6 +78,8 @@ class RateLaw:
     stoichiometry : overall stoichiometry, by species; None if not one fixed ratio
     knocked_out : for a name of a step or pathway, the law without it is made by
         :mod:`discrim.ratelaw.knockout`; this holds which constants each step owns
+    routes : the pathways of a mechanism through its steps, each with its overall equation
+    warnings : what is improbable or thermodynamically doubtful about its steps, full sentences
     """
 
     name: str
@@ -95,6 +98,8 @@ class RateLaw:
     source: str = ""
     place: Place | None = None
     findings: tuple[str, ...] = ()
+    routes: tuple[Route, ...] = ()
+    warnings: tuple[str, ...] = ()
 
     def constant(self, name: str) -> Constant:
         for c in self.constants:
