@@ -59,7 +59,7 @@ def _renamed(
             raise DiscrimError(
                 f'bind renames "{str(old)[:40]}", which is no species of the mechanism',
                 place=place,
-                do=f"{nearest(str(old), known)} Species: {', '.join(known)}.".strip(),
+                do=f"{nearest(str(old), known)} Species: {', '.join(known) or 'none'}.".strip(),
             )
         if not isinstance(new, str) or not is_species_name(new):
             raise DiscrimError(

@@ -3,23 +3,71 @@
 import pytest
 
 from discrim.errors import DiscrimError, Place
+from discrim.mechanism.catalogue import FIELDS, entries, search, suggestions
 from discrim.mechanism.check import catalyst_forms
-from discrim.mechanism.library import folder, load_mechanism, names
+from discrim.mechanism.library import folder, load, load_mechanism, names
+from discrim.mechanism.model import WrittenLaw
 from discrim.mechanism.parse import parse_mechanism
 from discrim.mechanism.rename import bind
 from discrim.mechanism.written import from_toml
 
 
-def test_every_file_has_a_title_and_a_source(tmp_path):
-    assert len(names()) >= 16
-    for name in names():
-        mechanism = load_mechanism(name, tmp_path)
-        assert mechanism.title, name
-        assert len(mechanism.source) > 20, name
-    listed = folder() / "README.md"
-    if listed.exists():
-        text = listed.read_text(encoding="utf-8")
-        assert [n for n in names() if f"`{n}`" not in text] == []
+def test_every_file_has_a_title_a_field_and_a_source():
+    listed = (folder() / "README.md").read_text(encoding="utf-8")
+    assert len(entries()) == len(names()) >= 40
+    for entry in entries():
+        assert 10 < len(entry.title) <= 95, entry.name
+        assert "\n" not in entry.title
+        assert entry.field in FIELDS, entry.name
+        assert len(entry.source) > 20, entry.name
+        assert "memory" in entry.source, entry.name
+        assert f"| `{entry.name}`" in listed, entry.name
+        assert f"| {entry.title} |" in listed, entry.name
+    assert listed.count("\n| `") == len(names())  # none that is not there
+    assert {e.field for e in entries()} == set(FIELDS)
+    assert {e.holds for e in entries()} == {"steps", "law"}
+
+
+def test_fields_stand_together_in_their_order():
+    fields = [e.field for e in entries()]
+    assert list(dict.fromkeys(fields)) == list(FIELDS)
+    assert fields == sorted(fields, key=FIELDS.index)
+
+
+@pytest.mark.parametrize(
+    ("words", "found", "not_found"),
+    [
+        (["enzyme", "inhibitor"], "enzyme-two-inhibitors", "enzyme-one-substrate"),
+        (["Inhibitor", "ENZYME"], "enzyme-competitive", "enzyme-ordered-two-substrates"),
+        (["HBr"], "hydrogen-bromine-chain", "hydrogen-chlorine-chain"),
+        (["solid-state", "diffusion"], "diffusion-through-shell", "contracting-area"),
+        (["Michaelis"], "enzyme-one-substrate", "enzyme-cooperative"),
+        (["C2H6"], "ethane-chain", "first-order"),
+        (["J"], "enzyme-two-inhibitors", "enzyme-competitive"),
+        ([], "first-order", ""),
+    ],
+)
+def test_search(words, found, not_found):
+    hits = [e.name for e in search(words, entries())]
+    assert found in hits
+    assert not_found not in hits
+
+
+def test_a_species_is_matched_as_written():
+    """CO is carbon monoxide, not the beginning of a word."""
+    assert all(
+        "CO" in e.species for e in search(["CO"], entries()) if "co" not in " ".join(e.texts)
+    )
+    assert search(["rh"], entries()) == ()  # RH is a species, rh is nothing
+
+
+def test_nothing_found_says_what_to_try():
+    every = entries()
+    assert search(["enzime"], every) == ()
+    assert suggestions(["enzime"], every)[0] == '"enzime" is in none. Did you mean "enzyme"?'
+    hints = suggestions(["bromine", "enzyme"], every)
+    assert hints[0].startswith('"bromine" alone is in ')
+    assert hints[-1].startswith("Fields: ")
 
 
 def test_unknown_name_gets_the_nearest(tmp_path):
@@ -72,6 +120,12 @@ def test_a_step_of_a_file_is_pointed_at(tmp_path):
 @pytest.mark.parametrize(
     ("text", "says", "line"),
     [
+        ("law = 3", "law is not text", 1),
+        ("field = 3\n[steps]\na = 'A -> B'", "field is not text", 1),
+        ("law = 'k*[A]'\n[steps]\na = 'A -> B'", '"steps" belongs to a mechanism with steps', 2),
+        ("law = 'k*[A]'\nsites = ['*']", '"sites" belongs to a mechanism with steps', 2),
+        ("overall = 'A -> B'\n[steps]\na = 'A -> B'", '"overall" belongs to a law', 1),
+        ("law = 'k*[A]'\noverall = 'A, B'", "no arrow", 2),
         ("title = 3\n[steps]\na = 'A -> B'", "title is not text", 1),
         ("steps = 3", "steps is not a table", 1),
         ("\ntilte = 'x'\n[steps]\na = 'A -> B'", 'unknown key "tilte"', 2),
@@ -134,3 +188,28 @@ def test_bind_refuses(tmp_path, names_of, says):
 def test_forms_of_a_catalyst(steps, forms):
     mechanism = parse_mechanism(name="x", steps=steps, catalyst=["E"])
     assert {s.name for s in catalyst_forms(mechanism, "E")} == forms
+
+
+def test_a_file_with_a_law(tmp_path):
+    (tmp_path / "m.toml").write_text(
+        "title = 't'\nlaw = 'k*[A]*[ B- ]/(1 + a*[A])'\noverall = '2 A + B- -> P'\n"
+    )
+    law = load("m.toml", tmp_path)
+    assert isinstance(law, WrittenLaw)
+    assert law.place.line == 2
+    bound = bind(law, {"A": "H2", "B-": "A", "P": "Q"})
+    assert bound.text == "k*[H2]*[A]/(1 + a*[H2])"
+    assert bound.overall.text == "2 H2 + A -> Q"
+    with pytest.raises(DiscrimError, match=r'renames "a", which is no species'):
+        bind(law, {"a": "X"})
+    with pytest.raises(DiscrimError, match="one species"):
+        bind(law, {"A": "P"})
+    with pytest.raises(DiscrimError, match="holds a law, not steps"):
+        load_mechanism("m.toml", tmp_path)
+
+
+def test_a_law_without_its_reaction(tmp_path):
+    (tmp_path / "m.toml").write_text("law = 'k*[A]'\n")
+    law = load("m.toml", tmp_path)
+    assert law.overall is None
+    assert bind(law, {"A": "H2"}).text == "k*[H2]"
