@@ -12,7 +12,7 @@ from discrim.mechanism.check import species_of
 from discrim.mechanism.model import Mechanism, Species, Step, WrittenLaw
 from discrim.mechanism.step import is_species_name, side_text
 
-_BRACKETED = re.compile(r"\[\s*([^\[\]]*?)\s*\]")
+_BRACKETED = re.compile(r"\[([^\[\]]*)\]")
 
 
 def species_names(record: Mechanism | WrittenLaw) -> tuple[str, ...]:
@@ -24,7 +24,8 @@ def species_names(record: Mechanism | WrittenLaw) -> tuple[str, ...]:
         return tuple(dict.fromkeys(_body(s) for s in species_of(record) if s.name != s.site))
     overall = record.overall
     sides = (*overall.left, *overall.right) if overall else ()
-    return tuple(dict.fromkeys((*_BRACKETED.findall(record.text), *(s.name for s, _ in sides))))
+    in_law = (name.strip() for name in _BRACKETED.findall(record.text))
+    return tuple(dict.fromkeys((*in_law, *(s.name for s, _ in sides))))
 
 
 @overload
@@ -44,7 +45,7 @@ def bind(record: Mechanism | WrittenLaw, names_of: Mapping[str, str]) -> Mechani
     renamed = _renamed(species_names(record), names_of, record.place)
     if isinstance(record, Mechanism):
         return _mechanism(record, renamed)
-    text = _BRACKETED.sub(lambda m: f"[{renamed[m[1]]}]", record.text)
+    text = _BRACKETED.sub(lambda m: f"[{renamed[m[1].strip()]}]", record.text)
     overall = record.overall
     return replace(record, text=text, overall=overall and _step(overall, renamed))
 

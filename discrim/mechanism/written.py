@@ -43,7 +43,7 @@ def from_toml(text: str, *, file: str, name: str) -> Mechanism | WrittenLaw:
     top = Place(file=file, what=f'mechanism "{name}"')
     _check(content, lines, top)
     if "law" in content:
-        return _law(content, name, lines)
+        return _law(content, name, lines, top)
     steps = content.get("steps", {})
     mechanism = parse_mechanism(
         name=name,
@@ -94,11 +94,15 @@ def _check(content: Mapping[str, Any], lines: Mapping[tuple[str, str], Place], t
 
 
 def _law(
-    content: Mapping[str, Any], name: str, lines: Mapping[tuple[str, str], Place]
+    content: Mapping[str, Any],
+    name: str,
+    lines: Mapping[tuple[str, str], Place],
+    top: Place,
 ) -> WrittenLaw:
     overall: Step | None = None
     if "overall" in content:
-        overall = parse_step("overall", content["overall"], sites=(), place=lines["", "overall"])
+        place = lines.get(("", "overall"), top)
+        overall = parse_step("overall", content["overall"], sites=(), place=place)
     return WrittenLaw(
         name=name,
         title=content.get("title", ""),
@@ -106,7 +110,7 @@ def _law(
         overall=overall,
         source=content.get("source", ""),
         note=content.get("note", ""),
-        place=lines["", "law"],
+        place=lines.get(("", "law"), top),
         field=content.get("field", ""),
     )
 

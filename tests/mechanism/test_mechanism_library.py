@@ -213,3 +213,13 @@ def test_a_law_without_its_reaction(tmp_path):
     law = load("m.toml", tmp_path)
     assert law.overall is None
     assert bind(law, {"A": "H2"}).text == "k*[H2]"
+
+
+def test_hostile_law_files():
+    """Brackets without end are read in no time, and a law whose line is not found has a place."""
+    law = from_toml(f"law = '{'[' + ' ' * 400_000}'", file="m.toml", name="m")
+    assert bind(law, {}).text == law.text
+    hidden = 'note = """\n[steps]\n"""\nlaw = "k*[A]"\noverall = "A -> B"\n'
+    found = from_toml(hidden, file="m.toml", name="m")
+    assert found.place.file == "m.toml"
+    assert bind(found, {"A": "C"}).overall.text == "C -> B"
