@@ -31,7 +31,7 @@ class CandidateLaw:
     bound: tuple[Any, ...]
 
 
-def _measured(study: Study) -> frozenset[str]:
+def measured_names(study: Study) -> frozenset[str]:
     """Species that are no intermediates: measured, derived, or known by their total."""
     totals = {c.about for c in study.runs.columns if c.role is Role.TOTAL}
     return measured_species(study) | totals
@@ -40,9 +40,9 @@ def _measured(study: Study) -> frozenset[str]:
 def law_of(candidate: Candidate, study: Study) -> CandidateLaw:
     """Derive (or read) the law of one candidate and what each observed column is in it."""
     if candidate.mechanism is not None:
-        law = derive(candidate.mechanism, measured=_measured(study))
+        law = derive(candidate.mechanism, measured=measured_names(study))
         law = replace(law, name=candidate.name, place=law.place or candidate.place)
-        law = _per_amount_of_catalyst(law, candidate, study)
+        law = per_amount_of_catalyst(law, candidate, study)
     else:
         law = law_from_expression(
             candidate.name,
@@ -75,7 +75,7 @@ def observed(candidate: Candidate, law: RateLaw, study: Study) -> CandidateLaw:
     return CandidateLaw(candidate, law, seen, tuple(put_in(e, study) for e in seen))
 
 
-def _per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) -> RateLaw:
+def per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) -> RateLaw:
     """A law per total catalyst, times the catalyst where a column gives it."""
     assert candidate.mechanism is not None
     catalysts = candidate.mechanism.catalyst

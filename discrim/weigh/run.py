@@ -21,6 +21,7 @@ from discrim.weigh.asked import Answer, answer, check_questions
 from discrim.weigh.assess import Assessment, assess, fits_of
 from discrim.weigh.bench import Bench, build
 from discrim.weigh.bind import Bound, bind
+from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
 from discrim.weigh.sameness import Relations, relations
 
@@ -61,6 +62,7 @@ class Weighed:
     common: Measurements
     findings: tuple[tuple[str, str, str], ...]
     seed: int
+    knock_outs: tuple[KnockOuts | None, ...] = ()
 
 
 def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
@@ -72,7 +74,7 @@ def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
         return None
     runs = replace(study.runs, kept=frozen(np.ones(study.runs.n, bool), bool))
     try:
-        return run(replace(study, runs=runs), seed=seed)
+        return run(replace(study, runs=runs), seed=seed, lattices=False)
     except DiscrimError as trouble:
         return f"not computed: {trouble.says}"
 
@@ -111,14 +113,19 @@ def prepare(
     return laws, bench, bounds
 
 
-def run(study: Study, *, seed: int = 1, progress: Progress | None = None) -> Weighed:
-    """Weigh a study. Wrong input raises; numerical misfortune is a status in the record."""
+def run(
+    study: Study, *, seed: int = 1, progress: Progress | None = None, lattices: bool = True
+) -> Weighed:
+    """Weigh a study. Wrong input raises; numerical misfortune is a status in the record.
+
+    ``lattices`` False leaves out the laws of each mechanism with some of its pathways.
+    """
     # Trial steps may run to where a law overflows; they are rejected there, so no warning is due.
     with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
-        return _run(study, seed, progress)
+        return _run(study, seed, progress, lattices)
 
 
-def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
+def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> Weighed:
     say = progress or (lambda words, done, total: None)
     say("deriving rate laws", 0, 1)
     laws, bench, bounds = prepare(study)
@@ -181,6 +188,11 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
     for k, q in enumerate(asked):
         say("answering", k, len(asked))
         answers.append(answer(q, study, bench, laws, bounds, fits, stands, seed=seed))
+    without: tuple[KnockOuts | None, ...] = ()
+    if lattices:
+        say("taking pathways out", 0, 1)
+        own = [a.fit for a in assessments]
+        without = knock_outs(laws, bounds, own, stands, bench, common, level=level, seed=seed)
     from discrim.weigh.findings import findings_of
 
     weighed = Weighed(
@@ -201,6 +213,7 @@ def _run(study: Study, seed: int, progress: Progress | None) -> Weighed:
         common,
         (),
         seed,
+        without,
     )
     names = {name.split("[")[0] for b in bounds for name in b.names}
     names |= {c.name for law in laws for c in law.law.constants}

@@ -33,7 +33,7 @@ def relations(bounds: Sequence[Bound], study: Study) -> Relations:
     for i in range(len(bounds)):
         for j in range(i + 1, len(bounds)):
             a, b = bounds[i], bounds[j]
-            ea, eb, ca, cb = _expanded(a, b, study)
+            ea, eb, ca, cb = expanded(a, b, study)
             up = nested(ea, eb, ca, cb) if len(ca) <= len(cb) else None
             down = nested(eb, ea, cb, ca) if len(cb) <= len(ca) else None
             if up is not None and down is not None:
@@ -45,7 +45,7 @@ def relations(bounds: Sequence[Bound], study: Study) -> Relations:
     return Relations(same, contains)
 
 
-def _expanded(
+def expanded(
     a: Bound, b: Bound, study: Study
 ) -> tuple[list[Any], list[Any], list[Constant], list[Constant]]:
     """Both laws once for every combination of response and group labels, in their free constants."""
