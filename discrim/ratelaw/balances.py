@@ -17,11 +17,12 @@ import numpy as np
 
 _CLOSE = 1e-6  # difference of the two logarithms below which the last exact steps are left
 _PLAIN = 1e-10  # balance, relative to the sum of its terms, that a solution must hold
-_ROUNDS = 60  # of Newton's method from one start
-_HALVINGS = 12  # of a step that does not lead closer
+_ROUNDS = 14  # of Newton's method from one start
 _FAR = 12.0  # longest step in a logarithm (five powers of ten)
-_SHIFTS = (-14.0, 14.0, -35.0, 35.0)  # of later starts, in logarithms
-_GRID = 600  # points at which a balance with several solutions is looked at
+_SHIFTS = (-14.0, 14.0)  # of later starts, in logarithms
+_CAREFUL = 400  # steps of the search for the smallest of several roots
+_GRIDS = (np.arange(-100.0, 101.0, 5.0), np.arange(-140.0, 141.0, 1.0))  # see _nested; logarithms
+_HALVED = 10  # times that a step of this grid is halved before Newton's method goes on
 
 
 class Balances:
@@ -30,12 +31,14 @@ class Balances:
     Parameters
     ----------
     exponents : for each equation an array (terms, n), not negative; fractions are allowed
+    thorough : try one unknown after the other on a grid where nothing else has led to a solution
 
     ``solve`` takes the coefficients c of all terms of all equations, in that order.
     """
 
-    def __init__(self, exponents: Sequence[np.ndarray]) -> None:
+    def __init__(self, exponents: Sequence[np.ndarray], *, thorough: bool = True) -> None:
         self.n = len(exponents)
+        self.thorough = thorough
         ends = np.cumsum([len(e) for e in exponents])
         self.rows = [
             slice(int(end) - len(e), int(end)) for end, e in zip(ends, exponents, strict=True)
@@ -51,7 +54,7 @@ class Balances:
         ``coefficients`` shape (terms, P). Returns shape (n, P), NaN where none is found. Of
         several solutions for one unknown it is the smallest, which is the one reached when the
         amount builds up from nothing; for several unknowns the first that is found from fixed
-        starts, low ones before high ones.
+        starts.
         """
         finite = np.isfinite(coefficients).all(axis=0)
         if not finite.all():
@@ -67,8 +70,8 @@ class Balances:
     # ---- one unknown ----------------------------------------------------------------------
 
     def _one(self, coefficients: np.ndarray) -> np.ndarray:
-        order = np.argsort(self.exponents[:, 0], kind="stable")
-        c, e = coefficients[order], self.exponents[order, 0]
+        e, term = np.unique(self.exponents[:, 0], return_inverse=True)
+        c = np.array([coefficients[term == k].sum(axis=0) for k in range(len(e))])
         sign = np.sign(c)
         first = np.zeros(c.shape[1])
         last = np.zeros(c.shape[1])
@@ -78,6 +81,8 @@ class Balances:
             changes += (s != 0) & (last != 0) & (s != last)
             last = np.where(s != 0, s, last)
         z = np.full((1, c.shape[1]), np.nan)
+        # without a term free of the unknown, and all of one sign: only "none of it" is left
+        z[0, (changes == 0) & (e[0] > 0)] = 0.0
         single = changes == 1
         if single.all():
             z[0] = _unique(c * first, e)
@@ -99,13 +104,58 @@ class Balances:
         )
         left = np.flatnonzero(sides.all(axis=0))
         start = self._level(size[:, left], made[:, left])
-        for shift in (0.0, *_SHIFTS):
+        for shift in (0.0, *_SHIFTS) if self.n > 2 else (0.0,):
             if not len(left):
                 break
             w, ok = self._newton(size[:, left], made[:, left], start + shift)
             out[:, left[ok]] = np.exp(w[:, ok])
             left, start = left[~ok], start[:, ~ok]
+        pairs = [(i, k) for i in range(self.n) for k in range(self.n)] if self.thorough else []
+        for grid in _GRIDS:
+            for outer, equation in pairs:
+                if len(left):
+                    z = self._nested(coefficients[:, left], outer, equation, grid)
+                    ok = np.isfinite(z).all(axis=0)
+                    out[:, left[ok]] = z[:, ok]
+                    left = left[~ok]
         return out
+
+    def _nested(self, c: np.ndarray, outer: int, equation: int, grid: np.ndarray) -> np.ndarray:
+        """One unknown on a grid and the others from all equations but one, which must then change
+        its sign between two places of the grid. Slow and sure; for the few points that need it.
+        """
+        others = [j for j in range(self.n) if j != outer]
+        rows = [r for k, r in enumerate(self.rows) if k != equation]
+        inner = Balances([self.exponents[r][:, others] for r in rows], thorough=False)
+        power = self.exponents[:, outer, None]
+
+        def at(w: np.ndarray, points: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+            scaled = c[:, points] * np.exp(power * w)
+            z = np.empty((self.n, len(w)))
+            z[outer] = np.exp(w)
+            z[others] = inner.solve(np.concatenate([scaled[r] for r in rows]))
+            terms = self._terms(c[:, points], z)[self.rows[equation]]
+            return z, terms.sum(axis=0) / np.abs(terms).sum(axis=0)
+
+        count = c.shape[1]
+        points = np.repeat(np.arange(count), len(grid))
+        sign = np.sign(at(np.tile(grid, count), points)[1]).reshape(count, -1)
+        crossed = sign[:, :-1] * sign[:, 1:] < 0
+        found = np.flatnonzero(crossed.any(axis=1))
+        z = np.full((self.n, count), np.nan)
+        if not len(found):
+            return z
+        first = crossed[found].argmax(axis=1)
+        low, high, below = grid[first], grid[first + 1], sign[found, first]
+        for _ in range(_HALVED):
+            middle = 0.5 * (low + high)
+            same = np.sign(at(middle, found)[1]) == below
+            low, high = np.where(same, middle, low), np.where(same, high, middle)
+        near = np.log(at(0.5 * (low + high), found)[0])
+        w, ok = self._newton(np.log(np.abs(c[:, found])), c[:, found] > 0, near)
+        ok &= np.abs(w - near).max(axis=0) < 1.0  # else it has gone to another
+        z[:, found[ok]] = self._polished(c[:, found[ok]], np.exp(w[:, ok]))
+        return z
 
     def _level(self, size: np.ndarray, made: np.ndarray) -> np.ndarray:
         """Logarithms at which the two sides of each equation have terms of one size on average."""
@@ -125,42 +175,25 @@ class Balances:
     def _newton(
         self, size: np.ndarray, made: np.ndarray, start: np.ndarray
     ) -> tuple[np.ndarray, np.ndarray]:
-        """Damped Newton's method on log(made) - log(consumed); solutions and whether each is one."""
+        """Newton's method on log(made) - log(consumed): logarithms, and whether they solve it.
+
+        Steps are shortened but never searched along: the two sides bend where another term takes
+        over, so the way to the solution often leads through larger differences.
+        """
         w = np.array(start)
-        total = w.shape[1]
-        done = np.zeros(total, bool)
-        go = np.arange(total)
-        f, jac = self._logs(size, made, w)
-        merit = np.abs(f).max(axis=0)
+        done = np.zeros(w.shape[1], bool)
+        go = np.arange(w.shape[1])
         for _ in range(_ROUNDS):
-            close = merit < _CLOSE
+            f, jac = self._logs(size[:, go], made[:, go], w[:, go])
+            close = np.abs(f).max(axis=0) < _CLOSE
             done[go[close]] = True
-            keep = np.isfinite(merit) & ~close
+            step = -solved(jac, f.T[..., None])[..., 0].T
+            longest = np.abs(step).max(axis=0)
+            keep = ~close & np.isfinite(longest)
             if not keep.any():
                 break
-            if not keep.all():
-                go, f, jac, merit = go[keep], f[:, keep], jac[keep], merit[keep]
-            step = -solved(jac, f.T[..., None])[..., 0].T
-            step[:, ~np.isfinite(step).all(axis=0)] = 0.0
-            longest = np.abs(step).max(axis=0)
-            step *= np.minimum(1.0, _FAR / np.maximum(longest, 1e-300))
-            here = w[:, go]
-            f_new, jac_new = self._logs(size[:, go], made[:, go], here + step)
-            merit_new = np.abs(f_new).max(axis=0)
-            for _ in range(_HALVINGS):
-                worse = ~(merit_new < merit)
-                if not worse.any():
-                    break
-                step[:, worse] *= 0.5
-                at = go[worse]
-                f_try, jac_try = self._logs(
-                    size[:, at], made[:, at], here[:, worse] + step[:, worse]
-                )
-                f_new[:, worse], jac_new[worse] = f_try, jac_try
-                merit_new[worse] = np.abs(f_try).max(axis=0)
-            w[:, go] = here + step
-            stuck = ~(merit_new < merit)
-            f, jac, merit = f_new, jac_new, np.where(stuck, np.inf, merit_new)
+            go, step = go[keep], step[:, keep] * np.minimum(1.0, _FAR / longest[keep])
+            w[:, go] += step
         return w, done
 
     def _logs(
@@ -271,20 +304,19 @@ def _unique(c: np.ndarray, e: np.ndarray) -> np.ndarray:
     for j in range(1, len(e)):
         reach = np.full(c.shape[1], -np.inf)
         for i in range(j):
-            if e[j] > e[i]:
-                crossing = (size[i] - size[j]) / (e[j] - e[i])
-                reach = np.maximum(reach, np.where(up[i], crossing, -np.inf))
+            crossing = (size[i] - size[j]) / (e[j] - e[i])
+            reach = np.maximum(reach, np.where(up[i], crossing, -np.inf))
         w = np.minimum(w, np.where(c[j] < 0, reach, np.inf))
     # terms over the largest one there; u = z/z*
     x = size + e[:, None] * w
     d = np.exp(x - x.max(axis=0))
     positive = np.where(up, d, 0.0)
     negative = d - positive
-    width = np.log(len(e)) / max(float(np.diff(np.unique(e)).min()), 1e-3) + 1e-9
+    width = np.log(len(e)) / max(float(np.diff(e).min()), 1e-3) + 1e-9
     low, high = np.full(len(w), -width), np.full(len(w), width)
     v = np.zeros(len(w))
     going = np.ones(len(w), bool)
-    for _ in range(_ROUNDS):
+    for _ in range(60):
         powers = np.exp(e[:, None] * v)
         p, q = positive * powers, negative * powers
         p_sum, q_sum = p.sum(axis=0), q.sum(axis=0)
@@ -307,72 +339,46 @@ def _unique(c: np.ndarray, e: np.ndarray) -> np.ndarray:
 def _smallest(c: np.ndarray, e: np.ndarray) -> np.ndarray:
     """The smallest positive root where signs change more than once; NaN where there is none.
 
-    ``c`` shape (T, P), its first coefficients that are not zero positive. The balance is looked at
-    on a grid between bounds of all roots, and at its lowest places between grid points.
+    ``c`` shape (T, P), its first coefficients that are not zero positive; ``e`` rising. Let P and N
+    be the sums of the terms of both signs and w = log z. From below all roots, where P > N, steps are
+    taken that cannot pass one: log P is convex in w and lies above its tangent; the slope of log N is
+    a mean of its powers, so that log N rises by no more than the highest of them, and its curvature,
+    their variance, is no more than a quarter of their range squared.
     """
     size = np.log(np.abs(c))
-    sign = np.sign(c)
-    p = c.shape[1]
-    low, high = np.full(p, np.inf), np.full(p, -np.inf)
+    up, down = c > 0, c < 0
+    most = np.where(down, e[:, None], -np.inf).max(axis=0)
+    curve = 0.25 * (most - np.where(down, e[:, None], np.inf).min(axis=0)) ** 2
+    w, high = np.full(c.shape[1], np.inf), np.full(c.shape[1], -np.inf)
     spare = np.log(2.0 * len(e))
     for i in range(len(e)):
         for j in range(i + 1, len(e)):
-            if e[j] > e[i]:
-                apart = e[j] - e[i]
-                against = (sign[i] * sign[j]) < 0
-                crossing = np.where(against, (size[i] - size[j]) / apart, np.nan)
-                low = np.fmin(low, crossing - spare / apart)
-                high = np.fmax(high, crossing + spare / apart)
-
-    def balance(w: np.ndarray) -> np.ndarray:
+            against = (up[i] & down[j]) | (down[i] & up[j])
+            crossing = np.where(against, (size[i] - size[j]) / (e[j] - e[i]), np.nan)
+            w = np.fmin(w, crossing - spare / (e[j] - e[i]))
+            high = np.fmax(high, crossing + spare / (e[j] - e[i]))
+    root = np.full(c.shape[1], np.nan)
+    go = np.arange(c.shape[1])
+    for _ in range(_CAREFUL):
         x = size + e[:, None] * w
-        return np.asarray((sign * np.exp(x - x.max(axis=0))).sum(axis=0))
-
-    at = np.linspace(0.0, 1.0, _GRID)[:, None]
-    w = low + at * (high - low)
-    s = np.array([balance(x) for x in w])
-    root = np.full(p, np.nan)
-    for k in range(p):
-        crossed = np.flatnonzero(s[:, k] < 0)
-        end = int(crossed[0]) if len(crossed) else _GRID - 1
-        inside = s[1 : max(end, 1), k]
-        dips = 1 + np.flatnonzero(
-            (inside <= s[: len(inside), k]) & (inside <= s[2 : 2 + len(inside), k])
-        )
-        bracket = (w[end - 1, k], w[end, k]) if len(crossed) and end else None
-        one = (size[:, k : k + 1], sign[:, k : k + 1])
-        for dip in dips[:3]:
-            lowest = _lowest(one, e, w[dip - 1, k], w[dip + 1, k])
-            if lowest is not None:
-                bracket = (w[dip - 1, k], lowest)
-                break
-        if bracket is None:
-            continue
-        a, b = bracket
-        for _ in range(80):
-            middle = 0.5 * (a + b)
-            if _relative(one, e, middle) > 0:
-                a = middle
-            else:
-                b = middle
-        root[k] = 0.5 * (a + b)
+        t = np.exp(x - x.max(axis=0))
+        p, q = np.where(up, t, 0.0), np.where(down, t, 0.0)
+        p_sum, q_sum = p.sum(axis=0), q.sum(axis=0)
+        f = np.maximum(np.log(p_sum / q_sum), 0.0)
+        p_slope, q_slope = (e @ p) / p_sum, (e @ q) / q_sum
+        closing = q_slope - p_slope
+        root_of = np.sqrt(closing**2 + 2.0 * curve * f)
+        # of two forms of the root of f - closing*d - curve*d^2/2 the one that does not cancel
+        bent = np.where(closing > 0, 2.0 * f / (closing + root_of), (root_of - closing) / curve)
+        straight = np.where(most > p_slope, f / (most - p_slope), np.inf)
+        step = np.fmax(bent, straight)
+        done = step <= _CLOSE
+        root[go[done]] = (w + step)[done]
+        keep = ~done & (w + step <= high)
+        if not keep.any():
+            break
+        w = (w + step)[keep]
+        if not keep.all():
+            go, high, most, curve = go[keep], high[keep], most[keep], curve[keep]
+            size, up, down = size[:, keep], up[:, keep], down[:, keep]
     return np.asarray(np.exp(root))
-
-
-def _relative(one: tuple[np.ndarray, np.ndarray], e: np.ndarray, w: float) -> float:
-    x = one[0][:, 0] + e * w
-    return float((one[1][:, 0] * np.exp(x - x.max())).sum())
-
-
-def _lowest(one: tuple[np.ndarray, np.ndarray], e: np.ndarray, a: float, b: float) -> float | None:
-    """Where the balance is lowest between a and b, if it is not above zero there."""
-    golden = 0.5 * (5**0.5 - 1.0)
-    for _ in range(60):
-        x, y = b - golden * (b - a), a + golden * (b - a)
-        if _relative(one, e, x) <= 0:
-            return x
-        if _relative(one, e, x) < _relative(one, e, y):
-            b = y
-        else:
-            a = x
-    return None
