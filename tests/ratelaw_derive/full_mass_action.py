@@ -36,9 +36,9 @@ class Values:
     ``forward`` log k of each step; ``equilibrium`` log K of each reversible step as written.
     """
 
-    forward: Mapping[str, float]
-    equilibrium: Mapping[str, float]
-    amounts: Mapping[str, float]
+    forward: Mapping[str, Any]
+    equilibrium: Mapping[str, Any]
+    amounts: Mapping[str, Any]
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,6 +68,7 @@ def steady_state(
     families: Sequence[Mapping[str, int]],
     steady: Sequence[str],
     equilibrated: Sequence[str],
+    near: Mapping[str, Any] | None = None,
 ) -> Steady:
     """The steady state with fixed amounts of all species that are no intermediates.
 
@@ -77,6 +78,7 @@ def steady_state(
         total is 1
     steady : further intermediates, in no family
     equilibrated : names of the steps that are fast
+    near : shares at a steady state close by, to start from
 
     Raises
     ------
@@ -89,16 +91,19 @@ def steady_state(
     names = [s.name for s in mechanism.steps]
     with mpmath.workdps(DIGITS):
         ahead, back = _constants(mechanism, values, index, equilibrated, FAST)
-        mild = [
-            np.array([float(k) for k in side])
-            for side in _constants(mechanism, values, index, equilibrated, mpmath.mpf(MILD))
-        ]
-        logs = [
-            _newton(system, ahead, back, _transient(system, *mild, start))
-            for start in _starts(system, len(inner))
-        ]
-        if any(abs(x - y) > SMALL for x, y in zip(logs[0], logs[1], strict=True)):
-            raise NoSteadyState("two starts lead to different steady states")
+        if near is not None:
+            logs = [_newton(system, ahead, back, [near[name] for name in inner])]
+        else:
+            mild = [
+                np.array([float(k) for k in side])
+                for side in _constants(mechanism, values, index, equilibrated, mpmath.mpf(MILD))
+            ]
+            logs = [
+                _newton(system, ahead, back, _transient(system, mild[0], mild[1], start))
+                for start in _starts(system, len(inner))
+            ]
+            if any(abs(x - y) > SMALL for x, y in zip(logs[0], logs[1], strict=True)):
+                raise NoSteadyState("two starts lead to different steady states")
         x = [mpmath.exp(v) for v in logs[0]]
         gross = _gross(system, ahead, back, x)
         rates = [f - b for f, b in gross]
@@ -174,7 +179,7 @@ def _constants(
     return ahead, back
 
 
-def _gross(system: _System, ahead: Sequence[Any], back: Sequence[Any], x: Any) -> list[Any]:
+def _gross(system: _System, ahead: Any, back: Any, x: Any) -> list[Any]:
     out = []
     for j in range(len(ahead)):
         f, b = ahead[j], back[j]
@@ -202,8 +207,10 @@ def _transient(
     system: _System, ahead: np.ndarray, back: np.ndarray, start: np.ndarray
 ) -> np.ndarray:
     """Implicit Euler with growing steps, to times when nothing changes any more."""
+    n, m = len(start), len(ahead)
+    if not n:
+        return start
     change = np.array(system.change, dtype=float)
-    n, m = change.shape
 
     def slopes(x: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         pairs = _gross(system, ahead, back, x)
@@ -242,12 +249,12 @@ def _transient(
 
 
 def _newton(
-    system: _System, ahead: Sequence[Any], back: Sequence[Any], start: np.ndarray
+    system: _System, ahead: Sequence[Any], back: Sequence[Any], start: Sequence[Any] | np.ndarray
 ) -> list[Any]:
     """Logarithms of the amounts of the intermediates at the steady state."""
-    logs = [mpmath.log(mpmath.mpf(float(v))) for v in start]
+    logs = [mpmath.log(mpmath.mpf(v)) for v in start]
     n = len(logs)
-    for _ in range(60):
+    for _ in range(60 if n else 0):
         x = [mpmath.exp(v) for v in logs]
         pairs = _gross(system, ahead, back, x)
         by_log: list[dict[int, Any]] = []
@@ -279,6 +286,8 @@ def _newton(
         logs = [v + factor * d for v, d in zip(logs, move, strict=True)]
         if largest < SMALL:
             return logs
+    if not n:
+        return logs
     raise NoSteadyState("Newton's method does not converge")
 
 

@@ -298,7 +298,9 @@ def carriers(rng: np.random.Generator) -> Draft:
         d.add(f"{giver} + {_pick(rng, 'BC')} {_arrow(rng, 0.4)} {names[i]} + {_pick(rng, 'PQ')}")
     for _ in range(int(rng.integers(0, 3))):
         a, b = rng.choice(n, 2, replace=False)
-        d.add(f"{names[a]} + {_pick(rng, 'BCD')} {_arrow(rng, 0.5)} {names[b]} + {_pick(rng, 'QR')}")
+        d.add(
+            f"{names[a]} + {_pick(rng, 'BCD')} {_arrow(rng, 0.5)} {names[b]} + {_pick(rng, 'QR')}"
+        )
     d.add(f"{names[-1]} -> T")
     for name in names[:-1]:
         passed_on = any(t.startswith(f"{name} ") for t in d.steps.values())
