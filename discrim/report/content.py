@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from discrim.report import read, tables
+from discrim.report import knock_outs, read, tables
 from discrim.report.cases import Case, groups
 from discrim.report.numbers import (
     as_number,
@@ -81,7 +81,15 @@ class Law:
     source: str
     place: str
     routes: tuple[tuple[str, str], ...] = ()  # overall equation, steps
+    balances: tuple[tuple[str, str], ...] = ()  # text, mathml: what the law's unknowns solve
+    unknowns: tuple[str, ...] = ()  # of these balances
     limits: tuple[tuple[str, tuple[Case, ...]], ...] = ()  # heading, lines
+
+    @property
+    def balance_words(self) -> str:
+        """How the balances are led in: with [H] and [Br] from"""
+        *first, last = self.unknowns or ("",)
+        return f"with {', '.join(first)} and {last} from" if first else f"with {last} from"
 
     def derives(self, text: str) -> bool:
         """Whether the derivation holds this formula, so that it need not be said again."""
@@ -116,6 +124,7 @@ class Content:
     references: tuple[tuple[str, str], ...] = ()
     provenance: tuple[tuple[str, str], ...] = ()
     level: str = "95 %"
+    knock_outs: tuple[Table, ...] = ()  # the laws of each mechanism with some of its pathways
 
 
 def build(document: Document) -> Content:
@@ -159,6 +168,9 @@ def build(document: Document) -> Content:
         ),
         provenance=_provenance(document),
         level=level,
+        knock_outs=tuple(
+            t for t in (knock_outs.table(c) for c in knock_outs.with_pathways(document)) if t
+        ),
     )
 
 
@@ -235,6 +247,11 @@ def law(candidate: Document) -> Law:
         ),
         source=read.text(candidate, "source"),
         place=read.text(candidate, "place"),
+        balances=tuple(
+            (read.text(b, "text"), read.text(b, "mathml"))
+            for b in read.records(candidate, "balances")
+        ),
+        unknowns=tuple(read.text(b, "unknown") for b in read.records(candidate, "balances")),
         routes=tuple(
             (read.text(r, "equation"), read.text(r, "words"))
             for r in read.records(candidate, "routes")

@@ -30,6 +30,8 @@ from discrim.report.canvas import (
     style,
     with_units,
 )
+from discrim.report.knock_outs import with_pathways
+from discrim.report.lattice import lattice
 from discrim.report.numbers import count, listed, number, percent
 from discrim.report.planes import plane
 from discrim.report.ranges import effects, intervals
@@ -52,6 +54,9 @@ def draw(document: Document) -> list[Picture]:
     for i, c in enumerate(standing[:2]):
         jobs[f"intervals-{i + 1}"] = partial(intervals, candidate=c)
     jobs["pathways"] = partial(pathways, standing=standing)
+    alpha = 1.0 - (read.value(document, "confidence") or 0.95)
+    for i, c in enumerate(with_pathways(document)):
+        jobs[f"lattice-{i + 1}"] = partial(lattice, candidate=c, alpha=alpha)
     found = []
     for name, job in jobs.items():
         with style(name):

@@ -32,7 +32,7 @@ def page(document: Document, pictures: Sequence[Picture] = ()) -> str:
     environment.filters["slug"] = slug
     content = build(document)
     by_place: dict[str, list[dict[str, Any]]] = {"effects": [], "planes": [], "fit": [],
-                                                 "constants": []}  # fmt: skip
+                                                 "constants": [], "candidates": []}  # fmt: skip
     for picture in pictures:
         by_place[_place(picture.name)].append(
             {"title": picture.title, "caption": picture.caption, "alt": picture.alt,
@@ -46,7 +46,8 @@ def page(document: Document, pictures: Sequence[Picture] = ()) -> str:
 def _place(name: str) -> str:
     if name == "effects":
         return "effects"
-    return {"plane": "planes", "intervals": "constants"}.get(name.split("-")[0], "fit")
+    places = {"plane": "planes", "intervals": "constants", "lattice": "candidates"}
+    return places.get(name.split("-")[0], "fit")
 
 
 def numeral(text: str) -> Markup:

@@ -15,6 +15,7 @@ from discrim.fit.measurements import Scale
 from discrim.runs.model import Column, Role
 from discrim.study.lookup import to_shown
 from discrim.weigh.derived import law_keys
+from discrim.weigh.document_knock_outs import knock_outs_record
 from discrim.weigh.document_values import number, shown_units
 from discrim.weigh.run import Weighed
 from discrim.weigh.words import (
@@ -77,6 +78,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
             "constants": [_constant(w, i, j) for j in range(len(bound.names))],
             "fitted": _fitted(w, i) if fit.ok else [],
             "pathways": _pathways(w, i) if fit.ok else [],
+            "knock_outs": knock_outs_record(w, i),
             "outcome": "stands" if w.stands[i] else "rejected",
             "p_joint": number(s.p_joint),
             "inseparable_from": [w.laws[j].law.name for j in w.inseparable[i]],
