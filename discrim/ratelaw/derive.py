@@ -1,9 +1,9 @@
 """The rate law that a mechanism implies.
 
 Mass action for every step. Quasi-equilibrated steps give monomials, the remaining intermediates
-steady states that are linear in them, conserved sites and catalysts a total that sums to one. The
-elimination is in :mod:`discrim.ratelaw.derive_solve`; here the rate, the production of each fluid
-species and the parts of the law are put together.
+steady states, conserved sites and catalysts a total that sums to one. The elimination is in
+:mod:`discrim.ratelaw.derive_solve`; here the rate, the production of each fluid species and the
+parts of the law are put together.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ import sympy
 from discrim.errors import DiscrimError
 from discrim.mechanism.model import Mechanism, Species
 from discrim.ratelaw.derive_algebra import Algebra, Quotient, add, times
+from discrim.ratelaw.derive_equilibria import backward, equilibrium, forward
 from discrim.ratelaw.derive_network import (
     Matrix,
     Network,
@@ -27,8 +28,8 @@ from discrim.ratelaw.derive_network import (
     primitive,
     row_reduce,
 )
-from discrim.ratelaw.derive_solve import Solution, backward, equilibrium, forward, solve
-from discrim.ratelaw.derive_words import assumptions, conventions, derivation
+from discrim.ratelaw.derive_solve import Solution, solve
+from discrim.ratelaw.derive_words import assumptions, conventions, derivation, roots_words
 from discrim.ratelaw.lump import lump
 from discrim.ratelaw.model import Constant, ConstantKind, Pathway, RateLaw, amount
 
@@ -49,14 +50,14 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         ``rate`` is that of the limiting step as written if one is named; else that of the overall
         reaction with the smallest whole coefficients (of the first step as written when there are
         no intermediates); else, when the steps lead to different products in parallel, their sum.
-        Per total catalyst when the mechanism has one.
+        Per total catalyst when the mechanism has one. Where the balances have no closed form the
+        law holds :class:`~discrim.ratelaw.implicit.ImplicitValue` and a finding says so.
 
     Raises
     ------
     DiscrimError
-        when the law has no closed form that is supported (quadratic in the intermediates), when
-        the balances do not determine the intermediates, or when measured species would be tied to
-        each other by equilibrated steps.
+        when the balances do not determine the intermediates, when measured species would be tied
+        to each other by equilibrated steps, or when nothing has a net rate.
     """
     network = classify(mechanism, measured)
     overall = _overall(network)
@@ -87,8 +88,11 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     pathways: tuple[Pathway, ...] = ()
     if len(parts.terms) > 1 and all(name for name, _ in parts.terms):
         pathways = tuple(
-            Pathway(name, (name,), quotient.expr(algebra)) for name, quotient in parts.terms
+            Pathway(name, (name,), solution.put_roots(quotient.expr(algebra)))
+            for name, quotient in parts.terms
         )
+    rate = solution.put_roots(rate)
+    production = {name: solution.put_roots(e) for name, e in production.items()}
     constants = _constants(network, [rate, *production.values()])
     used = set().union(*(e.free_symbols for e in (rate, *production.values())))
     law = RateLaw(
@@ -109,7 +113,11 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         else {s.name: sympy.Rational(*_ratio(n)) for s, n in overall.items() if n},
         source=mechanism.source,
         place=mechanism.place,
-        findings=(*network.findings, *_silent(network, solution, constants)),
+        findings=(
+            *network.findings,
+            *_silent(network, solution, constants),
+            *roots_words(solution),
+        ),
     )
     lumped = lump(
         law,
@@ -373,7 +381,9 @@ def _constants(network: Network, expressions: Sequence[Any]) -> tuple[Constant, 
 
 
 def _silent(network: Network, solution: Solution, constants: Sequence[Constant]) -> tuple[str, ...]:
-    names = {c.name for c in constants} | {f"K_{name}" for name, _ in solution.relations}
+    names = {c.name for c in constants}
+    for relation in solution.relations:
+        names |= {f"{kind}_{relation.step.name}" for kind in ("k", "K")}
     silent = [
         s.name
         for s in network.mechanism.steps

@@ -6,16 +6,18 @@ Polynomials are sympy ring elements over the whole numbers whose generators stan
 
 from __future__ import annotations
 
+import heapq
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
+import numpy as np
 import sympy
 from sympy import ZZ, Rational
 from sympy.polys.rings import PolyElement, PolyRing, ring
 
-MAX_TERMS = 250  # a law with more terms is of no use to anybody, and takes minutes
+MAX_TERMS = 6_000  # of all trees of a network; a law that needs more is kept implicit
 
 Exponents = Mapping[sympy.Symbol, Fraction]
 
@@ -39,15 +41,21 @@ class Algebra:
         made = ring([f"g{i}" for i in range(len(symbols))], ZZ)[0]
         return cls(symbols, tuple(roots.values()), made, {s: i for i, s in enumerate(symbols)})
 
-    def monomial(self, exponents: Exponents) -> tuple[PolyElement, PolyElement]:
-        """Numerator and denominator of a product of powers of the symbols."""
-        up = [0] * len(self.symbols)
-        down = [0] * len(self.symbols)
-        for symbol, e in exponents.items():
+    def exponents(self, powers: Exponents) -> list[int]:
+        """Whole exponents of the generators, from powers of the symbols."""
+        out = [0] * len(self.symbols)
+        for symbol, e in powers.items():
             i = self.index[symbol]
             whole = e * self.roots[i]
             assert whole.denominator == 1
-            (up if whole > 0 else down)[i] = abs(int(whole))
+            out[i] = int(whole)
+        return out
+
+    def monomial(self, powers: Exponents) -> tuple[PolyElement, PolyElement]:
+        """Numerator and denominator of a product of powers of the symbols."""
+        whole = self.exponents(powers)
+        up = [max(e, 0) for e in whole]
+        down = [max(-e, 0) for e in whole]
         return (
             self.ring.from_dict({tuple(up): ZZ(1)}),
             self.ring.from_dict({tuple(down): ZZ(1)}),
@@ -105,7 +113,11 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
                 if g.is_ground:
                     continue
                 ea, eb = parts.pop(a), parts.pop(b)
-                for piece, e in ((g, ea + eb), (a.exquo(g), ea), (b.exquo(g), eb)):
+                for piece, e in (
+                    (g, ea + eb),
+                    (exact_quotient(a, g), ea),
+                    (exact_quotient(b, g), eb),
+                ):
                     if not piece.is_ground:
                         parts[piece] = parts.get(piece, 0) + e
                 changed = True
@@ -120,11 +132,11 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
             if g.is_ground:
                 break
             if g != factor and g != -factor:
-                rest = factor.exquo(g)
+                rest = exact_quotient(factor, g)
                 inner = quotient(top, [(g, left), (rest, left)])
                 others = [(p, n) for p, n in parts.items() if p != factor]
                 return quotient(inner.top, [*inner.bottom, *others, (r(scale), 1)])
-            top = top.exquo(factor)
+            top = exact_quotient(top, factor)
             left -= 1
         if left:
             kept[factor] = left
@@ -134,27 +146,48 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
         scale = scale // common
         if scale != 1:
             kept[r(scale)] = 1
-    ordered = sorted(kept.items(), key=lambda item: (len(item[0]), str(item[0])))
+    ordered = list(kept.items())
+    if len(ordered) > 1:
+        ordered.sort(key=lambda item: (len(item[0]), item[0].terms()))
     return Quotient(top, tuple(ordered))
 
 
-# Points and modulus of the tests below: a common or repeated factor survives evaluation, so a
-# trivial image proves that there is none; the chance of a false alarm is about 1e-17 a test, and a
-# false alarm costs only time.
-_PRIME = 2**61 - 1
+# A common or repeated factor survives when all generators run along one line, modulo a prime, so a
+# trivial image proves that there is none. A false alarm (chance about 1e-7) costs only time.
+_PRIME = 2**31 - 1
 
 
-def _image(poly: PolyElement, x: int) -> list[int]:
-    """Coefficients modulo the prime, highest first, of ``poly`` in generator ``x`` at the point."""
-    degree = poly.degree(x)
-    out = [0] * (degree + 1)
-    points = [pow(7, 1001 + 37 * i, _PRIME) for i in range(poly.ring.ngens)]
-    for monomial, c in poly.terms():
-        value = int(c) % _PRIME
-        for i, e in enumerate(monomial):
-            if e and i != x:
-                value = value * pow(points[i], e, _PRIME) % _PRIME
-        out[degree - monomial[x]] = (out[degree - monomial[x]] + value) % _PRIME
+def _image(poly: PolyElement) -> list[int]:
+    """Coefficients modulo the prime, highest first, of ``poly`` along the line."""
+    exponents = np.array(poly.monoms(), dtype=np.int64)
+    degree = int(exponents.sum(axis=1).max())
+    at = np.arange(1, degree + 2, dtype=np.int64)
+    values = np.array([int(c) % _PRIME for c in poly.coeffs()], dtype=np.int64)[:, None]
+    for i in np.flatnonzero(exponents.any(axis=0)):
+        along = (at * (104_729 + 7_919 * i) + 15_485_863 + 611_953 * i * i) % _PRIME
+        powers = [np.ones_like(along)]
+        for _ in range(int(exponents[:, i].max())):
+            powers.append(powers[-1] * along % _PRIME)
+        values = values * np.array(powers)[exponents[:, i]] % _PRIME
+    return _through([int(v) for v in values.sum(axis=0) % _PRIME])
+
+
+def _through(values: list[int]) -> list[int]:
+    """The polynomial with these values at 1, 2, 3, ..., modulo the prime (Newton's form)."""
+    n = len(values)
+    table = list(values)
+    for k in range(1, n):
+        inverse = pow(k, _PRIME - 2, _PRIME)
+        for i in range(n - 1, k - 1, -1):
+            table[i] = (table[i] - table[i - 1]) * inverse % _PRIME
+    out = [table[-1]]
+    for k in range(n - 2, -1, -1):
+        # out * (t - (k + 1)) + table[k], highest coefficient first
+        shifted = [*out, 0]
+        for i, c in enumerate(out):
+            shifted[i + 1] = (shifted[i + 1] - (k + 1) * c) % _PRIME
+        shifted[-1] = (shifted[-1] + table[k]) % _PRIME
+        out = shifted
     return out
 
 
@@ -174,26 +207,96 @@ def _degree_of_gcd(a: list[int], b: list[int]) -> int:
 
 
 def common_factor(a: PolyElement, b: PolyElement) -> PolyElement:
-    """Greatest common divisor; fast when there is none but a number."""
-    for x in range(a.ring.ngens):
-        if a.degree(x) > 0 and b.degree(x) > 0:
-            u, v = _image(a, x), _image(b, x)
-            if not u[0] or not v[0] or _degree_of_gcd(u, v) > 0:
-                return a.gcd(b)
-    return a.ring(ZZ.gcd(a.content(), b.content()))
+    """Greatest common divisor; fast when there is none but a monomial."""
+    r = a.ring
+    if a.is_ground or b.is_ground or not a or not b:
+        return a.gcd(b)
+    low_a, low_b = lowest(a), lowest(b)
+    shared = tuple(map(min, low_a, low_b))
+    if any(low_a) or any(low_b):
+        a, b = lowered(a, low_a), lowered(b, low_b)
+    monomial = r.from_dict({shared: ZZ.gcd(a.content(), b.content())})
+    if len(a) == 1 or len(b) == 1:
+        return monomial
+    if a == b or a == -b:
+        return a * r.from_dict({shared: ZZ(1)})
+    u, v = _image(a), _image(b)
+    if u[0] and v[0] and _degree_of_gcd(u, v) == 0:
+        return monomial
+    return a.gcd(b) * r.from_dict({shared: ZZ(1)})
+
+
+def exact_quotient(a: PolyElement, b: PolyElement) -> PolyElement:
+    """a/b where b divides a; raises ``ValueError`` where it does not.
+
+    Monomials are whole numbers in order of size, the largest left taken from a heap: sympy's own
+    division looks through all terms for each step.
+    """
+    r = a.ring
+    if not a or b == 1:
+        return a
+    if len(b) == 1:
+        ((low, c),) = b.items()
+        if c != 1:
+            a = a.quo_ground(c)
+        return lowered(a, low)
+    width = r.ngens
+    shifts = [_EXPONENT_BITS * (width - 1 - i) for i in range(width)]
+    mask = (1 << _EXPONENT_BITS) - 1
+
+    def number(m: Sequence[int]) -> int:
+        key = 0
+        for e in m:
+            key = (key << _EXPONENT_BITS) | e
+        return key
+
+    left = {number(m): c for m, c in a.items()}
+    divisor = sorted(((number(m), c) for m, c in b.items()), reverse=True)
+    (lead, lead_c), rest = divisor[0], divisor[1:]
+    heap = [-k for k in left]
+    heapq.heapify(heap)
+    out = {}
+    while heap:
+        key = -heapq.heappop(heap)
+        c = left.pop(key, 0)
+        if not c:
+            continue
+        q, over = divmod(c, lead_c)
+        step = key - lead
+        if over or step < 0:
+            raise ValueError("not divisible")
+        out[step] = q
+        for k, d in rest:
+            at = step + k
+            before = left.get(at)
+            if before is None:
+                left[at] = -q * d
+                heapq.heappush(heap, -at)
+            else:
+                left[at] = before - q * d
+    return r.from_dict({tuple((k >> s) & mask for s in shifts): ZZ(c) for k, c in out.items()})
+
+
+_EXPONENT_BITS = 20
+
+
+def lowered(poly: PolyElement, low: Sequence[int]) -> PolyElement:
+    """Divided by a monomial that divides every term."""
+    return poly.ring.from_dict({tuple(map(int.__sub__, m, low)): c for m, c in poly.items()})
+
+
+def lowest(poly: PolyElement) -> tuple[int, ...]:
+    """The lowest power of each generator in any term."""
+    monoms = poly.monoms()
+    return tuple(map(min, *monoms)) if len(monoms) > 1 else tuple(monoms[0])
 
 
 def _repeats(poly: PolyElement) -> bool:
     """False when it is proven that no factor of ``poly`` is repeated."""
-    for x in range(poly.ring.ngens):
-        degree = poly.degree(x)
-        if degree < 2:
-            continue
-        u = _image(poly, x)
-        slope = [c * (degree - i) % _PRIME for i, c in enumerate(u[:-1])]
-        if not u[0] or _degree_of_gcd(u, slope) > 0:
-            return True
-    return False
+    u = _image(poly)
+    degree = len(u) - 1
+    slope = [c * (degree - i) % _PRIME for i, c in enumerate(u[:-1])]
+    return not u[0] or _degree_of_gcd(u, slope) > 0
 
 
 def factors_of(poly: PolyElement) -> tuple[int, list[tuple[PolyElement, int]]]:
@@ -206,9 +309,10 @@ def factors_of(poly: PolyElement) -> tuple[int, list[tuple[PolyElement, int]]]:
     content, rest = poly.primitive()
     if rest.LC < 0:
         content, rest = -content, -rest
-    lowest = tuple(min(m[i] for m in rest.monoms()) for i in range(r.ngens))
-    out = [(r.gens[i], e) for i, e in enumerate(lowest) if e]
-    rest = rest.exquo(r.from_dict({lowest: ZZ(1)}))
+    low = lowest(rest)
+    out = [(r.gens[i], e) for i, e in enumerate(low) if e]
+    if out:
+        rest = lowered(rest, low)
     if rest.is_ground:
         return int(content), out
     for x in range(r.ngens):
@@ -220,7 +324,7 @@ def factors_of(poly: PolyElement) -> tuple[int, list[tuple[PolyElement, int]]]:
         if common.is_ground:
             return int(content), [*out, (rest, 1)]
         number, inner = factors_of(common)
-        return int(content) * number, [*out, *inner, *factors_of(rest.exquo(common))[1]]
+        return int(content) * number, [*out, *inner, *factors_of(exact_quotient(rest, common))[1]]
     number, found = rest.factor_list()
     return int(content) * int(number), [*out, *found]
 
@@ -240,33 +344,16 @@ def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]
     content, primitive = poly.primitive()
     if primitive.LC < 0:
         content, primitive = -content, -primitive
-    lowest = tuple(min(m[i] for m in primitive.monoms()) for i in range(r.ngens))
+    low = lowest(primitive)
     gens = []
-    if any(lowest):
-        common = r.from_dict({lowest: ZZ(1)})
-        primitive = primitive.exquo(common)
+    if any(low):
+        common = r.from_dict({low: ZZ(1)})
+        primitive = lowered(primitive, low)
         gens = _square_free(common)[1]
     if not _repeats(primitive):
         return content, [*gens, (primitive, 1)]
     c, factors = primitive.sqf_list()
     return content * c, [*gens, *factors]
-
-
-def ratio(
-    above: Iterable[tuple[PolyElement, int]], below: Iterable[tuple[PolyElement, int]]
-) -> Quotient:
-    """Quotient of products of powers; equal factors cancel before anything is multiplied out."""
-    powers: dict[PolyElement, int] = {}
-    for sign, parts in ((1, above), (-1, below)):
-        for poly, e in parts:
-            powers[poly] = powers.get(poly, 0) + sign * e
-    top = None
-    for poly, e in powers.items():
-        if e > 0:
-            top = poly**e if top is None else top * poly**e
-    if top is None:
-        top = next(iter(powers)).ring.one
-    return quotient(top, [(poly, -e) for poly, e in powers.items() if e < 0])
 
 
 def add(a: Quotient, b: Quotient) -> Quotient:
@@ -285,6 +372,45 @@ def add(a: Quotient, b: Quotient) -> Quotient:
         ta = ta * p ** (e - da.get(p, 0))
         tb = tb * p ** (e - db.get(p, 0))
     return quotient(ta + tb, common.items()) if ta + tb else Quotient(r.zero)
+
+
+Factors = list[tuple[PolyElement, int]]
+
+
+def total(
+    terms: Sequence[tuple[Factors, Factors]], r: PolyRing, *, cancel: bool = True
+) -> Quotient:
+    """Sum of quotients of products, over one common denominator made in one go.
+
+    Without ``cancel`` numerator and denominator may share factors: they cancel for certain against
+    the same polynomials elsewhere, where a shortened form would not.
+    """
+    over: list[tuple[PolyElement, dict[PolyElement, int]]] = []
+    common: dict[PolyElement, int] = {}
+    for above, below in terms:
+        powers: dict[PolyElement, int] = {}
+        for sign, parts in ((1, above), (-1, below)):
+            for poly, e in parts:
+                powers[poly] = powers.get(poly, 0) + sign * e
+        top = r.one
+        under: dict[PolyElement, int] = {}
+        for poly, e in powers.items():
+            if e > 0:
+                top = top * poly**e
+            elif e < 0 and poly != 1:
+                under[poly] = -e
+        for poly, e in under.items():
+            common[poly] = max(common.get(poly, 0), e)
+        over.append((top, under))
+    out = r.zero
+    for top, under in over:
+        for poly, e in common.items():
+            if e > under.get(poly, 0):
+                top = top * poly ** (e - under.get(poly, 0))
+        out = out + top
+    if not cancel:
+        return Quotient(out, tuple((poly, e) for poly, e in common.items() if e))
+    return quotient(out, common.items()) if out else Quotient(r.zero)
 
 
 def times(a: Quotient, factor: Fraction) -> Quotient:
@@ -324,7 +450,7 @@ def solve_linear(
                 continue
             f = rows[i][k]
             rows[i] = [
-                (pivot * x - f * y).exquo(previous) if (x or y) else x
+                exact_quotient(pivot * x - f * y, previous) if (x or y) else x
                 for x, y in zip(rows[i], rows[k], strict=True)
             ]
         if max(len(x) for row in rows for x in row) > MAX_TERMS:
@@ -338,6 +464,6 @@ def solve_linear(
             break
         if x:
             common = common_factor(common, x)
-    if determinant.exquo(common).LC < 0:
+    if exact_quotient(determinant, common).LC < 0:
         common = -common
-    return [x.exquo(common) for x in numerators], determinant.exquo(common)
+    return [exact_quotient(x, common) for x in numerators], exact_quotient(determinant, common)

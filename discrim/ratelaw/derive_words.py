@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from fractions import Fraction
 from typing import Any
 
@@ -11,9 +10,14 @@ from sympy import Rational
 
 from discrim.mechanism.check import net
 from discrim.mechanism.model import Species, Step
+from discrim.ratelaw.derive_algebra import quotient
+from discrim.ratelaw.derive_cycles import Relation
+from discrim.ratelaw.derive_equilibria import Monomial, Powers, backward, equilibrium, forward
 from discrim.ratelaw.derive_network import Network
-from discrim.ratelaw.derive_solve import Monomial, Solution, backward, equilibrium, forward
+from discrim.ratelaw.derive_solve import Solution, poly_expr
 from discrim.ratelaw.model import amount
+
+_LONG = 200  # terms; a longer sum over a catalyst is printed as it came, not shortened first
 
 
 def _listed(names: list[str]) -> str:
@@ -62,28 +66,53 @@ def assumptions(network: Network, solution: Solution) -> tuple[str, ...]:
                 f"The total of {family.name} is constant and shared between {forms}; the amounts "
                 "of the other species are those not bound to it."
             )
-    for name, others in solution.relations:
-        factors = _product(others)
-        out.append(
-            f"The equilibrated steps close a cycle, so that K_{name} = {factors} and is not a "
-            "constant of its own."
-        )
+    out += [_relation(network, r) for r in solution.relations]
     if not network.intermediates and len(network.kinetic) > 1:
         out.append("The steps run side by side and do not influence each other.")
     return tuple(out)
 
 
-def _product(powers: Mapping[str, Fraction]) -> str:
-    """Equilibrium constants multiplied and divided, as text."""
+def _relation(network: Network, relation: Relation) -> str:
+    """What a cycle says of one constant, a full sentence."""
+    fast = {s.name for s in network.equilibrated}
 
     def factor(name: str, e: Fraction) -> str:
-        return (
-            f"K_{name}" if e == 1 else f"K_{name}^({e})" if e.denominator > 1 else f"K_{name}^{e}"
-        )
+        base = f"K_{name}" if name in fast else f"(k_{name}/k_rev_{name})"
+        return base if e == 1 else f"{base}^({e})" if e.denominator > 1 else f"{base}^{e}"
 
+    powers = relation.others
     above = [factor(n, e) for n, e in sorted(powers.items()) if e > 0]
     below = [factor(n, -e) for n, e in sorted(powers.items()) if e < 0]
-    return " ".join(above or ["1"]) + "".join(f"/{f}" for f in below)
+    product = " ".join(above or ["1"]) + "".join(f"/{f}" for f in below)
+    name = relation.step.name
+    if relation.equilibrated:
+        return (
+            f"The equilibrated steps close a cycle, so that K_{name} = {product} and is not a "
+            "constant of its own."
+        )
+    around = _listed([name, *sorted(powers)])
+    return (
+        f"Steps {around} close a cycle without net change, so that k_{name}/k_rev_{name} = "
+        f"{product} (microscopic reversibility) and k_rev_{name} is not a constant of its own."
+    )
+
+
+def roots_words(solution: Solution) -> tuple[str, ...]:
+    """Findings about what has no closed form, full sentences."""
+    out = []
+    for root in solution.roots:
+        names = _listed([s.name for s in root.symbols])
+        if not root.closed:
+            out.append(
+                f"The balances have no closed form for {names}: the law is kept implicit and "
+                "solved numerically, with exact derivatives."
+            )
+        if root.several:
+            out.append(
+                f"The balances for {names} may have more than one positive solution; the law uses "
+                "the one that is reached from none of it."
+            )
+    return tuple(out)
 
 
 def conventions(network: Network) -> tuple[str, ...]:
@@ -164,15 +193,26 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
     references = [amount(f.reference.name) for f in network.families]
     known = {f.reference for f in network.families}
 
+    def raised(powers: Powers) -> list[Any]:
+        return [s ** Rational(e.numerator, e.denominator) for s, e in powers.items()]
+
     def value(m: Monomial) -> Any:
-        powers = [s ** Rational(e.numerator, e.denominator) for s, e in m.symbols.items()]
+        powers = raised(m.symbols)
         powers += [references[k] ** Rational(e.numerator, e.denominator) for k, e in m.v.items()]
         for u, e in m.u.items():
             top, bottom = solution.values[u]
-            solved = algebra.expr(top) / algebra.expr(bottom)
+            solved = (poly_expr(algebra, top) / poly_expr(algebra, bottom)) ** solution.powers[u]
             powers.append(solved ** Rational(e.numerator, e.denominator))
         return sympy.Mul(*powers)
 
+    for root in solution.roots:
+        lines += [(f"To be solved for {_listed([s.name for s in root.symbols])}", None)]
+        lines += [("", sympy.Eq(0, algebra.expr(e), evaluate=False)) for e in root.equations]
+        if root.closed:
+            lines += [
+                ("Its positive root", sympy.Eq(symbol, e, evaluate=False))
+                for symbol, e in zip(root.symbols, root.values, strict=True)
+            ]
     for species, m in solution.monomials.items():
         if species not in known:
             lines.append(
@@ -184,6 +224,10 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
     for family, total in zip(network.families, solution.totals, strict=True):
         what = "Vacant sites" if family.kind == "sites" else "Free catalyst, as fraction of all,"
         words = f"{what} {family.reference.name} from the sum"
-        inverse = 1 / total.expr(algebra)
+        short = len(total.top) <= _LONG
+        cancelled = quotient(total.top, total.bottom) if short else total
+        inverse = 1 / cancelled.expr(algebra)
+        if inverse.is_Symbol:
+            continue  # a root, which has been given
         lines.append((words, sympy.Eq(amount(family.reference.name), inverse, evaluate=False)))
     return lines

@@ -17,7 +17,7 @@ import sympy
 from sympy import ZZ
 from sympy.polys.rings import PolyElement
 
-from discrim.ratelaw.derive_algebra import Algebra, common_factor, factors_of
+from discrim.ratelaw.derive_algebra import Algebra, common_factor, exact_quotient, factors_of
 
 Amounts = tuple[tuple[sympy.Symbol, Fraction], ...]  # monomial in the amounts, sorted by name
 Vector = dict[int, Fraction]  # exponents of atoms, by index
@@ -182,7 +182,7 @@ class _Reader:
                 over = over + top
                 continue
             shared = common_factor(under, divisor)
-            left, right = divisor.exquo(shared), under.exquo(shared)
+            left, right = exact_quotient(divisor, shared), exact_quotient(under, shared)
             over, under = over * left + top * right, under * left
         return over, under
 

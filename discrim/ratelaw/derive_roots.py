@@ -1,0 +1,382 @@
+"""Balances that are not linear in the intermediates: roots in closed form, or kept implicit.
+
+Radicals that meet, species on two sites, dissociation that is not equilibrated: the balances are
+polynomials in the free unknowns and the references. Unknowns that enter an equation linearly are
+eliminated exactly; what is left is an equation in one unknown, solved as a power or as the positive
+root of a quadratic, or a system that the law keeps as it is (:mod:`discrim.ratelaw.implicit`).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from itertools import pairwise
+from math import gcd, lcm
+from typing import Any
+
+import sympy
+from sympy import Rational
+from sympy.polys.rings import PolyElement
+
+from discrim.mechanism.model import Species
+from discrim.ratelaw.derive_algebra import (
+    Algebra,
+    Quotient,
+    common_factor,
+    exact_quotient,
+    lowered,
+    lowest,
+)
+from discrim.ratelaw.derive_balances import (
+    Balances,
+    Sides,
+    Value,
+    clearing,
+    row_terms,
+    undetermined,
+)
+from discrim.ratelaw.derive_equilibria import Monomial
+from discrim.ratelaw.derive_network import Network, row_reduce
+from discrim.ratelaw.implicit import ImplicitValue
+from discrim.ratelaw.solve import linear_in, one_sign, put
+
+_MOST_FACTORED = 60  # terms; factoring is slow
+_MOST = 3000  # terms of one equation while unknowns are eliminated; beyond it they stay implicit
+
+
+@dataclass(frozen=True, slots=True)
+class Root:
+    """Unknowns that the law holds by their symbols, with what they are.
+
+    Attributes
+    ----------
+    symbols : the unknowns, symbols of the algebra
+    equations : polynomials of the algebra that are zero there
+    values : what the law is written with in the end, one for each symbol
+    closed : the values are closed forms
+    several : more than one positive solution cannot be ruled out
+    """
+
+    symbols: tuple[sympy.Symbol, ...]
+    equations: tuple[PolyElement, ...]
+    values: tuple[Any, ...]
+    closed: bool
+    several: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Rooted:
+    """What :mod:`derive_balances` gives for linear balances, with roots beside it.
+
+    ``values`` are those of the free unknowns, ``totals`` the inverses of the references.
+    """
+
+    algebra: Algebra
+    values: dict[int, Value]
+    powers: dict[int, int]  # values[u] is the unknown to the power 1/powers[u]
+    totals: tuple[Quotient, ...]
+    roots: tuple[Root, ...]
+
+
+def solve_with_roots(
+    network: Network,
+    roots_of: Mapping[sympy.Symbol, int],
+    unknowns: Sequence[Species],
+    sides: Sides,
+    monomials: Mapping[Species, Monomial],
+    found: Balances,
+) -> Rooted:
+    """All unknowns and references of balances that are polynomials of any degree in them."""
+    every = [m for side in sides for m in side if m is not None] + list(monomials.values())
+    y = [sympy.Dummy(_name(network, s), positive=True) for s in unknowns]
+    v = [sympy.Dummy(f"[{f.reference.name}]", positive=True) for f in network.families]
+    q_y = [lcm(*(m.u.get(i, Fraction(0)).denominator for m in every)) for i in range(len(y))]
+    q_v = [lcm(*(m.v.get(k, Fraction(0)).denominator for m in every)) for k in range(len(v))]
+    algebra = Algebra.over(
+        {**roots_of, **dict(zip(y, q_y, strict=True)), **dict(zip(v, q_v, strict=True))}
+    )
+
+    def powers(m: Monomial) -> dict[sympy.Symbol, Fraction]:
+        out = dict(m.symbols)
+        out |= {y[i]: e for i, e in m.u.items()}
+        out |= {v[k]: e for k, e in m.v.items()}
+        return out
+
+    equations = []
+    for row in _nonlinear_first(found.rows, sides):
+        equations.append([(c, powers(m)) for c, m in row_terms(row, sides)])
+    for family in network.families:
+        total = [(w, powers(monomials[s])) for s, w in family.weights.items()]
+        equations.append([*total, (-1, {})])
+    first = len(roots_of)
+    # Intermediates go first, vacant sites stay to the last: a root that is a share of the sites, or
+    # a radical, is the one that a chemist would name.
+    order = [*range(first, first + len(y) + len(v))]
+    order.sort(key=lambda i: (i >= first + len(y), not _bound(network, unknowns, i - first)))
+    elimination = _Elimination(algebra, first, order)
+    if not elimination.run([_polynomial(algebra, terms) for terms in equations]):
+        raise undetermined(network, unknowns or [f.reference for f in network.families])
+    solved = elimination.back_substituted()
+    generator = algebra.ring.gens
+    values: dict[int, Value] = {}
+    totals: list[Quotient] = []
+    for i in range(first, first + len(y) + len(v)):
+        top, bottom = solved.get(i, (generator[i], algebra.ring.one))
+        if i < first + len(y):
+            values[i - first] = ([(top, 1)], [(bottom, 1)])
+        else:
+            q = q_v[i - first - len(y)]
+            totals.append(Quotient(bottom**q, ((top, q),)))
+    return Rooted(
+        algebra,
+        values,
+        dict(enumerate(q_y)),
+        tuple(totals),
+        tuple(_root(algebra, first, ids, eqs) for ids, eqs in elimination.kept),
+    )
+
+
+def _name(network: Network, species: Species) -> str:
+    """The name of a free unknown: a bound species stands relative to its reference."""
+    k = network.family_of(species)
+    return f"[{species.name}]" if k is None else f"[{species.name}]/[{network.families[k].name}]"
+
+
+def _bound(network: Network, unknowns: Sequence[Species], u: int) -> bool:
+    return u < len(unknowns) and network.family_of(unknowns[u]) is not None
+
+
+def _nonlinear_first(rows: Sequence[Sequence[int]], sides: Sides) -> list[list[int]]:
+    """The same balances, combined so that steps between two intermediates stand in few of them."""
+    if not rows:
+        return []
+    width = len(sides)
+
+    def degree(s: int) -> Fraction:
+        return max(
+            sum(m.u.values(), Fraction(0)) + sum(m.v.values(), Fraction(0))
+            for m in sides[s]
+            if m is not None
+        )
+
+    order = sorted(range(width), key=lambda s: (degree(s) <= 1, s))
+    linear_from = sum(degree(s) > 1 for s in order)
+    reduced, _ = row_reduce([[Fraction(row[s]) for s in order] for row in rows], linear_from)
+    out = []
+    for row in reduced:
+        scale = lcm(*(x.denominator for x in row))
+        whole = [0] * width
+        for s, x in zip(order, row, strict=True):
+            whole[s] = int(x * scale)
+        out.append(whole)
+    return out
+
+
+def _polynomial(
+    algebra: Algebra, terms: Sequence[tuple[int, Mapping[sympy.Symbol, Fraction]]]
+) -> PolyElement:
+    clear = clearing([p for _, p in terms])
+    out: dict[tuple[int, ...], int] = {}
+    for c, p in terms:
+        shifted = dict(p)
+        for symbol, e in clear.items():
+            shifted[symbol] = shifted.get(symbol, Fraction(0)) + e
+        key = tuple(algebra.exponents(shifted))
+        out[key] = out.get(key, 0) + c
+    domain = algebra.ring.domain
+    return algebra.ring.from_dict({m: domain(c) for m, c in out.items() if c})
+
+
+class _Elimination:
+    """Unknowns put into one another, each from an equation that is linear in it."""
+
+    def __init__(self, algebra: Algebra, first: int, order: Sequence[int]) -> None:
+        self.algebra = algebra
+        self.first = first
+        self.left = list(order)
+        self.assigned: list[tuple[int, PolyElement, PolyElement]] = []
+        self.kept: list[tuple[tuple[int, ...], tuple[PolyElement, ...]]] = []
+
+    def run(self, equations: list[PolyElement]) -> bool:
+        """False when the equations do not determine the unknowns."""
+        equations = [self.tidy(e) for e in equations if e]
+        while self.left:
+            if any(not self.unknowns(e) for e in equations):
+                return False
+            single = next((e for e in equations if self.alone(e)), None)
+            if single is not None:
+                (i,) = self.unknowns(single)
+                self.kept.append(((i,), (self.with_root(single, i),)))
+                self.left.remove(i)
+                equations = [e for e in equations if e is not single]
+                # what is known now counts as a parameter
+                continue
+            step = self.best(equations)
+            if step is None:
+                involved = tuple(self.left)
+                if len(equations) != len(involved):
+                    return False
+                self.kept.append((involved, tuple(equations)))
+                self.left = []
+                return True
+            equation, i, slope, rest = step
+            self.assigned.append((i, -rest, slope))
+            self.left.remove(i)
+            equations = [
+                self.tidy(self.without(put(e, i, -rest, slope), slope))
+                for e in equations
+                if e is not equation
+            ]
+            equations = [e for e in equations if e]
+        return not equations
+
+    def unknowns(self, equation: PolyElement) -> set[int]:
+        return {i for i in self.left if equation.degree(i) > 0}
+
+    def alone(self, equation: PolyElement) -> bool:
+        """One unknown, not linear."""
+        found = self.unknowns(equation)
+        return len(found) == 1 and equation.degree(next(iter(found))) > 1
+
+    def with_root(self, equation: PolyElement, i: int) -> PolyElement:
+        """The one factor of an equation in one unknown that can be zero, if that is sure."""
+        if len(equation) > _MOST_FACTORED:
+            return equation
+        able = [
+            f
+            for f, _ in equation.factor_list()[1]
+            if f.degree(i) > 0 and one_sign(f, frozenset()) is None
+        ]
+        return able[0] if len(able) == 1 else equation
+
+    def best(
+        self, equations: Sequence[PolyElement]
+    ) -> tuple[PolyElement, int, PolyElement, PolyElement] | None:
+        """The equation and unknown that make the others grow least; sure of sign before unsure."""
+        choices = []
+        for n, equation in enumerate(equations):
+            for rank, i in enumerate(self.left):
+                split = linear_in(equation, i)
+                if split is None:
+                    continue
+                slope, rest = split
+                if not rest:
+                    continue
+                a, b = one_sign(slope, frozenset()), one_sign(rest, frozenset())
+                certain = a is not None and b == -a
+                cost = max(len(slope), len(rest))
+                touched = [e for e in equations if e is not equation and e.degree(i) > 0]
+                size = sum(len(e) * cost ** int(e.degree(i)) for e in touched)
+                if size > 100 * _MOST:
+                    continue
+                choices.append(((not certain, size, rank, n), equation, i, slope, rest))
+        if not choices:
+            return None
+        return min(choices, key=lambda c: c[0])[1:]
+
+    def without(self, poly: PolyElement, factor: PolyElement) -> PolyElement:
+        """Divided by what it shares with ``factor``, which cannot be zero."""
+        while poly and not factor.is_ground:
+            shared = common_factor(poly, factor)
+            if shared.is_ground:
+                break
+            poly = exact_quotient(poly, shared)
+        return poly
+
+    def tidy(self, poly: PolyElement) -> PolyElement:
+        """Without whole factors and powers of single symbols, none of which is zero."""
+        if not poly:
+            return poly
+        low = lowest(poly)
+        if any(low):
+            poly = lowered(poly, low)
+        poly = poly.primitive()[1]
+        return -poly if poly.LC < 0 else poly
+
+    def back_substituted(self) -> dict[int, tuple[PolyElement, PolyElement]]:
+        """Each eliminated unknown as a quotient in what was kept."""
+        out: dict[int, tuple[PolyElement, PolyElement]] = {}
+        for i, top, bottom in reversed(self.assigned):
+            for j, (a, b) in out.items():
+                high_t, high_b = top.degree(j), bottom.degree(j)
+                if max(high_t, high_b) <= 0:
+                    continue
+                top, bottom = put(top, j, a, b), put(bottom, j, a, b)
+                if high_b > high_t:
+                    top = top * b ** (max(high_b, 0) - max(high_t, 0))
+                elif high_t > high_b:
+                    bottom = bottom * b ** (max(high_t, 0) - max(high_b, 0))
+            shared = common_factor(top, bottom)
+            if not (shared.is_ground and abs(shared.LC) == 1):
+                top, bottom = exact_quotient(top, shared), exact_quotient(bottom, shared)
+            if bottom.LC < 0:
+                top, bottom = -top, -bottom
+            out[i] = (top, bottom)
+        return out
+
+
+def _root(
+    algebra: Algebra, first: int, ids: tuple[int, ...], equations: tuple[PolyElement, ...]
+) -> Root:
+    symbols = tuple(algebra.symbols[i] for i in ids)
+    if len(ids) == 1:
+        closed = _closed(algebra, ids[0], equations[0])
+        if closed is not None:
+            return Root(symbols, equations, (closed,), closed=True, several=False)
+    # The unknowns of the system are the generators: roots of the symbols where these have any.
+    unknowns = [sympy.Dummy(s.name, positive=True) for s in symbols]
+    swap = {}
+    for s, z, i in zip(symbols, unknowns, ids, strict=True):
+        swap[s] = z ** algebra.roots[i]
+    written = [algebra.expr(e).xreplace(swap) for e in equations]
+    values = tuple(
+        ImplicitValue(k, unknowns, written) ** algebra.roots[i] for k, i in enumerate(ids)
+    )
+    several = len(ids) > 1 or not _one_root(_coefficients(equations[0], ids[0]))
+    return Root(symbols, equations, values, closed=False, several=several)
+
+
+def _coefficients(poly: PolyElement, i: int) -> dict[int, PolyElement]:
+    """Coefficients by power of generator ``i``."""
+    apart: dict[int, dict[tuple[int, ...], Any]] = {}
+    for m, c in poly.terms():
+        apart.setdefault(m[i], {})[(*m[:i], 0, *m[i + 1 :])] = c
+    return {e: poly.ring.from_dict(terms) for e, terms in apart.items()}
+
+
+def _one_root(coefficients: Mapping[int, PolyElement]) -> bool:
+    """One positive root for all values of the symbols: one change of sign (Descartes)."""
+    signs = [one_sign(coefficients[e], frozenset()) for e in sorted(coefficients)]
+    unclear = [k for k, s in enumerate(signs) if s is None]
+    if len(unclear) > 1:
+        return False
+    known = [s for s in signs if s is not None]
+    changes = sum(a != b for a, b in pairwise(known))
+    if not unclear:
+        return changes == 1
+    (k,) = unclear  # either sign gives one change only between two of opposite sign
+    return 0 < k < len(signs) - 1 and changes == 1 and signs[k - 1] != signs[k + 1]
+
+
+def _closed(algebra: Algebra, i: int, poly: PolyElement) -> Any | None:
+    """The positive root as an expression, if the equation is a power or a quadratic of one."""
+    coefficients = _coefficients(poly, i)
+    exponents = sorted(coefficients)
+    step = gcd(*exponents)
+    if exponents[0] != 0:
+        return None
+    power = Rational(algebra.roots[i], step)
+    signs = {e: one_sign(c, frozenset()) for e, c in coefficients.items()}
+    high, c0 = exponents[-1], coefficients[0]
+    if signs[0] is None or signs[high] is None or signs[high] == signs[0]:
+        return None
+    a = algebra.expr(coefficients[high] * signs[high])
+    c = algebra.expr(c0 * signs[0])
+    if len(exponents) == 2:
+        return (c / a) ** power
+    if len(exponents) != 3 or high != 2 * step or exponents[1] != step:
+        return None
+    b = algebra.expr(coefficients[step] * signs[high])
+    # 2c/(b + sqrt(b^2 + 4ac)) does not cancel where b > 0, and holds for a = 0
+    return (2 * c / (b + sympy.sqrt(b**2 + 4 * a * c))) ** power
