@@ -66,10 +66,10 @@ class Term:
 
 @dataclass(frozen=True, slots=True)
 class Coefficient:
-    """A coefficient of the smaller law: its logarithm, and those of its terms."""
+    """A coefficient of the smaller law: its sign (0: either), its logarithm, those of its terms."""
 
     sign: int
-    log: Log
+    log: Log | None
     terms: tuple[tuple[int, Log], ...]
 
 
@@ -139,7 +139,7 @@ def match(
             out.reason = missing
             return out
         options.append(shifts)
-    out.reason = "no values of its constants, zero and infinity included, give the coefficients"
+    out.reason = "no constants of the other one, zero and infinity included, give its coefficients"
     budget = [_MOST_NODES]
     for k, factors in enumerate(product(*options)):
         if k >= _MOST_COMBINATIONS or budget[0] <= 0:
@@ -186,13 +186,16 @@ def _coefficients(poly: Any, layout: Layout, outcome: Outcome) -> dict[Amounts, 
 
 
 def _coefficient(poly: Any, layout: Layout, outcome: Outcome) -> Coefficient:
-    sign = one_sign(poly, layout.signed)
-    if sign is None or any(m[i] for m in poly for i in layout.signed):
-        raise NotMonomial("a coefficient of the smaller law may have either sign")
+    if any(m[i] for m in poly for i in layout.signed):
+        raise NotMonomial("a constant that may be negative stands outside of an exponent")
     terms = tuple(
         (1 if c > 0 else -1, _log_of_monomial(abs(int(c)), monomial))
         for monomial, c in poly.terms()
     )
+    sign = one_sign(poly, layout.signed)
+    if sign is None:
+        outcome.complete = False
+        return Coefficient(0, None, terms)
     if len(terms) == 1:
         return Coefficient(sign, terms[0][1], terms)
     return Coefficient(sign, _log_of_sum(poly, layout, outcome), terms)
@@ -236,8 +239,10 @@ class _Group:
     target: Coefficient
     sign: int
 
-    def row(self, term: Term, log: Log) -> tuple[Row, Log]:
-        """The equation that says that the term goes to the coefficient."""
+    def row(self, term: Term, log: Log | None = None) -> tuple[Row, Log]:
+        """The equation that says that the term goes to the coefficient, or to what is given."""
+        log = self.target.log if log is None else log
+        assert log is not None
         row = dict(term.exponents)
         row[self.scale] = -1
         if self.more is not None:
@@ -288,7 +293,8 @@ class _Task:
                 groups += self._take(terms, targets, shifts, scale, turned)
             for k, met, target in groups:
                 group = _Group(scale, parts[k], tuple(met), target, turned.get(k, 1))
-                (self.fixed if len(met) == 1 else self.shared).append(group)
+                alone = len(met) == 1 and target.log is not None
+                (self.fixed if alone else self.shared).append(group)
 
     def _take(
         self,
@@ -314,7 +320,7 @@ class _Task:
             else:
                 ((k, target),) = here
                 signs = {t.sign for t in terms}
-                if len(signs) == 1:
+                if len(signs) == 1 and target.sign:
                     sign = signs.pop() * target.sign
                     self.possible = self.possible and turned.setdefault(k, sign) == sign
                 groups.append((k, terms, target))
@@ -331,7 +337,7 @@ class _Task:
         order = [*self.scales, *self.more, *range(self.n)]
         state = _State(Echelon(order), gone=tuple(self.gone))
         for group in self.fixed:
-            new = self._with(state, [group.row(group.terms[0], group.target.log)])
+            new = self._with(state, [group.row(group.terms[0])])
             if new is None:
                 return None
             state = new
@@ -400,6 +406,8 @@ class _Task:
                         [self._less(terms[i], group.scale) for i in range(m) if i not in chosen],
                         [j * j + 1 for j in range(r)],
                     )
+        if target.log is None:
+            return
         fitting = [t for t in terms if t.sign == target.sign * group.sign]
         if len(fitting) == m:  # in equal parts
             share = _log_of_number(m)
@@ -407,7 +415,7 @@ class _Task:
             yield rows, [], [1] * m
         for t in fitting:  # one alone
             rest = [self._less(u, group.scale) for u in terms if u is not t]
-            yield [group.row(t, target.log)], rest, []
+            yield [group.row(t)], rest, []
 
     def refuted(self, budget: list[int]) -> bool:
         """Whether it is proven that this choice of g leads to no solution."""
@@ -428,7 +436,7 @@ class _Task:
         if not self._none_left(state, k + 1, weak + lines, budget):
             return False
         for i, t in enumerate(group.terms):
-            new = self._with(state, [group.row(t, group.target.log)], lines[:i] + lines[i + 1 :])
+            new = self._with(state, [group.row(t)], lines[:i] + lines[i + 1 :])
             if new is not None and not self._none_left(new, k + 1, weak, budget):
                 return False
         return True

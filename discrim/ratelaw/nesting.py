@@ -15,7 +15,9 @@ from typing import Any
 import sympy
 
 from discrim.ratelaw import equations
+from discrim.ratelaw.adjoined import same_root
 from discrim.ratelaw.case import Case, Prepared
+from discrim.ratelaw.counting import too_few_terms
 from discrim.ratelaw.exponents import Outcome, Solution, expression_of, match
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.relation import Neither, Nesting, NotProven, Substitution
@@ -81,9 +83,12 @@ def examine(
     """
     if len(smaller) != len(larger):
         raise ValueError("the two laws must have the same number of expressions")
+    case = Case(smaller, larger, constants_smaller, constants_larger)
+    alike = case.by_name()
+    if alike is not None and not any(v == 0 for v in alike.values()):
+        return _plainly(case, alike)
     if sum(sympy.count_ops(e) for e in (*smaller, *larger)) > _MOST_OPERATIONS:
         return NotProven("the laws are too large to compare", exhaustive=False)
-    case = Case(smaller, larger, constants_smaller, constants_larger)
     progress = Progress()
     disproven = ""
     for choices in case.choices():
@@ -105,10 +110,20 @@ def examine(
             return best
     if disproven and not case.held:
         return Neither(disproven)
+    if alike is not None:
+        return _plainly(case, alike)
+    if case.held and (reason := too_few_terms(case)):
+        return Neither(reason)
     if progress.dropped:
         return NotProven(progress.dropped[0], exhaustive=False)
     said = "no finite values >= 0 of the constants of the larger law give the smaller one"
     return NotProven(said, exhaustive=not case.held)
+
+
+def _plainly(case: Case, values: dict[str, sympy.Expr]) -> Nesting:
+    """The laws are written alike, apart from terms whose constants are zero."""
+    zero = tuple(n for n, v in values.items() if v == 0)
+    return Nesting(values, zero, {}, (), case.n_restrictions, edge=bool(zero))
 
 
 def _found(
@@ -118,11 +133,29 @@ def _found(
     settled = False
     for solution in outcome.solutions:
         nesting = _read(case, prepared, solution)
-        if nesting is not None:
+        if nesting is not None and _confirmed(case, prepared, nesting):
             settled = settled or not (nesting.vanish or nesting.infinite)
             yield nesting
-    if not settled or not outcome.complete:
+    if not prepared.rational:
+        if not outcome.solutions:
+            progress.dropped.append("roots or balances without a closed form")
+    elif not settled or not outcome.complete:
         yield from equations.solve(case, prepared, progress)
+
+
+def _confirmed(case: Case, prepared: Prepared, nesting: Nesting) -> bool:
+    """Where polynomials leave open which root is meant, numbers must agree as well."""
+    if prepared.rational:
+        return True
+    if case.n_balances:
+        return not nesting.along  # the balances themselves agree, with no limit to take
+    values = {}
+    for symbol, name in case.names.items():
+        base, power = nesting.along.get(name, (nesting.values.get(name, sympy.Integer(1)), 0))
+        if base is sympy.oo:
+            base, power = sympy.Integer(1), 1
+        values[symbol] = base, power
+    return same_root(*case.as_given, values)
 
 
 def _read(case: Case, prepared: Prepared, solution: Solution) -> Nesting | None:

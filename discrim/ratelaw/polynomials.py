@@ -166,6 +166,24 @@ def coprime(polys: Sequence[Any], generators: Sequence[int]) -> bool:
     return all(_coprime_in(some, i) for i in generators)
 
 
+def odd_somewhere(poly: Any, generators: Sequence[int]) -> bool:
+    """Whether it is proven that the polynomial is no constant times a square, in the generators.
+
+    With the others at integers, a square h^2 and its derivative would share h, of half its degree.
+    """
+    if not poly:
+        return False
+    for i in generators:
+        degree = max(m[i] for m in poly)
+        row = _at_numbers(poly, i, 0)
+        if not degree or len(row) <= degree:
+            continue
+        slope = [k * c % _PRIME for k, c in enumerate(row)][1:]
+        if 2 * (len(_gcd_mod(row, slope)) - 1) < degree:
+            return True
+    return False
+
+
 def _coprime_in(polys: Sequence[Any], i: int) -> bool:
     if any(all(m[i] == 0 for m in p) for p in polys):
         return True

@@ -74,7 +74,7 @@ class Nesting:
 @dataclass(frozen=True, slots=True)
 class Neither:
     """It is proven that the smaller law is no case of the larger one: at no values of its
-    constants, zero and infinity included."""
+    constants, zero and infinity included. ``reason`` speaks of the smaller law as "it"."""
 
     reason: str
 

@@ -105,5 +105,5 @@ def _reach(points: set[Amounts], u: Sequence[tuple[int, int]]) -> int:
 
 def _missing(pairs: Sequence[Pair]) -> str:
     if any(len(t) > len(o) for o, t in pairs):
-        return "it has fewer different terms in the amounts"
-    return "its terms in the amounts are others"
+        return "it has more different terms in the amounts"
+    return "its terms in the amounts are others than those of the other one"
