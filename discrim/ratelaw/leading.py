@@ -26,10 +26,16 @@ _LONGEST = 400  # terms of a sum that is put over one denominator
 
 @dataclass(frozen=True, slots=True)
 class Leading:
-    """``coefficient * x**order``; the coefficient does not hold x and is not zero."""
+    """``coefficient * x**order``; the coefficient does not hold x and is not zero.
+
+    ``exact``: the expression is this power of x, nothing was left out. ``positive``: symbols of
+    orders that were taken as positive to tell which term dominates.
+    """
 
     order: Any
     coefficient: Any
+    exact: bool = False
+    positive: tuple[Any, ...] = ()
 
 
 class NoLeadingTerm(Exception):
@@ -39,16 +45,19 @@ class NoLeadingTerm(Exception):
 def leading(expr: Any, x: sympy.Symbol, *, high: bool) -> Leading:
     """The term that dominates ``expr`` as the amount ``x`` goes to 0 (or, ``high``, to infinity).
 
-    Symbols are taken as positive (orders as real), so that a sum of terms of one sign never
-    vanishes.
+    Symbols are taken as positive, so that a sum of terms of one sign never vanishes; orders only
+    where it matters, and then it is said (``Leading.positive``).
 
     Raises
     ------
     NoLeadingTerm
-        where the expression vanishes, holds x in an exponent or a function, compares orders that
-        are not numbers, or holds unknowns of several balances.
+        where the expression vanishes, holds x in an exponent or a function, compares orders of
+        unknown difference, or holds unknowns of several balances.
     """
-    return _Walk(x, high).of(sympy.sympify(expr))
+    walk = _Walk(x, high)
+    found = walk.of(sympy.sympify(expr))
+    positive = tuple(sorted(walk.positive, key=str))
+    return Leading(found.order, found.coefficient, walk.exact, positive)
 
 
 def tidy(expr: Any) -> Any:
@@ -89,6 +98,8 @@ class _Walk:
         self.x = x
         self.high = high
         self.free: dict[Any, bool] = {}
+        self.exact = True
+        self.positive: set[Any] = set()
 
     def is_free(self, e: Any) -> bool:
         """Whether ``e`` does not hold x."""
@@ -136,6 +147,7 @@ class _Walk:
             if self.beyond(p.order, extreme):
                 extreme = p.order
         kept = [p.coefficient for p in parts if p.order == extreme]
+        self.exact = self.exact and len(kept) == len(parts)
         total = kept[0] if len(kept) == 1 else sympy.Add(*kept)
         if _vanishes(total):
             return self.over_one_denominator(e)
@@ -151,11 +163,16 @@ class _Walk:
             if gap == 0:
                 return False
             if not gap.is_number:
-                raise NoLeadingTerm("which term dominates depends on an order that is not given")
+                sign = sign_of(gap)
+                if not sign:
+                    raise NoLeadingTerm("which term dominates depends on the orders")
+                self.positive |= gap.free_symbols
+                return (sign > 0) == self.high
         return bool(gap > 0) == self.high
 
     def over_one_denominator(self, e: Any) -> Leading:
         """The leading terms of a sum cancel: the next ones, from numerator and denominator."""
+        self.exact = False
         numer, denom = sympy.fraction(sympy.together(e))
         top, bottom = (self.leading_of_polynomial(part) for part in (numer, denom))
         return Leading(top.order - bottom.order, top.coefficient / bottom.coefficient)
@@ -188,7 +205,8 @@ class _Walk:
         return Leading(extreme, left[extreme])
 
     def of_implicit(self, e: ImplicitValue) -> Leading:
-        """Newton polygon of the one balance that fixes the unknown."""
+        """Newton polygon of the one balance that fixes the unknown, by its smallest positive root."""
+        self.exact = False
         if len(e.unknowns) != 1:
             raise NoLeadingTerm("no closed form")
         (z,), (equation,) = e.unknowns, e.equations
@@ -198,23 +216,27 @@ class _Walk:
         for (power,), c in sorted(poly.terms()):
             lead = self.of(c)
             points.append((power, lead.order, lead.coefficient, sign_of(lead.coefficient)))
-        if not all(p[1].is_Rational for p in points) or not all(p[3] for p in points):
+        if not all(p[1].is_Rational for p in points):
             raise NoLeadingTerm("no closed form")
-        if sum(a[3] != b[3] for a, b in pairwise(points)) != 1:
-            raise NoLeadingTerm("no closed form")  # which root it is would have to be followed
         side = -1 if self.high else 1
         hull: list[tuple[Any, ...]] = []
         for p in points:  # lower hull in the exponents (upper for high), by monotone chain
             while len(hull) > 1 and side * _turn(hull[-2], hull[-1], p) < 0:
                 hull.pop()
             hull.append(p)
-        # Points on an edge are kept, so that neighbours in line belong to one edge.
-        for edge in _edges(hull):
-            if edge[0][3] == edge[-1][3]:
-                continue
+        # Points on an edge are kept, so that neighbours in line belong to one edge. From left to
+        # right the edges give larger and larger roots, and the value is the smallest positive one.
+        edges = list(_edges(hull))
+        for edge in edges:
+            known = all(p[3] for p in edge)
+            turns = sum(a[3] != b[3] for a, b in pairwise(edge)) if known else None
+            if turns == 0:
+                continue  # no positive root
+            if turns != 1 and len(edges) > 1:
+                break  # two or none (rule of signs of Descartes)
             slope = (edge[-1][1] - edge[0][1]) / (edge[-1][0] - edge[0][0])
-            root = _edge_root([(p - edge[0][0], c) for p, _, c, _ in edge], z)
-            return Leading(-slope, root)
+            terms = [(p - edge[0][0], c) for p, _, c, _ in edge]
+            return Leading(-slope, _edge_root(terms, z, once=turns == 1))
         raise NoLeadingTerm("no closed form")
 
 
@@ -233,13 +255,13 @@ def _edges(hull: list[tuple[Any, ...]]) -> Iterable[list[tuple[Any, ...]]]:
     yield edge
 
 
-def _edge_root(terms: list[tuple[int, Any]], z: sympy.Symbol) -> Any:
-    """The positive root of sum c_p z^p, which has one change of sign and a constant term."""
+def _edge_root(terms: list[tuple[int, Any]], z: sympy.Symbol, *, once: bool) -> Any:
+    """The positive root of sum c_p z^p; in closed form where the signs change ``once``."""
     constant = terms[0][1]
-    if len(terms) == 2:
+    if once and len(terms) == 2:
         power, c = terms[1]
-        return tidy(-constant / c) ** sympy.Rational(1, power)
-    if [p for p, _ in terms] == [0, 1, 2]:
+        return _power(tidy(-constant / c), sympy.Rational(1, power))
+    if once and [p for p, _ in terms] == [0, 1, 2]:
         b, a = terms[1][1], terms[2][1]
         if sign_of(a) < 0:
             a, b, constant = -a, -b, -constant

@@ -12,6 +12,7 @@ from typing import Any
 
 import sympy
 
+from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.leading import NoLeadingTerm, leading, sign_of, tidy
 from discrim.ratelaw.model import RateLaw, amount
 
@@ -134,12 +135,16 @@ def limit(rate: Any, species: str, where: str, *, forward: bool = False) -> Limi
         lead = leading(rate, x, high=where == HIGH)
     except NoLeadingTerm as why:
         return Limit(species, where, None, None, forward, f"not given: {why}")
-    reduced = tidy(lead.coefficient * x**lead.order)
+    reduced = rate if lead.exact else tidy(lead.coefficient * x**lead.order)
     words, reverse = order_words(lead.order, species), sign_of(lead.coefficient) < 0
+    if lead.positive:
+        words += f" for {' and '.join(f'{s} > 0' for s in lead.positive)}"
+    inner = sorted({v.unknown.name for v in reduced.atoms(ImplicitValue)})
+    if inner and not lead.exact:
+        words += f", {' and '.join(inner)} at the limit too"
     if reverse:
-        words += ", in reverse"
-    exact = bool(reduced == rate or reduced == tidy(rate))
-    return Limit(species, where, lead.order, reduced, forward, words, reverse, exact)
+        words += ", net rate negative"
+    return Limit(species, where, lead.order, reduced, forward, words, reverse, lead.exact)
 
 
 def order_words(order: Any, species: str) -> str:

@@ -15,6 +15,8 @@ from discrim.report.wrapping import wrap_latex
 
 #: Lines of a long formula that are printed, and where the rest is.
 _MOST, _FEW, _REST = 12, 6, "; all of it with --json"
+_PAIRS = 12  # pairs of laws that are named in one line
+
 #: Columns that only the HTML report shows.
 _WIDE = ("RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
 
@@ -113,6 +115,10 @@ def _candidates(paper: Paper, content: Content) -> None:
         for item in laws:
             paper.say(item.name, indent=2)
             paper.formula(item.text, indent=4, most=_FEW, rest=" in the report")
+            if item.balances:
+                paper.say(item.balance_words, indent=4)
+                for formula, _ in item.balances:
+                    paper.formula(formula, indent=6, most=_FEW, rest=" in the report")
 
 
 def _constants(paper: Paper, content: Content) -> None:
@@ -144,11 +150,19 @@ def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = F
     if shared:
         paper.heading("Same law")
         paper.bullets(shared)
+    related = _related(candidates)
+    if related:
+        paper.heading("How the laws are related")
+        paper.bullets(related)
     return str(paper)
 
 
 def _law(paper: Paper, item: Law) -> None:
     paper.formula(item.text, indent=2, most=_MOST, rest=_REST)
+    if item.balances:
+        paper.say(item.balance_words, indent=2)
+        for formula, _ in item.balances:
+            paper.formula(formula, indent=4, most=_MOST, rest=_REST)
     if item.step_text and item.step_text != item.text and not item.derives(item.step_text):
         paper.blank()
         paper.say("In the constants of the steps", indent=2)
@@ -194,8 +208,11 @@ def _derivation(paper: Paper, item: Law) -> None:
     paper.blank()
     paper.say("Derivation", indent=2)
     lead = len(str(len(item.derivation)))
-    for i, (words, formula, _) in enumerate(item.derivation, 1):
-        paper.say(f"{i:>{lead}}. {words}", indent=4, hang=6 + lead)
+    i = 0
+    for words, formula, _ in item.derivation:
+        i += bool(words)  # a formula without words belongs to those before
+        if words:
+            paper.say(f"{i:>{lead}}. {words}", indent=4, hang=6 + lead)
         if formula:
             paper.formula(formula, indent=6 + lead, most=_FEW, rest=_REST)
 
@@ -205,8 +222,11 @@ def _cases(paper: Paper, heading: str, lines: Sequence[Case]) -> None:
     paper.blank()
     paper.say(heading, indent=2)
     where = max(len(c.where) for c in lines)
-    order = max(len(c.order) for c in lines if c.text or len(c.order) < 24)
+    order = max((len(c.order) for c in lines if c.text), default=0)
     for c in lines:
+        if not c.text:
+            paper.say(f"{c.where:<{where}}  {c.order}", indent=4, hang=6 + where)
+            continue
         head = f"{c.where:<{where}}  {c.order:<{order}}  " if c.order else f"{c.where:<{where}}  "
         paper.formula(c.text, head=head, indent=4, most=_FEW, rest=_REST)
 
@@ -225,6 +245,31 @@ def _shared(candidates: Sequence[Document]) -> list[str]:
         if same:
             names = " and ".join(f"“{n}”" for n in same)
             out.append(f"“{read.text(c, 'name')}” is the same law as {names}")
+    return out
+
+
+def _related(candidates: Sequence[Document]) -> list[str]:
+    """One line for each pair of laws; many pairs of which nothing is known are counted."""
+    found = {
+        (read.text(r, "a"), read.text(r, "b")): (read.text(r, "relation"), read.text(r, "words"))
+        for c in candidates
+        for r in read.records(c, "relations")
+    }
+    out = []
+    for (a, b), (relation, words) in found.items():
+        if relation == "same":
+            out.append(f"“{a}” and “{b}” are the same law" + (f": {words}" if words else ""))
+        elif relation == "special case":
+            out.append(f"“{a}” is a special case of “{b}”" + (f": {words}" if words else ""))
+    for relation, one, many in (
+        ("neither", "Neither is a case of the other, proven", "Proven not to be cases of each other"),
+        ("undecided", "Not decided", "Not decided"),
+    ):
+        pairs = [(a, b) for (a, b), (r, _) in found.items() if r == relation]
+        if pairs:
+            said = "; ".join(f"“{a}” and “{b}”" for a, b in pairs[:_PAIRS])
+            more = f"; and {len(pairs) - _PAIRS} more pairs" if len(pairs) > _PAIRS else ""
+            out.append(f"{one if len(pairs) == 1 else many}: {said}{more}")
     return out
 
 
