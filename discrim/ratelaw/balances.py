@@ -52,9 +52,9 @@ class Balances:
         """The positive solution at each point.
 
         ``coefficients`` shape (terms, P). Returns shape (n, P), NaN where none is found. Of
-        several solutions for one unknown it is the smallest, which is the one reached when the
-        amount builds up from nothing; for several unknowns the first that is found from fixed
-        starts.
+        several solutions for one unknown it is the smallest (which need not be the one that a
+        surface or a chain reaches in time, where several unknowns were eliminated to leave it); for
+        several unknowns the first that is found from fixed starts.
         """
         finite = np.isfinite(coefficients).all(axis=0)
         if not finite.all():
