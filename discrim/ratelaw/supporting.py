@@ -57,7 +57,7 @@ def supporting(law: RateLaw, limits: Sequence[Limit], orders: Sequence[ApparentO
             *(text(s) for s in (*law.assumptions, *law.conventions)),
         ]
     if law.derivation:
-        out += [r"\paragraph{Derivation}", *_argument(law.derivation)]
+        out += [r"\paragraph{Derivation}", *_argument(law)]
     if not law.derivation or law.derivation[-1][1] != law.rate:
         out += [r"\paragraph{Rate law}", *_aligned(_rows(law.rate, "r"))]
     balances = balances_of(law.rate)
@@ -84,16 +84,16 @@ def supporting(law: RateLaw, limits: Sequence[Limit], orders: Sequence[ApparentO
     return "\n".join([*out, r"\endgroup"]) + "\n"
 
 
-def _argument(lines: Sequence[tuple[str, Any]]) -> list[str]:
+def _argument(law: RateLaw) -> list[str]:
     """Words and formulas in turn; formulas that follow one another share one alignment."""
     out: list[str] = []
     rows: list[str] = []
-    for words, e in lines:
+    for words, e in law.derivation:
         if e is None:
             out += [*_aligned(rows), text(words) + "."]
             rows = []
             continue
-        here = _rows(e, _left_of(words))
+        here = _rows(e, "r" if e in (law.rate, law.step_rate) else _left_of(words))
         if rows:
             here[0] = rf"\intertext{{{text(words)}:}}" + "\n  " + here[0]
         else:
@@ -137,7 +137,7 @@ def _left_of(words: str) -> str:
     step = re.match(r"(?:Net rate|Rate) of step (\w+)", words)
     if step:
         return latex(sympy.Symbol(f"r_{step[1]}"))
-    return "r" if words.startswith("Rate law") else ""
+    return ""
 
 
 def _case(case: Case) -> str:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from html import escape
 from typing import Any
 
@@ -17,6 +17,7 @@ class Case:
     order: str
     text: str
     mathml: str
+    starts: bool = False  # the first line of its species
 
 
 def groups(candidate: Any) -> tuple[tuple[str, tuple[Case, ...]], ...]:
@@ -52,8 +53,10 @@ def _law(limit: Any) -> str:
 
 def _lines(limits: list[Any], orders: dict[str, Any]) -> tuple[Case, ...]:
     out: list[Case] = []
+    starts: list[int] = []
     for species in dict.fromkeys(read.text(x, "species") for x in limits):
         here = [x for x in limits if read.text(x, "species") == species]
+        starts.append(len(out))
         if len(here) == 2 and _law(here[0]) and _law(here[0]) == _law(here[1]):
             exact = here[0].get("exact") is True
             out.append(_case(here[0], "any" if exact else "low and high", bare=exact))
@@ -61,7 +64,7 @@ def _lines(limits: list[Any], orders: dict[str, Any]) -> tuple[Case, ...]:
         out += [_case(x, read.text(x, "where")) for x in here]
         if species in orders and len(here) == 2:
             out.append(_between(orders[species], species))
-    return tuple(out)
+    return tuple(replace(c, starts=i in starts) for i, c in enumerate(out))
 
 
 def _case(limit: Any, where: str, *, bare: bool = False) -> Case:

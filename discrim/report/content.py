@@ -84,6 +84,7 @@ class Law:
     balances: tuple[tuple[str, str], ...] = ()  # text, mathml: what the law's unknowns solve
     unknowns: tuple[str, ...] = ()  # of these balances
     limits: tuple[tuple[str, tuple[Case, ...]], ...] = ()  # heading, lines
+    whole_latex: str = ""  # the derivation as one block, several lines
 
     @property
     def balance_words(self) -> str:
@@ -222,7 +223,7 @@ def law(candidate: Document) -> Law:
     special = read.text(candidate, "no_better_than")
     if special and not any("no better than" in reason for reason in reasons):
         notes.append(f"Stands, but no better than its special case “{special}”.")
-    notes += reasons + read.texts(candidate, "note")
+    notes += reasons + read.texts(candidate, "warnings") + read.texts(candidate, "note")
     steps = read.part(candidate, "steps")
     return Law(
         name=read.text(candidate, "name", "unnamed"),
@@ -257,6 +258,7 @@ def law(candidate: Document) -> Law:
             for r in read.records(candidate, "routes")
         ),
         limits=groups(candidate),
+        whole_latex=read.block(candidate, "derivation_latex"),
     )
 
 

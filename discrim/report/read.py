@@ -28,6 +28,12 @@ def clean(value: Any) -> str:
     return "".join(ch if ch.isprintable() else " " for ch in words).strip()
 
 
+def block(record: Any, key: str) -> str:
+    """The entry as printable lines, line breaks kept."""
+    value = record.get(key) if isinstance(record, Mapping) else None
+    return "\n".join(clean(line) for line in value.split("\n")) if isinstance(value, str) else ""
+
+
 def texts(record: Any, key: str) -> list[str]:
     """The entry as a list of non-empty lines; a single line counts as a list of one."""
     value = record.get(key) if isinstance(record, Mapping) else None

@@ -262,7 +262,11 @@ def _related(candidates: Sequence[Document]) -> list[str]:
         elif relation == "special case":
             out.append(f"“{a}” is a special case of “{b}”" + (f": {words}" if words else ""))
     for relation, one, many in (
-        ("neither", "Neither is a case of the other, proven", "Proven not to be cases of each other"),
+        (
+            "neither",
+            "Neither is a case of the other, proven",
+            "Proven not to be cases of each other",
+        ),
         ("undecided", "Not decided", "Not decided"),
     ):
         pairs = [(a, b) for (a, b), (r, _) in found.items() if r == relation]

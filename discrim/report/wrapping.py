@@ -4,7 +4,11 @@ from __future__ import annotations
 
 import re
 
-_LATEX_GAP = re.compile(r"(?<!\\) +|\\,")  # not the blank of a name, which is "\ "
+# Where LaTeX may end a line: at blanks (but for that of a name, which is "\ "), after "\,", before a
+# command and between the arguments of one.
+_LATEX_GAP = re.compile(
+    r"(?<!\\) +|\\,|(?=\\(?:left|right|frac|sqrt|log|exp|mathrm)\b)|(?<=\})(?=\{)"
+)
 
 
 def wrap(text: str, width: int = 80, indent: str = "    ") -> str:
