@@ -172,7 +172,9 @@ def _settled_on_bounds(problem: Problem, one: Solution) -> Solution:
     if (new == theta).all() or not np.isfinite(one.objective[0]):
         return one
     moved = problem.evaluate(new[None], one.conditions, None, one.scale2, np.array([0]))
-    if not np.isfinite(moved.objective[0]):
+    # far from a bound the slope says nothing of the way there: a law may be flat at both ends
+    most = one.objective[0] * (1 + ON_BOUND) + (0.0 if problem.estimated else ON_BOUND)
+    if not moved.objective[0] <= most:
         return one
     moved.state, moved.iterations = one.state, one.iterations
     return moved

@@ -19,7 +19,6 @@ from discrim.ratelaw.adjoined import (
     with_balances,
     without_roots,
 )
-from discrim.ratelaw.exponents import Layout
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.polynomials import (
     Key,
@@ -31,10 +30,10 @@ from discrim.ratelaw.polynomials import (
     ratio,
     reduced,
 )
-from discrim.ratelaw.printing import plain
 from discrim.ratelaw.relation import Nesting
 from discrim.ratelaw.shifts import factors_that_fit
 from discrim.ratelaw.solve import Progress
+from discrim.ratelaw.terms import Layout, log_of_number
 
 _USUAL_ORDERS = tuple(sympy.Rational(p, q) for p, q in ((0, 1), (1, 2), (1, 1), (2, 1), (-1, 1)))
 _MOST_CHOICES = 64  # combinations of values of orders that are tried
@@ -262,8 +261,18 @@ class Case:
             signed=frozenset(
                 i for i, (base, power) in enumerate(keys) if power == 1 and not base.is_nonnegative
             ),
+            numbers={
+                i: {
+                    atom: e / variables.roots[key] for atom, e in log_of_number(int(key[0])).items()
+                }
+                for i, key in enumerate(keys)
+                if _is_number(key)
+            },
         )
-        independent = _independent(keys[len(unknown) :]) and not self.n_balances
+        independent = (
+            _independent([k for k in keys[len(unknown) :] if not _is_number(k)])
+            and not self.n_balances
+        )
         tuples = self._tuples(pairs, roots, keys, progress)
         if tuples is None:
             return None
@@ -329,6 +338,11 @@ def varies(key: Key) -> bool:
     return any(s.name[0] in "[{" for s in key[0].free_symbols | key[1].free_symbols)
 
 
+def _is_number(key: Key) -> bool:
+    """A power of a whole number, such as 10^(1/2)."""
+    return key[0].is_Integer and key[0] > 0 and key[1] == 1
+
+
 def _could_divide(poly: Any, by_terms_of: Any, layout: Layout) -> bool:
     """Whether a multiple of ``poly`` might have only monomials in the amounts of the other."""
     split = layout.n_constant
@@ -341,15 +355,18 @@ def _could_divide(poly: Any, by_terms_of: Any, layout: Layout) -> bool:
 def _independent(keys: Sequence[Key]) -> bool:
     """Whether the variables are algebraically independent, for generic constants.
 
-    Symbols are; so are symbols to different symbolic orders; so is a function of symbols that
-    stand nowhere else.
+    Symbols are; so are symbols, or one number, to different symbolic orders; so is a function of
+    symbols that stand nowhere else.
     """
     for key in keys:
         base, power = key
         if base.is_Symbol and (power == 1 or (power.is_Symbol and not varies((power, power)))):
             continue
+        others = [k for k in keys if k != key]
+        alone = not any(b.is_number and p == power for b, p in others)
+        if base.is_positive and base.is_number and power.is_Symbol and alone:
+            continue
         own = base.free_symbols | power.free_symbols
-        others = set().union(*(b.free_symbols | p.free_symbols for b, p in keys if (b, p) != key))
-        if not own or own & others:
+        if not own or own & set().union(*(b.free_symbols | p.free_symbols for b, p in others)):
             return False
     return True

@@ -1,14 +1,15 @@
-"""Proof that one law is no case of another by counting terms, whatever the orders of the latter.
+"""Proofs that one law is no case of another that hold whatever the orders of the latter.
 
 Let the smaller law be N/D in lowest terms. Where the larger law, at some orders and constants or in
 a limit, is the same function, its numerator is g*N and its denominator g*D, with g a sum of powers
 of the amounts (real exponents). Each corner of the Newton polytope of N gives at least one corner
-of that of g*N; so the larger law cannot have fewer terms than the smaller one has corners.
+of that of g*N; so the larger law cannot have fewer terms than the smaller one has corners. And the
+highest power of an amount in g*N less that in g*D is the same as in N and D; likewise the lowest.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from itertools import product
 from typing import Any
 
@@ -17,6 +18,7 @@ import sympy
 from discrim.ratelaw.case import Case, varies
 from discrim.ratelaw.polynomials import (
     Key,
+    Variables,
     as_trees,
     collect,
     coprime,
@@ -29,7 +31,7 @@ _MOST_TERMS = 2000
 _MOST_COORDINATES = 5
 
 
-def too_few_terms(case: Case) -> str:
+def ruled_out(case: Case) -> str:
     """Why the larger law cannot become the smaller one, or "" if this does not show it."""
     if case.trouble or case.n_balances or any([*case.roots_larger, *case.roots_smaller]):
         return ""
@@ -53,11 +55,40 @@ def too_few_terms(case: Case) -> str:
         new = _symbols(variables.keys, theirs) - known
         if new:
             return f"it depends on {', '.join(sorted(map(str, new)))}, the other one does not"
+        for symbol in sorted(known, key=str):
+            if not _orders_can_meet(variables, symbol, ours, theirs):
+                return f"its order in {symbol} is another one"
         for mine, other in zip(ours, theirs, strict=True):
             most = len({m[first:] for m in mine})
             if _corners({m[first:] for m in other}) > most:
                 return "it has more different terms in the amounts than the other one can have"
     return ""
+
+
+def _orders_can_meet(
+    variables: Variables, symbol: Any, ours: Sequence[Any], theirs: Sequence[Any]
+) -> bool:
+    """Whether the highest and lowest power of an amount, numerator less denominator, can agree."""
+    n = len(variables.keys)
+    own = [i for i in range(n) if variables.keys[i][0] == symbol]
+    plain = [i for i in own if variables.keys[i][1] == 1]
+    symbolic = [i for i in own if variables.keys[i][1] != 1]
+    if any(symbol in b.free_symbols | p.free_symbols for i, (b, p) in enumerate(variables.keys)
+           if i not in own):  # fmt: skip
+        return True
+    if any(m[i] for poly in ours for m in poly for i in symbolic):
+        return True
+    if len({tuple(m[i] for i in symbolic) for m in theirs[0]}) > 1:
+        return True
+    if len({tuple(m[i] for i in symbolic) for m in theirs[1]}) > 1:
+        return True
+    first, second = next(iter(theirs[0])), next(iter(theirs[1]))
+    if any(first[i] != second[i] for i in symbolic):
+        return False  # an order of the smaller law, where the larger one has numbers
+    above, below = ({sum(m[i] for i in plain) for m in poly} for poly in ours)
+    top, bottom = ({sum(m[i] for i in plain) for m in poly} for poly in theirs)
+    possible = {a - b for a in above for b in below}
+    return max(top) - max(bottom) in possible and min(top) - min(bottom) in possible
 
 
 def _powers(keys: tuple[Key, ...]) -> bool:

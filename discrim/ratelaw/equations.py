@@ -93,6 +93,8 @@ class _System:
                 out[name] = value ** (self.variables.roots[self.keys[i]] / power)
             else:
                 continue
+            if symbol in self.choice:
+                continue
             if out[name] == 0 and symbol.is_nonnegative and name not in redundant:
                 zero.append(name)
         vanish = [case.names[self.unknown[i]] for i in free if i not in tied]
@@ -100,6 +102,8 @@ class _System:
         for symbol in case.without_effect(self.choice, zero):
             vanish.append(case.names[symbol])
             out.pop(case.names[symbol])
+        chosen = {case.names[s] for s, v in self.choice.items() if v == 0 and s.is_nonnegative}
+        zero = [n for n in case.names.values() if n in zero or (n in chosen and n in out)]
         fixed = {
             n: v for n, v in out.items() if v.is_number and n not in zero and n not in redundant
         }

@@ -16,7 +16,7 @@ claimed only if leaving them out altogether already contradicts.
 
 from __future__ import annotations
 
-from collections.abc import Hashable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from itertools import permutations, product
@@ -27,55 +27,21 @@ import sympy
 from discrim.ratelaw.loglinear import Echelon, Log, Row, direction, plus, restricted
 from discrim.ratelaw.polynomials import coprime
 from discrim.ratelaw.shifts import Amounts, factors_that_fit, moved
-from discrim.ratelaw.solve import one_sign
+from discrim.ratelaw.terms import (
+    Coefficient,
+    Larger,
+    Layout,
+    NotMonomial,
+    Smaller,
+    Term,
+    coefficients_of,
+    log_of_number,
+    terms_of,
+)
 
 _MOST_NODES = 4000  # ways of sharing coefficients out that are followed
 _MOST_COMBINATIONS = 300  # of common factors g of several expressions
 _ENOUGH = 8  # solutions among which the best is chosen
-
-
-class NotMonomial(Exception):
-    """A coefficient has no logarithm that can be compared: its sign is not known."""
-
-
-@dataclass(frozen=True, slots=True)
-class Layout:
-    """Which generators of the ring are what: unknowns first, then parameters, then amounts.
-
-    ``signed`` : generators that may be negative
-    """
-
-    n_unknown: int
-    n_parameter: int
-    n: int
-    signed: frozenset[int]
-
-    @property
-    def n_constant(self) -> int:
-        return self.n_unknown + self.n_parameter
-
-
-@dataclass(frozen=True, slots=True)
-class Term:
-    """One product of powers in the larger law: c * constants^exponents, c without its sign."""
-
-    sign: int
-    exponents: Row
-    log: Log
-
-
-@dataclass(frozen=True, slots=True)
-class Coefficient:
-    """A coefficient of the smaller law: its sign (0: either), its logarithm, those of its terms."""
-
-    sign: int
-    log: Log | None
-    terms: tuple[tuple[int, Log], ...]
-
-
-#: For each polynomial of a tuple, by monomial in the amounts.
-Larger = tuple[dict[Amounts, list[Term]], ...]
-Smaller = tuple[dict[Amounts, Coefficient], ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,15 +86,19 @@ def match(
     """
     out = Outcome()
     try:
-        big = [tuple(_terms(p, layout) for p in polys) for polys in larger]
-        small = [tuple(_coefficients(p, layout, out) for p in polys) for polys in smaller]
+        big = [tuple(terms_of(p, layout) for p in polys) for polys in larger]
+        small = [tuple(coefficients_of(p, layout) for p in polys) for polys in smaller]
     except NotMonomial as reason:
         return Outcome(complete=False, reason=str(reason))
     amounts = range(layout.n_constant, layout.n)
     if not all(coprime(polys, amounts) for polys in smaller):
         out.complete = False
-    if any(len({t.sign for t in group}) > 1 for polys in big for d in polys for group in d.values()):
+    if any(
+        len({t.sign for t in group}) > 1 for polys in big for d in polys for group in d.values()
+    ):
         out.complete = False  # terms of opposite sign could cancel
+    if not all(c.generic for polys in small for d in polys for c in d.values()):
+        out.complete = False
     options = []
     for ours, theirs in zip(big, small, strict=True):
         shifts, complete, missing = factors_that_fit(
@@ -155,78 +125,6 @@ def match(
         if not found and out.complete and not out.solutions and not task.refuted(budget):
             out.complete = False
     return out
-
-
-def _terms(poly: Any, layout: Layout) -> dict[Amounts, list[Term]]:
-    """The terms of a polynomial of the larger law, by monomial in the amounts."""
-    out: dict[Amounts, list[Term]] = {}
-    n, split = layout.n_unknown, layout.n_constant
-    for monomial, c in poly.terms():
-        if any(monomial[i] for i in layout.signed if i < split):
-            raise NotMonomial("a constant that may be negative stands outside of an exponent")
-        log = _log_of_number(abs(int(c)))
-        for i in range(n, split):
-            if monomial[i]:
-                log[i] = Fraction(monomial[i])
-        row = {i: monomial[i] for i in range(n) if monomial[i]}
-        out.setdefault(monomial[split:], []).append(Term(1 if c > 0 else -1, row, log))
-    return out
-
-
-def _coefficients(poly: Any, layout: Layout, outcome: Outcome) -> dict[Amounts, Coefficient]:
-    split = layout.n_constant
-    groups: dict[Amounts, dict[Any, Any]] = {}
-    for monomial, c in poly.terms():
-        constant = (*monomial[:split], *(0 for _ in range(split, layout.n)))
-        groups.setdefault(monomial[split:], {})[constant] = c
-    return {
-        amounts: _coefficient(poly.ring.from_dict(terms), layout, outcome)
-        for amounts, terms in groups.items()
-    }
-
-
-def _coefficient(poly: Any, layout: Layout, outcome: Outcome) -> Coefficient:
-    if any(m[i] for m in poly for i in layout.signed):
-        raise NotMonomial("a constant that may be negative stands outside of an exponent")
-    terms = tuple(
-        (1 if c > 0 else -1, _log_of_monomial(abs(int(c)), monomial))
-        for monomial, c in poly.terms()
-    )
-    sign = one_sign(poly, layout.signed)
-    if sign is None:
-        outcome.complete = False
-        return Coefficient(0, None, terms)
-    if len(terms) == 1:
-        return Coefficient(sign, terms[0][1], terms)
-    return Coefficient(sign, _log_of_sum(poly, layout, outcome), terms)
-
-
-def _log_of_monomial(number: int, monomial: Amounts) -> Log:
-    log = _log_of_number(number)
-    log.update({i: Fraction(e) for i, e in enumerate(monomial) if e})
-    return log
-
-
-def _log_of_number(number: int) -> Log:
-    return {("prime", int(p)): Fraction(e) for p, e in sympy.factorint(number).items()}
-
-
-def _log_of_sum(poly: Any, layout: Layout, outcome: Outcome) -> Log:
-    """By irreducible factors; a sum that is not factored is one atom, and nothing is disproven."""
-    plain = poly if poly.LC > 0 else -poly
-    if len(poly) <= 12 and sum(1 for d in poly.degrees() if d) <= 8:
-        number, factors = plain.factor_list()
-        if all(one_sign(f, layout.signed) == 1 for f, _ in factors):
-            log = _log_of_number(abs(int(number)))
-            for factor, power in factors:
-                if len(factor) == 1:
-                    ((monomial, _),) = factor.terms()
-                    log = plus(log, _log_of_monomial(1, monomial), Fraction(power))
-                else:
-                    log = plus(log, {("sum", factor): Fraction(1)}, Fraction(power))
-            return log
-    outcome.complete = False
-    return {("sum", plain): Fraction(1)}
 
 
 @dataclass(frozen=True, slots=True)
@@ -359,9 +257,7 @@ class _Task:
                 for c, e in row.items():
                     total[c] = total.get(c, 0) + weight * e
             tangent = [{c: e for c, e in total.items() if e}]
-        return _State(
-            known, (*state.rows, *rows), (*state.tangent, *tangent), (*state.gone, *gone)
-        )
+        return _State(known, (*state.rows, *rows), (*state.tangent, *tangent), (*state.gone, *gone))
 
     def solve(self, budget: list[int]) -> Iterator[Solution]:
         """Solutions, those that leave most terms in place first."""
@@ -390,9 +286,7 @@ class _Task:
             if new is not None:
                 yield from self._shared_out(new, k + 1, budget)
 
-    def _ways(
-        self, group: _Group
-    ) -> Iterator[tuple[list[tuple[Row, Log]], list[Row], list[int]]]:
+    def _ways(self, group: _Group) -> Iterator[tuple[list[tuple[Row, Log]], list[Row], list[int]]]:
         """Ways for the terms of a group to add up to its coefficient: equations, terms that go to
         zero, and the weights with which the terms count (in any proportion, term by term)."""
         terms, target = group.terms, group.target
@@ -410,7 +304,7 @@ class _Task:
             return
         fitting = [t for t in terms if t.sign == target.sign * group.sign]
         if len(fitting) == m:  # in equal parts
-            share = _log_of_number(m)
+            share = log_of_number(m)
             rows = [group.row(t, plus(target.log, share, Fraction(-1))) for t in terms]
             yield rows, [], [1] * m
         for t in fitting:  # one alone
@@ -422,9 +316,7 @@ class _Task:
         state = self._begin()
         return state is None or self._none_left(state, 0, self.loose, budget)
 
-    def _none_left(
-        self, state: _State, k: int, weak: list[Row], budget: list[int]
-    ) -> bool:
+    def _none_left(self, state: _State, k: int, weak: list[Row], budget: list[int]) -> bool:
         """No values for the groups from ``k`` on; several terms of one may add up in any way."""
         budget[0] -= 1
         if budget[0] <= 0:
@@ -511,19 +403,3 @@ def _simplest(
     whole = {i: int(e * common) for i, e in found.items()}
     shared = int(sympy.igcd(*whole.values())) if len(whole) > 1 else abs(*whole.values())
     return {i: e // shared for i, e in whole.items()}
-
-
-def expression_of(log: Mapping[Hashable, Fraction], symbols: Sequence[Any], as_expr: Any) -> Any:
-    """exp(log) as a sympy expression; ``as_expr`` turns a polynomial into one."""
-    out = sympy.Integer(1)
-    for atom, e in log.items():
-        if isinstance(atom, int):
-            base = symbols[atom]
-        elif isinstance(atom, tuple) and atom[0] == "prime":
-            base = sympy.Integer(atom[1])
-        else:
-            assert isinstance(atom, tuple)
-            base = as_expr(atom[1])
-        out *= base ** sympy.Rational(e.numerator, e.denominator)
-    return out
-

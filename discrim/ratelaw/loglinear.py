@@ -48,9 +48,7 @@ class Echelon:
         self.rows[self._first(row)] = row, right
         return True
 
-    def reduce(
-        self, row: Mapping[int, int], right: Mapping[Hashable, Fraction]
-    ) -> tuple[Row, Log]:
+    def reduce(self, row: Mapping[int, int], right: Mapping[Hashable, Fraction]) -> tuple[Row, Log]:
         """What the known equations leave of one more."""
         now, log = dict(row), dict(right)
         while True:
@@ -158,9 +156,7 @@ def direction(
     return {c: e for c, e in out.items() if e}
 
 
-def _along(
-    row: Mapping[int, int], basis: Sequence[dict[int, Fraction]]
-) -> tuple[Fraction, ...]:
+def _along(row: Mapping[int, int], basis: Sequence[dict[int, Fraction]]) -> tuple[Fraction, ...]:
     """The row applied to each vector, to a common scale."""
     found = [sum((e * v[c] for c, e in row.items() if c in v), Fraction(0)) for v in basis]
     size = max((abs(f) for f in found), default=Fraction(0))
@@ -182,15 +178,10 @@ def _separating(columns: Sequence[tuple[Fraction, ...]]) -> list[Fraction] | Non
         y = [sum((inverse[i][j] for i in artificial), Fraction(0)) for j in range(m)]
         if not any(weights[i] for i in artificial):
             return None
-        for k, column in enumerate(columns):
-            if sum((a * b for a, b in zip(y, column, strict=True) if a and b), Fraction(0)) > 0:
-                break
-        else:
+        entering = next((k for k, column in enumerate(columns) if _dot(y, column) > 0), None)
+        if entering is None:
             return y
-        step = [
-            sum((a * b for a, b in zip(line, column, strict=True) if a and b), Fraction(0))
-            for line in inverse
-        ]
+        step = [_dot(line, columns[entering]) for line in inverse]
         leaving = min(
             (i for i in range(m) if step[i] > 0),
             key=lambda i: (weights[i] / step[i], basis[i]),
@@ -205,4 +196,8 @@ def _separating(columns: Sequence[tuple[Fraction, ...]]) -> list[Fraction] | Non
                     e - times * f for e, f in zip(inverse[i], inverse[leaving], strict=True)
                 ]
                 weights[i] -= times * weights[leaving]
-        basis[leaving] = k
+        basis[leaving] = entering
+
+
+def _dot(a: Sequence[Fraction], b: Sequence[Fraction]) -> Fraction:
+    return sum((x * y for x, y in zip(a, b, strict=True) if x and y), Fraction(0))

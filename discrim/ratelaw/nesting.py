@@ -17,11 +17,12 @@ import sympy
 from discrim.ratelaw import equations
 from discrim.ratelaw.adjoined import same_root
 from discrim.ratelaw.case import Case, Prepared
-from discrim.ratelaw.counting import too_few_terms
-from discrim.ratelaw.exponents import Outcome, Solution, expression_of, match
+from discrim.ratelaw.counting import ruled_out
+from discrim.ratelaw.exponents import Outcome, Solution, match
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.relation import Neither, Nesting, NotProven, Substitution
 from discrim.ratelaw.solve import Progress
+from discrim.ratelaw.terms import expression_of
 
 __all__ = ["Neither", "Nesting", "NotProven", "Substitution", "examine", "nested", "same_law"]
 
@@ -112,7 +113,7 @@ def examine(
         return Neither(disproven)
     if alike is not None:
         return _plainly(case, alike)
-    if case.held and (reason := too_few_terms(case)):
+    if case.held and (reason := ruled_out(case)):
         return Neither(reason)
     if progress.dropped:
         return NotProven(progress.dropped[0], exhaustive=False)
@@ -141,6 +142,11 @@ def _found(
             progress.dropped.append("roots or balances without a closed form")
     elif not settled or not outcome.complete:
         yield from equations.solve(case, prepared, progress)
+
+
+def _chosen_zero(symbol: Any, prepared: Prepared, vanish: Sequence[str], name: str) -> bool:
+    zero = prepared.choice.get(symbol) == 0 and symbol.is_nonnegative
+    return bool(zero) and name not in vanish
 
 
 def _confirmed(case: Case, prepared: Prepared, nesting: Nesting) -> bool:
@@ -179,13 +185,12 @@ def _read(case: Case, prepared: Prepared, solution: Solution) -> Nesting | None:
     limit = bool(solution.combinations) or any(e > 0 for e in solution.along.values())
     values: dict[str, sympy.Expr] = {}
     along: dict[str, tuple[sympy.Expr, sympy.Rational]] = {}
-    zero, infinite = [], []
+    zero: list[str] = []
+    infinite: list[str] = []
     for symbol, name in names.items():
         i = column.get(symbol)
         if symbol in prepared.choice:
             values[name] = prepared.choice[symbol]
-            if values[name] == 0 and symbol.is_nonnegative:
-                zero.append(name)
         elif i is not None and i in solution.logs:
             values[name] = value(solution.logs[i]) ** powers[i]
             rate = solution.along.get(i, 0)
@@ -202,6 +207,7 @@ def _read(case: Case, prepared: Prepared, solution: Solution) -> Nesting | None:
     for symbol in case.without_effect(prepared.choice, zero):
         vanish.append(names[symbol])
         values.pop(names[symbol])
+    zero = [n for s, n in names.items() if n in zero or _chosen_zero(s, prepared, vanish, n)]
     plain_names = {s: sympy.Symbol(n, nonnegative=True) for s, n in names.items()}
     kept = []
     for row, log in solution.combinations:

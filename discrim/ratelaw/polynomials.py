@@ -222,10 +222,7 @@ def _gcd_mod(a: list[int], b: list[int]) -> list[int]:
         inverse = pow(b[-1], -1, _PRIME)
         while len(a) >= len(b):
             times, shift = a[-1] * inverse % _PRIME, len(a) - len(b)
-            a = [
-                (c - times * b[k - shift]) % _PRIME if k >= shift else c
-                for k, c in enumerate(a)
-            ]
+            a = [(c - times * b[k - shift]) % _PRIME if k >= shift else c for k, c in enumerate(a)]
             while a and not a[-1]:
                 a.pop()
         a, b = b, a

@@ -80,6 +80,7 @@ def _assembled(w: Weighed, candidates: list[dict[str, Any]]) -> dict[str, Any]:
         "runs": _runs(w),
         "candidates": candidates,
         "comparisons": [_comparison(w, k) for k in range(len(w.comparisons))],
+        "relations": w.relations.records([c.law.name for c in w.laws]),
         "questions": question_records(w),
         "planes": planes(w),
         "findings": [{"severity": s, "where": p, "says": t} for s, p, t in w.findings],

@@ -21,6 +21,7 @@ from discrim.weigh.asked import Answer, answer, check_questions
 from discrim.weigh.assess import Assessment, assess, fits_of
 from discrim.weigh.bench import Bench, build
 from discrim.weigh.bind import Bound, bind
+from discrim.weigh.embedded import embedded
 from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
 from discrim.weigh.sameness import Relations, relations
@@ -226,44 +227,20 @@ def _no_larger_law_worse(
 ) -> list[dict[str, Fit]]:
     """A law that contains another must fit at least as well: if not, start it from there."""
     out = list(fits)
-    for (larger, smaller), nesting in related.contains.items():
+    for larger, smaller, nesting in related.embeddings():
         for origin, big in out[larger].items():
             small = out[smaller].get(origin)
             if small is None or not small.ok:
                 continue
             if big.ok and big.badness <= small.badness * (1 + 1e-9) + 1e-12:
                 continue
-            near = _embedded(bounds[smaller], bounds[larger], small.theta, nesting.values)
+            near = embedded(
+                bounds[smaller], bounds[larger], small.theta, nesting, big.data.conditions
+            )
             again = fit(bounds[larger].predictor, big.data, seed=seed + 1, starts=32, near=near)
             if again.ok and (not big.ok or again.badness < big.badness):
                 out[larger] = {**out[larger], origin: again}
     return out
-
-
-def _embedded(
-    smaller: Bound, larger: Bound, theta: np.ndarray, values: object
-) -> np.ndarray | None:
-    """The smaller law's constants as constants of the larger one."""
-    from collections.abc import Mapping
-
-    import sympy
-
-    assert isinstance(values, Mapping)
-    at = dict(zip(smaller.names, theta, strict=True))
-    row = []
-    for j, name in enumerate(larger.names):
-        expr = values.get(name)
-        if expr is None:
-            row.append(float(larger.predictor.scale[j]))
-            continue
-        expr = sympy.Float(expr) if isinstance(expr, int | float) else expr
-        numbers = {s: at[s.name] for s in expr.free_symbols if s.name in at}
-        try:
-            row.append(float(expr.subs(numbers)))
-        except (TypeError, ValueError):
-            row.append(float(larger.predictor.scale[j]))
-    out = np.array([row])
-    return out if np.isfinite(out).all() else None
 
 
 def _common_scale(fits: Sequence[dict[str, Fit]], data: Measurements) -> Measurements:
@@ -363,7 +340,9 @@ def _comparisons(
             note = "several constants on the edge: the p-value is conservative"
         elif nesting.edge:
             note = "on the edge: one-sided p is half the two-sided"
-        if test is None:
+        if q < 1:
+            note = "not testable: the special case has as many constants"
+        elif test is None:
             note = "not testable: no degrees of freedom left"
         out.append(Comparison(smaller, larger, nesting.words(), nesting.edge, q, test, note))
     return out
@@ -378,7 +357,7 @@ def _no_better(
     """For each law that stands: a special case of it that stands and loses nothing."""
     out: list[int | None] = [None] * len(stands)
     for c in comparisons:
-        if not (stands[c.larger] and stands[c.smaller]):
+        if c.q < 1 or not (stands[c.larger] and stands[c.smaller]):
             continue
         p = None if c.test is None else c.test.p_one_sided
         if (p is None or p > alpha) and out[c.larger] is None:

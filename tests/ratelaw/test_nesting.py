@@ -69,8 +69,6 @@ NOT_NESTED = [
     ("k*[C]", "k_A*[A] + k_B*[B]"),
     ("k*[A] - q*[B]", "k*[A] + q*[B]"),  # needs a negative constant
     ("k*[A]/(1 + K*[A])", "k*[A]/(1 - K*[A])"),  # likewise
-    ("k*[A]", "Vm*[A]/(Km + [A])"),  # needs infinite constants, which are not counted
-    (PLAIN, "Vm*[S]/(Km*(1 + [I]/Ki) + [S])"),  # likewise
 ]
 
 SAME = [
@@ -187,7 +185,8 @@ def test_other_symbols_and_order_of_constants_change_nothing():
 def test_too_large_is_said_not_guessed():
     terms = " + ".join(f"K{i}*[A{i}]*[B{i}]^2" for i in range(200))
     big = law(f"k*[A]/(1 + {terms})^2")
-    found = examine([big.rate], [big.rate], big.constants, big.constants)
+    other = law(f"k*[A]/(1 + {terms.replace('K', 'L')})^2")
+    found = examine([other.rate], [big.rate], other.constants, big.constants)
     assert found == NotProven("the laws are too large to compare", exhaustive=False)
 
 
