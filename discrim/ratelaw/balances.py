@@ -15,12 +15,13 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from discrim.ratelaw.one_unknown import smallest_root
+
 _CLOSE = 1e-6  # difference of the two logarithms below which the last exact steps are left
 _PLAIN = 1e-10  # balance, relative to the sum of its terms, that a solution must hold
 _ROUNDS = 14  # of Newton's method from one start
 _FAR = 12.0  # longest step in a logarithm (five powers of ten)
 _SHIFTS = (-14.0, 14.0)  # of later starts, in logarithms
-_CAREFUL = 400  # steps of the search for the smallest of several roots
 _GRIDS = (np.arange(-100.0, 101.0, 5.0), np.arange(-140.0, 141.0, 1.0))  # see _nested; logarithms
 _HALVED = 10  # times that a step of this grid is halved before Newton's method goes on
 
@@ -47,6 +48,26 @@ class Balances:
         self._whole = [
             [int(x) if float(x).is_integer() else float(x) for x in row] for row in self.exponents
         ]
+        self._free = ~self.exponents.any(axis=1)  # terms without an unknown
+        # one unknown: terms of one power together, lowest first
+        self._powers, term = np.unique(self.exponents[:, 0], return_inverse=True)
+        self._of_power = [np.flatnonzero(term == k) for k in range(len(self._powers))]
+
+    def delicate(self, coefficients: np.ndarray) -> np.ndarray:
+        """Points, shape (P,), at which a coefficient of zero may let an unknown vanish or escape.
+
+        Elsewhere a term that is zero leaves a solution that the others fix.
+        """
+        zero = coefficients == 0.0
+        if not zero.any():
+            return np.zeros(coefficients.shape[1], bool)
+        if self.n == 1:
+            return np.asarray(zero[self._of_power[0]].all(axis=0))
+        lost = [
+            ~((coefficients[r] > 0).any(axis=0) & (coefficients[r] < 0).any(axis=0))
+            for r in self.rows
+        ]
+        return np.asarray(np.any(lost, axis=0) | zero[self._free].any(axis=0))
 
     def solve(self, coefficients: np.ndarray) -> np.ndarray:
         """The positive solution at each point.
@@ -63,35 +84,19 @@ class Balances:
                 out[:, finite] = self.solve(coefficients[:, finite])
             return out
         with np.errstate(all="ignore"):
-            z = self._one(coefficients) if self.n == 1 else self._several(coefficients)
-            z = self._polished(coefficients, z)
-        return z
+            if self.n == 1:
+                return self._single(coefficients)
+            return self._polished(coefficients, self._several(coefficients))
 
     # ---- one unknown ----------------------------------------------------------------------
 
-    def _one(self, coefficients: np.ndarray) -> np.ndarray:
-        e, term = np.unique(self.exponents[:, 0], return_inverse=True)
-        c = np.array([coefficients[term == k].sum(axis=0) for k in range(len(e))])
-        sign = np.sign(c)
-        first = np.zeros(c.shape[1])
-        last = np.zeros(c.shape[1])
-        changes = np.zeros(c.shape[1], int)
-        for s in sign:
-            first = np.where(first == 0, s, first)
-            changes += (s != 0) & (last != 0) & (s != last)
-            last = np.where(s != 0, s, last)
-        z = np.full((1, c.shape[1]), np.nan)
-        # without a term free of the unknown, and all of one sign: only "none of it" is left
-        z[0, (changes == 0) & (e[0] > 0)] = 0.0
-        single = changes == 1
-        if single.all():
-            z[0] = _unique(c * first, e)
-        elif single.any():
-            z[0, single] = _unique(c[:, single] * first[single], e)
-        more = changes > 1
-        if more.any():
-            z[0, more] = _smallest(c[:, more] * first[more], e)
-        return z
+    def _single(self, coefficients: np.ndarray) -> np.ndarray:
+        e, c = self._powers, coefficients
+        if len(e) < len(c):
+            c = np.array([c[k].sum(axis=0) for k in self._of_power])
+        elif not (np.diff(self.exponents[:, 0]) > 0).all():
+            c = c[np.concatenate(self._of_power)]
+        return smallest_root(c, e)[None]
 
     # ---- several unknowns -----------------------------------------------------------------
 
@@ -232,18 +237,14 @@ class Balances:
             balance = np.abs(left).max(axis=0)
             if k == 3:
                 break
-            if self.n == 1:
-                slope = (self.exponents.T @ terms)[0] / scale[0]
-                step = -left[0:1] / slope
-            else:
-                jac = np.stack(
-                    [
-                        (terms[r] / s).T @ self.exponents[r]
-                        for r, s in zip(self.rows, scale, strict=True)
-                    ],
-                    axis=1,
-                )
-                step = -solved(jac, left.T[..., None])[..., 0].T
+            jac = np.stack(
+                [
+                    (terms[r] / s).T @ self.exponents[r]
+                    for r, s in zip(self.rows, scale, strict=True)
+                ],
+                axis=1,
+            )
+            step = -solved(jac, left.T[..., None])[..., 0].T
             good = np.isfinite(step).all(axis=0) & (np.abs(step).max(axis=0) < 0.1)
             z = np.where(good, z * (1.0 + step), z)
         return np.where(balance < _PLAIN, z, np.nan)
@@ -290,95 +291,3 @@ def solved(a: np.ndarray, b: np.ndarray) -> np.ndarray:
         bad |= ~(np.abs(np.linalg.det(np.where(bad[:, None, None], np.eye(n), a))) > 0)
         x = np.linalg.solve(np.where(bad[:, None, None], np.eye(n), a), b)
         return np.where(bad[:, None, None], np.nan, x)
-
-
-def _unique(c: np.ndarray, e: np.ndarray) -> np.ndarray:
-    """The root of sum_t c_t z^e_t with coefficients first >= 0, then <= 0: one sign change.
-
-    ``c`` shape (T, P), ``e`` rising. Let z* be where the largest terms of both signs are equal;
-    the root is within a factor (number of terms)^(1/least gap of exponents) of it.
-    """
-    size = np.log(np.abs(c))
-    up = c > 0
-    w = np.full(c.shape[1], np.inf)
-    for j in range(1, len(e)):
-        reach = np.full(c.shape[1], -np.inf)
-        for i in range(j):
-            crossing = (size[i] - size[j]) / (e[j] - e[i])
-            reach = np.maximum(reach, np.where(up[i], crossing, -np.inf))
-        w = np.minimum(w, np.where(c[j] < 0, reach, np.inf))
-    # terms over the largest one there; u = z/z*
-    x = size + e[:, None] * w
-    d = np.exp(x - x.max(axis=0))
-    positive = np.where(up, d, 0.0)
-    negative = d - positive
-    width = np.log(len(e)) / max(float(np.diff(e).min()), 1e-3) + 1e-9
-    low, high = np.full(len(w), -width), np.full(len(w), width)
-    v = np.zeros(len(w))
-    going = np.ones(len(w), bool)
-    for _ in range(60):
-        powers = np.exp(e[:, None] * v)
-        p, q = positive * powers, negative * powers
-        p_sum, q_sum = p.sum(axis=0), q.sum(axis=0)
-        f = np.log(q_sum / p_sum)  # rises with v
-        slope = (e @ q) / q_sum - (e @ p) / p_sum
-        high = np.where(f >= 0, v, high)
-        low = np.where(f <= 0, v, low)
-        new = v - f / slope
-        outside = ~((new >= low) & (new <= high))
-        if outside.any():
-            new = np.where(outside, 0.5 * (low + high), new)
-        moving = ~(np.abs(new - v) <= _CLOSE) & going
-        v = np.where(going, new, v)
-        going = moving
-        if not going.any():
-            break
-    return np.asarray(np.exp(w + v))
-
-
-def _smallest(c: np.ndarray, e: np.ndarray) -> np.ndarray:
-    """The smallest positive root where signs change more than once; NaN where there is none.
-
-    ``c`` shape (T, P), its first coefficients that are not zero positive; ``e`` rising. Let P and N
-    be the sums of the terms of both signs and w = log z. From below all roots, where P > N, steps are
-    taken that cannot pass one: log P is convex in w and lies above its tangent; the slope of log N is
-    a mean of its powers, so that log N rises by no more than the highest of them, and its curvature,
-    their variance, is no more than a quarter of their range squared.
-    """
-    size = np.log(np.abs(c))
-    up, down = c > 0, c < 0
-    most = np.where(down, e[:, None], -np.inf).max(axis=0)
-    curve = 0.25 * (most - np.where(down, e[:, None], np.inf).min(axis=0)) ** 2
-    w, high = np.full(c.shape[1], np.inf), np.full(c.shape[1], -np.inf)
-    spare = np.log(2.0 * len(e))
-    for i in range(len(e)):
-        for j in range(i + 1, len(e)):
-            against = (up[i] & down[j]) | (down[i] & up[j])
-            crossing = np.where(against, (size[i] - size[j]) / (e[j] - e[i]), np.nan)
-            w = np.fmin(w, crossing - spare / (e[j] - e[i]))
-            high = np.fmax(high, crossing + spare / (e[j] - e[i]))
-    root = np.full(c.shape[1], np.nan)
-    go = np.arange(c.shape[1])
-    for _ in range(_CAREFUL):
-        x = size + e[:, None] * w
-        t = np.exp(x - x.max(axis=0))
-        p, q = np.where(up, t, 0.0), np.where(down, t, 0.0)
-        p_sum, q_sum = p.sum(axis=0), q.sum(axis=0)
-        f = np.maximum(np.log(p_sum / q_sum), 0.0)
-        p_slope, q_slope = (e @ p) / p_sum, (e @ q) / q_sum
-        closing = q_slope - p_slope
-        root_of = np.sqrt(closing**2 + 2.0 * curve * f)
-        # of two forms of the root of f - closing*d - curve*d^2/2 the one that does not cancel
-        bent = np.where(closing > 0, 2.0 * f / (closing + root_of), (root_of - closing) / curve)
-        straight = np.where(most > p_slope, f / (most - p_slope), np.inf)
-        step = np.fmax(bent, straight)
-        done = step <= _CLOSE
-        root[go[done]] = (w + step)[done]
-        keep = ~done & (w + step <= high)
-        if not keep.any():
-            break
-        w = (w + step)[keep]
-        if not keep.all():
-            go, high, most, curve = go[keep], high[keep], most[keep], curve[keep]
-            size, up, down = size[:, keep], up[:, keep], down[:, keep]
-    return np.asarray(np.exp(root))

@@ -76,7 +76,7 @@ class ImplicitFunctions:
         for balances, function, count, _ in self.solvers:
             inputs = [*args, *found]
             c = _stacked(function(*inputs), count, shape)
-            zero = (c == 0.0).any(axis=0)
+            zero = balances.delicate(c)
             if zero.any():
                 z = np.empty((balances.n, c.shape[1]))
                 z[:, ~zero] = balances.solve(c[:, ~zero])
