@@ -1,6 +1,7 @@
 """Makes the speed figures that the repository keeps: ``python -m tests.benchmarks.run``.
 
-Writes ``figures.md`` beside this file (under a minute). Run it on an otherwise idle machine.
+Writes ``figures.md`` beside this file (some ten minutes, most of them plain routes that are
+stopped). Run it on an otherwise idle machine.
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ from pathlib import Path
 
 import numpy as np
 
+from tests.benchmarks import derive_speed
 from tests.benchmarks.fit_speed import RUNS, STARTS, ratios
 
 HERE = Path(__file__).parent
@@ -63,6 +65,8 @@ def main() -> None:
         f"| `discrim weigh` on the first demo | {weigh:.2f} s | |",
         f"| bare imports (`{IMPORTS}`) | {bare:.2f} s | |",
         f"| weigh over imports | {weigh / bare:.2f} | at most 4 |",
+        "",
+        *derive_speed.lines(),
     ]
     (HERE / "figures.md").write_text("\n".join(lines) + "\n", encoding="utf-8")
     print("\n".join(lines))
