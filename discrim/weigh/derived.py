@@ -11,6 +11,7 @@ from discrim.ratelaw.printing import latex, mathml, plain
 from discrim.ratelaw.supporting import supporting
 from discrim.study.model import Study
 from discrim.weigh.laws import CandidateLaw, laws_of
+from discrim.weigh.sameness import relations_of_laws
 
 
 def law_keys(c: CandidateLaw) -> dict[str, Any]:
@@ -105,25 +106,16 @@ def _limit(x: Limit) -> dict[str, Any]:
 
 
 def derive_study(study: Study) -> list[dict[str, Any]]:
-    """Each candidate's law, and which are the same."""
+    """Each candidate's law, which are the same, and how each is related to the others."""
     laws = laws_of(study)
+    related = relations_of_laws(laws, study)
+    names = [c.law.name for c in laws]
+    records = related.records(names)
     out = [law_keys(c) for c in laws]
-    same = _same(laws)
     for i, d in enumerate(out):
-        d["same_law_as"] = [laws[j].law.name for j in same.get(i, [])]
-    return out
-
-
-def _same(laws: list[CandidateLaw]) -> dict[int, list[int]]:
-    from discrim.ratelaw.nesting import same_law
-
-    out: dict[int, list[int]] = {}
-    for i in range(len(laws)):
-        for j in range(i + 1, len(laws)):
-            a, b = laws[i], laws[j]
-            if same_law(a.bound, b.bound, a.law.constants, b.law.constants) is not None:
-                out.setdefault(i, []).append(j)
-                out.setdefault(j, []).append(i)
+        twins = [j for pair in related.same for j in pair if i in pair and j != i]
+        d["same_law_as"] = [names[j] for j in sorted(twins)]
+        d["relations"] = [r for r in records if names[i] in (r["a"], r["b"])]
     return out
 
 
