@@ -68,10 +68,14 @@ def check_sources(mechanism: Mechanism, intermediates: Iterable[Species]) -> Non
                 if left <= there and not right <= there:
                     there |= right
                     more = True
-    for species in every:
-        if species in there:
-            continue
-        step = next(s for s in mechanism.steps if any(species in right for _, right in _ways(s)))
+    missing = [s for s in every if s not in there]
+    if not any(s.site for s in missing) and not any(
+        sum(n for s, n in net(step).items() if s not in there) for step in mechanism.steps
+    ):
+        return  # forms of a catalyst that is not named as one; the derivation says so
+    for species in missing:
+        makes = [s for s in mechanism.steps if any(species in right for _, right in _ways(s))]
+        step = (makes or mechanism.steps)[0]
         itself = all(
             species in left for s in mechanism.steps for left, right in _ways(s) if species in right
         )
@@ -165,8 +169,8 @@ def check_limiting(mechanism: Mechanism, routes: Routes) -> None:
     raise DiscrimError(
         f'the limiting step "{name}" carries no net rate',
         place=step.place or mechanism.place,
-        do="It leads nowhere: no pathway from reactants to products runs through it. Steps that "
-        f"carry one: {_listed(others)}.",
+        do="It leads nowhere: no pathway from reactants to products runs through it. Name another "
+        f"step as limiting; {_listed(others)} carry a net rate.",
     )
 
 

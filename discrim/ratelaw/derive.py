@@ -16,7 +16,10 @@ from typing import Any
 import sympy
 
 from discrim.errors import DiscrimError
+from discrim.mechanism.claims import check_limiting, check_limiting_shows, check_sources
 from discrim.mechanism.model import Mechanism, Species
+from discrim.mechanism.routes import routes_of
+from discrim.mechanism.unlikely import notes_of, warnings_of
 from discrim.ratelaw.derive_algebra import Algebra, Quotient, add, times
 from discrim.ratelaw.derive_equilibria import backward, equilibrium, forward
 from discrim.ratelaw.derive_network import (
@@ -60,6 +63,9 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         to each other by equilibrated steps, or when nothing has a net rate.
     """
     network = classify(mechanism, measured)
+    check_sources(mechanism, network.intermediates)
+    routes = routes_of(mechanism, network.intermediates)
+    check_limiting(mechanism, routes)
     overall = _overall(network)
     fluxes = _fluxes(network)
     solution = solve(network, _wanted(network, overall, fluxes))
@@ -94,6 +100,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     rate = solution.put_roots(rate)
     production = {name: solution.put_roots(e) for name, e in production.items()}
     constants = _constants(network, [rate, *production.values()])
+    check_limiting_shows(mechanism, [c.name for c in constants])
     used = set().union(*(e.free_symbols for e in (rate, *production.values())))
     law = RateLaw(
         name=mechanism.name,
@@ -117,7 +124,10 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             *network.findings,
             *_silent(network, solution, constants),
             *roots_words(solution),
+            *notes_of(mechanism, routes, measured),
         ),
+        routes=routes.routes,
+        warnings=warnings_of(mechanism, routes),
     )
     lumped = lump(
         law,

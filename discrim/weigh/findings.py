@@ -27,6 +27,7 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
         where = f"candidate “{c.law.name}”"
         if a.fit.status is not FitStatus.CONVERGED:
             out.append(("warning", where, a.fit.status.value))
+        out += [("warning", where, s) for s in c.law.warnings]
         out += [("note", where, s) for s in (*c.law.findings, *a.bound.findings)]
         zero = [n for n, b in zip(a.bound.names, a.fit.at_bound, strict=True) if b]
         if zero:
@@ -46,11 +47,29 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
                     f"{a.fit.p} constants for {a.fit.n} observations: the fit tests nothing",
                 )
             )
+    out += _same(w)
     out += _weak(w)
     out += _columns(w)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
     return tuple(dict.fromkeys(out))
+
+
+def _same(w: Weighed) -> list[Finding]:
+    """Candidates that are one law, written in two ways: no error, but the reader must know."""
+    out: list[Finding] = []
+    for (i, j), substitution in w.relations.same.items():
+        words = substitution.words()
+        out.append(
+            (
+                "note",
+                f"candidates “{w.laws[i].law.name}” and “{w.laws[j].law.name}”",
+                "two ways to write the same law"
+                + (f" ({words})" if words else "")
+                + ": they count once, and no rate can tell them apart",
+            )
+        )
+    return out
 
 
 def _weak(w: Weighed) -> list[Finding]:
