@@ -34,7 +34,7 @@ def _written_twice(steps: Sequence[Step]) -> None:
         left, right = frozenset(step.left), frozenset(step.right)
         twin, mirror = seen.get((left, right)), seen.get((right, left))
         if twin is not None:
-            less = step if twin.reversible else twin
+            less = twin if step.reversible and not twin.reversible else step
             raise DiscrimError(
                 f'step "{step.name}" is the same as step "{twin.name}"',
                 place=step.place,
