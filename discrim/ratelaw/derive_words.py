@@ -214,13 +214,10 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
                 for symbol, e in zip(root.symbols, root.values, strict=True)
             ]
     for species, m in solution.monomials.items():
-        if species not in known:
-            lines.append(
-                (
-                    f"So for {species.name}",
-                    sympy.Eq(amount(species.name), value(m), evaluate=False),
-                )
-            )
+        symbol, solved = amount(species.name), value(m)
+        itself = solved.is_Symbol and solved.name == symbol.name  # a root that stays a symbol
+        if species not in known and not itself:
+            lines.append((f"So for {species.name}", sympy.Eq(symbol, solved, evaluate=False)))
     for family, total in zip(network.families, solution.totals, strict=True):
         what = "Vacant sites" if family.kind == "sites" else "Free catalyst, as fraction of all,"
         words = f"{what} {family.reference.name} from the sum"

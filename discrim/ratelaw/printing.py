@@ -91,6 +91,10 @@ def _plain_in(node: Layout, needed: int) -> str:
     return text if _binds(node) >= needed else f"({text})"
 
 
+def _is_called(node: Layout) -> bool:
+    return isinstance(node, Call) and node.function != "sqrt"
+
+
 def _binds(node: Layout) -> int:
     if isinstance(node, Sum | Equation):
         return _SUM
@@ -120,7 +124,10 @@ def _latex(node: Layout) -> str:
     if isinstance(node, Power):
         lone = isinstance(node.exponent, Product) and not _plain(node.exponent).strip("0123456789/")
         exponent = _plain(node.exponent) if lone else _latex(node.exponent)
-        return f"{_latex_in(node.base, _ATOM)}^{{{exponent}}}"
+        base = _latex_in(node.base, _ATOM)
+        if _is_called(node.base):  # log(x)^2 could be read as log(x^2)
+            base = rf"\left({base}\right)"
+        return f"{base}^{{{exponent}}}"
     if isinstance(node, Call):
         inner = ", ".join(_latex(p) for p in node.parts)
         if node.function == "sqrt":
@@ -195,7 +202,10 @@ def _mathml(node: Layout) -> str:
         top = _mathml_factors(node.above)
         return f"<mfrac>{top}{_mathml_factors(node.below)}</mfrac>" if node.below else top
     if isinstance(node, Power):
-        return f"<msup>{_mathml_in(node.base, _ATOM)}{_mathml(node.exponent)}</msup>"
+        base = _mathml_in(node.base, _ATOM)
+        if _is_called(node.base):
+            base = f"<mrow><mo>(</mo>{base}<mo>)</mo></mrow>"
+        return f"<msup>{base}{_mathml(node.exponent)}</msup>"
     if isinstance(node, Call):
         inner = "<mo>,</mo>".join(_mathml(p) for p in node.parts)
         if node.function == "sqrt":

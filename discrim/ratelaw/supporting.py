@@ -47,9 +47,8 @@ def supporting(law: RateLaw, limits: Sequence[Limit], orders: Sequence[ApparentO
     if law.steps:
         rows = [rf"\text{{{text(n)}}}\colon\quad & {equation(t)}" for n, t in law.steps.items()]
         out += [r"\paragraph{Steps}", *_aligned(rows)]
-    routes = getattr(law, "routes", ())
-    if routes:
-        rows = [rf"\text{{{text(r.words())}}}\colon\quad & {equation(r.text)}" for r in routes]
+    if law.routes:
+        rows = [rf"\text{{{text(r.words())}}}\colon\quad & {equation(r.text)}" for r in law.routes]
         out += [r"\paragraph{Pathways}", *_aligned(rows)]
     if law.steps:
         out += [

@@ -51,13 +51,18 @@ def _law(limit: Any) -> str:
     return read.text(limit, "law")
 
 
+def _told(limit: Any) -> str:
+    """The law, or why there is none."""
+    return _law(limit) or read.text(limit, "words")
+
+
 def _lines(limits: list[Any], orders: dict[str, Any]) -> tuple[Case, ...]:
     out: list[Case] = []
     starts: list[int] = []
     for species in dict.fromkeys(read.text(x, "species") for x in limits):
         here = [x for x in limits if read.text(x, "species") == species]
         starts.append(len(out))
-        if len(here) == 2 and _law(here[0]) and _law(here[0]) == _law(here[1]):
+        if len(here) == 2 and _told(here[0]) == _told(here[1]):
             exact = here[0].get("exact") is True
             out.append(_case(here[0], "any" if exact else "low and high", bare=exact))
             continue

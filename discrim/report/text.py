@@ -14,7 +14,7 @@ from discrim.report.read import Document
 from discrim.report.wrapping import wrap_latex
 
 #: Lines of a long formula that are printed, and where the rest is.
-_MOST, _FEW, _REST = 12, 6, "; all of it with --json"
+_MOST, _FEW, _REST = 24, 16, "; all of it with --json"
 _PAIRS = 12  # pairs of laws that are named in one line
 
 #: Columns that only the HTML report shows.
@@ -114,11 +114,11 @@ def _candidates(paper: Paper, content: Content) -> None:
         paper.heading("Rate laws")
         for item in laws:
             paper.say(item.name, indent=2)
-            paper.formula(item.text, indent=4, most=_FEW, rest=" in the report")
+            paper.formula(item.text, indent=4, most=6, rest=" in the report")
             if item.balances:
                 paper.say(item.balance_words, indent=4)
                 for formula, _ in item.balances:
-                    paper.formula(formula, indent=6, most=_FEW, rest=" in the report")
+                    paper.formula(formula, indent=6, most=6, rest=" in the report")
 
 
 def _constants(paper: Paper, content: Content) -> None:
@@ -184,7 +184,9 @@ def _law(paper: Paper, item: Law) -> None:
     if item.routes:
         paper.blank()
         paper.say("Pathways" if len(item.routes) > 1 else "Overall", indent=2)
-        paper.pairs(item.routes, indent=4)
+        lead = 2 + min(max(len(equation) for equation, _ in item.routes), paper.width // 2)
+        for equation, steps in item.routes:
+            paper.say(f"{equation:<{lead - 2}}  {steps}", indent=4, hang=4 + lead)
     _derivation(paper, item)
     for heading, lines in item.limits:
         _cases(paper, heading, lines)

@@ -7,7 +7,7 @@ import re
 # Where LaTeX may end a line: at blanks (but for that of a name, which is "\ "), after "\,", before a
 # command and between the arguments of one.
 _LATEX_GAP = re.compile(
-    r"(?<!\\) +|\\,|(?=\\(?:left|right|frac|sqrt|log|exp|mathrm)\b)|(?<=\})(?=\{)"
+    r"(?<!\\) +|\\,|(?<![\[{])(?=\\(?:left|right|frac|sqrt|log|exp|mathrm)\b)|(?<=\})(?=\{)"
 )
 
 
@@ -31,8 +31,8 @@ def wrap(text: str, width: int = 80, indent: str = "    ") -> str:
 
 def _break(text: str, room: int) -> int | None:
     """Where to break, or None: in the last two thirds of the line at the shallowest operator, a sign
-    or a slash rather than a product; else the last that fits."""
-    places: list[tuple[int, bool, int]] = []  # (depth, product, first character of the next line)
+    rather than a slash and that rather than a product; else the last that fits."""
+    places: list[tuple[int, int, int]] = []  # (depth, kind, first character of the next line)
     depth, inside = 0, False
     for i, ch in enumerate(text):
         if ch == "[":
@@ -45,10 +45,12 @@ def _break(text: str, room: int) -> int | None:
             depth += 1
         elif ch == ")":
             depth -= 1
-        elif (ch in "+-" and i > 0 and text[i - 1] == " ") or (ch == "/" and i > 0):
-            places.append((depth, False, i))
+        elif ch in "+-" and i > 0 and text[i - 1] == " ":
+            places.append((depth, 0, i))
+        elif ch == "/" and i > 0:
+            places.append((depth, 1, i))
         elif ch == "*":
-            places.append((depth, True, i + 1))
+            places.append((depth, 2, i + 1))
     fits = [p for p in places if 0 < p[2] <= room]
     late = [p for p in fits if 3 * p[2] >= room]
     if late:

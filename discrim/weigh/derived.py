@@ -5,6 +5,9 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
+import sympy
+
+from discrim.ratelaw.implicit import balances_of
 from discrim.ratelaw.limits import Limit, apparent_orders, limits_of, order_text
 from discrim.ratelaw.model import RateLaw
 from discrim.ratelaw.printing import latex, mathml, plain
@@ -35,6 +38,7 @@ def _of_law(law: RateLaw) -> dict[str, Any]:
         "step_law": plain(law.step_rate) if lumped else "",
         "step_law_latex": latex(law.step_rate) if lumped else "",
         "step_law_mathml": mathml(law.step_rate) if lumped else "",
+        "balances": _balances(law.rate),
         "steps": dict(law.steps),
         "source": law.source,
         "assumptions": list(law.assumptions),
@@ -71,7 +75,7 @@ def _of_law(law: RateLaw) -> dict[str, Any]:
                 "words": r.words(),
                 "overall": dict(r.overall),
             }
-            for r in getattr(law, "routes", ())
+            for r in law.routes
         ],
         "limits": [_limit(x) for x in limits],
         "apparent_orders": [
@@ -86,7 +90,24 @@ def _of_law(law: RateLaw) -> dict[str, Any]:
         ],
         "production": {k: plain(e) for k, e in law.production.items()},
         "findings": list(law.findings),
+        "warnings": list(law.warnings),
     }
+
+
+def _balances(rate: Any) -> list[dict[str, Any]]:
+    """What the law's unknowns solve, where it has no closed form: one equation for each."""
+    out = []
+    for unknown, balance in balances_of(rate):
+        equation = sympy.Eq(0, balance, evaluate=False)
+        out.append(
+            {
+                "unknown": plain(unknown),
+                "text": plain(equation),
+                "latex": latex(equation),
+                "mathml": mathml(equation),
+            }
+        )
+    return out
 
 
 def _limit(x: Limit) -> dict[str, Any]:

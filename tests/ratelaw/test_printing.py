@@ -152,6 +152,13 @@ def test_wrapping_breaks_at_shallow_operators_and_never_inside_a_name():
     assert wrap("x" * 90, 60) == "x" * 90
 
 
+def test_the_power_of_a_function_is_not_a_power_inside_it():
+    log_squared = read("log([A])^2")
+    assert latex(log_squared) == r"\left(\log\left([\mathrm{A}]\right)\right)^{2}"
+    assert "<msup><mrow><mo>(</mo><mrow><mi>log</mi>" in mathml(log_squared)
+    assert plain(log_squared) == "log([A])^2"
+
+
 def test_names_that_differ_in_case_keep_one_order():
     one, two = constant_symbol("k_a"), constant_symbol("k_A")
     assert plain(one * two) == plain(two * one)
