@@ -26,6 +26,7 @@ from discrim.ratelaw.derive import derive
 from discrim.ratelaw.derive_network import classify
 from discrim.ratelaw.model import Constant, RateLaw
 from discrim.ratelaw.nesting import Nesting, nested
+from discrim.ratelaw.zeroed import zeroed
 
 ALL_SETS = 6  # pathways; beyond, only sets without one or two of them
 MOST_SETS = 80
@@ -234,7 +235,12 @@ def _production(outside: Sequence[str]) -> Callable[[RateLaw, RateLaw], Pair]:
             seen = [next(iter(a.stoichiometry))]
         none = sympy.Integer(0)
         rows = [(a.production.get(s, none), b.production.get(s, none)) for s in seen]
-        rows = [r for r in rows if r[0] != 0 or r[1] != 0]
+        # what one makes another consumes often enough; said once is enough
+        kept: dict[Any, None] = {}
+        for x, y in rows:
+            if (x != 0 or y != 0) and (-x, -y) not in kept:
+                kept.setdefault((x, y))
+        rows = list(kept)
         return [r[0] for r in rows], [r[1] for r in rows], a.constants, b.constants
 
     return paired
@@ -293,7 +299,9 @@ class _Growing:
 
     def _nested(self, i: int, j: int) -> Nesting | None:
         one, other, ca, cb = self.paired(self.nodes[i].law, self.nodes[j].law)
-        return nested(one, other, ca, cb) if len(ca) <= len(cb) else None
+        if len(ca) > len(cb):
+            return None
+        return zeroed(one, other, ca, cb) or nested(one, other, ca, cb)
 
 
 def _above(edges: Sequence[Edge], start: int) -> set[int]:
