@@ -338,6 +338,11 @@ def varies(key: Key) -> bool:
     return any(s.name[0] in "[{" for s in key[0].free_symbols | key[1].free_symbols)
 
 
+def shown(symbol: Any) -> str:
+    """An amount or quantity as users write it: [A], T."""
+    return str(symbol.name).strip("{}")
+
+
 def _is_number(key: Key) -> bool:
     """A power of a whole number, such as 10^(1/2)."""
     return key[0].is_Integer and key[0] > 0 and key[1] == 1

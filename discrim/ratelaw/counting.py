@@ -15,7 +15,7 @@ from typing import Any
 
 import sympy
 
-from discrim.ratelaw.case import Case, varies
+from discrim.ratelaw.case import Case, shown, varies
 from discrim.ratelaw.polynomials import (
     Key,
     Variables,
@@ -54,10 +54,10 @@ def ruled_out(case: Case) -> str:
         known = _symbols(variables.keys, ours)
         new = _symbols(variables.keys, theirs) - known
         if new:
-            return f"it depends on {', '.join(sorted(map(str, new)))}, the other one does not"
+            return f"it depends on {', '.join(sorted(map(shown, new)))}, the other one does not"
         for symbol in sorted(known, key=str):
             if not _orders_can_meet(variables, symbol, ours, theirs):
-                return f"its order in {symbol} is another one"
+                return f"its order in {shown(symbol)} is another one"
         for mine, other in zip(ours, theirs, strict=True):
             most = len({m[first:] for m in mine})
             if _corners({m[first:] for m in other}) > most:

@@ -17,14 +17,12 @@ claimed only if leaving them out altogether already contradicts.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from itertools import permutations, product
 from typing import Any
 
-import sympy
-
-from discrim.ratelaw.loglinear import Echelon, Log, Row, direction, plus, restricted
+from discrim.ratelaw.loglinear import Echelon, Log, Row, direction, plus, restricted, simplest
 from discrim.ratelaw.polynomials import coprime
 from discrim.ratelaw.shifts import Amounts, factors_that_fit, moved
 from discrim.ratelaw.terms import (
@@ -91,23 +89,18 @@ def match(
     except NotMonomial as reason:
         return Outcome(complete=False, reason=str(reason))
     amounts = range(layout.n_constant, layout.n)
-    if not all(coprime(polys, amounts) for polys in smaller):
-        out.complete = False
-    if any(
-        len({t.sign for t in group}) > 1 for polys in big for d in polys for group in d.values()
-    ):
-        out.complete = False  # terms of opposite sign could cancel
-    if not all(c.generic for polys in small for d in polys for c in d.values()):
-        out.complete = False
+    in_lowest_terms = all(coprime(polys, amounts) for polys in smaller)
+    out.complete = in_lowest_terms and all(
+        c.generic for polys in small for d in polys for c in d.values()
+    )
     options = []
     for ours, theirs in zip(big, small, strict=True):
         shifts, complete, missing = factors_that_fit(
             [set(d) for d in ours], [set(d) for d in theirs]
         )
-        out.complete = out.complete and complete
         if not shifts:
-            out.reason = missing
-            return out
+            return Outcome(complete=in_lowest_terms and complete, reason=missing)
+        out.complete = out.complete and complete
         options.append(shifts)
     out.reason = "no constants of the other one, zero and infinity included, give its coefficients"
     budget = [_MOST_NODES]
@@ -178,7 +171,11 @@ class _Task:
         self.fixed: list[_Group] = []  # one term of the larger law for one coefficient
         self.shared: list[_Group] = []  # several terms for one coefficient
         self.gone: list[Row] = []  # terms without a partner
-        self.loose: list[Row] = []  # terms on which parts of g add up, in a way left open
+        self.loose = False  # parts of g add up somewhere
+        # what is sure of terms that go to zero, and of those that stay finite: of terms of opposite
+        # sign in one coefficient nothing is, they may cancel
+        self.sure_gone: list[Row] = []
+        self.sure_finite: list[Row] = []
         self.possible = True
         for scale, ours, theirs, shifts in zip(self.scales, larger, smaller, factors, strict=True):
             parts: list[int | None] = [None]
@@ -210,16 +207,18 @@ class _Task:
                 met.setdefault(moved(amounts, shift), []).append((k, target))
         for amounts, terms in larger.items():
             lines = [self._less(t, scale) for t in terms]
+            one_sign = len({t.sign for t in terms}) == 1
             here = met.pop(amounts, [])
             if not here:
                 self.gone += lines
+                self.sure_gone += lines if one_sign else []
             elif len(here) > 1:
-                self.loose += lines
+                self.loose = True
+                self.sure_finite += lines if one_sign else []
             else:
                 ((k, target),) = here
-                signs = {t.sign for t in terms}
-                if len(signs) == 1 and target.sign:
-                    sign = signs.pop() * target.sign
+                if one_sign and target.sign:
+                    sign = terms[0].sign * target.sign
                     self.possible = self.possible and turned.setdefault(k, sign) == sign
                 groups.append((k, terms, target))
         if any(len(here) == 1 for here in met.values()):
@@ -314,22 +313,34 @@ class _Task:
     def refuted(self, budget: list[int]) -> bool:
         """Whether it is proven that this choice of g leads to no solution."""
         state = self._begin()
-        return state is None or self._none_left(state, 0, self.loose, budget)
+        if state is None:
+            return True
+        finite, shared = list(self.sure_finite), []
+        for group in self.shared:
+            if len({t.sign for t in group.terms}) == 1:
+                if group.target.log is None:
+                    finite += [self._less(t, group.scale) for t in group.terms]
+                else:
+                    shared.append(group)
+        sure = replace(state, gone=tuple(self.sure_gone))
+        return self._none_left(sure, shared, finite, budget)
 
-    def _none_left(self, state: _State, k: int, weak: list[Row], budget: list[int]) -> bool:
-        """No values for the groups from ``k`` on; several terms of one may add up in any way."""
+    def _none_left(
+        self, state: _State, shared: Sequence[_Group], weak: list[Row], budget: list[int]
+    ) -> bool:
+        """No values for the groups that are left; several terms of one may add up in any way."""
         budget[0] -= 1
         if budget[0] <= 0:
             return False
-        if k == len(self.shared):
+        if not shared:
             return direction(self._moves(state.known), state.gone, weak) is None
-        group = self.shared[k]
+        group, rest = shared[0], shared[1:]
         lines = [self._less(t, group.scale) for t in group.terms]
-        if not self._none_left(state, k + 1, weak + lines, budget):
+        if not self._none_left(state, rest, weak + lines, budget):
             return False
         for i, t in enumerate(group.terms):
             new = self._with(state, [group.row(t)], lines[:i] + lines[i + 1 :])
-            if new is not None and not self._none_left(new, k + 1, weak, budget):
+            if new is not None and not self._none_left(new, rest, weak, budget):
                 return False
         return True
 
@@ -339,7 +350,7 @@ class _Task:
 
     def _solution(self, state: _State) -> Solution | None:
         moves = self._moves(state.known)
-        along = _simplest(moves, state.gone, self.scales, self.n)
+        along = simplest(moves, state.gone, self.scales, self.n)
         if along is None:
             return None
         moving = [i for i in range(self.n) if along.get(i)]
@@ -372,34 +383,3 @@ class _Task:
             redundant,
             tuple(combined),
         )
-
-
-def _simplest(
-    moves: list[dict[int, Fraction]], gone: Sequence[Row], scales: Sequence[int], n: int
-) -> dict[int, int] | None:
-    """A direction along which the terms vanish: few constants, to zero rather than to infinity."""
-    if not gone:
-        return {}
-    finite = restricted(moves, scales)
-    falling: list[Row] = [{i: 1} for i in range(n)]
-    if direction(finite, gone, falling) is not None:
-        basis, weak = finite, falling
-    else:
-        basis, weak = moves, []
-        if direction(basis, gone) is None:
-            return None
-        for i in reversed(range(n)):
-            if direction(basis, gone, [*weak, {i: 1}]) is not None:
-                weak.append({i: 1})
-    for i in reversed(range(n)):
-        fewer = restricted(basis, [i])
-        if len(fewer) < len(basis) and direction(fewer, gone, weak) is not None:
-            basis = fewer
-    found = direction(basis, gone, weak)
-    assert found is not None
-    common = 1
-    for e in found.values():
-        common = common * e.denominator // sympy.igcd(common, e.denominator)
-    whole = {i: int(e * common) for i, e in found.items()}
-    shared = int(sympy.igcd(*whole.values())) if len(whole) > 1 else abs(*whole.values())
-    return {i: e // shared for i, e in whole.items()}

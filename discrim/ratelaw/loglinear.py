@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Hashable, Iterable, Mapping, Sequence
 from fractions import Fraction
-from math import gcd
+from math import gcd, lcm
 
 Row = dict[int, int]  # column -> coefficient, none of them zero
 Log = dict[Hashable, Fraction]  # atom -> exponent, none of them zero
@@ -154,6 +154,41 @@ def direction(
         for c, e in vector.items():
             out[c] = out.get(c, Fraction(0)) + times * e
     return {c: e for c, e in out.items() if e}
+
+
+def simplest(
+    moves: list[dict[int, Fraction]], gone: Sequence[Row], scales: Sequence[int], n: int
+) -> dict[int, int] | None:
+    """A direction along which the terms vanish: few constants, to zero rather than to infinity.
+
+    Parameters
+    ----------
+    moves : directions that are allowed; gone : rows that must decrease
+    scales : columns that stay if possible; n : columns 0 to n - 1 are constants
+    """
+    if not gone:
+        return {}
+    finite = restricted(moves, scales)
+    falling: list[Row] = [{i: 1} for i in range(n)]
+    if direction(finite, gone, falling) is not None:
+        basis, weak = finite, falling
+    else:
+        basis, weak = moves, []
+        if direction(basis, gone) is None:
+            return None
+        for i in reversed(range(n)):
+            if direction(basis, gone, [*weak, {i: 1}]) is not None:
+                weak.append({i: 1})
+    for i in reversed(range(n)):
+        fewer = restricted(basis, [i])
+        if len(fewer) < len(basis) and direction(fewer, gone, weak) is not None:
+            basis = fewer
+    found = direction(basis, gone, weak)
+    assert found is not None
+    common = lcm(*(e.denominator for e in found.values()))
+    whole = {i: int(e * common) for i, e in found.items()}
+    shared = gcd(*whole.values())
+    return {i: e // shared for i, e in whole.items()}
 
 
 def _along(row: Mapping[int, int], basis: Sequence[dict[int, Fraction]]) -> tuple[Fraction, ...]:

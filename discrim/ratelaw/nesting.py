@@ -19,6 +19,7 @@ from discrim.ratelaw.adjoined import same_root
 from discrim.ratelaw.case import Case, Prepared
 from discrim.ratelaw.counting import ruled_out
 from discrim.ratelaw.exponents import Outcome, Solution, match
+from discrim.ratelaw.frozen import frozen
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.relation import Neither, Nesting, NotProven, Substitution
 from discrim.ratelaw.solve import Progress
@@ -113,12 +114,26 @@ def examine(
         return Neither(disproven)
     if alike is not None:
         return _plainly(case, alike)
-    if case.held and (reason := ruled_out(case)):
-        return Neither(reason)
+    if case.held:
+        reason = ruled_out(case) or _ruled_out_where_fixed(case, constants_smaller)
+        if reason:
+            return Neither(reason)
     if progress.dropped:
         return NotProven(progress.dropped[0], exhaustive=False)
     said = "no finite values >= 0 of the constants of the larger law give the smaller one"
     return NotProven(said, exhaustive=not case.held)
+
+
+def _ruled_out_where_fixed(case: Case, constants_smaller: Sequence[Constant]) -> str:
+    """Why the laws differ even where what their orders act on is fixed, or ""."""
+    found = frozen(case)
+    if found is None:
+        return ""
+    smaller, larger, constants, what = found
+    left = set().union(*(e.free_symbols for e in smaller))
+    kept = [c for c in constants_smaller if c.symbol in left]
+    answer = examine(smaller, larger, kept, constants)
+    return f"at fixed {what}: {answer.reason}" if isinstance(answer, Neither) else ""
 
 
 def _plainly(case: Case, values: dict[str, sympy.Expr]) -> Nesting:

@@ -125,6 +125,10 @@ NEITHER = [
     (SPLIT, BOTH.replace("[B]", "[H]")),  # half order in hydrogen or first
     ("k*[A]*exp(-E/T)/(1 + K*[B])", "k*[A]^n*exp(-E/T)"),  # the second knows nothing of [B]
     ("k*[A]/(1 + K*[A] + L*[B])", PARALLEL),  # [A] and [B] in one denominator
+    # one site or two, at each temperature
+    ("k*exp(-E/T)*[A]/(1 + K*[A])", "k*exp(-E/T)*[A]/(1 + K*[A])^2"),
+    ("k*[A]^n/(1 + K*[B])", "k*[A]^n/(1 + K*[B])^2"),  # the same at each [A]
+    ("k*([A] - [B]/K_eq)/(1 + K*[A])", "k*[A]/(1 + K*[A] + L*[B])"),  # no backward rate
 ]  # fmt: skip
 
 # what is known by hand but is beyond the proofs: it must be said so, not guessed
