@@ -16,9 +16,13 @@ def warnings_of(mechanism: Mechanism, routes: Routes) -> tuple[str, ...]:
     out = []
     for step in mechanism.steps:
         out += _crowd(step)
-    for cycle in routes.cycles:
-        out += _one_way_circle(mechanism, list(cycle))
-    return tuple(dict.fromkeys(out))
+    said: set[str] = set()
+    for cycle in sorted(routes.cycles, key=len):  # of many circles through a step the shortest
+        step = _lone(mechanism, list(cycle))
+        if step is not None and step.name not in said:
+            said.add(step.name)
+            out.append(_one_way_circle(step, list(cycle)))
+    return tuple(out)
 
 
 def notes_of(
@@ -65,19 +69,21 @@ def _molecules(n: int) -> str:
     return "a molecule" if n == 1 else f"{n} molecules"
 
 
-def _one_way_circle(mechanism: Mechanism, names: Sequence[str]) -> list[str]:
-    """A circle without net reaction is at equilibrium, where each step runs both ways."""
+def _lone(mechanism: Mechanism, names: Sequence[str]) -> Step | None:
+    """The last step of a circle that is written in one direction and nowhere backwards."""
     steps = {s.name: s for s in mechanism.steps}
     lone = [n for n in names if not steps[n].reversible and not _mirrored(steps[n], mechanism)]
-    if not lone:
-        return []
-    step = steps[lone[-1]]
-    return [
+    return steps[lone[-1]] if lone else None
+
+
+def _one_way_circle(step: Step, names: Sequence[str]) -> str:
+    """A circle without net reaction is at equilibrium, where each step runs both ways."""
+    return (
         f"Step {step.name}{_where(step)} is written in one direction, but with "
         f"{_listed([n for n in names if n != step.name])} it closes a circle in which nothing is "
         "consumed or made. Such a circle is at equilibrium, so the step must go both ways: write "
         "it with <=>, unless light or current drives it."
-    ]
+    )
 
 
 def _mirrored(step: Step, mechanism: Mechanism) -> bool:
