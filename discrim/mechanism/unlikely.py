@@ -18,10 +18,10 @@ def warnings_of(mechanism: Mechanism, routes: Routes) -> tuple[str, ...]:
         out += _crowd(step)
     said: set[str] = set()
     for cycle in sorted(routes.cycles, key=len):  # of many circles through a step the shortest
-        step = _lone(mechanism, list(cycle))
-        if step is not None and step.name not in said:
-            said.add(step.name)
-            out.append(_one_way_circle(step, list(cycle)))
+        lone = _lone(mechanism, list(cycle))
+        if lone is not None and lone.name not in said:
+            said.add(lone.name)
+            out.append(_one_way_circle(lone, list(cycle)))
     return tuple(out)
 
 
