@@ -8,8 +8,10 @@ from __future__ import annotations
 
 import heapq
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
+from functools import cmp_to_key, lru_cache
+from math import gcd
 from typing import Any
 
 import numpy as np
@@ -34,6 +36,7 @@ class Algebra:
     roots: tuple[int, ...]
     ring: PolyRing
     index: Mapping[sympy.Symbol, int]
+    written: dict[PolyElement, Any] = field(default_factory=dict, repr=False, compare=False)
 
     @classmethod
     def over(cls, roots: Mapping[sympy.Symbol, int]) -> Algebra:
@@ -63,14 +66,31 @@ class Algebra:
 
     def expr(self, poly: PolyElement) -> Any:
         """The polynomial as a sympy expression in the symbols."""
-        terms = [self.term(m, c) for m, c in poly.terms()]
-        return sympy.Add(*terms)
+        if poly not in self.written:
+            self.written[poly] = self._expr(poly)
+        return self.written[poly]
 
-    def term(self, monomial: Sequence[int], coefficient: Any = 1) -> Any:
-        powers = [
-            self.symbols[i] ** Rational(e, self.roots[i]) for i, e in enumerate(monomial) if e
-        ]
-        return sympy.Mul(sympy.Integer(int(coefficient)), *powers)
+    def _expr(self, poly: PolyElement) -> Any:
+        """Products put together in the order that sympy keeps them in, which costs it most."""
+        powers = {(i, e) for m in poly.monoms() for i, e in enumerate(m) if e}
+        factors = {(i, e): self.symbols[i] ** Rational(e, self.roots[i]) for i, e in powers}
+        if len(poly) < 20 or any(f.is_Mul for f in factors.values()):
+            return sympy.Add(
+                *(
+                    sympy.Mul(int(c), *(factors[i, e] for i, e in enumerate(m) if e))
+                    for m, c in poly.terms()
+                )
+            )
+        order = sorted(powers, key=cmp_to_key(lambda a, b: factors[a].compare(factors[b])))
+        rank = {key: n for n, key in enumerate(order)}
+        terms = []
+        for m, c in poly.terms():
+            held = sorted(((i, e) for i, e in enumerate(m) if e), key=rank.__getitem__)
+            args = [factors[key] for key in held]
+            if c != 1:
+                args.insert(0, sympy.Integer(int(c)))
+            terms.append(sympy.Mul._from_args(args))
+        return sympy.Add(*terms)
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,21 +145,19 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
             if changed:
                 break
     kept: dict[PolyElement, int] = {}
-    for factor, e in parts.items():
-        left = e
+    waiting = list(parts.items())
+    while waiting:
+        factor, left = waiting.pop()
         while left:
             g = common_factor(top, factor)
             if g.is_ground:
+                kept[factor] = left
                 break
-            if g != factor and g != -factor:
-                rest = exact_quotient(factor, g)
-                inner = quotient(top, [(g, left), (rest, left)])
-                others = [(p, n) for p, n in parts.items() if p != factor]
-                return quotient(inner.top, [*inner.bottom, *others, (r(scale), 1)])
+            if len(g) != len(factor):  # a part of it
+                waiting += [(g, left), (exact_quotient(factor, g), left)]
+                break
             top = exact_quotient(top, factor)
             left -= 1
-        if left:
-            kept[factor] = left
     if scale != 1:
         common = ZZ.gcd(scale, top.content())
         top = top.quo_ground(common)
@@ -157,6 +175,7 @@ def quotient(top: PolyElement, bottom: Iterable[tuple[PolyElement, int]]) -> Quo
 _PRIME = 2**31 - 1
 
 
+@lru_cache(maxsize=128)  # one denominator is compared with many numerators
 def _image(poly: PolyElement) -> list[int]:
     """Coefficients modulo the prime, highest first, of ``poly`` along the line."""
     exponents = np.array(poly.monoms(), dtype=np.int64)
@@ -208,22 +227,90 @@ def _degree_of_gcd(a: list[int], b: list[int]) -> int:
 
 def common_factor(a: PolyElement, b: PolyElement) -> PolyElement:
     """Greatest common divisor; fast when there is none but a monomial."""
-    r = a.ring
     if a.is_ground or b.is_ground or not a or not b:
         return a.gcd(b)
-    low_a, low_b = lowest(a), lowest(b)
-    shared = tuple(map(min, low_a, low_b))
-    if any(low_a) or any(low_b):
-        a, b = lowered(a, low_a), lowered(b, low_b)
-    monomial = r.from_dict({shared: ZZ.gcd(a.content(), b.content())})
-    if len(a) == 1 or len(b) == 1:
-        return monomial
-    if a == b or a == -b:
-        return a * r.from_dict({shared: ZZ(1)})
+    return _common([a, b])
+
+
+def _common(polys: Sequence[PolyElement]) -> PolyElement:
+    """Greatest common divisor of polynomials most of which are linear in most of their symbols.
+
+    A symbol that one of them lacks is in no common factor, so that the others are split into their
+    coefficients. p = a x + b has one irreducible factor with x, p over the content of a and b: it
+    divides the others or it does not; the rest of the factor is common to a, b and the coefficients
+    of the others. General algorithms take minutes for the sums over trees of a network.
+    """
+    r = polys[0].ring
+    polys = [p for p in polys if p]
+    if len(polys) == 1:
+        return polys[0]
+    number = ZZ(gcd(*(int(p.content()) for p in polys)))
+    if any(p.is_ground for p in polys):
+        return r(number)
+    lows = [lowest(p) for p in polys]
+    shared = r.from_dict({tuple(map(min, *lows)): number})
+    polys = [lowered(p, low) if any(low) else p for p, low in zip(polys, lows, strict=True)]
+    if any(len(p) == 1 for p in polys):
+        return shared
+    polys = sorted({p.primitive()[1] if p.LC > 0 else (-p).primitive()[1] for p in polys}, key=len)
+    if len(polys) == 1:
+        return shared * polys[0]
+    first = _image(polys[0])
+    if first[0]:
+        for p in polys[1:]:
+            other = _image(p)
+            if other[0] and _degree_of_gcd(first, other) == 0:
+                return shared
+    held = [_held(p) for p in polys]
+    everywhere = set.intersection(*held)
+    for p, symbols in zip(polys, held, strict=True):
+        if symbols - everywhere:
+            x = min(symbols - everywhere)
+            rest = [q for q in polys if q is not p]
+            return shared * _common([*rest, *coefficients(p, x).values()])
+    for p in polys:
+        linear = [x for x in sorted(everywhere) if p.degree(x) == 1]
+        if not linear:
+            continue
+        x = linear[0]
+        parts = coefficients(p, x)
+        content = _common(list(parts.values()))
+        core = exact_quotient(p, content)
+        rest = [q for q in polys if q is not p]
+        inner = r.one
+        if not content.is_ground:
+            inner = _common([content, *(c for q in rest for c in coefficients(q, x).values())])
+        if all(_divides(core, q) for q in rest):
+            inner = inner * core
+        return shared * inner
+    out = polys[0]
+    for p in polys[1:]:
+        out = out.gcd(p)
+    return shared * out
+
+
+def _held(poly: PolyElement) -> set[int]:
+    """Indices of the generators in it."""
+    return {i for m in poly.monoms() for i, e in enumerate(m) if e}
+
+
+def _divides(a: PolyElement, b: PolyElement) -> bool:
     u, v = _image(a), _image(b)
-    if u[0] and v[0] and _degree_of_gcd(u, v) == 0:
-        return monomial
-    return a.gcd(b) * r.from_dict({shared: ZZ(1)})
+    if u[0] and v[0] and _degree_of_gcd(u, v) < len(u) - 1:
+        return False
+    try:
+        exact_quotient(b, a)
+    except ValueError:
+        return False
+    return True
+
+
+def coefficients(poly: PolyElement, x: int) -> dict[int, PolyElement]:
+    """Coefficients by power of generator ``x``."""
+    apart: dict[int, dict[tuple[int, ...], Any]] = {}
+    for m, c in poly.items():
+        apart.setdefault(m[x], {})[(*m[:x], 0, *m[x + 1 :])] = c
+    return {e: poly.ring.from_dict(terms) for e, terms in apart.items()}
 
 
 def exact_quotient(a: PolyElement, b: PolyElement) -> PolyElement:
@@ -285,6 +372,7 @@ def lowered(poly: PolyElement, low: Sequence[int]) -> PolyElement:
     return poly.ring.from_dict({tuple(map(int.__sub__, m, low)): c for m, c in poly.items()})
 
 
+@lru_cache(maxsize=128)
 def lowest(poly: PolyElement) -> tuple[int, ...]:
     """The lowest power of each generator in any term."""
     monoms = poly.monoms()
@@ -329,6 +417,7 @@ def factors_of(poly: PolyElement) -> tuple[int, list[tuple[PolyElement, int]]]:
     return int(content) * int(number), [*out, *found]
 
 
+@lru_cache(maxsize=128)
 def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]:
     r = poly.ring
     if poly.is_ground:
@@ -352,7 +441,7 @@ def _square_free(poly: PolyElement) -> tuple[Any, list[tuple[PolyElement, int]]]
         gens = _square_free(common)[1]
     if not _repeats(primitive):
         return content, [*gens, (primitive, 1)]
-    c, factors = primitive.sqf_list()
+    c, factors = factors_of(primitive)
     return content * c, [*gens, *factors]
 
 

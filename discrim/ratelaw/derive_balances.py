@@ -211,16 +211,22 @@ def _by_trees(
 def _as_factors(
     algebra: Algebra, factors: Sequence[tuple[derive_trees.Sum, derive_trees.Sum]]
 ) -> Value:
+    """As polynomials without common powers, so that the same sum over trees is the same factor."""
+    width = len(algebra.symbols)
     above: Factors = []
     below: Factors = []
-    width = len(algebra.symbols)
+    shift = [0] * width
     for top, bottom in factors:
-        t = {derive_trees.unpacked(k, width): c for k, c in top.items()}
-        b = {derive_trees.unpacked(k, width): c for k, c in bottom.items()}
-        low = tuple(map(min, *[*t, *b])) if len(t) + len(b) > 1 else next(iter([*t, *b]))
-        for sums, into in ((t, above), (b, below)):
-            shifted = {tuple(map(int.__sub__, m, low)): ZZ(c) for m, c in sums.items()}
-            into.append((algebra.ring.from_dict(shifted), 1))
+        for sums, into, sign in ((top, above, 1), (bottom, below, -1)):
+            terms = {derive_trees.unpacked(k, width): c for k, c in sums.items()}
+            low = tuple(map(min, *terms)) if len(terms) > 1 else next(iter(terms), (0,) * width)
+            lowered = {tuple(map(int.__sub__, m, low)): ZZ(c) for m, c in terms.items()}
+            into.append((algebra.ring.from_dict(lowered), 1))
+            shift = [x + sign * e for x, e in zip(shift, low, strict=True)]
+    over = tuple(max(e, 0) for e in shift)
+    under = tuple(max(-e, 0) for e in shift)
+    above.append((algebra.ring.from_dict({over: ZZ(1)}), 1))
+    below.append((algebra.ring.from_dict({under: ZZ(1)}), 1))
     return above, below
 
 

@@ -23,6 +23,7 @@ from discrim.mechanism.model import Species
 from discrim.ratelaw.derive_algebra import (
     Algebra,
     Quotient,
+    coefficients,
     common_factor,
     exact_quotient,
     lowered,
@@ -114,8 +115,14 @@ def solve_with_roots(
     # a radical, is the one that a chemist would name.
     order = [*range(first, first + len(y) + len(v))]
     order.sort(key=lambda i: (i >= first + len(y), not _bound(network, unknowns, i - first)))
+    polynomials = [_polynomial(algebra, terms) for terms in equations]
     elimination = _Elimination(algebra, first, order)
-    if not elimination.run([_polynomial(algebra, terms) for terms in equations]):
+    determined = elimination.run(polynomials)
+    if determined and elimination.ambiguous():
+        # a root of what is left may make negative what was eliminated: keep all of them
+        elimination = _Elimination(algebra, first, order, only_certain=True)
+        determined = elimination.run(polynomials)
+    if not determined:
         raise undetermined(network, unknowns or [f.reference for f in network.families])
     solved = elimination.back_substituted()
     generator = algebra.ring.gens
@@ -191,8 +198,12 @@ def _polynomial(
 class _Elimination:
     """Unknowns put into one another, each from an equation that is linear in it."""
 
-    def __init__(self, algebra: Algebra, first: int, order: Sequence[int]) -> None:
+    def __init__(
+        self, algebra: Algebra, first: int, order: Sequence[int], *, only_certain: bool = False
+    ) -> None:
         self.algebra = algebra
+        self.only_certain = only_certain
+        self.all_certain = True
         self.first = first
         self.left = list(order)
         self.assigned: list[tuple[int, PolyElement, PolyElement]] = []
@@ -267,13 +278,25 @@ class _Elimination:
                 certain = a is not None and b == -a
                 cost = max(len(slope), len(rest))
                 touched = [e for e in equations if e is not equation and e.degree(i) > 0]
+                if self.only_certain and not certain:
+                    continue
                 size = sum(len(e) * cost ** int(e.degree(i)) for e in touched)
                 if size > 100 * _MOST:
                     continue
                 choices.append(((not certain, size, rank, n), equation, i, slope, rest))
         if not choices:
             return None
-        return min(choices, key=lambda c: c[0])[1:]
+        found = min(choices, key=lambda c: c[0])
+        self.all_certain &= not found[0][0]
+        return found[1:]
+
+    def ambiguous(self) -> bool:
+        """Whether what was kept has several positive roots, not all of them sure to be allowed."""
+        several = any(
+            len(ids) > 1 or not _one_root(coefficients(equations[0], ids[0]))
+            for ids, equations in self.kept
+        )
+        return several and not self.all_certain
 
     def without(self, poly: PolyElement, factor: PolyElement) -> PolyElement:
         """Divided by what it shares with ``factor``, which cannot be zero."""
@@ -333,21 +356,13 @@ def _root(
     values = tuple(
         ImplicitValue(k, unknowns, written) ** algebra.roots[i] for k, i in enumerate(ids)
     )
-    several = len(ids) > 1 or not _one_root(_coefficients(equations[0], ids[0]))
+    several = len(ids) > 1 or not _one_root(coefficients(equations[0], ids[0]))
     return Root(symbols, equations, values, closed=False, several=several)
 
 
-def _coefficients(poly: PolyElement, i: int) -> dict[int, PolyElement]:
-    """Coefficients by power of generator ``i``."""
-    apart: dict[int, dict[tuple[int, ...], Any]] = {}
-    for m, c in poly.terms():
-        apart.setdefault(m[i], {})[(*m[:i], 0, *m[i + 1 :])] = c
-    return {e: poly.ring.from_dict(terms) for e, terms in apart.items()}
-
-
-def _one_root(coefficients: Mapping[int, PolyElement]) -> bool:
+def _one_root(by_power: Mapping[int, PolyElement]) -> bool:
     """One positive root for all values of the symbols: one change of sign (Descartes)."""
-    signs = [one_sign(coefficients[e], frozenset()) for e in sorted(coefficients)]
+    signs = [one_sign(by_power[e], frozenset()) for e in sorted(by_power)]
     unclear = [k for k, s in enumerate(signs) if s is None]
     if len(unclear) > 1:
         return False
@@ -361,22 +376,22 @@ def _one_root(coefficients: Mapping[int, PolyElement]) -> bool:
 
 def _closed(algebra: Algebra, i: int, poly: PolyElement) -> Any | None:
     """The positive root as an expression, if the equation is a power or a quadratic of one."""
-    coefficients = _coefficients(poly, i)
-    exponents = sorted(coefficients)
+    by_power = coefficients(poly, i)
+    exponents = sorted(by_power)
     step = gcd(*exponents)
     if exponents[0] != 0:
         return None
     power = Rational(algebra.roots[i], step)
-    signs = {e: one_sign(c, frozenset()) for e, c in coefficients.items()}
-    high, c0 = exponents[-1], coefficients[0]
+    signs = {e: one_sign(c, frozenset()) for e, c in by_power.items()}
+    high, c0 = exponents[-1], by_power[0]
     if signs[0] is None or signs[high] is None or signs[high] == signs[0]:
         return None
-    a = algebra.expr(coefficients[high] * signs[high])
+    a = algebra.expr(by_power[high] * signs[high])
     c = algebra.expr(c0 * signs[0])
     if len(exponents) == 2:
         return (c / a) ** power
     if len(exponents) != 3 or high != 2 * step or exponents[1] != step:
         return None
-    b = algebra.expr(coefficients[step] * signs[high])
+    b = algebra.expr(by_power[step] * signs[high])
     # 2c/(b + sqrt(b^2 + 4ac)) does not cancel where b > 0, and holds for a = 0
     return (2 * c / (b + sympy.sqrt(b**2 + 4 * a * c))) ** power

@@ -17,7 +17,7 @@ from discrim.ratelaw.derive_network import Network
 from discrim.ratelaw.derive_solve import Solution, poly_expr
 from discrim.ratelaw.model import amount
 
-_LONG = 200  # terms; a longer sum over a catalyst is printed as it came, not shortened first
+_LONG = 200  # terms of a sum that nobody would read
 
 
 def _listed(names: list[str]) -> str:
@@ -221,9 +221,7 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
     for family, total in zip(network.families, solution.totals, strict=True):
         what = "Vacant sites" if family.kind == "sites" else "Free catalyst, as fraction of all,"
         words = f"{what} {family.reference.name} from the sum"
-        short = len(total.top) <= _LONG
-        cancelled = quotient(total.top, total.bottom) if short else total
-        inverse = 1 / cancelled.expr(algebra)
+        inverse = 1 / quotient(total.top, total.bottom).expr(algebra)
         if inverse.is_Symbol:
             continue  # a root, which has been given
         lines.append((words, sympy.Eq(amount(family.reference.name), inverse, evaluate=False)))

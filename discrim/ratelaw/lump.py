@@ -16,9 +16,10 @@ from typing import Any
 import sympy
 from sympy import Rational
 
-from discrim.ratelaw.derive_network import Matrix, row_reduce
 from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
 from discrim.ratelaw.lump_names import Candidate, candidates
+from discrim.ratelaw.lump_scaling import scaled
+from discrim.ratelaw.lump_span import Span
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
 
 
@@ -40,23 +41,24 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
         constants of the steps; all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
     """
     known = law.constants
-    names = list(law.production)
+    fixed = law.stoichiometry
+    names = list(law.production) if fixed is None else []  # else all are multiples of the rate
     expressions = [law.rate, *(law.production[n] for n in names), *(p.rate for p in law.pathways)]
+    if not known:
+        return law
     try:
         form = read_form(expressions, [c.symbol for c in known])
     except NotRational:
-        return law
-    if not known:
-        return law
+        return scaled(law)
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
     if written is None:
-        return law
+        return _as_it_is(scaled(law), form, decisive)
     rate, *others = written.expressions
-    production = dict(zip(names, others[: len(names)], strict=True))
-    if law.stoichiometry is not None:
-        # one expression, so that everything downstream sees that these are multiples of the rate
-        production = {n: law.stoichiometry.get(n, sympy.Integer(0)) * rate for n in names}
+    if fixed is None:
+        production = dict(zip(names, others[: len(names)], strict=True))
+    else:
+        production = {n: fixed.get(n, sympy.Integer(0)) * rate for n in law.production}
     apart = others[len(names) :]
     pathways = (
         tuple(replace(p, rate=r) for p, r in zip(law.pathways, apart, strict=True)) if apart else ()
@@ -85,6 +87,19 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     )
 
 
+def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
+    """A law that products of powers of its constants do not shorten, with what that leaves open."""
+    rank = _functional_rank(form, _differences(form, decisive))
+    n = len(law.constants)
+    if rank == n:
+        return law
+    words = (
+        f"Rates can tell apart only {rank} combinations of the {n} constants of this law, and they "
+        "are no products of powers of them: some constants stay undetermined whatever is measured."
+    )
+    return replace(law, findings=(*law.findings, words))
+
+
 @dataclass(frozen=True, slots=True)
 class _Written:
     expressions: tuple[Any, ...]
@@ -100,13 +115,19 @@ def _write(
     None when the constants as they are can all be told apart, while products of powers of them
     cannot express the law without more constants than there are.
     """
-    width = len(form.atoms)
-    space = _Space(_rows(_differences(form, decisive), width), width)
+    shown = _differences(form, decisive)
+    rank = _functional_rank(form, shown)
+    special = per_catalyst or bool(equilibrium)
+    if rank == len(known) and not special and len(form.atoms) > len(known):
+        return None  # all constants of the steps can be told apart, though not as products
+    space = Span(shown)
     chosen: list[Candidate] = []
-    basis: Matrix = []
+    solver = Span()
+    missing = list(space.rows.values())
     kept_single: set[int] = set()
     for candidate in candidates(form, known, space.holds, per_catalyst, equilibrium):
-        if all(_Space(basis, width).holds_row(row) for row in space.rows):
+        missing = [row for row in missing if not solver.holds(row)]
+        if not missing:
             break
         if candidate.written:
             inside = form.atoms[next(iter(candidate.vector))].free_symbols
@@ -114,17 +135,12 @@ def _write(
                 continue
         elif not space.holds(candidate.vector):
             continue
-        row = dense(candidate.vector, width)
-        if len(row_reduce([*basis, row])[1]) > len(basis):
-            basis.append(row)
+        if solver.add(candidate.vector):
             chosen.append(candidate)
             if candidate.single is not None:
                 kept_single.add(candidate.single)
-    spanned = _Space(basis, width)
     findings: list[str] = []
-    if not all(
-        spanned.holds_row(r) for r in _rows(_differences(form, len(form.expressions)), width)
-    ):
+    if not all(solver.holds(v) for v in _differences(form, len(form.expressions))):
         form = replace(form, expressions=form.expressions[:decisive])
         findings.append(
             "Some pathways have the same form: no measured rates could tell how much each carries, "
@@ -132,7 +148,8 @@ def _write(
         )
     apparent = _functional_rank(form, [c.vector for c in chosen if not c.written])
     extra = sum(not c.written for c in chosen) - apparent
-    if extra and apparent == len(known):
+    count = sum(not c.written for c in chosen)
+    if extra and (apparent == len(known) or count >= len(known)):
         return None
     if extra:
         relation = "a relation" if extra == 1 else f"{extra} relations"
@@ -140,11 +157,10 @@ def _write(
             f"The mechanism also implies {relation} between the constants of the law that the fit "
             "does not impose; the fitted law is wider than the mechanism."
         )
-    solver = _Solver(basis, width)
     norms = _norms(form, per_catalyst, [k for k, c in enumerate(chosen) if not c.can_turn], solver)
     chosen, flipped = _positive(form, norms, chosen, solver)
     if flipped:
-        solver = _Solver([dense(c.vector, width) for c in chosen], width)
+        solver = Span(c.vector for c in chosen)
     constants = _constants(form, known, [c for c in chosen if not c.written])
     order = {c.name: k for k, c in enumerate(known)}
     rest = iter(constants)
@@ -154,14 +170,6 @@ def _write(
     kept = [c for c in constants if c.symbol in used]
     kept.sort(key=lambda c: (c.kind is not ConstantKind.RATE, order.get(c.name, len(order))))
     return _Written(expressions, tuple(kept), tuple(findings))
-
-
-def dense(vector: Vector, width: int) -> list[Fraction]:
-    return [vector.get(i, Fraction(0)) for i in range(width)]
-
-
-def _rows(vectors: Sequence[Vector], width: int) -> Matrix:
-    return [dense(v, width) for v in vectors]
 
 
 def subtract(a: Vector, b: Vector, times: Fraction = Fraction(1)) -> Vector:
@@ -186,45 +194,7 @@ def _differences(form: Form, decisive: int) -> list[Vector]:
     return [r for r in rows if r]
 
 
-class _Space:
-    """The span of some vectors, with a quick test of membership."""
-
-    def __init__(self, rows: Matrix, width: int) -> None:
-        reduced, pivots = row_reduce(rows) if rows else ([], [])
-        self.rows, self.pivots, self.width = reduced[: len(pivots)], pivots, width
-
-    def holds(self, vector: Vector) -> bool:
-        return self.holds_row(dense(vector, self.width))
-
-    def holds_row(self, left: list[Fraction]) -> bool:
-        for row, p in zip(self.rows, self.pivots, strict=True):
-            if left[p]:
-                f = left[p]
-                left = [x - f * y for x, y in zip(left, row, strict=True)]
-        return not any(left)
-
-
-class _Solver:
-    """Exponents of a vector in a basis."""
-
-    def __init__(self, basis: Matrix, width: int) -> None:
-        n = len(basis)
-        # columns = basis vectors, extended by the identity to carry the solution along
-        rows = [
-            [basis[j][i] for j in range(n)] + [Fraction(int(i == k)) for k in range(width)]
-            for i in range(width)
-        ]
-        self.rows, _ = row_reduce(rows, n) if n else ([], [])
-        self.n = n
-
-    def __call__(self, vector: Vector) -> list[Fraction]:
-        return [
-            sum((self.rows[r][self.n + i] * e for i, e in vector.items()), Fraction(0))
-            for r in range(self.n)
-        ]
-
-
-def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: _Solver) -> list[Vector]:
+def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: Span) -> list[Vector]:
     """For each denominator the coefficient that is written as 1.
 
     For a catalyst that of the reactants that saturate it; else of the term without amounts; else of
@@ -246,6 +216,8 @@ def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: _Solver
         order = [*(saturating if per_catalyst else []), *constant, *within, *choices]
 
         def divides_by_none(pick: Any, s: Any = s) -> bool:
+            if not fixed:
+                return True
             norm = s.terms[pick].vector
             powers = [solver(subtract(c.vector, norm)) for c in s.terms.values()]
             return all(p[i] >= 0 for p in powers for i in fixed)
@@ -270,7 +242,7 @@ def _scaled_terms(
 
 
 def _positive(
-    form: Form, norms: Sequence[Vector], chosen: list[Candidate], solver: _Solver
+    form: Form, norms: Sequence[Vector], chosen: list[Candidate], solver: Span
 ) -> tuple[list[Candidate], bool]:
     """Turn round constants that the law only divides by, so that zero means "absent"."""
     low = [Fraction(0)] * len(chosen)
@@ -369,13 +341,33 @@ def _common(pieces: Sequence[Any]) -> Any:
     return sympy.Mul(shared, sympy.Add(*(p / shared for p in pieces)), evaluate=True)
 
 
+_PRIME = 2**61 - 1
+
+
 def _functional_rank(form: Form, vectors: Sequence[Vector]) -> int:
-    """Rank of d log(lump)/d log(constant) at a point, exact: how many lumps can move freely."""
-    rows = [
-        [
-            sum((e * form.slopes[i][j] for i, e in v.items()), Fraction(0))
-            for j in range(len(form.constants))
-        ]
-        for v in vectors
+    """Rank of d log(lump)/d log(constant) at a point: how many lumps can move freely.
+
+    Modulo a prime, which can only take the rank too low, with a chance of about 1e-17.
+    """
+    slopes = [
+        [int(x.numerator) * pow(int(x.denominator), _PRIME - 2, _PRIME) % _PRIME for x in row]
+        for row in form.slopes
     ]
-    return len(row_reduce(rows)[1]) if rows else 0
+    n = len(form.constants)
+    pivots: dict[int, list[int]] = {}
+    for v in {tuple(sorted(v.items())) for v in vectors}:
+        row = [0] * n
+        for i, e in v:
+            times = e.numerator * pow(e.denominator, _PRIME - 2, _PRIME)
+            row = [(x + times * y) % _PRIME for x, y in zip(row, slopes[i], strict=True)]
+        for p, known in pivots.items():
+            if row[p]:
+                f = row[p]
+                row = [(x - f * y) % _PRIME for x, y in zip(row, known, strict=True)]
+        p = next((i for i, x in enumerate(row) if x), -1)
+        if p >= 0:
+            inverse = pow(row[p], _PRIME - 2, _PRIME)
+            pivots[p] = [x * inverse % _PRIME for x in row]
+            if len(pivots) == n:
+                break
+    return len(pivots)

@@ -174,6 +174,9 @@ class _Reader:
     def rational(self, e: Any) -> tuple[PolyElement, PolyElement]:
         """A sum as one numerator over one denominator."""
         over, under = self.ring.zero, self.ring.one
+        whole = self.polynomial(e)
+        if whole is not None:
+            return whole, under
         for top, below in self.parts(e):
             divisor = self.ring.one
             for poly, power in below:
@@ -185,6 +188,30 @@ class _Reader:
             left, right = exact_quotient(divisor, shared), exact_quotient(under, shared)
             over, under = over * left + top * right, under * left
         return over, under
+
+    def polynomial(self, e: Any) -> PolyElement | None:
+        """A sum of products of powers of symbols, read directly; None if it is something else."""
+        if not e.is_Add:
+            return None
+        out: dict[tuple[int, ...], Any] = {}
+        for term in e.args:
+            number = 1
+            exponents = [0] * self.ring.ngens
+            for factor in term.args if term.is_Mul else (term,):
+                if factor.is_Integer:
+                    number *= int(factor)
+                    continue
+                base, power = (factor.base, factor.exp) if factor.is_Pow else (factor, 1)
+                if not base.is_Symbol:
+                    return None
+                i = self.algebra.index[base]
+                whole = power * self.algebra.roots[i]
+                if whole < 0:
+                    return None
+                exponents[i] += int(whole)
+            key = tuple(exponents)
+            out[key] = out.get(key, 0) + number
+        return self.ring.from_dict({m: ZZ(c) for m, c in out.items() if c})
 
     def shared(self, poly: PolyElement) -> int:
         if poly not in self.sum_of:

@@ -195,7 +195,7 @@ def _rest(form: Form, singles: set[int], known: Sequence[Constant]) -> Iterator[
                 continue
             vector = _apart(_minus(c.vector, sums.terms[before].vector), singles, len(known))
             if vector:
-                yield _combination(
+                yield combination(
                     vector,
                     known,
                     f"b_{_label(amounts) or 'const'}",
@@ -210,7 +210,7 @@ def _rest(form: Form, singles: set[int], known: Sequence[Constant]) -> Iterator[
             for amounts, c in term.top.terms.items():
                 vector = _apart(_minus(c.vector, scale), singles, len(known))
                 if vector:
-                    yield _combination(
+                    yield combination(
                         vector,
                         known,
                         f"a_{_label(amounts) or 'const'}",
@@ -234,7 +234,7 @@ def _before(sums: Sum, amounts: Amounts) -> Amounts | None:
     return found[-1] if found else first
 
 
-def _combination(
+def combination(
     vector: Vector,
     known: Sequence[Constant],
     fallback: str,

@@ -1,0 +1,238 @@
+"""Identifiable constants of a law with roots or implicit values, by its scalings.
+
+Where constants can be multiplied by powers of one factor without any change of what is measured,
+no data can tell them apart. In logarithms these scalings are a linear space: in every sum all
+terms must scale alike, and what is measured not at all. For each scaling one constant is set to
+one and the others become the combinations that do not scale.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from fractions import Fraction
+from itertools import combinations
+from typing import Any
+
+import sympy
+from sympy import Rational
+
+from discrim.ratelaw.derive_network import Matrix, null_space, row_reduce
+from discrim.ratelaw.implicit import ImplicitValue
+from discrim.ratelaw.lump_names import combination
+from discrim.ratelaw.lump_span import Span, Vector
+from discrim.ratelaw.model import Constant, RateLaw
+
+Weight = dict[int, int | Fraction]  # powers of the constants and of implicit values, by index
+
+_MOST_CHOICES = 4000  # sets of constants that are compared
+
+
+def scaled(law: RateLaw) -> RateLaw:
+    """``law`` in combinations of its constants that do not scale.
+
+    Returned unchanged when there is no scaling, or when an exponent holds a constant.
+    """
+    known = law.constants
+    names = list(law.production)
+    measured = [law.rate, *law.production.values()]
+    walk = _Walk([c.symbol for c in known])
+    try:
+        for e in measured:
+            walk.unscaled(walk.weight(e))
+    except _Unscalable:
+        return law
+    scalings = walk.scalings()
+    if not scalings:
+        return law
+    chosen = _choose(scalings, known)
+    if chosen is None:
+        return law
+    gone, powers = chosen
+    swap: dict[Any, Any] = {known[g].symbol: sympy.Integer(1) for g in gone}
+    constants: list[Constant] = []
+    taken = {c.name for c in known}
+    for j, c in enumerate(known):
+        if j in gone:
+            continue
+        if set(powers[j]) == {j}:
+            constants.append(c)
+            continue
+        made = _made(powers[j], known, taken)
+        taken.add(made.name)
+        swap[c.symbol] = made.symbol
+        constants.append(made)
+    apart = list(law.pathways)
+    rate = law.rate.xreplace(swap)
+    production = {n: law.production[n].xreplace(swap) for n in names}
+    used = rate.free_symbols.union(*(e.free_symbols for e in production.values()))
+    kept = tuple(c for c in constants if c.symbol in used)
+    lines = list(law.derivation)
+    for c in kept:
+        if c not in known:
+            lines.append((f"Combined: {c.name}", sympy.Eq(c.symbol, c.definition, evaluate=False)))
+    lines.append(("Rate law in the constants that rates can tell apart", rate))
+    before = {c.symbol: c.definition for c in known if c.definition is not None}
+    return replace(
+        law,
+        rate=rate,
+        production=production,
+        constants=tuple(
+            replace(c, definition=c.definition.xreplace(before))
+            if before and c.definition is not None and c not in known
+            else c
+            for c in kept
+        ),
+        pathways=tuple(replace(p, rate=p.rate.xreplace(swap)) for p in apart)
+        if all(_alike(walk, p.rate) for p in apart)
+        else (),
+        derivation=tuple(lines),
+    )
+
+
+class _Unscalable(Exception):
+    """A piece for which no scaling is known."""
+
+
+class _Walk:
+    """How each piece of a law scales, linear in the logarithms of the factors of the constants."""
+
+    def __init__(self, constants: Sequence[sympy.Symbol]) -> None:
+        self.index = {s: i for i, s in enumerate(constants)}
+        self.n = len(constants)
+        self.width = self.n
+        self.rows = Span()
+        self.said: set[frozenset[tuple[int, int | Fraction]]] = set()
+        self.systems: dict[Any, tuple[int, ...]] = {}
+        self.unknown: dict[sympy.Symbol, int] = {}
+
+    def weight(self, e: Any) -> Weight:
+        if e.is_Symbol:
+            i = self.unknown.get(e, self.index.get(e))
+            return {} if i is None else {i: 1}
+        if e.is_number:
+            return {}
+        if e.is_Mul:
+            out: Weight = {}
+            for factor in e.args:
+                out = _plus(out, self.weight(factor))
+            return out
+        if e.is_Add:
+            first, *rest = (self.weight(term) for term in e.args)
+            for other in rest:
+                self.unscaled(_plus(first, other, -1))
+            return first
+        if e.is_Pow and e.exp.is_Rational:
+            power = int(e.exp) if e.exp.is_Integer else Fraction(int(e.exp.p), int(e.exp.q))
+            return _plus({}, self.weight(e.base), power)
+        if isinstance(e, ImplicitValue):
+            return {self.system(e)[e.index]: 1}
+        if e.free_symbols & self.index.keys():
+            raise _Unscalable
+        return {}
+
+    def system(self, e: ImplicitValue) -> tuple[int, ...]:
+        if e.system not in self.systems:
+            ids = tuple(range(self.width, self.width + len(e.unknowns)))
+            self.width += len(ids)
+            self.systems[e.system] = ids
+            self.unknown |= dict(zip(e.unknowns, ids, strict=True))
+            for equation in e.equations:
+                self.weight(sympy.expand(equation))
+        return self.systems[e.system]
+
+    def unscaled(self, weight: Weight) -> None:
+        """What has to stay as it is; most of the sums of a law say the same."""
+        key = frozenset(weight.items())
+        if weight and key not in self.said:
+            self.said.add(key)
+            self.rows.add({i: Fraction(e) for i, e in weight.items()})
+            if self.rows.n == self.n and not self.systems:
+                raise _Unscalable  # nothing is left that could scale
+
+    def scalings(self) -> Matrix:
+        """Basis of the scalings, as powers of the constants."""
+        if self.rows.n == self.width:
+            return []
+        rows = self.rows.rows.values()
+        dense = [[row.get(i, Fraction(0)) for i in range(self.width)] for row in rows]
+        basis = null_space(dense, self.width)
+        reduced, pivots = row_reduce([v[: self.n] for v in basis]) if basis else ([], [])
+        return reduced[: len(pivots)]
+
+
+def _plus(a: Weight, b: Weight, times: int | Fraction = 1) -> Weight:
+    out = dict(a)
+    for i, e in b.items():
+        x = out.get(i, 0) + times * e
+        if x:
+            out[i] = x
+        else:
+            out.pop(i, None)
+    return out
+
+
+def _alike(walk: _Walk, e: Any) -> bool:
+    """Whether an expression is unchanged by the scalings of what is measured."""
+    before = walk.rows.n
+    try:
+        walk.unscaled(walk.weight(e))
+    except _Unscalable:
+        return False
+    return walk.rows.n == before
+
+
+def _choose(
+    scalings: Matrix, known: Sequence[Constant]
+) -> tuple[tuple[int, ...], dict[int, Vector]] | None:
+    """Which constants are set to one, and the powers that the others are then combined with.
+
+    The fewest changed constants, then products rather than quotients, then whole powers.
+    """
+    d = len(scalings)
+    moving = [j for j in range(len(known)) if any(v[j] for v in scalings)]
+    best = None
+    for count, gone in enumerate(combinations(moving, d)):
+        if count > _MOST_CHOICES:
+            break
+        # columns of gone first: [G | rest]; G must be invertible
+        rows = [[v[g] for g in gone] + list(v) for v in scalings]
+        reduced, pivots = row_reduce(rows, d)
+        if len(pivots) < d:
+            continue
+        powers: dict[int, Vector] = {}
+        changed = negative = broken = 0
+        for j in range(len(known)):
+            if j in gone:
+                continue
+            vector: Vector = {j: Fraction(1)}
+            for r, g in enumerate(gone):
+                e = -reduced[r][d + j]
+                if e:
+                    vector[g] = e
+                    negative += e < 0
+                    broken += e.denominator > 1
+            changed += len(vector) > 1
+            powers[j] = vector
+        score = (broken, changed, negative, gone)
+        if best is None or score < best[0]:
+            best = (score, gone, powers)
+    return None if best is None else (best[1], best[2])
+
+
+def _made(vector: Vector, known: Sequence[Constant], taken: set[str]) -> Constant:
+    above = [known[i].name for i, e in vector.items() if e > 0]
+    below = [known[i].name for i, e in vector.items() if e < 0]
+    fallback = "_".join(above) + ("_over_" + "_".join(below) if below else "")
+    found = combination(
+        vector, known, fallback, "combination of constants that only occur together"
+    )
+    name, n = found.name, 2
+    while name in taken:
+        name, n = f"{found.name}_{n}", n + 1
+    definition = sympy.Mul(
+        *(known[i].symbol ** Rational(e.numerator, e.denominator) for i, e in vector.items())
+    )
+    return Constant(
+        name, sympy.Symbol(name, nonnegative=True), found.kind, found.meaning, definition
+    )
