@@ -21,7 +21,7 @@ _CLOSE = 1e-6  # difference of the two logarithms below which the last exact ste
 _PLAIN = 1e-10  # balance, relative to the sum of its terms, that a solution must hold
 _ROUNDS = 14  # of Newton's method from one start
 _FAR = 12.0  # longest step in a logarithm (five powers of ten)
-_SHIFTS = (-14.0, 14.0)  # of later starts, in logarithms
+_SHIFT = 14.0  # of later starts, in logarithms
 _GRIDS = (np.arange(-100.0, 101.0, 5.0), np.arange(-140.0, 141.0, 1.0))  # see _nested; logarithms
 _HALVED = 10  # times that a step of this grid is halved before Newton's method goes on
 
@@ -109,7 +109,9 @@ class Balances:
         )
         left = np.flatnonzero(sides.all(axis=0))
         start = self._level(size[:, left], made[:, left])
-        for shift in (0.0, *_SHIFTS) if self.n > 2 else (0.0,):
+        everywhere = np.full((self.n, 1), _SHIFT)
+        apart = [-_SHIFT * np.eye(self.n)[:, j : j + 1] for j in range(self.n)]
+        for shift in (0.0 * everywhere, -everywhere, *apart, everywhere):
             if not len(left):
                 break
             w, ok = self._newton(size[:, left], made[:, left], start + shift)
