@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 from itertools import product
 from math import prod
 from typing import Any
@@ -19,6 +20,7 @@ from discrim.ratelaw.adjoined import (
     with_balances,
     without_roots,
 )
+from discrim.ratelaw.loglinear import Log
 from discrim.ratelaw.model import Constant
 from discrim.ratelaw.polynomials import (
     Key,
@@ -262,9 +264,7 @@ class Case:
                 i for i, (base, power) in enumerate(keys) if power == 1 and not base.is_nonnegative
             ),
             numbers={
-                i: {
-                    atom: e / variables.roots[key] for atom, e in log_of_number(int(key[0])).items()
-                }
+                i: _log_of_power(key, variables.roots[key])
                 for i, key in enumerate(keys)
                 if _is_number(key)
             },
@@ -344,8 +344,14 @@ def shown(symbol: Any) -> str:
 
 
 def _is_number(key: Key) -> bool:
-    """A power of a whole number, such as 10^(1/2)."""
-    return key[0].is_Integer and key[0] > 0 and key[1] == 1
+    """A power of a whole number, such as 10^(1/2) or 10^4.62."""
+    base, power = key
+    return bool(base.is_Integer and base > 0 and (power.is_Rational or power.is_Float))
+
+
+def _log_of_power(key: Key, root: int) -> Log:
+    power = Fraction(str(key[1])) / root
+    return {atom: e * power for atom, e in log_of_number(int(key[0])).items()}
 
 
 def _could_divide(poly: Any, by_terms_of: Any, layout: Layout) -> bool:

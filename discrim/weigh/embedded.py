@@ -17,17 +17,23 @@ _CLOSE = 1e-12  # relative difference of the predictions that no step farther ca
 
 
 def embedded(
-    smaller: Bound, larger: Bound, theta: np.ndarray, nesting: Nesting, conditions: np.ndarray
+    smaller: Bound,
+    larger: Bound,
+    theta: np.ndarray,
+    nesting: Nesting,
+    conditions: np.ndarray,
+    known: Mapping[str, float],
 ) -> np.ndarray | None:
     """The smaller law's constants as constants of the larger one, shape (1, p) or None.
 
     Constants at infinity are large numbers along the way to the limit, those that keep a product
     with them small ones: as far out as the predictions at ``conditions`` come closer together.
+    ``known`` : constants that the study gives, which may stand in the values.
     """
     # a constant at zero may be one at infinity in the other law: it is put just beside it
     beside = np.where(theta == 0, _BESIDE * smaller.predictor.scale, theta)
-    at = dict(zip(smaller.names, theta, strict=True))
-    near = dict(zip(smaller.names, beside, strict=True))
+    at = {**known, **dict(zip(smaller.names, theta, strict=True))}
+    near = {**known, **dict(zip(smaller.names, beside, strict=True))}
     base, power = np.array(larger.predictor.scale, float), np.zeros(len(larger.names))
     for j, name in enumerate(larger.names):
         if name in nesting.along:

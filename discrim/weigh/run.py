@@ -143,7 +143,7 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
     for i, b in enumerate(bounds):
         say("fitting", i, n)
         fits.append(fits_of(b, data, seed=seed))
-    fits = _no_larger_law_worse(bounds, fits, related, seed)
+    fits = _no_larger_law_worse(bounds, fits, related, study, seed)
     shared = _common_scale(fits, data)
     common_fits = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
     common = shared.as_origin(next(iter(fits[0])))
@@ -223,10 +223,15 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
 
 
 def _no_larger_law_worse(
-    bounds: Sequence[Bound], fits: list[dict[str, Fit]], related: Relations, seed: int
+    bounds: Sequence[Bound],
+    fits: list[dict[str, Fit]],
+    related: Relations,
+    study: Study,
+    seed: int,
 ) -> list[dict[str, Fit]]:
     """A law that contains another must fit at least as well: if not, start it from there."""
     out = list(fits)
+    known = {n: c.value for n, c in study.constants.items() if c.value is not None}
     for larger, smaller, nesting in related.embeddings():
         for origin, big in out[larger].items():
             small = out[smaller].get(origin)
@@ -235,7 +240,7 @@ def _no_larger_law_worse(
             if big.ok and big.badness <= small.badness * (1 + 1e-9) + 1e-12:
                 continue
             near = embedded(
-                bounds[smaller], bounds[larger], small.theta, nesting, big.data.conditions
+                bounds[smaller], bounds[larger], small.theta, nesting, big.data.conditions, known
             )
             again = fit(bounds[larger].predictor, big.data, seed=seed + 1, starts=32, near=near)
             if again.ok and (not big.ok or again.badness < big.badness):

@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 
 import discrim
+from discrim.weigh import derive_all
 from discrim.weigh.run import Weighed, run
 
 # (relation, a, b): in a special case, a is that case of b
@@ -91,3 +92,61 @@ def test_relations_hold_on_any_table(
         assert other <= one * (1 + 1e-6)
     else:  # random numbers follow no law, so laws that differ differ in their fits
         assert abs(one - other) > 1e-4 * one
+
+
+BUFFER = """
+title = "Invented: one buffer, two ways to write its catalysis"
+table = "runs.csv"
+[columns.rate]
+is = "rate of P"
+units = "mmol/L/s"
+error = "2 %"
+[columns.total]
+is = "total HA"
+units = "mol/L"
+error = "exact"
+[columns.pH]
+is = "pH"
+error = "exact"
+[derived]
+"A-" = { formula = "total/(1 + 10^(pKa - pH))", units = "mol/L" }
+HA   = { formula = "total - [A-]", units = "mol/L" }
+"H+" = { formula = "c*10^(-pH)", units = "mol/L" }
+[constants]
+pKa = { value = 4.62, KNOWN }
+c   = { value = "1 mol/L", fixed = true }
+[[candidates]]
+name = "general acid"
+law = "k*[HA]"
+[[candidates]]
+name = "specific acid and base"
+law = "k*[H+]*[A-]"
+[[candidates]]
+name = "base"
+law = "k*[A-]"
+[[questions]]
+stands = "all"
+"""
+
+
+@pytest.mark.parametrize("known", ["fixed = true", 'error = "0.02"'])
+def test_general_acid_is_specific_acid_times_base_in_a_study(tmp_path: Path, known: str) -> None:
+    """[HA] = [H+][A-]/Ka, so k*[HA] and k'*[H+]*[A-] are one law (kinetically equivalent: common
+    practice, no source); with a known pKa as with one that has an uncertainty."""
+    rng = np.random.default_rng(4)
+    lines = ["rate,total,pH"]
+    for _ in range(10):
+        total, ph = rng.uniform(0.01, 0.2), rng.uniform(3.5, 6)
+        rate = 30 * total / (1 + 10 ** (ph - 4.6)) * rng.uniform(0.95, 1.05)
+        lines.append(f"{rate:.4f},{total:.4f},{ph:.3f}")
+    (tmp_path / "runs.csv").write_text("\n".join(lines), encoding="utf-8")
+    text = BUFFER.replace("KNOWN", known)
+    (tmp_path / "study.toml").write_text(text, encoding="utf-8")
+    study = discrim.load(tmp_path / "study.toml")
+    found = run(study)
+    want = ["same", "neither", "neither"]
+    records = found.relations.records([c.law.name for c in found.laws])
+    assert [r["relation"] for r in records] == want
+    assert [r["relation"] for r in derive_all(study)[0]["relations"]] == want[:2]
+    one, other, _ = (x.fit.objective for x in found.assessments)
+    assert one == pytest.approx(other, rel=1e-8)
