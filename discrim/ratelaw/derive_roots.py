@@ -56,6 +56,7 @@ class Root:
     equations : polynomials of the algebra that are zero there
     values : what the law is written with in the end, one for each symbol
     closed : the values are closed forms
+    too_large : they have one, with too many terms
     several : more than one positive solution cannot be ruled out
     """
 
@@ -63,6 +64,7 @@ class Root:
     equations: tuple[PolyElement, ...]
     values: tuple[Any, ...]
     closed: bool
+    too_large: bool
     several: bool
 
 
@@ -87,8 +89,13 @@ def solve_with_roots(
     sides: Sides,
     monomials: Mapping[Species, Monomial],
     found: Balances,
+    *,
+    too_large: bool,
 ) -> Rooted:
-    """All unknowns and references of balances that are polynomials of any degree in them."""
+    """All unknowns and references of balances that are polynomials of any degree in them.
+
+    ``too_large``: the balances are linear, but their solution has too many terms to be written.
+    """
     every = [m for side in sides for m in side if m is not None] + list(monomials.values())
     y = [sympy.Dummy(_name(network, s), positive=True) for s in unknowns]
     v = [sympy.Dummy(f"[{f.reference.name}]", positive=True) for f in network.families]
@@ -117,8 +124,8 @@ def solve_with_roots(
     order.sort(key=lambda i: (i >= first + len(y), not _bound(network, unknowns, i - first)))
     polynomials = [_polynomial(algebra, terms) for terms in equations]
     elimination = _Elimination(algebra, first, order)
-    determined = elimination.run(polynomials)
-    if determined and elimination.ambiguous():
+    determined = elimination.keep(polynomials) if too_large else elimination.run(polynomials)
+    if not too_large and determined and elimination.ambiguous():
         # a root of what is left may make negative what was eliminated: keep all of them
         elimination = _Elimination(algebra, first, order, only_certain=True)
         determined = elimination.run(polynomials)
@@ -140,7 +147,7 @@ def solve_with_roots(
         values,
         dict(enumerate(q_y)),
         tuple(totals),
-        tuple(_root(algebra, first, ids, eqs) for ids, eqs in elimination.kept),
+        tuple(_root(algebra, ids, eqs, too_large=too_large) for ids, eqs in elimination.kept),
     )
 
 
@@ -225,12 +232,7 @@ class _Elimination:
                 continue
             step = self.best(equations)
             if step is None:
-                involved = tuple(self.left)
-                if len(equations) != len(involved):
-                    return False
-                self.kept.append((involved, tuple(equations)))
-                self.left = []
-                return True
+                return self.keep(equations)
             equation, i, slope, rest = step
             self.assigned.append((i, -rest, slope))
             self.left.remove(i)
@@ -241,6 +243,12 @@ class _Elimination:
             ]
             equations = [e for e in equations if e]
         return not equations
+
+    def keep(self, equations: Sequence[PolyElement]) -> bool:
+        """Leave all equations as they are."""
+        involved, self.left = tuple(self.left), []
+        self.kept.append((involved, tuple(equations)))
+        return len(equations) == len(involved)
 
     def unknowns(self, equation: PolyElement) -> set[int]:
         return {i for i in self.left if equation.degree(i) > 0}
@@ -340,13 +348,17 @@ class _Elimination:
 
 
 def _root(
-    algebra: Algebra, first: int, ids: tuple[int, ...], equations: tuple[PolyElement, ...]
+    algebra: Algebra,
+    ids: tuple[int, ...],
+    equations: tuple[PolyElement, ...],
+    *,
+    too_large: bool,
 ) -> Root:
     symbols = tuple(algebra.symbols[i] for i in ids)
     if len(ids) == 1:
         closed = _closed(algebra, ids[0], equations[0])
         if closed is not None:
-            return Root(symbols, equations, (closed,), closed=True, several=False)
+            return Root(symbols, equations, (closed,), True, False, False)
     # The unknowns of the system are the generators: roots of the symbols where these have any.
     unknowns = [sympy.Dummy(s.name, positive=True) for s in symbols]
     swap = {}
@@ -356,8 +368,8 @@ def _root(
     values = tuple(
         ImplicitValue(k, unknowns, written) ** algebra.roots[i] for k, i in enumerate(ids)
     )
-    several = len(ids) > 1 or not _one_root(coefficients(equations[0], ids[0]))
-    return Root(symbols, equations, values, closed=False, several=several)
+    one = too_large or (len(ids) == 1 and _one_root(coefficients(equations[0], ids[0])))
+    return Root(symbols, equations, values, False, too_large, not one)
 
 
 def _one_root(by_power: Mapping[int, PolyElement]) -> bool:
@@ -389,7 +401,7 @@ def _closed(algebra: Algebra, i: int, poly: PolyElement) -> Any | None:
     a = algebra.expr(by_power[high] * signs[high])
     c = algebra.expr(c0 * signs[0])
     if len(exponents) == 2:
-        return (c / a) ** power
+        return c**power / a**power
     if len(exponents) != 3 or high != 2 * step or exponents[1] != step:
         return None
     b = algebra.expr(by_power[step] * signs[high])

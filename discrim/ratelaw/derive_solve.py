@@ -88,15 +88,16 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
     powers: Mapping[int, int] = dict.fromkeys(range(len(free)), 1)
     totals: tuple[Quotient, ...] | None = None
     kept: tuple[Root, ...] = ()
+    too_large = False
     if _in_proportion(network, monomials):
         try:
             values = linear(network, algebra, free, both, found)
         except TooLarge:
-            values = None
+            too_large = True
     if values is not None:
         totals = _totals(network, algebra, monomials, values)
     else:
-        rooted = solve_with_roots(network, ordered, free, both, monomials, found)
+        rooted = solve_with_roots(network, ordered, free, both, monomials, found, too_large=too_large)
         algebra, values, powers, totals, kept = (
             rooted.algebra,
             rooted.values,

@@ -102,7 +102,12 @@ def roots_words(solution: Solution) -> tuple[str, ...]:
     out = []
     for root in solution.roots:
         names = _listed([s.name for s in root.symbols])
-        if not root.closed:
+        if root.too_large:
+            out.append(
+                "The sums over the network have too many terms to be written out: the law is kept "
+                "implicit and solved numerically, with exact derivatives."
+            )
+        elif not root.closed:
             out.append(
                 f"The balances have no closed form for {names}: the law is kept implicit and "
                 "solved numerically, with exact derivatives."

@@ -100,6 +100,9 @@ def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
     return replace(law, findings=(*law.findings, words))
 
 
+_MANY = 60  # coefficients of a law that is not looked at for a shorter form
+
+
 @dataclass(frozen=True, slots=True)
 class _Written:
     expressions: tuple[Any, ...]
@@ -118,8 +121,8 @@ def _write(
     shown = _differences(form, decisive)
     rank = _functional_rank(form, shown)
     special = per_catalyst or bool(equilibrium)
-    if rank == len(known) and not special and len(form.atoms) > len(known):
-        return None  # all constants of the steps can be told apart, though not as products
+    if rank == len(known) and not special and len(shown) > _MANY:
+        return None  # all constants of the steps can be told apart; no combination is shorter
     space = Span(shown)
     chosen: list[Candidate] = []
     solver = Span()
