@@ -101,7 +101,7 @@ def _balances(rate: Any) -> list[dict[str, Any]]:
         equation = sympy.Eq(0, balance, evaluate=False)
         out.append(
             {
-                "unknown": plain(unknown),
+                "unknown": str(unknown.name),
                 "text": plain(equation),
                 "latex": latex(equation),
                 "mathml": mathml(equation),
