@@ -198,7 +198,7 @@ def _differences(form: Form, decisive: int) -> list[Vector]:
 
 
 def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: Span) -> list[Vector]:
-    """For each denominator the coefficient that is written as 1.
+    """For each denominator the coefficient that is written as 1, or none.
 
     For a catalyst that of the reactants that saturate it; else of the term without amounts; else of
     one whose species stand in the numerator too. Another, if only so no constant is divided by that
@@ -225,8 +225,13 @@ def _norms(form: Form, per_catalyst: bool, fixed: Sequence[int], solver: Span) -
             powers = [solver(subtract(c.vector, norm)) for c in s.terms.values()]
             return all(p[i] >= 0 for p in powers for i in fixed)
 
-        pick = next((a for a in order if divides_by_none(a)), order[0])
-        out.append(s.terms[pick].vector)
+        pick = next((a for a in order if divides_by_none(a)), None)
+        if pick is not None:
+            out.append(s.terms[pick].vector)
+        elif solver.holds(s.terms[order[0]].vector):
+            out.append({})  # every coefficient can be told apart: none has to be written as 1
+        else:
+            out.append(s.terms[order[0]].vector)
     return out
 
 

@@ -58,9 +58,13 @@ def scaled(law: RateLaw) -> RateLaw:
         if set(powers[j]) == {j}:
             constants.append(c)
             continue
-        made = _made(powers[j], known, taken)
+        vector = powers[j]
+        divided = _only_divided_by(measured, c.symbol)
+        if divided:  # turned round, so that the law never divides by what may be zero
+            vector = {i: -e for i, e in vector.items()}
+        made = _made(vector, known, taken)
         taken.add(made.name)
-        swap[c.symbol] = made.symbol
+        swap[c.symbol] = 1 / made.symbol if divided else made.symbol
         constants.append(made)
     apart = list(law.pathways)
     rate = law.rate.xreplace(swap)
@@ -88,6 +92,17 @@ def scaled(law: RateLaw) -> RateLaw:
         else (),
         derivation=tuple(lines),
     )
+
+
+def _only_divided_by(expressions: Sequence[Any], symbol: sympy.Symbol) -> bool:
+    """Whether a constant stands in them only as a factor below."""
+    below = False
+    for e in expressions:
+        divisors = {p for p in e.atoms(sympy.Pow) if p.base == symbol and p.exp.is_negative}
+        below |= bool(divisors)
+        if symbol in e.xreplace(dict.fromkeys(divisors, sympy.Integer(1))).free_symbols:
+            return False
+    return below
 
 
 class _Unscalable(Exception):
