@@ -21,6 +21,7 @@ from discrim.ratelaw.implicit import ImplicitValue
 # Smallest amount at which logs and fractional powers are evaluated: [A]^n and its derivatives have
 # finite limits at zero for n > 0 that floating point would otherwise spoil with 0*inf.
 _TINY = 1e-200
+_MANY_TERMS = 100  # of a sum that is written in halves
 
 
 @lru_cache(maxsize=1)
@@ -35,6 +36,15 @@ def _printer() -> Any:
                 product = "*".join([self._print(base)] * abs(int(n)))
                 return f"({product})" if n > 0 else f"(1.0/({product}))"
             return str(super()._print_Pow(expr, rational=rational))
+
+        def _print_Add(self, expr: Any, order: Any = None) -> str:
+            terms = list(expr.args)
+            if len(terms) <= _MANY_TERMS:
+                return str(super()._print_Add(expr, order=order))
+            # Python reads a long sum by recursion, one level a term
+            half = len(terms) // 2
+            parts = (sympy.Add._from_args(t) for t in (terms[:half], terms[half:]))
+            return "+".join(f"({self._print(p)})" for p in parts)
 
     return Products(
         {"fully_qualified_modules": False, "inline": True, "allow_unknown_functions": True}

@@ -83,7 +83,8 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     production: dict[str, Any] = {}
     for f, species in enumerate(network.fluid):
         if overall is not None:
-            production[species.name] = sympy.Rational(*_ratio(overall[species])) * rate
+            nu = sympy.Rational(*_ratio(overall[species]))
+            production[species.name] = nu * rate if nu else sympy.Integer(0)
         else:
             pieces = [
                 times(solution.rates[s.name], c)

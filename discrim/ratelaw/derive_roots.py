@@ -112,7 +112,7 @@ def solve_with_roots(
         return out
 
     equations = []
-    for row in _nonlinear_first(found.rows, sides):
+    for row in _exchange_first(found.rows, sides):
         equations.append([(c, powers(m)) for c, m in row_terms(row, sides)])
     for family in network.families:
         total = [(w, powers(monomials[s])) for s, w in family.weights.items()]
@@ -161,10 +161,12 @@ def _bound(network: Network, unknowns: Sequence[Species], u: int) -> bool:
     return u < len(unknowns) and network.family_of(unknowns[u]) is not None
 
 
-def _nonlinear_first(rows: Sequence[Sequence[int]], sides: Sides) -> list[list[int]]:
-    """The same balances, combined so that steps between two intermediates stand in few of them."""
-    if not rows:
-        return []
+def _exchange_first(rows: Sequence[Sequence[int]], sides: Sides) -> list[list[int]]:
+    """The same balances, combined so that steps that turn one intermediate into another are in few.
+
+    Such steps are fast in a chain; where they do not stand, what starts and ends it is balanced
+    without being lost in their difference.
+    """
     width = len(sides)
 
     def degree(s: int) -> Fraction:
@@ -174,9 +176,10 @@ def _nonlinear_first(rows: Sequence[Sequence[int]], sides: Sides) -> list[list[i
             if m is not None
         )
 
-    order = sorted(range(width), key=lambda s: (degree(s) <= 1, s))
-    linear_from = sum(degree(s) > 1 for s in order)
-    reduced, _ = row_reduce([[Fraction(row[s]) for s in order] for row in rows], linear_from)
+    order = sorted(range(width), key=lambda s: (degree(s) != 1, s))
+    reduced, _ = (
+        row_reduce([[Fraction(row[s]) for s in order] for row in rows]) if rows else ([], 0)
+    )
     out = []
     for row in reduced:
         scale = lcm(*(x.denominator for x in row))

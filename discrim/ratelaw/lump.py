@@ -53,12 +53,15 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
     if written is None:
-        return _as_it_is(scaled(law), form, decisive)
+        return _as_it_is(law, form, decisive)
     rate, *others = written.expressions
     if fixed is None:
         production = dict(zip(names, others[: len(names)], strict=True))
     else:
-        production = {n: fixed.get(n, sympy.Integer(0)) * rate for n in law.production}
+        # sympy looks deep into the law before it takes zero times it for zero
+        production = {
+            n: fixed[n] * rate if fixed.get(n) else sympy.Integer(0) for n in law.production
+        }
     apart = others[len(names) :]
     pathways = (
         tuple(replace(p, rate=r) for p, r in zip(law.pathways, apart, strict=True)) if apart else ()
@@ -90,6 +93,9 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
 def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
     """A law that products of powers of its constants do not shorten, with what that leaves open."""
     rank = _functional_rank(form, _differences(form, decisive))
+    if rank == len(law.constants):
+        return law
+    law = scaled(law)
     n = len(law.constants)
     if rank == n:
         return law
