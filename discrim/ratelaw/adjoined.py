@@ -67,16 +67,23 @@ def implicit_system(exprs: Sequence[sympy.Expr]) -> tuple[Any, Any] | None:
 
 
 def with_balances(
-    exprs: Sequence[sympy.Expr], system: tuple[Any, Any], order: Sequence[int]
+    exprs: Sequence[sympy.Expr],
+    system: tuple[Any, Any],
+    order: Sequence[int],
+    scales: Sequence[sympy.Symbol] = (),
 ) -> list[sympy.Expr]:
-    """The expressions and the balances, with one symbol for each unknown."""
+    """The expressions and the balances, with one symbol for each unknown.
+
+    With ``scales`` each unknown is a constant times its symbol: the unknowns of two laws may differ
+    by such factors, where constants have been combined.
+    """
     unknowns, equations = system
     swap: dict[Any, Any] = {
         z: sympy.Symbol(f"[balance {order[k]}]", nonnegative=True) for k, z in enumerate(unknowns)
     }
-    values = {
-        v: swap[unknowns[v.index]] for e in exprs for v in e.atoms(ImplicitValue)
-    }  # fmt: skip
+    for z, scale in zip(unknowns, scales, strict=False):
+        swap[z] = scale * swap[z]
+    values = {v: swap[unknowns[v.index]] for e in exprs for v in e.atoms(ImplicitValue)}
     return [*(e.xreplace(values) for e in exprs), *(g.xreplace(swap) for g in equations)]
 
 

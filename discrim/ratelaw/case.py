@@ -94,6 +94,7 @@ class Case:
         self.as_given = list(self.larger), list(self.smaller)
         self.trouble = ""
         self.n_balances = 0
+        self.scales: list[sympy.Symbol] = []  # of the unknowns of balances; no constants
         self.roots_larger: list[Root | None] = [None] * len(self.larger)
         self.roots_smaller: list[Root | None] = [None] * len(self.smaller)
         try:
@@ -101,7 +102,7 @@ class Case:
         except TooManyRoots as reason:
             self.trouble = f"the laws hold {reason}"
         occurring = frozenset().union(*(e.free_symbols for e in self._whole_larger()))
-        self.unknown = [s for s in rename.values() if s in occurring]
+        self.unknown = [*self.scales, *(s for s in rename.values() if s in occurring)]
         self.n_restrictions = len(constants_larger) - len(constants_smaller)
         self.held = self._held()
 
@@ -118,7 +119,8 @@ class Case:
             by_name = len(set(names)) == len(names) and sorted(names) == sorted(here)
             order = [names.index(n) for n in here] if by_name else list(range(len(here)))
             self.n_balances = len(here)
-            self.larger = with_balances(self.larger, ours, order)
+            self.scales = [sympy.Dummy(f"scale {n}", nonnegative=True) for n in here]
+            self.larger = with_balances(self.larger, ours, order, self.scales)
             self.smaller = with_balances(self.smaller, theirs, list(range(len(here))))
         for exprs, roots, side in (
             (self.larger, "roots_larger", "l"),
@@ -151,6 +153,7 @@ class Case:
         """
         own = {s.name: s for s in self.small}
         values = {s: own.get(name, sympy.Integer(0)) for s, name in self.names.items()}
+        values |= dict.fromkeys(self.scales, sympy.Integer(1))
         if any(v == 0 and not s.is_nonnegative for s, v in values.items()):
             return None
         for one, other, root, other_root in zip(

@@ -100,6 +100,8 @@ def match(
         )
         if not shifts:
             return Outcome(complete=in_lowest_terms and complete, reason=missing)
+        if len(ours) == 1:  # a balance: a sum as common factor could bring roots of its own
+            shifts = [s for s in shifts if len(s) == 1]
         out.complete = out.complete and complete
         options.append(shifts)
     out.reason = "no constants of the other one, zero and infinity included, give its coefficients"

@@ -10,6 +10,7 @@ at 0, 1/2, 1, 2 and -1. What neither route decides is `NotProven`, never guessed
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 from typing import Any
 
 import sympy
@@ -109,7 +110,7 @@ def examine(
             if best is not None and best.inside:
                 return best
         if best is not None:
-            return best
+            return _plainest(case, best, alike)
     if disproven and not case.held:
         return Neither(disproven)
     if alike is not None:
@@ -140,6 +141,16 @@ def _plainly(case: Case, values: dict[str, sympy.Expr]) -> Nesting:
     """The laws are written alike, apart from terms whose constants are zero."""
     zero = tuple(n for n, v in values.items() if v == 0)
     return Nesting(values, zero, {}, (), case.n_restrictions, edge=bool(zero))
+
+
+def _plainest(case: Case, found: Nesting, alike: dict[str, sympy.Expr] | None) -> Nesting:
+    """Where constants are redundant, the choice that leaves every other one as it is."""
+    if alike is None or not found.redundant or found.vanish or found.infinite:
+        return found
+    plainly = _plainly(case, alike)
+    if set(plainly.zero) != set(found.zero):
+        return found
+    return replace(plainly, redundant=found.redundant)
 
 
 def _found(
@@ -196,7 +207,9 @@ def _read(case: Case, prepared: Prepared, solution: Solution) -> Nesting | None:
 
     names = case.names
     column = {s: i for i, s in enumerate(unknown)}
-    redundant = [names[unknown[i]] for i in solution.redundant]
+    if any(solution.along.get(i) for i, s in enumerate(unknown) if s in case.scales):
+        return None  # an unknown of a balance would go to zero with its scale
+    redundant = [names[unknown[i]] for i in solution.redundant if unknown[i] in names]
     limit = bool(solution.combinations) or any(e > 0 for e in solution.along.values())
     values: dict[str, sympy.Expr] = {}
     along: dict[str, tuple[sympy.Expr, sympy.Rational]] = {}
@@ -217,8 +230,8 @@ def _read(case: Case, prepared: Prepared, solution: Solution) -> Nesting | None:
                 along[name] = values[name], rate * powers[i]
             values[name] = sympy.Integer(0) if rate < 0 else sympy.oo
             (zero if rate < 0 else infinite).append(name)
-    vanish = [names[unknown[i]] for i in solution.vanish]
-    vanish += [names[s] for s in prepared.open_ if s not in column]
+    vanish = [names[unknown[i]] for i in solution.vanish if unknown[i] in names]
+    vanish += [names[s] for s in prepared.open_ if s not in column and s in names]
     for symbol in case.without_effect(prepared.choice, zero):
         vanish.append(names[symbol])
         values.pop(names[symbol])

@@ -22,8 +22,10 @@ from scipy.optimize import least_squares
 from discrim.errors import Place
 from discrim.mechanism.library import load_mechanism
 from discrim.ratelaw.bare import law_from_expression
+from discrim.ratelaw.compile import CompiledLaw
 from discrim.ratelaw.derive import derive
 from discrim.ratelaw.expression import parse_expression
+from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.model import RateLaw, quantity
 from discrim.ratelaw.nesting import Neither, Nesting, NotProven, examine, same_law
 from discrim.weigh.sameness import Pair, related
@@ -333,3 +335,40 @@ def test_hundreds_of_terms_and_twenty_constants() -> None:
     assert isinstance(
         examine([wrong.rate], [large.rate], wrong.constants, large.constants), Neither
     )
+
+
+def test_laws_that_only_balances_fix() -> None:
+    """Combined constants change the size of the unknown radical, not the law; a termination step
+    with its constant at zero is the mechanism without that step. Rates by the numerical solver."""
+    whole = derive(load_mechanism("autoxidation-chain", base=Path()))
+    assert whole.rate.has(ImplicitValue)
+    found = related([whole.rate], [whole.step_rate], whole.constants, whole.step_constants)
+    assert found.same is not None
+    (gone,) = [c for c in whole.step_constants if c.name == "k_end_RO2"]
+    rest = [c for c in whole.step_constants if c is not gone]
+    without = whole.step_rate.xreplace({gone.symbol: sympy.Integer(0)})
+    up = examine([without], [whole.step_rate], rest, whole.step_constants)
+    assert without.has(ImplicitValue)
+    assert isinstance(up, Nesting)
+    assert up.words() == "k_end_RO2 = 0"
+
+    species = sorted((s for s in whole.rate.free_symbols if s.name[0] == "["), key=str)
+    rng = np.random.default_rng(2)
+    amounts = np.exp(rng.uniform(-1, 1, (20, len(species))))
+    steps = np.exp(rng.uniform(-1, 1, len(whole.step_constants)))
+    numbers = {c.symbol: v for c, v in zip(whole.step_constants, steps, strict=True)}
+    combined = [float(found.same.a_from_b[c.name].subs(numbers)) for c in whole.constants]
+    rates = [
+        CompiledLaw(rate, [c.symbol for c in constants], species)(
+            np.asarray(theta)[None, None, :],
+            amounts,
+            constants=False,
+            conditions_too=False,
+            both=False,
+        )[0]
+        for rate, constants, theta in (
+            (whole.step_rate, whole.step_constants, steps),
+            (whole.rate, whole.constants, combined),
+        )
+    ]
+    np.testing.assert_allclose(rates[0], rates[1], rtol=1e-9)
