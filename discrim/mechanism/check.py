@@ -192,11 +192,12 @@ def _intermediates(mechanism: Mechanism) -> None:
 
 def catalyst_forms(
     mechanism: Mechanism, name: str, measured: frozenset[str] = frozenset()
-) -> tuple[Species, ...]:
-    """The species that hold the catalyst whose free form is ``name``, itself first.
+) -> dict[Species, int]:
+    """The species that hold the catalyst whose free form is ``name``, itself first, and how many.
 
-    They are the smallest set of species, one catalyst each, whose total no step changes; a species
-    that some step only makes or only consumes (a reactant, a product) is not among them.
+    They are the smallest set of species whose total no step changes, one catalyst each if that can
+    be (two for a dimer); a species that some step only makes or only consumes (a reactant, a
+    product) is not among them.
     """
     every = species_of(mechanism)
     free = next(s for s in every if s.name == name)
@@ -215,30 +216,32 @@ def catalyst_forms(
             one_way.add(species)
     barred = one_way | {s for s in every if s.site or s.name in measured} - {free}
     barred |= {s for s in every if s.name in mechanism.catalyst} - {free}
-    best: list[frozenset[Species]] = []
+    best: list[dict[Species, int]] = []
     budget = [5000]  # a hostile mechanism must not search for ever
 
-    def search(forms: frozenset[Species], rejected: frozenset[Species]) -> None:
+    def search(forms: dict[Species, int], rejected: frozenset[Species]) -> None:
         budget[0] -= 1
         if budget[0] < 0 or (best and len(forms) >= len(best[0])):
             return
         for change in changes:
-            balance = sum(n for s, n in change.items() if s in forms)
+            balance = sum(n * forms.get(s, 0) for s, n in change.items())
             if balance == 0:
                 continue
             options = [
-                s
+                (s, n)
                 for s, n in change.items()
                 if s not in forms and s not in barred and s not in rejected and n * balance < 0
             ]
             tried: frozenset[Species] = frozenset()
-            for option in options:
-                search(forms | {option}, rejected | tried)
+            for option, n in options:
+                whole = {1} | ({-balance // n} if balance % n == 0 else set())
+                for weight in sorted(whole):
+                    search({**forms, option: weight}, rejected | tried)
                 tried |= {option}
             return
         best[:] = [forms]
 
-    search(frozenset({free}), frozenset())
+    search({free: 1}, frozenset())
     if not best:
         broken = next(
             (s for s, c in zip(mechanism.steps, changes, strict=True) if c.get(free)),
@@ -250,4 +253,4 @@ def catalyst_forms(
             do="Every step that takes it up has to lead, over the other steps, back to it. Write "
             "the step that sets it free again, or leave it out of catalyst.",
         )
-    return (free, *(s for s in every if s in best[0] and s != free))
+    return {free: 1} | {s: best[0][s] for s in every if s in best[0]}

@@ -34,7 +34,7 @@ from discrim.ratelaw.derive_network import (
 from discrim.ratelaw.derive_solve import Solution, solve
 from discrim.ratelaw.derive_words import assumptions, conventions, derivation, roots_words
 from discrim.ratelaw.lump import lump
-from discrim.ratelaw.model import Constant, ConstantKind, Pathway, RateLaw, amount
+from discrim.ratelaw.model import Constant, ConstantKind, Pathway, RateLaw, amount, total_amount
 
 
 def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> RateLaw:
@@ -108,12 +108,16 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         rate=rate,
         production=production,
         constants=constants,
-        species=tuple(s.name for s in network.fluid if amount(s.name) in used),
+        species=tuple(
+            name
+            for name in (*(s.name for s in network.fluid), *_totals(network))
+            if amount(name) in used
+        ),
         step_rate=rate,
         step_constants=constants,
         pathways=pathways,
         assumptions=assumptions(network, solution),
-        conventions=(*conventions(network), parts.says),
+        conventions=(*conventions(network, solution), parts.says),
         derivation=derivation(network, solution, rate),
         steps={s.name: s.text for s in mechanism.steps},
         stoichiometry=None
@@ -132,7 +136,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     )
     lumped = lump(
         law,
-        per_catalyst=any(f.kind == "catalyst" for f in network.families),
+        per_catalyst=solution.per_catalyst,
         equilibrium=mechanism.overall_equilibrium,
     )
     wanted = mechanism.overall_equilibrium
@@ -144,6 +148,11 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             "reaction can go back by with <=>, or leave overall_equilibrium out.",
         )
     return lumped
+
+
+def _totals(network: Network) -> list[str]:
+    """Names by which the totals of catalysts may stand in a law."""
+    return [total_amount(f.name).name[1:-1] for f in network.families if f.kind == "catalyst"]
 
 
 def _ratio(x: Fraction) -> tuple[int, int]:

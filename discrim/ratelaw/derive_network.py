@@ -76,7 +76,7 @@ def classify(mechanism: Mechanism, measured: frozenset[str] | None) -> Network:
                 place=mechanism.place,
                 do="A complex of two named catalysts is not yet supported.",
             )
-        families.append(Family("catalyst", name, forms[0], dict.fromkeys(forms, 1)))
+        families.append(Family("catalyst", name, next(iter(forms)), forms))
     bound = {s for f in families for s in f.weights}
     findings: list[str] = []
     steady = _steady(mechanism, every, bound, measured, findings)

@@ -40,6 +40,7 @@ from discrim.ratelaw.derive_balances import (
 from discrim.ratelaw.derive_equilibria import Monomial
 from discrim.ratelaw.derive_network import Network, row_reduce
 from discrim.ratelaw.implicit import ImplicitValue
+from discrim.ratelaw.model import total_amount
 from discrim.ratelaw.solve import linear_in, one_sign, put
 
 _MOST_FACTORED = 60  # terms; factoring is slow
@@ -101,6 +102,8 @@ def solve_with_roots(
     v = [sympy.Dummy(f"[{f.reference.name}]", positive=True) for f in network.families]
     q_y = [lcm(*(m.u.get(i, Fraction(0)).denominator for m in every)) for i in range(len(y))]
     q_v = [lcm(*(m.v.get(k, Fraction(0)).denominator for m in every)) for k in range(len(v))]
+    totals_of = [total_amount(f.name) for f in network.families if f.kind != "sites"]
+    roots_of = {**roots_of, **dict.fromkeys(totals_of, 1)}
     algebra = Algebra.over(
         {**roots_of, **dict(zip(y, q_y, strict=True)), **dict(zip(v, q_v, strict=True))}
     )
@@ -116,7 +119,9 @@ def solve_with_roots(
         equations.append([(c, powers(m)) for c, m in row_terms(row, sides)])
     for family in network.families:
         total = [(w, powers(monomials[s])) for s, w in family.weights.items()]
-        equations.append([*total, (-1, {})])
+        # sites are counted as fractions; of a catalyst whose forms meet, the total matters
+        whole = {} if family.kind == "sites" else {total_amount(family.name): Fraction(1)}
+        equations.append([*total, (-1, whole)])
     first = len(roots_of)
     # Intermediates go first, vacant sites stay to the last: a root that is a share of the sites, or
     # a radical, is the one that a chemist would name.

@@ -21,12 +21,12 @@ from sympy.polys.rings import PolyElement
 from discrim.errors import DiscrimError
 from discrim.mechanism.model import Species, Step
 from discrim.ratelaw.derive_algebra import Algebra, Quotient, TooLarge, total
-from discrim.ratelaw.derive_balances import Factors, Value, balances, linear
+from discrim.ratelaw.derive_balances import Factors, Sides, Value, balances, linear
 from discrim.ratelaw.derive_cycles import Relation, relations
 from discrim.ratelaw.derive_equilibria import Constants, Monomial, equilibria, sides
 from discrim.ratelaw.derive_network import Network
 from discrim.ratelaw.derive_roots import Root, solve_with_roots
-from discrim.ratelaw.model import amount
+from discrim.ratelaw.model import amount, total_amount
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,6 +41,7 @@ class Solution:
     monomials : each intermediate in symbols, unknowns and references
     values : the unknowns as factors above and below; ``powers[u]``: to the power 1/powers[u]
     totals : S_k, so that reference k is 1/S_k
+    per_catalyst : amounts of a catalyst are fractions of its total, and rates per total
     roots : unknowns that stand in the above as symbols, and what they are
     """
 
@@ -54,6 +55,7 @@ class Solution:
     powers: Mapping[int, int]
     totals: tuple[Quotient, ...]
     roots: tuple[Root, ...]
+    per_catalyst: bool
 
     def put_roots(self, expression: Any) -> Any:
         """``expression`` with the roots in place of their symbols."""
@@ -82,6 +84,10 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
     names = {amount(s.name) for s in network.fluid}
     ordered = {s: q for s, q in roots.items() if s not in names}
     ordered |= {s: q for s, q in roots.items() if s in names}
+    absolute = not _first_order(network, both)
+    if absolute:
+        catalysts = [f.name for f in network.families if f.kind == "catalyst"]
+        ordered |= {total_amount(name): 1 for name in catalysts}
     algebra = Algebra.over(ordered)
     found = balances(network, free)
     values: Mapping[int, Value] | None = None
@@ -94,10 +100,16 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
             values = linear(network, algebra, free, both, found)
         except TooLarge:
             too_large = True
+    catalysed = any(f.kind == "catalyst" for f in network.families)
+    per_catalyst = catalysed and values is not None and not absolute
     if values is not None:
         totals = _totals(network, algebra, monomials, values)
+        if absolute:
+            totals = _with_amounts(network, algebra, totals)
     else:
-        rooted = solve_with_roots(network, ordered, free, both, monomials, found, too_large=too_large)
+        rooted = solve_with_roots(
+            network, ordered, free, both, monomials, found, too_large=too_large
+        )
         algebra, values, powers, totals, kept = (
             rooted.algebra,
             rooted.values,
@@ -121,12 +133,38 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
         powers,
         totals,
         kept,
+        per_catalyst,
     )
 
 
 def _roots(roots: dict[sympy.Symbol, int], m: Monomial) -> None:
     for symbol, e in m.symbols.items():
         roots[symbol] = lcm(roots.get(symbol, 1), e.denominator)
+
+
+def _first_order(network: Network, both: Sides) -> bool:
+    """Whether every rate is first order in each catalyst, so that a rate per catalyst has a sense."""
+    return all(
+        m.v.get(k) == 1
+        for k, family in enumerate(network.families)
+        if family.kind == "catalyst"
+        for side in both
+        for m in side
+        if m is not None
+    )
+
+
+def _with_amounts(
+    network: Network, algebra: Algebra, totals: Sequence[Quotient]
+) -> tuple[Quotient, ...]:
+    """References of catalysts as amounts: their share times the total."""
+    out = []
+    for family, total_of in zip(network.families, totals, strict=True):
+        if family.kind == "catalyst":
+            whole = algebra.monomial({total_amount(family.name): Fraction(1)})[0]
+            total_of = Quotient(total_of.top, (*total_of.bottom, (whole, 1)))
+        out.append(total_of)
+    return tuple(out)
 
 
 def _in_proportion(network: Network, monomials: Mapping[Species, Monomial]) -> bool:

@@ -15,7 +15,7 @@ from discrim.ratelaw.derive_cycles import Relation
 from discrim.ratelaw.derive_equilibria import Monomial, Powers, backward, equilibrium, forward
 from discrim.ratelaw.derive_network import Network
 from discrim.ratelaw.derive_solve import Solution, poly_expr
-from discrim.ratelaw.model import amount
+from discrim.ratelaw.model import amount, total_amount
 
 _LONG = 200  # terms of a sum that nobody would read
 
@@ -120,7 +120,7 @@ def roots_words(solution: Solution) -> tuple[str, ...]:
     return tuple(out)
 
 
-def conventions(network: Network) -> tuple[str, ...]:
+def conventions(network: Network, solution: Solution) -> tuple[str, ...]:
     """How the symbols are to be read, full sentences."""
     out = [
         "Mass action: the order of each species in a step is its coefficient; amounts stand for "
@@ -136,8 +136,12 @@ def conventions(network: Network) -> tuple[str, ...]:
             "include the density of sites."
         )
     for family in network.families:
-        if family.kind == "catalyst":
+        if family.kind != "catalyst":
+            continue
+        if solution.per_catalyst:
             out.append(f"The rate is per total {family.name}.")
+        else:
+            out.append(f"[total {family.name}] is the amount of {family.name} over all its forms.")
     return tuple(out)
 
 
@@ -156,12 +160,16 @@ def derivation(network: Network, solution: Solution, rate: Any) -> tuple[tuple[s
         lines.append((f"Net rate of step {step.name}: {step.text}", _rate_symbolic(step)))
     for family in network.families:
         total = sympy.Add(*(w * amount(s.name) for s, w in family.weights.items()))
+        whole: Any = sympy.Integer(1)
         words = (
             f"Sites {family.name}: vacant and covered fractions sum to 1"
             if family.kind == "sites"
             else f"Forms of {family.name}, as fractions of its total, sum to 1"
         )
-        lines.append((words, sympy.Eq(total, 1, evaluate=False)))
+        if family.kind == "catalyst" and not solution.per_catalyst:
+            words = f"Forms of {family.name} sum to its total"
+            whole = total_amount(family.name)
+        lines.append((words, sympy.Eq(total, whole, evaluate=False)))
     for step in network.equilibrated:
         ratio = sympy.Mul(*(amount(s.name) ** n for s, n in step.right)) / sympy.Mul(
             *(amount(s.name) ** n for s, n in step.left)

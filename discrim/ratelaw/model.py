@@ -116,6 +116,11 @@ def amount(species: str) -> sympy.Symbol:
     return sympy.Symbol(f"[{species}]", nonnegative=True)
 
 
+def total_amount(catalyst: str) -> sympy.Symbol:
+    """The symbol for the total amount of a catalyst over all its forms."""
+    return amount(f"total {catalyst}")
+
+
 def constant_symbol(name: str, kind: ConstantKind = ConstantKind.RATE) -> sympy.Symbol:
     """The symbol of a constant: nonnegative unless it is an order."""
     if kind is ConstantKind.ORDER:

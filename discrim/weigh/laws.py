@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
 from discrim.errors import DiscrimError
 from discrim.ratelaw.bare import law_from_expression
 from discrim.ratelaw.derive import derive
-from discrim.ratelaw.model import RateLaw, quantity
+from discrim.ratelaw.model import RateLaw, quantity, total_amount
 from discrim.runs.model import Role
 from discrim.study.lookup import measured_species
 from discrim.study.model import Candidate, Study
@@ -81,6 +82,9 @@ def per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) -> 
     catalysts = candidate.mechanism.catalyst
     if not catalysts:
         return law
+    totals = {total_amount(name): name for name in catalysts}
+    if law.rate.free_symbols & totals.keys():
+        return _with_totals(law, totals, study)
     for column in study.runs.columns:
         if column.role is Role.CATALYST or (
             column.role is Role.TOTAL and column.about in catalysts
@@ -96,6 +100,25 @@ def per_amount_of_catalyst(law: RateLaw, candidate: Candidate, study: Study) -> 
         production={k: e * times for k, e in law.production.items()},
         pathways=tuple(replace(p, rate=p.rate * times) for p in law.pathways),
         conventions=(*law.conventions, words),
+    )
+
+
+def _with_totals(law: RateLaw, totals: Mapping[Any, str], study: Study) -> RateLaw:
+    """A law that holds the totals of its catalysts, the columns that give them put in."""
+    swap = {}
+    for symbol, name in totals.items():
+        for column in study.runs.columns:
+            alone = column.role is Role.CATALYST and len(totals) == 1
+            if alone or (column.role is Role.TOTAL and column.about == name):
+                swap[symbol] = quantity(column.name)
+                break
+    given = {symbol.name[1:-1] for symbol in swap}
+    return replace(
+        law,
+        rate=law.rate.xreplace(swap),
+        production={k: e.xreplace(swap) for k, e in law.production.items()},
+        pathways=tuple(replace(p, rate=p.rate.xreplace(swap)) for p in law.pathways),
+        species=tuple(s for s in law.species if s not in given),
     )
 
 
