@@ -33,12 +33,14 @@ class NoSteadyState(Exception):
 class Values:
     """Numbers for a mechanism: natural logarithms of constants, amounts as they are.
 
-    ``forward`` log k of each step; ``equilibrium`` log K of each reversible step as written.
+    ``forward`` log k of each step; ``equilibrium`` log K of each reversible step as written;
+    ``totals`` of the families, one each when not given.
     """
 
     forward: Mapping[str, Any]
     equilibrium: Mapping[str, Any]
     amounts: Mapping[str, Any]
+    totals: Sequence[float] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,6 +60,7 @@ class _System:
     ahead: list[list[tuple[int, int]]]  # by step: (intermediate, order)
     back: list[list[tuple[int, int]]]
     totals: list[list[int]]  # by family: units that each intermediate holds
+    amounts: list[float]  # by family: what they add up to
     kept: list[int]  # intermediates whose balances are independent of each other
 
 
@@ -74,8 +77,7 @@ def steady_state(
 
     Parameters
     ----------
-    families : members of each conserved total (sites, catalyst) with the units each holds; the
-        total is 1
+    families : members of each conserved total (sites, catalyst) with the units each holds
     steady : further intermediates, in no family
     equilibrated : names of the steps that are fast
     near : shares at a steady state close by, to start from
@@ -87,7 +89,7 @@ def steady_state(
     """
     inner = [name for family in families for name in family] + list(steady)
     index = {name: i for i, name in enumerate(inner)}
-    system = _system(mechanism, index, families)
+    system = _system(mechanism, index, families, values.totals or [1.0] * len(families))
     names = [s.name for s in mechanism.steps]
     with mpmath.workdps(DIGITS):
         ahead, back = _constants(mechanism, values, index, equilibrated, FAST)
@@ -120,7 +122,10 @@ def steady_state(
 
 
 def _system(
-    mechanism: Mechanism, index: Mapping[str, int], families: Sequence[Mapping[str, int]]
+    mechanism: Mechanism,
+    index: Mapping[str, int],
+    families: Sequence[Mapping[str, int]],
+    amounts: Sequence[float],
 ) -> _System:
     n, m = len(index), len(mechanism.steps)
     change = [[0] * m for _ in range(n)]
@@ -143,7 +148,7 @@ def _system(
             kept.append(i)
     if len(kept) + len(totals) != n:
         raise NoSteadyState("the balances and totals are not as many as the intermediates")
-    return _System(change, sides[0], sides[1], totals, kept)
+    return _System(change, sides[0], sides[1], totals, list(amounts), kept)
 
 
 def _constants(
@@ -194,12 +199,13 @@ def _gross(system: _System, ahead: Any, back: Any, x: Any) -> list[Any]:
 def _starts(system: _System, n: int) -> list[np.ndarray]:
     """All members alike; and nearly all in the first of each family."""
     alike, first = np.full(n, 0.1), np.full(n, 1e-3)
-    for total in system.totals:
+    for total, amount in zip(system.totals, system.amounts, strict=True):
         w = np.array(total, dtype=float)
         members = w > 0
-        alike[members] = 1 / w.sum()
+        alike[members] = amount / w.sum()
         at = int(np.argmax(members))
-        first[at] = (1 - 1e-3 * (w.sum() - w[at])) / w[at]
+        first[members] = 1e-3 * amount
+        first[at] = amount * (1 - 1e-3 * (w.sum() - w[at])) / w[at]
     return [alike, first]
 
 
@@ -279,7 +285,7 @@ def _newton(
             r = len(system.kept) + k
             for c, w in enumerate(total):
                 matrix[r][c] = w * x[c]
-            right.append(1 - sum(matrix[r]))
+            right.append(system.amounts[k] - sum(matrix[r]))
         move = _linear(matrix, right)
         largest = max(abs(v) for v in move)
         factor = 1 if largest < 2 else 2 / largest

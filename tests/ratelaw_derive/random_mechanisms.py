@@ -79,7 +79,7 @@ class Case:
         """All of it, to be read in a failure."""
         lines = [f"number {self.number}, {self.draft.kind}", repr(self.draft.keywords())]
         lines += [f"log k {dict(self.values.forward)}", f"log K {dict(self.values.equilibrium)}"]
-        lines += [f"amounts {dict(self.values.amounts)}"]
+        lines += [f"amounts {dict(self.values.amounts)}, totals {list(self.values.totals)}"]
         return "\n".join(lines)
 
 
@@ -121,7 +121,10 @@ def _case(number: int, draft: Draft, rng: np.random.Generator) -> Case | None:
             if s.reversible
         }
         amounts = {name: float(10 ** rng.uniform(-0.6, 0.6)) for name in fluid}
-        values = Values(forward, equilibrium, amounts)
+        totals = [
+            float(10 ** rng.uniform(-0.5, 0.5)) if draft.catalyst else 1.0 for _ in draft.families
+        ]
+        values = Values(forward, equilibrium, amounts, totals)
         try:
             steady = steady_state(
                 mechanism,

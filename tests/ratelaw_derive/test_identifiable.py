@@ -6,7 +6,6 @@ from fractions import Fraction
 from functools import lru_cache
 from typing import Any
 
-import mpmath
 import numpy as np
 import pytest
 import sympy
@@ -17,13 +16,11 @@ from discrim.mechanism.parse import parse_mechanism
 from discrim.ratelaw.derive import derive
 from discrim.ratelaw.expression import parse_expression
 from discrim.ratelaw.model import RateLaw, constant_symbol
-from tests.ratelaw_derive.full_mass_action import Values, steady_state
 from tests.ratelaw_derive.known_combinations import KNOWN, Known
+from tests.ratelaw_derive.random_mechanisms import Case, cases, equilibrated_steps
+from tests.ratelaw_derive.sensitivity import rank_of_rates
 
-STEP = mpmath.mpf(10) ** -30  # of the differences below, in the logarithms
-NONE = mpmath.mpf(10) ** -14  # a pivot below this is none: differences carry some 25 digits
-ROUNDING = mpmath.mpf(10) ** -20  # of the largest production: one below this is zero
-SOME = mpmath.mpf(10) ** -8  # and one above is one
+DRAWN_SEED, DRAWN = 3, 39
 
 
 def fluid(known: Known, mechanism: Mechanism) -> frozenset[str]:
@@ -131,75 +128,46 @@ def test_constants_are_functions_of_the_known_combinations_and_the_other_way_rou
     assert rank([*published, *ours]) == len(published)
 
 
-def pivots(matrix: list[list[Any]]) -> list[Any]:
-    """Sizes of the pivots of elimination with full pivoting, rows scaled to one."""
-    rows = [[v / max(abs(u) for u in row) for v in row] for row in matrix if any(row)]
-    out = []
-    while rows and rows[0]:
-        size, r, c = max(
-            ((abs(v), r, c) for r, row in enumerate(rows) for c, v in enumerate(row)),
-            key=lambda item: item[0],
-        )
-        out.append(size)
-        if size < NONE:
-            break
-        top = rows.pop(r)
-        rows = [
-            [
-                u - row[c] / top[c] * v
-                for j, (u, v) in enumerate(zip(row, top, strict=True))
-                if j != c
-            ]
-            for row in rows
-        ]
-    return out
-
-
 @pytest.mark.parametrize("name", KNOWN)
 def test_rank_of_the_full_equations(name):
-    """How many constants rates show, without any law: from the full mass-action equations.
-
-    Production of all fluid species at many random amounts, differentiated in many digits.
-    """
+    """How many constants rates show, without any law."""
     mechanism, _ = law_of(name)
     known = KNOWN[name]
-    rng = np.random.default_rng(7)
-    species = sorted({s.name for t in mechanism.steps for s, _ in (*t.left, *t.right)})
-    kinetic = [s.name for s in mechanism.steps if s.name not in known.equilibrated]
-    point = {n: mpmath.mpf(rng.uniform(-1, 1)) for n in [*kinetic, *(f"mu {s}" for s in species)]}
-    families = [dict.fromkeys(family, 1) for family in known.families]
+    count = rank_of_rates(
+        mechanism,
+        families=[dict.fromkeys(family, 1) for family in known.families],
+        steady=known.free,
+        equilibrated=known.equilibrated,
+        conditions=2 * len(known.combinations) + 4,
+    )
+    assert count == len(known.combinations)
 
-    def state(p: dict[str, Any], amounts: dict[str, float], near: Any = None) -> Any:
-        big_k = {
-            s.name: sum(n * p[f"mu {x.name}"] for x, n in s.left)
-            - sum(n * p[f"mu {x.name}"] for x, n in s.right)
-            for s in mechanism.steps
-            if s.reversible
-        }
-        forward = {s.name: p.get(s.name, mpmath.mpf(0)) for s in mechanism.steps}
-        return steady_state(
-            mechanism,
-            Values(forward, big_k, amounts),
-            families=families,
-            steady=known.free,
-            equilibrated=known.equilibrated,
-            near=near,
-        )
 
-    matrix = []
-    with mpmath.workdps(60):
-        for _ in range(2 * len(known.combinations) + 4):
-            amounts = {s: float(10 ** rng.uniform(-1, 1)) for s in fluid(known, mechanism)}
-            base = state(point, amounts)
-            moved = [state({**point, n: point[n] + STEP}, amounts, near=base.shares) for n in point]
-            largest = max(abs(r) for r in base.production.values())
-            for s, rate in base.production.items():
-                if abs(rate) > ROUNDING * largest:
-                    matrix.append([(m.production[s] - rate) / STEP for m in moved])
-        sizes = pivots(matrix)
-    count = sum(x > SOME for x in sizes)
-    assert all(x > SOME or x < NONE for x in sizes), [float(x) for x in sizes]
-    assert count == len(known.combinations), [float(x) for x in sizes]
+@lru_cache(maxsize=1)
+def drawn() -> list[Case]:
+    return cases(DRAWN_SEED, DRAWN)
+
+
+@pytest.mark.parametrize("number", range(DRAWN))
+def test_drawn_laws_have_no_constant_that_rates_cannot_show(number):
+    """As many constants as the rank of the full equations, or a finding says how many more."""
+    case = drawn()[number]
+    law = derive(case.mechanism, measured=frozenset(case.fluid))
+    count = rank_of_rates(
+        case.mechanism,
+        families=case.draft.families,
+        steady=case.draft.steady,
+        equilibrated=equilibrated_steps(case.draft, case.mechanism),
+        conditions=len(law.constants) + 6,
+    )
+    said = [f for f in law.findings if "also implies" in f or "Rates can tell apart only" in f]
+    if not said:
+        assert len(law.constants) == count, f"{case.text()}\n{law.rate}"
+        return
+    more = "a relation" in said[0] or str(len(law.constants) - count) in said[0].split()
+    fewer = f"only {count} combinations of the {len(law.constants)} constants" in said[0]
+    assert len(law.constants) > count
+    assert more or fewer, f"rank {count}\n{said}\n{case.text()}"
 
 
 @pytest.mark.parametrize("name", KNOWN)
