@@ -94,15 +94,11 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             production[species.name] = _grouped(algebra, _compact(network, pieces))
     pathways: tuple[Pathway, ...] = ()
     if len(parts.terms) > 1 and all(name for name, _ in parts.terms):
-        pathways = tuple(
-            Pathway(name, (name,), solution.put_roots(quotient.expr(algebra)))
-            for name, quotient in parts.terms
-        )
-    rate = solution.put_roots(rate)
-    production = {name: solution.put_roots(e) for name, e in production.items()}
-    constants = _constants(network, [rate, *production.values()])
+        pathways = tuple(Pathway(name, (name,), q.expr(algebra)) for name, q in parts.terms)
+    equations = [e for group in solution.groups for e in group.equations]
+    constants = _constants(network, [rate, *production.values(), *equations])
     check_limiting_shows(mechanism, [c.name for c in constants])
-    used = set().union(*(e.free_symbols for e in (rate, *production.values())))
+    used = set().union(*(e.free_symbols for e in (rate, *production.values(), *equations)))
     law = RateLaw(
         name=mechanism.name,
         rate=rate,
@@ -113,12 +109,12 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             for name in (*(s.name for s in network.fluid), *_totals(network))
             if amount(name) in used
         ),
-        step_rate=rate,
+        step_rate=rate.xreplace(solution.roots),
         step_constants=constants,
         pathways=pathways,
         assumptions=assumptions(network, solution),
         conventions=(*conventions(network, solution), parts.says),
-        derivation=derivation(network, solution, rate),
+        derivation=derivation(network, solution, rate.xreplace(solution.roots)),
         steps={s.name: s.text for s in mechanism.steps},
         stoichiometry=None
         if overall is None
@@ -138,6 +134,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
         law,
         per_catalyst=solution.per_catalyst,
         equilibrium=mechanism.overall_equilibrium,
+        groups=solution.groups,
     )
     wanted = mechanism.overall_equilibrium
     if wanted and all(c.name != wanted for c in lumped.constants):

@@ -11,19 +11,15 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
-from itertools import pairwise
-from math import gcd, lcm
-from typing import Any
+from math import lcm
 
 import sympy
-from sympy import Rational
 from sympy.polys.rings import PolyElement
 
 from discrim.mechanism.model import Species
 from discrim.ratelaw.derive_algebra import (
     Algebra,
     Quotient,
-    coefficients,
     common_factor,
     exact_quotient,
     lowered,
@@ -39,34 +35,12 @@ from discrim.ratelaw.derive_balances import (
 )
 from discrim.ratelaw.derive_equilibria import Monomial
 from discrim.ratelaw.derive_network import Network, row_reduce
-from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.model import total_amount
+from discrim.ratelaw.roots import Group, one_root, powers_of
 from discrim.ratelaw.solve import linear_in, one_sign, put
 
 _MOST_FACTORED = 60  # terms; factoring is slow
 _MOST = 3000  # terms of one equation while unknowns are eliminated; beyond it they stay implicit
-
-
-@dataclass(frozen=True, slots=True)
-class Root:
-    """Unknowns that the law holds by their symbols, with what they are.
-
-    Attributes
-    ----------
-    symbols : the unknowns, symbols of the algebra
-    equations : polynomials of the algebra that are zero there
-    values : what the law is written with in the end, one for each symbol
-    closed : the values are closed forms
-    too_large : they have one, with too many terms
-    several : more than one positive solution cannot be ruled out
-    """
-
-    symbols: tuple[sympy.Symbol, ...]
-    equations: tuple[PolyElement, ...]
-    values: tuple[Any, ...]
-    closed: bool
-    too_large: bool
-    several: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,7 +54,7 @@ class Rooted:
     values: dict[int, Value]
     powers: dict[int, int]  # values[u] is the unknown to the power 1/powers[u]
     totals: tuple[Quotient, ...]
-    roots: tuple[Root, ...]
+    groups: tuple[Group, ...]  # unknowns that stand in the above as symbols
 
 
 def solve_with_roots(
@@ -104,14 +78,12 @@ def solve_with_roots(
     q_v = [lcm(*(m.v.get(k, Fraction(0)).denominator for m in every)) for k in range(len(v))]
     totals_of = [total_amount(f.name) for f in network.families if f.kind != "sites"]
     roots_of = {**roots_of, **dict.fromkeys(totals_of, 1)}
-    algebra = Algebra.over(
-        {**roots_of, **dict(zip(y, q_y, strict=True)), **dict(zip(v, q_v, strict=True))}
-    )
+    algebra = Algebra.over({**roots_of, **dict.fromkeys([*y, *v], 1)})
 
     def powers(m: Monomial) -> dict[sympy.Symbol, Fraction]:
         out = dict(m.symbols)
-        out |= {y[i]: e for i, e in m.u.items()}
-        out |= {v[k]: e for k, e in m.v.items()}
+        out |= {y[i]: e * q_y[i] for i, e in m.u.items()}
+        out |= {v[k]: e * q_v[k] for k, e in m.v.items()}
         return out
 
     equations = []
@@ -152,7 +124,10 @@ def solve_with_roots(
         values,
         dict(enumerate(q_y)),
         tuple(totals),
-        tuple(_root(algebra, ids, eqs, too_large=too_large) for ids, eqs in elimination.kept),
+        tuple(
+            Group(tuple(algebra.symbols[i] for i in ids), tuple(algebra.expr(e) for e in equations))
+            for ids, equations in elimination.kept
+        ),
     )
 
 
@@ -309,7 +284,10 @@ class _Elimination:
     def ambiguous(self) -> bool:
         """Whether what was kept has several positive roots, not all of them sure to be allowed."""
         several = any(
-            len(ids) > 1 or not _one_root(coefficients(equations[0], ids[0]))
+            len(ids) > 1
+            or not one_root(
+                powers_of(self.algebra.expr(equations[0]), self.algebra.symbols[ids[0]])
+            )
             for ids, equations in self.kept
         )
         return several and not self.all_certain
@@ -353,65 +331,3 @@ class _Elimination:
                 top, bottom = -top, -bottom
             out[i] = (top, bottom)
         return out
-
-
-def _root(
-    algebra: Algebra,
-    ids: tuple[int, ...],
-    equations: tuple[PolyElement, ...],
-    *,
-    too_large: bool,
-) -> Root:
-    symbols = tuple(algebra.symbols[i] for i in ids)
-    if len(ids) == 1:
-        closed = _closed(algebra, ids[0], equations[0])
-        if closed is not None:
-            return Root(symbols, equations, (closed,), True, False, False)
-    # The unknowns of the system are the generators: roots of the symbols where these have any.
-    unknowns = [sympy.Dummy(s.name, positive=True) for s in symbols]
-    swap = {}
-    for s, z, i in zip(symbols, unknowns, ids, strict=True):
-        swap[s] = z ** algebra.roots[i]
-    written = [algebra.expr(e).xreplace(swap) for e in equations]
-    values = tuple(
-        ImplicitValue(k, unknowns, written) ** algebra.roots[i] for k, i in enumerate(ids)
-    )
-    one = too_large or (len(ids) == 1 and _one_root(coefficients(equations[0], ids[0])))
-    return Root(symbols, equations, values, False, too_large, not one)
-
-
-def _one_root(by_power: Mapping[int, PolyElement]) -> bool:
-    """One positive root for all values of the symbols: one change of sign (Descartes)."""
-    signs = [one_sign(by_power[e], frozenset()) for e in sorted(by_power)]
-    unclear = [k for k, s in enumerate(signs) if s is None]
-    if len(unclear) > 1:
-        return False
-    known = [s for s in signs if s is not None]
-    changes = sum(a != b for a, b in pairwise(known))
-    if not unclear:
-        return changes == 1
-    (k,) = unclear  # either sign gives one change only between two of opposite sign
-    return 0 < k < len(signs) - 1 and changes == 1 and signs[k - 1] != signs[k + 1]
-
-
-def _closed(algebra: Algebra, i: int, poly: PolyElement) -> Any | None:
-    """The positive root as an expression, if the equation is a power or a quadratic of one."""
-    by_power = coefficients(poly, i)
-    exponents = sorted(by_power)
-    step = gcd(*exponents)
-    if exponents[0] != 0:
-        return None
-    power = Rational(algebra.roots[i], step)
-    signs = {e: one_sign(c, frozenset()) for e, c in by_power.items()}
-    high, c0 = exponents[-1], by_power[0]
-    if signs[0] is None or signs[high] is None or signs[high] == signs[0]:
-        return None
-    a = algebra.expr(by_power[high] * signs[high])
-    c = algebra.expr(c0 * signs[0])
-    if len(exponents) == 2:
-        return c**power / a**power
-    if len(exponents) != 3 or high != 2 * step or exponents[1] != step:
-        return None
-    b = algebra.expr(by_power[step] * signs[high])
-    # 2c/(b + sqrt(b^2 + 4ac)) does not cancel where b > 0, and holds for a = 0
-    return (2 * c / (b + sympy.sqrt(b**2 + 4 * a * c))) ** power

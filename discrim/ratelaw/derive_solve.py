@@ -25,8 +25,9 @@ from discrim.ratelaw.derive_balances import Factors, Sides, Value, balances, lin
 from discrim.ratelaw.derive_cycles import Relation, relations
 from discrim.ratelaw.derive_equilibria import Constants, Monomial, equilibria, sides
 from discrim.ratelaw.derive_network import Network
-from discrim.ratelaw.derive_roots import Root, solve_with_roots
+from discrim.ratelaw.derive_roots import solve_with_roots
 from discrim.ratelaw.model import amount, total_amount
+from discrim.ratelaw.roots import Group, Solved, solve_groups
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,7 +43,9 @@ class Solution:
     values : the unknowns as factors above and below; ``powers[u]``: to the power 1/powers[u]
     totals : S_k, so that reference k is 1/S_k
     per_catalyst : amounts of a catalyst are fractions of its total, and rates per total
-    roots : unknowns that stand in the above as symbols, and what they are
+    groups : unknowns that stand in the above as symbols, with their equations
+    too_large : the equations are linear, but have too many terms to be solved in writing
+    roots : what the unknowns of ``groups`` are
     """
 
     algebra: Algebra
@@ -54,14 +57,11 @@ class Solution:
     values: Mapping[int, Value]
     powers: Mapping[int, int]
     totals: tuple[Quotient, ...]
-    roots: tuple[Root, ...]
+    groups: tuple[Group, ...]
+    too_large: bool
+    roots: Mapping[sympy.Symbol, Any]
+    solved: Sequence[Solved]
     per_catalyst: bool
-
-    def put_roots(self, expression: Any) -> Any:
-        """``expression`` with the roots in place of their symbols."""
-        for root in reversed(self.roots):  # a later root may hold symbols of earlier ones
-            expression = expression.xreplace(dict(zip(root.symbols, root.values, strict=True)))
-        return expression
 
 
 def solve(network: Network, wanted: frozenset[str]) -> Solution:
@@ -93,7 +93,7 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
     values: Mapping[int, Value] | None = None
     powers: Mapping[int, int] = dict.fromkeys(range(len(free)), 1)
     totals: tuple[Quotient, ...] | None = None
-    kept: tuple[Root, ...] = ()
+    groups: tuple[Group, ...] = ()
     too_large = False
     if _in_proportion(network, monomials):
         try:
@@ -110,12 +110,12 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
         rooted = solve_with_roots(
             network, ordered, free, both, monomials, found, too_large=too_large
         )
-        algebra, values, powers, totals, kept = (
+        algebra, values, powers, totals, groups = (
             rooted.algebra,
             rooted.values,
             rooted.powers,
             rooted.totals,
-            rooted.roots,
+            rooted.groups,
         )
     rates = {
         step.name: _net_rate(algebra, step, side, values, powers, totals)
@@ -132,7 +132,9 @@ def solve(network: Network, wanted: frozenset[str]) -> Solution:
         values,
         powers,
         totals,
-        kept,
+        groups,
+        too_large,
+        *solve_groups(groups),
         per_catalyst,
     )
 

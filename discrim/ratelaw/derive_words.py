@@ -100,19 +100,20 @@ def _relation(network: Network, relation: Relation) -> str:
 def roots_words(solution: Solution) -> tuple[str, ...]:
     """Findings about what has no closed form, full sentences."""
     out = []
-    for root in solution.roots:
-        names = _listed([s.name for s in root.symbols])
-        if root.too_large:
+    for group, solved in zip(solution.groups, solution.solved, strict=True):
+        names = _listed([s.name for s in group.unknowns])
+        if solution.too_large:
             out.append(
                 "The sums over the network have too many terms to be written out: the law is kept "
                 "implicit and solved numerically, with exact derivatives."
             )
-        elif not root.closed:
+            continue
+        if not solved.closed:
             out.append(
                 f"The balances have no closed form for {names}: the law is kept implicit and "
                 "solved numerically, with exact derivatives."
             )
-        if root.several:
+        if solved.several:
             out.append(
                 f"The balances for {names} may have more than one positive solution; the law uses "
                 "the one that is reached from none of it."
@@ -218,14 +219,17 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
             powers.append(solved ** Rational(e.numerator, e.denominator))
         return sympy.Mul(*powers)
 
-    for root in solution.roots:
-        lines += [(f"To be solved for {_listed([s.name for s in root.symbols])}", None)]
-        lines += [("", sympy.Eq(0, algebra.expr(e), evaluate=False)) for e in root.equations]
-        if root.closed:
+    for group, solved in zip(solution.groups, solution.solved, strict=True):
+        lines += [(f"To be solved for {_listed([s.name for s in group.unknowns])}", None)]
+        lines += [("", sympy.Eq(0, e, evaluate=False)) for e in group.equations]
+        if solved.closed:
             lines += [
                 ("Its positive root", sympy.Eq(symbol, e, evaluate=False))
-                for symbol, e in zip(root.symbols, root.values, strict=True)
+                for symbol, e in zip(group.unknowns, solved.values, strict=True)
             ]
+    long = [t for t in solution.totals if len(t.top) > _LONG]
+    if long or any(len(p) > _LONG for v in solution.values.values() for part in v for p, _ in part):
+        return [*lines, ("The intermediates are sums too long to print here", None)]
     for species, m in solution.monomials.items():
         symbol, solved = amount(species.name), value(m)
         itself = solved.is_Symbol and solved.name == symbol.name  # a root that stays a symbol

@@ -17,13 +17,21 @@ import sympy
 from sympy import Rational
 
 from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
+from discrim.ratelaw.lump_gauge import gauged
 from discrim.ratelaw.lump_names import Candidate, candidates
 from discrim.ratelaw.lump_scaling import scaled
 from discrim.ratelaw.lump_span import Span
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
+from discrim.ratelaw.roots import Group, powers_of, solve_group, solve_groups
 
 
-def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> RateLaw:
+def lump(
+    law: RateLaw,
+    *,
+    per_catalyst: bool = False,
+    equilibrium: str = "",
+    groups: Sequence[Group] = (),
+) -> RateLaw:
     """``law`` with its rate, production and pathways in constants that rates can tell apart.
 
     Parameters
@@ -33,6 +41,8 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     per_catalyst : name saturation constants of a catalyst ``k_cat``, ``K_m_S``, ``K_i_S``
     equilibrium : name of a constant to write a reversible law with: the ratio of the forward to the
         reverse coefficient of the numerator
+    groups : unknowns that stand in the expressions of ``law`` as symbols, with their equations;
+        they are solved once the equations, too, are in constants that can be told apart
 
     Returns
     -------
@@ -40,20 +50,28 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
         ``constants`` are constants of ``law``, or combinations with their ``definition`` in the
         constants of the steps; all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
     """
+    law, groups = _powers_put_in(law, groups)
     known = law.constants
     fixed = law.stoichiometry
     names = list(law.production) if fixed is None else []  # else all are multiples of the rate
     expressions = [law.rate, *(law.production[n] for n in names), *(p.rate for p in law.pathways)]
     if not known:
         return law
+    equations = [e for group in groups for e in group.equations]
     try:
-        form = read_form(expressions, [c.symbol for c in known])
+        form = read_form(expressions, [c.symbol for c in known], equations)
     except NotRational:
-        return scaled(law)
+        return scaled(_solved(law, groups))
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
+    form = gauged(form, [z for g in groups for z in g.unknowns], decisive, differences)
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
     if written is None:
-        return _as_it_is(law, form, decisive)
+        return _as_it_is(_solved(law, groups), form, decisive)
+    if groups:
+        # units of several unknowns at once are found by their scalings
+        other = scaled(_solved(law, groups))
+        if len(other.constants) < len(written.constants):
+            return other
     rate, *others = written.expressions
     if fixed is None:
         production = dict(zip(names, others[: len(names)], strict=True))
@@ -78,26 +96,87 @@ def lump(law: RateLaw, *, per_catalyst: bool = False, equilibrium: str = "") -> 
     if combined:
         for c in combined:
             lines.append((f"Combined: {c.name}", sympy.Eq(c.symbol, c.definition, evaluate=False)))
-        lines.append(("Rate law in the constants that rates can tell apart", rate))
-    return replace(
+    shortened = replace(
         law,
         rate=rate,
         production=production,
         constants=constants,
         pathways=pathways,
-        derivation=tuple(lines),
         findings=(*law.findings, *written.findings),
+    )
+    rest = iter(written.equations)
+    out = _solved(
+        shortened, [replace(g, equations=tuple(next(rest) for _ in g.equations)) for g in groups]
+    )
+    if combined:
+        lines.append(("Rate law in the constants that rates can tell apart", out.rate))
+    return replace(out, derivation=tuple(lines))
+
+
+def _powers_put_in(law: RateLaw, groups: Sequence[Group]) -> tuple[RateLaw, Sequence[Group]]:
+    """Unknowns that are products of powers put into the law, which stays a quotient of sums."""
+    for group in groups:
+        solved = solve_group(group)
+        if solved.closed and not any(v.has(sympy.Add) for v in solved.values):
+            values = dict(zip(group.unknowns, solved.values, strict=True))
+            rest = [
+                replace(g, equations=tuple(sympy.expand(e.xreplace(values)) for e in g.equations))
+                for g in groups
+                if g is not group
+            ]
+            return _powers_put_in(_solved(law, [group]), rest)
+    for group in groups:
+        law = _reduced(law, group)
+    return law, groups
+
+
+def _reduced(law: RateLaw, group: Group) -> RateLaw:
+    """Powers of an unknown of which one power is known put in: k_1 - k_2 z^2 may be one term."""
+    if len(group.unknowns) != 1:
+        return law
+    (z,), (equation,) = group.unknowns, group.equations
+    by_power = powers_of(equation, z)
+    if len(by_power) != 2 or 0 not in by_power:
+        return law
+    n = max(by_power)
+    known = -by_power[0] / by_power[n]
+
+    def reduced(e: Any) -> Any:
+        high = {p for p in e.atoms(sympy.Pow) if p.base == z and p.exp.is_Integer and p.exp >= n}
+        if not high:
+            return e
+        swap = {p: z ** (int(p.exp) % n) * known ** (int(p.exp) // n) for p in high}
+        return sympy.cancel(sympy.together(e.xreplace(swap)))
+
+    return replace(
+        law,
+        rate=reduced(law.rate),
+        production={name: reduced(e) for name, e in law.production.items()},
+        pathways=tuple(replace(p, rate=reduced(p.rate)) for p in law.pathways),
+    )
+
+
+def _solved(law: RateLaw, groups: Sequence[Group]) -> RateLaw:
+    """``law`` with the unknowns of ``groups`` solved for."""
+    if not groups:
+        return law
+    values, _ = solve_groups(groups)
+    return replace(
+        law,
+        rate=law.rate.xreplace(values),
+        production={n: e.xreplace(values) for n, e in law.production.items()},
+        pathways=tuple(replace(p, rate=p.rate.xreplace(values)) for p in law.pathways),
     )
 
 
 def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
     """A law that products of powers of its constants do not shorten, with what that leaves open."""
-    rank = _functional_rank(form, _differences(form, decisive))
+    rank = _functional_rank(form, differences(form, decisive))
     if rank == len(law.constants):
         return law
     law = scaled(law)
     n = len(law.constants)
-    if rank == n:
+    if rank >= n:  # more than n: in units of the unknowns that are not the best
         return law
     words = (
         f"Rates can tell apart only {rank} combinations of the {n} constants of this law, and they "
@@ -112,6 +191,7 @@ _MANY = 60  # coefficients of a law that is not looked at for a shorter form
 @dataclass(frozen=True, slots=True)
 class _Written:
     expressions: tuple[Any, ...]
+    equations: tuple[Any, ...]
     constants: tuple[Constant, ...]
     findings: tuple[str, ...]
 
@@ -124,7 +204,7 @@ def _write(
     None when the constants as they are can all be told apart, while products of powers of them
     cannot express the law without more constants than there are.
     """
-    shown = _differences(form, decisive)
+    shown = differences(form, decisive)
     rank = _functional_rank(form, shown)
     special = per_catalyst or bool(equilibrium)
     if rank == len(known) and not special and len(shown) > _MANY:
@@ -149,7 +229,7 @@ def _write(
             if candidate.single is not None:
                 kept_single.add(candidate.single)
     findings: list[str] = []
-    if not all(solver.holds(v) for v in _differences(form, len(form.expressions))):
+    if not all(solver.holds(v) for v in differences(form, len(form.expressions))):
         form = replace(form, expressions=form.expressions[:decisive])
         findings.append(
             "Some pathways have the same form: no measured rates could tell how much each carries, "
@@ -174,11 +254,13 @@ def _write(
     order = {c.name: k for k, c in enumerate(known)}
     rest = iter(constants)
     symbols = [form.atoms[next(iter(c.vector))] if c.written else next(rest).symbol for c in chosen]
-    expressions = tuple(_expression(form, norms, e, solver, symbols) for e in form.expressions)
-    used = set().union(*(e.free_symbols for e in expressions))
+    writer = _Writer(form, norms, solver, symbols)
+    expressions = tuple(writer.expression(e) for e in form.expressions)
+    equations = tuple(writer.below(k) for k in form.equations)
+    used = set().union(*(e.free_symbols for e in (*expressions, *equations)))
     kept = [c for c in constants if c.symbol in used]
     kept.sort(key=lambda c: (c.kind is not ConstantKind.RATE, order.get(c.name, len(order))))
-    return _Written(expressions, tuple(kept), tuple(findings))
+    return _Written(expressions, equations, tuple(kept), tuple(findings))
 
 
 def subtract(a: Vector, b: Vector, times: Fraction = Fraction(1)) -> Vector:
@@ -188,7 +270,7 @@ def subtract(a: Vector, b: Vector, times: Fraction = Fraction(1)) -> Vector:
     return {i: e for i, e in out.items() if e}
 
 
-def _differences(form: Form, decisive: int) -> list[Vector]:
+def differences(form: Form, decisive: int) -> list[Vector]:
     """Coefficients of the first ``decisive`` expressions, one of each denominator divided out."""
     rows: list[Vector] = []
     first = [next(iter(s.terms.values())).vector for s in form.sums]
@@ -302,37 +384,45 @@ def _constants(
     return tuple(out)
 
 
-def _expression(
-    form: Form,
-    norms: Sequence[Vector],
-    terms: Sequence[Term],
-    solver: Callable[[Vector], list[Fraction]],
-    symbols: Sequence[sympy.Symbol],
-) -> Any:
-    def value(amounts: Any, number: Fraction, vector: Vector) -> Any:
+class _Writer:
+    """A form written in the constants that were chosen."""
+
+    def __init__(
+        self,
+        form: Form,
+        norms: Sequence[Vector],
+        solver: Callable[[Vector], list[Fraction]],
+        symbols: Sequence[sympy.Symbol],
+    ) -> None:
+        self.form, self.norms, self.solver, self.symbols = form, norms, solver, symbols
+        self.written: dict[int, Any] = {}
+
+    def value(self, amounts: Any, number: Fraction, vector: Vector) -> Any:
         powers = [
             s ** Rational(e.numerator, e.denominator)
-            for s, e in zip(symbols, solver(vector), strict=True)
+            for s, e in zip(self.symbols, self.solver(vector), strict=True)
             if e
         ]
         powers += [s ** Rational(e.numerator, e.denominator) for s, e in amounts]
         return sympy.Mul(Rational(number.numerator, number.denominator), *powers)
 
-    written: dict[int, Any] = {}
-
-    def below(k: int) -> Any:
-        if k not in written:
-            s = form.sums[k]
-            written[k] = sympy.Add(
-                *(value(a, c.number, subtract(c.vector, norms[k])) for a, c in s.terms.items())
+    def below(self, k: int) -> Any:
+        """A denominator, or an equation."""
+        if k not in self.written:
+            norm = self.norms[k]
+            terms = self.form.sums[k].terms.items()
+            self.written[k] = sympy.Add(
+                *(self.value(a, c.number, subtract(c.vector, norm)) for a, c in terms)
             )
-        return written[k]
+        return self.written[k]
 
-    parts = []
-    for term in terms:
-        pieces = [value(*t) for t in _scaled_terms(form, norms, term)]
-        parts.append(sympy.Mul(_common(pieces), *(below(k) ** -power for k, power in term.bottom)))
-    return sympy.Add(*parts)
+    def expression(self, terms: Sequence[Term]) -> Any:
+        parts = []
+        for term in terms:
+            pieces = [self.value(*t) for t in _scaled_terms(self.form, self.norms, term)]
+            below = (self.below(k) ** -power for k, power in term.bottom)
+            parts.append(sympy.Mul(_common(pieces), *below))
+        return sympy.Add(*parts)
 
 
 def _common(pieces: Sequence[Any]) -> Any:

@@ -62,6 +62,7 @@ class Form:
     slopes: tuple[tuple[Fraction, ...], ...]  # d log(atom)/d log(constant) at one point, exact
     sums: tuple[Sum, ...]
     expressions: tuple[tuple[Term, ...], ...]
+    equations: tuple[int, ...] = ()  # sums that are zero: only ratios of their terms matter
 
     def coefficients(self) -> list[Coefficient]:
         found = [c for s in self.sums for c in s.terms.values()]
@@ -72,15 +73,17 @@ def is_amount(symbol: sympy.Symbol) -> bool:
     return symbol.name.startswith(("[", "{"))
 
 
-def read_form(expressions: Sequence[Any], constants: Sequence[sympy.Symbol]) -> Form:
+def read_form(
+    expressions: Sequence[Any], constants: Sequence[sympy.Symbol], equations: Sequence[Any] = ()
+) -> Form:
     """Bring rational expressions to :class:`Form`; raises :class:`NotRational`."""
     roots: dict[sympy.Symbol, int] = dict.fromkeys(constants, 1)
-    for e in expressions:
+    for e in (*expressions, *equations):
         _collect(e, roots)
     for symbol in roots:
         if symbol not in constants and not is_amount(symbol):
             raise NotRational(str(symbol))
-    return _Reader(Algebra.over(roots), tuple(constants)).read(expressions)
+    return _Reader(Algebra.over(roots), tuple(constants)).read(expressions, equations)
 
 
 def _collect(e: Any, roots: dict[sympy.Symbol, int]) -> None:
@@ -113,7 +116,7 @@ class _Reader:
         self.sums: list[Sum] = []
         self.sum_of: dict[PolyElement, int] = {}
 
-    def read(self, expressions: Sequence[Any]) -> Form:
+    def read(self, expressions: Sequence[Any], equations: Sequence[Any] = ()) -> Form:
         out = []
         for e in expressions:
             grouped: dict[tuple[tuple[int, int], ...], list[tuple[PolyElement, int]]] = {}
@@ -136,8 +139,9 @@ class _Reader:
                 if top:
                     terms.append(Term(self.sum(top, scale), key))
             out.append(tuple(terms))
+        zero = tuple(self.shared(self.rational(e)[0]) for e in equations)
         slopes = tuple(self.slope(k) for k in range(len(self.atoms)))
-        return Form(self.constants, tuple(self.atoms), slopes, tuple(self.sums), tuple(out))
+        return Form(self.constants, tuple(self.atoms), slopes, tuple(self.sums), tuple(out), zero)
 
     def parts(self, e: Any) -> list[tuple[PolyElement, list[tuple[PolyElement, int]]]]:
         """Additive parts of an expression as numerator and factors of the denominator."""

@@ -188,7 +188,8 @@ def _without(amounts: Amounts, symbol: Any, power: Fraction) -> Amounts:
 
 def _rest(form: Form, singles: set[int], known: Sequence[Constant]) -> Iterator[Candidate]:
     """Ratios within denominators, then numerators over them, without the single constants."""
-    for sums in form.sums:
+    for k, sums in enumerate(form.sums):
+        where = "a balance" if k in form.equations else "the denominator"
         for amounts, c in sums.terms.items():
             before = _before(sums, amounts)
             if before is None:
@@ -199,7 +200,7 @@ def _rest(form: Form, singles: set[int], known: Sequence[Constant]) -> Iterator[
                     vector,
                     known,
                     f"b_{_label(amounts) or 'const'}",
-                    f"coefficient of {_words(amounts)} in the denominator",
+                    f"coefficient of {_words(amounts)} in {where}",
                 )
     norms = [next(iter(s.terms.values())).vector for s in form.sums]
     for expression in form.expressions:

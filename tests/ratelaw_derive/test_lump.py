@@ -101,7 +101,8 @@ def test_the_combinations_give_the_law_back(name):
     law = LAWS[name]
     known = {c.symbol: c.definition for c in law.constants if c.definition is not None}
     given_back = law.rate.xreplace(known)
-    if law.rate.has(ImplicitValue):
+    rooted = any(p.base.is_Add and not p.exp.is_Integer for p in law.step_rate.atoms(sympy.Pow))
+    if rooted or law.rate.has(ImplicitValue):
         assert _agree(given_back, law.step_rate)
     else:
         assert sympy.cancel(sympy.together(given_back - law.step_rate)) == 0

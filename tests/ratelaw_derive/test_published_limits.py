@@ -9,7 +9,6 @@ import pytest
 import sympy
 
 from discrim.ratelaw.compile import CompiledLaw
-from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.model import amount, constant_symbol
 from tests.ratelaw_derive.published import in_steps, is_zero, library_law, read, same
 
@@ -178,27 +177,29 @@ def oxidation(species, **values):
     return law(theta, amounts, constants=False, conditions_too=False, both=False)[0][0, 0]
 
 
-def test_autoxidation_is_fixed_by_its_published_balances():
-    """Bolland (1949), Bateman (1954): R and RO2 at steady state, the three ways to end."""
-    (value,) = AUTOXIDATION.rate.atoms(ImplicitValue)
-    (equation,) = value.equations
-    y = value.unknown
-    k = {n: constant_symbol(n) for n in RATES}
-    i, o2, rh = (amount(n) for n in AMOUNTS)
-    radical = (k["k_propagate"] * rh * y + 2 * k["k_end_RO2"] * y**2) / (
-        k["k_add"] * o2 - k["k_end_both"] * y
-    )
-    balance = (
-        k["k_start"] * i
-        - k["k_end_R"] * radical**2
-        - k["k_end_both"] * radical * y
-        - k["k_end_RO2"] * y**2
-    )
-    top, _ = sympy.fraction(sympy.together(balance))
-    ratio = sympy.cancel(top / equation)
-    assert ratio.is_number
-    assert ratio != 0
-    assert same(AUTOXIDATION.rate, k["k_propagate"] * rh * value)
+@pytest.mark.parametrize("seed", range(5))
+def test_autoxidation_is_fixed_by_its_published_balances(seed):
+    """Bolland (1949), Bateman (1954): R and RO2 at steady state, the three ways to end; the
+    balances solved by SciPy."""
+    from scipy.optimize import root
+
+    rng = np.random.default_rng(seed)
+    v = dict(zip((*RATES, *AMOUNTS), np.exp(rng.normal(size=9)), strict=True))
+
+    def balances(logs):
+        r, ro2 = np.exp(logs)
+        ends = v["k_end_R"] * r**2 + v["k_end_both"] * r * ro2 + v["k_end_RO2"] * ro2**2
+        made = v["k_propagate"] * v["RH"] * ro2
+        into = v["k_add"] * v["O2"] * r
+        rest = v["k_end_both"] * r * ro2 + 2 * v["k_end_RO2"] * ro2**2
+        return [v["k_start"] * v["I"] - ends, into - made - rest]
+
+    tried = [root(balances, [a, b], tol=1e-13) for a in (-3, -1, 1) for b in (-3, -1, 1)]
+    solved = min(tried, key=lambda found: np.abs(found.fun).max())
+    assert np.abs(solved.fun).max() < 1e-12
+    r, ro2 = np.exp(solved.x)
+    assert oxidation("ROOH", **v) == pytest.approx(v["k_propagate"] * v["RH"] * ro2, rel=1e-9)
+    assert oxidation("O2", **v) == pytest.approx(-v["k_add"] * v["O2"] * r, rel=1e-9)
 
 
 RUN = {"k_start": 2e-6, "k_add": 3e4, "k_propagate": 5.0, "I": 0.02, "O2": 1e-3, "RH": 4.0}
