@@ -18,7 +18,7 @@ from sympy import Rational
 
 from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
 from discrim.ratelaw.lump_gauge import gauged
-from discrim.ratelaw.lump_names import Candidate, candidates
+from discrim.ratelaw.lump_names import Candidate, candidates, over
 from discrim.ratelaw.lump_scaling import scaled
 from discrim.ratelaw.lump_span import Span
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
@@ -205,11 +205,10 @@ def _write(
     cannot express the law without more constants than there are.
     """
     shown = differences(form, decisive)
-    rank = _functional_rank(form, shown)
     special = per_catalyst or bool(equilibrium)
-    if rank == len(known) and not special and len(shown) > _MANY:
-        return None  # all constants of the steps can be told apart; no combination is shorter
     space = Span(shown)
+    if len(shown) > _MANY and space.n >= len(known) and not special:
+        return None  # as many combinations as constants of the steps, or more
     chosen: list[Candidate] = []
     solver = Span()
     missing = list(space.rows.values())
@@ -340,25 +339,38 @@ def _scaled_terms(
 def _positive(
     form: Form, norms: Sequence[Vector], chosen: list[Candidate], solver: Span
 ) -> tuple[list[Candidate], bool]:
-    """Turn round constants that the law only divides by, so that zero means "absent"."""
-    low = [Fraction(0)] * len(chosen)
-    high = [Fraction(0)] * len(chosen)
+    """Constants that the law only multiplies by, so that zero means "absent".
 
-    def note(vector: Vector) -> None:
-        for k, e in enumerate(solver(vector)):
-            low[k], high[k] = min(low[k], e), max(high[k], e)
-
-    for s, norm in zip(form.sums, norms, strict=True):
-        for c in s.terms.values():
-            note(subtract(c.vector, norm))
+    What it only divides by is turned round; what it divides by here and multiplies by there, always
+    with another constant, is made part of that one.
+    """
+    vectors = [
+        subtract(c.vector, norm)
+        for s, norm in zip(form.sums, norms, strict=True)
+        for c in s.terms.values()
+    ]
     for expression in form.expressions:
         for term in expression:
-            for _, _, vector in _scaled_terms(form, norms, term):
-                note(vector)
-    out = [
-        c.turned() if c.can_turn and low[k] < 0 and high[k] <= 0 else c
-        for k, c in enumerate(chosen)
-    ]
+            vectors += [vector for _, _, vector in _scaled_terms(form, norms, term)]
+    powers = [solver(v) for v in vectors]
+    out = list(chosen)
+    for k, c in enumerate(chosen):
+        below = any(p[k] < 0 for p in powers)
+        if not below:
+            continue
+        if c.can_turn and all(p[k] <= 0 for p in powers):
+            out[k] = c.turned()
+            for p in powers:
+                p[k] = -p[k]
+            continue
+        for i, other in enumerate(out):
+            if i == k or other.single is not None or other.written or c.written:
+                continue
+            if all(p[k] + p[i] >= 0 for p in powers):
+                out[i] = over(other, c)
+                for p in powers:
+                    p[k] += p[i]
+                break
     return out, out != chosen
 
 

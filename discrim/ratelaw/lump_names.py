@@ -44,6 +44,19 @@ class Candidate:
         )
 
 
+def over(a: Candidate, b: Candidate) -> Candidate:
+    """The combination a/b."""
+    vector = dict(a.vector)
+    for i, e in b.vector.items():
+        vector[i] = vector.get(i, Fraction(0)) - e
+    return Candidate(
+        f"{a.name}_over_{b.name}",
+        {i: e for i, e in vector.items() if e},
+        ConstantKind.LUMPED,
+        f"{a.meaning or a.name}, divided by {b.name}",
+    )
+
+
 def candidates(
     form: Form,
     known: Sequence[Constant],
