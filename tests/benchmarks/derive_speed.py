@@ -128,7 +128,10 @@ def plain_rate(problem: Plain, finish: Callable[[Any], Any]) -> list[Any]:
     return [finish(problem.rate.subs(solution)) for solution in found]
 
 
-def _run(problem: Plain, finish: Callable[[Any], Any], pipe: Any) -> None:
+def _run(problem: Plain, finish: Callable[[Any], Any], limit: float, pipe: Any) -> None:
+    used = time.process_time()
+    most = int(used + limit) + 1
+    resource.setrlimit(resource.RLIMIT_CPU, (most, most + 1))
     took: list[float] = []
     while not took or (sum(took) < QUICK and len(took) < 5):
         sympy.core.cache.clear_cache()
@@ -141,21 +144,21 @@ def _run(problem: Plain, finish: Callable[[Any], Any], pipe: Any) -> None:
 def plain_seconds(
     problem: Plain, finish: Callable[[Any], Any], limit: float = LIMIT
 ) -> tuple[float, list[Any] | None]:
-    """Processor time and laws; the limit (of wall time) and None when it was reached.
+    """Processor time and laws; the limit and None when it was reached.
 
     Caches of sympy empty, as for a law not met before; the median of five when that is quick.
     """
     context = multiprocessing.get_context("fork")
     here, there = context.Pipe(duplex=False)
-    process = context.Process(target=_run, args=(problem, finish, there))
+    process = context.Process(target=_run, args=(problem, finish, limit, there))
     process.start()
     there.close()
     try:
-        if here.poll(limit):
+        if here.poll(20 * limit):
             took, laws = here.recv()
             return float(took), laws
         return limit, None
-    except EOFError:  # it ended without a law
+    except EOFError:  # stopped by the limit of processor time
         return limit, None
     finally:
         process.kill()
