@@ -12,15 +12,17 @@ from collections.abc import Sequence
 from dataclasses import replace
 from fractions import Fraction
 from itertools import combinations
+from math import lcm
 from typing import Any
 
+import numpy as np
 import sympy
 from sympy import Rational
 
 from discrim.ratelaw.derive_network import Matrix, null_space, row_reduce
 from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.lump_names import combination
-from discrim.ratelaw.lump_span import Span, Vector
+from discrim.ratelaw.lump_span import Vector
 from discrim.ratelaw.model import Constant, RateLaw
 
 Weight = dict[int, int | Fraction]  # powers of the constants and of implicit values, by index
@@ -42,7 +44,9 @@ def scaled(law: RateLaw) -> RateLaw:
             walk.unscaled(walk.weight(e))
     except _Unscalable:
         return law
-    scalings = walk.scalings()
+    everything = walk.scalings()
+    reduced, pivots = row_reduce([v[: walk.n] for v in everything]) if everything else ([], [])
+    scalings = reduced[: len(pivots)]
     if not scalings:
         return law
     chosen = _choose(scalings, known)
@@ -88,7 +92,7 @@ def scaled(law: RateLaw) -> RateLaw:
             for c in kept
         ),
         pathways=tuple(replace(p, rate=p.rate.xreplace(swap)) for p in apart)
-        if all(_alike(walk, p.rate) for p in apart)
+        if all(_alike(walk, p.rate, everything) for p in apart)
         else (),
         derivation=tuple(lines),
     )
@@ -116,8 +120,7 @@ class _Walk:
         self.index = {s: i for i, s in enumerate(constants)}
         self.n = len(constants)
         self.width = self.n
-        self.rows = Span()
-        self.said: set[frozenset[tuple[int, int | Fraction]]] = set()
+        self.rows: dict[frozenset[tuple[int, int | Fraction]], Weight] = {}
         self.systems: dict[Any, tuple[int, ...]] = {}
         self.unknown: dict[sympy.Symbol, int] = {}
 
@@ -158,22 +161,48 @@ class _Walk:
 
     def unscaled(self, weight: Weight) -> None:
         """What has to stay as it is; most of the sums of a law say the same."""
-        key = frozenset(weight.items())
-        if weight and key not in self.said:
-            self.said.add(key)
-            self.rows.add({i: Fraction(e) for i, e in weight.items()})
-            if self.rows.n == self.n and not self.systems:
-                raise _Unscalable  # nothing is left that could scale
+        if weight:
+            self.rows[frozenset(weight.items())] = weight
 
     def scalings(self) -> Matrix:
-        """Basis of the scalings, as powers of the constants."""
-        if self.rows.n == self.width:
-            return []
-        rows = self.rows.rows.values()
-        dense = [[row.get(i, Fraction(0)) for i in range(self.width)] for row in rows]
-        basis = null_space(dense, self.width)
-        reduced, pivots = row_reduce([v[: self.n] for v in basis]) if basis else ([], [])
-        return reduced[: len(pivots)]
+        """Basis of all scalings, as powers of constants and implicit values."""
+        whole = np.zeros((len(self.rows), self.width), dtype=np.int64)
+        for r, weight in enumerate(self.rows.values()):
+            scale = lcm(*(Fraction(e).denominator for e in weight.values()))
+            for i, e in weight.items():
+                whole[r, i] = int(e * scale)
+        chosen = _independent(whole)
+        while True:
+            rows = [[Fraction(int(x)) for x in whole[r]] for r in chosen]
+            basis = null_space(rows, self.width)
+            missed = next((r for r in range(len(whole)) if _moves(whole[r], basis)), None)
+            if missed is None:
+                return basis
+            chosen.append(missed)
+
+
+def _independent(matrix: np.ndarray) -> list[int]:
+    """Rows that are independent modulo a prime; with luck, as always but once in 1e9, all of them."""
+    prime = 2**31 - 1
+    left = matrix % prime
+    at = np.arange(len(matrix))
+    out: list[int] = []
+    for c in range(matrix.shape[1]):
+        found = np.flatnonzero(left[:, c])
+        if not len(found):
+            continue
+        p = int(found[0])
+        out.append(int(at[p]))
+        row = left[p] * pow(int(left[p, c]), prime - 2, prime) % prime
+        left, at = np.delete(left, p, axis=0), np.delete(at, p)
+        left = (left - left[:, c : c + 1] * row) % prime
+    return out
+
+
+def _moves(weight: np.ndarray, scalings: Matrix) -> bool:
+    """Whether a scaling changes what must not change."""
+    held = [(i, int(weight[i])) for i in np.flatnonzero(weight)]
+    return any(sum((v[i] * e for i, e in held), Fraction(0)) for v in scalings)
 
 
 def _plus(a: Weight, b: Weight, times: int | Fraction = 1) -> Weight:
@@ -187,14 +216,17 @@ def _plus(a: Weight, b: Weight, times: int | Fraction = 1) -> Weight:
     return out
 
 
-def _alike(walk: _Walk, e: Any) -> bool:
-    """Whether an expression is unchanged by the scalings of what is measured."""
-    before = walk.rows.n
+def _alike(walk: _Walk, e: Any, scalings: Matrix) -> bool:
+    """Whether an expression is unchanged by scalings."""
+    before = len(walk.rows)
     try:
         walk.unscaled(walk.weight(e))
     except _Unscalable:
         return False
-    return walk.rows.n == before
+    new = list(walk.rows.values())[before:]
+    return not any(
+        sum((v[i] * f for i, f in weight.items()), Fraction(0)) for v in scalings for weight in new
+    )
 
 
 def _choose(
