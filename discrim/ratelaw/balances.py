@@ -32,14 +32,12 @@ class Balances:
     Parameters
     ----------
     exponents : for each equation an array (terms, n), not negative; fractions are allowed
-    thorough : try one unknown after the other on a grid where nothing else has led to a solution
 
     ``solve`` takes the coefficients c of all terms of all equations, in that order.
     """
 
-    def __init__(self, exponents: Sequence[np.ndarray], *, thorough: bool = True) -> None:
+    def __init__(self, exponents: Sequence[np.ndarray]) -> None:
         self.n = len(exponents)
-        self.thorough = thorough
         ends = np.cumsum([len(e) for e in exponents])
         self.rows = [
             slice(int(end) - len(e), int(end)) for end, e in zip(ends, exponents, strict=True)
@@ -48,6 +46,7 @@ class Balances:
         self._whole = [
             [int(x) if float(x).is_integer() else float(x) for x in row] for row in self.exponents
         ]
+        self._smaller: dict[bytes, tuple[Balances, list[int], list[int], list[int]] | None] = {}
         self._free = ~self.exponents.any(axis=1)  # terms without an unknown
         # one unknown: terms of one power together, lowest first
         self._powers, term = np.unique(self.exponents[:, 0], return_inverse=True)
@@ -67,26 +66,74 @@ class Balances:
             ~((coefficients[r] > 0).any(axis=0) & (coefficients[r] < 0).any(axis=0))
             for r in self.rows
         ]
-        return np.asarray(np.any(lost, axis=0) | zero[self._free].any(axis=0))
+        return np.asarray((np.any(lost, axis=0) & zero.any(axis=0)) | zero[self._free].any(axis=0))
 
-    def solve(self, coefficients: np.ndarray) -> np.ndarray:
+    def without(self, coefficients: np.ndarray) -> np.ndarray:
+        """The solution where unknowns must be zero, shape (n, P); NaN where none must be.
+
+        A balance of terms of one sign holds only where each term is zero, and so the unknowns that
+        stand alone in one. The others follow from what is left.
+        """
+        sign = np.sign(coefficients).astype(np.int8)
+        out = np.full((self.n, coefficients.shape[1]), np.nan)
+        alike: dict[bytes, list[int]] = {}
+        for k in range(sign.shape[1]):
+            alike.setdefault(sign[:, k].tobytes(), []).append(k)
+        for key, points in alike.items():
+            if key not in self._smaller:
+                self._smaller[key] = self._reduced(sign[:, points[0]])
+            found = self._smaller[key]
+            if found is not None:
+                smaller, terms, gone, left = found
+                out[np.ix_(gone, points)] = 0.0
+                if left:
+                    out[np.ix_(left, points)] = smaller.solve(coefficients[np.ix_(terms, points)])
+        return out
+
+    def _reduced(self, sign: np.ndarray) -> tuple[Balances, list[int], list[int], list[int]] | None:
+        """The balances that are left for coefficients of these signs, the places of their terms,
+        the unknowns that are zero and the others."""
+        there = sign != 0
+        gone: set[int] = set()
+        while True:
+            alone: set[int] = set()
+            for r in self.rows:
+                here = [t for t in range(r.start, r.stop) if there[t]]
+                if len({int(sign[t]) for t in here}) == 1:
+                    held = [np.flatnonzero(self.exponents[t]) for t in here]
+                    alone |= {int(h[0]) for h in held if len(h) == 1}
+            if not alone - gone:
+                break
+            gone |= alone
+            there &= ~self.exponents[:, sorted(gone)].any(axis=1)
+        left = [j for j in range(self.n) if j not in gone]
+        rows = [[t for t in range(r.start, r.stop) if there[t]] for r in self.rows]
+        rows = [r for r in rows if r]
+        if not gone or len(rows) != len(left):
+            return None
+        terms = [t for r in rows for t in r]
+        smaller = Balances([self.exponents[np.ix_(r, left)] for r in rows]) if left else self
+        return smaller, terms, sorted(gone), left
+
+    def solve(self, coefficients: np.ndarray, *, thorough: bool = True) -> np.ndarray:
         """The positive solution at each point.
 
         ``coefficients`` shape (terms, P). Returns shape (n, P), NaN where none is found. Of
         several solutions for one unknown it is the smallest (which need not be the one that a
         surface or a chain reaches in time, where several unknowns were eliminated to leave it); for
-        several unknowns the first that is found from fixed starts.
+        several unknowns the first that is found from fixed starts and, if ``thorough``, by trying
+        one unknown after the other on a grid.
         """
         finite = np.isfinite(coefficients).all(axis=0)
         if not finite.all():
             out = np.full((self.n, coefficients.shape[1]), np.nan)
             if finite.any():
-                out[:, finite] = self.solve(coefficients[:, finite])
+                out[:, finite] = self.solve(coefficients[:, finite], thorough=thorough)
             return out
         with np.errstate(all="ignore"):
             if self.n == 1:
                 return self._single(coefficients)
-            return self._polished(coefficients, self._several(coefficients))
+            return self._polished(coefficients, self._several(coefficients, thorough))
 
     # ---- one unknown ----------------------------------------------------------------------
 
@@ -100,7 +147,7 @@ class Balances:
 
     # ---- several unknowns -----------------------------------------------------------------
 
-    def _several(self, coefficients: np.ndarray) -> np.ndarray:
+    def _several(self, coefficients: np.ndarray, thorough: bool) -> np.ndarray:
         size = np.log(np.abs(coefficients))
         made = coefficients > 0
         out = np.full((self.n, coefficients.shape[1]), np.nan)
@@ -117,7 +164,7 @@ class Balances:
             w, ok = self._newton(size[:, left], made[:, left], start + shift)
             out[:, left[ok]] = np.exp(w[:, ok])
             left, start = left[~ok], start[:, ~ok]
-        pairs = [(i, k) for i in range(self.n) for k in range(self.n)] if self.thorough else []
+        pairs = [(i, k) for i in range(self.n) for k in range(self.n)] if thorough else []
         for grid in _GRIDS:
             for outer, equation in pairs:
                 if len(left):
@@ -133,14 +180,14 @@ class Balances:
         """
         others = [j for j in range(self.n) if j != outer]
         rows = [r for k, r in enumerate(self.rows) if k != equation]
-        inner = Balances([self.exponents[r][:, others] for r in rows], thorough=False)
+        inner = Balances([self.exponents[r][:, others] for r in rows])
         power = self.exponents[:, outer, None]
 
         def at(w: np.ndarray, points: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
             scaled = c[:, points] * np.exp(power * w)
             z = np.empty((self.n, len(w)))
             z[outer] = np.exp(w)
-            z[others] = inner.solve(np.concatenate([scaled[r] for r in rows]))
+            z[others] = inner.solve(np.concatenate([scaled[r] for r in rows]), thorough=False)
             terms = self._terms(c[:, points], z)[self.rows[equation]]
             return z, terms.sum(axis=0) / np.abs(terms).sum(axis=0)
 

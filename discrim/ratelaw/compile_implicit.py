@@ -80,12 +80,15 @@ class ImplicitFunctions:
             if zero.any():
                 z = np.empty((balances.n, c.shape[1]))
                 z[:, ~zero] = balances.solve(c[:, ~zero])
-                z[:, zero] = _beside_zero(
-                    balances,
-                    function,
-                    count,
-                    [np.broadcast_to(a, shape).reshape(-1)[zero] for a in inputs],
-                )
+                z[:, zero] = balances.without(c[:, zero])
+                open_ = np.flatnonzero(zero)[np.isnan(z[:, zero]).any(axis=0)]
+                if len(open_):
+                    z[:, open_] = _beside_zero(
+                        balances,
+                        function,
+                        count,
+                        [np.broadcast_to(a, shape).reshape(-1)[open_] for a in inputs],
+                    )
             else:
                 z = balances.solve(c)
             found += [x.reshape(shape) for x in z]
@@ -221,7 +224,8 @@ def _beside_zero(
     for near in _NEAR_ZERO:
         moved = [np.where(a == 0.0, near, a) for a in inputs]
         points = len(moved[0]) if moved else 1
-        found.append(balances.solve(_stacked(function(*moved), count, (1, points))))
+        c = _stacked(function(*moved), count, (1, points))
+        found.append(balances.solve(c, thorough=False))  # too far out for a grid
     with np.errstate(all="ignore"):
         power = np.log(found[1] / found[0]) / np.log(_NEAR_ZERO[1] / _NEAR_ZERO[0])
         gone = (power > _FOLLOWS) | (found[0] == 0.0)
