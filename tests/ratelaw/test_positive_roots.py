@@ -209,3 +209,18 @@ def test_small_linear_systems(n: int) -> None:
     assert not np.isfinite(x[3]).any()
     rest = [k for k in range(50) if k != 3]
     assert x[rest] == pytest.approx(np.linalg.solve(a[rest], b[rest]), rel=1e-9)
+
+
+def test_unknowns_that_must_be_zero_leave_the_others() -> None:
+    """Without B there is no B*: what is left is A at its balance with the vacant sites."""
+    exponents, coefficients, _ = surface(np.array([2.0, 3.0, 5.0, 7.0, 11.0]))
+    c = np.array(coefficients)
+    c[3] = 0.0  # no adsorption of B
+    balances = Balances(exponents)
+    assert balances.delicate(c[:, None]).all()
+    free, a, b = balances.without(c[:, None])[:, 0]
+    assert b == 0.0
+    # v + 2 (2/3) v^2 = 1
+    assert free == pytest.approx((-1 + np.sqrt(1 + 16 / 3)) / (8 / 3), rel=1e-14)
+    assert a == pytest.approx(2 / 3 * free**2, rel=1e-14)
+    assert not balances.delicate(np.array(coefficients)[:, None]).any()
