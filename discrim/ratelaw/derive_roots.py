@@ -11,6 +11,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from itertools import pairwise
 from math import lcm
 
 import sympy
@@ -20,6 +21,7 @@ from discrim.mechanism.model import Species
 from discrim.ratelaw.derive_algebra import (
     Algebra,
     Quotient,
+    coefficients,
     common_factor,
     exact_quotient,
     lowered,
@@ -102,7 +104,12 @@ def solve_with_roots(
     polynomials = [_polynomial(algebra, terms) for terms in equations]
     elimination = _Elimination(algebra, first, order)
     determined = elimination.keep(polynomials) if too_large else elimination.run(polynomials)
-    if not too_large and determined and elimination.ambiguous():
+    if (
+        not too_large
+        and determined
+        and elimination.ambiguous()
+        and not elimination.least_is_right()
+    ):
         # a root of what is left may make negative what was eliminated: keep all of them
         elimination = _Elimination(algebra, first, order, only_certain=True)
         determined = elimination.run(polynomials)
@@ -193,7 +200,7 @@ class _Elimination:
     ) -> None:
         self.algebra = algebra
         self.only_certain = only_certain
-        self.all_certain = True
+        self.uncertain: set[int] = set()
         self.first = first
         self.left = list(order)
         self.assigned: list[tuple[int, PolyElement, PolyElement]] = []
@@ -278,7 +285,8 @@ class _Elimination:
         if not choices:
             return None
         found = min(choices, key=lambda c: c[0])
-        self.all_certain &= not found[0][0]
+        if found[0][0]:
+            self.uncertain.add(found[2])
         return found[1:]
 
     def ambiguous(self) -> bool:
@@ -290,7 +298,19 @@ class _Elimination:
             )
             for ids, equations in self.kept
         )
-        return several and not self.all_certain
+        return several and bool(self.uncertain)
+
+    def least_is_right(self) -> bool:
+        """Whether the smallest positive root of the one equation left is allowed if any root is.
+
+        It is where what may be negative is positive up to some value of the unknown that is left
+        and negative beyond it.
+        """
+        if len(self.kept) != 1 or len(self.kept[0][0]) != 1:
+            return False
+        ((z,), _) = self.kept[0]
+        found = self.back_substituted()
+        return all(_positive_up_to(*found[i], z) for i in self.uncertain)
 
     def without(self, poly: PolyElement, factor: PolyElement) -> PolyElement:
         """Divided by what it shares with ``factor``, which cannot be zero."""
@@ -331,3 +351,16 @@ class _Elimination:
                 top, bottom = -top, -bottom
             out[i] = (top, bottom)
         return out
+
+
+def _positive_up_to(top: PolyElement, bottom: PolyElement, z: int) -> bool:
+    """Whether a quotient is positive for small values of generator ``z`` and changes sign once."""
+    changes, first = 0, 1
+    for poly in (top, bottom):
+        by_power = coefficients(poly, z)
+        signs = [one_sign(by_power[e], frozenset()) for e in sorted(by_power)]
+        if any(s is None for s in signs):
+            return False
+        changes += sum(a != b for a, b in pairwise(signs))
+        first *= signs[0] or 0
+    return first == 1 and changes <= 1

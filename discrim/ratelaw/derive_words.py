@@ -115,8 +115,12 @@ def roots_words(solution: Solution) -> tuple[str, ...]:
             )
         if solved.several:
             out.append(
-                f"The balances for {names} may have more than one positive solution; the law uses "
-                "the one that is reached from none of it."
+                "The balances may have more than one positive solution; the law uses "
+                + (
+                    f"that with the least {names}."
+                    if len(group.unknowns) == 1
+                    else f"one for {names}, found from fixed starting values."
+                )
             )
     return tuple(out)
 

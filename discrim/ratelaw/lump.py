@@ -18,7 +18,7 @@ from sympy import Rational
 
 from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
 from discrim.ratelaw.lump_gauge import gauged
-from discrim.ratelaw.lump_names import Candidate, candidates, over
+from discrim.ratelaw.lump_names import Candidate, candidates, in_other_units, over
 from discrim.ratelaw.lump_scaling import scaled
 from discrim.ratelaw.lump_span import Span
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
@@ -63,7 +63,7 @@ def lump(
     except NotRational:
         return scaled(_solved(law, groups))
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
-    form = gauged(form, [z for g in groups for z in g.unknowns], decisive, differences)
+    form, units = gauged(form, [z for g in groups for z in g.unknowns], decisive, differences)
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
     if written is None:
         return _as_it_is(_solved(law, groups), form, decisive)
@@ -105,12 +105,42 @@ def lump(
         findings=(*law.findings, *written.findings),
     )
     rest = iter(written.equations)
-    out = _solved(
-        shortened, [replace(g, equations=tuple(next(rest) for _ in g.equations)) for g in groups]
-    )
+    groups = [replace(g, equations=tuple(next(rest) for _ in g.equations)) for g in groups]
+    shortened, groups, renamed = _renamed(shortened, groups, form, units)
+    lines += renamed
+    out = _solved(shortened, groups)
     if combined:
         lines.append(("Rate law in the constants that rates can tell apart", out.rate))
     return replace(out, derivation=tuple(lines))
+
+
+def _renamed(
+    law: RateLaw, groups: Sequence[Group], form: Form, units: Mapping[sympy.Symbol, Vector]
+) -> tuple[RateLaw, list[Group], list[tuple[str, Any]]]:
+    """Unknowns that are counted in units of constants under names of their own."""
+    swap = {}
+    lines: list[tuple[str, Any]] = []
+    for z, unit in units.items():
+        x = in_other_units(z)
+        swap[z] = x
+        powers = (form.atoms[i] ** Rational(-e.numerator, e.denominator) for i, e in unit.items())
+        counted = sympy.Eq(x, sympy.Mul(z, *powers), evaluate=False)
+        lines.append((f"{z.name} counted in units of constants", counted))
+    if not swap:
+        return law, list(groups), lines
+    law = replace(
+        law,
+        rate=law.rate.xreplace(swap),
+        production={n: e.xreplace(swap) for n, e in law.production.items()},
+        pathways=tuple(replace(p, rate=p.rate.xreplace(swap)) for p in law.pathways),
+    )
+    moved = [
+        Group(
+            tuple(swap.get(z, z) for z in g.unknowns), tuple(e.xreplace(swap) for e in g.equations)
+        )
+        for g in groups
+    ]
+    return law, moved, lines
 
 
 def _powers_put_in(law: RateLaw, groups: Sequence[Group]) -> tuple[RateLaw, Sequence[Group]]:

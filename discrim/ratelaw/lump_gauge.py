@@ -23,11 +23,12 @@ def gauged(
     unknowns: Sequence[sympy.Symbol],
     decisive: int,
     differences: Callable[[Form, int], list[Vector]],
-) -> Form:
-    """``form`` with each unknown in the unit in which the fewest constants show.
+) -> tuple[Form, dict[sympy.Symbol, Vector]]:
+    """``form`` with each unknown in the unit in which the fewest constants show, and these units.
 
     ``differences`` gives what of the first ``decisive`` expressions of a form data can show.
     """
+    units: dict[sympy.Symbol, Vector] = {}
     for z in unknowns:
         best = (Span(differences(form, decisive)).n, False, 0)
         found = form
@@ -37,8 +38,9 @@ def gauged(
             score = (Span(differences(other, decisive)).n, broken, k + 1)
             if score < best:
                 best, found = score, other
+                units[z] = unit
         form = found
-    return form
+    return form, units
 
 
 def _power(amounts: Amounts, z: sympy.Symbol) -> Fraction:

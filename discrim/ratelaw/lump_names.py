@@ -7,6 +7,8 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any
 
+import sympy
+
 from discrim.ratelaw.lump_form import Amounts, Form, Sum, Vector, order_of
 from discrim.ratelaw.model import Constant, ConstantKind
 
@@ -286,8 +288,16 @@ def _bare(symbol: str) -> str:
 
 def _plain(symbol: str) -> str:
     """A species as part of a name: letters, digits and underscores only."""
-    text = _bare(symbol).replace("+", "plus").replace("-", "minus").replace("*", "ads")
+    text = _bare(symbol.split("]/[")[0])
+    if text and not any(ch.isalnum() for ch in text):
+        return "vacant"
+    text = text.replace("+", "plus").replace("-", "minus").replace("*", "ads")
     return "".join(ch if ch.isalnum() else "_" for ch in text).strip("_") or "x"
+
+
+def in_other_units(unknown: sympy.Symbol) -> sympy.Symbol:
+    """The symbol of an unknown of balances that is counted in units of constants."""
+    return sympy.Dummy(f"x_{_plain(unknown.name)}", positive=True)
 
 
 def _label(amounts: Amounts) -> str:

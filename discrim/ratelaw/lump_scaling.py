@@ -21,7 +21,7 @@ from sympy import Rational
 
 from discrim.ratelaw.derive_network import Matrix, null_space, row_reduce
 from discrim.ratelaw.implicit import ImplicitValue
-from discrim.ratelaw.lump_names import combination
+from discrim.ratelaw.lump_names import combination, in_other_units
 from discrim.ratelaw.lump_span import Vector
 from discrim.ratelaw.model import Constant, RateLaw
 
@@ -53,6 +53,7 @@ def scaled(law: RateLaw) -> RateLaw:
     if chosen is None:
         return law
     gone, powers = chosen
+    renamed, units = _renamed(walk, everything, gone, known)
     swap: dict[Any, Any] = {known[g].symbol: sympy.Integer(1) for g in gone}
     constants: list[Constant] = []
     taken = {c.name for c in known}
@@ -70,12 +71,13 @@ def scaled(law: RateLaw) -> RateLaw:
         taken.add(made.name)
         swap[c.symbol] = 1 / made.symbol if divided else made.symbol
         constants.append(made)
+    swap |= renamed
     apart = list(law.pathways)
     rate = law.rate.xreplace(swap)
     production = {n: law.production[n].xreplace(swap) for n in names}
     used = rate.free_symbols.union(*(e.free_symbols for e in production.values()))
     kept = tuple(c for c in constants if c.symbol in used)
-    lines = list(law.derivation)
+    lines = [*law.derivation, *units]
     for c in kept:
         if c not in known:
             lines.append((f"Combined: {c.name}", sympy.Eq(c.symbol, c.definition, evaluate=False)))
@@ -96,6 +98,26 @@ def scaled(law: RateLaw) -> RateLaw:
         else (),
         derivation=tuple(lines),
     )
+
+
+def _renamed(
+    walk: _Walk, scalings: Matrix, gone: Sequence[int], known: Sequence[Constant]
+) -> tuple[dict[Any, Any], list[tuple[str, Any]]]:
+    """Implicit values that are counted in other units once constants are set to one."""
+    d = len(gone)
+    reduced, _ = row_reduce([[v[g] for g in gone] + list(v) for v in scalings], d)
+    swap: dict[Any, Any] = {}
+    lines: list[tuple[str, Any]] = []
+    for z, k in walk.unknown.items():
+        powers = {g: -reduced[r][d + k] for r, g in enumerate(gone) if reduced[r][d + k]}
+        if not powers:
+            continue
+        x = in_other_units(z)
+        swap[z] = x
+        unit = (known[g].symbol ** Rational(e.numerator, e.denominator) for g, e in powers.items())
+        counted = sympy.Eq(x, sympy.Mul(z, *unit), evaluate=False)
+        lines.append((f"{z.name} counted in units of constants", counted))
+    return swap, lines
 
 
 def _only_divided_by(expressions: Sequence[Any], symbol: sympy.Symbol) -> bool:
