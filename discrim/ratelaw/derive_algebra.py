@@ -82,10 +82,10 @@ class Algebra:
                 )
             )
         order = sorted(powers, key=cmp_to_key(lambda a, b: factors[a].compare(factors[b])))
-        rank = {key: n for n, key in enumerate(order)}
+        rank: dict[tuple[int, Any], int] = {key: n for n, key in enumerate(order)}
         terms = []
         for m, c in poly.terms():
-            held = sorted(((i, e) for i, e in enumerate(m) if e), key=rank.__getitem__)
+            held = sorted(((i, e) for i, e in enumerate(m) if e), key=lambda at: rank[at])
             args = [factors[key] for key in held]
             if c != 1:
                 args.insert(0, sympy.Integer(int(c)))
