@@ -32,7 +32,7 @@ from discrim.ratelaw.derive_network import Network, classify
 from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.model import RateLaw, amount, constant_symbol
 from tests.benchmarks.networks import NETWORKS, network
-from tests.ratelaw_derive.random_mechanisms import adsorbed_then_reaction
+from tests.ratelaw_derive.drawn_surfaces import adsorbed_then_reaction
 
 SEED = 11
 LIMIT = 60.0  # seconds for a plain run
