@@ -81,8 +81,12 @@ class Algebra:
                     for m, c in poly.terms()
                 )
             )
-        order = sorted(powers, key=cmp_to_key(lambda a, b: factors[a].compare(factors[b])))
-        rank: dict[tuple[int, Any], int] = {key: n for n, key in enumerate(order)}
+
+        def compare(a: tuple[int, Any], b: tuple[int, Any]) -> int:
+            return int(factors[a].compare(factors[b]))
+
+        order = sorted(powers, key=cmp_to_key(compare))
+        rank = {key: n for n, key in enumerate(order)}
         terms = []
         for m, c in poly.terms():
             held = sorted(((i, e) for i, e in enumerate(m) if e), key=lambda at: rank[at])

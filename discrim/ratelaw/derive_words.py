@@ -146,7 +146,9 @@ def conventions(network: Network, solution: Solution) -> tuple[str, ...]:
         if solution.per_catalyst:
             out.append(f"The rate is per total {family.name}.")
         else:
-            out.append(f"[total {family.name}] is the amount of {family.name} over all its forms.")
+            out.append(
+                f"In the law [total {family.name}] is the amount of {family.name} in all forms."
+            )
     return tuple(out)
 
 

@@ -47,6 +47,8 @@ FORMS = {
     "metal-complex-cycle": "k_bind*k_react*[A]*[B]/(k_bind*[A] + k_rev_bind + k_react*[B])",
     # Halpern (1981), fast equilibria of loss and binding: k K S/(1 + K S + L/K_L)
     "metal-complex-loses-ligand": "k_react*K_bind*[S]/(1 + K_bind*[S] + [L]/K_lose)",
+    # M + 2 K M^2 = total M, the rate is k M S (balance written out, no source needed)
+    "metal-complex-with-dimer": "2*k_react*[S]*[total M]/(1 + sqrt(1 + 8*K_dimer*[total M]))",
     # Laidler (1987), steady state of two forms of the catalyst; common practice
     "catalyst-oxidised-and-reduced": "k_oxidise*k_reduce*[A]*[B]/(k_oxidise*[A] + k_reduce*[B])",
     # Ostwald (1890)

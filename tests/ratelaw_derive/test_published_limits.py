@@ -93,10 +93,10 @@ LIMITS = {
     "metal-complex-loses-ligand": (["[L]"], "oo", 1, "k_react*K_bind*K_lose*[S]/[L]"),
     # metal as monomer; mostly as dimer, order 1/2 (common practice, no source)
     "metal-complex-with-dimer": (
-        ["[M_total]"],
+        ["[total M]"],
         "oo",
         -sympy.Rational(1, 2),
-        "k*[S]*sqrt([M_total]/(2*K_dimer))",
+        "k_react*[S]*sqrt([total M]/(2*K_dimer))",
     ),
 }
 

@@ -109,3 +109,23 @@ def test_a_closed_cycle_takes_one_constant_away():
     k_ab, k_rev_ab, k_bc, k_rev_bc = symbols("k_ab k_rev_ab k_bc k_rev_bc")
     rest = {amount("B"): A * k_ab / k_rev_ab, amount("C"): A * k_ab * k_bc / k_rev_ab / k_rev_bc}
     assert sympy.simplify(law.production["A"].subs(rest)) == 0
+
+
+def test_the_total_of_a_catalyst_stands_in_a_law_that_is_not_first_order_in_it():
+    """Shares of the catalyst by hand; a path without it is not per catalyst, either."""
+    M = amount("total M")
+    k_b, k_rev_b, k_go, k_u = symbols("k_b k_rev_b k_go k_u")
+    K = symbols("K_b")
+    meet = law_of(
+        {"b": "M + A <=> MA", "go": "2 MA -> 2 M + P"},
+        catalyst=["M"],
+        assume={"equilibrated": ["b"]},
+    )
+    assert sympy.simplify(meet.rate - k_go * (M * K * A / (1 + K * A)) ** 2) == 0
+    beside = law_of({"b": "M + A <=> MA", "go": "MA -> M + P", "u": "A -> P"}, catalyst=["M"])
+    catalysed = k_go * k_b * A * M / (k_rev_b + k_go + k_b * A)
+    assert sympy.simplify(beside.step_rate - catalysed - k_u * A) == 0
+    assert "total M" in beside.species
+    alone = law_of({"b": "M + A <=> MA", "go": "MA -> M + P"}, catalyst=["M"])
+    assert "total M" not in alone.species
+    assert "The rate is per total M." in alone.conventions

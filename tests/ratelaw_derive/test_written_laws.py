@@ -12,7 +12,7 @@ import sympy
 from discrim.mechanism.library import load, names
 from discrim.mechanism.model import WrittenLaw
 from discrim.ratelaw.model import amount
-from tests.ratelaw_derive.published import is_zero, library_law
+from tests.ratelaw_derive.published import library_law
 
 ALPHA, N = sympy.Symbol("alpha", positive=True), sympy.Symbol("n", positive=True)
 LEFT = 1 - ALPHA
@@ -38,7 +38,6 @@ SOLIDS = {
 OTHERS = {
     "enzyme-cooperative",
     "lattice-oxygen-any-order",
-    "metal-complex-with-dimer",
     "nitrogen-adsorption-limiting",
     "order-in-one-reactant",
     "order-in-two-reactants",
@@ -110,14 +109,6 @@ def test_oxidation_and_reduction_of_a_surface():
     oxidise = known["k_oxidise"] / known["beta"] * known["[O2]"] ** known["n"] * (1 - s)
     (share,) = sympy.solve(reduce - oxidise, s)
     assert sympy.simplify(reduce.subs(s, share) - rate) == 0
-
-
-def test_dimer_of_a_complex():
-    """M + 2 K M^2 = M_total; the rate is k M S (balance written out, no source needed)."""
-    law = library_law("metal-complex-with-dimer")
-    rate, known = constants(law)
-    free = rate / (known["k"] * known["[S]"])
-    assert is_zero(free + 2 * known["K_dimer"] * free**2 - known["[M_total]"])
 
 
 def test_ammonia_at_equilibrium():
