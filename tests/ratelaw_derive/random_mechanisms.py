@@ -82,6 +82,8 @@ def cases(seed: int, count: int) -> list[Case]:
 
 def _case(number: int, draft: Draft, rng: np.random.Generator) -> Case | None:
     """Numbers for a draft; None when the mechanism is ill posed."""
+    if len({t.replace("<=>", "->") for t in draft.steps.values()}) < len(draft.steps):
+        return None  # one step twice
     mechanism = parse_mechanism(name=f"drawn {number}", **draft.keywords())
     inner = {name for family in draft.families for name in family} | set(draft.steady)
     every = {s.name for step in mechanism.steps for s, _ in (*step.left, *step.right)}
