@@ -16,6 +16,7 @@ import numpy as np
 import sympy
 
 from discrim.ratelaw.compile_implicit import ImplicitFunctions
+from discrim.ratelaw.compile_sums import SumFunctions, has_long_sums
 from discrim.ratelaw.implicit import ImplicitValue
 
 # Smallest amount at which logs and fractional powers are evaluated: [A]^n and its derivatives have
@@ -95,6 +96,14 @@ def _implicit_functions_of(neutral: Any, n_theta: int, n_cond: int) -> ImplicitF
     return ImplicitFunctions(neutral, theta, cond, _array_function)
 
 
+@lru_cache(maxsize=32)
+def _sum_functions_of(neutral: Any, n_theta: int, n_cond: int) -> SumFunctions:
+    """The same for an expression with long sums."""
+    theta = [sympy.Symbol(f"t{i}", real=True) for i in range(n_theta)]
+    cond = [sympy.Symbol(f"c{i}", real=True) for i in range(n_cond)]
+    return SumFunctions(neutral, theta, cond, _array_function)
+
+
 class CompiledLaw:
     """Value and exact derivatives of one expression, as functions of arrays.
 
@@ -129,11 +138,11 @@ class CompiledLaw:
         self._positive = np.array([c in inside for c in self._cond], dtype=bool)
         self._any_positive = bool(self._positive.any())
         self._made: dict[tuple[bool, bool, bool], Callable[..., Any]] = {}
-        self._implicit: ImplicitFunctions | None = None
+        self._apart: ImplicitFunctions | SumFunctions | None = None
         if self._neutral.has(ImplicitValue):
-            self._implicit = _implicit_functions_of(
-                self._neutral, len(self._theta), len(self._cond)
-            )
+            self._apart = _implicit_functions_of(self._neutral, len(self._theta), len(self._cond))
+        elif has_long_sums(self._neutral):
+            self._apart = _sum_functions_of(self._neutral, len(self._theta), len(self._cond))
 
     def _function(self, key: tuple[bool, bool, bool]) -> Callable[..., Any]:
         if key not in self._made:
@@ -163,9 +172,9 @@ class CompiledLaw:
             batch = conditions.shape[0]
         shape = (batch, conditions.shape[-2])
         args = [theta[..., j] for j in range(p)] + [conditions[..., j] for j in range(m)]
-        if self._implicit is not None:
+        if self._apart is not None:
             with np.errstate(all="ignore"):
-                return self._implicit(
+                return self._apart(
                     args, shape, constants=constants, conditions=conditions_too, both=both
                 )
         function = self._function((constants, conditions_too, both))
