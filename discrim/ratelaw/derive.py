@@ -66,8 +66,8 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     check_sources(mechanism, network.intermediates)
     routes = routes_of(mechanism, network.intermediates)
     check_limiting(mechanism, routes)
-    overall = _overall(network)
     fluxes = _fluxes(network)
+    overall = _overall(network, fluxes)
     solution = solve(network, _wanted(network, overall, fluxes))
     production_of = _production_rows(network)
     parts = _rate_parts(network, solution, overall, fluxes, production_of)
@@ -171,10 +171,11 @@ def _fluxes(network: Network) -> list[dict[str, Fraction]]:
     return [{s.name: x for s, x in zip(steps, v, strict=True)} for v in basis]
 
 
-def _overall(network: Network) -> dict[Species, Fraction] | None:
+def _overall(
+    network: Network, fluxes: Sequence[Mapping[str, Fraction]]
+) -> dict[Species, Fraction] | None:
     """Overall stoichiometry if all steady fluxes have the same one, scaled as the rate is."""
     steps = network.mechanism.steps
-    fluxes = _fluxes(network)
     of_fluid = changes(steps, network.fluid)
     made = [
         [sum((row[j] * flux[s.name] for j, s in enumerate(steps)), Fraction(0)) for row in of_fluid]

@@ -160,11 +160,14 @@ def row_reduce(matrix: Matrix, columns: int | None = None) -> tuple[Matrix, list
             continue
         rows[at], rows[p] = rows[p], rows[at]
         lead = rows[at][c]
-        rows[at] = [x / lead for x in rows[at]]
+        if lead != 1:
+            rows[at] = [x / lead if x else x for x in rows[at]]
+        held = [(k, y) for k, y in enumerate(rows[at]) if y]
         for r in range(len(rows)):
             if r != at and rows[r][c]:
-                f = rows[r][c]
-                rows[r] = [x - f * y for x, y in zip(rows[r], rows[at], strict=True)]
+                f, row = rows[r][c], rows[r]
+                for k, y in held:
+                    row[k] = row[k] - f * y
         pivots.append(c)
         at += 1
         if at == len(rows):

@@ -201,10 +201,11 @@ def _solved(law: RateLaw, groups: Sequence[Group]) -> RateLaw:
 
 def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
     """A law that products of powers of its constants do not shorten, with what that leaves open."""
-    rank = _functional_rank(form, differences(form, decisive))
+    shown = differences(form, decisive)
+    rank = _functional_rank(form, shown)
     if rank == len(law.constants):
         return law
-    law = scaled(law)
+    law = scaled(law) if form.equations else scaled(law, (form.atoms, shown))
     n = len(law.constants)
     if rank >= n:  # more than n: in units of the unknowns that are not the best
         return law
@@ -235,9 +236,8 @@ def _write(
     cannot express the law without more constants than there are.
     """
     shown = differences(form, decisive)
-    special = per_catalyst or bool(equilibrium)
     space = Span(shown)
-    if len(shown) > _MANY and space.n >= len(known) and not special:
+    if len(shown) > _MANY and space.n >= len(known) and not equilibrium:
         return None  # as many combinations as constants of the steps, or more
     chosen: list[Candidate] = []
     solver = Span()

@@ -30,18 +30,27 @@ Weight = dict[int, int | Fraction]  # powers of the constants and of implicit va
 _MOST_CHOICES = 4000  # sets of constants that are compared
 
 
-def scaled(law: RateLaw) -> RateLaw:
+def scaled(law: RateLaw, shown: tuple[Sequence[Any], Sequence[Vector]] | None = None) -> RateLaw:
     """``law`` in combinations of its constants that do not scale.
 
-    Returned unchanged when there is no scaling, or when an exponent holds a constant.
+    Returned unchanged when there is no scaling, or when an exponent holds a constant. ``shown``, if
+    known: factors of coefficients of the law, and the products of their powers that data show.
     """
     known = law.constants
     names = list(law.production)
     measured = [law.rate, *law.production.values()]
     walk = _Walk([c.symbol for c in known])
     try:
-        for e in measured:
-            walk.unscaled(walk.weight(e))
+        if shown is None:
+            for e in measured:
+                walk.unscaled(walk.weight(e))
+        else:
+            weights = [walk.weight(factor) for factor in shown[0]]
+            for vector in shown[1]:
+                total: Weight = {}
+                for i, e in vector.items():
+                    total = _plus(total, weights[i], e)
+                walk.unscaled(total)
     except _Unscalable:
         return law
     everything = walk.scalings()
