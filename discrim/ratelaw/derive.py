@@ -98,7 +98,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
     equations = [e for group in solution.groups for e in group.equations]
     constants = _constants(network, [rate, *production.values(), *equations])
     check_limiting_shows(mechanism, [c.name for c in constants])
-    used = set().union(*(e.free_symbols for e in (rate, *production.values(), *equations)))
+    used = _symbols([rate, *production.values(), *equations])
     law = RateLaw(
         name=mechanism.name,
         rate=rate,
@@ -380,8 +380,23 @@ def _grouped(algebra: Algebra, quotients: Sequence[Quotient]) -> Any:
     return sympy.Add(*(q.expr(algebra) for q in groups.values()))
 
 
+def _symbols(expressions: Sequence[Any]) -> set[sympy.Symbol]:
+    """The symbols in all of them; a sum that they share is looked through once."""
+    seen: set[Any] = set()
+    out: set[sympy.Symbol] = set()
+    waiting = list(expressions)
+    while waiting:
+        e = waiting.pop()
+        if e.is_Symbol:
+            out.add(e)
+        elif e not in seen:
+            seen.add(e)
+            waiting += e.args
+    return out
+
+
 def _constants(network: Network, expressions: Sequence[Any]) -> tuple[Constant, ...]:
-    used = set().union(*(e.free_symbols for e in expressions))
+    used = _symbols(expressions)
     out = []
     at_equilibrium = {s.name for s in network.equilibrated}
     for step in network.mechanism.steps:

@@ -236,9 +236,12 @@ def _write(
     cannot express the law without more constants than there are.
     """
     shown = differences(form, decisive)
-    space = Span(shown)
-    if len(shown) > _MANY and space.n >= len(known) and not equilibrium:
-        return None  # as many combinations as constants of the steps, or more
+    large = len(shown) > _MANY and not equilibrium
+    space = Span()
+    for vector in shown:
+        space.add(vector)
+        if large and space.n >= len(known):
+            return None  # as many combinations as constants of the steps, or more
     chosen: list[Candidate] = []
     solver = Span()
     missing = list(space.rows.values())

@@ -78,15 +78,20 @@ def read_form(
 ) -> Form:
     """Bring rational expressions to :class:`Form`; raises :class:`NotRational`."""
     roots: dict[sympy.Symbol, int] = dict.fromkeys(constants, 1)
+    seen: set[Any] = set()
     for e in (*expressions, *equations):
-        _collect(e, roots)
+        _collect(e, roots, seen)
     for symbol in roots:
         if symbol not in constants and not is_amount(symbol):
             raise NotRational(str(symbol))
     return _Reader(Algebra.over(roots), tuple(constants)).read(expressions, equations)
 
 
-def _collect(e: Any, roots: dict[sympy.Symbol, int]) -> None:
+def _collect(e: Any, roots: dict[sympy.Symbol, int], seen: set[Any]) -> None:
+    if e in seen:
+        return
+    if e.is_Add:
+        seen.add(e)
     if e.is_Symbol:
         roots.setdefault(e, 1)
     elif e.is_Pow:
@@ -97,10 +102,10 @@ def _collect(e: Any, roots: dict[sympy.Symbol, int]) -> None:
         elif not e.exp.is_Integer:
             raise NotRational(str(e))
         else:
-            _collect(e.base, roots)
+            _collect(e.base, roots, seen)
     elif e.is_Add or e.is_Mul:
         for a in e.args:
-            _collect(a, roots)
+            _collect(a, roots, seen)
     elif not e.is_Rational:
         raise NotRational(str(e))
 
@@ -114,6 +119,7 @@ class _Reader:
         self.atoms: list[Any] = list(constants)
         self.atom_of: dict[PolyElement, int] = {}
         self.sums: list[Sum] = []
+        self.read_already: dict[Any, PolyElement | None] = {}
         self.sum_of: dict[PolyElement, int] = {}
 
     def read(self, expressions: Sequence[Any], equations: Sequence[Any] = ()) -> Form:
@@ -178,7 +184,9 @@ class _Reader:
     def rational(self, e: Any) -> tuple[PolyElement, PolyElement]:
         """A sum as one numerator over one denominator."""
         over, under = self.ring.zero, self.ring.one
-        whole = self.polynomial(e)
+        if e not in self.read_already:
+            self.read_already[e] = self.polynomial(e)
+        whole = self.read_already[e]
         if whole is not None:
             return whole, under
         for top, below in self.parts(e):
