@@ -5,7 +5,7 @@ Each check raises :class:`~discrim.errors.DiscrimError` at the step that cannot 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Collection, Iterable, Sequence
 from fractions import Fraction
 
 from discrim.errors import DiscrimError
@@ -85,8 +85,28 @@ def check_sources(mechanism: Mechanism, intermediates: Iterable[Species]) -> Non
             place=step.place,
             do="Without another source none of it is ever there. Write the step that makes it from "
             "a reactant" + (" and a vacant site." if species.site else ", such as an initiation, ")
-            + ("" if species.site else "or measure it and leave it out of steady."),
+            + ("" if species.site else "or measure it and leave it out of steady.")
+            + _taken(mechanism, inner),
         )  # fmt: skip
+
+
+def _taken(mechanism: Mechanism, intermediates: Collection[Species]) -> str:
+    """Where nothing is named as steady: which species were guessed to be intermediates.
+
+    A reactant that a side step gives back, or a product that an earlier step takes up, is guessed
+    wrongly; the user can only see that when the guess is said.
+    """
+    free = [
+        s.name
+        for s in species_of(mechanism)
+        if s in intermediates and not s.site and s.name not in mechanism.catalyst
+    ]
+    if mechanism.steady is not None or not free:
+        return ""
+    return (
+        f" Taken as intermediates here: {', '.join(free)}. If one of them is a reactant or a "
+        "product, name the others under assume: steady = [...]."
+    )
 
 
 def _ways(step: Step) -> list[tuple[set[Species], set[Species]]]:

@@ -42,9 +42,9 @@ class Route:
     text: str
 
     def words(self) -> str:
-        """The steps with their signs, such as ``ads_A + 2 ads_B + surface``."""
+        """The steps with their signs, such as ``ads_A + 2 ads_B - ads_P``: those ahead come first."""
         out = ""
-        for name, n in self.steps.items():
+        for name, n in sorted(self.steps.items(), key=lambda x: x[1] < 0):
             sign = (" - " if n < 0 else " + ") if out else ("-" if n < 0 else "")
             out += sign + (name if abs(n) == 1 else f"{abs(n)} {name}")
         return out

@@ -10,7 +10,7 @@ from typing import Any
 
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.mechanism.model import Mechanism, Step, WrittenLaw
-from discrim.mechanism.parse import parse_mechanism
+from discrim.mechanism.parse import ASSUME_KEYS, parse_mechanism
 from discrim.mechanism.step import parse_step
 
 TEXTS = ("title", "field", "source", "note", "law", "overall")
@@ -69,7 +69,9 @@ def _check(content: Mapping[str, Any], lines: Mapping[tuple[str, str], Place], t
             raise DiscrimError(
                 f'unknown key "{key[:40]}"',
                 place=place,
-                do=f"{nearest(key, KEYS)} Known: {', '.join(KEYS)}.".strip(),
+                do="Write it under [assume]."
+                if key in ASSUME_KEYS
+                else f"{nearest(key, KEYS)} Known: {', '.join(KEYS)}.".strip(),
             )
         if key in TEXTS and not isinstance(content[key], str):
             raise DiscrimError(f"{key} is not text", place=place, do="Write it in quotes.")

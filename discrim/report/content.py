@@ -88,8 +88,10 @@ class Law:
 
     @property
     def balance_words(self) -> str:
-        """How the balances are led in: with [H] and [Br] from"""
-        *first, last = self.unknowns or ("",)
+        """How the balances are led in: with [H] and x_Br = k_w*[Br]/k_i from"""
+        whats = {t.partition(" = ")[0]: t for _, t, _ in self.derivation if " = " in t}
+        # An amount in units of constants has a name of its own, which says nothing by itself.
+        *first, last = (u if u.startswith("[") else whats.get(u, u) for u in self.unknowns or ("",))
         return f"with {', '.join(first)} and {last} from" if first else f"with {last} from"
 
     def derives(self, text: str) -> bool:
@@ -223,7 +225,8 @@ def law(candidate: Document) -> Law:
     special = read.text(candidate, "no_better_than")
     if special and not any("no better than" in reason for reason in reasons):
         notes.append(f"Stands, but no better than its special case “{special}”.")
-    notes += reasons + read.texts(candidate, "warnings") + read.texts(candidate, "note")
+    notes += reasons + read.texts(candidate, "findings") + read.texts(candidate, "warnings")
+    notes += read.texts(candidate, "note")
     steps = read.part(candidate, "steps")
     return Law(
         name=read.text(candidate, "name", "unnamed"),

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -66,16 +66,35 @@ def edges_of(candidate: Any, n: int) -> list[tuple[int, int, float | None]]:
     return out
 
 
+def _set_to(edges: Sequence[Mapping[str, Any]], full: int) -> dict[int, str]:
+    """What is set in the full law to give each smaller one, by way of the laws in between.
+
+    Zeros add up along a way: the constants that stay keep their names. Anything else that is set
+    is said only for the laws next to the full one.
+    """
+    out: dict[int, str] = {}
+    ahead, seen = [full], {full}
+    while ahead:
+        larger = ahead.pop(0)
+        for e in edges:
+            smaller, words = int(read.value(e, "smaller") or 0), read.text(e, "words")
+            if read.value(e, "larger") != larger or smaller in seen:
+                continue
+            parts = [*out[larger].split(", "), *words.split(", ")] if larger != full else [words]
+            if larger != full and not all(p.endswith(" = 0") for p in parts):
+                continue
+            out[smaller] = ", ".join(dict.fromkeys(parts))
+            seen.add(smaller)
+            ahead.append(smaller)
+    return out
+
+
 def table(candidate: Any) -> Table | None:
     """The same in numbers: one row for each law."""
     nodes = nodes_of(candidate)
     record = read.part(candidate, "knock_outs")
     full = next((i for i, n in enumerate(nodes) if n.full), -1)
-    set_to = {
-        int(read.value(e, "smaller") or 0): read.text(e, "words")
-        for e in read.records(record, "edges")
-        if read.value(e, "larger") == full
-    }
+    set_to = _set_to(read.records(record, "edges"), full)
     rows = []
     for i, n in enumerate(nodes):
         same = [", ".join(read.clean(x) for x in s) for s in read.items(n.record, "same_as")

@@ -16,6 +16,7 @@ from discrim.report.wrapping import wrap_latex
 #: Lines of a long formula that are printed, and where the rest is.
 _MOST, _FEW, _REST = 24, 16, "; all of it with --json"
 _PAIRS = 12  # pairs of laws that are named in one line
+_KINDS = ("same", "special case", "neither")  # relations of two laws that are proven
 
 #: Columns that only the HTML report shows.
 _WIDE = ("RSS", "AIC", "BIC", "Degrees of freedom", "p of lack of fit")
@@ -184,9 +185,10 @@ def _law(paper: Paper, item: Law) -> None:
     if item.routes:
         paper.blank()
         paper.say("Pathways" if len(item.routes) > 1 else "Overall", indent=2)
-        lead = 2 + min(max(len(equation) for equation, _ in item.routes), paper.width // 2)
+        lead = 7 + min(max(len(equation) for equation, _ in item.routes), paper.width // 2)
         for equation, steps in item.routes:
-            paper.say(f"{equation:<{lead - 2}}  {steps}", indent=4, hang=4 + lead)
+            # "from": two spaces alone would read on, as in "-> 2 CO2  2 ads + react".
+            paper.say(f"{equation:<{lead - 7}}  from {steps}", indent=4, hang=4 + lead)
     _derivation(paper, item)
     for heading, lines in item.limits:
         _cases(paper, heading, lines)
@@ -262,7 +264,10 @@ def _related(candidates: Sequence[Document]) -> list[str]:
         if relation == "same":
             out.append(f"“{a}” and “{b}” are the same law" + (f": {words}" if words else ""))
         elif relation == "special case":
-            out.append(f"“{a}” is a special case of “{b}”" + (f": {words}" if words else ""))
+            kind = "limiting" if "infinite" in words else "special"
+            out.append(f"“{a}” is a {kind} case of “{b}”" + (f": {words}" if words else ""))
+    # With no pair left undecided, all that are not named above are proven apart: no need for names.
+    undecided = any(r not in _KINDS for r, _ in found.values())
     for relation, one, many in (
         (
             "neither",
@@ -272,7 +277,10 @@ def _related(candidates: Sequence[Document]) -> list[str]:
         ("undecided", "Not decided", "Not decided"),
     ):
         pairs = [(a, b) for (a, b), (r, _) in found.items() if r == relation]
-        if pairs:
+        if len(pairs) > _PAIRS and not undecided:
+            out.append(f"Each of the other {len(pairs)} pairs is proven to be neither the same law "
+                       "nor one a case of the other")  # fmt: skip
+        elif pairs:
             said = "; ".join(f"“{a}” and “{b}”" for a, b in pairs[:_PAIRS])
             more = f"; and {len(pairs) - _PAIRS} more pairs" if len(pairs) > _PAIRS else ""
             out.append(f"{one if len(pairs) == 1 else many}: {said}{more}")

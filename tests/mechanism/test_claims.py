@@ -78,6 +78,12 @@ MISTAKES = {
         {"assume": {"steady": ["X", "Y"]}}, "two",
         '"X" is made only from species that come from it', "initiation",
     ),
+    "a reactant that a step gives back, guessed to be an intermediate": (
+        {"i": "Br2 -> 2 Br", "t": "2 Br -> Br2", "p1": "Br + H2 -> HBr + H",
+         "p2": "H + Br2 -> HBr + Br"}, {}, "t",
+        '"Br2" is made only from species that come from it',
+        "Taken as intermediates here: Br2, Br, H. If one of them is a reactant",
+    ),
     "a surface species that vacant sites never lead to": (
         {"ads": "A + * <=> A*", "go": "A* -> P + *", "one": "C* <=> D*"}, {}, "one",
         '"C*" is made only from', "a vacant site",

@@ -130,6 +130,7 @@ def test_a_step_of_a_file_is_pointed_at(tmp_path):
         ("steps = 3", "steps is not a table", 1),
         ("\ntilte = 'x'\n[steps]\na = 'A -> B'", 'unknown key "tilte"', 2),
         ("[steps]\na = 'A -> B'\n[asume]\nlimiting = 'a'", 'unknown key "asume"', 3),
+        ("overall_equilibrium = 'K'\n[steps]\na = 'A <=> B'", "unknown key", 1),
         ("[steps]\na = A -> B", "no valid TOML", 2),
         ("[steps]\na = 'A -> B'\na = 'B -> C'", "no valid TOML", 3),
     ],
@@ -139,6 +140,12 @@ def test_files_that_are_wrong(text, says, line):
         from_toml(text, file="m.toml", name="m")
     assert caught.value.place.file == "m.toml"
     assert caught.value.place.line == line
+
+
+def test_an_assumption_outside_its_table_is_sent_there():
+    with pytest.raises(DiscrimError) as caught:
+        from_toml("limiting = 'a'\n[steps]\na = 'A -> B'", file="m.toml", name="m")
+    assert caught.value.do == "Write it under [assume]."
 
 
 def test_bind_renames_everywhere(tmp_path):

@@ -66,7 +66,7 @@ KNOWN = {
         {"a": "A <=> X", "b": "X <=> P", "c": "X -> Q"},
         ("X",),
         {"pathway 1": ("A <=> P", "a + b"), "pathway 2": ("A -> Q", "a + c"),
-         "pathway 3": ("P -> Q", "-b + c")},
+         "pathway 3": ("P -> Q", "c - b")},
         0,
     ),
     "no step of its own": (

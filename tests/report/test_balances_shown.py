@@ -45,7 +45,7 @@ def number(text: str, values: dict[str, float]) -> float:
 
 def test_law_and_balance_as_printed_give_the_rate_of_the_steady_state(keys: dict[str, Any]) -> None:
     (balance,) = keys["balances"]
-    assert balance["unknown"] == "[X]"
+    unknown = balance["unknown"]
     assert balance["mathml"].startswith("<math")
     assert balance["latex"].startswith("0 = ")
     k = {"k_start": 0.02, "k_carry": 3.0, "k_again": 7.0, "k_end_1": 5.0, "k_end_2": 11.0}
@@ -60,22 +60,28 @@ def test_law_and_balance_as_printed_give_the_rate_of_the_steady_state(keys: dict
     values = {**k, "[A]": a, "[X2]": x2}
     values |= {c["name"]: number(c["definition"], values) for c in keys["combinations"]}
     sum_of = balance["text"].removeprefix("0 = ")
-    shown = brentq(lambda z: number(sum_of, {**values, "[X]": z}), 1e-9, 10, xtol=1e-15)
-    rate = number(keys["law"], {**values, "[X]": shown})
+    shown = brentq(lambda z: number(sum_of, {**values, unknown: z}), 1e-9, 10, xtol=1e-15)
+    rate = number(keys["law"], {**values, unknown: shown})
     assert rate == pytest.approx(k["k_carry"] * x * a, rel=1e-9)
 
 
 def test_the_balance_is_printed_below_the_law(keys: dict[str, Any]) -> None:
     text = laws([keys])
-    head, _, rest = text.partition("with [X] from")
-    assert "[X]" in head.splitlines()[-2]
+    unknown = keys["balances"][0]["unknown"]
+    head, _, rest = text.partition(f"with {unknown} = ")
+    assert unknown in head.splitlines()[-2]
+    assert "[X]" in rest.split("\n")[0]  # an amount in units of constants, and what it is
     assert rest.split("\n")[1].strip().startswith("0 = ")
-    assert "solved numerically" in " ".join(keys["findings"])
+    notes = text.partition("  Notes\n")[2]
+    assert "solved numerically" in " ".join(notes.split())
 
 
 def test_unknowns_are_listed_in_words(keys: dict[str, Any]) -> None:
-    one = law_content(keys)
-    assert one.balance_words == "with [X] from"
+    plain = {**keys, "balances": [{"unknown": "[X]", "text": "0 = 0"}]}
+    assert law_content(plain).balance_words == "with [X] from"
+    one = law_content({**keys, "balances": [{"unknown": "x_X", "text": "0 = 0"}],
+                       "derivation": [{"words": "so", "text": "x_X = k_a*[X]"}]})  # fmt: skip
+    assert one.balance_words == "with x_X = k_a*[X] from"
     two = law_content({**keys, "balances": [{"unknown": u, "text": "0 = 0"} for u in "PQR"]})
     assert two.balance_words == "with P, Q and R from"
     assert len(two.balances) == 3

@@ -154,6 +154,8 @@ def test_the_report_draws_it(found: tuple[np.ndarray, np.ndarray, Any]) -> None:
     (table,) = build(document).knock_outs
     assert len(table.rows) == 7
     assert {row[table.heads.index("Enough")] for row in table.rows} == {"yes", "no"}
+    for row in table.rows:  # each pathway left out is a constant set to zero, over two levels too
+        assert row[-1].count(" = 0") == 3 - len(row[0].split(", "))
 
 
 def test_two_ways_to_write_one_law_are_a_finding(tmp_path: Path) -> None:
