@@ -117,6 +117,17 @@ def test_formulas_are_mathml_with_their_text_beside():
     assert "<code>r = k_by_a*[A] + k_by_b*[B]</code>" in text
 
 
+def test_long_formulas_are_text_on_paper():
+    """Drawn they do not break into lines, and paper cannot scroll."""
+    document = sample.two_amines()
+    drawn = "<math><mi>r</mi></math>"
+    document["candidates"][0] |= {"law": " + ".join(["k*[A]"] * 40), "law_mathml": drawn}
+    document["candidates"][1] |= {"law": "k*[A]", "law_mathml": drawn}
+    text = page(document, {})
+    assert text.count('<div class="formula long">') == 1
+    assert '<code class="on-paper">r = k*[A] + k*[A]' in text
+
+
 @pytest.mark.parametrize(
     ("given", "expected"),
     [
