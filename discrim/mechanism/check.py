@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import replace
+from fractions import Fraction
 
 from discrim.errors import DiscrimError, Place, nearest
 from discrim.mechanism.formula import elements
@@ -195,9 +196,9 @@ def catalyst_forms(
 ) -> dict[Species, int]:
     """The species that hold the catalyst whose free form is ``name``, itself first, and how many.
 
-    They are the smallest set of species whose total no step changes, one catalyst each if that can
-    be (two for a dimer); a species that some step only makes or only consumes (a reactant, a
-    product) is not among them.
+    They are the smallest set of species whose total no step changes and within which the catalyst
+    can turn over, one catalyst each if that can be (two for a dimer); a species that some step only
+    makes or only consumes (a reactant, a product) is not among them.
     """
     every = species_of(mechanism)
     free = next(s for s in every if s.name == name)
@@ -217,6 +218,7 @@ def catalyst_forms(
     barred = one_way | {s for s in every if s.site or s.name in measured} - {free}
     barred |= {s for s in every if s.name in mechanism.catalyst} - {free}
     best: list[dict[Species, int]] = []
+    idle: list[dict[Species, int]] = []  # the smallest set within which nothing turns over
     budget = [5000]  # a hostile mechanism must not search for ever
 
     def search(forms: dict[Species, int], rejected: frozenset[Species]) -> None:
@@ -239,9 +241,14 @@ def catalyst_forms(
                     search({**forms, option: weight}, rejected | tried)
                 tried |= {option}
             return
-        best[:] = [forms]
+        budget[0] -= 20  # about the work of a look at the fluxes
+        if _turns_over(changes, forms, free):
+            best[:] = [forms]
+        elif not idle or len(forms) < len(idle[0]):
+            idle[:] = [forms]
 
     search({free: 1}, frozenset())
+    best = best or idle
     if not best:
         broken = next(
             (s for s, c in zip(mechanism.steps, changes, strict=True) if c.get(free)),
@@ -254,3 +261,39 @@ def catalyst_forms(
             "the step that sets it free again, or leave it out of catalyst.",
         )
     return {free: 1} | {s: best[0][s] for s in every if s in best[0]}
+
+
+def _turns_over(
+    changes: Sequence[Mapping[Species, int]], forms: Iterable[Species], free: Species
+) -> bool:
+    """Whether a step that changes the free form can run while the amount of no form changes.
+
+    Where each step of a cycle takes something up and sets something free, other totals than that of
+    the catalyst are conserved too: free catalyst with its first product and its last reactant.
+    """
+    own = [j for j, c in enumerate(changes) if c.get(free)]
+    rows: dict[int, dict[int, Fraction]] = {}  # by the step of the pivot
+
+    def reduced(row: dict[int, Fraction]) -> dict[int, Fraction]:
+        while True:
+            pivot = next((j for j in row if j in rows), None)
+            if pivot is None:
+                return row
+            times = row[pivot] / rows[pivot][pivot]
+            for j, x in rows[pivot].items():
+                row[j] = row.get(j, Fraction(0)) - times * x
+            row = {j: x for j, x in row.items() if x}
+
+    for species in forms:
+        row = reduced({j: Fraction(c[species]) for j, c in enumerate(changes) if c.get(species)})
+        if row:
+            pivot = next(iter(row))
+            for other in rows.values():
+                times = other.get(pivot, Fraction(0)) / row[pivot]
+                for j, x in row.items() if times else ():
+                    other[j] = other.get(j, Fraction(0)) - times * x
+                for j in [j for j, x in other.items() if not x]:
+                    del other[j]
+            rows[pivot] = row
+    # a rate is forced to zero where it is a combination of the balances
+    return not own or any(reduced({j: Fraction(1)}) for j in own)
