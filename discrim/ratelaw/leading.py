@@ -321,13 +321,41 @@ def _vanishes(total: Any) -> bool:
         return bool(total == 0)
     if sign_of(total) or not any(a.has(sympy.Add) for a in total.args):
         return False
-    unknown = {v: sympy.Dummy(positive=True) for v in total.atoms(ImplicitValue)}
+    values = total.atoms(ImplicitValue)
+    unknown = {v: sympy.Dummy(positive=True) for v in values}
+    if values and _may_vanish_by_balance(total, values):
+        raise NoLeadingTerm("its leading terms may cancel by the balance of its unknown")
     total = total.xreplace(unknown)
     for first in (1009, 7919):
         if _value(total, first) != 0:
             return False
     numer = sympy.fraction(sympy.together(total))[0]
     return bool(sympy.expand(numer) == 0) or _value(numer, 104729) == 0
+
+
+def _may_vanish_by_balance(total: Any, values: set[Any]) -> bool:
+    """Whether a sum that holds an implicit value may be zero because of what that value solves.
+
+    No, where sum and balance share no root at some rational values of the symbols, as polynomials
+    in the unknown; yes, where that cannot be told. Which of several roots is meant may depend on
+    the constants, so that one shared root is enough for a yes.
+    """
+    value = next(iter(values))
+    if len(values) > 1 or len(value.unknowns) > 1:
+        return True
+    (z,), (equation,) = value.unknowns, value.equations
+    at, point = 1009, {}
+    for s in sorted(total.free_symbols, key=str):
+        at = int(sympy.nextprime(at + 50))
+        point[s] = sympy.Rational(at, 1000) ** 12  # so that its usual roots are rational too
+    sums = [e.xreplace(point) for e in (total.xreplace({value: z}), equation)]
+    try:
+        one, other = (sympy.Poly(sympy.fraction(sympy.together(e))[0], z) for e in sums)
+    except sympy.PolynomialError:
+        return True
+    if not (one.domain.is_QQ or one.domain.is_ZZ) or not (other.domain.is_QQ or other.domain.is_ZZ):
+        return True
+    return bool(sympy.gcd(one, other).degree() > 0)
 
 
 def _value(total: Any, first: int) -> Any:

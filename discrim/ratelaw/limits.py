@@ -18,6 +18,7 @@ from discrim.ratelaw.model import RateLaw, amount
 
 LOW, HIGH = "low", "high"
 _LONG = 14  # terms of an apparent order that is still read at a glance
+_MOST_OPERATIONS = 250_000  # of a law times its limits; a few seconds of work
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -68,9 +69,14 @@ def limits_of(law: RateLaw) -> tuple[Limit, ...]:
         if rate is None:
             continue
         held = rate.free_symbols
-        for species in law.species:
-            if amount(species) in held:
-                out += [limit(rate, species, where, forward=forward) for where in (LOW, HIGH)]
+        species_of = [s for s in law.species if amount(s) in held]
+        if 2 * len(species_of) * rate.count_ops() > _MOST_OPERATIONS:
+            why = "not given: the law is too long"
+            ends = [(s, where) for s in species_of for where in (LOW, HIGH)]
+            out += [Limit(s, where, None, None, forward, why) for s, where in ends]
+            continue
+        for species in species_of:
+            out += [limit(rate, species, where, forward=forward) for where in (LOW, HIGH)]
     return tuple(out)
 
 

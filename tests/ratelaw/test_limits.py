@@ -11,6 +11,7 @@ import sympy
 from discrim.errors import Place
 from discrim.mechanism.library import load, names
 from discrim.mechanism.model import Mechanism
+from discrim.mechanism.parse import parse_mechanism
 from discrim.ratelaw.bare import law_as_written, law_from_expression
 from discrim.ratelaw.derive import derive
 from discrim.ratelaw.expression import parse_expression
@@ -335,6 +336,37 @@ def test_implicit_unknown_by_the_terms_that_balance(balance, species, low, high)
         assert order_text(found.order) == expected
         here = values | {x: sympy.Rational(10) ** exponent}
         assert abs(number(rate, here) / number(found.law, here) - 1) < 1e-12
+
+
+# steps; a species from which alone the product can come
+THROUGH_BALANCES = (
+    ({"ads": "H2 + 2 * <=> 2 H*", "on": "A + * <=> A*", "react": "A* + H* -> P + 2 *"}, "A"),
+    ({"ads": "H2 + 2 * <=> 2 H*", "on": "A + * <=> A*", "react": "A* + H* -> P + 2 *",
+      "poison": "I + * <=> I*"}, "A"),
+)  # fmt: skip
+
+
+@pytest.mark.parametrize(("steps", "species"), THROUGH_BALANCES)
+def test_terms_that_cancel_by_the_balance_are_no_limit(steps, species):
+    # without A nothing is made (conservation of A): at low A the rate cannot stay as it is. The
+    # leading terms, made of H2 and of H* on the surface, are at equilibrium there.
+    law = derive(parse_mechanism(name="two ways on", steps=steps))
+    assert law.rate.has(ImplicitValue)
+    low = limit(law.rate, species, "low")
+    assert low.law is None or sympy.sympify(low.order).is_positive
+    if low.law is None:
+        assert low.words.startswith("not given: ")
+
+
+def test_a_law_too_long_for_limits_says_so():
+    # invented
+    steps = {f"s{i}": f"X{i} + A{i} <=> X{(i + 1) % 24} + B{i}" for i in range(24)}
+    law = derive(parse_mechanism(name="long ring", steps=steps, catalyst=["X0"]))
+    start = time.process_time()
+    found = limits_of(law)
+    assert time.process_time() - start < 10
+    assert len(found) >= 2 * len(law.species)
+    assert {x.words for x in found if x.law is None} == {"not given: the law is too long"}
 
 
 def test_unknowns_of_several_balances_have_no_closed_form():
