@@ -134,6 +134,8 @@ def _tree_sums(nodes: Sequence[int], edges: Edges, most: int) -> dict[int, Sum]:
                             product = {}
                             break
                         product = _times(product, way)
+                        if len(product) > most:  # steps side by side: one tree alone has too many
+                            raise TooManyTrees
                         waiting.append((y, x))
             into = sums[root]
             for m, c in product.items():

@@ -18,6 +18,7 @@ from discrim.ratelaw.derive_solve import Solution, poly_expr
 from discrim.ratelaw.model import amount, total_amount
 
 _LONG = 200  # terms of a sum that nobody would read
+_MOST_SYMBOLS = 10_000  # in all lines of an elimination, some fifteen pages
 
 
 def _listed(names: list[str]) -> str:
@@ -233,8 +234,10 @@ def _elimination_lines(network: Network, solution: Solution) -> list[tuple[str, 
                 ("Its positive root", sympy.Eq(symbol, e, evaluate=False))
                 for symbol, e in zip(group.unknowns, solved.values, strict=True)
             ]
-    long = [t for t in solution.totals if len(t.top) > _LONG]
-    if long or any(len(p) > _LONG for v in solution.values.values() for part in v for p, _ in part):
+    sums = [t.top for t in solution.totals]
+    sums += [p for v in solution.values.values() for part in v for p, _ in part]
+    symbols = sum(1 for p in sums for m in p for e in m if e)
+    if any(len(p) > _LONG for p in sums) or symbols > _MOST_SYMBOLS:
         return [*lines, ("The intermediates are sums too long to print here", None)]
     for species, m in solution.monomials.items():
         symbol, solved = amount(species.name), value(m)
