@@ -86,11 +86,11 @@ def check_sources(mechanism: Mechanism, intermediates: Iterable[Species]) -> Non
             do="Without another source none of it is ever there. Write the step that makes it from "
             "a reactant" + (" and a vacant site." if species.site else ", such as an initiation, ")
             + ("" if species.site else "or measure it and leave it out of steady.")
-            + _taken(mechanism, inner),
+            + taken(mechanism, inner),
         )  # fmt: skip
 
 
-def _taken(mechanism: Mechanism, intermediates: Collection[Species]) -> str:
+def taken(mechanism: Mechanism, intermediates: Collection[Species]) -> str:
     """Where nothing is named as steady: which species were guessed to be intermediates.
 
     A reactant that a side step gives back, or a product that an earlier step takes up, is guessed

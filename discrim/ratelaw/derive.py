@@ -16,7 +16,7 @@ from typing import Any
 import sympy
 
 from discrim.errors import DiscrimError
-from discrim.mechanism.claims import check_limiting, check_limiting_shows, check_sources
+from discrim.mechanism.claims import check_limiting, check_limiting_shows, check_sources, taken
 from discrim.mechanism.model import Mechanism, Species
 from discrim.mechanism.routes import routes_of
 from discrim.mechanism.unlikely import notes_of, warnings_of
@@ -78,7 +78,7 @@ def derive(mechanism: Mechanism, *, measured: frozenset[str] | None = None) -> R
             "the mechanism has no net rate",
             place=mechanism.place,
             do="All its steps cancel in the steady state. Check the directions of the steps and "
-            "which of them are called equilibrated.",
+            "which of them are called equilibrated." + taken(mechanism, network.intermediates),
         )
     production: dict[str, Any] = {}
     for f, species in enumerate(network.fluid):

@@ -17,6 +17,7 @@ from sympy import ZZ
 from sympy.polys.rings import PolyElement
 
 from discrim.errors import DiscrimError
+from discrim.mechanism.claims import taken
 from discrim.mechanism.model import Species
 from discrim.ratelaw import derive_trees
 from discrim.ratelaw.derive_algebra import (
@@ -103,8 +104,12 @@ def undetermined(network: Network, unknowns: Sequence[Species]) -> DiscrimError:
     return DiscrimError(
         f"the balances do not determine the intermediates {names}",
         place=network.mechanism.place,
-        do="Each needs a step that makes it and one that consumes it. If one of them is "
-        "measured or is a reactant or product, name the others in steady = [...].",
+        do="Each needs a step that makes it and one that consumes it."
+        + (
+            taken(network.mechanism, network.intermediates)
+            or " If one of them is measured or is a reactant or product, name the others in "
+            "steady = [...]."
+        ),
     )
 
 

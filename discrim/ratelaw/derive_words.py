@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from fractions import Fraction
 from typing import Any
 
 import sympy
@@ -16,6 +15,7 @@ from discrim.ratelaw.derive_equilibria import Monomial, Powers, backward, equili
 from discrim.ratelaw.derive_network import Network
 from discrim.ratelaw.derive_solve import Solution, poly_expr
 from discrim.ratelaw.model import amount, total_amount
+from discrim.ratelaw.printing import plain
 
 _LONG = 200  # terms of a sum that nobody would read
 _MOST_SYMBOLS = 10_000  # in all lines of an elimination, some fifteen pages
@@ -75,27 +75,33 @@ def assumptions(network: Network, solution: Solution) -> tuple[str, ...]:
 
 def _relation(network: Network, relation: Relation) -> str:
     """What a cycle says of one constant, a full sentence."""
-    fast = {s.name for s in network.equilibrated}
-
-    def factor(name: str, e: Fraction) -> str:
-        base = f"K_{name}" if name in fast else f"(k_{name}/k_rev_{name})"
-        return base if e == 1 else f"{base}^({e})" if e.denominator > 1 else f"{base}^{e}"
-
-    powers = relation.others
-    above = [factor(n, e) for n, e in sorted(powers.items()) if e > 0]
-    below = [factor(n, -e) for n, e in sorted(powers.items()) if e < 0]
-    product = " ".join(above or ["1"]) + "".join(f"/{f}" for f in below)
+    given_up = _tied(network, relation)
     name = relation.step.name
     if relation.equilibrated:
         return (
-            f"The equilibrated steps close a cycle, so that K_{name} = {product} and is not a "
-            "constant of its own."
+            f"The equilibrated steps close a cycle, so that {plain(given_up.lhs)} = "
+            f"{plain(given_up.rhs)} and is not a constant of its own."
         )
-    around = _listed([name, *sorted(powers)])
+    order = [s.name for s in network.mechanism.steps]
+    around = _listed(sorted([name, *relation.others], key=order.index))
     return (
-        f"Steps {around} close a cycle without net change, so that k_{name}/k_rev_{name} = "
-        f"{product} (microscopic reversibility) and k_rev_{name} is not a constant of its own."
+        f"Steps {around} close a cycle without net change, so that {plain(given_up.lhs)} = "
+        f"{plain(given_up.rhs)} (microscopic reversibility) and is not a constant of its own."
     )
+
+
+def _tied(network: Network, relation: Relation) -> Any:
+    """The constant that a cycle gives up, in terms of the others around it."""
+    fast = {s.name for s in network.equilibrated}
+    steps = {s.name: s for s in network.mechanism.steps}
+    value: Any = sympy.Integer(1)
+    for name, e in relation.others.items():
+        step = steps[name]
+        own = equilibrium(step) if name in fast else forward(step) / backward(step)
+        value *= own ** Rational(e.numerator, e.denominator)
+    if relation.equilibrated:
+        return sympy.Eq(equilibrium(relation.step), value, evaluate=False)
+    return sympy.Eq(backward(relation.step), forward(relation.step) / value, evaluate=False)
 
 
 def roots_words(solution: Solution) -> tuple[str, ...]:
@@ -186,6 +192,10 @@ def derivation(network: Network, solution: Solution, rate: Any) -> tuple[tuple[s
             (f"Step {step.name} at equilibrium", sympy.Eq(equilibrium(step), ratio, evaluate=False))
         )
     lines += _steady_lines(network, solution)
+    for relation in solution.relations:
+        lines.append(
+            ("Constants around a closed cycle multiply to one, so", _tied(network, relation))
+        )
     lines += _elimination_lines(network, solution)
     lines.append(("Rate law in the constants of the steps", rate))
     return tuple(lines)

@@ -161,22 +161,30 @@ def _powers_put_in(law: RateLaw, groups: Sequence[Group]) -> tuple[RateLaw, Sequ
 
 
 def _reduced(law: RateLaw, group: Group) -> RateLaw:
-    """Powers of an unknown of which one power is known put in: k_1 - k_2 z^2 may be one term."""
+    """Powers of an unknown put in by its equation where that is shorter: k_1 - k_2 z^2 may be one term."""
     if len(group.unknowns) != 1:
         return law
     (z,), (equation,) = group.unknowns, group.equations
     by_power = powers_of(equation, z)
-    if len(by_power) != 2 or 0 not in by_power:
-        return law
     n = max(by_power)
-    known = -by_power[0] / by_power[n]
+    if n < 2 or len(by_power) > 3 or sympy.count_ops(equation) > _MANY:
+        return law
+    lead = by_power[n]
+    known = sum((-c / lead * z**e for e, c in by_power.items() if e < n), sympy.Integer(0))
 
     def reduced(e: Any) -> Any:
         high = {p for p in e.atoms(sympy.Pow) if p.base == z and p.exp.is_Integer and p.exp >= n}
-        if not high:
+        if not high or sympy.count_ops(e) > 5 * _MANY:
             return e
-        swap = {p: z ** (int(p.exp) % n) * known ** (int(p.exp) // n) for p in high}
-        return sympy.cancel(sympy.together(e.xreplace(swap)))
+        swap = {}
+        for p in high:
+            power = z ** int(p.exp)
+            while (top := sympy.degree(power, z)) >= n:
+                lower = power.coeff(z, top) * z ** (top - n) * known
+                power = sympy.expand(power - power.coeff(z, top) * z**top + lower)
+            swap[p] = power
+        shorter = sympy.cancel(sympy.together(e.xreplace(swap)))
+        return shorter if sympy.count_ops(shorter) < sympy.count_ops(e) else e
 
     return replace(
         law,
@@ -209,6 +217,9 @@ def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
     n = len(law.constants)
     if rank >= n:  # more than n: in units of the unknowns that are not the best
         return law
+    if law.derivation and law.derivation[-1][0].endswith("rates can tell apart"):
+        lines = [*law.derivation[:-1], ("Rate law in fewer constants", law.rate)]
+        law = replace(law, derivation=tuple(lines))
     words = (
         f"Rates can tell apart only {rank} combinations of the {n} constants of this law, and they "
         "are no products of powers of them: some constants stay undetermined whatever is measured."
@@ -397,7 +408,7 @@ def _positive(
                 p[k] = -p[k]
             continue
         for i, other in enumerate(out):
-            if i == k or other.single is not None or other.written or c.written:
+            if i == k or any(x.single is not None or x.written for x in (other, c)):
                 continue
             if all(p[k] + p[i] >= 0 for p in powers):
                 out[i] = over(other, c)

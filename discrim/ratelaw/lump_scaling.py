@@ -23,7 +23,7 @@ from discrim.ratelaw.derive_network import Matrix, null_space, row_reduce
 from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.lump_names import combination, in_other_units
 from discrim.ratelaw.lump_span import Vector
-from discrim.ratelaw.model import Constant, RateLaw
+from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
 
 Weight = dict[int, int | Fraction]  # powers of the constants and of implicit values, by index
 
@@ -298,7 +298,24 @@ def _choose(
     return None if best is None else (best[1], best[2])
 
 
+def _of_one_step(vector: Vector, known: Sequence[Constant]) -> str:
+    """K_X for k_X/k_rev_X, K_rev_X for its inverse, else nothing."""
+    names = {known[i].name: e for i, e in vector.items()}
+    for name, e in names.items():
+        step = name.removeprefix("k_")
+        if len(names) == 2 and abs(e) == 1 and names.get(f"k_rev_{step}") == -e:
+            return f"K_{step}" if e == 1 else f"K_rev_{step}"
+    return ""
+
+
 def _made(vector: Vector, known: Sequence[Constant], taken: set[str]) -> Constant:
+    step = _of_one_step(vector, known)
+    if step:
+        read = "" if step.startswith("K_rev_") else "of the step as written"
+        words = f"equilibrium constant {read or 'of the step read backwards'}"
+        powers = [known[i].symbol ** int(e) for i, e in vector.items()]
+        symbol = sympy.Symbol(step, nonnegative=True)
+        return Constant(step, symbol, ConstantKind.EQUILIBRIUM, words, sympy.Mul(*powers))
     above = [known[i].name for i, e in vector.items() if e > 0]
     below = [known[i].name for i, e in vector.items() if e < 0]
     fallback = "_".join(above) + ("_over_" + "_".join(below) if below else "")

@@ -13,6 +13,8 @@ from sympy import Rational
 
 from discrim.ratelaw.implicit import ImplicitValue
 
+_SHORT = 60  # operations of coefficients that are factored
+
 
 @dataclass(frozen=True, slots=True)
 class Group:
@@ -140,5 +142,7 @@ def _closed(by_power: Mapping[int, Any]) -> Any | None:
     if high != 2 * step or exponents[1] != step:
         return None
     b = by_power[step] * high_sign
+    if sympy.count_ops(a) + sympy.count_ops(c) <= _SHORT:
+        a, c = sympy.factor(a), sympy.factor(c)  # what they share with the law around cancels
     # 2c/(b + sqrt(b^2 + 4ac)) does not cancel where b > 0, and holds for a = 0
     return (2 * c / (b + sympy.sqrt(b**2 + 4 * a * c))) ** power

@@ -134,7 +134,7 @@ def test_a_closed_cycle_of_equilibria_has_one_constant_less():
         assume={"limiting": "turn"},
     )
     assert len(law.step_constants) == 4
-    assert any("close a cycle, so that K_d = K_a K_c/K_b" in s for s in law.assumptions)
+    assert any("close a cycle, so that K_d = K_a*K_c/K_b" in s for s in law.assumptions)
 
 
 def test_catalyst_not_named_is_pointed_out():
