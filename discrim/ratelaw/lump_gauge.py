@@ -15,6 +15,7 @@ import sympy
 from discrim.ratelaw.lump_form import Amounts, Coefficient, Form, Sum
 from discrim.ratelaw.lump_span import Span, Vector
 
+_LARGE = 200  # coefficients; beyond it the search takes longer than it is worth
 _MOST = 60  # units that are tried for one unknown
 
 
@@ -29,6 +30,8 @@ def gauged(
     ``differences`` gives what of the first ``decisive`` expressions of a form data can show.
     """
     units: dict[sympy.Symbol, Vector] = {}
+    if len(differences(form, decisive)) > _LARGE:
+        return form, units
     for z in unknowns:
         best = (Span(differences(form, decisive)).n, False, 0)
         found = form
