@@ -18,15 +18,7 @@ import sympy
 from sympy.polys.rings import PolyElement
 
 from discrim.mechanism.model import Species
-from discrim.ratelaw.derive_algebra import (
-    Algebra,
-    Quotient,
-    coefficients,
-    common_factor,
-    exact_quotient,
-    lowered,
-    lowest,
-)
+from discrim.ratelaw.derive_algebra import Algebra, Quotient
 from discrim.ratelaw.derive_balances import (
     Balances,
     Sides,
@@ -36,6 +28,13 @@ from discrim.ratelaw.derive_balances import (
     undetermined,
 )
 from discrim.ratelaw.derive_equilibria import Monomial
+from discrim.ratelaw.derive_factors import (
+    coefficients,
+    common_factor,
+    exact_quotient,
+    lowered,
+    lowest,
+)
 from discrim.ratelaw.derive_network import Network, row_reduce
 from discrim.ratelaw.model import total_amount
 from discrim.ratelaw.roots import Group, one_root, powers_of

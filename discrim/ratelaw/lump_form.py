@@ -17,7 +17,8 @@ import sympy
 from sympy import ZZ
 from sympy.polys.rings import PolyElement
 
-from discrim.ratelaw.derive_algebra import Algebra, common_factor, exact_quotient, factors_of
+from discrim.ratelaw.derive_algebra import Algebra
+from discrim.ratelaw.derive_factors import common_factor, exact_quotient, factors_of
 
 Amounts = tuple[tuple[sympy.Symbol, Fraction], ...]  # monomial in the amounts, sorted by name
 Vector = dict[int, Fraction]  # exponents of atoms, by index
