@@ -18,11 +18,12 @@ from sympy import Rational
 
 from discrim.ratelaw.lump_form import Form, NotRational, Term, Vector, read_form
 from discrim.ratelaw.lump_gauge import gauged
-from discrim.ratelaw.lump_names import Candidate, candidates, in_other_units, over
+from discrim.ratelaw.lump_names import Candidate, candidates, over
+from discrim.ratelaw.lump_roots import powers_put_in, renamed, solved
 from discrim.ratelaw.lump_scaling import scaled
 from discrim.ratelaw.lump_span import Span
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
-from discrim.ratelaw.roots import Group, powers_of, solve_group, solve_groups
+from discrim.ratelaw.roots import Group
 
 
 def lump(
@@ -50,7 +51,7 @@ def lump(
         ``constants`` are constants of ``law``, or combinations with their ``definition`` in the
         constants of the steps; all >= 0. ``step_rate`` and ``step_constants`` are those of ``law``.
     """
-    law, groups = _powers_put_in(law, groups)
+    law, groups = powers_put_in(law, groups)
     known = law.constants
     fixed = law.stoichiometry
     names = list(law.production) if fixed is None else []  # else all are multiples of the rate
@@ -61,15 +62,15 @@ def lump(
     try:
         form = read_form(expressions, [c.symbol for c in known], equations)
     except NotRational:
-        return scaled(_solved(law, groups))
+        return scaled(solved(law, groups))
     decisive = 1 + len(names)  # what can be measured; pathways cannot, on their own
     form, units = gauged(form, [z for g in groups for z in g.unknowns], decisive, differences)
     written = _write(form, known, decisive, per_catalyst=per_catalyst, equilibrium=equilibrium)
     if written is None:
-        return _as_it_is(_solved(law, groups), form, decisive)
+        return _as_it_is(solved(law, groups), form, decisive)
     if groups:
         # units of several unknowns at once are found by their scalings
-        other = scaled(_solved(law, groups))
+        other = scaled(solved(law, groups))
         if len(other.constants) < len(written.constants):
             return other
     rate, *others = written.expressions
@@ -106,105 +107,12 @@ def lump(
     )
     rest = iter(written.equations)
     groups = [replace(g, equations=tuple(next(rest) for _ in g.equations)) for g in groups]
-    shortened, groups, renamed = _renamed(shortened, groups, form, units)
-    lines += renamed
-    out = _solved(shortened, groups)
+    shortened, groups, counted = renamed(shortened, groups, form, units)
+    lines += counted
+    out = solved(shortened, groups)
     if combined:
         lines.append(("Rate law in the constants that rates can tell apart", out.rate))
     return replace(out, derivation=tuple(lines))
-
-
-def _renamed(
-    law: RateLaw, groups: Sequence[Group], form: Form, units: Mapping[sympy.Symbol, Vector]
-) -> tuple[RateLaw, list[Group], list[tuple[str, Any]]]:
-    """Unknowns that are counted in units of constants under names of their own."""
-    swap = {}
-    lines: list[tuple[str, Any]] = []
-    for z, unit in units.items():
-        x = in_other_units(z)
-        swap[z] = x
-        powers = (form.atoms[i] ** Rational(-e.numerator, e.denominator) for i, e in unit.items())
-        counted = sympy.Eq(x, sympy.Mul(z, *powers), evaluate=False)
-        lines.append((f"{z.name} counted in units of constants", counted))
-    if not swap:
-        return law, list(groups), lines
-    law = replace(
-        law,
-        rate=law.rate.xreplace(swap),
-        production={n: e.xreplace(swap) for n, e in law.production.items()},
-        pathways=tuple(replace(p, rate=p.rate.xreplace(swap)) for p in law.pathways),
-    )
-    moved = [
-        Group(
-            tuple(swap.get(z, z) for z in g.unknowns), tuple(e.xreplace(swap) for e in g.equations)
-        )
-        for g in groups
-    ]
-    return law, moved, lines
-
-
-def _powers_put_in(law: RateLaw, groups: Sequence[Group]) -> tuple[RateLaw, Sequence[Group]]:
-    """Unknowns that are products of powers put into the law, which stays a quotient of sums."""
-    for group in groups:
-        solved = solve_group(group)
-        if solved.closed and not any(v.has(sympy.Add) for v in solved.values):
-            values = dict(zip(group.unknowns, solved.values, strict=True))
-            rest = [
-                replace(g, equations=tuple(sympy.expand(e.xreplace(values)) for e in g.equations))
-                for g in groups
-                if g is not group
-            ]
-            return _powers_put_in(_solved(law, [group]), rest)
-    for group in groups:
-        law = _reduced(law, group)
-    return law, groups
-
-
-def _reduced(law: RateLaw, group: Group) -> RateLaw:
-    """Powers of an unknown put in by its equation where that is shorter: k_1 - k_2 z^2 may be one term."""
-    if len(group.unknowns) != 1:
-        return law
-    (z,), (equation,) = group.unknowns, group.equations
-    by_power = powers_of(equation, z)
-    n = max(by_power)
-    if n < 2 or len(by_power) > 3 or sympy.count_ops(equation) > _MANY:
-        return law
-    lead = by_power[n]
-    known = sum((-c / lead * z**e for e, c in by_power.items() if e < n), sympy.Integer(0))
-
-    def reduced(e: Any) -> Any:
-        high = {p for p in e.atoms(sympy.Pow) if p.base == z and p.exp.is_Integer and p.exp >= n}
-        if not high or sympy.count_ops(e) > 5 * _MANY:
-            return e
-        swap = {}
-        for p in high:
-            power = z ** int(p.exp)
-            while (top := sympy.degree(power, z)) >= n:
-                lower = power.coeff(z, top) * z ** (top - n) * known
-                power = sympy.expand(power - power.coeff(z, top) * z**top + lower)
-            swap[p] = power
-        shorter = sympy.cancel(sympy.together(e.xreplace(swap)))
-        return shorter if sympy.count_ops(shorter) < sympy.count_ops(e) else e
-
-    return replace(
-        law,
-        rate=reduced(law.rate),
-        production={name: reduced(e) for name, e in law.production.items()},
-        pathways=tuple(replace(p, rate=reduced(p.rate)) for p in law.pathways),
-    )
-
-
-def _solved(law: RateLaw, groups: Sequence[Group]) -> RateLaw:
-    """``law`` with the unknowns of ``groups`` solved for."""
-    if not groups:
-        return law
-    values, _ = solve_groups(groups)
-    return replace(
-        law,
-        rate=law.rate.xreplace(values),
-        production={n: e.xreplace(values) for n, e in law.production.items()},
-        pathways=tuple(replace(p, rate=p.rate.xreplace(values)) for p in law.pathways),
-    )
 
 
 def _as_it_is(law: RateLaw, form: Form, decisive: int) -> RateLaw:
