@@ -7,6 +7,7 @@ from dataclasses import replace
 from fractions import Fraction
 
 from discrim.errors import DiscrimError, Place, nearest
+from discrim.mechanism.exact import null_space
 from discrim.mechanism.formula import elements
 from discrim.mechanism.model import Mechanism, Species, Step
 from discrim.mechanism.step import side_text
@@ -272,28 +273,6 @@ def _turns_over(
     the catalyst are conserved too: free catalyst with its first product and its last reactant.
     """
     own = [j for j, c in enumerate(changes) if c.get(free)]
-    rows: dict[int, dict[int, Fraction]] = {}  # by the step of the pivot
-
-    def reduced(row: dict[int, Fraction]) -> dict[int, Fraction]:
-        while True:
-            pivot = next((j for j in row if j in rows), None)
-            if pivot is None:
-                return row
-            times = row[pivot] / rows[pivot][pivot]
-            for j, x in rows[pivot].items():
-                row[j] = row.get(j, Fraction(0)) - times * x
-            row = {j: x for j, x in row.items() if x}
-
-    for species in forms:
-        row = reduced({j: Fraction(c[species]) for j, c in enumerate(changes) if c.get(species)})
-        if row:
-            pivot = next(iter(row))
-            for other in rows.values():
-                times = other.get(pivot, Fraction(0)) / row[pivot]
-                for j, x in row.items() if times else ():
-                    other[j] = other.get(j, Fraction(0)) - times * x
-                for j in [j for j, x in other.items() if not x]:
-                    del other[j]
-            rows[pivot] = row
-    # a rate is forced to zero where it is a combination of the balances
-    return not own or any(reduced({j: Fraction(1)}) for j in own)
+    balances = [[Fraction(c.get(species, 0)) for c in changes] for species in forms]
+    flows = null_space(balances, len(changes))
+    return not own or any(flow[j] for flow in flows for j in own)

@@ -10,6 +10,7 @@ from fractions import Fraction
 
 from discrim.errors import DiscrimError
 from discrim.mechanism.check import net, species_of
+from discrim.mechanism.exact import row_reduce
 from discrim.mechanism.model import Mechanism, Species, Step
 from discrim.mechanism.routes import Routes, routes_of
 
@@ -155,21 +156,9 @@ def _combination(
     """x with sum_i x_i vectors[i] = target, or None; exact elimination."""
     keys = sorted({s for v in (*vectors, target) for s in v})
     rows = [[*(Fraction(v.get(k, 0)) for v in vectors), Fraction(target.get(k, 0))] for k in keys]
-    n, at = len(vectors), 0
-    pivots: list[int] = []
-    for c in range(n):
-        p = next((r for r in range(at, len(rows)) if rows[r][c]), None)
-        if p is None:
-            continue
-        rows[at], rows[p] = rows[p], rows[at]
-        rows[at] = [x / rows[at][c] for x in rows[at]]
-        for r in range(len(rows)):
-            if r != at and rows[r][c]:
-                f = rows[r][c]
-                rows[r] = [x - f * y for x, y in zip(rows[r], rows[at], strict=True)]
-        pivots.append(c)
-        at += 1
-    if any(row[n] for row in rows[at:]):
+    n = len(vectors)
+    rows, pivots = row_reduce(rows, n)
+    if any(row[n] for row in rows[len(pivots) :]):
         return None
     out = [Fraction(0)] * n
     for r, p in enumerate(pivots):

@@ -1,8 +1,8 @@
 """Laws with long sums, such as the steady state of a large network, as fast array functions.
 
-To differentiate a sum of a thousand products symbolically, and to compile all of it, takes minutes.
-A sum of products of powers is a table of exponents instead: with t_k the k-th product and E_kj its
-power of x_j, the sum is S = sum_k c_k t_k, dS/dx_j = sum_k c_k t_k E_kj/x_j, and for i != j
+To differentiate a sum of a thousand products symbolically, and to compile all of it, is slow. A sum
+of products of powers is a table of exponents instead: with t_k the k-th product and E_kj its power
+of x_j, the sum is S = sum_k c_k t_k, dS/dx_j = sum_k c_k t_k E_kj/x_j, and for i != j
 d2S/dx_i dx_j = sum_k c_k t_k E_ki E_kj/(x_i x_j): matrix products. The law around the sums is
 differentiated symbolically, and the chain rule puts both together.
 """

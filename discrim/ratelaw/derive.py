@@ -17,20 +17,13 @@ import sympy
 
 from discrim.errors import DiscrimError
 from discrim.mechanism.claims import check_limiting, check_limiting_shows, check_sources, taken
+from discrim.mechanism.exact import Matrix, null_space, primitive, row_reduce
 from discrim.mechanism.model import Mechanism, Species
 from discrim.mechanism.routes import routes_of
 from discrim.mechanism.unlikely import notes_of, warnings_of
 from discrim.ratelaw.derive_algebra import Algebra, Quotient, add, times
 from discrim.ratelaw.derive_equilibria import backward, equilibrium, forward
-from discrim.ratelaw.derive_network import (
-    Matrix,
-    Network,
-    changes,
-    classify,
-    null_space,
-    primitive,
-    row_reduce,
-)
+from discrim.ratelaw.derive_network import Network, changes, classify
 from discrim.ratelaw.derive_solve import Solution, solve
 from discrim.ratelaw.derive_words import assumptions, conventions, derivation, roots_words
 from discrim.ratelaw.lump import lump

@@ -18,6 +18,7 @@ from sympy.polys.rings import PolyElement
 
 from discrim.errors import DiscrimError
 from discrim.mechanism.claims import taken
+from discrim.mechanism.exact import Matrix, null_space, primitive, row_reduce, transpose
 from discrim.mechanism.model import Species
 from discrim.ratelaw import derive_trees
 from discrim.ratelaw.derive_algebra import (
@@ -27,15 +28,7 @@ from discrim.ratelaw.derive_algebra import (
     solve_linear,
 )
 from discrim.ratelaw.derive_equilibria import Monomial
-from discrim.ratelaw.derive_network import (
-    Matrix,
-    Network,
-    changes,
-    null_space,
-    primitive,
-    row_reduce,
-    transpose,
-)
+from discrim.ratelaw.derive_network import Network, changes
 
 Sides = Sequence[tuple[Monomial, Monomial | None]]
 Factors = list[tuple[PolyElement, int]]

@@ -12,8 +12,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
+from discrim.mechanism.exact import null_space, row_reduce
 from discrim.mechanism.model import Step
-from discrim.ratelaw.derive_network import Network, changes, null_space, row_reduce
+from discrim.ratelaw.derive_network import Network, changes
 
 
 @dataclass(frozen=True, slots=True)

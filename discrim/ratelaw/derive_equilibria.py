@@ -18,9 +18,10 @@ from typing import Any
 import sympy
 
 from discrim.errors import DiscrimError
+from discrim.mechanism.exact import Matrix, row_reduce
 from discrim.mechanism.model import Species, Step
 from discrim.ratelaw.derive_cycles import Relation
-from discrim.ratelaw.derive_network import Matrix, Network, changes, row_reduce
+from discrim.ratelaw.derive_network import Network, changes
 from discrim.ratelaw.model import ConstantKind, amount, constant_symbol
 
 Powers = Mapping[sympy.Symbol, Fraction]

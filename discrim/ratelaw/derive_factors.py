@@ -84,7 +84,7 @@ def _common(polys: Sequence[PolyElement]) -> PolyElement:
     A symbol that one of them lacks is in no common factor, so that the others are split into their
     coefficients. p = a x + b has one irreducible factor with x, p over the content of a and b: it
     divides the others or it does not; the rest of the factor is common to a, b and the coefficients
-    of the others. General algorithms take minutes for the sums over trees of a network.
+    of the others. General algorithms make no use of that and are far slower.
     """
     r = polys[0].ring
     polys = [p for p in polys if p]

@@ -17,6 +17,7 @@ from math import lcm
 import sympy
 from sympy.polys.rings import PolyElement
 
+from discrim.mechanism.exact import row_reduce
 from discrim.mechanism.model import Species
 from discrim.ratelaw.derive_algebra import Algebra, Quotient
 from discrim.ratelaw.derive_balances import (
@@ -35,7 +36,7 @@ from discrim.ratelaw.derive_factors import (
     lowered,
     lowest,
 )
-from discrim.ratelaw.derive_network import Network, row_reduce
+from discrim.ratelaw.derive_network import Network
 from discrim.ratelaw.model import total_amount
 from discrim.ratelaw.roots import Group, one_root, powers_of
 from discrim.ratelaw.solve import linear_in, one_sign, put

@@ -57,16 +57,6 @@ def constant_units(
     return dict(find_units(expressions, symbol_units, place=place).units)
 
 
-def unit_words(
-    expressions: Sequence[tuple[sympy.Expr, Unit | None]],
-    symbol_units: Mapping[sympy.Symbol, Unit],
-    *,
-    place: Place | None = None,
-) -> dict[str, str]:
-    """The unit of each constant as text, such as ``mol L⁻¹ s⁻¹ (mmol L⁻¹)^(-order_B)``."""
-    return dict(find_units(expressions, symbol_units, place=place).words)
-
-
 def find_units(
     expressions: Sequence[tuple[sympy.Expr, Unit | None]],
     symbol_units: Mapping[sympy.Symbol, Unit],

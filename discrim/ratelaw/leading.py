@@ -55,7 +55,7 @@ def leading(expr: Any, x: sympy.Symbol, *, high: bool) -> Leading:
         unknown difference, or holds unknowns of several balances.
     """
     walk = _Walk(x, high)
-    found = walk.of(sympy.sympify(expr))
+    found = walk.of(expr)
     positive = tuple(sorted(walk.positive, key=str))
     return Leading(found.order, found.coefficient, walk.exact, positive)
 

@@ -19,7 +19,7 @@ import numpy as np
 import sympy
 from sympy import Rational
 
-from discrim.ratelaw.derive_network import Matrix, null_space, row_reduce
+from discrim.mechanism.exact import Matrix, null_space, row_reduce
 from discrim.ratelaw.implicit import ImplicitValue
 from discrim.ratelaw.lump_names import combination, in_other_units
 from discrim.ratelaw.lump_span import Vector

@@ -34,7 +34,7 @@ def zeroed(
     extra = [c for c in constants_larger if c.symbol not in known and c.symbol.is_nonnegative]
     for chosen in _choices(extra):
         nothing = {c.symbol: sympy.Integer(0) for c in chosen}
-        left = [sympy.sympify(e).subs(nothing) for e in larger]
+        left = [e.subs(nothing) for e in larger]
         if any(e.has(sympy.zoo, sympy.nan, sympy.oo) for e in left):
             continue
         if all(a == b for a, b in zip(left, smaller, strict=True)):

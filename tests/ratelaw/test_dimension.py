@@ -3,7 +3,7 @@
 import pytest
 
 from discrim.errors import DiscrimError, Place
-from discrim.ratelaw.dimension import constant_units, find_units, unit_words
+from discrim.ratelaw.dimension import constant_units, find_units
 from discrim.ratelaw.expression import parse_expression
 from discrim.ratelaw.model import amount, quantity
 from discrim.ratelaw.scale import typical_scale
@@ -67,7 +67,7 @@ def test_units(text, rate, expected):
     ],
 )
 def test_words_where_an_order_is_free(text, expected):
-    assert unit_words([(read(text), RATE)], KNOWN)["k"] == expected
+    assert find_units([(read(text), RATE)], KNOWN).words["k"] == expected
 
 
 def test_several_expressions_settle_more_than_one():
