@@ -1,9 +1,4 @@
-"""From evidence to verdicts. Every threshold that is an opinion stands in this file.
-
-Nothing here computes statistics: it reads facts from `evidence` and says what follows, with the
-numbers and thresholds in the reasons, so that a chemist can dispute a threshold by reading one
-file.
-"""
+"""Does a species or pathway take part in the reaction? From the facts to the verdict."""
 
 from __future__ import annotations
 
@@ -11,20 +6,15 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
-# The stated errors of the conditions must be able to grow by this factor before "participates"
-# falls.
-ERROR_MARGIN = 1.5
-# Where condition errors were only assumed, the conditions must vary on their own by at least this
-# fraction (ten times the assumed 1 %) for "participates".
-ASSUMED_SPREAD = 0.10
-# A sensitivity with less than this fraction outside lockstep is called conditioning, not noise.
-CONDITIONING_FRACTION = 0.10
-# Combinations of the other constants that the runs do not tell apart: the test allows for one.
-MOST_WEAK = 1
-# A fraction below this is rounding of the arithmetic.
-NOTHING_APART = 1e-9
-# Fewer runs than constants plus this are called too few.
-FEW_RUNS = 3
+from discrim.verdict.thresholds import (
+    ASSUMED_SPREAD,
+    CONDITIONING_FRACTION,
+    ERROR_MARGIN,
+    FEW_RUNS,
+    MOST_WEAK,
+    NOTHING_APART,
+)
+from discrim.verdict.words import listed, p_value, percent
 
 Outcome = Literal["participates", "negligible", "undecided"]
 
@@ -86,22 +76,6 @@ class Verdict:
     votes: tuple[tuple[str, str], ...] = field(default=())
 
 
-def _percent(x: float) -> str:
-    if x >= 0.995:
-        return "100 %"
-    if x >= 0.1:
-        return f"{100 * x:.0f} %"
-    return f"{100 * x:.2g} %"
-
-
-def _p(p: float) -> str:
-    return "p < 0.0001" if p < 1e-4 else f"p = {p:.2g}"
-
-
-def _listed(items: Sequence[str]) -> str:
-    return items[0] if len(items) == 1 else ", ".join(items[:-1]) + " and " + items[-1]
-
-
 def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[str, list[str]]:
     """What one candidate says, and why it says no more."""
     if not c.contains:
@@ -135,7 +109,7 @@ def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[
                 "the error of "
                 + " and ".join(c.assumed_errors)
                 + " was only assumed, and over these runs the term varies on its own by "
-                f"{_percent(weakest)} (at least {_percent(ASSUMED_SPREAD)} is asked)"
+                f"{percent(weakest)} (at least {percent(ASSUMED_SPREAD)} is asked)"
             )
         if not stops:
             return "participates", []
@@ -220,7 +194,7 @@ def _participates(
         both = "both" if len(standing) == 2 else f"all {len(standing)}"
         how = f"{both} candidates that stand contain {about}"
     rejects = "rejects" if len(standing) == 1 else "each rejects"
-    why = [f"{how}, and {rejects} a rate without {about} ({_p(worst)}, limit {alpha:g})"]
+    why = [f"{how}, and {rejects} a rate without {about} ({p_value(worst)}, limit {alpha:g})"]
     if margins:
         m = min(margins)
         at_least = "more than 10" if m == float("inf") else f"{m:.2g}"
@@ -231,7 +205,7 @@ def _participates(
         below = all(r.bound < matters_above for c in standing for r in c.readings)
         if below:
             sentence = (
-                f"The rate depends on {subject}, but by less than the {_percent(matters_above)} "
+                f"The rate depends on {subject}, but by less than the {percent(matters_above)} "
                 "that matters."
             )
     return Verdict(
@@ -251,7 +225,7 @@ def _negligible(
     bounds = [r.bound for c in with_it for r in c.readings]
     if what == "species":
         sentence = (
-            f"No dependence of the rate on {about} above {_percent(matters_above)} within these "
+            f"No dependence of the rate on {about} above {percent(matters_above)} within these "
             f"runs. {about} may still be consumed, enter after the limiting step, or be at "
             "saturation; rates cannot show that."
         )
@@ -259,13 +233,13 @@ def _negligible(
             sentence += f" Zero order in {about} here."
     else:
         sentence = (
-            f"The pathway “{about}” carries less than {_percent(matters_above)} of the rate within "
+            f"The pathway “{about}” carries less than {percent(matters_above)} of the rate within "
             "these runs."
         )
     if bounds:
         why = (
-            f"the effect of {about} is at most {_percent(max(bounds))} in every candidate that stands "
-            f"(smallest that matters: {_percent(matters_above)})",
+            f"the effect of {about} is at most {percent(max(bounds))} in every candidate that stands "
+            f"(smallest that matters: {percent(matters_above)})",
         )
     else:
         why = (f"no candidate that stands contains {about}",)
@@ -295,27 +269,27 @@ def _undecided(
     information = min((r.information for c in tested for r in c.readings), default=1.0)
     if not_rejecting:
         worst = max(r.p for c in not_rejecting for r in c.readings)
-        why.append(f"a rate without {about} is not excluded ({_p(worst)}, limit {alpha:g})")
+        why.append(f"a rate without {about} is not excluded ({p_value(worst)}, limit {alpha:g})")
     if tested:
         bound = max(r.bound for c in tested for r in c.readings)
         if matters_above is None:
             why.append(
-                f"an effect of up to {_percent(bound)} is not excluded either, and the study does "
+                f"an effect of up to {percent(bound)} is not excluded either, and the study does "
                 "not say which effect matters (matters_above)"
             )
         elif bound >= matters_above:
             why.append(
-                f"nor is an effect of up to {_percent(bound)} (smallest that matters: "
-                f"{_percent(matters_above)})"
+                f"nor is an effect of up to {percent(bound)} (smallest that matters: "
+                f"{percent(matters_above)})"
                 if not_rejecting
-                else f"the effect of {about} could be as large as {_percent(bound)}"
+                else f"the effect of {about} could be as large as {percent(bound)}"
             )
     if information < CONDITIONING_FRACTION and not_rejecting:
         because.append("conditioning")
         apart = (
             f"none of the sensitivity to {about} is apart from the rest of the law (lockstep)"
             if information < NOTHING_APART
-            else f"only {_percent(information)} of the sensitivity to {about} is not in lockstep with "
+            else f"only {percent(information)} of the sensitivity to {about} is not in lockstep with "
             "the rest of the law"
         )
         why.append(f"conditioning is to blame: over these runs {apart}")
@@ -332,14 +306,14 @@ def _undecided(
         because.append("stand-in")
         names = [s.name for s in others]
         verb = "explains" if len(names) == 1 else "each explain"
-        why.append(f"in place of {about}, {_listed(names)} {verb} these runs as well")
-        settle.append(f"runs that break the link between {about} and {_listed(names)}")
+        why.append(f"in place of {about}, {listed(names)} {verb} these runs as well")
+        settle.append(f"runs that break the link between {about} and {listed(names)}")
     kinds = {said[c.name] for c in standing}
     without = [c for c in standing if not c.contains]
     if without and tested:
         because.append("disagreement")
-        listed = _listed([f"“{c.name}”" for c in without])
-        why.append(f"{listed} {'stands' if len(without) == 1 else 'stand'} without {about}")
+        named = listed([f"“{c.name}”" for c in without])
+        why.append(f"{named} {'stands' if len(without) == 1 else 'stand'} without {about}")
         if not settle:
             settle.append("runs that separate the candidates that stand")
     elif "participates" in kinds and len(kinds) > 1:
@@ -357,7 +331,7 @@ def _undecided(
             why.append("no effect of any size could have been found with these runs")
         else:
             why.append(
-                f"these runs would have found an effect of {_percent(detectable)} four times in five"
+                f"these runs would have found an effect of {percent(detectable)} four times in five"
             )
     return Verdict(
         "undecided",
@@ -367,15 +341,3 @@ def _undecided(
         tuple(dict.fromkeys(because)),
         votes=tuple(votes),
     )
-
-
-def sentence_standing(names: Sequence[str], rejected: Sequence[str]) -> str:
-    """The printed answer to `stands`."""
-    if not names:
-        return "No candidate stands: every law is rejected by these runs."
-    if len(names) == 1:
-        head = f"“{names[0]}” stands"
-    else:
-        head = f"{len(names)} candidates stand: " + ", ".join(f"“{n}”" for n in names)
-    tail = f"; {len(rejected)} rejected" if rejected else ""
-    return f"{head}{tail}. These laws are not the only possible ones."

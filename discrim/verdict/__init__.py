@@ -1,0 +1,43 @@
+"""From evidence to verdicts.
+
+Nothing here computes statistics: it reads facts from `evidence` and says what follows, with the
+numbers and thresholds in the reasons. Every threshold that is an opinion stands in `thresholds`.
+"""
+
+from __future__ import annotations
+
+from discrim.verdict.participation import (
+    CandidateFacts,
+    Outcome,
+    Reading,
+    StandIn,
+    Verdict,
+    judge_participation,
+    vote,
+)
+from discrim.verdict.rivals import sentence_standing
+from discrim.verdict.thresholds import (
+    ASSUMED_SPREAD,
+    CONDITIONING_FRACTION,
+    ERROR_MARGIN,
+    FEW_RUNS,
+    MOST_WEAK,
+    NOTHING_APART,
+)
+
+__all__ = [
+    "ASSUMED_SPREAD",
+    "CONDITIONING_FRACTION",
+    "ERROR_MARGIN",
+    "FEW_RUNS",
+    "MOST_WEAK",
+    "NOTHING_APART",
+    "CandidateFacts",
+    "Outcome",
+    "Reading",
+    "StandIn",
+    "Verdict",
+    "judge_participation",
+    "sentence_standing",
+    "vote",
+]
