@@ -10,7 +10,8 @@ import numpy as np
 import sympy
 
 from discrim.errors import DiscrimError, nearest
-from discrim.evidence.participation import Kind, Participation, Term, participation
+from discrim.evidence.participation import participation
+from discrim.evidence.term import Kind, Participation, Term
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION
 from discrim.ratelaw.compile import CompiledLaw

@@ -14,8 +14,8 @@ import sympy
 
 from discrim.errors import DiscrimError
 from discrim.evidence.criteria import criteria
-from discrim.evidence.participation import nested_f
 from discrim.evidence.rivals import table_key
+from discrim.evidence.term_tests import nested_f
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
 from discrim.ratelaw.lattice import Edge, Lattice, Pair, lattice

@@ -9,8 +9,9 @@ import numpy as np
 
 from discrim.errors import DiscrimError, Place
 from discrim.evidence.criteria import weights
-from discrim.evidence.participation import NestedF, nested_f
 from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
+from discrim.evidence.term import NestedF
+from discrim.evidence.term_tests import nested_f
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.ratelaw.model import amount

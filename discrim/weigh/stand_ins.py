@@ -11,8 +11,8 @@ import numpy as np
 import sympy
 
 from discrim.errors import DiscrimError
-from discrim.evidence.participation import Kind
 from discrim.evidence.rivals import standing
+from discrim.evidence.term import Kind
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements
 from discrim.ratelaw.knockout import KnockOutKind

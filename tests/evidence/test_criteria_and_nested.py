@@ -17,8 +17,8 @@ from scipy import stats
 from discrim.evidence.adequacy import lack_of_fit
 from discrim.evidence.criteria import Criteria, criteria, weights
 from discrim.evidence.curve import Curve
-from discrim.evidence.participation import nested_f
 from discrim.evidence.score import p_one_sided
+from discrim.evidence.term_tests import nested_f
 from discrim.fit.engine import Problem, solve
 from discrim.fit.fit import Fit, fit
 from tests.reference.outside import (

@@ -15,7 +15,8 @@ from scipy import stats
 
 from discrim.evidence.effect import effect_of, t_of
 from discrim.evidence.guaranteed import flip_distance, guaranteed
-from discrim.evidence.participation import Kind, Participation, Term, participation
+from discrim.evidence.participation import participation
+from discrim.evidence.term import Kind, Participation, Term
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.ratelaw.compile import CompiledLaw

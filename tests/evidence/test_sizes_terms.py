@@ -12,8 +12,9 @@ import pytest
 from scipy import stats
 
 from discrim.evidence.intervals import guard_level
-from discrim.evidence.participation import Kind, Term, _along_directions, _vanishing
 from discrim.evidence.rivals import joint_p
+from discrim.evidence.term import Kind, Term
+from discrim.evidence.term_tests import along_directions, vanishing
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from tests.reference.outside import predictor, symbols
@@ -53,7 +54,7 @@ def test_size_where_constants_vanish_in_opposite_directions() -> None:
     for i in range(studies):
         one = replace(table, y=y[i], conditions=table.conditions[i])
         null = fit(small, one, starts=1)
-        z, _ = _along_directions(null, _vanishing(term, null), True, 1)
+        z, _ = along_directions(null, vanishing(term, null), True, 1)
         false += z > stats.norm.ppf(0.95)
     assert stats.binomtest(false, studies, 0.06, alternative="greater").pvalue > 0.05
     assert false > 0.02 * studies
