@@ -113,7 +113,7 @@ def score(
         s = np.einsum("sn,sn->s", g_perp, solution.residual)
         z = np.where(information > NO_INFORMATION, s / size, 0.0)
     df = np.inf
-    n, p_nuisance = data.n, nuisance.shape[2]
+    n, p_nuisance = data.count, nuisance.shape[2]
     if data.scale is Scale.REPLICATES:
         df = float(data.scale_df)
     elif data.scale is Scale.ESTIMATED and not problem.with_conditions:
@@ -154,7 +154,7 @@ def _unknown_scale(
     whatever s^2 is.
     """
     data = problem.data
-    n, p_l = data.n, p - 1
+    n, p_l = data.count, p - 1
     v = sol.covariance
     pred = problem.predictor.predict(sol.theta, sol.conditions, conditions_too=True, both=True)
     assert pred.by_conditions is not None
@@ -163,7 +163,7 @@ def _unknown_scale(
         inverse_trace = (1.0 / v).sum(axis=1)
     else:
         white = Whitener(v)
-        inverse = white.transposed_matrix(white.matrix(np.broadcast_to(np.eye(n), v.shape)))
+        inverse = white.transposed_matrix(white.matrix(np.broadcast_to(np.eye(data.n), v.shape)))
         inverse_trace = np.einsum("snn->s", inverse)
     d = np.zeros((len(v), p))
     for src in problem.measured:

@@ -1,7 +1,8 @@
 """Covariances of residuals, and whitening with them, for a batch of S cases.
 
 A covariance is either a plain array of variances, shape (S, N), when no error is shared by two
-observations, or a full matrix, shape (S, N, N).
+observations, or a full matrix, shape (S, N, N). An infinite variance, every covariance with it zero,
+says that the observation does not count: whitened it is zero.
 """
 
 from __future__ import annotations
@@ -42,6 +43,10 @@ class Whitener:
                 self._inv = 1.0 / np.sqrt(covariance)
             return
         cov = covariance
+        variances = np.diagonal(cov, axis1=1, axis2=2)
+        silent = np.isinf(variances)
+        if silent.any():
+            cov = np.where(silent[:, :, None] & np.eye(cov.shape[-1], dtype=bool), 1.0, cov)
         finite = np.isfinite(cov).all(axis=(1, 2))
         if not finite.all():
             cov = np.where(finite[:, None, None], cov, np.eye(cov.shape[-1]))
@@ -54,6 +59,8 @@ class Whitener:
                 chol[k], good = _cholesky(v)
                 self.ok[k] &= good
         self._inverse = np.linalg.inv(chol)
+        if silent.any():
+            self._inverse = np.where(silent[:, :, None], 0.0, self._inverse)
 
     def vector(self, x: np.ndarray) -> np.ndarray:
         """Shape (S, N)."""
@@ -78,6 +85,15 @@ class Whitener:
         if not self.full:
             return x * self._inv[..., None]
         return np.swapaxes(self._inverse, 1, 2) @ x
+
+
+def not_counting(covariance: np.ndarray, absent: np.ndarray) -> np.ndarray:
+    """A covariance in which the observations marked in ``absent``, shape (S, N), do not count."""
+    if covariance.ndim == 2:
+        return np.where(absent, np.inf, covariance)
+    gone = absent[:, :, None] | absent[:, None, :]
+    own = absent[:, :, None] & np.eye(absent.shape[1], dtype=bool)
+    return np.where(own, np.inf, np.where(gone, 0.0, covariance))
 
 
 def _cholesky(v: np.ndarray) -> tuple[np.ndarray, bool]:

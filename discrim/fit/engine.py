@@ -14,11 +14,12 @@ differentiated: differentiating it would reward laws for being uncertain.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from discrim.fit.covariance import Whitener, add_source
+from discrim.fit.covariance import Whitener, add_source, not_counting
 from discrim.fit.measurements import Measurements, Scale
 from discrim.reactor.model import Prediction, Predictor
 
@@ -72,6 +73,11 @@ class Solution:
     def put(self, rows: np.ndarray, other: Solution) -> None:
         for f in _FIELDS:
             getattr(self, f)[rows] = getattr(other, f)
+
+
+def joined(parts: Sequence[Solution]) -> Solution:
+    """Several solved batches of one problem as one, with arrays of its own."""
+    return Solution(*(np.concatenate([getattr(s, f) for s in parts]) for f in _FIELDS))
 
 
 _FIELDS = (
@@ -206,20 +212,22 @@ class Problem:
         """
         y, nominal = self.table(rows)
         s = len(theta)
+        absent = None if self.data.absent is None else self.data.absent[rows]
         if not self.with_conditions:
-            pred = self.predictor.predict(theta, conditions)
+            pred = _silenced(self.predictor.predict(theta, conditions), absent)
             values = pred.values
-            error = y - values
+            error = _zeroed(y - values, absent)
             if w is None:
                 w = self.own_covariance(values, conditions, None, scale2)
-            white = Whitener(w)
+            cov = w if absent is None else not_counting(w, absent)
+            white = Whitener(cov)
             assert pred.by_constants is not None
             r = white.vector(error)
             g = white.matrix(pred.by_constants)
-            cov = w
         else:
             for k in range(passes):
                 pred, conditions = self._predicted(theta, conditions)
+                pred = _silenced(pred, absent)
                 values, f_c = pred.values, pred.by_conditions
                 assert f_c is not None
                 assert pred.by_constants is not None
@@ -228,8 +236,11 @@ class Problem:
                 error = y - values
                 if self.measured:
                     error = error - np.einsum("snm,snm->sn", f_c, nominal - conditions)
+                error = _zeroed(error, absent)
                 there = conditions if errors_at is None else errors_at
                 cov = self.with_measured(w, there, f_c)
+                if absent is not None:
+                    cov = not_counting(cov, absent)
                 white = Whitener(cov)
                 r = white.vector(error)
                 if not self.measured or k == passes - 1:
@@ -275,11 +286,12 @@ class Problem:
         With errors shared by runs Q is taken in the eigenvectors of the rest of V: its diagonal alone
         counts an error that all runs share as if it scattered them, and s^2 came out as zero.
         """
-        df = np.maximum(self.data.n - free, 1)
+        df = np.maximum(self.data.count - free, 1)
         if sol.covariance.ndim == 3:
             idx = np.arange(self.data.n)
             rest = np.array(sol.covariance)
             rest[:, idx, idx] -= sol.scale2[:, None]
+            rest[:, idx, idx] = np.where(np.isposinf(rest[:, idx, idx]), 1.0, rest[:, idx, idx])
             usable = np.isfinite(rest).all(axis=(1, 2))
             rest[~usable] = np.eye(self.data.n)
             v, vectors = np.linalg.eigh(rest)
@@ -299,6 +311,23 @@ class Problem:
             over = q > df
             lo, hi = np.where(over, mid, lo), np.where(over, hi, mid)
         return np.where(at_zero <= df, 0.0, 0.5 * (lo + hi))
+
+
+def _zeroed(x: np.ndarray, absent: np.ndarray | None) -> np.ndarray:
+    return x if absent is None else np.where(absent, 0.0, x)
+
+
+def _silenced(pred: Prediction, absent: np.ndarray | None) -> Prediction:
+    """The prediction without a word on the observations that do not count, whatever the law gives
+    there."""
+    if absent is None:
+        return pred
+    gone = absent[..., None]
+    return Prediction(
+        np.where(absent, 0.0, pred.values),
+        None if pred.by_constants is None else np.where(gone, 0.0, pred.by_constants),
+        None if pred.by_conditions is None else np.where(gone, 0.0, pred.by_conditions),
+    )
 
 
 def solve(

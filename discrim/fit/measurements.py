@@ -97,6 +97,8 @@ class Measurements:
     scale_df : degrees of freedom of a variance pooled from replicates, 0 otherwise
     condition_names : m names
     replicate_of : shape (N,) equal numbers are replicates
+    absent : shape (S, N) True for observations that do not count in that member of a batch (a run
+        left out), the same number of them in each member; None when all count
     """
 
     y: np.ndarray
@@ -106,10 +108,16 @@ class Measurements:
     condition_names: tuple[str, ...]
     scale_df: int = 0
     replicate_of: np.ndarray | None = None
+    absent: np.ndarray | None = None
 
     @property
     def n(self) -> int:
         return int(self.y.shape[-1])
+
+    @property
+    def count(self) -> int:
+        """The observations that count: N, or fewer where some are left out."""
+        return self.n if self.absent is None else self.n - int(self.absent[0].sum())
 
     @property
     def m(self) -> int:
