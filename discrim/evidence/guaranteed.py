@@ -13,7 +13,7 @@ measurements together, and the range is then called worst-case.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import product
 
 import numpy as np
@@ -129,12 +129,39 @@ def guaranteed(
         return [nothing("guaranteed", reason) for _ in range(p)]
     half = bounds_of(data, alpha, scale2)
     words = "" if half.hard else WORST_CASE
+    y_low, y_high, twice = _observed_range(predictor, data, half)
+    if twice:
+        outer = "outer bound: the rate was worked out from conditions that the law holds too"
+        words = f"{outer}; {words}" if words else outer
     if linear:
         low, high = coefficient_range(predictor, data, half.conditions)
-        ends = _ends(low, data.y + half.y, high, data.y - half.y, predictor.lower, predictor.upper)
+        ends = _ends(low, y_high, high, y_low, predictor.lower, predictor.upper)
         return [_interval(e, words) for e in ends]
     assert cleared is not None
+    half = replace(half, y=np.maximum(y_high - data.y, data.y - y_low))
     return _from_cleared(cleared, predictor, data, half, words)
+
+
+def _observed_range(
+    predictor: Predictor, data: Measurements, half: Bounds
+) -> tuple[np.ndarray, np.ndarray, bool]:
+    """Least and largest true value of each observation, and whether any was worked out from
+    conditions: then over the corners of the box of those (exact for formulas monotone in each)."""
+    formula = getattr(predictor, "formula", None)
+    here = None if formula is None else formula(data.conditions)
+    if here is None:
+        return data.y - half.y, data.y + half.y, False
+    low, high = here[0].copy(), here[0].copy()
+    moving = [j for j in range(data.m) if half.conditions[:, j].any()]
+    for signs in product((-1.0, 1.0), repeat=len(moving)):
+        c = data.conditions.copy()
+        for sign, j in zip(signs, moving, strict=True):
+            c[:, j] = np.maximum(c[:, j] + sign * half.conditions[:, j], 0.0)
+        with np.errstate(all="ignore"):
+            there = formula(c)[0]
+        low, high = np.fmin(low, there), np.fmax(high, there)
+    low, high = np.where(np.isnan(low), data.y, low), np.where(np.isnan(high), data.y, high)
+    return low - half.y, high + half.y, True
 
 
 End = tuple[Side, Side]

@@ -1,8 +1,14 @@
-"""Measured rates: the observation is the rate law itself, evaluated at the conditions of the run."""
+"""Measured rates: the observation is the rate law itself, evaluated at the conditions of the run.
+
+A rate that was worked out from conditions, y = h(c), carries their errors. Its predicted value is taken as
+f(c, theta) - h(c) + h(reading): the difference from the reading and its derivatives by the
+conditions, F - dh/dc, are then those of the measurements that were made, so that covariances and
+reconciled conditions follow without an entry for the covariance between y and c.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
@@ -19,6 +25,8 @@ class RatePredictor:
     response : shape (N,) which law each observation belongs to
     index : shape (N, q) for each observation, which of the p free constants stands for each of the
         q constants of the law; None when they are the same for all runs (q = p)
+    worked_out : for each response the formula h that its values were worked out by, over the same
+        conditions and no constants, or None; readings : shape (N,) its values, h(reading)
     names, lower, upper, linear, scale, starts : see :class:`discrim.reactor.model.Predictor`
     """
 
@@ -34,10 +42,14 @@ class RatePredictor:
         scale: np.ndarray,
         starts: np.ndarray,
         index: np.ndarray | None = None,
+        worked_out: Sequence[CompiledLaw | None] = (),
+        readings: np.ndarray | None = None,
     ) -> None:
         self.laws = tuple(laws)
         self.response = response
         self.index = index
+        self.worked_out = tuple(worked_out) if any(worked_out) else ()
+        self.readings = readings
         self.names = names
         self.lower, self.upper = lower, upper
         self.linear, self.scale, self.starts = linear, scale, starts
@@ -60,8 +72,45 @@ class RatePredictor:
                 conditions_too=conditions_too,
                 both=both,
             )
-            return Prediction(*out)
-        return self._general(theta, conditions, constants, conditions_too, both)
+            made = Prediction(*out)
+        else:
+            made = self._general(theta, conditions, constants, conditions_too, both)
+        return self._less_formula(made, conditions) if self.worked_out else made
+
+    def formula(self, conditions: np.ndarray) -> np.ndarray | None:
+        """h at ``conditions``, shape (N, m) or (S, N, m), as shape (S, N): nan for observations that
+        were not worked out from conditions; None when none was."""
+        if not self.worked_out:
+            return None
+        c = conditions if conditions.ndim == 3 else conditions[None]
+        out = np.full(c.shape[:2], np.nan)
+        for rows, values, _ in self._formulas(c, slopes=False):
+            out[:, rows] = values
+        return out
+
+    def _formulas(
+        self, c: np.ndarray, *, slopes: bool
+    ) -> Iterator[tuple[np.ndarray, np.ndarray, np.ndarray | None]]:
+        """Rows, h and its slopes for each response that has a formula, at c, shape (S, N, m)."""
+        none = np.zeros((len(c), 1, 0))
+        for h, rows in zip(self.worked_out, self._rows, strict=True):
+            if h is not None:
+                v, _, d, _ = h(none, c[:, rows], constants=False, conditions_too=slopes, both=False)
+                yield rows, v, d
+
+    def _less_formula(self, made: Prediction, conditions: np.ndarray) -> Prediction:
+        assert self.readings is not None
+        c = conditions if conditions.ndim == 3 else conditions[None]
+        values, by_conditions = made.values.copy(), made.by_conditions
+        if by_conditions is not None:
+            by_conditions = by_conditions.copy()
+        for rows, h, d in self._formulas(c, slopes=by_conditions is not None):
+            # a planned run has no reading
+            own = np.where(np.isfinite(self.readings[rows]), self.readings[rows], h)
+            values[:, rows] += own - h
+            if by_conditions is not None and d is not None:
+                by_conditions[:, rows] -= d
+        return Prediction(values, made.by_constants, by_conditions, made.by_both)
 
     def _general(
         self,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -39,6 +39,7 @@ def build_runs(
     errors: Mapping[str, tuple[Piece, ...] | None],
     units: UnitSet,
     exclusions: Sequence[Exclusion] = (),
+    computed: Mapping[str, Callable[[Mapping[str, np.ndarray]], np.ndarray]] | None = None,
 ) -> Runs:
     """The runs of a study.
 
@@ -48,6 +49,8 @@ def build_runs(
     declared : columns and conditions of the study; columns without one come as ``Role.IGNORED``
     errors : for each declared name its error as read, or None
     units : the internal units, chosen from the same declarations
+    computed : for columns that were worked out from others, their values from those of the others;
+        such a column need not be in the table
 
     Raises
     ------
@@ -57,7 +60,7 @@ def build_runs(
     """
     by_name = {d.name: d for d in declared}
     for d in declared:
-        if d.value is None:
+        if d.value is None and not d.computed_from:
             require_column(raw, d.name, d.place)
     values: dict[str, np.ndarray] = {}
     for name in raw.names:
@@ -65,12 +68,14 @@ def build_runs(
     for d in declared:
         if d.value is not None:
             values[d.name] = _condition(d, raw.n, units)
+    for name, from_others in (computed or {}).items():
+        values[name] = _worked_out(by_name[name], raw, values.get(name), from_others(values))
     labels = _labels(raw, declared)
     kept, reasons = _excluded(raw, declared, labels, exclusions)
     replicate_of = _replicates(raw, declared, values)
     table = _Table(raw, by_name, values, units, kept, replicate_of)
     columns = [table.column(name, errors) for name in raw.names]
-    columns += [table.column(d.name, errors) for d in declared if d.value is not None]
+    columns += [table.column(d.name, errors) for d in declared if d.name not in raw.names]
     return Runs(
         raw.file,
         labels,
@@ -114,7 +119,7 @@ class _Table:
 
     def column(self, name: str, errors: Mapping[str, tuple[Piece, ...] | None]) -> Column:
         d = self.declared.get(name)
-        in_table = d is None or d.value is None
+        in_table = name in self.raw.names
         texts = self.raw.column(name) if in_table else ()
         parts: tuple[ErrorPart, ...] = ()
         basis, df = ErrorBasis.EXACT, 0
@@ -124,8 +129,10 @@ class _Table:
             written = self.written(name)
             # An undeclared or helping column is kept in the numbers that it shows.
             unit = Unit() if d.role is Role.IGNORED else self.units.unit(written)
-            if not in_table and d.value is not None:
+            if d.value is not None:
                 texts = (d.value.number,) * self.raw.n
+            elif not in_table:  # computed here, with all digits
+                texts = tuple(repr(float(x)) for x in self.values[name])
             has_error = d.role in OBSERVATIONS or d.role in CONDITIONS
             pieces = errors.get(name)
             if not has_error:
@@ -195,6 +202,11 @@ class _Table:
         return out
 
 
+def units_of(declared: Sequence[Declaration], units: UnitSet) -> dict[str, Unit]:
+    """Internal unit of each declared column or condition."""
+    return {d.name: Unit() if d.role is Role.IGNORED else units.unit(_written(d)) for d in declared}
+
+
 def _written(d: Declaration | None) -> ParsedUnit:
     if d is None:
         return DIMENSIONLESS
@@ -250,6 +262,23 @@ def _negative(d: Declaration, text: str) -> str:
         return f"{text} {_written(d).text} is below the absolute zero"
     kind = "partial pressure" if "pressure" in _written(d).exponents() else "concentration"
     return f"a negative {kind if d.role in (Role.SPECIES, Role.TOTAL) else d.role.value}: {text}"
+
+
+def _worked_out(
+    d: Declaration, raw: RawTable, shown: np.ndarray | None, values: np.ndarray
+) -> np.ndarray:
+    """Values of a column that its formula gives; nan in runs that the table leaves empty."""
+    for row, value in enumerate(values):
+        planned = shown is not None and not np.isfinite(shown[row])
+        if planned:
+            values[row] = np.nan
+        elif not np.isfinite(value):
+            raise DiscrimError(
+                f'the formula of "{d.name}" has no value in {raw.row_words(row)}',
+                place=d.place,
+                do="It may divide by zero there; mend the cells, or take the row out.",
+            )
+    return values
 
 
 def _number(raw: RawTable, row: int, name: str, text: str) -> float:

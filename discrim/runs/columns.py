@@ -20,11 +20,17 @@ CONDITIONS = frozenset(
         Role.TEMPERATURE,
         Role.PH,
         Role.IONIC_STRENGTH,
+        Role.INLET,
+        Role.INITIAL,
+        Role.TOTAL_FLOW,
+        Role.TIME,
     }
 )
+# Conditions that stand in no rate law of their own, only in formulas that the study gives.
+IN_FORMULAS = frozenset({Role.TOTAL, Role.INLET, Role.INITIAL, Role.TOTAL_FLOW, Role.TIME})
 LABELS = frozenset({Role.RUN, Role.RUN_ORDER, Role.GROUP})
 NOT_NEGATIVE = frozenset(
-    {Role.SPECIES, Role.TOTAL, Role.CATALYST, Role.TEMPERATURE, Role.IONIC_STRENGTH}
+    IN_FORMULAS | {Role.SPECIES, Role.CATALYST, Role.TEMPERATURE, Role.IONIC_STRENGTH}
 )
 SUPPORTED = OBSERVATIONS | CONDITIONS | LABELS | {Role.TIME_ON_STREAM}
 
@@ -70,6 +76,7 @@ class Declaration:
         the study gives none
     value : of a condition without a column, else None
     place, unit_place, error_place : where each stands in the study
+    computed_from : formula of an observed column that was worked out from others, as written
     """
 
     name: str
@@ -81,6 +88,7 @@ class Declaration:
     place: Place | None = None
     unit_place: Place | None = None
     error_place: Place | None = None
+    computed_from: str = ""
 
 
 def parse_is(text: str, place: Place | None) -> tuple[Role, str]:

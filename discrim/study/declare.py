@@ -37,8 +37,9 @@ def columns(root: Node, raw: RawTable) -> list[Declaration]:
     out = []
     for name in table.data:
         node = table.table(name, f'column "{name}"')
-        node.check_keys(("is", "units", "error", "note"))
-        require_column(raw, name, node.place(key=True))
+        node.check_keys(("is", "units", "error", "computed_from", "note"))
+        if "computed_from" not in node.data:
+            require_column(raw, name, node.place(key=True))
         if "is" in node.data:
             role, about = parse_is(node.needed("is"), node.place("is"))
             check_supported(role, about, node.place("is"))
@@ -64,6 +65,7 @@ def columns(root: Node, raw: RawTable) -> list[Declaration]:
                 node.place("is") if "is" in node.data else node.place(key=True),
                 node.place("units"),
                 node.place("error"),
+                node.needed("computed_from") if "computed_from" in node.data else "",
             )
         )
     return out

@@ -2,18 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
 from discrim.errors import DiscrimError, nearest
-from discrim.runs.build import Exclusion, build_runs, listed
-from discrim.runs.columns import (
-    Declaration,
-)
+from discrim.runs.build import Exclusion, build_runs, listed, units_of
+from discrim.runs.columns import IN_FORMULAS, Declaration
 from discrim.runs.model import Role
 from discrim.runs.read import RawTable, read_table
 from discrim.study.candidates import read_candidates
+from discrim.study.computed import other_values, read_computed, values_from
 from discrim.study.constants import read_constants, settings
 from discrim.study.declare import (
     check_declared,
@@ -25,7 +24,7 @@ from discrim.study.declare import (
 )
 from discrim.study.file import StudyFile, inside, read_toml
 from discrim.study.formulas import derived_units, names_of, parse_derived
-from discrim.study.model import Candidate, Derived, OtherEvidence, Study
+from discrim.study.model import Candidate, Computed, Derived, OtherEvidence, Study
 from discrim.study.node import Node
 from discrim.study.questions import read_questions
 from discrim.units import UnitSet
@@ -89,9 +88,7 @@ def load(path: str | Path) -> Study:
     stated = [u for u in written_derived.values() if u is not None]
     stated += [w.unit.unit for w in constants if w.unit is not None]
     units = UnitSet.choose([*units_in_order(declared), *stated])
-    exclusions = _exclusions(root)
-    runs = build_runs(raw, declared, errors, units, exclusions)
-    by_name = {d.name: runs.find(d.name).unit for d in declared}
+    by_name = units_of(declared, units)
     names = names_of(declared, raw.names, by_name)
     known = settings(constants, units, raw.names)
     derived = parse_derived(
@@ -102,10 +99,15 @@ def load(path: str | Path) -> Study:
         {name: setting.unit for name, setting in known.items()},
         [d.about for d in declared if d.role is Role.SPECIES],
     )
+    computed = read_computed(root, declared, names, derived, known, by_name)
+    exclusions = _exclusions(root)
+    runs = build_runs(
+        raw, declared, errors, units, exclusions, values_from(computed, declared, known)
+    )
     candidates = read_candidates(
         root.tables("candidates", "candidate"), names, derived, file.folder
     )
-    _check_totals(declared, derived, candidates)
+    _check_in_use(declared, derived, candidates, computed)
     questions, not_answered = read_questions(
         root.tables("questions", "question"), candidates, derived, declared, by_name
     )
@@ -124,7 +126,8 @@ def load(path: str | Path) -> Study:
         units=units,
         sha256=file.sha256,
         exclusions=tuple((e.words, e.reason) for e in exclusions),
-        findings=(*findings(runs, declared), *not_answered),
+        findings=(*findings(runs, declared), *other_values(runs, computed), *not_answered),
+        computed=computed,
     )
 
 
@@ -232,23 +235,31 @@ def _level(root: Node) -> float:
     return level
 
 
-def _check_totals(
+def _check_in_use(
     declared: Sequence[Declaration],
     derived: Sequence[Derived],
     candidates: Sequence[Candidate],
+    computed: Mapping[str, Computed],
 ) -> None:
-    """A total is usable where a formula or a bare law uses it, or a catalyst's total is meant."""
+    """A total, an inlet or a time is usable where a formula uses it, a total also for a catalyst."""
+    formulas = [d.formula for d in derived] + [c.formula for c in computed.values()]
     used = {
         symbol.name
-        for expression in [d.formula for d in derived] + [c.law for c in candidates if c.law]
+        for expression in formulas + [c.law for c in candidates if c.law]
         for symbol in expression.free_symbols
     }
     catalysts = {name for c in candidates if c.mechanism for name in c.mechanism.catalyst}
     for d in declared:
-        if d.role is Role.TOTAL and f"{{{d.name}}}" not in used and d.about not in catalysts:
-            raise DiscrimError(
-                f'"total {d.about}" is not yet supported here',
-                place=d.place,
-                do=f"Say how the free amounts follow from it under [derived], with "
-                f'"{d.name}" in a formula, or name {d.about} as catalyst of a candidate.',
-            )
+        if d.role not in IN_FORMULAS or f"{{{d.name}}}" in used:
+            continue
+        if d.role is Role.TOTAL and d.about in catalysts:
+            continue
+        words = f"{d.role.value} {d.about}".strip()
+        do = (
+            f'Say how the free amounts follow from it under [derived], with "{d.name}" in a '
+            f"formula, or name {d.about} as catalyst of a candidate."
+            if d.role is Role.TOTAL
+            else f'Say how the rate was worked out from it: computed_from = "...", with "{d.name}" '
+            "in the formula, for the column that is observed."
+        )
+        raise DiscrimError(f'"{words}" is not yet supported here', place=d.place, do=do)

@@ -49,6 +49,16 @@ class Derived:
     place: Place
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Computed:
+    """An observed column that was worked out from other columns, by ``formula``."""
+
+    name: str
+    formula: Any
+    text: str
+    place: Place
+
+
 @dataclass(frozen=True, slots=True)
 class ConstantSetting:
     """``[constants]``: what the user knows or demands of one constant (internal units).
@@ -114,6 +124,7 @@ class Study:
     sha256: str
     exclusions: tuple[tuple[str, str], ...] = ()  # (where in words, reason)
     findings: tuple[str, ...] = ()
+    computed: Mapping[str, Computed] = field(default_factory=dict)
 
     def kept(self) -> np.ndarray:
         """Indices of the runs that are not excluded."""

@@ -205,7 +205,7 @@ def cleared_of(bound: Bound) -> Cleared | None:
     if bound.predictor.index is not None:
         return None
     law = bound.compiled[0]
-    form = cleared(law.expression, law.constants, law.conditions)
+    form = cleared(bound.expressions[0], law.constants, law.conditions)
     if form is None:
         return None
     known = () if form.known is None else (form.known,)

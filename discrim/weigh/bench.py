@@ -32,6 +32,8 @@ class Bench:
     responses : observed columns; response : shape (N,) index into them
     runs : shape (N,) index of the run of each observation
     units : unit of each condition symbol
+    computed : for each response the formula, in symbols of conditions, that its values were worked out
+        by, or None
     """
 
     study: Study
@@ -43,6 +45,7 @@ class Bench:
     units: Mapping[Any, Unit]
     known: tuple[str, ...]
     planned: bool = False
+    computed: tuple[Any, ...] = ()
 
     def condition(self, symbol: Any) -> int:
         return self.symbols.index(symbol)
@@ -150,8 +153,9 @@ def build(
             do='Say which column is the rate: [columns.NAME] with is = "rate of P".',
         )
     known = known_constants(study)
+    computed = tuple(_formula_of(column, study) for column in responses)
     symbols: set[Any] = set(extra)
-    for e in expressions:
+    for e in [*expressions, *(e for e in computed if e is not None)]:
         for s in e.free_symbols:
             if is_condition(s) or s.name in known:
                 symbols.add(s)
@@ -202,7 +206,7 @@ def build(
             )
         units[s] = column.unit
         sources += _sources(column, j, runs, n, 0)
-    scale, scale_df = _scale(responses)
+    scale, scale_df = _scale(responses, [c.name for c in responses if c.name in study.computed])
     for k, column in enumerate(responses):
         mine = response == k
         for src in _sources(column, OBSERVATION, runs, n, k):
@@ -228,8 +232,23 @@ def build(
         study.runs.replicate_of[runs] if len(responses) == 1 else None,
     )
     return Bench(
-        study, measurements, ordered, responses, response, runs, units, tuple(known), planned
+        study,
+        measurements,
+        ordered,
+        responses,
+        response,
+        runs,
+        units,
+        tuple(known),
+        planned,
+        computed,
     )
+
+
+def _formula_of(column: Column, study: Study) -> Any:
+    """The formula of a column that was worked out from others, as a law is; None for any other."""
+    one = study.computed.get(column.name)
+    return None if one is None else fixed_put_in(put_in(one.formula, study), study)
 
 
 def _sources(column: Column, target: int, runs: np.ndarray, n: int, k: int) -> list[ErrorSource]:
@@ -250,7 +269,7 @@ def _sources(column: Column, target: int, runs: np.ndarray, n: int, k: int) -> l
     return out
 
 
-def _scale(responses: Sequence[Column]) -> tuple[Scale, int]:
+def _scale(responses: Sequence[Column], computed: Sequence[str]) -> tuple[Scale, int]:
     bases = {c.basis for c in responses}
     if bases == {ErrorBasis.ESTIMATED}:
         if len(responses) > 1:
@@ -271,6 +290,8 @@ def _scale(responses: Sequence[Column]) -> tuple[Scale, int]:
         return Scale.REPLICATES, min(c.replicate_df for c in responses if c.replicate_df)
     if ErrorBasis.EXACT in bases:
         exact = next(c for c in responses if c.basis is ErrorBasis.EXACT)
+        if exact.name in computed:  # its errors are those of what it was worked out from
+            return Scale.STATED, 0
         raise DiscrimError(
             f'column "{exact.name}" is observed and said to have no error',
             place=exact.place,

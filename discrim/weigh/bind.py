@@ -68,6 +68,9 @@ def bind(
     compiled = tuple(
         CompiledLaw(e, [c.symbol for c in constants], list(bench.symbols)) for e in expressions
     )
+    formulas = [
+        None if h is None else CompiledLaw(h, [], list(bench.symbols)) for h in bench.computed
+    ]
     typical_values = {
         s: _typical(bench.measurements.conditions[:, j]) for j, s in enumerate(bench.symbols)
     }
@@ -109,6 +112,8 @@ def bind(
         scale=scale,
         starts=starts,
         index=None if simple else column_of,
+        worked_out=formulas,
+        readings=bench.measurements.y,
     )
     return Bound(
         law,

@@ -68,7 +68,7 @@ STRUCTURE: dict[str, Case] = {
     "missing column": ("columns.a]", "columns.aa]", 'no column "aa"', "aa", 'Did you mean "a"?'),
     "reactor later": ('"rates"', '"batch"', '"batch" is not yet supported', "batch", "Give rates"),
     "no such reactor": ('"rates"', '"rate"', 'no reactor "rate"', "rate", 'Did you mean "rates"?'),
-    "column later": ('"B"', '"inlet B"', "not yet supported for rates", "inlet B", "undeclared"),
+    "column later": ('"B"', '"inlet B"', "not yet supported here", "inlet B", "computed_from"),
     "column unknown": ("rate of P", "rte of P", "is not known", "rte of P", 'mean "rate of"?'),
     "long title": ("Does", "x" * 400, "a title of", "x" * 40, "At most 300"),
     "long text": ("two stirrer", "x" * 6000, '"done" has 6,0', "x" * 40, "At most 5,000"),
