@@ -6,7 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from discrim.evidence.distributions import chi2_upper, f_upper
+from discrim.evidence.distributions import chi2_lower, chi2_upper, f_upper
+from discrim.evidence.residuals import orthonormal
+from discrim.fit.covariance import Whitener
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
@@ -21,30 +23,67 @@ class LackOfFit:
     p: float
 
 
+@dataclass(frozen=True, slots=True)
+class ReplicateScatter:
+    """Scatter of replicates against the stated errors: chi-squared with ``df`` degrees of freedom.
+
+    ``ratio`` : by how much replicates scatter more than stated (standard deviations)
+    ``p_more``, ``p_less`` : that so much, or so little, scatter is chance
+    """
+
+    ratio: float
+    df: int
+    p_more: float
+    p_less: float
+
+
+def pure_error(fit: Fit) -> tuple[float, int, int] | None:
+    """(sum of squares of replicates about their means, its degrees of freedom, number of groups),
+    weighted with the V of the fit; None without replicates.
+
+    Errors of conditions and errors that runs share are in V: the means are generalised
+    least-squares ones.
+    """
+    groups = fit.data.replicate_of
+    if groups is None or not fit.ok or not np.isfinite(fit.covariance).all():
+        return None
+    labels, of = np.unique(groups, return_inverse=True)
+    df = fit.n - len(labels)
+    if df < 1:
+        return None
+    white = Whitener(fit.covariance[None])
+    if not bool(white.ok.all()):
+        return None
+    each = white.matrix((of.reshape(-1)[:, None] == np.arange(len(labels))).astype(float)[None])[0]
+    y = white.vector(fit.data.y[None])[0]
+    means = orthonormal(each)
+    left = y - means @ (means.T @ y)
+    return float(left @ left), df, len(labels)
+
+
 def lack_of_fit(fit: Fit) -> LackOfFit | None:
     """None when there are no replicates, or no degrees of freedom left beside them."""
-    groups = fit.data.replicate_of
-    if groups is None:
+    found = pure_error(fit)
+    if found is None:
         return None
-    n, p = fit.n, fit.p
-    y = fit.data.y
-    v = fit.variances
-    weight = 1.0 / np.sqrt(v)
-    pure = 0.0
-    labels = np.unique(groups)
-    for g in labels:
-        rows = groups == g
-        if rows.sum() > 1:
-            w = weight[rows] ** 2
-            mean = (w * y[rows]).sum() / w.sum()
-            pure += float((w * (y[rows] - mean) ** 2).sum())
-    df_pure = n - len(labels)
-    df_lack = len(labels) - p
-    if df_pure < 1 or df_lack < 1 or pure <= 0:
+    pure, df_pure, n_groups = found
+    df_lack = n_groups - fit.p
+    if df_lack < 1 or pure <= 0:
         return None
-    total = float((((y - fit.values) * weight) ** 2).sum())
+    total = float(fit.residual @ fit.residual)
     f = max(total - pure, 0.0) / df_lack / (pure / df_pure)
     return LackOfFit(f, (df_lack, df_pure), f_upper(f, df_lack, df_pure))
+
+
+def replicate_scatter(fit: Fit) -> ReplicateScatter | None:
+    """None when the errors of the observations are not stated, or there are no replicates."""
+    found = pure_error(fit)
+    if found is None or fit.data.scale is not Scale.STATED:
+        return None
+    pure, df, _ = found
+    return ReplicateScatter(
+        float(np.sqrt(pure / df)), df, chi2_upper(pure, df), chi2_lower(pure, df)
+    )
 
 
 def objective_p(fit: Fit) -> float | None:

@@ -51,6 +51,11 @@ def chi2_upper(x: float, df: float) -> float:
     return float(special.chdtrc(df, x)) if np.isfinite(x) else 0.0
 
 
+def chi2_lower(x: float, df: float) -> float:
+    """P(chi-squared <= x)."""
+    return float(special.chdtr(df, x)) if np.isfinite(x) else 1.0
+
+
 def chi2_quantile_upper(p: float, df: float) -> float:
     """x with P(chi-squared > x) = p."""
     return float(special.chdtri(df, p))
@@ -61,3 +66,8 @@ def normal_of_tail(p: Any) -> np.ndarray:
     with np.errstate(divide="ignore"):
         z = -special.ndtri(np.asarray(p, float))
     return np.clip(z, -FAR, FAR)
+
+
+def chi2_tail(x: Any, df: Any) -> np.ndarray:
+    """P(chi-squared > x) for arrays, broadcast."""
+    return np.asarray(special.chdtrc(df, x))
