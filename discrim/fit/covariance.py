@@ -80,6 +80,12 @@ class Whitener:
             return x * self._inv
         return (x[..., None, :] @ self._inverse)[..., 0, :]
 
+    def undone(self, x: np.ndarray) -> np.ndarray:
+        """L x for x of shape (S, N, k)."""
+        if not self.full:
+            return x / self._inv[..., None]
+        return np.linalg.solve(self._inverse, x)
+
     def transposed_matrix(self, x: np.ndarray) -> np.ndarray:
         """L^-T x for x of shape (S, N, k)."""
         if not self.full:

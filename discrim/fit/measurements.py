@@ -106,7 +106,7 @@ class Measurements:
     sources: tuple[ErrorSource, ...]
     scale: Scale
     condition_names: tuple[str, ...]
-    scale_df: int = 0
+    scale_df: float = 0
     replicate_of: np.ndarray | None = None
     absent: np.ndarray | None = None
 
@@ -170,7 +170,7 @@ class Measurements:
             ),
         )
 
-    def with_variance(self, variance: float, df: int) -> Measurements:
+    def with_variance(self, variance: float, df: float) -> Measurements:
         """The unknown variance of the observations held at an estimate with ``df`` degrees of freedom."""
         least = 1e-12 * float(np.var(self.y))
         sd = float(np.sqrt(max(variance, least, 1e-300)))
