@@ -14,6 +14,7 @@ from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 from discrim.runs.model import Column, Role
 from discrim.study.lookup import to_shown
+from discrim.weigh.adequacy_said import adequacy_record
 from discrim.weigh.derived import law_keys
 from discrim.weigh.document_knock_outs import knock_outs_record
 from discrim.weigh.document_values import number, shown_units
@@ -58,6 +59,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
                 "df": list(a.lack_of_fit.df),
                 "p": number(a.lack_of_fit.p),
             },
+            "adequacy": adequacy_record(w, i),
             "condition_number": number(a.conditioning.condition_number),
             "digits_lost": number(a.conditioning.digits_lost),
             "collinearity_index": number(collinearity_index(fit.jacobian)) if fit.ok else None,

@@ -10,6 +10,8 @@ from discrim.evidence.intervals import CROSSED, OPEN
 from discrim.fit.fit import FitStatus
 from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
+from discrim.weigh.left_out import findings_left_out
+from discrim.weigh.adequacy_said import adequacy_findings
 
 if TYPE_CHECKING:
     from discrim.weigh.run import Weighed
@@ -47,8 +49,10 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
                     f"{a.fit.p} constants for {a.fit.n} observations: the fit tests nothing",
                 )
             )
+    out += findings_left_out(w.left_out, w.answers)
     out += _same(w)
     out += _weak(w)
+    out += adequacy_findings(w)
     out += _columns(w)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
@@ -144,7 +148,9 @@ def _columns(w: Weighed) -> list[Finding]:
     sources = [
         c
         for c in w.study.runs.columns
-        if any(e.origin is None for e in c.errors) and f"[{c.about}]" in used
+        if c.role is Role.SPECIES
+        and any(e.origin is None for e in c.errors)
+        and f"[{c.about}]" in used
     ]
     if sources:
         names = ", ".join(f"“{c.name}”" for c in sources)

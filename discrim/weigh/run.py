@@ -15,9 +15,11 @@ from discrim.evidence.term_tests import nested_f
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.ratelaw.model import amount
-from discrim.runs.model import Role, frozen
+from discrim.runs.keeping import with_kept
+from discrim.runs.model import Role
 from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
+from discrim.weigh.adequacy import Adequacy, adequacies
 from discrim.weigh.asked import Answer, answer, check_questions
 from discrim.weigh.assess import Assessment, assess, fits_of
 from discrim.weigh.bench import Bench, build
@@ -25,6 +27,7 @@ from discrim.weigh.bind import Bound, bind
 from discrim.weigh.embedded import embedded
 from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
+from discrim.weigh.left_out import LeftOut, Situation, hanging, left_out
 from discrim.weigh.sameness import Relations, relations
 
 Progress = Callable[[str, int, int], None]
@@ -65,6 +68,8 @@ class Weighed:
     findings: tuple[tuple[str, str, str], ...]
     seed: int
     knock_outs: tuple[KnockOuts | None, ...] = ()
+    adequacy: tuple[Adequacy | None, ...] = ()
+    left_out: LeftOut | None = None
 
 
 def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
@@ -74,9 +79,9 @@ def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
     """
     if bool(study.runs.kept.all()):
         return None
-    runs = replace(study.runs, kept=frozen(np.ones(study.runs.n, bool), bool))
     try:
-        return run(replace(study, runs=runs), seed=seed, lattices=False)
+        runs = with_kept(study.runs, np.ones(study.runs.n, bool))
+        return run(replace(study, runs=runs), seed=seed, lattices=False, one_by_one=False)
     except DiscrimError as trouble:
         return f"not computed: {trouble.says}"
 
@@ -116,18 +121,26 @@ def prepare(
 
 
 def run(
-    study: Study, *, seed: int = 1, progress: Progress | None = None, lattices: bool = True
+    study: Study,
+    *,
+    seed: int = 1,
+    progress: Progress | None = None,
+    lattices: bool = True,
+    one_by_one: bool = True,
 ) -> Weighed:
     """Weigh a study. Wrong input raises; numerical misfortune is a status in the record.
 
-    ``lattices`` False leaves out the laws of each mechanism with some of its pathways.
+    ``lattices`` False leaves out the laws of each mechanism with some of its pathways, ``one_by_one``
+    False the verdicts with each single run left out.
     """
     # Trial steps may run to where a law overflows; they are rejected there, so no warning is due.
     with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
-        return _run(study, seed, progress, lattices)
+        return _run(study, seed, progress, lattices, one_by_one)
 
 
-def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> Weighed:
+def _run(
+    study: Study, seed: int, progress: Progress | None, lattices: bool, one_by_one: bool
+) -> Weighed:
     say = progress or (lambda words, done, total: None)
     say("deriving rate laws", 0, 1)
     laws, bench, bounds = prepare(study)
@@ -149,7 +162,7 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
     common_fits = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
     common = shared.as_origin(next(iter(fits[0])))
     say("comparing rivals", 0, 1)
-    standings, stands = _standing(common_fits, related, alpha, seed)
+    readings, stands = _standing(common_fits, related, alpha, seed)
     assessments = []
     for i, b in enumerate(bounds):
         say("intervals", i, n)
@@ -190,6 +203,24 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
     for k, q in enumerate(asked):
         say("answering", k, len(asked))
         answers.append(answer(q, study, bench, laws, bounds, fits, stands, seed=seed))
+    singly = None
+    if one_by_one:
+        say("leaving out single runs", 0, 1)
+        singly = left_out(
+            Situation(
+                study,
+                [c.law.name for c in laws],
+                bench.runs,
+                common_fits,
+                readings,
+                list(related.same),
+                stands,
+                answers,
+                fits,
+            ),
+            lambda one: _without_run(one, study, laws, fits, related, seed),
+        )
+        answers = hanging(answers, singly)
     without: tuple[KnockOuts | None, ...] = ()
     if lattices:
         say("taking pathways out", 0, 1)
@@ -204,7 +235,7 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
         tuple(bounds),
         tuple(assessments),
         related,
-        tuple(standings),
+        tuple(readings[0]),
         tuple(stands),
         tuple(w),
         tuple(rank),
@@ -216,11 +247,45 @@ def _run(study: Study, seed: int, progress: Progress | None, lattices: bool) -> 
         (),
         seed,
         without,
+        left_out=singly,
+        adequacy=adequacies(bench, bounds, [a.fit for a in assessments], stands, seed),
     )
     names = {name.split("[")[0] for b in bounds for name in b.names}
     names |= {c.name for law in laws for c in law.law.constants}
     unused = unused_constants(study, names | set(bench.known))
     return replace(weighed, findings=findings_of(weighed, unused))
+
+
+def _without_run(
+    one: int,
+    study: Study,
+    laws: Sequence[CandidateLaw],
+    fits: Sequence[dict[str, Fit]],
+    related: Relations,
+    seed: int,
+) -> tuple[list[bool], list[Answer]]:
+    """Which laws stand, and the answers, with run ``one`` excluded as well; fits start at those with
+    all runs."""
+    kept = np.array(study.runs.kept)
+    kept[one] = False
+    study = replace(study, runs=with_kept(study.runs, kept))
+    bench = build(study, [e for c in laws for e in c.bound])
+    bounds = [bind(c.law, bench, c.bound, with_units=False) for c in laws]
+    data = bench.measurements
+    again = []
+    for b, old in zip(bounds, fits, strict=True):
+        first = next(iter(old.values()))
+        near = first.theta[None] if first.ok and len(first.theta) == len(b.names) else None
+        again.append(fits_of(b, data, seed=seed, near=near))
+    again = _no_larger_law_worse(bounds, again, related, study, seed)
+    shared = _common_scale(again, data)
+    common = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, again, strict=True)]
+    _, stands = _standing(common, related, 1.0 - study.level, seed)
+    asked = [q for q in study.questions if q.asks == "participates"]
+    answers = [
+        answer(q, study, bench, laws, bounds, again, stands, seed=seed, flips=False) for q in asked
+    ]
+    return stands, answers
 
 
 def _no_larger_law_worse(
@@ -293,8 +358,9 @@ def _on_common(
 
 def _standing(
     common_fits: Sequence[Sequence[Fit]], related: Relations, alpha: float, seed: int
-) -> tuple[list[Standing], list[bool]]:
-    """A candidate stands if it does under any reading of the condition errors."""
+) -> tuple[list[list[Standing]], list[bool]]:
+    """Under each reading of the condition errors, and in all: a candidate stands if it does under any
+    of them."""
     contains = dict.fromkeys(related.contains, True)
     same = dict.fromkeys(related.same, True)
     readings = [
@@ -305,7 +371,7 @@ def _standing(
     stands = [any(r[i].stands for r in readings) for i in range(len(first))]
     for i, j in related.same:
         stands[i] = stands[j] = stands[i] or stands[j]
-    return first, stands
+    return readings, stands
 
 
 def _inseparable(
