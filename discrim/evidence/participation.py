@@ -26,10 +26,12 @@ def participation(
     seed: int,
     matters_above: float | None,
     brief: bool = False,
+    flips: bool = True,
 ) -> Participation:
     """Facts about ``term`` on ``data`` (origins of the condition errors resolved).
 
-    ``brief`` leaves out effect, margin and flip distances (a law that does not stand).
+    ``brief`` leaves out effect, margin and flip distances (a law that does not stand); without
+    ``flips`` only the flip distances are left out, which no verdict needs.
     """
     alpha = 1.0 - level
     problem = Problem(term.full, data)
@@ -53,6 +55,7 @@ def participation(
     if not brief:
         if np.isfinite(p) and p < alpha and not data.exact_conditions:
             margin = error_margin(term, data, full, seed, alpha, two_sided)
+    if flips and not brief:
         s2 = full.scale2 if data.scale is Scale.ESTIMATED else 1.0
         flip = flip_distance(term.reduced, data, s2, reduced.theta, fixed=np.zeros(reduced.p, bool))
         typical = typical_flip(term, data, reduced, s2, seed)

@@ -13,15 +13,16 @@ The true law, if listed, stands with probability at least 1 - alpha, whatever th
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from discrim.evidence.distributions import chi2_upper, t_upper
+from discrim.evidence.mimic import FEW, mimics
 from discrim.evidence.score import basis, without
 from discrim.fit.covariance import Whitener
-from discrim.fit.fit import Fit, fit
-from discrim.fit.measurements import ErrorSource, Measurements, Scale
+from discrim.fit.fit import Fit
+from discrim.fit.measurements import Measurements, Scale
 
 SHARE_OVERALL = 0.2  # of alpha, spent on the overall fit; the rest on the directions
 DRAWS = 20_000
@@ -37,13 +38,15 @@ class Against:
     """Candidate i as the truth, tried in the direction of rival ``rival``.
 
     ``z`` equivalent normal; ``length`` whitened length of the direction left after i's own
-    constants: how many standard errors the two laws are apart at i's optimum.
+    constants: how many standard errors the two laws are apart at i's optimum; ``direction`` it, shape
+    (N,), whitened and of unit length.
     """
 
     rival: int
     z: float
     length: float
     contains: bool
+    direction: np.ndarray = field(repr=False, compare=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,65 +77,91 @@ def standing(
 
     ``contains[(j, i)]``: law j is proven to contain law i; ``same[(i, j)]``: proven the same law.
     """
-    out = []
-    for i, null in enumerate(fits):
-        if not null.ok:
-            out.append(Standing(False, None, float("nan"), -1, float("nan"), ()))
+    n = len(fits)
+    nulls = {i: _Null(f) for i, f in enumerate(fits) if f.ok}
+    tried: list[list[int]] = [[] for _ in fits]  # rivals in whose directions each is tried
+    found: list[list[np.ndarray]] = [[] for _ in fits]
+    for j, rival in enumerate(fits):
+        against = [
+            i
+            for i in nulls
+            if rival.ok
+            and i != j
+            and not same.get((min(i, j), max(i, j)))
+            and not contains.get((i, j))  # a special case of i says nothing that i does not
+        ]
+        if not against:
             continue
-        rows: list[np.ndarray] = []
-        who: list[int] = []
-        for j, rival in enumerate(fits):
-            if j == i or same.get((min(i, j), max(i, j))) or not rival.ok:
-                continue
-            if contains.get((i, j)):
-                continue  # a special case of i says nothing that i does not
-            for u in directions(null, rival):
-                rows.append(u)
-                who.append(j)
-        out.append(_judge(null, rows, who, contains, i, alpha, seed))
-    return out
+        every = _directions([nulls[i] for i in against], rival, thorough=n <= FEW)
+        for i, rows in zip(against, every, strict=True):
+            found[i].extend(rows)
+            tried[i].extend([j] * len(rows))
+    return [
+        _judge(null, found[i], tried[i], contains, i, alpha, seed)
+        if null.ok
+        else Standing(False, None, float("nan"), -1, float("nan"), ())
+        for i, null in enumerate(fits)
+    ]
 
 
 def directions(null: Fit, rival: Fit) -> list[np.ndarray]:
     """Whitened directions, orthogonal to the sensitivities of ``null``, in which ``rival`` would show.
 
-    Shape (N,) each, not of unit length: the length is the distance in standard errors.
+    Shape (N,) each, not of unit length: the length is the distance in standard errors. Where a rival
+    that reproduces the null shows in one direction only, it points to more of what it has beyond it.
     """
-    own = basis(null.jacobian[None])
-    white = Whitener(null.covariance[None])
-    data = replace(
-        null.data,
-        y=null.values,
-        conditions=null.conditions,
-        sources=_sizes_only(null),
-        scale=Scale.STATED,
+    return _directions([_Null(null)], rival, thorough=True)[0]
+
+
+class _Null:
+    """A law taken for true: its sensitivities and how it weighs the runs, made once."""
+
+    def __init__(self, null: Fit) -> None:
+        self.fit = null
+        self.own = basis(null.jacobian[None])
+        self.white = Whitener(null.covariance[None])
+        self.sd = 1.0
+        if null.data.scale is Scale.ESTIMATED and not null.problem.with_conditions:
+            self.sd = float(np.sqrt(null.scale2)) if null.scale2 > 0 else 1.0
+
+
+def _directions(
+    nulls: Sequence[_Null], rival: Fit, *, thorough: bool
+) -> list[list[np.ndarray]]:
+    """The directions of one rival for each of several nulls."""
+    thetas = mimics([n.fit for n in nulls], rival, thorough=thorough)
+    usable = np.isfinite(thetas).all(axis=1)
+    made = rival.predictor.predict(
+        np.where(usable[:, None], thetas, rival.theta), np.array([n.fit.conditions for n in nulls])
     )
-    fitted = fit(rival.predictor, data, starts=8, seed=1, near=rival.theta[None])
-    if not fitted.ok:
-        return []
-    difference = (fitted.values - null.values)[None]
-    d = without(own, white.vector(difference))[0]
-    sd = 1.0
-    if null.data.scale is Scale.ESTIMATED and not null.problem.with_conditions:
-        sd = float(np.sqrt(null.scale2)) if null.scale2 > 0 else 1.0
-    if float(np.sqrt(d @ d)) > 1e-4 * sd * np.sqrt(null.n):
-        return [d]
-    # the rival reproduces this law: what it has beyond it, at this point of its constants
-    jac = rival.predictor.predict(fitted.theta[None], null.conditions).by_constants
-    assert jac is not None
-    g = white.matrix(jac)
+    assert made.by_constants is not None
+    out: list[list[np.ndarray]] = []
+    for k, null in enumerate(nulls):
+        if not usable[k]:
+            out.append([])
+            continue
+        d = without(null.own, null.white.vector(made.values[k : k + 1] - null.fit.values))[0]
+        if float(np.sqrt(d @ d)) > 1e-4 * null.sd * np.sqrt(null.fit.n):
+            out.append([d])
+        else:
+            out.append(_beyond(null, null.white.matrix(made.by_constants[k : k + 1])))
+    return out
+
+
+def _beyond(null: _Null, g: np.ndarray) -> list[np.ndarray]:
+    """What a rival that reproduces the null has beyond it: sensitivities ``g``, shape (1, N, p), at
+    that point of its constants."""
     norms = np.sqrt((g**2).sum(axis=1))
     g = np.where(norms[:, None, :] > 0, g / np.where(norms > 0, norms, 1.0)[:, None, :], 0.0)
-    extra = np.stack([without(own, g[:, :, k])[0] for k in range(g.shape[2])], axis=1)
+    if not np.isfinite(g).all():
+        return []
+    extra = np.stack([without(null.own, g[:, :, k])[0] for k in range(g.shape[2])], axis=1)
     u, s, _ = np.linalg.svd(extra, full_matrices=False)
-    return [u[:, k] * 1e6 for k in range(len(s)) if s[k] > 1e-6]
-
-
-def _sizes_only(null: Fit) -> tuple[ErrorSource, ...]:
-    """One error source that weighs the observations as the null fit does."""
-    from discrim.fit.measurements import OBSERVATION, source
-
-    return (source(OBSERVATION, null.n, absolute=np.sqrt(null.variances)),)
+    rows = [u[:, k] * 1e6 for k in range(len(s)) if s[k] > 1e-6]
+    if len(rows) == 1:
+        most = int(np.argmax((extra**2).sum(axis=0)))
+        rows = [rows[0] if rows[0] @ extra[:, most] > 0 else -rows[0]]
+    return rows
 
 
 def _judge(
@@ -174,14 +203,22 @@ def _judge(
         observed = np.abs(z)
     k = int(np.argmax(observed))
     largest = float(observed[k])
+    # an order of the directions that neither that of the runs nor that of the candidates changes
+    order = np.argsort(-observed, kind="stable")
+    turned = (d * np.where(z < 0, -1.0, 1.0)[:, None])[order]
     p_joint = joint_p(
-        d, largest, df_rest, estimated, data.scale_df if data.scale is Scale.REPLICATES else 0, seed
+        turned,
+        largest,
+        df_rest,
+        estimated,
+        data.scale_df if data.scale is Scale.REPLICATES else 0,
+        seed,
     )
     spend = alpha * (1.0 - SHARE_OVERALL) if p_fit is not None else alpha
     stands = p_joint >= spend and (p_fit is None or p_fit >= alpha * SHARE_OVERALL)
     against = tuple(
-        Against(j, float(np.sign(a) * b), ln, bool(contains.get((j, i))))
-        for j, a, b, ln in zip(keep, z, observed, lengths, strict=True)
+        Against(j, float(np.sign(a) * b), ln, bool(contains.get((j, i))), u)
+        for j, a, b, ln, u in zip(keep, z, observed, lengths, unit, strict=True)
     )
     return Standing(stands, p_fit, largest, keep[k], p_joint, against)
 
@@ -218,10 +255,16 @@ def joint_p(
     single = sides * float(t_upper(largest, reference))
     if len(d) == 1 or (_one_line(d) and (two_sided or bool((d @ d[0] > 0).all()))):
         return single
-    # in the space of the directions: z = A x with x standard normal
-    u, s, _ = np.linalg.svd(d, full_matrices=False)
-    r = int((s > 1e-9 * s[0]).sum())
-    a = u[:, :r] * s[:r]
+    # far in the tail the sum over directions is sharper than counting draws, and still valid
+    bound = min(1.0, single * len(d))
+    if bound * (DRAWS + 1) < 1.0:
+        return bound
+    # in the space of the directions: z = A x with x standard normal, A triangular with a positive
+    # diagonal, so that the order of the runs does not change the draws
+    triangle = np.asarray(np.linalg.qr(d.T, mode="r"))
+    a = (triangle * np.where(np.diagonal(triangle) < 0, -1.0, 1.0)[:, None]).T
+    a = a[:, (np.abs(a) > 1e-9).any(axis=0)]  # what adds nothing draws nothing
+    r = a.shape[1]
     rng = np.random.default_rng(seed)
     x = rng.standard_normal((DRAWS, r))
     z = x @ a.T
@@ -235,8 +278,6 @@ def joint_p(
         z = z / np.sqrt(rng.chisquare(replicate_df, DRAWS) / replicate_df)[:, None]
     hits = int((z.max(axis=1) >= largest).sum())
     simulated = (hits + 1) / (DRAWS + 1)
-    # far in the tail the sum over directions is sharper than counting draws, and still valid
-    bound = min(1.0, single * len(d))
     return min(bound, simulated) if hits < 20 else simulated
 
 

@@ -382,12 +382,7 @@ def _pooled(
             do="Replicates are runs at the same conditions, so they show the error of what is "
             "observed, not of the conditions.",
         )
-    squares, df = 0.0, 0
-    usable = cells.kept & np.isfinite(cells.values)
-    for group in np.unique(cells.replicate_of[usable]):
-        values = cells.values[usable & (cells.replicate_of == group)]
-        squares += float(np.sum((values - values.mean()) ** 2))
-        df += len(values) - 1
+    squares, df = scatter(cells.values, cells.replicate_of, cells.kept)
     if df == 0:
         raise DiscrimError(
             "there are no replicates: no two runs have the same conditions",
@@ -402,6 +397,17 @@ def _pooled(
         )
     sd = math.sqrt(squares / df)
     return _part(0.0, np.full(len(cells.values), sd), None, piece, groups), df
+
+
+def scatter(values: np.ndarray, replicate_of: np.ndarray, kept: np.ndarray) -> tuple[float, int]:
+    """Sum of squares within groups of replicates among the runs kept, and its degrees of freedom."""
+    squares, df = 0.0, 0
+    usable = kept & np.isfinite(values)
+    for group in np.unique(replicate_of[usable]):
+        own = values[usable & (replicate_of == group)]
+        squares += float(np.sum((own - own.mean()) ** 2))
+        df += len(own) - 1
+    return squares, df
 
 
 def same_label(labels: Sequence[str]) -> np.ndarray:

@@ -6,6 +6,7 @@ numbers and thresholds in the reasons. Every threshold that is an opinion stands
 
 from __future__ import annotations
 
+from discrim.verdict.one_run import with_one_run
 from discrim.verdict.participation import (
     CandidateFacts,
     Outcome,
@@ -23,6 +24,7 @@ from discrim.verdict.thresholds import (
     FEW_RUNS,
     MOST_WEAK,
     NOTHING_APART,
+    ONE_RUN_STOPS,
 )
 
 __all__ = [
@@ -32,6 +34,7 @@ __all__ = [
     "FEW_RUNS",
     "MOST_WEAK",
     "NOTHING_APART",
+    "ONE_RUN_STOPS",
     "CandidateFacts",
     "Outcome",
     "Reading",
@@ -40,4 +43,5 @@ __all__ = [
     "judge_participation",
     "sentence_standing",
     "vote",
+    "with_one_run",
 ]

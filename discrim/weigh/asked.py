@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -27,11 +28,6 @@ from discrim.weigh.bind import Bound
 from discrim.weigh.laws import CandidateLaw
 from discrim.weigh.stand_ins import bind_law, stand_ins, symbol_of
 
-# A column whose logarithm follows that of the species this closely over the runs is tried in its
-# place (squared correlation).
-STAND_IN_CORRELATION = 0.9
-MOST_STAND_INS = 8
-
 _KIND = {
     KnockOutKind.ZERO: Kind.ZERO,
     KnockOutKind.VANISH: Kind.VANISH,
@@ -43,7 +39,10 @@ _KIND = {
 
 @dataclass(frozen=True, slots=True, eq=False)
 class InCandidate:
-    """One candidate in a participation question; ``by_origin`` empty when it does not contain it."""
+    """One candidate in a participation question; ``by_origin`` empty when it does not contain it.
+
+    ``term`` and ``without``: what was tested, and the fits of the law without it, by origin.
+    """
 
     index: int
     contains: bool
@@ -51,17 +50,24 @@ class InCandidate:
     by_origin: Mapping[str, Participation]
     reduced: Bound | None
     note: str = ""
+    term: Term | None = None
+    without: Mapping[str, Fit] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Answer:
-    """A participation question with everything behind its verdict."""
+    """A participation question with everything behind its verdict.
+
+    ``judge`` says what the verdict would be were the ``facts`` others.
+    """
 
     question: Question
     what: str
     verdict: Verdict
     per_candidate: tuple[InCandidate, ...]
     stand_ins: tuple[tuple[StandIn, float], ...]
+    facts: tuple[CandidateFacts, ...] = ()
+    judge: Callable[[Sequence[CandidateFacts]], Verdict] | None = None
 
 
 def check_questions(study: Study, laws: Sequence[CandidateLaw]) -> None:
@@ -94,8 +100,9 @@ def answer(
     stands: Sequence[bool],
     *,
     seed: int,
+    flips: bool = True,
 ) -> Answer:
-    """One participation question."""
+    """One participation question; without ``flips`` no flip distances, which no verdict needs."""
     level = study.level
     about = question.about
     is_pathway = any(about == p.name for c in laws for p in c.law.pathways) or any(
@@ -106,7 +113,16 @@ def answer(
     for i, c in enumerate(laws):
         per.append(
             _in_candidate(
-                question, study, bench, c, bounds[i], fits[i], i, seed, brief=not stands[i]
+                question,
+                study,
+                bench,
+                c,
+                bounds[i],
+                fits[i],
+                i,
+                seed,
+                brief=not stands[i],
+                flips=flips,
             )
         )
     tried = (
@@ -122,10 +138,10 @@ def answer(
         for p in k.by_origin.values()
         if p.detectable == p.detectable
     ]
-    verdict = judge_participation(
+    judge = partial(
+        _judged,
         about,
         what=what,
-        candidates=facts,
         stand_ins=[s for s, _ in tried],
         level=level,
         matters_above=question.matters_above,
@@ -136,7 +152,11 @@ def answer(
         detectable=max(detect, default=float("nan")),
         is_reactant=_is_reactant(about, laws),
     )
-    return Answer(question, what, verdict, tuple(per), tuple(tried))
+    return Answer(question, what, judge(facts), tuple(per), tuple(tried), tuple(facts), judge)
+
+
+def _judged(about: str, facts: Sequence[CandidateFacts], **rest: Any) -> Verdict:
+    return judge_participation(about, candidates=facts, **rest)
 
 
 def _all_symbols(laws: Sequence[CandidateLaw]) -> set[Any]:
@@ -160,6 +180,7 @@ def _in_candidate(
     seed: int,
     *,
     brief: bool,
+    flips: bool,
 ) -> InCandidate:
     ko = knock_out(c.law, question.about, bench.typical(question.about))
     if ko is None:
@@ -189,7 +210,7 @@ def _in_candidate(
             f"“{c.law.name}”: {', '.join(sorted(ko.psi))} is given in the study, so these runs are "
             "not asked about it",
         )
-    by_origin = {}
+    by_origin, without = {}, {}
     for origin, full in fits.items():
         data = full.data
         small = fit(
@@ -205,8 +226,10 @@ def _in_candidate(
             seed=seed,
             matters_above=question.matters_above,
             brief=brief,
+            flips=flips,
         )
-    return InCandidate(index, True, ko, by_origin, reduced)
+        without[origin] = small
+    return InCandidate(index, True, ko, by_origin, reduced, "", term, without)
 
 
 def _lumped(law: RateLaw) -> RateLaw:

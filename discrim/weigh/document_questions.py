@@ -7,6 +7,7 @@ from typing import Any
 from discrim.verdict import sentence_standing
 from discrim.weigh.asked import Answer, InCandidate
 from discrim.weigh.document_values import distance, number
+from discrim.weigh.left_out import answer_keys, standing_keys, standing_sentences
 from discrim.weigh.run import Weighed
 
 
@@ -31,8 +32,9 @@ def question_records(w: Weighed) -> list[dict[str, Any]]:
                     "standing": yes,
                     "rejected": no,
                     "reasons": [],
-                    "why": _standing_why(w, yes),
+                    "why": [*_standing_why(w, yes), *standing_sentences(w.left_out, yes, about)],
                     "settle": _separate(w, yes),
+                    **standing_keys(w.left_out, yes, about),
                 }
             )
         else:
@@ -185,6 +187,7 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
         ],
         "by_candidate": [_by_candidate(w, a, k) for k in a.per_candidate],
         "detectable": detectable,
+        **answer_keys(w.left_out, w.answers.index(a)),
     }
 
 

@@ -10,8 +10,8 @@ from discrim.evidence.intervals import CROSSED, OPEN
 from discrim.fit.fit import FitStatus
 from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
-from discrim.weigh.left_out import findings_left_out
 from discrim.weigh.adequacy_said import adequacy_findings
+from discrim.weigh.left_out import findings_left_out
 
 if TYPE_CHECKING:
     from discrim.weigh.run import Weighed
