@@ -24,7 +24,16 @@ from discrim.fit.measurements import Scale
 # sizes one-sided at 5 %, B along the weak direction: at a median ratio of 1, 14 to 22 %; 6, 7 %; 12, 6 to
 # 6.7 %; 20 and more, 5 to 6 %.
 TOLD_APART = 16.0
+# values of a weak constant may be ruled out by the objective at this level, and at no more than this share
+# of alpha; it is added to the p-value (Berger & Boos, J. Am. Stat. Assoc. 89 (1994) 1012)
+OUTSIDE = 0.01
+OUTSIDE_SHARE = 0.2
 _OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
+
+
+def outside_level(alpha: float) -> float:
+    """What of ``alpha`` is spent on ruling out values of weak nuisance constants."""
+    return min(OUTSIDE, OUTSIDE_SHARE * alpha)
 
 
 @dataclass(frozen=True, slots=True)

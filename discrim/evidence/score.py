@@ -10,6 +10,10 @@ chi-squared with one degree of freedom whether or not the runs identify the cons
 Econometrica 70 (2002) 1781; 73 (2005) 1103): the sensitivities at the reconciled conditions are
 asymptotically independent of the residuals, which those at the printed conditions are not.
 
+Where conditions are measured with stated errors, the rest of the residual says something too, the more
+the less the sensitivities are known, and the conditional likelihood ratio (`conditional`) stands in
+place of K: the same level, and the power that K loses where the law is far from the truth.
+
 Every form is returned as an equivalent standard normal z, so that p = Phi(-z) one-sided.
 """
 
@@ -19,6 +23,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from discrim.evidence.conditional import signed, strength_of
 from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, Solution
@@ -36,16 +41,18 @@ class Score:
     Attributes
     ----------
     z : shape (S,) equivalent standard normal; nan where it cannot be tested
-    raw : shape (S,) the statistic before the conversion (z, or t)
+    raw : shape (S,) the score statistic before any conversion (z, or t)
     information : shape (S,) square root of I_psi.lambda relative to that of psi alone: the fraction
         of the sensitivity that is not in lockstep with the nuisance constants
     df : degrees of freedom of the reference, inf for a normal
+    strength : shape (S,) r of the conditional likelihood ratio; None where K alone decides
     """
 
     z: np.ndarray
     raw: np.ndarray
     information: np.ndarray
     df: float
+    strength: np.ndarray | None = None
 
 
 def basis(columns: np.ndarray) -> np.ndarray:
@@ -89,11 +96,13 @@ def score(
     psi: int,
     *,
     direction: np.ndarray | None = None,
+    conditional: bool = True,
 ) -> Score:
     """Score of constant ``psi`` at the restricted optima in ``solution``.
 
     ``direction``, shape (S, N) unwhitened change of the predictions, is tested instead of a column
-    of the law when given (then ``psi`` is -1 and every constant is a nuisance).
+    of the law when given (then ``psi`` is -1 and every constant is a nuisance). ``conditional`` False
+    gives K where the conditional likelihood ratio would be used.
     """
     data = problem.data
     jac = solution.jacobian
@@ -132,7 +141,23 @@ def score(
     elif problem.joint_scale and direction is None:
         z = _unknown_scale(problem, solution, psi, g_perp, space, s, size, p)
     raw = np.where(np.isfinite(solution.objective), z, np.nan)
+    if conditional and uses_strength(problem) and direction is None:
+        off = without(space, solution.residual)
+        rest = np.einsum("sn,sn->s", off, off)
+        counted = n - np.einsum("snk,snk->s", space, space).round()
+        r = strength_of(problem, solution, psi, space, g_perp)
+        usable = np.isfinite(raw) & (information > NO_INFORMATION) & (counted >= 1)
+        z = np.where(usable, signed(s, size, rest, r, np.maximum(counted, 1.0)), raw)
+        return Score(z, raw, information, df, r)
     return Score(to_normal(raw, df), raw, information, df)
+
+
+def uses_strength(problem: Problem) -> bool:
+    """Whether the conditional likelihood ratio decides: measured conditions, all errors stated.
+
+    With the variance of the observations estimated the objective carries no evidence of its own.
+    """
+    return bool(problem.measured) and problem.data.scale is Scale.STATED
 
 
 def _unknown_scale(

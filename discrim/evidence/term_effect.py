@@ -7,8 +7,8 @@ import numpy as np
 from discrim.evidence.curve import Curve
 from discrim.evidence.distributions import normal_quantile, t_quantile
 from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
-from discrim.evidence.intervals import OPEN, Side, along, guard_level, standard_errors
-from discrim.evidence.projected import projected, weak_nuisance
+from discrim.evidence.intervals import OPEN, Side, along, standard_errors
+from discrim.evidence.projected import outside_level, projected, weak_nuisance
 from discrim.evidence.score import basis, without
 from discrim.evidence.term import Effect, Kind, Term
 from discrim.fit.engine import Problem
@@ -107,7 +107,7 @@ def _projected_bound(wrapped: InEffect, shifted: Fit, bound: float, level: float
     problem, alpha = shifted.problem, 1.0 - level
     if bound >= 1.0 or not weak_nuisance(problem, shifted.solution, psi).count:
         return bound
-    outside = guard_level(alpha)
+    outside = outside_level(alpha)
     need = normal_quantile(1.0 - (alpha - outside))
     curve = Curve.of(shifted, psi)
     for factor in WIDER:

@@ -7,7 +7,7 @@ import numpy as np
 from discrim.evidence.curve import Curve, Points
 from discrim.evidence.distributions import chi2_upper, f_upper, normal_of_tail
 from discrim.evidence.intervals import guard_level
-from discrim.evidence.projected import projected, weak_nuisance
+from discrim.evidence.projected import outside_level, projected, weak_nuisance
 from discrim.evidence.rivals import directions, joint_p, studentised
 from discrim.evidence.score import basis, p_one_sided, without
 from discrim.evidence.term import Kind, NestedF, Term
@@ -68,7 +68,7 @@ def at_zero(term: Term, problem: Problem, pts: Points, alpha: float) -> tuple[fl
     weak = weak_nuisance(problem, pts.solution, psi)
     if not weak.count:
         return z, 0
-    outside = guard_level(alpha)
+    outside = outside_level(alpha)
     every = projected(problem, pts.solution, psi, weak.constant, outside=outside)
     if term.kind is Kind.ZERO:  # only a rise counts
         tail = p_one_sided(float(every.min())) if len(every) else 0.0
@@ -84,11 +84,11 @@ def by_objective(
 ) -> tuple[float, float, str]:
     """The test, or the objective where that alone excludes the law without the term.
 
-    The score test holds its level everywhere but can lose all power far from the truth: the
-    conditions are then reconciled to where the sensitivities say nothing. The objective of the
-    restricted fit (Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46) does not, and is the guard of
-    the reconciled interval too. Used at its own level only (0.01, or a fifth of ``alpha``), which is
-    all it can add to the size: measured 5.3 to 6.2 % in all where ``alpha`` is 5 %.
+    The test holds its level everywhere but can lose its power far from the truth: the conditions are
+    then reconciled to where the sensitivities say nothing, or point the other way. The objective of
+    the restricted fit (Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46) does not, and is the guard
+    of the reconciled interval too. Used at its own level only (`guard_level`, a fiftieth of
+    ``alpha``), which is all it can add to the size.
     """
     known = problem.data.scale is Scale.STATED and problem.with_conditions
     if term.kind not in (Kind.ZERO, Kind.ORDER) or not known or reduced.degrees_of_freedom < 1:

@@ -17,7 +17,7 @@ from discrim.evidence.distributions import (
     normal_quantile,
     t_quantile,
 )
-from discrim.evidence.intervals import GUARD
+from discrim.evidence.intervals import guard_level
 from discrim.evidence.score import score
 from discrim.fit.engine import Options, Problem, solve
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
@@ -112,8 +112,8 @@ def run_cell(cell: Cell, studies: int, seed: int) -> Result:
     null = solve(problem, start, fixed=np.array([False, True]), options=options)
     z = score(problem, null, 1).z
     good = np.isfinite(z)
-    two = normal_quantile(1 - (ALPHA - GUARD) / 2)
-    fits = null.objective <= chi2_quantile_upper(GUARD, N - 1)
+    two = normal_quantile(1 - (ALPHA - guard_level(ALPHA)) / 2)
+    fits = null.objective <= chi2_quantile_upper(guard_level(ALPHA), N - 1)
     # at zero, the edge, only evidence for a larger value excludes
     inside = (np.maximum(z, 0.0) <= two) & fits
 

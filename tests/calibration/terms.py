@@ -13,8 +13,7 @@ import numpy as np
 import sympy
 
 from discrim.evidence.distributions import normal_quantile
-from discrim.evidence.intervals import guard_level
-from discrim.evidence.projected import projected, weak_nuisance
+from discrim.evidence.projected import outside_level, projected, weak_nuisance
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, solve
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
@@ -113,7 +112,7 @@ def run_weak(cell: WeakCell, studies: int, seed: int) -> tuple[float, float]:
     start = np.tile([K_A, 0.0, 0.0], (studies, 1))
     held = solve(problem, start, fixed=np.array([False, True, False]))
     z_plain = score(problem, held, 1).z
-    outside = guard_level(ALPHA)
+    outside = outside_level(ALPHA)
     need = normal_quantile(1 - (ALPHA - outside))
     false = 0
     for i in range(studies):

@@ -15,7 +15,7 @@ import pytest
 from scipy import stats
 
 from discrim.evidence.curve import Curve
-from discrim.evidence.intervals import along, standard_errors
+from discrim.evidence.intervals import along, guard_level, standard_errors
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, Solution, solve
 from discrim.fit.fit import fit
@@ -25,6 +25,7 @@ from tests.reference.outside import predictor, symbols
 
 N = 12
 K_A = 3.0
+SPENT = guard_level(0.05)
 k_A, k_B, A, B = symbols("k_A k_B A B")
 
 
@@ -96,8 +97,8 @@ def test_coverage_away_from_zero(cell: Cell) -> None:
     """The two-sided set holds the true k_B = 1 in 95 %: score and guard together, as printed."""
     studies = 1500
     z, held = at(draw(cell, studies, 1.0, 22), 1.0)
-    kept = np.abs(z) <= stats.norm.ppf(1 - 0.04 / 2)
-    kept &= held.objective <= stats.chi2.isf(0.01, N - 1)
+    kept = np.abs(z) <= stats.norm.ppf(1 - (0.05 - SPENT) / 2)
+    kept &= held.objective <= stats.chi2.isf(SPENT, N - 1)
     assert no_more_than(int((~kept).sum()), studies, 0.05)
 
 
@@ -128,8 +129,8 @@ def test_one_study_and_a_batch_agree() -> None:
         for side in (interval.low, interval.high):
             if side.end == "crossed":
                 edge = curve.at(np.array([side.value]))
-                crossing = abs(float(edge.z[0])) - stats.norm.ppf(0.98)
-                guard = float(edge.objective[0]) - stats.chi2.isf(0.01, N - 1)
+                crossing = abs(float(edge.z[0])) - stats.norm.ppf(1 - (0.05 - SPENT) / 2)
+                guard = float(edge.objective[0]) - stats.chi2.isf(SPENT, N - 1)
                 assert min(abs(crossing), abs(guard) / 10) < 1e-4
 
 

@@ -12,6 +12,7 @@ import pytest
 from scipy import stats
 
 from discrim.evidence.intervals import guard_level
+from discrim.evidence.projected import outside_level
 from discrim.evidence.rivals import joint_p
 from discrim.evidence.term import Kind, Term
 from discrim.evidence.term_tests import along_directions, vanishing
@@ -64,8 +65,8 @@ def test_size_where_constants_vanish_in_opposite_directions() -> None:
 def test_the_guard_never_spends_what_the_score_needs(level: float) -> None:
     """The guard's level is part of 1 - confidence: fixed at 0.01, intervals at 99 % held 98.5 %."""
     alpha = 1.0 - level
-    assert 0 < guard_level(alpha) <= 0.2 * alpha * (1 + 1e-12)
-    assert guard_level(0.05) == pytest.approx(0.01)
+    assert 0 < guard_level(alpha) <= 0.02 * alpha * (1 + 1e-12)
+    assert 0 < outside_level(alpha) <= 0.2 * alpha * (1 + 1e-12)
 
 
 def test_the_root_of_an_amount_read_as_zero() -> None:
