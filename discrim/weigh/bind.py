@@ -3,19 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 
 from discrim.errors import DiscrimError
 from discrim.ratelaw.compile import CompiledLaw
-from discrim.ratelaw.dimension import find_units
+from discrim.ratelaw.dimension import ConstantUnits, find_units
 from discrim.ratelaw.linear import linear_constants
 from discrim.ratelaw.model import Constant, ConstantKind, RateLaw
 from discrim.ratelaw.scale import typical_scale
 from discrim.reactor.rates import RatePredictor
 from discrim.study.model import ConstantSetting
+from discrim.units import Unit
 from discrim.weigh.bench import Bench, fixed_put_in, is_condition
 
 
@@ -30,6 +31,7 @@ class Bound:
     names : names of the p free constants of the predictor, ``k[label]`` where there is one a group
     column_of : shape (N, q) free constant of each law constant in each observation
     law_constants : symbols in the order of q
+    unit_of : unit of each constant by its name; None where it is not settled or depends on an order
     """
 
     law: RateLaw
@@ -41,6 +43,7 @@ class Bound:
     column_of: np.ndarray
     compiled: tuple[CompiledLaw, ...]
     findings: tuple[str, ...] = ()
+    unit_of: Mapping[str, Unit | None] = field(default_factory=dict)
 
     def base_constant(self, j: int) -> Constant:
         """The law's constant behind free constant j."""
@@ -56,7 +59,8 @@ def bind(
     ``with_units`` is False for laws that were made by putting numbers into others.
     """
     study = bench.study
-    words, findings = _unit_words(law, bench, expressions) if with_units else ({}, ())
+    found = _units(law, bench, expressions) if with_units else ConstantUnits({}, {}, ())
+    words, findings = found.words, found.findings
     expressions = [fixed_put_in(e, study) for e in expressions]
     in_use = set().union(*(e.free_symbols for e in expressions))
     constants = tuple(
@@ -125,13 +129,12 @@ def bind(
         column_of,
         compiled,
         findings,
+        found.units,
     )
 
 
-def _unit_words(
-    law: RateLaw, bench: Bench, expressions: Sequence[Any]
-) -> tuple[Mapping[str, str], tuple[str, ...]]:
-    """Units of the constants as text, and what is odd about them."""
+def _units(law: RateLaw, bench: Bench, expressions: Sequence[Any]) -> ConstantUnits:
+    """Units of the constants, also as text, and what is odd about them."""
     given = dict(bench.units)
     for e in expressions:
         for s in e.free_symbols:
@@ -140,7 +143,7 @@ def _unit_words(
                 given[s] = setting.unit
     parts = [(e, bench.responses[k].unit) for k, e in enumerate(expressions)]
     try:
-        found = find_units(parts, given, place=law.place)
+        return find_units(parts, given, place=law.place)
     except DiscrimError:
         stated = [s for s in given if s not in bench.units]
         for s in stated:  # is it the unit that the study states for one constant?
@@ -156,7 +159,6 @@ def _unit_words(
                 do="Check it against the law and the units of the columns.",
             ) from None
         raise
-    return found.words, found.findings
 
 
 def _check_bounds(setting: ConstantSetting, least: float) -> None:

@@ -9,7 +9,8 @@ from typing import Any
 import numpy as np
 
 from discrim.evidence.conditioning import Lockstep, collinearity_index
-from discrim.evidence.intervals import Interval
+from discrim.evidence.delta import propagated
+from discrim.evidence.intervals import Interval, quantile
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 from discrim.runs.model import Column, Role
@@ -18,6 +19,7 @@ from discrim.weigh.adequacy_said import adequacy_record
 from discrim.weigh.derived import law_keys
 from discrim.weigh.document_knock_outs import knock_outs_record
 from discrim.weigh.document_values import number, shown_units
+from discrim.weigh.magnitudes import magnitudes_record
 from discrim.weigh.run import Weighed
 from discrim.weigh.words import (
     share,
@@ -60,6 +62,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
                 "p": number(a.lack_of_fit.p),
             },
             "adequacy": adequacy_record(w, i),
+            "magnitudes": magnitudes_record(w, i),
             "condition_number": number(a.conditioning.condition_number),
             "digits_lost": number(a.conditioning.digits_lost),
             "collinearity_index": number(collinearity_index(fit.jacobian)) if fit.ok else None,
@@ -182,9 +185,10 @@ def _fitted(w: Weighed, i: int) -> list[dict[str, Any]]:
     bench, fit = w.bench, w.assessments[i].fit
     data = bench.measurements
     # predictions at the printed conditions are what a reader compares with the table
-    at_printed = (
-        w.bounds[i].predictor.predict(fit.theta[None], data.conditions, constants=False).values[0]
-    )
+    there = w.bounds[i].predictor.predict(fit.theta[None], data.conditions)
+    assert there.by_constants is not None
+    at_printed = there.values[0]
+    half = quantile(fit, w.study.level) * propagated(fit, there.by_constants[0])
     var = fit.variances
     if fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions:
         var = var * fit.scale2
@@ -206,6 +210,8 @@ def _fitted(w: Weighed, i: int) -> list[dict[str, Any]]:
                 "sd": number(sd * f),
                 "low": number(y - 2 * sd * f),
                 "high": number(y + 2 * sd * f),
+                "fit_low": number(p - half[k] * f),
+                "fit_high": number(p + half[k] * f),
             }
         )
     return out

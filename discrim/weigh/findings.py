@@ -12,6 +12,8 @@ from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
 from discrim.weigh.adequacy_said import adequacy_findings
 from discrim.weigh.left_out import findings_left_out
+from discrim.weigh.magnitudes import magnitude_findings
+from discrim.weigh.variances import error_findings
 
 if TYPE_CHECKING:
     from discrim.weigh.run import Weighed
@@ -53,7 +55,9 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
     out += _same(w)
     out += _weak(w)
     out += adequacy_findings(w)
+    out += magnitude_findings(w)
     out += _columns(w)
+    out += error_findings(w.bench)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
     return tuple(dict.fromkeys(out))

@@ -14,6 +14,7 @@ from discrim.evidence.term import NestedF
 from discrim.evidence.term_tests import nested_f
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.responses import Estimate
 from discrim.ratelaw.model import amount
 from discrim.runs.keeping import with_kept
 from discrim.runs.model import Role
@@ -28,7 +29,10 @@ from discrim.weigh.embedded import embedded
 from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
 from discrim.weigh.left_out import LeftOut, Situation, hanging, left_out
+from discrim.weigh.magnitudes import Magnitude, magnitudes
+from discrim.weigh.reported import ReportedValue, check_reported, reported_of
 from discrim.weigh.sameness import Relations, relations
+from discrim.weigh.variances import with_estimated_errors
 
 Progress = Callable[[str, int, int], None]
 
@@ -69,7 +73,9 @@ class Weighed:
     seed: int
     knock_outs: tuple[KnockOuts | None, ...] = ()
     adequacy: tuple[Adequacy | None, ...] = ()
+    magnitudes: tuple[tuple[Magnitude, ...], ...] = ()
     left_out: LeftOut | None = None
+    reported: tuple[tuple[ReportedValue, ...], ...] = ()
 
 
 def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
@@ -117,6 +123,7 @@ def prepare(
                 do="Leave at least one constant of each candidate open: start = in place of "
                 "value =, or a constant in front of the law.",
             )
+    check_reported(study, bench, laws, bounds)
     return laws, bench, bounds
 
 
@@ -152,6 +159,8 @@ def _run(
             f"no run in {study.runs.file} has a measured rate",
             do="`discrim check` judges a planned table; `discrim weigh` needs measured rates.",
         )
+    bench = with_estimated_errors(bench, bounds, [c.law.name for c in laws], seed=seed)
+    data = bench.measurements
     related = relations(bounds, study)
     fits: list[dict[str, Fit]] = []
     for i, b in enumerate(bounds):
@@ -218,7 +227,7 @@ def _run(
                 answers,
                 fits,
             ),
-            lambda one: _without_run(one, study, laws, fits, related, seed),
+            lambda one: _without_run(one, study, laws, fits, related, bench.errors, seed),
         )
         answers = hanging(answers, singly)
     without: tuple[KnockOuts | None, ...] = ()
@@ -250,6 +259,14 @@ def _run(
         left_out=singly,
         adequacy=adequacies(bench, bounds, [a.fit for a in assessments], stands, seed),
     )
+    weighed = replace(weighed, magnitudes=magnitudes(weighed))
+    if study.reported:
+        say("quantities of the constants", 0, 1)
+        every = zip(laws, bounds, assessments, stands, strict=True)
+        weighed = replace(
+            weighed,
+            reported=tuple(reported_of(study, bench, c, b, a, stands=s) for c, b, a, s in every),
+        )
     names = {name.split("[")[0] for b in bounds for name in b.names}
     names |= {c.name for law in laws for c in law.law.constants}
     unused = unused_constants(study, names | set(bench.known))
@@ -262,6 +279,7 @@ def _without_run(
     laws: Sequence[CandidateLaw],
     fits: Sequence[dict[str, Fit]],
     related: Relations,
+    errors: Estimate | None,
     seed: int,
 ) -> tuple[list[bool], list[Answer]]:
     """Which laws stand, and the answers, with run ``one`` excluded as well; fits start at those with
@@ -269,7 +287,7 @@ def _without_run(
     kept = np.array(study.runs.kept)
     kept[one] = False
     study = replace(study, runs=with_kept(study.runs, kept))
-    bench = build(study, [e for c in laws for e in c.bound])
+    bench = build(study, [e for c in laws for e in c.bound], errors=errors)
     bounds = [bind(c.law, bench, c.bound, with_units=False) for c in laws]
     data = bench.measurements
     again = []
