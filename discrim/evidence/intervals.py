@@ -11,32 +11,34 @@ guaranteed : see :mod:`discrim.evidence.guaranteed`
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
+from discrim.evidence.acceptance import Acceptance, guard_level, quantile, scale_from_fit
 from discrim.evidence.curve import Curve, Points
-from discrim.evidence.distributions import (
-    chi2_quantile_upper,
-    f_quantile_upper,
-    normal_quantile,
-    t_quantile,
-)
+from discrim.evidence.search import Accept, Found, Search, search_all
 from discrim.fit.fit import Fit
 from discrim.fit.fit import fit as refit
-from discrim.fit.measurements import Scale
+
+__all__ = [
+    "BOUND",
+    "CROSSED",
+    "FAILED",
+    "OPEN",
+    "Along",
+    "Interval",
+    "Side",
+    "along",
+    "along_all",
+    "guard_level",
+    "linearised",
+    "nothing",
+    "standard_errors",
+]
 
 CROSSED, BOUND, OPEN, FAILED = "crossed", "bound", "open", "failed"
-# the guard of the reconciled set: the overall fit may be rejected at this level only, and at no more
-# than this share of 1 - confidence
-GUARD = 0.01
-GUARD_SHARE = 0.2
-
-
-def guard_level(alpha: float) -> float:
-    """Level at which the objective alone may exclude, of the ``alpha`` that there is to spend."""
-    return min(GUARD, GUARD_SHARE * alpha)
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,32 +91,10 @@ def standard_errors(fit: Fit) -> np.ndarray:
     share = vt / np.where(tiny, 1.0, s)[:, None]
     share = np.where(tiny[:, None], np.where(np.abs(vt) > 1e-8, np.inf, 0.0), share)
     var = (share**2).sum(axis=0)
-    scale2 = fit.scale2 if _scale_from_fit(fit) else 1.0
+    scale2 = fit.scale2 if scale_from_fit(fit) else 1.0
     fixed = np.isfinite(var)  # an exact fit (scale 0) does not determine what the runs leave open
     out[use] = np.where(fixed, np.sqrt(np.where(fixed, var, 0.0) * scale2), np.inf) / norms[use]
     return out
-
-
-def _scale_from_fit(fit: Fit) -> bool:
-    """True when the whitened residuals still carry an unknown scale."""
-    return fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions
-
-
-def reference_df(fit: Fit) -> float:
-    """Degrees of freedom of the t reference: residual, of the replicates, or infinite."""
-    if fit.data.scale is Scale.ESTIMATED:
-        return float(fit.degrees_of_freedom)
-    if fit.data.scale is Scale.REPLICATES:
-        return float(fit.data.scale_df)
-    return float("inf")
-
-
-def quantile(fit: Fit, level: float) -> float:
-    """Two-sided t or normal quantile."""
-    df = reference_df(fit)
-    if df <= 0:
-        return float("inf")
-    return t_quantile(0.5 + level / 2.0, df)
 
 
 def linearised(fit: Fit, psi: int, se: float, level: float) -> Interval:
@@ -153,60 +133,97 @@ def along(
     level: float,
     *,
     se: float,
-    estimate: float | None = None,
-    lower: float | None = None,
-    upper: float | None = None,
     with_profile: bool = True,
     closeness: float = 1e-6,
 ) -> Along:
-    """Profile and reconciled intervals of the constant of ``curve``.
+    """Profile and reconciled intervals of the constant of ``curve``, as `along_all`."""
+    return along_all(
+        fit, [curve], level, se=np.array([se]), with_profile=with_profile, closeness=closeness
+    )[0]
 
-    ``estimate``, ``lower``, ``upper`` default to those of the constant in the fit; ``with_profile``
-    False leaves the profile out; ends are found to a relative ``closeness``.
+
+def along_all(
+    fit: Fit,
+    curves: Sequence[Curve],
+    level: float,
+    *,
+    se: np.ndarray,
+    with_profile: bool = True,
+    closeness: float = 1e-6,
+) -> list[Along]:
+    """Profile and reconciled intervals of the constants of ``curves``, searched as one batch.
+
+    ``se``: a standard error for each curve, infinite where there is none; ``with_profile`` False
+    leaves the profile out; ends are found to a relative ``closeness``.
     """
-    psi = curve.psi
-    x = float(fit.theta[psi]) if estimate is None else estimate
-    lo = float(fit.predictor.lower[psi]) if lower is None else lower
-    hi = float(fit.predictor.upper[psi]) if upper is None else upper
-    typical = float(fit.predictor.scale[psi])
-    grid = _grid(x, se, lo, hi, typical, coarse=closeness > 1e-5)
-    pts = curve.at(grid)
-    free = fit.objective
-    lowest = float(np.nanmin(pts.objective)) if np.isfinite(pts.objective).any() else free
-    base = min(free, lowest)
-    tests = _Acceptance(fit, base, level, lo)
-
-    accepts: list[Accept] = [tests.reconciled, tests.not_too_high, tests.not_too_low]
     held = with_profile and fit.problem.joint_scale
-    if with_profile and not held:
-        accepts.append(tests.profile)
-    (recon, *_), (_, _, high1), (_, low1, _), *rest = _sets(curve, pts, accepts, lo, hi, closeness)
-    if held:
-        profile = _profile_at_variance(fit, psi, level, se)
-    else:
-        profile = rest[0][0] if rest else nothing("profile", "not asked for")
-    return Along(
-        _around(profile, x),
-        _named(recon, "reconciled", tests, pts),
-        low1,
-        high1,
-        pts,
-        lowest,
-    )
+    tests: list[Acceptance] = []
+    searches = []
+    for curve, spread in zip(curves, se, strict=True):
+        psi = curve.psi
+        lo, hi = float(fit.predictor.lower[psi]), float(fit.predictor.upper[psi])
+        x, typical = float(fit.theta[psi]), float(fit.predictor.scale[psi])
+        first = Acceptance(fit, fit.objective, level, lo)
+        tests.append(first)
+
+        def criteria(pts: Points, one: Acceptance = first) -> Sequence[Accept]:
+            # a point below the optimum is the base of what lies around it
+            one.rebase(min(fit.objective, _lowest(pts)))
+            out: list[Accept] = [one.reconciled, one.not_too_high, one.not_too_low]
+            return [*out, one.profile] if with_profile and not held else out
+
+        grid = _grid(x, float(spread), lo, hi, typical, coarse=closeness > 1e-5)
+        searches.append(Search(curve, grid, lo, hi, criteria, first.hopeless))
+    profiles = _profiles_at_variance(fit, curves, level, se) if held else None
+    out = []
+    for k, (search, found) in enumerate(
+        zip(searches, search_all(searches, closeness), strict=True)
+    ):
+        recon, (_, _, high), (_, low, _), *rest = (
+            _pieces(found, c, search.lower, search.upper) for c in range(len(found.ends))
+        )
+        profile = nothing("profile", "not asked for")
+        if profiles is not None:
+            profile = profiles[k]
+        elif rest:
+            profile = rest[0][0]
+        out.append(
+            Along(
+                _around(profile, float(fit.theta[search.curve.psi])),
+                _named(recon[0], "reconciled", tests[k], found.points),
+                low,
+                high,
+                found.points,
+                _lowest(found.points),
+            )
+        )
+    return out
 
 
-def _profile_at_variance(fit: Fit, psi: int, level: float, se: float) -> Interval:
-    """Profile where s^2 is estimated beside known errors of the conditions: s^2 held at its estimate.
+def _lowest(pts: Points) -> float:
+    good = pts.objective[np.isfinite(pts.objective)]
+    return float(good.min()) if len(good) else float("inf")
+
+
+def _profiles_at_variance(
+    fit: Fit, curves: Sequence[Curve], level: float, se: np.ndarray
+) -> list[Interval]:
+    """Profiles where s^2 is estimated beside known errors of the conditions: s^2 held at its estimate.
 
     With s^2 estimated anew at each value the objective is N - p everywhere and says nothing.
     """
+    why = ""
     if fit.degrees_of_freedom < 1:
-        return nothing("profile", "not computed: as many constants as runs, scale unknown")
-    data = fit.data.with_variance(fit.scale2, fit.degrees_of_freedom)
-    again = refit(fit.predictor, data, starts=1, near=fit.theta[None])
-    if not again.ok:
-        return nothing("profile", "not computed: the fit with the variance held failed")
-    return along(again, Curve.of(again, psi), level, se=se).profile
+        why = "not computed: as many constants as runs, scale unknown"
+    else:
+        data = fit.data.with_variance(fit.scale2, fit.degrees_of_freedom)
+        again = refit(fit.predictor, data, starts=1, near=fit.theta[None])
+        if not again.ok:
+            why = "not computed: the fit with the variance held failed"
+    if why:
+        return [nothing("profile", why) for _ in curves]
+    held = [Curve.of(again, c.psi) for c in curves]
+    return [one.profile for one in along_all(again, held, level, se=se)]
 
 
 def _around(profile: Interval, x: float) -> Interval:
@@ -219,88 +236,24 @@ def _around(profile: Interval, x: float) -> Interval:
     low = profile.low if k == 0 else Side(pieces[k][0], CROSSED)
     high = profile.high if k == len(pieces) - 1 else Side(pieces[k][1], CROSSED)
     elsewhere = "; ".join(f"{a:.4g} to {b:.4g}" for i, (a, b) in enumerate(pieces) if i != k)
-    return Interval("profile", low, high, pieces, False, f"also consistent: {elsewhere}")
+    words = _together(f"also consistent: {elsewhere}", profile.note)
+    return Interval("profile", low, high, pieces, False, words)
 
 
-def _named(
-    interval: Interval, kind: str, tests: _Acceptance | None = None, pts: Points | None = None
-) -> Interval:
+def _together(*notes: str) -> str:
+    return "; ".join(n for n in notes if n)
+
+
+def _named(interval: Interval, kind: str, tests: Acceptance, pts: Points) -> Interval:
     note = interval.note
-    if interval.empty and tests is not None and pts is not None:
+    if interval.empty:
         if not tests.fits_somewhere(pts):
             note = "empty: the law is rejected by these runs at every value (lack of fit)"
         else:
             note = "empty: accepted nowhere on the values tried; the estimate is on the edge"
     elif len(interval.pieces) > 1:
-        note = f"{len(interval.pieces)} separate pieces; the hull is given"
+        note = _together(f"{len(interval.pieces)} separate pieces; the hull is given", note)
     return Interval(kind, interval.low, interval.high, interval.pieces, interval.empty, note)
-
-
-class _Acceptance:
-    """Margins (positive = accepted) of the sets of values, as functions of the points."""
-
-    def __init__(self, fit: Fit, base: float, level: float, lower: float) -> None:
-        self.base = base
-        self.lower = lower
-        self.known = fit.data.scale is not Scale.ESTIMATED
-        alpha = 1.0 - level
-        df = reference_df(fit)
-        self.limit = quantile(fit, level) ** 2
-        self.s2 = fit.scale2 if _scale_from_fit(fit) else 1.0
-        if _scale_from_fit(fit) and fit.degrees_of_freedom > 0:
-            self.s2 = base / fit.degrees_of_freedom
-        self.df = df
-        n, p = fit.n, fit.p
-        # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
-        # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960)
-        # 41), which never binds for a linear law, so nothing is spent on it. Else void.
-        self.guard, self.unit, spend = np.inf, 1.0, 0.0
-        if fit.data.scale is Scale.STATED:
-            spend = guard_level(alpha)
-            self.guard = chi2_quantile_upper(spend, max(n - (p - 1), 1))
-            self.unit = max(self.guard, 1.0)
-        elif _scale_from_fit(fit) and fit.degrees_of_freedom > 0 and base > 0:
-            dof = fit.degrees_of_freedom
-            f = f_quantile_upper(guard_level(alpha), p, dof)
-            self.guard = self.unit = base * (1.0 + p * f / dof)
-        self.two = normal_quantile(1.0 - (alpha - spend) / 2)
-        self.one = normal_quantile(1.0 - (alpha - spend))
-
-    def _q_ok(self, pts: Points) -> np.ndarray:
-        with np.errstate(invalid="ignore"):
-            margin = self.guard - pts.objective
-        return np.where(np.isfinite(pts.objective), margin, -np.inf)
-
-    def profile(self, pts: Points) -> np.ndarray:
-        rise = (pts.objective - self.base) / self.s2 if self.s2 > 0 else pts.objective
-        return np.where(np.isfinite(rise), self.limit - rise, -np.inf)
-
-    def reconciled(self, pts: Points) -> np.ndarray:
-        # on a lower bound only evidence for a larger value can exclude the bound itself
-        z = np.where(pts.values <= self.lower, np.maximum(pts.z, 0.0), pts.z)
-        m = self.two - np.abs(z)
-        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
-        # nan z with an unknown scale: no degrees of freedom, nothing is excluded
-        return self._with_guard(m, pts)
-
-    def not_too_high(self, pts: Points) -> np.ndarray:
-        m = self.one + pts.z
-        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
-        return self._with_guard(m, pts)
-
-    def not_too_low(self, pts: Points) -> np.ndarray:
-        m = self.one - pts.z
-        m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
-        return self._with_guard(m, pts)
-
-    def _with_guard(self, m: np.ndarray, pts: Points) -> np.ndarray:
-        if not np.isfinite(self.guard):
-            return m
-        scaled = self._q_ok(pts) / self.unit
-        return np.minimum(m, np.where(np.isfinite(scaled), 10.0 * scaled, -np.inf))
-
-    def fits_somewhere(self, pts: Points) -> bool:
-        return bool((self._q_ok(pts) > 0).any())
 
 
 def _grid(
@@ -314,9 +267,11 @@ def _grid(
             k = k[[1, 2, 4, 6, 7, 9]]
         parts += [x + se * k, x - se * k]
     size = max(abs(x), typical if np.isfinite(typical) else 0.0, 1e-300)
+    # where the standard error is small the values around the estimate say most of it
+    sharp = se < 0.2 * abs(x)
     if lo >= 0:
-        parts.append(size * np.logspace(-5, 5, 11 if coarse else 21))
-        if x > 0:
+        parts.append(size * np.logspace(-5, 5, 11 if coarse or sharp else 21))
+        if x > 0 and not sharp:
             parts.append(x * np.array([0.5, 0.8, 0.9, 0.95, 1.05, 1.1, 1.25, 2.0]))
     else:
         far = size * np.logspace(-1, 2, 7)
@@ -333,32 +288,9 @@ def _grid(
     return grid[keep]
 
 
-Accept = Callable[[Points], np.ndarray]
-
-
-def _sets(
-    curve: Curve,
-    pts: Points,
-    accepts: Sequence[Accept],
-    lo: float,
-    hi: float,
-    closeness: float,
-) -> list[tuple[Interval, Side, Side]]:
-    """The accepted set of each criterion: pieces on the grid, the ends of all of them refined
-    together as one batch."""
-    v = pts.values
-    margins = [accept(pts) for accept in accepts]
-    changes = [np.flatnonzero((m[1:] > 0) != (m[:-1] > 0)) for m in margins]
-    which = np.concatenate([np.full(len(c), k) for k, c in enumerate(changes)]).astype(int)
-    at = np.concatenate(changes).astype(int)
-    fa = np.array([margins[k][j] for k, j in zip(which, at, strict=True)])
-    fb = np.array([margins[k][j + 1] for k, j in zip(which, at, strict=True)])
-    ends = _refine(curve, accepts, which, v[at], v[at + 1], fa, fb, closeness)
-    return [_pieces(margins[k] > 0, ends[which == k], lo, hi) for k in range(len(accepts))]
-
-
-def _pieces(yes: np.ndarray, ends: np.ndarray, lo: float, hi: float) -> tuple[Interval, Side, Side]:
+def _pieces(found: Found, criterion: int, lo: float, hi: float) -> tuple[Interval, Side, Side]:
     """Pieces and hull from what is accepted on the grid and where that changes."""
+    yes, ends = found.accepted[criterion], found.ends[criterion]
     if not yes.any():
         nan = Side(float("nan"), FAILED)
         return Interval("", nan, nan, empty=True), nan, nan
@@ -377,55 +309,6 @@ def _pieces(yes: np.ndarray, ends: np.ndarray, lo: float, hi: float) -> tuple[In
         (max(a, lo) if np.isfinite(lo) else a, min(b, hi) if np.isfinite(hi) else b)
         for a, b in pieces
     )
-    return Interval("", low, high, shown), low, high
-
-
-def _refine(
-    curve: Curve,
-    accepts: Sequence[Accept],
-    which: np.ndarray,
-    a: np.ndarray,
-    b: np.ndarray,
-    fa: np.ndarray,
-    fb: np.ndarray,
-    closeness: float,
-) -> np.ndarray:
-    """Where the margin of criterion ``which`` changes sign between a and b (Illinois method)."""
-    if not len(a):
-        return a
-    a, b = a.astype(float).copy(), b.astype(float).copy()
-    fa, fb = _tame(fa), _tame(fb)
-    out = 0.5 * (a + b)
-    live = np.arange(len(a))
-    for k in range(40):
-        la, lb, lfa, lfb = a[live], b[live], fa[live], fb[live]
-        with np.errstate(divide="ignore", invalid="ignore"):
-            x = (la * lfb - lb * lfa) / (lfb - lfa)
-        # bisection at first where the bracket spans decades, and whenever the secant leaves it
-        wide = (k < 3) & (np.abs(lb - la) > 0.5 * (np.abs(la) + np.abs(lb)))
-        positive = (la > 0) & (lb > 0)
-        mid = np.where(positive, np.sqrt(np.abs(la * lb)), 0.5 * (la + lb))
-        inside = (x > np.minimum(la, lb)) & (x < np.maximum(la, lb))
-        x = np.where(wide | ~inside | (k % 8 == 7), mid, x)
-        pts = curve.at(x, careful=False)
-        every = [_tame(accept(pts)) for accept in accepts]
-        fx = np.array([every[w][i] for i, w in enumerate(which[live])])
-        same = (fx > 0) == (lfa > 0)
-        half = 0.5 if k > 2 else 1.0
-        fb[live] = np.where(same, lfb * half, fx)
-        fa[live] = np.where(same, fx, lfa * half)
-        b[live] = np.where(same, lb, x)
-        a[live] = np.where(same, x, la)
-        moved = np.abs(x - out[live])
-        out[live] = x
-        narrow = np.abs(b[live] - a[live]) <= closeness * np.maximum(np.abs(x), 1e-300)
-        settled = (k > 3) & (moved <= 0.1 * closeness * np.abs(x)) & ~wide
-        live = live[~(narrow | (np.abs(fx) <= 1e-7) | settled)]
-        if not len(live):
-            break
-    return out
-
-
-def _tame(m: np.ndarray) -> np.ndarray:
-    """Margins without infinities, so that a secant can be drawn."""
-    return np.clip(np.nan_to_num(m, nan=-1e3, posinf=1e3, neginf=-1e3), -1e3, 1e3)
+    loose = not found.settled[criterion].all()
+    note = "a restricted fit at an end did not settle: that end is not final" if loose else ""
+    return Interval("", low, high, shown, note=note), low, high

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from discrim.evidence.adequacy import LackOfFit, lack_of_fit, objective_p
+from discrim.evidence.cleared_law import cleared_law
 from discrim.evidence.conditioning import (
     Conditioning,
     Lockstep,
@@ -23,7 +24,7 @@ from discrim.evidence.intervals import (
     OPEN,
     Interval,
     Side,
-    along,
+    along_all,
     linearised,
     nothing,
     standard_errors,
@@ -31,8 +32,6 @@ from discrim.evidence.intervals import (
 from discrim.evidence.rivals import table_key
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
-from discrim.ratelaw.cleared import cleared
-from discrim.ratelaw.compile import CompiledLaw
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 
@@ -170,11 +169,14 @@ def _intervals(
         one.scale2 if one.data.scale is Scale.ESTIMATED else 1.0,
         cleared_of(bound),
     )
+    every = range(len(bound.names))
+    searched = [
+        along_all(f, [Curve.of(f, j) for j in every], level, se=standard_errors(f))
+        for f in fits.values()
+    ]
     out = []
-    for j in range(len(bound.names)):
-        by_origin = [
-            along(f, Curve.of(f, j), level, se=float(standard_errors(f)[j])) for f in fits.values()
-        ]
+    for j in every:
+        by_origin = [found[j] for found in searched]
         points = by_origin[0].points
         if by_origin[0].lower_objective < lowest:
             lowest = by_origin[0].lower_objective
@@ -204,31 +206,7 @@ def cleared_of(bound: Bound) -> Cleared | None:
         return None
     if bound.predictor.index is not None:
         return None
-    law = bound.compiled[0]
-    form = cleared(bound.expressions[0], law.constants, law.conditions)
-    if form is None:
-        return None
-    known = () if form.known is None else (form.known,)
-    groups = [
-        [CompiledLaw(e, [], list(law.conditions)) for e in part]
-        for part in (form.numerator, form.denominator, known)
-    ]
-
-    def shapes(conditions: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-        n = len(conditions)
-        none = np.zeros((1, 1, 0))
-
-        def columns(part: list[CompiledLaw]) -> np.ndarray:
-            out = np.empty((n, len(part)))
-            for k, f in enumerate(part):
-                out[:, k] = f(none, conditions, constants=False, conditions_too=False, both=False)[
-                    0
-                ][0]
-            return out
-
-        return columns(groups[0]), columns(groups[1]), columns(groups[2])
-
-    return Cleared(shapes, form.power, form.exponents, form.factor)
+    return cleared_law(bound.compiled[0], bound.expressions[0])
 
 
 def hull(a: Interval, b: Interval) -> Interval:
