@@ -12,9 +12,10 @@ usual RSS/(N - p).
 
 A covariance between responses: S = E'E/n, E the residuals of n runs by R responses. The constants at
 which the steps agree make |E'E| stationary, the determinant criterion of Box & Draper, Biometrika 52
-(1965) 355. For tests it is then taken with nu = n - q degrees of freedom, q the most constants that show
-in one response: |E'E| is made small by far more than p/R of them would. Responses missing in some runs, or errors of conditions beside U, are averaged over
-(expectation-maximisation; Dempster, Laird & Rubin, J. R. Stat. Soc. B 39 (1977) 1; from memory).
+(1965) 355. For tests it is then taken with nu = n - q degrees of freedom, q the most constants that
+show in one response: |E'E| is made small by far more than p/R of them would. Responses missing in
+some runs, or errors of conditions beside U, are averaged over (expectation-maximisation; Dempster,
+Laird & Rubin, J. R. Stat. Soc. B 39 (1977) 1; from memory).
 """
 
 from __future__ import annotations

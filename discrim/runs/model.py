@@ -117,6 +117,7 @@ class Runs:
     replicate_of : shape (N,) integers; runs with equal numbers are replicates (same declared
         conditions, digit for digit)
     sha256 : of the bytes of the table
+    left_out : observed columns that others give exactly, which are not fitted
     """
 
     file: str
@@ -126,6 +127,7 @@ class Runs:
     excluded_because: tuple[str, ...]
     replicate_of: np.ndarray
     sha256: str
+    left_out: tuple[str, ...] = ()
 
     @property
     def n(self) -> int:
@@ -140,7 +142,7 @@ class Runs:
     def observations(self) -> tuple[Column, ...]:
         """The columns that a law has to predict."""
         wanted = (Role.RATE_OF, Role.CONSUMPTION_OF, Role.K_OBS_OF)
-        return tuple(c for c in self.columns if c.role in wanted)
+        return tuple(c for c in self.columns if c.role in wanted and c.name not in self.left_out)
 
     def species(self) -> dict[str, Column]:
         """Columns and constant conditions that give the amount of a species, by species."""

@@ -27,6 +27,8 @@ from discrim.study.formulas import derived_units, names_of, parse_derived
 from discrim.study.model import Candidate, Computed, Derived, OtherEvidence, Study
 from discrim.study.node import Node
 from discrim.study.questions import read_questions
+from discrim.study.reported import read_reported
+from discrim.study.responses import independent, read_between_responses
 from discrim.units import UnitSet
 
 KEYS = (
@@ -44,6 +46,8 @@ KEYS = (
     "controls",
     "other_evidence",
     "confidence",
+    "errors",
+    "report_constants",
 )
 NOT_YET = ("runs", "window")
 REACTORS = ("rates", "differential")
@@ -104,6 +108,7 @@ def load(path: str | Path) -> Study:
     runs = build_runs(
         raw, declared, errors, units, exclusions, values_from(computed, declared, known)
     )
+    runs, dependent = independent(runs)
     candidates = read_candidates(
         root.tables("candidates", "candidate"), names, derived, file.folder
     )
@@ -126,8 +131,22 @@ def load(path: str | Path) -> Study:
         units=units,
         sha256=file.sha256,
         exclusions=tuple((e.words, e.reason) for e in exclusions),
-        findings=(*findings(runs, declared), *other_values(runs, computed), *not_answered),
+        findings=(
+            *findings(runs, declared),
+            *other_values(runs, computed),
+            *dependent,
+            *not_answered,
+        ),
         computed=computed,
+        reported=read_reported(
+            root.table("report_constants", "quantities to report"),
+            names,
+            declared,
+            derived,
+            known,
+            by_name,
+        ),
+        responses_together=read_between_responses(root, runs),
     )
 
 

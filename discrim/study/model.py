@@ -13,7 +13,7 @@ import numpy as np
 from discrim.errors import Place
 from discrim.mechanism.model import Mechanism
 from discrim.runs.model import Runs
-from discrim.units import Unit, UnitSet
+from discrim.units import ParsedUnit, Unit, UnitSet
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -57,6 +57,26 @@ class Computed:
     formula: Any
     text: str
     place: Place
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Reported:
+    """``[report_constants]``: a quantity of the constants that is wanted with its intervals.
+
+    ``formula`` holds constant symbols, ``amount(species)``, ``quantity(column)`` and, for what a law
+    says of an observed column, ``quantity("observed column")``. ``at``: conditions by species or
+    column, internal units; ``written`` the same as the user wrote them. ``units`` those asked for.
+    """
+
+    name: str
+    formula: Any
+    text: str
+    at: Mapping[str, float]
+    written: Mapping[str, str]
+    units: ParsedUnit | None
+    place: Place
+    units_place: Place
+    at_place: Place
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +145,10 @@ class Study:
     exclusions: tuple[tuple[str, str], ...] = ()  # (where in words, reason)
     findings: tuple[str, ...] = ()
     computed: Mapping[str, Computed] = field(default_factory=dict)
+    # errors of the responses of one run: independent, or of a covariance that is to be estimated
+    responses_together: bool = False
+
+    reported: tuple[Reported, ...] = ()
 
     def kept(self) -> np.ndarray:
         """Indices of the runs that are not excluded."""

@@ -14,11 +14,13 @@ import numpy as np
 import sympy
 
 from discrim.errors import DiscrimError
-from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale
+from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements
+from discrim.fit.responses import Estimate, Unknown
 from discrim.ratelaw.model import RateLaw, amount, quantity
-from discrim.runs.model import Column, ErrorBasis, Role
+from discrim.runs.model import Column, Role
 from discrim.study.model import Study
 from discrim.units import Unit
+from discrim.weigh.errors_of import scale_of, unknown_of, with_errors
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -34,6 +36,10 @@ class Bench:
     units : unit of each condition symbol
     computed : for each response the formula, in symbols of conditions, that its values were worked out
         by, or None
+    unknown : what of the errors of several responses has to be estimated from the fits, or None;
+        stated : then the measurements with the stated errors only, errors : the estimate that
+        ``measurements`` hold (None before it is made: a rough guess is held), errors_from : the
+        candidate whose law it was made with
     """
 
     study: Study
@@ -46,6 +52,10 @@ class Bench:
     known: tuple[str, ...]
     planned: bool = False
     computed: tuple[Any, ...] = ()
+    unknown: Unknown | None = None
+    stated: Measurements | None = None
+    errors: Estimate | None = None
+    errors_from: str = ""
 
     def condition(self, symbol: Any) -> int:
         return self.symbols.index(symbol)
@@ -139,12 +149,17 @@ def known_constants(study: Study) -> dict[str, tuple[float, float, float | None]
 
 
 def build(
-    study: Study, expressions: Iterable[Any], *, extra: Sequence[Any] = (), planned: bool = False
+    study: Study,
+    expressions: Iterable[Any],
+    *,
+    extra: Sequence[Any] = (),
+    planned: bool = False,
+    errors: Estimate | None = None,
 ) -> Bench:
     """The bench for laws whose bound expressions are ``expressions``.
 
     ``extra`` symbols become conditions even if no law holds them (stand-ins). With ``planned`` runs
-    without an observed value are kept, with nan.
+    without an observed value are kept, with nan. ``errors``: of several responses, as estimated before.
     """
     responses = study.runs.observations()
     if not responses:
@@ -206,7 +221,9 @@ def build(
             )
         units[s] = column.unit
         sources += _sources(column, j, runs, n, 0)
-    scale, scale_df = _scale(responses, [c.name for c in responses if c.name in study.computed])
+    scale, scale_df = scale_of(
+        responses, [c.name for c in responses if c.name in study.computed], study.responses_together
+    )
     for k, column in enumerate(responses):
         mine = response == k
         for src in _sources(column, OBSERVATION, runs, n, k):
@@ -229,8 +246,15 @@ def build(
         scale,
         tuple(s.name for s in ordered),
         scale_df,
-        study.runs.replicate_of[runs] if len(responses) == 1 else None,
+        None
+        if study.responses_together
+        else study.runs.replicate_of[runs] * len(responses) + response,
     )
+    unknown = unknown_of(responses, response, runs, y, study.responses_together)
+    stated = None
+    if unknown is not None:
+        stated = measurements
+        measurements = with_errors(stated, unknown, errors)
     return Bench(
         study,
         measurements,
@@ -242,6 +266,9 @@ def build(
         tuple(known),
         planned,
         computed,
+        unknown,
+        stated,
+        errors,
     )
 
 
@@ -267,37 +294,6 @@ def _sources(column: Column, target: int, runs: np.ndarray, n: int, k: int) -> l
             )
         )
     return out
-
-
-def _scale(responses: Sequence[Column], computed: Sequence[str]) -> tuple[Scale, int]:
-    bases = {c.basis for c in responses}
-    if bases == {ErrorBasis.ESTIMATED}:
-        if len(responses) > 1:
-            raise DiscrimError(
-                "several observed columns, none with an error",
-                place=responses[0].place,
-                do="State `error` for each: their variances cannot yet be estimated together.",
-            )
-        return Scale.ESTIMATED, 0
-    if ErrorBasis.ESTIMATED in bases:
-        missing = next(c for c in responses if c.basis is ErrorBasis.ESTIMATED)
-        raise DiscrimError(
-            f'column "{missing.name}" has no error while other observed columns have one',
-            place=missing.place,
-            do="State `error` for it as well.",
-        )
-    if ErrorBasis.REPLICATES in bases:
-        return Scale.REPLICATES, min(c.replicate_df for c in responses if c.replicate_df)
-    if ErrorBasis.EXACT in bases:
-        exact = next(c for c in responses if c.basis is ErrorBasis.EXACT)
-        if exact.name in computed:  # its errors are those of what it was worked out from
-            return Scale.STATED, 0
-        raise DiscrimError(
-            f'column "{exact.name}" is observed and said to have no error',
-            place=exact.place,
-            do="Every measured rate has one; state it, or leave `error` out to have it estimated.",
-        )
-    return Scale.STATED, 0
 
 
 def _unmeasured(symbol: Any, study: Study) -> DiscrimError:

@@ -15,9 +15,11 @@ from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
 from discrim.weigh.document_candidates import candidate_record, lockstep_keys
 from discrim.weigh.document_questions import question_records
+from discrim.weigh.document_reported import reported_records
 from discrim.weigh.document_values import column_record, is_words, number
 from discrim.weigh.planes import planes
 from discrim.weigh.run import Weighed
+from discrim.weigh.variances import response_records
 from discrim.weigh.words import (
     CAUTIONS,
     CONTROLS,
@@ -32,6 +34,8 @@ def document(w: Weighed, every_run: Weighed | str | None = None) -> dict[str, An
     ``every_run``: the study weighed again with its excluded runs, or why it could not be.
     """
     candidates = [candidate_record(w, i) for i in range(len(w.laws))]
+    for record, found in zip(candidates, w.reported or [()] * len(candidates), strict=True):
+        record["reported"] = reported_records(found)
     out = _assembled(w, candidates)
     if every_run is not None:
         _add_excluded(out, w, every_run)
@@ -78,6 +82,7 @@ def _assembled(w: Weighed, candidates: list[dict[str, Any]]) -> dict[str, Any]:
         "provenance": _provenance(w),
         "study": _study(w),
         "runs": _runs(w),
+        "responses": response_records(w.bench),
         "candidates": candidates,
         "comparisons": [_comparison(w, k) for k in range(len(w.comparisons))],
         "relations": w.relations.records([c.law.name for c in w.laws]),

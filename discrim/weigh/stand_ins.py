@@ -73,7 +73,12 @@ def stand_ins(
         extra = [s for s in symbols if s not in bench.symbols]
         if all(s in used_here for s in symbols) and _already(swapped, laws[lead.index].law):
             continue
-        here = build(study, [e for c in laws for e in c.bound], extra=[*bench.symbols, *extra])
+        here = build(
+            study,
+            [e for c in laws for e in c.bound],
+            extra=[*bench.symbols, *extra],
+            errors=bench.errors,
+        )
         try:
             rival = bind_law(swapped, study, here)
             host = bind_law(laws[lead.index].law, study, here)

@@ -131,6 +131,21 @@ def references(w: Weighed) -> list[dict[str, str]]:
         ),
         ("Rounding of results", "JCGM 100:2008 (GUM), section 7.2.6"),
     ]
+    if w.bench.unknown is not None and w.bench.unknown.together:
+        out.append(
+            (
+                "Covariance of several responses",
+                "Box & Draper, Biometrika 52 (1965) 355; dependences among them: Box, Hunter, MacGregor "
+                "& Erjavec, Technometrics 15 (1973) 33",
+            )
+        )
+    elif w.bench.unknown is not None:
+        out.append(
+            (
+                "Variance of each response",
+                "restricted maximum likelihood: Patterson & Thompson, Biometrika 58 (1971) 545",
+            )
+        )
     if w.common.scale is Scale.STATED:
         out.insert(
             2, ("Guard by the overall fit", "Anderson & Rubin, Ann. Math. Stat. 20 (1949) 46")

@@ -1,0 +1,190 @@
+"""Errors of several responses, estimated once from the most general candidate that is adequate.
+
+What is estimated is then held for every fit, test and interval of every candidate, so that laws are
+compared under one and the same errors.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from discrim.errors import DiscrimError
+from discrim.fit.responses import Estimate, estimate
+from discrim.weigh.bench import Bench
+from discrim.weigh.bind import Bound
+from discrim.weigh.document_values import number
+from discrim.weigh.errors_of import with_errors
+
+# A candidate this far in AIC behind the best has essentially no support (Burnham & Anderson, Model
+# Selection and Multimodel Inference, 2nd ed., Springer 2002, sec. 2.6; from memory): the errors are not
+# taken from it.
+NO_SUPPORT = 10.0
+# with fewer degrees of freedom than this the references of the tests are guides
+FEW = 5.0
+
+
+def with_estimated_errors(
+    bench: Bench, bounds: Sequence[Bound], names: Sequence[str], *, seed: int
+) -> Bench:
+    """The bench with the errors of its responses estimated; as it is where all are stated.
+
+    ``names`` : of the candidates. Of several readings of the condition errors the first is used.
+
+    Raises
+    ------
+    DiscrimError
+        When no candidate leaves enough runs to estimate the errors from.
+    """
+    unknown, stated = bench.unknown, bench.stated
+    if unknown is None or stated is None:
+        return bench
+    data = stated.as_origin(stated.origins()[0])
+    tried = [estimate(b.predictor, data, unknown, seed=seed) for b in bounds]
+    usable = [i for i, e in enumerate(tried) if e is not None and e.enough]
+    if not usable:
+        raise _too_few(bench, tried)
+    aic = {i: tried[i].criterion + 2 * len(bounds[i].names) for i in usable}  # type: ignore[union-attr]
+    best = min(aic.values())
+    adequate = [i for i in usable if aic[i] <= best + NO_SUPPORT]
+    chosen = min(adequate, key=lambda i: (-len(bounds[i].names), aic[i], i))
+    errors = estimate(bounds[chosen].predictor, data, unknown, seed=seed, several=True)
+    assert errors is not None
+    return replace(
+        bench,
+        measurements=with_errors(stated, unknown, errors),
+        errors=errors,
+        errors_from=names[chosen],
+    )
+
+
+def _too_few(bench: Bench, tried: Sequence[Estimate | None]) -> DiscrimError:
+    assert bench.unknown is not None
+    missing = [c for c, is_open in zip(bench.responses, bench.unknown.open, strict=True) if is_open]
+    names = " and ".join(f'"{c.name}"' for c in missing)
+    if all(e is None for e in tried):
+        return DiscrimError(
+            f"the errors of {names} are not stated, and no candidate could be fitted to estimate them",
+            place=missing[0].place,
+            do="State `error` for each observed column.",
+        )
+    more = ""
+    if bench.unknown.together:
+        more = (
+            ' Beside their covariance: take between_responses = "unknown" out, to estimate a variance '
+            "for each alone."
+        )
+    return DiscrimError(
+        f"the errors of {names} are not stated, and the runs are too few to estimate them beside the "
+        "constants",
+        place=missing[0].place,
+        do=f"State `error` for each observed column, or give more runs.{more}",
+    )
+
+
+def response_records(bench: Bench) -> list[dict[str, Any]]:
+    """``responses`` of the document: what is known of the error of each observed column.
+
+    In the units of the columns: ``variance``, ``sd`` and ``df`` where the error was estimated with several
+    responses, ``covariance`` (a row of the matrix) where that between responses was.
+    """
+    factors = [_shown_per_internal(c) for c in bench.responses]
+    out: list[dict[str, Any]] = []
+    for r, column in enumerate(bench.responses):
+        record: dict[str, Any] = {
+            "column": column.name,
+            "units": column.shown,
+            "estimated": not column.errors and column.basis.value == "estimated",
+            "variance": None,
+            "sd": None,
+            "df": None,
+            "covariance": None,
+            "correlation": None,
+            "enlarged": None,
+            "candidate": bench.errors_from,
+        }
+        errors, unknown = bench.errors, bench.unknown
+        if errors is not None and unknown is not None and unknown.open[r]:
+            m = errors.matrix
+            record["variance"] = number(m[r, r] * factors[r] ** 2)
+            record["sd"] = number(np.sqrt(m[r, r]) * factors[r])
+            record["df"] = number(errors.df[r])
+            if unknown.together:
+                record["covariance"] = [
+                    number(m[r, k] * factors[r] * factors[k]) for k in range(len(m))
+                ]
+                size = np.sqrt(np.diag(m))
+                record["correlation"] = [
+                    number(m[r, k] / (size[r] * size[k])) for k in range(len(m))
+                ]
+                record["enlarged"] = number(errors.held[r, r] / m[r, r])
+        out.append(record)
+    return out
+
+
+def _shown_per_internal(column: Any) -> float:
+    from discrim.study.lookup import to_shown
+
+    return float(to_shown(column, np.ones(1))[0]) if column.shown else 1.0
+
+
+def error_findings(bench: Bench) -> list[tuple[str, str, str]]:
+    """(severity, where, says): what was estimated, from what, and how far to trust it."""
+    errors, unknown = bench.errors, bench.unknown
+    if errors is None or unknown is None:
+        return []
+    names = [c.name for c, is_open in zip(bench.responses, unknown.open, strict=True) if is_open]
+    every = " and ".join(f"“{n}”" for n in names)
+    what = "their covariance was" if unknown.together else "a variance for each was"
+    if len(names) == 1:
+        what = "its variance was"
+    out = [
+        (
+            "note",
+            "errors",
+            f"the error of {every} is not stated: {what} estimated with “{bench.errors_from}” and "
+            "held for all candidates, so lack of fit cannot be told from noise",
+        )
+    ]
+    if errors.reference_df < FEW:
+        out.append(
+            (
+                "warning",
+                "errors",
+                f"only {errors.reference_df:.2g} degrees of freedom for the estimated errors of the "
+                "observed columns: p-values and intervals are a guide",
+            )
+        )
+    for c, low in zip(bench.responses, errors.on_least, strict=True):
+        if low:
+            out.append(
+                (
+                    "warning",
+                    f"column “{c.name}”",
+                    "the law it was estimated with leaves it no error beyond the rounding of its digits "
+                    "(or beyond what the errors of the conditions explain); that rounding is held",
+                )
+            )
+    if not errors.converged:
+        out.append(
+            (
+                "warning",
+                "errors",
+                "the errors of the observed columns and the fit had not come to full agreement when "
+                "the search was stopped",
+            )
+        )
+    if len(errors.minima) > 1:
+        gap = errors.minima[1] - errors.minima[0]
+        out.append(
+            (
+                "warning",
+                "errors",
+                f"{len(errors.minima)} minima were found for the errors of the observed columns; the "
+                f"lowest is used, the next is {gap:.2g} higher in −2 ln L",
+            )
+        )
+    return out
