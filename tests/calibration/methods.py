@@ -1,0 +1,57 @@
+"""The package's tests on a whole batch of studies at once, and the oracle that they are held against."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile
+from discrim.evidence.intervals import guard_level
+from discrim.evidence.score import basis, score, without
+from discrim.fit.covariance import Whitener
+from discrim.fit.engine import Problem, Solution
+from discrim.fit.measurements import Scale
+from tests.calibration.simulate import Drawn
+
+ALPHA = 0.05
+
+
+def score_z(problem: Problem, held: Solution, psi: int = 0) -> np.ndarray:
+    """Equivalent normal of the score at the restricted fits ``held``, shape (S,)."""
+    return score(problem, held, psi).z
+
+
+def excluded(problem: Problem, held: Solution, z: np.ndarray, *, two_sided: bool) -> np.ndarray:
+    """Whether the reconciled set leaves out the value held: z (towards exclusion) at what the guard
+    leaves of alpha, or the objective at the level of the guard."""
+    data = problem.data
+    spend = guard_level(ALPHA) if data.scale is Scale.STATED else 0.0
+    if two_sided:
+        z = np.abs(z)
+    out = z > normal_quantile(1 - (ALPHA - spend) / (2 if two_sided else 1))
+    if spend:
+        df = max(data.n - (held.theta.shape[1] - 1), 1)
+        out |= held.objective > chi2_quantile_upper(spend, df)
+    return out
+
+
+def oracle(drawn: Drawn) -> tuple[np.ndarray, np.ndarray]:
+    """z of an oracle, and its mean for each unit of the constant in question, shape (S,) each.
+
+    The score along the true sensitivities with the noise of the tables: e = y - f(printed conditions;
+    term at zero, others true); V and the sensitivities are taken at the truth, which no one knows. The
+    other constants are projected out, as they have to be estimated.
+    """
+    problem, truth = drawn.problem, drawn.truth
+    null = truth.copy()
+    null[:, 0] = 0.0
+    shown = problem.data.conditions
+    e = problem.data.y - problem.predictor.predict(null, shown, constants=False).values
+    at = problem.predictor.predict(truth, drawn.conditions, conditions_too=True)
+    assert at.by_constants is not None
+    scale2 = np.full(drawn.studies, drawn.variance)
+    v = problem.own_covariance(at.values, drawn.conditions, at.by_conditions, scale2)
+    white = Whitener(problem.with_measured(v, drawn.conditions, at.by_conditions))
+    g = white.matrix(at.by_constants)
+    along = without(basis(g[:, :, 1:]), g[:, :, 0])
+    length = np.sqrt(np.einsum("sn,sn->s", along, along))
+    return np.einsum("sn,sn->s", along, white.vector(e)) / length, length
