@@ -128,6 +128,8 @@ def _coefficients(x: np.ndarray, y: np.ndarray) -> np.ndarray:
     """Least squares of y, shape (S, N), on the columns of x, shape (S, N, k)."""
     if not x.shape[2]:
         return np.zeros((len(x), 0))
+    # a value far from the fit, where the law is not finite, is ruled out by its objective
+    x, y = np.where(np.isfinite(x), x, 0.0), np.where(np.isfinite(y), y, 0.0)
     norms = np.sqrt(np.einsum("snk,snk->sk", x, x))
     norms = np.where(norms > 0, norms, 1.0)
     pinv = np.linalg.pinv(x / norms[:, None, :], rcond=RANK)
