@@ -13,7 +13,7 @@ The true law, if listed, stands with probability at least 1 - alpha, whatever th
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -72,13 +72,17 @@ def standing(
     *,
     alpha: float,
     seed: int,
+    only: Sequence[int] | None = None,
 ) -> list[Standing]:
     """The confidence set over ``fits`` (all on the same measurements).
 
     ``contains[(j, i)]``: law j is proven to contain law i; ``same[(i, j)]``: proven the same law.
+    ``only``: the candidates to judge, in this order, all by default (to count how often a known truth
+    stands, one is enough).
     """
     n = len(fits)
-    nulls = {i: _Null(f) for i, f in enumerate(fits) if f.ok}
+    judged = list(range(n)) if only is None else list(only)
+    nulls = {i: _Null(fits[i]) for i in judged if fits[i].ok}
     tried: list[list[int]] = [[] for _ in fits]  # rivals in whose directions each is tried
     found: list[list[np.ndarray]] = [[] for _ in fits]
     for j, rival in enumerate(fits):
@@ -97,10 +101,10 @@ def standing(
             found[i].extend(rows)
             tried[i].extend([j] * len(rows))
     return [
-        _judge(null, found[i], tried[i], contains, i, alpha, seed)
-        if null.ok
+        _judge(fits[i], found[i], tried[i], contains, i, alpha, seed)
+        if fits[i].ok
         else Standing(False, None, float("nan"), -1, float("nan"), ())
-        for i, null in enumerate(fits)
+        for i in judged
     ]
 
 
@@ -125,9 +129,7 @@ class _Null:
             self.sd = float(np.sqrt(null.scale2)) if null.scale2 > 0 else 1.0
 
 
-def _directions(
-    nulls: Sequence[_Null], rival: Fit, *, thorough: bool
-) -> list[list[np.ndarray]]:
+def _directions(nulls: Sequence[_Null], rival: Fit, *, thorough: bool) -> list[list[np.ndarray]]:
     """The directions of one rival for each of several nulls."""
     thetas = mimics([n.fit for n in nulls], rival, thorough=thorough)
     usable = np.isfinite(thetas).all(axis=1)
@@ -238,7 +240,7 @@ def joint_p(
     largest: float,
     df: int,
     estimated: bool,
-    replicate_df: int,
+    replicate_df: float,
     seed: int,
     *,
     two_sided: bool = True,
@@ -285,15 +287,33 @@ def _one_line(d: np.ndarray) -> bool:
     return bool((np.abs(d @ d[0]) > 1 - 1e-9).all())
 
 
-def apart(a: Fit, b: Fit) -> float:
-    """Largest difference of two fitted laws over the runs, in standard deviations of a run."""
+def apart(a: Fit, b: Fit, window: np.ndarray | None = None) -> float:
+    """Largest difference of two fitted laws in standard deviations of a run, at the printed conditions
+    of the runs and at those in ``window``, shape (K, m), where the error is taken to be as small as
+    that of the best run, relative to its size."""
     sd = np.sqrt(np.maximum(a.variances, b.variances))
     if a.data.scale is Scale.ESTIMATED and not a.problem.with_conditions:
         s2 = np.nanmax([a.scale2, b.scale2, 0.0])
         sd = sd * np.sqrt(s2)
+    values = [
+        f.predictor.predict(f.theta[None], a.data.conditions, constants=False) for f in (a, b)
+    ]
+    first, second = values[0].values[0], values[1].values[0]
     with np.errstate(divide="ignore", invalid="ignore"):
-        gap = np.abs(a.values - b.values) / sd
-    return float(np.nanmax(gap))
+        largest = float(np.nanmax(np.abs(first - second) / sd))
+        if window is None or not len(window):
+            return largest
+        relative = float(np.nanmin(sd / np.maximum(np.abs(first), np.abs(second))))
+        # each named condition in the place of every run, so that all responses are looked at
+        there = np.repeat(window[:, None, :], a.n, axis=1)
+        f, g = (
+            x.predictor.predict(
+                np.repeat(x.theta[None], len(there), axis=0), there, constants=False
+            ).values
+            for x in (a, b)
+        )
+        gap = np.abs(f - g) / (relative * np.maximum(np.abs(f), np.abs(g)))
+    return max(largest, float(np.nanmax(np.where(f == g, 0.0, gap))))
 
 
 def table_key(data: Measurements) -> str:
