@@ -36,6 +36,7 @@ __all__ = [
     "linearised",
     "nothing",
     "standard_errors",
+    "united",
 ]
 
 CROSSED, BOUND, OPEN, FAILED = "crossed", "bound", "open", "failed"
@@ -251,9 +252,49 @@ def _named(interval: Interval, kind: str, tests: Acceptance, pts: Points) -> Int
             note = "empty: the law is rejected by these runs at every value (lack of fit)"
         else:
             note = "empty: accepted nowhere on the values tried; the estimate is on the edge"
-    elif len(interval.pieces) > 1:
-        note = _together(f"{len(interval.pieces)} separate pieces; the hull is given", note)
+    note = _together(_in_pieces(interval.pieces), note)
     return Interval(kind, interval.low, interval.high, interval.pieces, interval.empty, note)
+
+
+def _in_pieces(pieces: tuple[tuple[float, float], ...]) -> str:
+    return f"{len(pieces)} separate pieces; the hull is given" if len(pieces) > 1 else ""
+
+
+ONE_EMPTY = "under one reading of the condition errors no value is accepted; this is the other"
+
+
+def united(a: Interval, b: Interval) -> Interval:
+    """What holds whichever of two readings of the errors is right: all values that either accepts."""
+    for one in (a, b):  # of what could not be had under one reading nothing can be said
+        if not one.empty and FAILED in (one.low.end, one.high.end):
+            return one
+    if a.empty or b.empty:
+        rest = b if a.empty else a
+        return rest if rest.empty else replace(rest, note=_together(ONE_EMPTY, rest.note))
+    parts = sorted(
+        part for one in (a, b) for part in one.pieces or ((one.low.value, one.high.value),)
+    )
+    merged = [parts[0]]
+    for low, high in parts[1:]:
+        if low <= merged[-1][1]:
+            merged[-1] = (merged[-1][0], max(merged[-1][1], high))
+        else:
+            merged.append((low, high))
+    notes = {
+        note
+        for one in (a, b)
+        for note in one.note.split("; ")
+        if note and note not in _in_pieces(one.pieces)
+    }
+    pieces = tuple(merged)
+    return Interval(
+        a.kind,
+        a.low if a.low.value <= b.low.value else b.low,
+        a.high if a.high.value >= b.high.value else b.high,
+        pieces,
+        False,
+        _together(_in_pieces(pieces), *sorted(notes)),
+    )
 
 
 def _grid(

@@ -21,13 +21,12 @@ from discrim.evidence.criteria import Criteria, criteria
 from discrim.evidence.curve import Curve
 from discrim.evidence.guaranteed import Cleared, guaranteed
 from discrim.evidence.intervals import (
-    OPEN,
     Interval,
-    Side,
     along_all,
     linearised,
     nothing,
     standard_errors,
+    united,
 )
 from discrim.evidence.rivals import table_key
 from discrim.fit.fit import Fit, fit
@@ -161,7 +160,7 @@ def _intervals(
 ) -> tuple[tuple[dict[str, Interval], ...], np.ndarray | None]:
     one = next(iter(fits.values()))
     below: np.ndarray | None = None
-    lowest = one.objective * (1.0 - BETTER)
+    lowest = 1.0 - BETTER
     sure = guaranteed(
         bound.predictor,
         one.data,
@@ -177,13 +176,18 @@ def _intervals(
     out = []
     for j in every:
         by_origin = [found[j] for found in searched]
-        points = by_origin[0].points
-        if by_origin[0].lower_objective < lowest:
-            lowest = by_origin[0].lower_objective
-            below = points.solution.theta[int(np.nanargmin(points.objective))]
+        for found, f in zip(by_origin, fits.values(), strict=True):
+            # where s^2 is estimated beside condition errors the objective is N - p at every optimum
+            gain = 1.0
+            if f.objective > 0 and not f.problem.joint_scale:
+                gain = found.lower_objective / f.objective
+            if gain < lowest:  # the lowest of all constants and readings
+                lowest = gain
+                points = found.points
+                below = points.solution.theta[int(np.nanargmin(points.objective))]
         recon = by_origin[0].reconciled
         for other in by_origin[1:]:
-            recon = hull(recon, other.reconciled)
+            recon = united(recon, other.reconciled)
         if one.data.scale is Scale.ESTIMATED and one.degrees_of_freedom < 1:
             profile = nothing("profile", "not computed: as many constants as runs, scale unknown")
             recon = nothing("reconciled", "not computed: as many constants as runs, scale unknown")
@@ -209,14 +213,5 @@ def cleared_of(bound: Bound) -> Cleared | None:
     return cleared_law(bound.compiled[0], bound.expressions[0])
 
 
-def hull(a: Interval, b: Interval) -> Interval:
-    """What holds whichever of two readings of the errors is right."""
-    if a.empty:
-        return b
-    if b.empty:
-        return a
-    low = a.low if a.low.value <= b.low.value else b.low
-    high = a.high if a.high.value >= b.high.value else b.high
-    if not np.isfinite([a.low.value, a.high.value]).all():
-        low = Side(min(a.low.value, b.low.value), OPEN) if np.isinf(low.value) else low
-    return Interval(a.kind, low, high, a.pieces, False, a.note or b.note)
+# whichever of two readings of the condition errors is right
+hull = united
