@@ -11,7 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import replace
-from itertools import product
+from itertools import combinations, product
 from math import log10
 
 import numpy as np
@@ -107,30 +107,33 @@ def _dependence(columns: Sequence[Column], usable: np.ndarray) -> str | None:
     rounding = np.array([_rounding(c, rows, y[:, k]) for k, c in enumerate(columns)])
     centred = (y - y.mean(axis=0)) / rounding
     size = np.sqrt((centred**2).sum(axis=0) / (n - 1))
-    use = np.flatnonzero(size > VARIES)
-    if len(use) < 2 or use[-1] != len(columns) - 1:
+    last = len(columns) - 1
+    if size[last] <= VARIES:
         return None
-    _, s, vt = np.linalg.svd(centred[:, use], full_matrices=False)
     # sum of squares of n - 1 roundings of unit variance, and three of its standard deviations
     limit = float((n - 1) + 3.0 * np.sqrt(2.0 * (n - 1)))
-    if s[-1] ** 2 > limit:
-        return None
-    v = np.zeros(len(columns))
-    v[use] = vt[-1]
-    v[np.abs(v) * size < TAKES_PART] = 0.0
-    if v[-1] == 0.0 or np.count_nonzero(v) < 2:
-        return None
-    weights = _simple(v / rounding, y, rounding, limit)
-    return _words(columns, weights, y, rounding)
+    others = [k for k in range(last) if size[k] > VARIES]
+    # the relation between the fewest columns: with more of them it is not unique
+    for many in range(1, len(others) + 1):
+        for chosen in combinations(others, many):
+            use = [*chosen, last]
+            _, s, vt = np.linalg.svd(centred[:, use], full_matrices=False)
+            if s[-1] ** 2 > limit or (np.abs(vt[-1]) * size[use] < TAKES_PART).any():
+                continue
+            v = np.zeros(len(columns))
+            v[use] = vt[-1]
+            return _words(columns, _simple(v / rounding, y, rounding, limit), y, rounding)
+    return None
 
 
 def _rounding(column: Column, rows: np.ndarray, values: np.ndarray) -> float:
     """Standard deviation of the rounding of the cells, in shown units, root mean square over the runs.
 
-    A column is as fine as its finest cell, but no cell has more significant digits than the column.
+    A column is as fine as most of its cells are written, but no cell has more significant digits than
+    the column: a single cell of more decimals says nothing of the others.
     """
     texts = [column.labels[i] for i in rows]
-    finest = 10.0 ** -max(decimals(t) for t in texts)
+    finest = 10.0 ** -float(np.median([decimals(t) for t in texts]))
     digits = max(significant_digits(t) for t in texts)
     units = [
         max(finest, 10.0 ** (int(np.floor(log10(abs(x)))) - digits + 1)) if x else finest
@@ -141,15 +144,18 @@ def _rounding(column: Column, rows: np.ndarray, values: np.ndarray) -> float:
 
 
 def _simple(weights: np.ndarray, y: np.ndarray, rounding: np.ndarray, limit: float) -> np.ndarray:
-    """The same relation with simple fractions where those hold as well, the last column weighed 1."""
+    """The same relation with simple fractions or few digits where those hold as well, the last column
+    weighed 1."""
     weights = weights / weights[-1]
     simple = np.array(SIMPLE)
     nearest = simple[np.argmin(np.abs(np.abs(weights)[:, None] - simple), axis=1)]
-    near = np.where(weights == 0, 0.0, np.sign(weights) * nearest)
-    combined = y @ near
-    own = float(((near * rounding) ** 2).sum())
-    if ((combined - combined.mean()) ** 2).sum() <= limit * own:
-        return near
+    tries = [np.where(weights == 0, 0.0, np.sign(weights) * nearest)]
+    tries += [np.array([float(f"{w:.{d}g}") for w in weights]) for d in (1, 2, 3)]
+    for near in tries:
+        combined = y @ near
+        own = float(((near * rounding) ** 2).sum())
+        if ((combined - combined.mean()) ** 2).sum() <= limit * own:
+            return near
     return weights
 
 

@@ -3,28 +3,26 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from functools import partial
 from typing import Any
 
 import numpy as np
-import sympy
 
 from discrim.errors import DiscrimError, nearest
 from discrim.evidence.participation import participation
 from discrim.evidence.term import Kind, Participation, Term
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION
-from discrim.ratelaw.compile import CompiledLaw
 from discrim.ratelaw.knockout import KnockOut, KnockOutKind, contains, knock_out
 from discrim.ratelaw.lump import lump
 from discrim.ratelaw.model import RateLaw, amount
-from discrim.reactor.knocked import KnockedOut
 from discrim.runs.model import ErrorBasis
 from discrim.study.model import Question, Study
 from discrim.verdict import CandidateFacts, Reading, StandIn, Verdict, judge_participation
-from discrim.weigh.bench import Bench, fixed_put_in, observed_expression, put_in
+from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
+from discrim.weigh.effects import knocked_out, named_conditions
 from discrim.weigh.laws import CandidateLaw
 from discrim.weigh.stand_ins import bind_law, stand_ins, symbol_of
 
@@ -199,7 +197,8 @@ def _in_candidate(
     if ko.kind is KnockOutKind.FACTOR:
         reduced_law = _lumped(reduced_law)
     reduced = bind_law(reduced_law, study, bench)
-    term = _term(question, study, bench, c, bound, ko, reduced)
+    first = next(iter(fits.values()))
+    term = _term(question, study, bench, c, bound, ko, reduced, first.theta)
     if term.kind is not Kind.FACTOR and not term.psi:
         return InCandidate(
             index,
@@ -256,54 +255,18 @@ def _term(
     bound: Bound,
     ko: KnockOut,
     reduced: Bound,
+    theta: np.ndarray,
 ) -> Term:
     kind = _KIND[ko.kind]
     psi = tuple(j for j in range(len(bound.names)) if bound.base_constant(j).name in ko.psi)
     vanish = tuple(j for j in range(len(bound.names)) if bound.base_constant(j).name in ko.vanish)
     if len(psi) > 1 and kind in (Kind.ZERO, Kind.ORDER, Kind.VANISH):
         kind = Kind.SEVERAL
-    knocked = None
-    if kind is not Kind.FACTOR:
-        knocked = _knocked(study, bench, c, bound, ko)
-    points, labels = _points(question, study, bench)
+    if kind is Kind.FACTOR:
+        knocked, (points, labels) = None, named_conditions(question, study, bench)
+    else:
+        knocked, points, labels = knocked_out(question, study, bench, c, bound, ko, theta, psi)
     return Term(kind, bound.predictor, reduced.predictor, psi, vanish, knocked, points, labels)
-
-
-def _knocked(study: Study, bench: Bench, c: CandidateLaw, bound: Bound, ko: KnockOut) -> KnockedOut:
-    """Rates of the first response with and without the term."""
-    reduced_law = replace(c.law, rate=ko.rate, production=ko.production)
-    column = bench.responses[0]
-    with_it = put_in(observed_expression(column, c.law, study), study)
-    without = put_in(observed_expression(column, reduced_law, study), study)
-    symbols = [k.symbol for k in bound.constants]
-    compiled = [
-        CompiledLaw(_gross(fixed_put_in(e, study)), symbols, list(bench.symbols))
-        for e in (with_it, without)
-    ]
-    return KnockedOut(compiled[0], compiled[1], bound.column_of[0])
-
-
-def _gross(e: Any) -> Any:
-    """A law as compiled needs a sympy expression; numbers are made one."""
-    return sympy.Integer(e) if isinstance(e, int) else e
-
-
-def _points(question: Question, study: Study, bench: Bench) -> tuple[np.ndarray, tuple[str, ...]]:
-    """Named conditions: those asked for, else each distinct run as printed."""
-    table = bench.measurements.conditions
-    if question.at:
-        row = np.array(
-            [np.exp(np.log(x[x > 0]).mean()) if (x > 0).any() else x.mean() for x in table.T]
-        )
-        for species, value in question.at.items():
-            symbol = amount(species)
-            if symbol in bench.symbols:
-                row[bench.condition(symbol)] = value
-        return row[None], ("the conditions asked about",)
-    rows = np.flatnonzero(bench.response == 0)
-    _, first = np.unique(table[rows], axis=0, return_index=True)
-    pick = rows[np.sort(first)]
-    return table[pick], tuple(f"run {study.runs.labels[bench.runs[i]]}" for i in pick)
 
 
 def _facts(
