@@ -68,6 +68,11 @@ def normal_of_tail(p: Any) -> np.ndarray:
     return np.clip(z, -FAR, FAR)
 
 
+def f_tail(x: Any, df1: Any, df2: Any) -> np.ndarray:
+    """P(F > x) for arrays, broadcast."""
+    return np.asarray(special.fdtrc(df1, df2, x))
+
+
 def chi2_tail(x: Any, df: Any) -> np.ndarray:
     """P(chi-squared > x) for arrays, broadcast."""
     return np.asarray(special.chdtrc(df, x))

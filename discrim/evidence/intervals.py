@@ -19,6 +19,7 @@ import numpy as np
 from discrim.evidence.acceptance import Acceptance, guard_level, quantile, scale_from_fit
 from discrim.evidence.curve import Curve, Points
 from discrim.evidence.search import Accept, Found, Search, search_all
+from discrim.evidence.widened import Ends, weak_about, widened
 from discrim.fit.fit import Fit
 from discrim.fit.fit import fit as refit
 
@@ -188,17 +189,53 @@ def along_all(
             profile = profiles[k]
         elif rest:
             profile = rest[0][0]
-        out.append(
-            Along(
-                _around(profile, float(fit.theta[search.curve.psi])),
-                _named(recon[0], "reconciled", tests[k], found.points),
-                low,
-                high,
-                found.points,
-                _lowest(found.points),
-            )
+        made = Along(
+            _around(profile, float(fit.theta[search.curve.psi])),
+            _named(recon[0], "reconciled", tests[k], found.points),
+            low,
+            high,
+            found.points,
+            _lowest(found.points),
         )
+        out.append(_widened(fit, search, made, level))
     return out
+
+
+def _widened(fit: Fit, search: Search, made: Along, level: float) -> Along:
+    """With its reconciled ends moved on where other constants are in lockstep with one another."""
+    recon = made.reconciled
+    if recon.empty or not fit.problem.measured:
+        return made
+    psi = search.curve.psi
+    sides = (recon.low, recon.high, made.lower_one_sided, made.upper_one_sided)
+    ends = Ends(*(s.value for s in sides))
+    weak = weak_about(fit.problem, made.points, psi, ends)
+    if not weak.count:
+        return made
+    new = widened(
+        search.curve, weak, level, ends, float(fit.theta[psi]), search.lower, search.upper
+    )
+    if new == ends:
+        return made
+
+    def side(old: Side, value: float) -> Side:
+        if value == old.value or np.isnan(value):
+            return old
+        if value in (search.lower, search.upper):
+            return Side(value, BOUND if np.isfinite(value) else OPEN)
+        return Side(value, CROSSED)
+
+    low, high = side(recon.low, new.low), side(recon.high, new.high)
+    pieces = tuple(recon.pieces)
+    if pieces:
+        pieces = ((low.value, pieces[0][1]), *pieces[1:])
+        pieces = (*pieces[:-1], (pieces[-1][0], high.value))
+    return replace(
+        made,
+        reconciled=replace(recon, low=low, high=high, pieces=pieces),
+        lower_one_sided=side(made.lower_one_sided, new.low_one_sided),
+        upper_one_sided=side(made.upper_one_sided, new.high_one_sided),
+    )
 
 
 def _lowest(pts: Points) -> float:

@@ -25,6 +25,7 @@ import numpy as np
 
 from discrim.evidence.conditional import signed, strength_of
 from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
+from discrim.evidence.unknown_scale import scale_weights
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
@@ -106,7 +107,6 @@ def score(
     """
     data = problem.data
     jac = solution.jacobian
-    p = jac.shape[2]
     if direction is None:
         g = jac[:, :, psi]
         nuisance = np.delete(jac, psi, axis=2)
@@ -139,7 +139,11 @@ def score(
             t = np.where(np.isnan(rest) & (z != 0), np.sign(z) * 1e8, t)
             z = np.where((z == 0) & np.isnan(t), 0.0, t)
     elif problem.joint_scale and direction is None:
-        z = _unknown_scale(problem, solution, psi, g_perp, space, s, size, p)
+        df_rest = n - p_nuisance
+        c = scale_weights(problem, solution, [psi])[:, 0]
+        top = s + c * (solution.objective - df_rest)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            z = top / np.sqrt(size**2 + 2.0 * max(df_rest, 1) * c**2)
     raw = np.where(np.isfinite(solution.objective), z, np.nan)
     if conditional and uses_strength(problem) and direction is None:
         off = without(space, solution.residual)
@@ -158,60 +162,3 @@ def uses_strength(problem: Problem) -> bool:
     With the variance of the observations estimated the objective carries no evidence of its own.
     """
     return bool(problem.measured) and problem.data.scale is Scale.STATED
-
-
-def _unknown_scale(
-    problem: Problem,
-    sol: Solution,
-    psi: int,
-    g_perp: np.ndarray,
-    space: np.ndarray,
-    s: np.ndarray,
-    size: np.ndarray,
-    p: int,
-) -> np.ndarray:
-    """Unknown variance s^2 of the observations beside known errors of the conditions.
-
-    The score of psi is made orthogonal to that of s^2 as well:
-    z = [S + c (Q - (N - p_l))] / sqrt(I + 2 (N - p_l) c^2) with dV/ds^2 = 1,
-    D_j = -1/2 tr(V^-2 dV/dtheta_j) and c = (D_psi - I_psi,l I_ll^-1 D_l)/tr(V^-1). Only *measured*
-    conditions, whose reconciling needs s^2, are part of dV/dtheta: with set ones the score has mean zero
-    whatever s^2 is.
-    """
-    data = problem.data
-    n, p_l = data.count, p - 1
-    v = sol.covariance
-    pred = problem.predictor.predict(sol.theta, sol.conditions, conditions_too=True, both=True)
-    assert pred.by_conditions is not None
-    assert pred.by_both is not None
-    if v.ndim == 2:
-        inverse_trace = (1.0 / v).sum(axis=1)
-    else:
-        white = Whitener(v)
-        inverse = white.transposed_matrix(white.matrix(np.broadcast_to(np.eye(data.n), v.shape)))
-        inverse_trace = np.einsum("snn->s", inverse)
-    d = np.zeros((len(v), p))
-    for src in problem.measured:
-        sd = src.sd(sol.conditions[..., src.target])
-        u = sd * pred.by_conditions[..., src.target]
-        du = (sd[..., None] if sd.ndim == 2 else sd[:, None]) * pred.by_both[:, :, src.target, :]
-        if v.ndim == 2:
-            d -= np.einsum("sn,snp->sp", u / v**2, du)
-        else:
-            same = src.groups[:, None] == src.groups[None, :]
-            squared = (inverse @ inverse) * same
-            d -= np.einsum("sn,snk,skp->sp", u, squared, du)
-    g_l = np.delete(sol.jacobian, psi, axis=2)
-    d_l = np.delete(d, psi, axis=1)
-    # regression of the column of psi on the nuisance columns, by the pseudo-inverse of scaled
-    # columns
-    norms = np.sqrt(np.einsum("snk,snk->sk", g_l, g_l))
-    norms = np.where(norms > 0, norms, 1.0)
-    beta = np.einsum(
-        "skn,sn->sk", np.linalg.pinv(g_l / norms[:, None, :], rcond=RANK), sol.jacobian[:, :, psi]
-    )
-    beta = beta / norms
-    c = (d[:, psi] - np.einsum("sk,sk->s", beta, d_l)) / inverse_trace
-    top = s + c * (sol.objective - (n - p_l))
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return top / np.sqrt(size**2 + 2.0 * max(n - p_l, 1) * c**2)

@@ -88,7 +88,7 @@ class Participation:
         exactly without the term; its median when the term is absent
     flip_matters : the same for an effect of ``matters_above``
     weak : combinations of the *other* constants that the runs do not tell apart from the errors of the
-        conditions; with one the test is the projected one, with more it does not hold its level
+        conditions; with one to three the test is the projected one, with more it need not hold its level
     """
 
     kind: Kind

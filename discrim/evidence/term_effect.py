@@ -6,9 +6,8 @@ import numpy as np
 
 from discrim.evidence.curve import Curve
 from discrim.evidence.distributions import normal_quantile, t_quantile
-from discrim.evidence.effect import FARTHEST, InEffect, effect_of, t_of
+from discrim.evidence.effect import FARTHEST, InEffect, effect_of
 from discrim.evidence.intervals import OPEN, Side, along, standard_errors
-from discrim.evidence.projected import outside_level, projected, weak_nuisance
 from discrim.evidence.score import basis, without
 from discrim.evidence.term import Effect, Kind, Term
 from discrim.fit.engine import Problem
@@ -92,41 +91,7 @@ def effect_with_interval(term: Term, problem: Problem, full: Fit, level: float) 
     open_ended = OPEN in (result.reconciled.low.end, result.reconciled.high.end)
     if not np.isfinite(bound) or result.upper_one_sided.end == "failed":
         bound, open_ended = 1.0, True
-    bound = _projected_bound(wrapped, shifted, min(abs(bound), 1.0), level)
     return Effect(value, low, high, min(abs(bound), 1.0), label, open_ended)
-
-
-# how far beyond its plain bound an effect is looked for where other constants are in lockstep
-WIDER = (1.0, 1.1, 1.25, 1.5, 2.0, 3.0, 5.0, 10.0, 30.0, 100.0)
-
-
-def _projected_bound(wrapped: InEffect, shifted: Fit, bound: float, level: float) -> float:
-    """The bound of the size of an effect, where other constants are in lockstep with one another: the
-    next value that the projected test rejects as well."""
-    psi = wrapped.psi
-    problem, alpha = shifted.problem, 1.0 - level
-    if bound >= 1.0 or not weak_nuisance(problem, shifted.solution, psi).count:
-        return bound
-    outside = outside_level(alpha)
-    need = normal_quantile(1.0 - (alpha - outside))
-    curve = Curve.of(shifted, psi)
-    for factor in WIDER:
-        size = factor * max(bound, 1e-3)
-        if size >= 1.0:
-            break
-        rejected = True
-        for sign in (1.0, -1.0):
-            if wrapped.sign not in (0, int(sign)):
-                continue
-            pts = curve.at(np.array([float(t_of(sign * size))]))
-            weak = weak_nuisance(problem, pts.solution, psi)
-            every = pts.z
-            if weak.count:
-                every = projected(problem, pts.solution, psi, weak.constant, outside=outside)
-            rejected &= not (sign * every >= -need).any()
-        if rejected:
-            return size
-    return 1.0
 
 
 def detectable_effect(

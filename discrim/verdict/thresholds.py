@@ -10,8 +10,8 @@ ERROR_MARGIN = 1.5
 ASSUMED_SPREAD = 0.10
 # A sensitivity with less than this fraction outside lockstep is called conditioning, not noise.
 CONDITIONING_FRACTION = 0.10
-# Combinations of the other constants that the runs do not tell apart: the test allows for one.
-MOST_WEAK = 1
+# Combinations of the other constants that the runs do not tell apart: the test allows for three.
+MOST_WEAK = 3
 # A fraction below this is rounding of the arithmetic.
 NOTHING_APART = 1e-9
 # Fewer runs than constants plus this are called too few.
@@ -33,3 +33,14 @@ ALONE = 0.99
 # Cook's distance above which leaving one run out moves the constants out of the middle of their
 # confidence region (common practice: 1).
 MOVES_CONSTANTS = 1.0
+# Findings from the chemistry (common practice, no source): a catalyst above this share of what it
+# binds takes up a part of it that counts;
+CATALYST_SHARE = 0.10
+# a reaction this far on its way to equilibrium (Q/K) needs its reverse in the law;
+NEAR_EQUILIBRIUM = 0.10
+# a lowest amount above this fraction of the highest leaves a rate without the species extrapolated;
+FAR_FROM_ZERO = 0.20
+# a rate below this fraction of the median has next to no error if its error is relative only;
+NEXT_TO_NOTHING = 0.01
+# an activation energy to judge by what a temperature that varies can do (J/mol).
+TYPICAL_ACTIVATION = 50e3

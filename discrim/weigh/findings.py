@@ -11,6 +11,7 @@ from discrim.fit.fit import FitStatus
 from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
 from discrim.weigh.adequacy_said import adequacy_findings
+from discrim.weigh.chemistry import chemistry_findings
 from discrim.weigh.left_out import findings_left_out
 from discrim.weigh.magnitudes import magnitude_findings
 from discrim.weigh.variances import error_findings
@@ -56,6 +57,7 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
     out += _weak(w)
     out += adequacy_findings(w)
     out += magnitude_findings(w)
+    out += chemistry_findings(w)
     out += _columns(w)
     out += error_findings(w.bench)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
@@ -90,8 +92,8 @@ def _weak(w: Weighed) -> list[Finding]:
                     (
                         "note",
                         f"candidate “{w.laws[k.index].law.name}”",
-                        "some of its constants are in lockstep with one another: tests and bounds of "
-                        "effects allow for that, the two-sided intervals shown may be too short",
+                        "some of its constants are in lockstep with one another: tests and reconciled "
+                        "intervals allow for that, the others shown may be too short",
                     )
                 )
     return out

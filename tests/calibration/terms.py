@@ -13,7 +13,7 @@ import numpy as np
 import sympy
 
 from discrim.evidence.distributions import normal_quantile
-from discrim.evidence.projected import outside_level, projected, weak_nuisance
+from discrim.evidence.projected import outside_level, reach, weak_nuisance
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, solve
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
@@ -122,8 +122,8 @@ def run_weak(cell: WeakCell, studies: int, seed: int) -> tuple[float, float]:
         if not weak.count:
             false += z_plain[i] > normal_quantile(1 - ALPHA)
         elif z_plain[i] > need:
-            every = projected(one, at, 1, weak.constant, outside=outside)
-            false += not (every <= need).any()
+            found = reach(one, at, (1,), weak, lambda p, s: score(p, s, 1).z, outside=outside)
+            false += not (found.low[0] <= need)
     return float(np.mean(z_plain > normal_quantile(1 - ALPHA))), false / studies
 
 

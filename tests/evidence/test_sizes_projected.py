@@ -12,7 +12,7 @@ from dataclasses import replace
 import numpy as np
 from scipy import stats
 
-from discrim.evidence.projected import TOLD_APART, projected, weak_nuisance
+from discrim.evidence.projected import TOLD_APART, reach, weak_nuisance
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, Solution, solve
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
@@ -54,8 +54,8 @@ def test_the_projected_form_holds_its_level() -> None:
         one, at = Problem(problem.predictor, table), held.take(np.array([i]))
         weak = weak_nuisance(one, at, 1)
         assert weak.count == 1
-        every = projected(one, at, 1, weak.constant, outside=0.01)
-        false += not (every <= stats.norm.ppf(0.96)).any()
+        found = reach(one, at, (1,), weak, lambda p, s: score(p, s, 1).z, outside=0.01)
+        false += not (found.low[0] <= stats.norm.ppf(0.96))
     assert stats.binomtest(false, studies, 0.06, alternative="greater").pvalue > 0.001
 
 
