@@ -30,8 +30,8 @@ from discrim.fit.measurements import Measurements, Scale
 LOOKS = (100, 200, 400, 800, 1600)
 # chance, over all looks, that stopping early makes a decision other than that of endless drawing
 RISK = 1e-3
-# optima of drawn tables: Q to about 1e-8 of itself is more than a comparison of two Q needs
-COARSE = Options(max_iterations=40, gradient_tolerance=1e-5, step_tolerance=1e-6)
+# optima of drawn tables: Q to a millionth of itself is more than a comparison of two Q needs
+COARSE = Options(max_iterations=40, gradient_tolerance=1e-3, step_tolerance=1e-4)
 
 
 @dataclass(frozen=True, slots=True)

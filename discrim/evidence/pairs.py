@@ -35,10 +35,13 @@ from discrim.evidence.bootstrap import (
 from discrim.evidence.distributions import normal_quantile, normal_upper
 from discrim.evidence.mimic import mimicked, mimics
 from discrim.evidence.quadratic import weighted_chi2_upper
+from discrim.evidence.rivals import TOO_SHORT
 from discrim.fit.engine import Solution
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
 
+# criteria closer than this are a tie: nobody would act on the difference
+TIE = 0.01
 # with more laws than this only the best are drawn from and fitted again
 MOST = 8
 
@@ -61,7 +64,8 @@ class Vuong:
 @dataclass(frozen=True, slots=True)
 class Pair:
     """Candidates ``a`` and ``b``; ``as_truth`` the p-values with a, then b, taken for true, of the
-    statistics ``gains``."""
+    statistics ``gains``: 1 without a draw where the other law can mimic it so well that no data on
+    these runs would tell."""
 
     a: int
     b: int
@@ -167,6 +171,10 @@ def _drawn_from(
     null = fits[chosen[a]]
     data, width = null.data, len(chosen)
     observed, starts, alike = np.zeros(width), [], []
+    size = 1.0
+    if data.scale is Scale.ESTIMATED:
+        size = float(np.sqrt(null.scale2)) if null.scale2 > 0 else 1.0
+    compared = rivals.copy()  # less those that no data would separate from the null
     for b, j in enumerate(chosen):
         law = fits[j]
         near = mimics([null], law) if rivals[b] else law.theta[None]
@@ -176,6 +184,7 @@ def _drawn_from(
         starts.append(np.vstack([near, law.theta[None]]) if rivals[b] else law.theta[None])
         if rivals[b]:
             distance = _distance(null.solution, law, alike[b])
+            compared[b] = bool(distance[0] > (TOO_SHORT * size) ** 2)
             observed[b] = float(_gain(data, null.solution.objective, law.objective, distance)[0])
     tables_of = Tables(null, seed)
     hits, first, drawn = np.zeros(width, int), np.zeros(width), 0
@@ -186,20 +195,26 @@ def _drawn_from(
         q = np.empty((width, look - drawn))
         for b, j in enumerate(chosen):
             q[b] = own.objective if b == a else refitted(fits[j], tables, starts[b]).objective
-            if rivals[b]:
+            if compared[b]:
                 distance = _distance(own, fits[j], alike[b])
                 drawn_gain = _gain(data, own.objective, q[b], distance) / rescaled
                 hits[b] += int((~(drawn_gain < observed[b])).sum())
         with np.errstate(divide="ignore", invalid="ignore"):
             fitted = null.n * np.log(q) if data.scale is Scale.ESTIMATED else q / rescaled
         criterion = np.where(np.isfinite(fitted), fitted, np.inf) + penalty[:, None]
-        first += np.bincount(np.argmin(criterion, axis=0), minlength=width)
+        leads = criterion <= criterion.min(axis=0) + TIE
+        first += (leads / leads.sum(axis=0)).sum(axis=1)
         drawn = look
         clear = [settled(int(h), drawn, alpha, len(looks)) for h in hits]
-        if all(c or not r for c, r in zip(clear, rivals, strict=True)):
+        if all(c or not r for c, r in zip(clear, compared, strict=True)):
             break
     found = {
-        b: (of_counts(int(hits[b]), drawn, clear[b]), float(observed[b]))
+        b: (
+            of_counts(int(hits[b]), drawn, clear[b])
+            if compared[b]
+            else Simulated(1.0, 0.0, 0, True),
+            float(observed[b]),
+        )
         for b in range(width)
         if rivals[b]
     }

@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from discrim.report import knock_outs, read, tables
+from discrim.report import knock_outs, pairs, read, residuals, tables
 from discrim.report.cases import Case, groups
 from discrim.report.numbers import (
     as_number,
@@ -110,6 +110,7 @@ class Content:
     cautions: tuple[str, ...] = ()
     candidates: Table | None = None
     criteria: Table | None = None
+    residuals: Table | None = None
     laws: tuple[Law, ...] = ()
     conventions: tuple[str, ...] = ()  # those that hold for every law, said once
     lockstep: tuple[str, ...] = ()
@@ -127,6 +128,9 @@ class Content:
     references: tuple[tuple[str, str], ...] = ()
     provenance: tuple[tuple[str, str], ...] = ()
     level: str = "95 %"
+    reported: tuple[Table, ...] = ()  # quantities of the constants that the study asks for
+    pairs: Table | None = None  # rivals that stand, two at a time
+    first_places: Table | None = None
     knock_outs: tuple[Table, ...] = ()  # the laws of each mechanism with some of its pathways
 
 
@@ -148,6 +152,7 @@ def build(document: Document) -> Content:
         cautions=_cautions(document),
         candidates=tables.candidates(ordered),
         criteria=tables.criteria(ordered),
+        residuals=residuals.table(ordered),
         laws=laws,
         conventions=shared,
         lockstep=tuple(_lockstep(item) for item in read.records(runs, "lockstep")),
@@ -158,7 +163,10 @@ def build(document: Document) -> Content:
         runs=tables.runs(runs),
         conditioning=tables.conditioning(ordered),
         comparisons=tables.comparisons(read.records(document, "comparisons")),
+        pairs=pairs.pairs(read.records(document, "pairs")),
+        first_places=pairs.first_places(ordered),
         constants=tables.constants(ordered, level),
+        reported=tables.constants(ordered, level, key="reported"),
         assumed=_assumed(study),
         not_checked=tuple(read.texts(document, "not_checked") or read.texts(study, "not_checked")),
         findings=tuple(

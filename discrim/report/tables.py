@@ -125,7 +125,7 @@ def criteria(ordered: Sequence[Any]) -> Table | None:
             _fixed(read.value(c, "aic")),
             _fixed(read.value(c, "aicc")),
             _fixed(read.value(c, "bic")),
-            _weight(read.value(c, "weight")),
+            _weight(read.value(c, "weight")) + (", shared" if shared(c) else ""),
         ]
         for c in ordered
     ]
@@ -148,9 +148,20 @@ def criteria(ordered: Sequence[Any]) -> Table | None:
         heads,
         rows,
         note="Q is the weighted sum of squares with the errors of the conditions in it. AIC, AICc, "
-        "BIC and weights rank candidates on the same runs; they never reject one.",
+        "BIC and weights rank candidates on the same runs; they never reject one."
+        + (
+            " Candidates with one and the same law are weighed once: the weight is that of the law, and "
+            "“shared” between them."
+            if any(shared(c) for c in ordered)
+            else ""
+        ),
         marks=[outcome(c) for c in ordered],
     )
+
+
+def shared(c: Any) -> bool:
+    """Whether the weight of a candidate is that of a law that others have too."""
+    return bool(read.texts(c, "weight_shared_with"))
 
 
 def _rss(c: Any) -> float | None:
@@ -304,7 +315,7 @@ def comparisons(found: Sequence[Any]) -> Table | None:
                 test,
                 probability(read.value(c, "p_one_sided") or read.value(c, "p")),
                 probability(read.value(c, "p_reconciled")),
-                probability(read.value(c, "p_bootstrap")),
+                _bootstrap(c),
                 _brief(read.text(c, "p_note")),
             ]
         )
@@ -328,16 +339,26 @@ def comparisons(found: Sequence[Any]) -> Table | None:
     )
 
 
+def _bootstrap(c: Any) -> str:
+    """The p-value from drawn tables with its standard error."""
+    made = read.part(c, "bootstrap")
+    p, error = read.value(c, "p_bootstrap"), read.value(made, "error")
+    return probability(p) + (f" ± {number(error, 1)}" if p is not None and error else "")
+
+
 def _brief(remark: str) -> str:
     """Remarks that the note below the table makes for all rows are not repeated in each."""
     return "" if remark.startswith("on the edge") else remark
 
 
-def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
+def constants(
+    ordered: Sequence[Any], level: str = "95 %", *, key: str = "constants"
+) -> tuple[Table, ...]:
+    """The constants of each candidate with their intervals, or its ``reported`` quantities."""
     out = []
     for c in ordered:
         rows = []
-        for k in read.records(c, "constants"):
+        for k in read.records(c, key):
             found, ends = read.part(k, "intervals"), read.part(k, "interval_ends")
             notes = read.part(k, "interval_notes")
             value, error = read.value(k, "value"), read.value(k, "standard_error")
@@ -354,10 +375,10 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
                 for kind in KINDS
             ]
             remarks = [f"{kind}: {read.text(notes, kind)}" for kind in KINDS if kind in notes]
-            row.append("; ".join([w for w in [read.text(k, "meaning"), *remarks] if w]))
+            row.append("; ".join([w for w in [_meaning(k), *remarks] if w]))
             rows.append(row)
         heads = [
-            ("Constant", False),
+            ("Constant" if key == "constants" else "Quantity", False),
             ("Value", True),
             ("Standard error", True),
             ("Units", False),
@@ -368,6 +389,15 @@ def constants(ordered: Sequence[Any], level: str = "95 %") -> tuple[Table, ...]:
         if table:
             out.append(table)
     return tuple(out)
+
+
+def _meaning(k: Mapping[str, Any]) -> str:
+    """What a constant stands for; of a quantity its formula, its conditions, and why it has no value."""
+    at = read.part(k, "at")
+    where = ", ".join(f"{read.clean(name)} = {read.text(at, name)}" for name in at)
+    formula = read.text(k, "formula")
+    words = [read.text(k, "meaning"), formula + (f" at {where}" if where else "")]
+    return "; ".join(w for w in [*words, read.text(k, "note"), read.text(k, "reason")] if w)
 
 
 def _interval(kind: str, ends: Any, how: Any, power: int, note: str = "") -> str:

@@ -11,9 +11,9 @@ from typing import Any
 
 import numpy as np
 
-from discrim.fit.measurements import Scale
 from discrim.runs.model import ErrorBasis, Role
 from discrim.weigh.document_candidates import candidate_record, lockstep_keys
+from discrim.weigh.document_pairs import comparison_record, pair_records
 from discrim.weigh.document_questions import question_records
 from discrim.weigh.document_reported import reported_records
 from discrim.weigh.document_values import column_record, is_words, number
@@ -84,7 +84,8 @@ def _assembled(w: Weighed, candidates: list[dict[str, Any]]) -> dict[str, Any]:
         "runs": _runs(w),
         "responses": response_records(w.bench),
         "candidates": candidates,
-        "comparisons": [_comparison(w, k) for k in range(len(w.comparisons))],
+        "comparisons": [comparison_record(w, k) for k in range(len(w.comparisons))],
+        "pairs": pair_records(w),
         "relations": w.relations.records([c.law.name for c in w.laws]),
         "questions": question_records(w),
         "planes": planes(w),
@@ -173,41 +174,6 @@ def _lead(w: Weighed) -> int | None:
     """The candidate whose conditioning is shown first: best that stands, with most constants."""
     good = [i for i, s in enumerate(w.stands) if s] or list(range(len(w.laws)))
     return max(good, key=lambda i: (len(w.bounds[i].names), -w.rank[i])) if good else None
-
-
-def _comparison(w: Weighed, k: int) -> dict[str, Any]:
-    c = w.comparisons[k]
-    t = c.test
-    return {
-        "smaller": w.laws[c.smaller].law.name,
-        "larger": w.laws[c.larger].law.name,
-        "nested": True,
-        "edge": c.edge,
-        "restriction": c.words,
-        "F": None if t is None else number(t.statistic),
-        "df": None if t is None else list(t.df),
-        "p": None if t is None else number(t.p),
-        "p_one_sided": None if t is None else number(t.p_one_sided),
-        "p_reconciled": number(_reconciled_p(w, c.larger, c.smaller)),
-        "p_bootstrap": None,
-        "p_note": c.note,
-        "words": f"“{w.laws[c.smaller].law.name}” is “{w.laws[c.larger].law.name}” with {c.words}",
-    }
-
-
-def _reconciled_p(w: Weighed, larger: int, smaller: int) -> float | None:
-    """From the score of the smaller law in the direction of the larger one."""
-    from discrim.evidence.distributions import t_upper
-
-    zs = [abs(a.z) for a in w.standings[smaller].against if a.rival == larger]
-    if not zs:
-        return None
-    df = w.common.scale_df if w.common.scale is Scale.REPLICATES else 0
-    if w.common.scale is Scale.ESTIMATED:
-        df = w.assessments[smaller].fit.degrees_of_freedom - 1
-    z = max(zs)
-    single = 2 * float(t_upper(z, df if df > 0 else np.inf))
-    return float(min(1.0, single * len(zs)))
 
 
 def _not_checked(w: Weighed) -> list[str]:

@@ -18,6 +18,7 @@ from discrim.study.lookup import to_shown
 from discrim.weigh.adequacy_said import adequacy_record
 from discrim.weigh.derived import law_keys
 from discrim.weigh.document_knock_outs import knock_outs_record
+from discrim.weigh.document_pairs import share_keys
 from discrim.weigh.document_values import number, shown_units
 from discrim.weigh.magnitudes import magnitudes_record
 from discrim.weigh.run import Weighed
@@ -53,6 +54,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
             "bic": number(c.bic),
             "weight": number(w.weights[i]),
             "rank": w.rank[i],
+            **share_keys(w, i),
             "fit_p": number(a.fit_p),
             "lack_of_fit": None
             if a.lack_of_fit is None

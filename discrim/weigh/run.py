@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from discrim.errors import DiscrimError, Place
 from discrim.evidence.criteria import weights
-from discrim.evidence.rivals import INSEPARABLE, Standing, apart, standing
-from discrim.evidence.term import NestedF
-from discrim.evidence.term_tests import nested_f
+from discrim.evidence.pairs import Pairs
+from discrim.evidence.rivals import Standing, standing
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.fit.responses import Estimate
@@ -22,9 +21,16 @@ from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
 from discrim.weigh.adequacy import Adequacy, adequacies
 from discrim.weigh.asked import Answer, answer, check_questions
+from discrim.weigh.asked_constants import (
+    ASKED,
+    ConstantAnswer,
+    answer_constants,
+    check_constant_questions,
+)
 from discrim.weigh.assess import Assessment, assess, fits_of
 from discrim.weigh.bench import Bench, build
 from discrim.weigh.bind import Bound, bind
+from discrim.weigh.compared import Comparison, comparisons, inseparable, no_better, pairs_of
 from discrim.weigh.embedded import embedded
 from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
@@ -36,18 +42,8 @@ from discrim.weigh.variances import with_estimated_errors
 
 Progress = Callable[[str, int, int], None]
 
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Comparison:
-    """A proven special case against the larger law."""
-
-    smaller: int
-    larger: int
-    words: str
-    edge: bool
-    q: int
-    test: NestedF | None
-    note: str
+# how often the fits are made again because a profile went below one of them
+RESTARTS = 4
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -75,7 +71,10 @@ class Weighed:
     adequacy: tuple[Adequacy | None, ...] = ()
     magnitudes: tuple[tuple[Magnitude, ...], ...] = ()
     left_out: LeftOut | None = None
+    pairs: Pairs = field(default_factory=Pairs)
     reported: tuple[tuple[ReportedValue, ...], ...] = ()
+    # answers about constants, by the number of the question
+    of_constants: Mapping[int, ConstantAnswer] = field(default_factory=dict)
 
 
 def with_all_runs(study: Study, *, seed: int) -> Weighed | str | None:
@@ -124,6 +123,7 @@ def prepare(
                 "value =, or a constant in front of the law.",
             )
     check_reported(study, bench, laws, bounds)
+    check_constant_questions(study, bench, laws, bounds)
     return laws, bench, bounds
 
 
@@ -170,30 +170,42 @@ def _run(
     shared = _common_scale(fits, data)
     common_fits = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
     common = shared.as_origin(next(iter(fits[0])))
-    say("comparing rivals", 0, 1)
-    readings, stands = _standing(common_fits, related, alpha, seed)
-    assessments = []
-    for i, b in enumerate(bounds):
-        say("intervals", i, n)
-
-        def judged(i: int = i, b: Bound = b) -> Assessment:
-            return assess(
+    assessed: dict[int, Assessment] = {}
+    stands: list[bool] = []
+    for again in range(RESTARTS + 1):
+        say("comparing rivals", 0, 1)
+        readings, now = _standing(common_fits, related, alpha, seed)
+        for i, b in enumerate(bounds):
+            if i in assessed and now[i] == stands[i]:
+                continue
+            say("intervals", i, n)
+            assessed[i] = assess(
                 b,
                 bench,
                 fits[i],
                 level=level,
                 common=common,
                 common_fit=common_fits[i][0],
-                stands=stands[i],
+                stands=now[i],
             )
-
-        found = judged()
-        if found.below is not None:
-            # a profile went below the optimum: the starts had missed it
-            fits[i] = fits_of(b, data, seed=seed, near=found.below[None])
-            common_fits[i] = _on_common(b, fits[i], shared, data, seed)
-            found = judged()
-        assessments.append(found)
+        stands = now
+        # a profile that goes below the optimum: the starts had missed it
+        below = {i: a.below for i, a in assessed.items() if a.below is not None}
+        if not below or again == RESTARTS:
+            break
+        before = list(fits)
+        for i, theta in below.items():
+            new = fits_of(bounds[i], data, seed=seed, near=theta[None])
+            if any(f.badness < fits[i][origin].badness for origin, f in new.items()):
+                fits[i] = new
+        fits = _no_larger_law_worse(bounds, fits, related, study, seed)
+        for i, b in enumerate(bounds):
+            if fits[i] is not before[i]:
+                common_fits[i] = _on_common(b, fits[i], shared, data, seed)
+                del assessed[i]
+        if len(assessed) == n:
+            break
+    assessments = [assessed[i] for i in range(n)]
     in_use = [
         f.ok and not any((j, i) in related.same for j in range(i))
         for i, f in enumerate(a.fit for a in assessments)
@@ -204,9 +216,24 @@ def _run(
             w[j] = w[i]
     order = sorted(range(n), key=lambda i: (assessments[i].criteria.aic, i))
     rank = [order.index(i) + 1 for i in range(n)]
-    inseparable = _inseparable(common_fits, related, stands)
-    comparisons = _comparisons(bounds, fits, related)
-    no_better = _no_better(comparisons, related, stands, alpha)
+    known = {name: c.value for name, c in study.constants.items() if c.value is not None}
+    compared = comparisons(
+        bounds,
+        fits,
+        common_fits,
+        related,
+        readings[0],
+        stands,
+        known,
+        alpha=alpha,
+        seed=seed,
+        simulate=lattices,
+    )
+    two_at_a_time = Pairs()
+    if lattices:
+        say("drawing tables", 0, 1)
+        crit = [a.criteria for a in assessments]
+        two_at_a_time = pairs_of(common_fits, crit, related, stands, alpha=alpha, seed=seed)
     answers = []
     asked = [q for q in study.questions if q.asks == "participates"]
     for k, q in enumerate(asked):
@@ -248,18 +275,27 @@ def _run(
         tuple(stands),
         tuple(w),
         tuple(rank),
-        inseparable,
-        no_better,
-        tuple(comparisons),
+        inseparable(common_fits, related, stands),
+        no_better(compared, stands, alpha),
+        tuple(compared),
         tuple(answers),
         common,
         (),
         seed,
         without,
         left_out=singly,
+        pairs=two_at_a_time,
         adequacy=adequacies(bench, bounds, [a.fit for a in assessments], stands, seed),
     )
     weighed = replace(weighed, magnitudes=magnitudes(weighed))
+    weighed = replace(
+        weighed,
+        of_constants={
+            k: answer_constants(q, study, bench, laws, bounds, fits, stands, seed=seed)
+            for k, q in enumerate(study.questions)
+            if q.asks in ASKED
+        },
+    )
     if study.reported:
         say("quantities of the constants", 0, 1)
         every = zip(laws, bounds, assessments, stands, strict=True)
@@ -390,66 +426,3 @@ def _standing(
     for i, j in related.same:
         stands[i] = stands[j] = stands[i] or stands[j]
     return readings, stands
-
-
-def _inseparable(
-    common_fits: Sequence[Sequence[Fit]], related: Relations, stands: Sequence[bool]
-) -> tuple[tuple[int, ...], ...]:
-    """The same law, or laws that both stand and differ by less than the errors in every run."""
-    n = len(common_fits)
-    out: list[list[int]] = [[] for _ in range(n)]
-    for i in range(n):
-        for j in range(i + 1, n):
-            same = (i, j) in related.same
-            close = False
-            if stands[i] and stands[j] and not same:
-                a, b = common_fits[i][0], common_fits[j][0]
-                close = a.ok and b.ok and apart(a, b) < INSEPARABLE
-            if same or close:
-                out[i].append(j)
-                out[j].append(i)
-    return tuple(tuple(x) for x in out)
-
-
-def _comparisons(
-    bounds: Sequence[Bound], fits: Sequence[dict[str, Fit]], related: Relations
-) -> list[Comparison]:
-    out = []
-    for (larger, smaller), nesting in sorted(related.contains.items()):
-        big = next(iter(fits[larger].values()))
-        small = next(iter(fits[smaller].values()))
-        q = big.p - small.p
-        test = nested_f(big, small, edge=nesting.edge) if q >= 1 else None
-        note = ""
-        if nesting.vanish:
-            note = (
-                f"{', '.join(nesting.vanish)} vanish with it: the F reference does not hold here, "
-                "the p-value is only a guide"
-            )
-        elif nesting.edge and q > 1:
-            note = "several constants on the edge: the p-value is conservative"
-        elif nesting.edge:
-            note = "on the edge: one-sided p is half the two-sided"
-        if q < 1:
-            note = "not testable: the special case has as many constants"
-        elif test is None:
-            note = "not testable: no degrees of freedom left"
-        out.append(Comparison(smaller, larger, nesting.words(), nesting.edge, q, test, note))
-    return out
-
-
-def _no_better(
-    comparisons: Sequence[Comparison],
-    related: Relations,
-    stands: Sequence[bool],
-    alpha: float,
-) -> tuple[int | None, ...]:
-    """For each law that stands: a special case of it that stands and loses nothing."""
-    out: list[int | None] = [None] * len(stands)
-    for c in comparisons:
-        if c.q < 1 or not (stands[c.larger] and stands[c.smaller]):
-            continue
-        p = None if c.test is None else c.test.p_one_sided
-        if (p is None or p > alpha) and out[c.larger] is None:
-            out[c.larger] = c.smaller
-    return tuple(out)
