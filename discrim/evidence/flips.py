@@ -9,7 +9,7 @@ import numpy as np
 from discrim.evidence.curve import Curve
 from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile
 from discrim.evidence.effect import effect_of, t_of
-from discrim.evidence.guaranteed import flip_distance
+from discrim.evidence.flip_distance import flip_distance
 from discrim.evidence.intervals import guard_level
 from discrim.evidence.term import Kind, Term
 from discrim.evidence.term_effect import chosen_point, in_effect

@@ -56,29 +56,70 @@ def bounds_of(data: Measurements, alpha: float, scale2: float) -> Bounds:
     return Bounds(y, cond, sds == 0)
 
 
-def coefficient_range(
-    predictor: Predictor, data: Measurements, half: np.ndarray
-) -> tuple[np.ndarray, np.ndarray]:
-    """Smallest and largest coefficient of each constant within the condition bounds, (N, p) each.
+@dataclass(frozen=True, slots=True, eq=False)
+class Coefficients:
+    """What a law linear in its constants can be within the errors of the conditions.
 
-    Taken over the corners of the box of conditions: exact for coefficients monotone in each
-    condition, which products of powers of amounts are.
+    Attributes
+    ----------
+    low, high : shape (N, p) smallest and largest coefficient of each constant
+    rest_low, rest_high : shape (N,) of the part without a constant
+    monotone : False when a coefficient has an extreme inside the box of errors, which no corner shows
+    one_way : False when a condition moves two parts of one observation in opposite directions: no
+        single value of it then gives the ends of both
     """
+
+    low: np.ndarray
+    high: np.ndarray
+    rest_low: np.ndarray
+    rest_high: np.ndarray
+    monotone: bool
+    one_way: bool
+
+
+# of a slope, relative to the largest of its kind: below it its sign is rounding
+NO_SLOPE = 1e-9
+
+
+def corners(data: Measurements, half: np.ndarray) -> np.ndarray:
+    """The corners of the box of conditions, shape (2^k, N, m); amounts stay at or above zero."""
+    moving = [j for j in range(data.m) if half[:, j].any()]
+    signs = np.array(list(product((-1.0, 1.0), repeat=len(moving)))).reshape(2 ** len(moving), -1)
+    out = np.tile(data.conditions, (len(signs), 1, 1))
+    out[:, :, moving] += signs[:, None, :] * half[:, moving]
+    return np.where(data.conditions >= 0, np.maximum(out, 0.0), out)
+
+
+def coefficient_range(predictor: Predictor, data: Measurements, half: np.ndarray) -> Coefficients:
+    """Over the corners of the box of conditions: exact for coefficients monotone in each condition,
+    which products of powers of amounts are."""
     p = len(predictor.names)
-    theta = np.ones((1, p))
-    m = data.m
-    moving = [j for j in range(m) if half[:, j].any()]
-    low = np.full((data.n, p), np.inf)
-    high = np.full((data.n, p), -np.inf)
-    for signs in product((-1.0, 1.0), repeat=len(moving)):
-        c = data.conditions.copy()
-        for sign, j in zip(signs, moving, strict=True):
-            c[:, j] = np.maximum(c[:, j] + sign * half[:, j], 0.0)
-        g = predictor.predict(theta, c).by_constants
-        assert g is not None
-        low = np.minimum(low, g[0])
-        high = np.maximum(high, g[0])
-    return low, high
+    at = corners(data, half)
+    zero = np.zeros((len(at), p))
+    pred = predictor.predict(zero, at, conditions_too=True, both=True)
+    assert pred.by_constants is not None
+    assert pred.by_conditions is not None
+    assert pred.by_both is not None
+    g, rest = pred.by_constants, pred.values
+    moving = [j for j in range(data.m) if half[:, j].any()]
+    # slopes of all parts by the conditions that move, shape (S, N, k, p + 1)
+    slopes = np.concatenate([pred.by_both, pred.by_conditions[..., None]], axis=3)[:, :, moving]
+    sizes = np.abs(slopes).max(axis=(0, 1, 2), initial=0.0) if slopes.size else np.zeros(p + 1)
+    rises = np.asarray(slopes > NO_SLOPE * sizes).any(axis=0)
+    falls = np.asarray(slopes < -NO_SLOPE * sizes).any(axis=0)
+    return Coefficients(
+        g.min(axis=0),
+        g.max(axis=0),
+        rest.min(axis=0),
+        rest.max(axis=0),
+        bool(np.isfinite(g).all() and np.isfinite(slopes).all() and not (rises & falls).any()),
+        not bool((np.any(rises, axis=2) & np.any(falls, axis=2)).any()),
+    )
+
+
+def shared(data: Measurements) -> bool:
+    """Whether one error moves several observations: each is then given more room than there is."""
+    return any(len(np.unique(s.groups)) < data.n for s in data.sources)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -87,8 +128,8 @@ class Cleared:
 
     Attributes
     ----------
-    shapes : conditions (N, m) -> functions of the conditions in numerator (N, a) and denominator
-        (N, b), and the known numerator (N, 1) or (N, 0)
+    shapes : conditions (S, N, m) -> functions of the conditions in numerator (S, N, a) and
+        denominator (S, N, b), and the known numerator (S, N, 1) or (S, N, 0)
     power : of the denominator
     exponents : shape (a + b, p) of the constants in each coefficient; factor : shape (a + b,)
     """
@@ -99,6 +140,7 @@ class Cleared:
     factor: np.ndarray
 
 
+EXTREME = "not computed: a term has an extreme within the errors of a condition"
 WORST_CASE = "worst-case: errors given as standard deviations, all bounded together"
 
 
@@ -128,14 +170,32 @@ def guaranteed(
     if reason:
         return [nothing("guaranteed", reason) for _ in range(p)]
     half = bounds_of(data, alpha, scale2)
-    words = "" if half.hard else WORST_CASE
     y_low, y_high, twice = _observed_range(predictor, data, half)
+    outer = []
+    if not linear:
+        outer.append("by clearing the denominator")
+    if shared(data):
+        outer.append("errors shared by several runs are taken as separate ones")
     if twice:
-        outer = "outer bound: the rate was worked out from conditions that the law holds too"
-        words = f"{outer}; {words}" if words else outer
+        outer.append("the rate was worked out from conditions that the law holds too")
     if linear:
-        low, high = coefficient_range(predictor, data, half.conditions)
-        ends = _ends(low, y_high, high, y_low, predictor.lower, predictor.upper)
+        c = coefficient_range(predictor, data, half.conditions)
+        if not c.monotone:
+            return [nothing("guaranteed", EXTREME) for _ in range(p)]
+        if not c.one_way and not twice:
+            outer.append("a condition moves two terms in opposite directions")
+    words = "; ".join(
+        part
+        for part in (
+            f"outer bound, {', '.join(outer)}" if outer else "",
+            "" if half.hard else WORST_CASE,
+        )
+        if part
+    )
+    if linear:
+        # a formula of the conditions in place of a reading is in the rest already
+        most, least = data.y + half.y - c.rest_low, data.y - half.y - c.rest_high
+        ends = _ends(c.low, most, c.high, least, predictor.lower, predictor.upper)
         return [_interval(e, words) for e in ends]
     assert cleared is not None
     half = replace(half, y=np.maximum(y_high - data.y, data.y - y_low))
@@ -151,15 +211,10 @@ def _observed_range(
     here = None if formula is None else formula(data.conditions)
     if here is None:
         return data.y - half.y, data.y + half.y, False
-    low, high = here[0].copy(), here[0].copy()
-    moving = [j for j in range(data.m) if half.conditions[:, j].any()]
-    for signs in product((-1.0, 1.0), repeat=len(moving)):
-        c = data.conditions.copy()
-        for sign, j in zip(signs, moving, strict=True):
-            c[:, j] = np.maximum(c[:, j] + sign * half.conditions[:, j], 0.0)
-        with np.errstate(all="ignore"):
-            there = formula(c)[0]
-        low, high = np.fmin(low, there), np.fmax(high, there)
+    assert formula is not None
+    with np.errstate(all="ignore"):
+        there = np.concatenate([here, formula(corners(data, half.conditions))])
+    low, high = np.fmin.reduce(there), np.fmax.reduce(there)
     low, high = np.where(np.isnan(low), data.y, low), np.where(np.isnan(high), data.y, high)
     return low - half.y, high + half.y, True
 
@@ -204,13 +259,24 @@ def _ends(
                 ends.append(Side(value, BOUND if at else CROSSED))
             elif res.status == 3:
                 ends.append(Side(np.inf if sign < 0 else -np.inf, OPEN))
-            else:
-                ends.append(Side(float("nan"), FAILED))
+            else:  # no value at all, or (never seen) a program that could not be solved
+                ends.append(Side(float("nan"), FAILED if res.status == 2 else UNSOLVED))
         out.append((ends[0], ends[1]))
     return out
 
 
+# ends of what has no number: the linear program failed, or nothing bounds this constant by itself
+UNSOLVED, UNBOUNDED = "unsolved", "unbounded"
+_WHY = {
+    UNSOLVED: "not computed: the linear program could not be solved",
+    UNBOUNDED: "not computed: no product of the coefficients of the cleared law gives this constant",
+}
+
+
 def _interval(ends: End, words: str) -> Interval:
+    for e in ends:
+        if e.end in _WHY:
+            return nothing("guaranteed", _WHY[e.end])
     empty = any(e.end == FAILED for e in ends)
     note = words
     if empty:
@@ -223,6 +289,8 @@ def _from_cleared(
 ) -> list[Interval]:
     """(N/y)^(1/n) = D over the box of all errors; constants from the coefficients."""
     n = cleared.power
+    if _extreme_inside(cleared, data, half.conditions):
+        return [nothing("guaranteed", EXTREME) for _ in predictor.names]
     y_low, y_high = np.maximum(data.y - half.y, 0.0), data.y + half.y
     low_n, high_n, low_d, high_d, low_k, high_k = _shape_range(cleared, data, half.conditions)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -248,7 +316,6 @@ def _from_cleared(
     q = low.shape[1]
     at_least = np.where(use_high, 1.0, -1.0)
     ends = _ends(low, np.ones(data.n), high, at_least, np.zeros(q), np.full(q, np.inf))
-    note = "outer bound, by clearing the denominator" + (f"; {words}" if words else "")
     a = low_n.shape[1]
     # ends of the coefficients themselves, numeric factors taken off
     power = np.where(np.arange(q) < a, n, 1)
@@ -260,7 +327,7 @@ def _from_cleared(
         for k, e in enumerate(ends)
     ]
     return [
-        _interval(_constant_ends(j, cleared.exponents, coefficients), note)
+        _interval(_constant_ends(j, cleared.exponents, coefficients), words)
         for j in range(len(predictor.names))
     ]
 
@@ -268,17 +335,27 @@ def _from_cleared(
 def _shape_range(cleared: Cleared, data: Measurements, half: np.ndarray) -> tuple[np.ndarray, ...]:
     """Smallest and largest functions of the conditions over the corners of the box of errors:
     numerator, denominator, known numerator, each low then high."""
-    moving = [j for j in range(data.m) if half[:, j].any()]
-    corners = []
-    for signs in product((-1.0, 1.0), repeat=len(moving)):
-        c = data.conditions.copy()
-        for sign, j in zip(signs, moving, strict=True):
-            c[:, j] = np.maximum(c[:, j] + sign * half[:, j], 0.0)
-        corners.append(cleared.shapes(c))
     out = []
-    for part in zip(*corners, strict=True):
-        out += [np.min(part, axis=0), np.max(part, axis=0)]
+    for part in cleared.shapes(corners(data, half)):
+        out += [part.min(axis=0), part.max(axis=0)]
     return tuple(out)
+
+
+def _extreme_inside(cleared: Cleared, data: Measurements, half: np.ndarray) -> bool:
+    """Whether a function of the conditions has an extreme inside the box, which no corner shows."""
+    here = cleared.shapes(data.conditions[None])
+    for j in range(data.m):
+        if not half[:, j].any():
+            continue
+        one = np.zeros_like(half)
+        one[:, j] = half[:, j]
+        for middle, ends in zip(here, cleared.shapes(corners(data, one)), strict=True):
+            room = 1e-12 * np.abs(middle[0])
+            if (middle[0] > ends.max(axis=0) + room).any():
+                return True
+            if (middle[0] < ends.min(axis=0) - room).any():
+                return True
+    return False
 
 
 def _constant_ends(j: int, exponents: np.ndarray, coefficients: list[tuple[float, float]]) -> End:
@@ -289,7 +366,7 @@ def _constant_ends(j: int, exponents: np.ndarray, coefficients: list[tuple[float
     # the fewest coefficients that give the constant: exact where it is one alone
     w = _powers(exponents, target)
     if w is None:
-        return Side(float("nan"), FAILED), Side(float("nan"), FAILED)
+        return Side(float("nan"), UNBOUNDED), Side(float("nan"), UNBOUNDED)
     low, high = 1.0, 1.0
     for k, power in enumerate(w):
         if abs(power) < 1e-12:
@@ -323,100 +400,3 @@ def _powers(exponents: np.ndarray, target: np.ndarray) -> np.ndarray | None:
     if np.abs(w @ exponents - target).max() > 1e-9:
         return None
     return np.where(np.abs(w) < 1e-9, 0.0, w)
-
-
-def _usable(sensitivities: np.ndarray, width: np.ndarray) -> bool:
-    """False at a point with an infinite slope, as that of a square root at zero."""
-    return bool(np.isfinite(sensitivities).all() and np.isfinite(width).all())
-
-
-def flip_distance(
-    predictor: Predictor,
-    data: Measurements,
-    scale2: float,
-    theta: np.ndarray,
-    *,
-    fixed: np.ndarray,
-    rounds: int = 30,
-) -> float:
-    """Smallest m such that, each measurement moved by at most m stated errors, the law fits exactly.
-
-    min over theta of max_i |e_i| / (dy_i + sum_j |F_ij| dc_ij), by a sequence of linear programs
-    with a shrinking trust region. ``fixed``, shape (p,), holds constants (at their value in
-    ``theta``). Errors are the stated ones: an sd counts as one, a hard bound as one. Returns nan
-    when nothing is stated.
-    """
-    from scipy.optimize import linprog
-
-    n, _p = data.n, len(theta)
-    dy = np.zeros(n)
-    dc = np.zeros((n, data.m))
-    for s in data.sources:
-        if s.target == OBSERVATION:
-            dy += s.bound if s.bound is not None else s.sd(data.y)
-        else:
-            j = s.target
-            dc[:, j] += s.bound if s.bound is not None else s.sd(data.conditions[:, j])
-    if data.scale is Scale.ESTIMATED:
-        if not scale2 > 0:
-            return float("nan")
-        dy += np.sqrt(scale2)
-    free = np.flatnonzero(~fixed)
-    use_conditions = bool(dc.any())
-
-    def look(t: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-        pred = predictor.predict(t[None], data.conditions, conditions_too=use_conditions)
-        width = dy.copy()
-        if use_conditions:
-            assert pred.by_conditions is not None
-            width = width + (np.abs(pred.by_conditions[0]) * dc).sum(axis=1)
-        assert pred.by_constants is not None
-        return data.y - pred.values[0], pred.by_constants[0], width
-
-    def worst(e: np.ndarray, width: np.ndarray) -> float:
-        with np.errstate(divide="ignore", invalid="ignore"):
-            r = np.where(e == 0, 0.0, np.abs(e) / width)
-        return float(np.max(r)) if np.isfinite(r).all() else float("inf")
-
-    theta = theta.astype(float).copy()
-    e, g, width = look(theta)
-    best = worst(e, width)
-    if not np.isfinite(best) or not len(free) or not _usable(g, width):
-        return best
-    trust = 1.0
-    size = np.maximum(
-        np.abs(theta[free]), 1e-3 * np.where(predictor.scale[free] > 0, predictor.scale[free], 1.0)
-    )
-    for _ in range(rounds):
-        ok = width > 0
-        gw = g[ok][:, free] / width[ok, None] * size
-        ew = e[ok] / width[ok]
-        k = len(free)
-        a = np.vstack(
-            [np.hstack([-gw, -np.ones((len(ew), 1))]), np.hstack([gw, -np.ones((len(ew), 1))])]
-        )
-        b = np.concatenate([-ew, ew])
-        lo = np.maximum((predictor.lower[free] - theta[free]) / size, -trust)
-        hi = np.minimum((predictor.upper[free] - theta[free]) / size, trust)
-        box = [*zip(lo, np.maximum(hi, lo), strict=True), (0.0, None)]
-        res = linprog(np.r_[np.zeros(k), 1.0], A_ub=a, b_ub=b, bounds=box, method="highs")
-        if res.status != 0:
-            break
-        trial = theta.copy()
-        trial[free] = np.clip(
-            theta[free] + res.x[:k] * size, predictor.lower[free], predictor.upper[free]
-        )
-        e_t, g_t, w_t = look(trial)
-        new = worst(e_t, w_t)
-        if new < best and _usable(g_t, w_t):
-            gain = best - new
-            theta, e, g, width, best = trial, e_t, g_t, w_t, new
-            size = np.maximum(np.abs(theta[free]), 1e-3 * size)
-            trust = min(trust * 2.0, 1e3)
-            if gain <= 1e-6 * best + 1e-12:
-                break
-        else:
-            trust *= 0.25
-            if trust < 1e-6:
-                break
-    return best

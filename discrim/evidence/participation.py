@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from discrim.evidence.flips import error_margin, flip_to_effect, typical_flip
-from discrim.evidence.guaranteed import flip_distance
+from discrim.evidence.flip_distance import flip_distance
 from discrim.evidence.score import p_one_sided
 from discrim.evidence.term import Effect, Kind, Participation, Term
 from discrim.evidence.term_effect import detectable_effect, effect_with_interval

@@ -88,7 +88,7 @@ def test_range_holds_every_table_within_its_bounds():
     assert form is not None
 
     def shapes(c):
-        return c[:, :1], c[:, :1], np.zeros((len(c), 0))
+        return c[..., :1], c[..., :1], np.zeros((*c.shape[:2], 0))
 
     found = guaranteed(
         predictor, data, 0.05, 1.0, Cleared(shapes, form.power, form.exponents, form.factor)

@@ -14,7 +14,8 @@ import pytest
 from scipy import stats
 
 from discrim.evidence.effect import effect_of, t_of
-from discrim.evidence.guaranteed import flip_distance, guaranteed
+from discrim.evidence.flip_distance import flip_distance
+from discrim.evidence.guaranteed import guaranteed
 from discrim.evidence.participation import participation
 from discrim.evidence.term import Kind, Participation, Term
 from discrim.fit.fit import fit
