@@ -48,6 +48,7 @@ class InQuantity:
         self, inner: Predictor, quantity: Quantity, which: int, reference: np.ndarray
     ) -> None:
         self.inner, self.quantity, self.reference = inner, quantity, reference
+        self.which = which
         every = quantity.inverses
         self.chain = (every[which], *(i for k, i in enumerate(every) if k != which))
         self.psi = psi = self.chain[0].psi
@@ -167,19 +168,14 @@ class AlongQuantity(Curve):
 
     def __init__(self, fit: Fit, quantity: Quantity) -> None:
         self.fit, self.quantity = fit, quantity
-        which, turned = 0, _turned(fit, quantity, 0)
-        for k in range(1, len(quantity.inverses)):
-            if turned is not None:
-                break
-            which, turned = k, _turned(fit, quantity, k)
-        self.possible = turned is not None
-        if turned is None:
+        found = turned(fit, quantity)
+        self.possible = found is not None
+        if found is None:
             return
-        self.which, self.fit_in_it = which, turned
-        wrapped = turned.predictor
+        wrapped = found.predictor
         assert isinstance(wrapped, InQuantity)
-        self.wrapped = wrapped
-        super().__init__(turned.problem, turned.theta, wrapped.psi, turned.jacobian)
+        self.wrapped, self.fit_in_it, self.which = wrapped, found, wrapped.which
+        super().__init__(found.problem, found.theta, wrapped.psi, found.jacobian)
 
     def points(self, values: np.ndarray, sol: Solution) -> Points:
         pts = self._scored(values, sol)
@@ -273,8 +269,20 @@ class AlongQuantity(Curve):
         return problem, found, np.where(sound, problem.merit(found), np.inf), wrapped.psi
 
 
+def turned(fit: Fit, quantity: Quantity, *, only: int | None = None) -> Fit | None:
+    """The same optimum in terms of the quantity, the first constant replaced that it moves with there
+    (or constant ``only``); None where there is none."""
+    for k, inverse in enumerate(quantity.inverses):
+        if only not in (None, inverse.psi):
+            continue
+        found = _turned(fit, quantity, k)
+        if found is not None:
+            return found
+    return None
+
+
 def _turned(fit: Fit, quantity: Quantity, which: int) -> Fit | None:
-    """The same optimum with one constant replaced; None where the quantity does not move with it."""
+    """With one constant replaced; None where the quantity does not move with it."""
     wrapped = InQuantity(fit.predictor, quantity, which, fit.theta)
     _, g = quantity.with_gradient(fit.theta[None])
     slope = g[0, wrapped.psi]

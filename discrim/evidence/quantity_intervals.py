@@ -9,7 +9,7 @@ import numpy as np
 import sympy
 
 from discrim.evidence.delta import propagated
-from discrim.evidence.guaranteed import WORST_CASE, bounds_of, coefficient_range
+from discrim.evidence.guaranteed import bounds_of, coefficient_range
 from discrim.evidence.intervals import (
     BOUND,
     CROSSED,
@@ -119,18 +119,10 @@ def guaranteed_quantity(
     predictor = fit.predictor
     form = _quotient(quantity)
     if form is not None and bool(predictor.linear.all()):
-        reason = ""
-        if (predictor.lower < 0).any():
-            reason = "a constant may be negative"
-        elif fit.data.scale is Scale.ESTIMATED and not fit.scale2 > 0:
-            reason = "no error of the observations is stated or can be estimated"
-        elif (
-            sum(any(s.target == j for s in fit.data.of_conditions) for j in range(fit.data.m)) > 10
-        ):
-            reason = "too many conditions with errors"
-        if reason:
-            return nothing("guaranteed", f"not computed: {reason}")
-        return _by_programs(fit, form, alpha, quantity.nonnegative)
+        for one in constants:  # what stands against a range of one constant does so here
+            if not one.empty and FAILED in (one.low.end, one.high.end):
+                return one
+        return _by_programs(fit, form, alpha, quantity.nonnegative, constants)
     powers = _powers(quantity)
     if powers is None:
         return nothing(
@@ -163,15 +155,19 @@ def _quotient(quantity: Quantity) -> tuple[np.ndarray, np.ndarray] | None:
 
 
 def _by_programs(
-    fit: Fit, form: tuple[np.ndarray, np.ndarray], alpha: float, nonnegative: bool
+    fit: Fit,
+    form: tuple[np.ndarray, np.ndarray],
+    alpha: float,
+    nonnegative: bool,
+    constants: Sequence[Interval],
 ) -> Interval:
     from scipy.optimize import linprog
 
     predictor, data = fit.predictor, fit.data
     half = bounds_of(data, alpha, fit.scale2 if data.scale is Scale.ESTIMATED else 1.0)
-    low, high = coefficient_range(predictor, data, half.conditions)
-    a = np.vstack([low, -high])
-    b = np.concatenate([data.y + half.y, -(data.y - half.y)])
+    c = coefficient_range(predictor, data, half.conditions)
+    a = np.vstack([c.low, -c.high])
+    b = np.concatenate([data.y + half.y - c.rest_low, -(data.y - half.y - c.rest_high)])
     col = np.max(np.abs(a), axis=0)
     col = np.where(col > 0, col, 1.0)
     a = a / col
@@ -188,8 +184,8 @@ def _by_programs(
                 line[j], line[p] = sign, -sign * bound * col[j]
                 rows.append(line[None])
                 right.append(np.zeros(1))
-    top, bottom = (np.r_[c[:p] / col, c[p]] for c in form)
-    size = [max(float(np.abs(c).max()), 1e-300) for c in (top, bottom)]
+    top, bottom = (np.r_[x[:p] / col, x[p]] for x in form)
+    size = [max(float(np.abs(x).max()), 1e-300) for x in (top, bottom)]
     ends = []
     for sign in (1.0, -1.0):
         res = linprog(
@@ -209,13 +205,14 @@ def _by_programs(
             ends.append(Side(-sign * np.inf, OPEN))
         else:
             ends.append(Side(float("nan"), FAILED))
-    words = "" if half.hard else WORST_CASE
-    empty = any(e.end == FAILED for e in ends)
-    if empty:
-        words = "empty: no value fits every run within its bounds" + (
-            f" ({words})" if words else ""
-        )
-    return Interval("guaranteed", ends[0], ends[1], (), empty, words)
+    return Interval(
+        "guaranteed",
+        ends[0],
+        ends[1],
+        (),
+        FAILED in (ends[0].end, ends[1].end),
+        next((one.note for one in constants if one.note), ""),
+    )
 
 
 def _powers(quantity: Quantity) -> np.ndarray | None:

@@ -16,7 +16,7 @@ Every token knows its span, so every complaint points at characters.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import NoReturn
@@ -53,7 +53,11 @@ class _Node:
 
 
 def parse_expression(
-    text: str, place: Place, quantities: Mapping[str, sympy.Basic] | None = None
+    text: str,
+    place: Place,
+    quantities: Mapping[str, sympy.Basic] | None = None,
+    *,
+    grouped: Collection[str] = (),
 ) -> sympy.Expr:
     """The sympy expression that ``text`` stands for.
 
@@ -63,6 +67,7 @@ def parse_expression(
     place : where the text stands; if ``place.text`` holds ``text``, errors underline there
     quantities : what a name stands for that is no constant (``"pH"``), and, under a key in
         brackets (``"[A-]"``), an expression that takes the place of a species
+    grouped : constants with one value a group; ``k[lot 1]`` is then the constant of that name
 
     Returns
     -------
@@ -83,7 +88,7 @@ def parse_expression(
             do=f"An expression may have at most {MAX_LENGTH:,} characters.",
         )
     source = Source(text, place)
-    tree = _Parser(source).parse()
+    tree = _Parser(source, grouped).parse()
     _check_layers(tree, 0, source)
     orders: set[str] = set()
     _names_in_exponents(tree, False, orders)
@@ -100,8 +105,9 @@ def parse_expression(
 class _Parser:
     """Precedence climbing over the tokens; makes flat sums and products."""
 
-    def __init__(self, source: Source) -> None:
+    def __init__(self, source: Source, grouped: Collection[str] = ()) -> None:
         self.source = source
+        self.grouped = grouped
         self.tokens = tokens(source)
         self.at = 0
         self.depth = 0
@@ -218,6 +224,10 @@ class _Parser:
             return _Node(token.text, (inner,), token.start, self.tokens[self.at - 1].end)
         if opens:
             self.not_a_function(token)
+        if token.text in self.grouped and self.now.kind == "species":
+            group = self.take()
+            text = f"{token.text}[{group.text[1:-1].strip()}]"
+            return _Node("name", (), token.start, group.end, text)
         return _Node("name", (), token.start, token.end, token.text)
 
     def group(self, opening: Token) -> _Node:

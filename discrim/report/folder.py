@@ -22,7 +22,15 @@ from discrim.report.tables import KINDS
 
 EVIDENCE = "evidence.json"
 #: Names at the top of a results folder that are ours to replace.
-OURS = (EVIDENCE, "report.html", "candidates.csv", "constants.csv", "runs.csv", "figures")
+OURS = (
+    EVIDENCE,
+    "report.html",
+    "candidates.csv",
+    "constants.csv",
+    "quantities.csv",
+    "runs.csv",
+    "figures",
+)
 
 
 def write_report(document: Document, folder: str | os.PathLike[str]) -> Path:
@@ -157,6 +165,8 @@ def _fill(document: Document, folder: Path) -> None:
     _write_csv(folder / "candidates.csv", candidate_rows(document))
     _write_csv(folder / "constants.csv", constant_rows(document))
     _write_csv(folder / "runs.csv", run_rows(document))
+    if any(read.records(c, "reported") for c in read.records(document, "candidates")):
+        _write_csv(folder / "quantities.csv", constant_rows(document, "reported"))
 
 
 def _move_into_place(staged: Path, out: Path) -> None:
@@ -232,21 +242,26 @@ def candidate_rows(document: Document) -> list[list[Any]]:
     return [list(_CANDIDATE_KEYS), *([c.get(k) for k in _CANDIDATE_KEYS] for c in found)]
 
 
-def constant_rows(document: Document) -> list[list[Any]]:
-    """Rows of ``constants.csv``, the head first: both ends of each interval and how they ended."""
-    head = ["candidate", "constant", "units", "value", "standard_error", "at_bound"]
+def constant_rows(document: Document, key: str = "constants") -> list[list[Any]]:
+    """Rows of ``constants.csv``, the head first: both ends of each interval and how they ended.
+
+    With ``key`` "reported" those of ``quantities.csv``.
+    """
+    own = key == "constants"
+    head = ["candidate", "constant" if own else "quantity", "units", "value", "standard_error"]
+    head.append("at_bound" if own else "formula")
     for kind in KINDS:
         head += [f"{kind}_low", f"{kind}_low_end", f"{kind}_high", f"{kind}_high_end"]
-    rows: list[list[Any]] = [[*head, "meaning"]]
+    rows: list[list[Any]] = [[*head, "meaning" if own else "remark"]]
     for c in read.records(document, "candidates"):
-        for k in read.records(c, "constants"):
+        for k in read.records(c, key):
             row = [c.get("name"), *(k.get(key) for key in ("name", "units", "value"))]
-            row += [k.get("standard_error"), k.get("at_bound")]
+            row += [k.get("standard_error"), k.get("at_bound" if own else "formula")]
             for kind in KINDS:
                 ends = [*read.items(read.part(k, "intervals"), kind), None, None]
                 how = [*read.items(read.part(k, "interval_ends"), kind), None, None]
                 row += [ends[0], how[0], ends[1], how[1]]
-            rows.append([*row, k.get("meaning")])
+            rows.append([*row, k.get("meaning" if own else "reason")])
     return rows
 
 
@@ -268,9 +283,11 @@ def run_rows(document: Document) -> list[list[Any]]:
             first = next(iter(found.values()))
             head += [_with_units(f"predicted {of}", first), _with_units(f"residual {of}", first)]
             head.append(f"standardised residual {of}")
+            head += [_with_units(f"band {end} {of}", first) for end in ("low", "high")]
             for label, row in zip(labels, rows, strict=True):
                 f = found.get(read.clean(label), {})
                 row += [f.get("predicted"), f.get("residual"), f.get("standardised")]
+                row += [f.get("fit_low"), f.get("fit_high")]
     return [head, *rows]
 
 

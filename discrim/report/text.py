@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
 from discrim.report import read, tables
 from discrim.report.cases import Case
 from discrim.report.content import Answer, Content, Law, build, laws_of
-from discrim.report.numbers import factor, number
+from discrim.report.numbers import MISSING, factor, number
 from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
+from discrim.report.tables import Table
 from discrim.report.wrapping import wrap_latex
 
 #: Lines of a long formula that are printed, and where the rest is.
@@ -130,11 +132,33 @@ def _constants(paper: Paper, content: Content) -> None:
         paper.turned(table, drop=("Remark",))
     if len(shown) > 3:
         paper.say(f"Constants of {len(shown) - 3} more candidates are in the report.", indent=2)
+    for table in [t for t in content.reported if t.title in standing][:3]:
+        paper.heading(f"Quantities, {table.title}")
+        valued = _with_values(table)
+        paper.turned(valued, drop=("Remark",))
+        if valued.rows:
+            paper.blank()
+        paper.bullets([f"{row[0]}: {_formula_only(row[-1])}" for row in table.rows])
     if shown:
         paper.blank()
         paper.say(
             f"Intervals at {content.level}; the reconciled one carries the verdicts.", indent=2
         )
+
+
+def _formula_only(remark: str) -> str:
+    """A remark without what is said of single intervals."""
+    for kind in tables.KINDS:
+        remark = remark.partition(f"; {kind}: ")[0]
+    return remark
+
+
+def _with_values(table: Table) -> Table:
+    """Quantities that a candidate has; why it lacks others is said in the report."""
+    if "Value" not in table.heads:
+        return table
+    at = table.heads.index("Value")
+    return replace(table, rows=tuple(row for row in table.rows if row[at] not in ("", MISSING)))
 
 
 def laws(candidates: Sequence[Document], *, width: int = WIDTH, colour: bool = False) -> str:

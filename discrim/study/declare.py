@@ -53,7 +53,10 @@ def columns(root: Node, raw: RawTable) -> list[Declaration]:
             )
         unit = None
         if "units" in node.data:
-            unit = parse_unit(node.text("units"), node.place("units"))
+            written = node.text("units")
+            if role is Role.CONVERSION and written.strip() == "%":
+                written = "mol %"  # of what, there is no doubt
+            unit = parse_unit(written, node.place("units"))
         out.append(
             Declaration(
                 name,

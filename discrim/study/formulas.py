@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
@@ -42,9 +42,17 @@ class Names:
     undeclared: tuple[str, ...]
     observed: tuple[str, ...]
 
-    def parse(self, text: str, place: Place, more: Mapping[str, Any] | None = None) -> Any:
+    def parse(
+        self,
+        text: str,
+        place: Place,
+        more: Mapping[str, Any] | None = None,
+        *,
+        grouped: Collection[str] = (),
+    ) -> Any:
         """The expression; an undeclared or observed column in it is refused."""
-        expression = parse_expression(text, place, {**self.quantities, **(more or {})})
+        meaning = {**self.quantities, **(more or {})}
+        expression = parse_expression(text, place, meaning, grouped=grouped)
         for symbol in sorted(expression.free_symbols, key=str):
             if symbol.name in self.undeclared:
                 raise DiscrimError(

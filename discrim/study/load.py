@@ -113,7 +113,7 @@ def load(path: str | Path) -> Study:
         root.tables("candidates", "candidate"), names, derived, file.folder
     )
     _check_in_use(declared, derived, candidates, computed)
-    questions, not_answered = read_questions(
+    questions = read_questions(
         root.tables("questions", "question"), candidates, derived, declared, by_name
     )
     return Study(
@@ -135,7 +135,6 @@ def load(path: str | Path) -> Study:
             *findings(runs, declared),
             *other_values(runs, computed),
             *dependent,
-            *not_answered,
         ),
         computed=computed,
         reported=read_reported(

@@ -106,7 +106,8 @@ class ConstantSetting:
 class Question:
     """What the study asks. ``asks``: participates, stands, equal, constant, reversible.
 
-    ``matters_above`` as a fraction; ``at`` amounts by species in internal units.
+    ``matters_above`` as a fraction; ``at`` amounts by species in internal units. ``value`` is in the
+    units ``value_units`` that it was written in, ``value_text`` as it was written.
     """
 
     asks: str
@@ -116,6 +117,9 @@ class Question:
     names: tuple[str, ...] = ()
     value: float | None = None
     place: Place | None = None
+    value_units: ParsedUnit | None = None
+    value_text: str = ""
+    value_place: Place | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -15,7 +15,6 @@ from discrim.units import Unit, check_size, parse_quantity
 
 ASKS = ("participates", "stands", "equal", "constant", "reversible")
 KEYS = (*ASKS, "matters_above", "at", "value", "note")
-NOT_ANSWERED = ("equal", "constant", "reversible")
 
 
 def read_questions(
@@ -24,16 +23,13 @@ def read_questions(
     derived: Sequence[Derived],
     declared: Sequence[Declaration],
     units: Mapping[str, Unit],
-) -> tuple[tuple[Question, ...], tuple[str, ...]]:
-    """The questions, and findings on those that are read but not answered yet.
-
-    ``units`` are the internal units by name of column or condition.
-    """
+) -> tuple[Question, ...]:
+    """The questions; ``units`` are the internal units by name of column or condition."""
     known: set[str] = set()
     for candidate in candidates:
         known |= contents(candidate, derived)
-    out, findings = [], []
-    for number, node in enumerate(nodes, 1):
+    out = []
+    for node in nodes:
         node.check_keys(KEYS)
         asked = [key for key in ASKS if key in node.data]
         if len(asked) != 1:
@@ -43,13 +39,8 @@ def read_questions(
                 'For example participates = "B".',
                 key=True,
             )
-        question = _question(node, asked[0], candidates, known, declared, units)
-        out.append(question)
-        if question.asks in NOT_ANSWERED:
-            findings.append(
-                f'Question {number} ("{question.asks}") was read, but is not answered yet.'
-            )
-    return tuple(out), tuple(findings)
+        out.append(_question(node, asked[0], candidates, known, declared, units))
+    return tuple(out)
 
 
 def _question(
@@ -61,7 +52,7 @@ def _question(
     units: Mapping[str, Unit],
 ) -> Question:
     matters = _matters(node) if "matters_above" in node.data else None
-    at = _at(node, declared, units)
+    at = read_at(node, declared, units)
     place = node.place(asks)
     if "value" in node.data and asks != "constant":
         raise node.error('"value" belongs to the question "constant"', "", "value", key=True)
@@ -91,17 +82,57 @@ def _question(
         names = node.texts("equal")
         if len(names) < 2:
             raise node.error("two or more constants are needed", "", asks)
-        return Question(asks, ", ".join(names), matters, at, names, place=place)
+        if len(set(names)) < len(names):
+            raise node.error("a constant is named twice", "Name each once.", asks)
+        _no_conditions(node, asks)
+        return Question(asks, ", ".join(names), matters, names=names, place=place)
     if asks == "constant":
         about = node.needed("constant")
         if "value" not in node.data:
             raise node.error(
                 'the question "constant" needs a value', "Write value = 1, for example.", asks
             )
-        return Question(asks, about, matters, at, value=node.number("value"), place=place)
-    if not node.flag("reversible"):
-        raise node.error("write reversible = true, or take the question out", "", asks)
-    return Question(asks, "", matters, at, place=place)
+        _no_conditions(node, asks)
+        value = parse_quantity(node.quantity_text("value"), node.place("value"))
+        return Question(
+            asks,
+            about,
+            matters,
+            value=value.value,
+            place=place,
+            value_units=value.unit,
+            value_text=f"{value.number} {value.unit.text}".strip(),
+            value_place=node.place("value"),
+        )
+    return Question(asks, _reversed(node, candidates), matters, at, place=place)
+
+
+def _no_conditions(node: Node, asks: str) -> None:
+    if "at" in node.data:
+        raise node.error(
+            f'"at" does not belong to the question "{asks}"',
+            "A constant is the same at all conditions. Take it out.",
+            "at",
+            key=True,
+        )
+
+
+def _reversed(node: Node, candidates: Sequence[Candidate]) -> str:
+    """The step whose reverse is asked about, "" for the reaction as a whole."""
+    if not isinstance(node.data["reversible"], str):
+        if not node.flag("reversible"):
+            raise node.error("write reversible = true, or take the question out", "", "reversible")
+        return ""
+    about = node.needed("reversible")
+    steps = {s.name: s.reversible for c in candidates if c.mechanism for s in c.mechanism.steps}
+    both = sorted(name for name, reversible in steps.items() if reversible)
+    if about not in both:
+        says = f'there is no step "{about}"'
+        if about in steps:
+            says = f'the step "{about}" is written one way'
+        known = f"Steps written with <=>: {listed(both)}." if both else "No step has <=>."
+        raise node.error(says, f"{nearest(about, both)} {known}".lstrip(), "reversible")
+    return about
 
 
 _MATTERS = 'It is the size of an effect, between 0 and 100 % of the rate, for example "5 %".'
@@ -146,7 +177,9 @@ def _check_contained(
     raise node.error(f'no candidate contains "{about}"', do, key)
 
 
-def _at(node: Node, declared: Sequence[Declaration], units: Mapping[str, Unit]) -> dict[str, float]:
+def read_at(
+    node: Node, declared: Sequence[Declaration], units: Mapping[str, Unit]
+) -> dict[str, float]:
     """Conditions that the decision is about, in internal units.
 
     Species by their name, other conditions (a pH, a total) by the name of their column.

@@ -6,6 +6,13 @@ numbers and thresholds in the reasons. Every threshold that is an opinion stands
 
 from __future__ import annotations
 
+from discrim.verdict.constants import (
+    ConstantVerdict,
+    ValueFacts,
+    ValueReading,
+    judge_value,
+    vote_on_value,
+)
 from discrim.verdict.one_run import with_one_run
 from discrim.verdict.participation import (
     CandidateFacts,
@@ -36,12 +43,17 @@ __all__ = [
     "NOTHING_APART",
     "ONE_RUN_STOPS",
     "CandidateFacts",
+    "ConstantVerdict",
     "Outcome",
     "Reading",
     "StandIn",
+    "ValueFacts",
+    "ValueReading",
     "Verdict",
     "judge_participation",
+    "judge_value",
     "sentence_standing",
     "vote",
+    "vote_on_value",
     "with_one_run",
 ]

@@ -6,6 +6,7 @@ from typing import Any
 
 from discrim.verdict import sentence_standing
 from discrim.weigh.asked import Answer, InCandidate
+from discrim.weigh.document_constants import constants_record
 from discrim.weigh.document_values import distance, number
 from discrim.weigh.left_out import answer_keys, standing_keys, standing_sentences
 from discrim.weigh.run import Weighed
@@ -14,7 +15,7 @@ from discrim.weigh.run import Weighed
 def question_records(w: Weighed) -> list[dict[str, Any]]:
     out = []
     answers = iter(w.answers)
-    for q in w.study.questions:
+    for k, q in enumerate(w.study.questions):
         if q.asks == "participates":
             out.append(_participates(w, next(answers)))
         elif q.asks == "stands":
@@ -38,17 +39,7 @@ def question_records(w: Weighed) -> list[dict[str, Any]]:
                 }
             )
         else:
-            out.append(
-                {
-                    "asks": q.asks,
-                    "about": q.about or ", ".join(q.names),
-                    "verdict": "undecided",
-                    "sentence": f"Not answered: questions of the kind “{q.asks}” are read but cannot "
-                    "be answered yet.",
-                    "reasons": [],
-                    "why": [],
-                }
-            )
+            out.append(constants_record(w, w.of_constants[k]))
     return out
 
 
