@@ -366,7 +366,10 @@ def _replicates(
     """Integers, shape (N,), equal for runs at the same declared conditions."""
     rows: list[tuple[Any, ...]] = [() for _ in range(raw.n)]
     for d in declared:
-        if d.value is not None or not (d.role in CONDITIONS or d.role is Role.GROUP):
+        # a conversion comes out of a run: replicates need not agree in it
+        if d.value is not None or d.role is Role.CONVERSION:
+            continue
+        if not (d.role in CONDITIONS or d.role is Role.GROUP):
             continue
         if d.role is Role.GROUP:
             cells: Sequence[Any] = same_label(raw.column(d.name)).tolist()

@@ -24,6 +24,7 @@ CONDITIONS = frozenset(
         Role.INITIAL,
         Role.TOTAL_FLOW,
         Role.TIME,
+        Role.CONVERSION,
     }
 )
 # Conditions that stand in no rate law of their own, only in formulas that the study gives.

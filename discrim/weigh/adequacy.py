@@ -27,6 +27,8 @@ from discrim.weigh.bind import Bound
 
 # with more candidates only those that stand are looked at
 MOST = 40
+# readings that vary by less than ten times their error: a correlation of a tenth with it at most
+OWN_ERROR = 0.1
 TABLE_ORDER = "the order of the table"
 
 
@@ -137,7 +139,7 @@ def followed(bench: Bench) -> list[Followed]:
     out: list[Followed] = []
     seen: dict[tuple[Any, ...], int] = {}
     for c in bench.study.runs.columns:
-        if c.name in observed or not c.in_table:
+        if c.name in observed or not c.in_table or _moves_with_error(c, bench):
             continue
         one = _one(c, bench)
         if one is None:
@@ -157,6 +159,19 @@ def followed(bench: Bench) -> list[Followed]:
         seen[key] = len(out)
         out.append(one)
     return out
+
+
+def _moves_with_error(c: Column, bench: Bench) -> bool:
+    """Whether residuals follow the column by themselves: it comes out of the run, or what is read in
+    it is to a good part its own error, which is in the residual too."""
+    if c.role is Role.CONVERSION:
+        return True
+    x = c.values[bench.runs]
+    variance = np.zeros(len(x))
+    for e in c.errors:
+        if e.origin != "set":
+            variance += np.asarray(e.absolute)[bench.runs] ** 2 + (e.relative * x) ** 2
+    return bool(np.sqrt(variance.mean()) > OWN_ERROR * float(np.std(x)))
 
 
 def _one(c: Column, bench: Bench) -> Followed | None:

@@ -178,8 +178,8 @@ def _meaning(t: Trend, in_law: bool) -> str:
             "allows for it"
         )
     return (
-        "which is not in the law: what it stands for acts on the rate; a candidate that contains it "
-        "is missing, or it moves with the cause"
+        "which is not in the law: what it stands for acts on the rate, or moves with what does; a "
+        "candidate that contains it is missing (unless the column was worked out from the rate)"
     )
 
 

@@ -142,6 +142,8 @@ def _proxies(
     for col in study.runs.columns:
         if col.role in (Role.RATE_OF, Role.CONSUMPTION_OF, Role.K_OBS_OF, Role.RUN):
             continue
+        if col.role is Role.CONVERSION:
+            continue  # it comes out of a run: no cause of its rate
         if col.role is Role.SPECIES and col.about == about:
             continue
         x = col.values[bench.runs]
