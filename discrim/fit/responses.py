@@ -296,11 +296,13 @@ def _space(sol: Solution) -> np.ndarray:
 def _most_in_one(sol: Solution, unknown: Unknown) -> int:
     """The most constants, or combinations of them, that the predictions of one response depend on."""
     g = Whitener(sol.covariance).undone(sol.jacobian)[0]
+    whole = np.sqrt((g**2).sum(axis=0))
     most = 0
     for r in range(unknown.count):
         mine = g[unknown.response == r]
         norms = np.sqrt((mine**2).sum(axis=0))
-        usable = (norms > 0) & np.isfinite(norms)
+        # whitening and undoing it leaves rounding where there is nothing
+        usable = (norms > RANK * whole) & np.isfinite(norms)
         if usable.any():
             s = np.linalg.svd(mine[:, usable] / norms[usable], compute_uv=False)
             most = max(most, int((s > RANK * s[0]).sum()))
