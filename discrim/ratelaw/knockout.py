@@ -81,14 +81,14 @@ def knock_out(law: RateLaw, about: str, typical: float) -> KnockOut | None:
         return None
     for pathway in law.pathways:
         if pathway.name == about:
-            return _by_constants(law, about, _owned(law, about))
+            return by_constants(law, about, _owned(law, about))
     if about in law.steps:
         names = [
             c.name
             for c in law.constants
             if c.name in (f"k_{about}", f"k_rev_{about}", f"K_{about}")
         ]
-        return _by_constants(law, about, names) if names else None
+        return by_constants(law, about, names) if names else None
     return _species(law, about, typical)
 
 
@@ -101,7 +101,7 @@ def _owned(law: RateLaw, name: str) -> list[str]:
     ]
 
 
-def _by_constants(law: RateLaw, about: str, names: list[str]) -> KnockOut | None:
+def by_constants(law: RateLaw, about: str, names: list[str]) -> KnockOut | None:
     """Set the constants ``names`` to zero; one of them alone where that is enough."""
     if not names:
         return None
@@ -133,7 +133,7 @@ def _species(law: RateLaw, about: str, typical: float) -> KnockOut | None:
             for c in law.constants
             if c.symbol not in left and c.kind is not ConstantKind.ORDER
         ]
-        found = _by_constants(law, about, dropped)
+        found = by_constants(law, about, dropped)
         if found is not None and _same((found.rate, found.production), gone):
             return found
         # an order belongs to a term that vanishes with its rate constant

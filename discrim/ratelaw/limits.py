@@ -87,7 +87,7 @@ def apparent_orders(law: RateLaw) -> tuple[ApparentOrder, ...]:
     """
     ahead = _ahead(law)
     rate = law.rate if ahead is None else ahead
-    if _is_difference(rate):
+    if is_difference(rate):
         return ()
     out = []
     for species in law.species:
@@ -209,7 +209,8 @@ def _is_mixed(e: Any) -> bool:
     return bool(e.is_Add) and len({_minus(t) for t in e.args}) == 2
 
 
-def _is_difference(rate: Any) -> bool:
+def is_difference(rate: Any) -> bool:
+    """Whether something is subtracted anywhere in a law."""
     return any(_minus(t) or _has_difference(t) for t in sympy.Add.make_args(rate))
 
 

@@ -23,6 +23,7 @@ from discrim.verdict.participation import (
     judge_participation,
     vote,
 )
+from discrim.verdict.reverse import judge_reverse
 from discrim.verdict.rivals import sentence_standing
 from discrim.verdict.thresholds import (
     ASSUMED_SPREAD,
@@ -51,6 +52,7 @@ __all__ = [
     "ValueReading",
     "Verdict",
     "judge_participation",
+    "judge_reverse",
     "judge_value",
     "sentence_standing",
     "vote",

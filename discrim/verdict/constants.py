@@ -122,8 +122,9 @@ def judge_value(
 ) -> ConstantVerdict:
     """The verdict.
 
-    ``about``: "k_1 and k_2"; ``claim``, ``denial``: "k_1 and k_2 agree", "k_1 and k_2 differ"; ``question``: "k_1 and k_2 are
-    equal"; ``matters``: what matters in words, "" when the study does not say.
+    ``about``: "k_1 and k_2"; ``claim``, ``denial``: "k_1 and k_2 agree", "k_1 and k_2 differ";
+    ``question``: "k_1 and k_2 are equal"; ``matters``: what matters in words, "" when the
+    study does not say.
     """
     alpha = 1.0 - level
     votes: list[tuple[str, str]] = []

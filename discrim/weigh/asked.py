@@ -19,12 +19,24 @@ from discrim.ratelaw.lump import lump
 from discrim.ratelaw.model import RateLaw, amount
 from discrim.runs.model import ErrorBasis
 from discrim.study.model import Question, Study
-from discrim.verdict import CandidateFacts, Reading, StandIn, Verdict, judge_participation
+from discrim.verdict import (
+    CandidateFacts,
+    Reading,
+    StandIn,
+    Verdict,
+    judge_participation,
+    judge_reverse,
+    vote,
+)
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.effects import knocked_out, named_conditions
 from discrim.weigh.laws import CandidateLaw
+from discrim.weigh.reversed import check_reversible, reverse_in, reverse_words
 from discrim.weigh.stand_ins import bind_law, stand_ins, symbol_of
+
+# questions about a part of the law, answered by taking it out
+TAKEN_OUT = ("participates", "reversible")
 
 _KIND = {
     KnockOutKind.ZERO: Kind.ZERO,
@@ -70,6 +82,7 @@ class Answer:
 
 def check_questions(study: Study, laws: Sequence[CandidateLaw]) -> None:
     """Raise for a question about something that no candidate contains."""
+    check_reversible(study, laws)
     for q in study.questions:
         if q.asks != "participates":
             continue
@@ -102,11 +115,13 @@ def answer(
 ) -> Answer:
     """One participation question; without ``flips`` no flip distances, which no verdict needs."""
     level = study.level
-    about = question.about
+    about = reverse_words(question) if question.asks == "reversible" else question.about
     is_pathway = any(about == p.name for c in laws for p in c.law.pathways) or any(
         about in c.law.steps for c in laws
     )
     what = "pathway" if is_pathway and amount(about) not in _all_symbols(laws) else "species"
+    if question.asks == "reversible":
+        what = "reverse"
     per: list[InCandidate] = []
     for i, c in enumerate(laws):
         per.append(
@@ -123,12 +138,12 @@ def answer(
                 flips=flips,
             )
         )
-    tried = (
-        stand_ins(about, study, bench, laws, bounds, fits, per, stands, seed)
-        if what == "species"
-        else []
-    )
     facts = [_facts(study, bench, laws[k.index], k, stands[k.index]) for k in per]
+    tried = []
+    if what == "species":
+        votes = {vote(c, 1.0 - level, question.matters_above)[0] for c in facts if c.stands}
+        every = votes == {"participates"}
+        tried = stand_ins(about, study, bench, laws, fits, per, stands, seed, every=every)
     detect = [
         p.detectable
         for k in per
@@ -154,6 +169,8 @@ def answer(
 
 
 def _judged(about: str, facts: Sequence[CandidateFacts], **rest: Any) -> Verdict:
+    if rest["what"] == "reverse":
+        return judge_reverse(about, facts, **{**rest, "what": "species"})
     return judge_participation(about, candidates=facts, **rest)
 
 
@@ -180,15 +197,14 @@ def _in_candidate(
     brief: bool,
     flips: bool,
 ) -> InCandidate:
-    ko = knock_out(c.law, question.about, bench.typical(question.about))
-    if ko is None:
+    if question.asks == "reversible":
+        c, bound, fits, ko, inside, note = reverse_in(question, study, bench, c, bound, fits, seed)
+    else:
+        ko = knock_out(c.law, question.about, bench.typical(question.about))
         inside = contains(c.law, question.about)
-        note = (
-            f"“{c.law.name}”: the step {question.about} cannot be taken out of its law"
-            if inside
-            else ""
-        )
-        return InCandidate(index, inside, None, {}, None, note)
+        note = f"“{c.law.name}”: the step {question.about} cannot be taken out of its law"
+    if ko is None:
+        return InCandidate(index, inside, None, {}, None, note if inside else "")
     if not all(f.ok for f in fits.values()):
         return InCandidate(
             index, True, ko, {}, None, f"“{c.law.name}”: the fit failed, so it cannot be tested"

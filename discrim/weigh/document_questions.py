@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from discrim.verdict import sentence_standing
-from discrim.weigh.asked import Answer, InCandidate
+from discrim.weigh.asked import TAKEN_OUT, Answer, InCandidate
 from discrim.weigh.document_constants import constants_record
 from discrim.weigh.document_values import distance, number
 from discrim.weigh.left_out import answer_keys, standing_keys, standing_sentences
@@ -16,7 +16,7 @@ def question_records(w: Weighed) -> list[dict[str, Any]]:
     out = []
     answers = iter(w.answers)
     for k, q in enumerate(w.study.questions):
-        if q.asks == "participates":
+        if q.asks in TAKEN_OUT:
             out.append(_participates(w, next(answers)))
         elif q.asks == "stands":
             names = [c.law.name for c in w.laws]
@@ -156,7 +156,7 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
         detectable = number(max((r.detectable for r in readings), default=float("nan")))
     flip_shown = matters if v.outcome == "negligible" else flip
     return {
-        "asks": "participates",
+        "asks": q.asks,
         "about": q.about,
         "what": a.what,
         "verdict": v.outcome,

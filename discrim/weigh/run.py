@@ -20,7 +20,7 @@ from discrim.runs.model import Role
 from discrim.study.lookup import check_measured, unused_constants
 from discrim.study.model import Study
 from discrim.weigh.adequacy import Adequacy, adequacies
-from discrim.weigh.asked import Answer, answer, check_questions
+from discrim.weigh.asked import TAKEN_OUT, Answer, answer, check_questions
 from discrim.weigh.asked_constants import (
     ASKED,
     ConstantAnswer,
@@ -235,7 +235,7 @@ def _run(
         crit = [a.criteria for a in assessments]
         two_at_a_time = pairs_of(common_fits, crit, related, stands, alpha=alpha, seed=seed)
     answers = []
-    asked = [q for q in study.questions if q.asks == "participates"]
+    asked = [q for q in study.questions if q.asks in TAKEN_OUT]
     for k, q in enumerate(asked):
         say("answering", k, len(asked))
         answers.append(answer(q, study, bench, laws, bounds, fits, stands, seed=seed))
@@ -335,7 +335,7 @@ def _without_run(
     shared = _common_scale(again, data)
     common = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, again, strict=True)]
     _, stands = _standing(common, related, 1.0 - study.level, seed)
-    asked = [q for q in study.questions if q.asks == "participates"]
+    asked = [q for q in study.questions if q.asks in TAKEN_OUT]
     answers = [
         answer(q, study, bench, laws, bounds, again, stands, seed=seed, flips=False) for q in asked
     ]
