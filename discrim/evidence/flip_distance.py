@@ -38,12 +38,17 @@ def flip_distance(
     n, _p = data.n, len(theta)
     dy = np.zeros(n)
     dc = np.zeros((n, data.m))
+    variance = np.zeros(n)  # the independent parts of one observation are one error of it
     for s in data.sources:
         if s.target == OBSERVATION:
-            dy += s.bound if s.bound is not None else s.sd(data.y)
+            if s.bound is None:
+                variance += s.sd(data.y) ** 2
+            else:
+                dy += s.bound
         else:
             j = s.target
             dc[:, j] += s.bound if s.bound is not None else s.sd(data.conditions[:, j])
+    dy += np.sqrt(variance)
     if data.scale is Scale.ESTIMATED:
         if not scale2 > 0:
             return float("nan")

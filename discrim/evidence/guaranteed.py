@@ -37,17 +37,28 @@ def bounds_of(data: Measurements, alpha: float, scale2: float) -> Bounds:
     """Half-widths of the errors, sds widened so that all M of them hold together at 1 - alpha."""
     n, m = data.n, data.m
     sds = 0
+    parts = [s for s in data.of_observations if s.bound is None]
+    live = [(s.absolute != 0) | (s.relative != 0) for s in parts]
+    # several parts of one observation are bounded as the one error that they make, whatever they share
+    joined = bool(live) and int(np.sum(live, axis=0).max()) > 1
+    if joined:
+        sds += int(np.any(live, axis=0).sum())
     for s in data.sources:
-        if s.bound is None:
-            sds += len(np.unique(s.groups))
+        if s.bound is None and not (joined and s.target == OBSERVATION):
+            sds += len(np.unique(s.groups[(s.absolute != 0) | (s.relative != 0)]))
     if data.scale is Scale.ESTIMATED:
         sds += n
     k = normal_quantile(1.0 - alpha / (2 * max(sds, 1)))
     y = np.zeros(n)
     cond = np.zeros((n, m))
+    if joined:
+        y += k * np.sqrt(np.sum([s.sd(data.y) ** 2 for s in parts], axis=0))
     for s in data.sources:
         if s.target == OBSERVATION:
-            y += s.bound if s.bound is not None else k * s.sd(data.y)
+            if s.bound is not None:
+                y += s.bound
+            elif not joined:
+                y += k * s.sd(data.y)
         else:
             half = s.bound if s.bound is not None else k * s.sd(data.conditions[:, s.target])
             cond[:, s.target] += half

@@ -104,11 +104,12 @@ def response_records(bench: Bench) -> list[dict[str, Any]]:
             "covariance": None,
             "correlation": None,
             "enlarged": None,
-            "candidate": bench.errors_from,
+            "candidate": "",
         }
         errors, unknown = bench.errors, bench.unknown
         if errors is not None and unknown is not None and unknown.open[r]:
             m = errors.matrix
+            record["candidate"] = bench.errors_from
             record["variance"] = number(m[r, r] * factors[r] ** 2)
             record["sd"] = number(np.sqrt(m[r, r]) * factors[r])
             record["df"] = number(errors.df[r])
