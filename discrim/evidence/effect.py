@@ -91,6 +91,9 @@ class InEffect:
                     up = (target - f) / slope
                     down = (1.0 / target - 1.0 / f) * (-(f**2) / slope)
                     step = np.where(t >= 0, up, down)
+                    # what is subtracted is linear too: there the other step runs past f = 0
+                    past = self._value(out, psi, step) <= 0
+                    step = np.where(past & (t < 0), up, step)
                     step = np.where(np.isfinite(step), step, 0.0)
                     new = np.maximum(out[:, psi] + step, 0.0)
                     moved = np.abs(new - out[:, psi]) > 1e-13 * np.abs(new)
@@ -104,6 +107,14 @@ class InEffect:
             row = -(g - ratio[:, None] * g0) / slope[:, None]
             row[:, psi] = target / slope
         return out, np.where(np.isfinite(row), row, 0.0)
+
+    def _value(self, inner: np.ndarray, psi: int, step: np.ndarray) -> np.ndarray:
+        """f where psi is moved by ``step``."""
+        if not (step != 0).any() or self.sign > 0:
+            return np.ones(len(inner))
+        moved = inner.copy()
+        moved[:, psi] += np.where(np.isfinite(step), step, 0.0)
+        return self.knocked.rates(moved, self.condition[None])[0][:, 0]
 
     def from_inner(self, theta: np.ndarray) -> np.ndarray:
         """The other way, shape (S, p)."""

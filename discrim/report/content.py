@@ -306,7 +306,10 @@ def _asks(question: Document) -> str:
     if asks == "equal":
         return f"Are {listed(names) or about} equal?"
     if asks == "constant":
-        return f"Is {about} equal to {number(read.value(question, 'value'))}?"
+        value = read.text(question, "value_text") or number(read.value(question, "value"))
+        return f"Is {about} equal to {value}?"
+    if asks == "reversible" and about:
+        return f"Does the reverse of {about} show within these runs?"
     if asks == "reversible":
         return "Is the reaction reversible within these runs?"
     return f"{asks or 'Question'} {about}".strip()

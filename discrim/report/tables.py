@@ -484,6 +484,9 @@ def _by_candidate(question: Mapping[str, Any]) -> Table | None:
         shown = MISSING
         if len(effect) == 2:
             shown = f"{percent(effect[0])} to {percent(effect[1])}"
+        measures = read.records(c, "measures")
+        if measures:
+            shown = "; ".join(_measure(m) for m in measures)
         rows.append(
             [
                 read.text(c, "candidate"),
@@ -499,10 +502,17 @@ def _by_candidate(question: Mapping[str, Any]) -> Table | None:
         ("Outcome", False),
         ("Contains it", False),
         ("p", True),
-        ("Effect", True),
+        ("Effect" if read.part(question, "effect") else "Estimate", True),
         ("Speaks for", False),
     ]
     return make("Candidate by candidate", heads, rows)
+
+
+def _measure(m: Mapping[str, Any]) -> str:
+    """``k_1 / k_2 2.59 (2.40 to 2.80)``."""
+    ends = [read.value(m, "value"), *read.numbers(m, "interval")]
+    shown, units = interval(ends[1], ends[2], read.items(m, "ends")), read.text(m, "units")
+    return f"{read.text(m, 'name')} {number(ends[0], 4)} ({shown})" + (f" {units}" if units else "")
 
 
 def _stand_ins(question: Mapping[str, Any]) -> Table | None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import partial
 from typing import Any
 
@@ -32,7 +32,7 @@ from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.effects import knocked_out, named_conditions
 from discrim.weigh.laws import CandidateLaw
-from discrim.weigh.reversed import check_reversible, reverse_in, reverse_words
+from discrim.weigh.reversed import check_reversible, known_effect, reverse_in, reverse_words
 from discrim.weigh.stand_ins import bind_law, stand_ins, symbol_of
 
 # questions about a part of the law, answered by taking it out
@@ -243,6 +243,10 @@ def _in_candidate(
             brief=brief,
             flips=flips,
         )
+        if question.asks == "reversible" and term.kind is Kind.FACTOR:
+            effect = known_effect(question, study, bench, c, bound, ko, full.theta)
+            if effect is not None:
+                by_origin[origin] = replace(by_origin[origin], effect=effect)
         without[origin] = small
     return InCandidate(index, True, ko, by_origin, reduced, "", term, without)
 
@@ -307,7 +311,10 @@ def _facts(
         tuple(readings),
         exact,
         tuple(_assumed(study, c, k)),
-        k.knock_out is not None and k.knock_out.kind is KnockOutKind.FACTOR,
+        # of a factor no bound is known, but for a reverse reaction whose equilibrium is given
+        k.knock_out is not None
+        and k.knock_out.kind is KnockOutKind.FACTOR
+        and not all(r.bound < 1.0 for r in readings),
         untestable,
     )
 

@@ -5,15 +5,18 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 import numpy as np
+import sympy
 
 from discrim.errors import DiscrimError
+from discrim.evidence.term import Effect
 from discrim.fit.fit import Fit
 from discrim.ratelaw.knockout import KnockOut
 from discrim.ratelaw.reverse import reverse_of
 from discrim.study.model import Question, Study
 from discrim.weigh.assess import fits_of
-from discrim.weigh.bench import Bench
+from discrim.weigh.bench import Bench, fixed_put_in, put_in
 from discrim.weigh.bind import Bound, bind
+from discrim.weigh.effects import knocked_out
 from discrim.weigh.laws import CandidateLaw, observed
 
 Taken = tuple[CandidateLaw, Bound, Mapping[str, Fit], KnockOut | None, bool, str]
@@ -72,6 +75,29 @@ def reverse_in(
         True,
         "",
     )
+
+
+def known_effect(
+    question: Question,
+    study: Study,
+    bench: Bench,
+    c: CandidateLaw,
+    bound: Bound,
+    ko: KnockOut,
+    theta: np.ndarray,
+) -> Effect | None:
+    """The effect of a reverse reaction whose equilibrium constant is given, Q/K, the largest over the
+    named conditions; None where it depends on constants that these runs estimate."""
+    share = fixed_put_in(put_in(sympy.cancel(c.law.rate / ko.rate), study), study)
+    if share.free_symbols & {k.symbol for k in bound.constants}:
+        return None
+    knocked, points, labels = knocked_out(question, study, bench, c, bound, ko, theta, ())
+    e = knocked.effect(theta[None], points)[0]
+    if not np.isfinite(e).any():
+        return None
+    k = int(np.nanargmax(np.abs(e)))
+    value = float(e[k])
+    return Effect(value, value, value, abs(value), labels[k], False)
 
 
 def _inverted(
