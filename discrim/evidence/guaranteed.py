@@ -33,17 +33,26 @@ class Bounds:
     hard: bool
 
 
-def bounds_of(data: Measurements, alpha: float, scale2: float) -> Bounds:
-    """Half-widths of the errors, sds widened so that all M of them hold together at 1 - alpha."""
+def bounds_of(
+    data: Measurements, alpha: float, scale2: float, in_law: np.ndarray | None = None
+) -> Bounds:
+    """Half-widths of the errors, sds widened so that all M of them hold together at 1 - alpha.
+
+    ``in_law``: shape (m,) False for conditions that the law does not hold (`in_law`); their errors are
+    no part of it. All count when None.
+    """
     n, m = data.n, data.m
     sds = 0
+    every = [
+        s for s in data.sources if s.target == OBSERVATION or in_law is None or in_law[s.target]
+    ]
     parts = [s for s in data.of_observations if s.bound is None]
     live = [(s.absolute != 0) | (s.relative != 0) for s in parts]
     # several parts of one observation are bounded as the one error that they make, whatever they share
     joined = bool(live) and int(np.sum(live, axis=0).max()) > 1
     if joined:
         sds += int(np.any(live, axis=0).sum())
-    for s in data.sources:
+    for s in every:
         if s.bound is None and not (joined and s.target == OBSERVATION):
             sds += len(np.unique(s.groups[(s.absolute != 0) | (s.relative != 0)]))
     if data.scale is Scale.ESTIMATED:
@@ -53,7 +62,7 @@ def bounds_of(data: Measurements, alpha: float, scale2: float) -> Bounds:
     cond = np.zeros((n, m))
     if joined:
         y += k * np.sqrt(np.sum([s.sd(data.y) ** 2 for s in parts], axis=0))
-    for s in data.sources:
+    for s in every:
         if s.target == OBSERVATION:
             if s.bound is not None:
                 y += s.bound
@@ -128,9 +137,23 @@ def coefficient_range(predictor: Predictor, data: Measurements, half: np.ndarray
     )
 
 
-def shared(data: Measurements) -> bool:
+def in_law(predictor: Predictor, data: Measurements) -> np.ndarray:
+    """Which conditions the observations depend on, shape (m,)."""
+    at = np.stack([data.conditions, 1.01 * data.conditions + 0.01])
+    theta = np.tile(np.where(predictor.scale > 0, predictor.scale, 1.0), (2, 1))
+    with np.errstate(all="ignore"):
+        slopes = predictor.predict(theta, at, conditions_too=True).by_conditions
+    assert slopes is not None
+    return np.asarray(np.any(slopes != 0, axis=(0, 1)))
+
+
+def _shared(data: Measurements, held: np.ndarray) -> bool:
     """Whether one error moves several observations: each is then given more room than there is."""
-    return any(len(np.unique(s.groups)) < data.n for s in data.sources)
+    return any(
+        len(np.unique(s.groups)) < data.n
+        for s in data.sources
+        if s.target == OBSERVATION or held[s.target]
+    )
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -169,6 +192,8 @@ def guaranteed(
     """
     p = len(predictor.names)
     linear = bool(predictor.linear.all())
+    held = in_law(predictor, data)
+    moving = {s.target for s in data.of_conditions if held[s.target]}
     reason = ""
     if not linear and cleared is None:
         reason = "not computed: the law is not linear in its constants"
@@ -176,16 +201,16 @@ def guaranteed(
         reason = "not computed: a constant may be negative"
     elif data.scale is Scale.ESTIMATED and not scale2 > 0:
         reason = "not computed: no error of the observations is stated or can be estimated"
-    elif sum(1 for j in range(data.m) if any(s.target == j for s in data.of_conditions)) > 10:
+    elif len(moving) > 10:
         reason = "not computed: too many conditions with errors"
     if reason:
         return [nothing("guaranteed", reason) for _ in range(p)]
-    half = bounds_of(data, alpha, scale2)
+    half = bounds_of(data, alpha, scale2, held)
     y_low, y_high, twice = _observed_range(predictor, data, half)
     outer = []
     if not linear:
         outer.append("by clearing the denominator")
-    if shared(data):
+    if _shared(data, held):
         outer.append("errors shared by several runs are taken as separate ones")
     if twice:
         outer.append("the rate was worked out from conditions that the law holds too")

@@ -9,7 +9,7 @@ import numpy as np
 import sympy
 
 from discrim.evidence.delta import propagated
-from discrim.evidence.guaranteed import bounds_of, coefficient_range
+from discrim.evidence.guaranteed import bounds_of, coefficient_range, in_law
 from discrim.evidence.intervals import (
     BOUND,
     CROSSED,
@@ -164,7 +164,8 @@ def _by_programs(
     from scipy.optimize import linprog
 
     predictor, data = fit.predictor, fit.data
-    half = bounds_of(data, alpha, fit.scale2 if data.scale is Scale.ESTIMATED else 1.0)
+    scale2 = fit.scale2 if data.scale is Scale.ESTIMATED else 1.0
+    half = bounds_of(data, alpha, scale2, in_law(predictor, data))
     c = coefficient_range(predictor, data, half.conditions)
     a = np.vstack([c.low, -c.high])
     b = np.concatenate([data.y + half.y - c.rest_low, -(data.y - half.y - c.rest_high)])

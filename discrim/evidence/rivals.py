@@ -263,7 +263,7 @@ def joint_p(
         return bound
     # in the space of the directions: z = A x with x standard normal, A triangular with a positive
     # diagonal, so that the order of the runs does not change the draws
-    triangle = np.asarray(np.linalg.qr(d.T, mode="r"))
+    triangle = np.asarray(np.linalg.qr(_in_order(d, two_sided).T, mode="r"))
     a = (triangle * np.where(np.diagonal(triangle) < 0, -1.0, 1.0)[:, None]).T
     a = a[:, (np.abs(a) > 1e-9).any(axis=0)]  # what adds nothing draws nothing
     r = a.shape[1]
@@ -281,6 +281,21 @@ def joint_p(
     hits = int((z.max(axis=1) >= largest).sum())
     simulated = (hits + 1) / (DRAWS + 1)
     return min(bound, simulated) if hits < 20 else simulated
+
+
+def _in_order(d: np.ndarray, two_sided: bool) -> np.ndarray:
+    """The directions in an order that is their own, and where the sign is free with one of their own, so
+    that the order of the candidates does not change the draws."""
+    alike = d @ d.T
+    keys = [np.round((np.abs(alike) ** power).sum(axis=1), 9) for power in (4, 2)]
+    order = np.lexsort(keys)
+    d, alike = d[order], alike[order][:, order]
+    if two_sided:  # each along the first that it is not at right angles to
+        for k in range(1, len(d)):
+            seen = alike[k, :k][np.abs(alike[k, :k]) > 1e-9]
+            if len(seen) and seen[0] < 0:
+                d[k], alike[k], alike[:, k] = -d[k], -alike[k], -alike[:, k]
+    return d
 
 
 def _one_line(d: np.ndarray) -> bool:
