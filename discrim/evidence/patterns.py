@@ -66,24 +66,33 @@ def runs_of_signs(of: Residuals, order: np.ndarray, null: np.ndarray) -> Pattern
     return Pattern(float(seen), _share(drawn <= seen), float(drawn.mean()))
 
 
-def koenker(squared: np.ndarray, z: np.ndarray) -> np.ndarray:
-    """N R^2 of squared residuals, shape (..., N), on a constant and z (Breusch & Pagan, Econometrica
-    47 (1979) 1287, studentised as by Koenker, J. Econometrics 17 (1981) 107)."""
-    n = squared.shape[-1]
+def explained(size: np.ndarray, z: np.ndarray) -> np.ndarray:
+    """N R^2 of the sizes of residuals, shape (..., N), on a constant and z.
+
+    For their squares this is the statistic of Breusch & Pagan (Econometrica 47 (1979) 1287) as
+    studentised by Koenker (J. Econometrics 17 (1981) 107).
+    """
+    n = size.shape[-1]
     z = z - z.mean()
-    c = squared - squared.mean(axis=-1, keepdims=True)
+    c = size - size.mean(axis=-1, keepdims=True)
     total = (c**2).sum(axis=-1) * float(z @ z)
     with np.errstate(divide="ignore", invalid="ignore"):
         return np.asarray(np.where(total > 0, n * (c @ z) ** 2 / total, 0.0))
 
 
 def equal_variance(of: Residuals, z: np.ndarray, null: np.ndarray) -> Pattern | None:
-    """Is the scatter, in stated errors, the same at all z, shape (N,)?"""
+    """Is the scatter, in stated errors, the same at all z, shape (N,)?
+
+    Of the absolute residuals, as by Glejser (J. Am. Stat. Assoc. 64 (1969) 316): of squares a few
+    large ones are all that counts. At 1 %, 24 runs and a scatter that grows in proportion, squares
+    find it in 20 % of simulated tables, absolute values in 29 %.
+    """
     if of.n < FEWEST or of.df < FEWEST_LEFT or float(np.ptp(z)) == 0.0:
         return None
-    seen = float(koenker(of.r**2, z))
-    drawn = koenker(null**2, z)
-    slope = int(np.sign((of.r**2 - (of.r**2).mean()) @ (z - z.mean())))
+    size = np.abs(of.r)
+    seen = float(explained(size, z))
+    drawn = explained(np.abs(null), z)
+    slope = int(np.sign((size - size.mean()) @ (z - z.mean())))
     return Pattern(seen, _share(drawn >= seen), float(drawn.mean()), slope)
 
 

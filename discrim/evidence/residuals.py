@@ -68,23 +68,32 @@ def orthonormal(columns: np.ndarray) -> np.ndarray:
 
 def residuals_of(fit: Fit) -> Residuals | None:
     """None where the fit failed, or as many constants as runs leave no residual to look at."""
-    if not fit.ok or not np.isfinite(fit.residual).all():
+    if not fit.ok:
         return None
-    cov = fit.covariance
-    if not np.isfinite(cov).all():
+    free = fit.jacobian[:, ~fit.at_bound]
+    return whitened(fit.residual, free, fit.values, fit.covariance)
+
+
+def whitened(
+    residual: np.ndarray, jacobian: np.ndarray, values: np.ndarray, covariance: np.ndarray
+) -> Residuals | None:
+    """From a whitened residual, shape (N,), and sensitivities to the constants off their bounds,
+    shape (N, k), with V, shape (N,) or (N, N); None where nothing is left to look at."""
+    if not (np.isfinite(residual).all() and np.isfinite(covariance).all()):
         return None
-    basis = orthonormal(fit.jacobian[:, ~fit.at_bound])
-    if fit.n - basis.shape[1] < 1:
+    basis = orthonormal(jacobian)
+    n = len(residual)
+    if n - basis.shape[1] < 1:
         return None
-    white = Whitener(cov[None])
+    white = Whitener(covariance[None])
     if not bool(white.ok.all()):
         return None
-    unit = white.matrix(np.eye(fit.n)[None])[0]
-    root = np.sqrt(cov) if cov.ndim == 1 else np.linalg.inv(unit)
-    r = fit.residual - basis @ (basis.T @ fit.residual)
-    if float(r @ r) <= 1e-20 * max(float(fit.residual @ fit.residual), 1e-300):
+    unit = white.matrix(np.eye(n)[None])[0]
+    root = np.sqrt(covariance) if covariance.ndim == 1 else np.linalg.inv(unit)
+    r = residual - basis @ (basis.T @ residual)
+    if float(r @ r) <= 1e-20 * max(float(residual @ residual), 1e-300):
         return None
-    return Residuals(r, basis, fit.values, unit, root)
+    return Residuals(r, basis, values, unit, root)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

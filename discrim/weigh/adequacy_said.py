@@ -148,7 +148,7 @@ def _trends(w: Weighed, found: Found) -> list[Finding]:
         verb = {"rises": "rise with", "falls": "fall with"}.get(slopes.pop(), "follow")
         if slopes or first.follows.words:
             verb = "follow"
-        says = f"its residuals {verb} column{'s' if len(names) > 1 else ''} {columns}"
+        says = f"the residuals {verb} column{'s' if len(names) > 1 else ''} {columns}"
         says = f"{says} ({_p(worst)}, all columns together)"
         out.append(
             ("warning", where, f"{says}, {_meaning(first, all(t.in_law for _, t in which))}")
@@ -204,7 +204,7 @@ def _signs(w: Weighed, found: Found) -> list[Finding]:
             (
                 "warning",
                 _where([i for i, _ in which], w),
-                f"in the order of {name.removeprefix('the order of ')} its residuals change sign "
+                f"in the order of {name.removeprefix('the order of ')} the residuals change sign "
                 f"too seldom ({int(p.statistic)} rows of one sign, {p.expected:.3g} are ordinary, "
                 f"{_p(min(q.p for _, q in which))}): {means}",
             )
@@ -245,7 +245,7 @@ def _scatter(w: Weighed, found: Found) -> list[Finding]:
                 (
                     "warning",
                     _where([i for i, _ in which], w),
-                    f"the scatter of its residuals{than} {words} ({_p(p)}): {do}",
+                    f"the scatter of the residuals{than} {words} ({_p(p)}): {do}",
                 )
             )
     odd = [i for i, a in found if a.normality is not None and a.normality.p < PATTERN]
@@ -254,7 +254,7 @@ def _scatter(w: Weighed, found: Found) -> list[Finding]:
             (
                 "note",
                 _where(odd, w),
-                "its residuals are not shaped like normal errors (a few far ones, or two kinds of "
+                "the residuals are not shaped like normal errors (a few far ones, or two kinds of "
                 "run): tests and intervals are approximate; look at the farthest runs",
             )
         )

@@ -28,7 +28,7 @@ Finding = tuple[str, str, str]
 def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
     """(severity, where, says) in the order in which a reader needs them."""
     out: list[Finding] = []
-    for c, a in zip(w.laws, w.assessments, strict=True):
+    for c, a, stands in zip(w.laws, w.assessments, w.stands, strict=True):
         where = f"candidate “{c.law.name}”"
         if a.fit.status is not FitStatus.CONVERGED:
             out.append(("warning", where, a.fit.status.value))
@@ -43,7 +43,7 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
                     f"{', '.join(zero)} ended on a bound; intervals are one-sided there",
                 )
             )
-        out += _intervals(w, where, c, a)
+        out += _intervals(where, a, stands)
         if a.fit.degrees_of_freedom <= 0:
             out.append(
                 (
@@ -99,12 +99,12 @@ def _weak(w: Weighed) -> list[Finding]:
     return out
 
 
-def _intervals(w: Weighed, where: str, c: object, a: object) -> list[Finding]:
+def _intervals(where: str, a: object, stands: bool) -> list[Finding]:
     out: list[Finding] = []
     for name, kinds in zip(a.bound.names, a.intervals, strict=True):  # type: ignore[attr-defined]
         lin, prof = kinds.get("linearised"), kinds.get("profile")
         recon = kinds.get("reconciled")
-        if recon is not None and recon.note:
+        if recon is not None and recon.note and stands:
             out.append(("note", where, f"reconciled interval of {name}: {recon.note}"))
         if lin is None or prof is None:
             continue
