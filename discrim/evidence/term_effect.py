@@ -60,11 +60,20 @@ def in_effect(term: Term, theta: np.ndarray, point: int) -> InEffect:
     )
 
 
+def _is_all(term: Term, theta: np.ndarray) -> np.ndarray:
+    """Where the rate without the term is zero, shape (K,): of several responses one may be it alone."""
+    assert term.knocked is not None
+    return np.asarray(term.knocked.rates(theta[None], term.points)[1][0] == 0)
+
+
 def effect_with_interval(term: Term, problem: Problem, full: Fit, level: float) -> Effect | None:
     if term.knocked is None or len(term.psi) != 1:
         return None
     point = chosen_point(term, full.theta)
     value = float(term.knocked.effect(full.theta[None], term.points)[0, point])
+    if _is_all(term, full.theta)[point]:
+        # all of that rate, or none of it: there is nothing between to give an interval of
+        return Effect(value, 1.0 if value > 0 else 0.0, 1.0, 1.0, term.labels[point], False)
     wrapped = in_effect(term, full.theta, point)
     start = wrapped.from_inner(full.theta[None])
     shifted = fit(wrapped, problem.data, starts=1, near=start)
@@ -119,5 +128,5 @@ def detectable_effect(
     theta = sol.theta.copy()
     theta[0, term.psi[0]] = need / size
     e = term.knocked.effect(theta, term.points)[0]
-    e = e[np.isfinite(e)]
+    e = e[np.isfinite(e) & ~_is_all(term, theta[0])]
     return float(np.max(np.abs(e))) if len(e) else float("nan")

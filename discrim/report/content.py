@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
-from discrim.report import knock_outs, pairs, read, residuals, tables
+from discrim.report import knock_outs, pairs, read, residuals, responses, tables
 from discrim.report.cases import Case, groups
 from discrim.report.numbers import (
     as_number,
@@ -85,6 +85,7 @@ class Law:
     unknowns: tuple[str, ...] = ()  # of these balances
     limits: tuple[tuple[str, tuple[Case, ...]], ...] = ()  # heading, lines
     whole_latex: str = ""  # the derivation as one block, several lines
+    observed: tuple[tuple[str, str, str], ...] = ()  # of several columns: what, text, mathml
 
     @property
     def balance_words(self) -> str:
@@ -118,6 +119,7 @@ class Content:
     replicates: str = ""
     exclusions: tuple[str, ...] = ()
     columns: Table | None = None
+    response_errors: Table | None = None
     runs: Table | None = None
     conditioning: tuple[Table, ...] = ()
     comparisons: Table | None = None
@@ -160,6 +162,7 @@ def build(document: Document) -> Content:
         replicates=_replicates(runs),
         exclusions=tuple(_exclusion(e) for e in read.records(study, "exclusions")),
         columns=tables.columns(runs),
+        response_errors=responses.table(document),
         runs=tables.runs(runs),
         conditioning=tables.conditioning(ordered),
         comparisons=tables.comparisons(read.records(document, "comparisons")),
@@ -270,6 +273,10 @@ def law(candidate: Document) -> Law:
         ),
         limits=groups(candidate),
         whole_latex=read.block(candidate, "derivation_latex"),
+        observed=tuple(
+            (read.text(o, "is"), read.text(o, "law"), read.text(o, "law_mathml"))
+            for o in read.records(candidate, "observed")
+        ),
     )
 
 

@@ -118,6 +118,8 @@ def _candidates(paper: Paper, content: Content) -> None:
         for item in laws:
             paper.say(item.name, indent=2)
             paper.formula(item.text, indent=4, most=6, rest=" in the report")
+            for words, text, _ in item.observed:
+                paper.formula(f"{words} = {text}", indent=6, most=6, rest=" in the report")
             if item.balances:
                 paper.say(item.balance_words, indent=4)
                 for formula, _ in item.balances:

@@ -16,10 +16,10 @@ from discrim.weigh.document_candidates import candidate_record, lockstep_keys
 from discrim.weigh.document_pairs import comparison_record, pair_records
 from discrim.weigh.document_questions import question_records
 from discrim.weigh.document_reported import reported_records
+from discrim.weigh.document_responses import response_records
 from discrim.weigh.document_values import column_record, is_words, number
 from discrim.weigh.planes import planes
 from discrim.weigh.run import Weighed
-from discrim.weigh.variances import response_records
 from discrim.weigh.words import (
     CAUTIONS,
     CONTROLS,

@@ -19,6 +19,7 @@ from discrim.weigh.adequacy_said import adequacy_record
 from discrim.weigh.derived import law_keys
 from discrim.weigh.document_knock_outs import knock_outs_record
 from discrim.weigh.document_pairs import share_keys
+from discrim.weigh.document_responses import observed_records
 from discrim.weigh.document_values import number, shown_units
 from discrim.weigh.magnitudes import magnitudes_record
 from discrim.weigh.run import Weighed
@@ -36,6 +37,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
     out.update(
         {
             "name": law.name,
+            "observed": observed_records(w.bench, w.laws[i]),
             "note": w.laws[i].candidate.note,
             "same_law_as": [
                 w.laws[j].law.name

@@ -8,15 +8,11 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import replace
-from typing import Any
-
-import numpy as np
 
 from discrim.errors import DiscrimError
 from discrim.fit.responses import Estimate, estimate
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
-from discrim.weigh.document_values import number
 from discrim.weigh.errors_of import with_errors
 
 # A candidate this far in AIC behind the best has essentially no support (Burnham & Anderson, Model
@@ -83,53 +79,6 @@ def _too_few(bench: Bench, tried: Sequence[Estimate | None]) -> DiscrimError:
         place=missing[0].place,
         do=f"State `error` for each observed column, or give more runs.{more}",
     )
-
-
-def response_records(bench: Bench) -> list[dict[str, Any]]:
-    """``responses`` of the document: what is known of the error of each observed column.
-
-    In the units of the columns: ``variance``, ``sd`` and ``df`` where the error was estimated with several
-    responses, ``covariance`` (a row of the matrix) where that between responses was.
-    """
-    factors = [_shown_per_internal(c) for c in bench.responses]
-    out: list[dict[str, Any]] = []
-    for r, column in enumerate(bench.responses):
-        record: dict[str, Any] = {
-            "column": column.name,
-            "units": column.shown,
-            "estimated": not column.errors and column.basis.value == "estimated",
-            "variance": None,
-            "sd": None,
-            "df": None,
-            "covariance": None,
-            "correlation": None,
-            "enlarged": None,
-            "candidate": "",
-        }
-        errors, unknown = bench.errors, bench.unknown
-        if errors is not None and unknown is not None and unknown.open[r]:
-            m = errors.matrix
-            record["candidate"] = bench.errors_from
-            record["variance"] = number(m[r, r] * factors[r] ** 2)
-            record["sd"] = number(np.sqrt(m[r, r]) * factors[r])
-            record["df"] = number(errors.df[r])
-            if unknown.together:
-                record["covariance"] = [
-                    number(m[r, k] * factors[r] * factors[k]) for k in range(len(m))
-                ]
-                size = np.sqrt(np.diag(m))
-                record["correlation"] = [
-                    number(m[r, k] / (size[r] * size[k])) for k in range(len(m))
-                ]
-                record["enlarged"] = number(errors.held[r, r] / m[r, r])
-        out.append(record)
-    return out
-
-
-def _shown_per_internal(column: Any) -> float:
-    from discrim.study.lookup import to_shown
-
-    return float(to_shown(column, np.ones(1))[0]) if column.shown else 1.0
 
 
 def error_findings(bench: Bench) -> list[tuple[str, str, str]]:
