@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from discrim.evidence.flips import error_margin, flip_to_effect, typical_flip
+from discrim.evidence.distributions import normal_of_tail
 from discrim.evidence.flip_distance import flip_distance
+from discrim.evidence.flips import error_margin, flip_to_effect, typical_flip
+from discrim.evidence.on_edge import several_on_edge
 from discrim.evidence.score import p_one_sided
 from discrim.evidence.term import Effect, Kind, Participation, Term
 from discrim.evidence.term_effect import detectable_effect, effect_with_interval
@@ -40,6 +42,10 @@ def participation(
     p = float("nan")
     if np.isfinite(z):
         p = 2 * p_one_sided(abs(z)) if two_sided else p_one_sided(z)
+    simulated = None if weak else several_on_edge(term, full, reduced, p, alpha=alpha, seed=seed)
+    if simulated is not None:
+        z, p = float(normal_of_tail(simulated.p / 2)), simulated.p
+        words = "conditional bootstrap, several constants on the edge"
     z, p, words = by_objective(term, problem, reduced, z, p, words, alpha)
     edge = term.kind in (Kind.ZERO, Kind.VANISH, Kind.SEVERAL)
     f = None
@@ -52,9 +58,8 @@ def participation(
         effect = Effect(1.0, 1.0, 1.0, 1.0, "every run", False)
     detectable = detectable_effect(term, problem, full, effect, alpha)
     margin = flip = typical = matters = float("nan")
-    if not brief:
-        if np.isfinite(p) and p < alpha and not data.exact_conditions:
-            margin = error_margin(term, data, full, seed, alpha, two_sided)
+    if not brief and np.isfinite(p) and p < alpha and not data.exact_conditions:
+        margin = error_margin(term, data, full, seed, alpha, two_sided)
     if flips and not brief:
         s2 = full.scale2 if data.scale is Scale.ESTIMATED else 1.0
         flip = flip_distance(term.reduced, data, s2, reduced.theta, fixed=np.zeros(reduced.p, bool))
