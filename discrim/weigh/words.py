@@ -129,6 +129,12 @@ def references(w: Weighed) -> list[dict[str, str]]:
             "Confidence set of rivals",
             "score of each law towards its rivals, after Fisher & McAleer, J. Econometrics 16 (1981) 103",
         ),
+        (
+            "Residuals: influence of single runs, trends of all columns together, patterns with "
+            "references drawn for each fit",
+            "Cook & Weisberg, Residuals and Influence in Regression, Chapman & Hall 1982; Holm, Scand. "
+            "J. Statist. 6 (1979) 65; Dufour, Khalaf, Bernard & Genest, J. Econometrics 122 (2004) 317",
+        ),
         ("Rounding of results", "JCGM 100:2008 (GUM), section 7.2.6"),
     ]
     if w.bench.unknown is not None and w.bench.unknown.together:
