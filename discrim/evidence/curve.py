@@ -79,5 +79,7 @@ def at_all(
     """Restricted optima at ``values`` of each curve, all of one problem, solved as one batch (see
     `restricted.follow` for how)."""
     trails = [c.trail for c in curves]
-    found = follow(trails, values, careful=careful, hopeless=hopeless, afresh=afresh)
-    return [c.points(v, sol) for c, v, sol in zip(curves, values, found, strict=True)]
+    # values far out are where laws overflow: such a fit is not finite, and never the best
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        found = follow(trails, values, careful=careful, hopeless=hopeless, afresh=afresh)
+        return [c.points(v, sol) for c, v, sol in zip(curves, values, found, strict=True)]
