@@ -149,3 +149,48 @@ def test_too_few_runs(tmp_path: Path) -> None:
         run(load(path))
     assert "too few to estimate them" in caught.value.says
     assert "State `error`" in caught.value.do
+
+
+def test_an_error_of_a_condition_is_shared_by_the_responses_of_a_run(tmp_path: Path) -> None:
+    """One reading of A errs once for both rates: V = S_y + F S_c F' with F for both, so the rates of P
+    and Q of one run are correlated (JCGM 100:2008, 5.2.2), and both see the same reconciled A."""
+    path, table = written(tmp_path, error_p='error = "10 umol/L/s"')
+    text = path.read_text(encoding="utf-8").replace(
+        'is = "A"\nunits = "mmol/L"\nerror = "exact"',
+        'is = "A"\nunits = "mmol/L"\nerror = { sd = "4 %", origin = "measured" }',
+    )
+    text = text.replace('is = "rate of Q"', 'is = "rate of Q"\nerror = "0.02 mmol/L/s"')
+    path.write_text(text, encoding="utf-8")
+    weighed = run(load(path), one_by_one=False, lattices=False)
+    fit = weighed.assessments[0].fit
+    n = len(table)
+    bench = weighed.bench
+    j = next(k for k, s in enumerate(bench.symbols) if s.name == "[A]")
+    a = fit.conditions[:, j]
+    assert a[:n] == pytest.approx(a[n:], rel=1e-9)
+    other = next(k for k, s in enumerate(bench.symbols) if s.name == "[B]")
+    names = weighed.bounds[0].names
+    k_p, k_q = (float(fit.theta[names.index(k)]) for k in ("k_to_p", "k_to_q"))
+    slope_p, slope_q = k_p, k_q * fit.conditions[n:, other]
+    sd = 0.04 * a[:n]
+    v = fit.covariance
+    assert v.shape == (2 * n, 2 * n)
+    units = v[0, 0] / (0.01**2 + (slope_p * sd[0]) ** 2)  # internal rates may be in other units
+    for i in range(n):
+        assert v[i, n + i] == pytest.approx(units * slope_p * slope_q[i] * sd[i] ** 2, rel=1e-5)
+        assert v[i, n + (i + 1) % n] == 0.0
+
+
+def test_a_response_missing_in_some_runs(tmp_path: Path) -> None:
+    """An empty cell leaves out that observation, not its run."""
+    for extra in ("", UNKNOWN):
+        path, table = written(tmp_path, extra)
+        lines = (tmp_path / "runs.csv").read_text(encoding="utf-8").splitlines()
+        lines[3] = lines[3].replace(lines[3].split(",")[1], "", 1)
+        (tmp_path / "runs.csv").write_text("\n".join(lines), encoding="utf-8")
+        weighed = run(load(path), one_by_one=False, lattices=False)
+        assert weighed.bench.measurements.n == 2 * len(table) - 1
+        errors = weighed.bench.errors
+        assert errors is not None
+        assert errors.converged
+        assert errors.df[1] == pytest.approx(10)
