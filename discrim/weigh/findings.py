@@ -14,6 +14,7 @@ from discrim.weigh.adequacy_said import adequacy_findings
 from discrim.weigh.chemistry import chemistry_findings
 from discrim.weigh.left_out import findings_left_out
 from discrim.weigh.magnitudes import magnitude_findings
+from discrim.weigh.proxies import alike_labels
 from discrim.weigh.variances import error_findings
 
 if TYPE_CHECKING:
@@ -59,6 +60,7 @@ def findings_of(w: Weighed, unused: tuple[str, ...]) -> tuple[Finding, ...]:
     out += magnitude_findings(w)
     out += chemistry_findings(w)
     out += _columns(w)
+    out += _labels(w)
     out += error_findings(w.bench)
     out += [("note", "constants", f"[constants] {n} is in no law and was not used") for n in unused]
     out += [("note", "study", s) for s in w.study.findings]
@@ -177,6 +179,25 @@ def _columns(w: Weighed) -> list[Finding]:
                     "errors",
                     "the error of the rate is not stated; its variance was estimated from the fits, "
                     "so lack of fit cannot be told from noise",
+                )
+            )
+    return out
+
+
+def _labels(w: Weighed) -> list[Finding]:
+    """Text columns that the study does not declare, yet whose labels go with a species asked about."""
+    out: list[Finding] = []
+    for answer in w.answers:
+        if answer.what != "species" or answer.verdict.outcome != "participates":
+            continue
+        for name in alike_labels(answer.question.about, w.study, w.bench):
+            out.append(
+                (
+                    "note",
+                    f"column “{name}”",
+                    f"its labels split the runs as the amounts of {answer.question.about} do: if they "
+                    "stand for anything else (a batch, a day, an operator), that could be the cause; "
+                    'declared with is = "group" it is tried as a stand-in',
                 )
             )
     return out

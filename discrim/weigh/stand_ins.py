@@ -1,10 +1,14 @@
-"""Stand-ins: what moved in lockstep with a species and could be the real cause."""
+"""Stand-ins: what moved in lockstep with a species and could be the real cause.
+
+Each is put in the place of the species in every candidate that stands and contains it, scaled to the
+species' typical amount, and stands or falls as any rival does: by its own fit and along the direction
+of the law with the species (`evidence.rivals`), under any reading of the errors.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from itertools import combinations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -12,30 +16,21 @@ import sympy
 
 from discrim.errors import DiscrimError
 from discrim.evidence.rivals import standing
-from discrim.evidence.term import Kind
 from discrim.fit.fit import Fit, fit
-from discrim.fit.measurements import Measurements
-from discrim.ratelaw.knockout import KnockOutKind
-from discrim.ratelaw.model import RateLaw, amount, quantity
-from discrim.runs.model import Column, Role
+from discrim.fit.measurements import ErrorSource, Measurements, source
+from discrim.ratelaw.model import RateLaw, amount
+from discrim.runs.model import Role
 from discrim.study.model import Study
 from discrim.verdict import StandIn
-from discrim.weigh.bench import Bench, build, fixed_put_in, observed_expression, put_in
+from discrim.weigh.bench import Bench, observed_expression, put_in
 from discrim.weigh.bind import Bound, bind
 from discrim.weigh.laws import CandidateLaw
+from discrim.weigh.proxies import Base, Proxy, proxies, symbol_of, values_of
 
-# A column whose logarithm follows that of the species this closely over the runs is tried in its
-# place (squared correlation).
-STAND_IN_CORRELATION = 0.9
+__all__ = ["bind_law", "stand_ins", "symbol_of"]
+
+# the closest are tried; one that comes as close as these and stands is reason enough
 MOST_STAND_INS = 8
-
-_KIND = {
-    KnockOutKind.ZERO: Kind.ZERO,
-    KnockOutKind.VANISH: Kind.VANISH,
-    KnockOutKind.SEVERAL: Kind.SEVERAL,
-    KnockOutKind.ORDER: Kind.ORDER,
-    KnockOutKind.FACTOR: Kind.FACTOR,
-}
 
 if TYPE_CHECKING:
     from discrim.weigh.asked import InCandidate
@@ -46,59 +41,84 @@ def stand_ins(
     study: Study,
     bench: Bench,
     laws: Sequence[CandidateLaw],
-    bounds: Sequence[Bound],
     fits: Sequence[Mapping[str, Fit]],
     per: Sequence[InCandidate],
     stands: Sequence[bool],
     seed: int,
+    *,
+    every: bool,
 ) -> list[tuple[StandIn, float]]:
-    """Columns, products and squares that move with the species, put in its place.
+    """Columns, orders and products that move with the species, put in its place, closest first, each
+    with the chance of its largest score.
 
-    Tried in the standing candidate with the highest claim: the first that stands and contains it.
+    ``every``: in every candidate that stands and contains it until one stands, which a verdict that the
+    species takes part needs; else in the first of them only.
     """
-    alpha = 1.0 - study.level
     asking = [k for k in per if stands[k.index] and k.contains and k.by_origin]
-    if not asking:
-        return []
-    lead = asking[0]
-    values = _values_of(about, study, bench)
+    values = values_of(about, study, bench) if asking else None
     if values is None:
         return []
-    own = next(iter(fits[lead.index].values()))
-    used_here = set().union(*(e.free_symbols for e in laws[lead.index].bound))
-    found: list[tuple[StandIn, float]] = []
-    for name, symbol_expr, x, symbols in _proxies(about, study, bench, values):
-        factor = float(np.median(values[values > 0]) / np.median(x[x > 0]))
-        swapped = _swapped(laws[lead.index].law, about, symbol_expr * sympy.Float(factor, 17))
-        extra = [s for s in symbols if s not in bench.symbols]
-        if all(s in used_here for s in symbols) and _already(swapped, laws[lead.index].law):
+    found: dict[str, tuple[StandIn, float]] = {}
+    tries = proxies(about, study, bench)[: 2 * MOST_STAND_INS]
+    for k in asking if every else asking[:1]:
+        left = [p for p in tries if p.name not in found or not found[p.name][0].stands]
+        if not left:
+            break
+        for p, ok, chance in _in_law(about, study, bench, laws[k.index], fits[k.index], left, seed):
+            before = found.get(p.name)
+            if before is None or (ok and not before[0].stands):
+                found[p.name] = _told(p.name, about, ok, chance)
+    order = [p.name for p in tries]
+    return [found[name] for name in sorted(found, key=order.index)]
+
+
+def _in_law(
+    about: str,
+    study: Study,
+    bench: Bench,
+    c: CandidateLaw,
+    fits: Mapping[str, Fit],
+    tries: Sequence[Proxy],
+    seed: int,
+) -> list[tuple[Proxy, bool, float]]:
+    """Each proxy in the place of the species in one candidate: whether it stands, and p."""
+    values = values_of(about, study, bench)
+    assert values is not None
+    used_here = set().union(*(e.free_symbols for e in c.bound))
+    wide = _widened(bench, tries)
+    host = bind_law(c.law, study, wide)
+    out: list[tuple[Proxy, bool, float]] = []
+    own: dict[str, Fit] = {}
+    for p in tries:
+        if len(out) == MOST_STAND_INS:
+            break
+        factor = float(np.median(values[values > 0]) / np.median(p.values[p.values > 0]))
+        swapped = _swapped(c.law, about, p.expression * sympy.Float(factor, 17))
+        if p.expression.free_symbols <= used_here and bool(swapped.rate == c.law.rate):
             continue
-        here = build(
-            study,
-            [e for c in laws for e in c.bound],
-            extra=[*bench.symbols, *extra],
-            errors=bench.errors,
-        )
         try:
-            rival = bind_law(swapped, study, here)
-            host = bind_law(laws[lead.index].law, study, here)
+            rival = bind_law(swapped, study, wide)
         except (DiscrimError, ValueError):
             continue
-        ok, chance = False, 0.0
-        for origin in fits[lead.index]:
-            # it stands if it does under any reading of the condition errors
-            data = _same_errors(here.measurements, own.data, here, bench).as_origin(origin)
-            f_own = fit(host.predictor, data, seed=seed, starts=4, near=own.theta[None])
-            f_rival = fit(rival.predictor, data, seed=seed, starts=8)
-            if not f_rival.ok or not f_own.ok or _adds_nothing(f_rival):
+        ok, chance, fitted = False, 0.0, True
+        for origin, first in fits.items():
+            data = _wider(first.data, bench, wide, tries, about)
+            if origin not in own:
+                own[origin] = fit(host.predictor, data, seed=seed, starts=1, near=first.theta[None])
+            near = first.theta[None] if rival.names == host.names else None
+            few = 4 if near is None else 2
+            f_rival = fit(rival.predictor, data, seed=seed, starts=few, near=near)
+            fitted = f_rival.ok and own[origin].ok and not _adds_nothing(f_rival)
+            if not fitted:
                 break
-            judged = standing([f_own, f_rival], {}, {}, alpha=alpha, seed=seed)[1]
-            ok, chance = ok or judged.stands, max(chance, judged.p_joint)
-        else:
-            found.append(_told(name, about, ok, chance))
-        if len(found) == MOST_STAND_INS:
-            break
-    return found
+            both = [own[origin], f_rival]
+            judged = standing(both, {}, {}, alpha=1.0 - study.level, seed=seed, only=[1])[0]
+            ok, chance = judged.stands, max(chance, judged.p_joint)
+            if ok:  # under one reading of the errors is enough
+                break
+        if fitted:
+            out.append((p, ok, chance))
+    return out
 
 
 def _told(name: str, about: str, ok: bool, chance: float) -> tuple[StandIn, float]:
@@ -117,73 +137,88 @@ def _adds_nothing(f: Fit) -> bool:
     return bool(len(s) < moving.shape[1] or s[-1] <= 1e-9 * s[0])
 
 
-def _values_of(about: str, study: Study, bench: Bench) -> np.ndarray | None:
-    """Amounts of a species over the observations, derived ones included."""
-    symbol = amount(about)
-    if symbol in bench.symbols:
-        return bench.measurements.conditions[:, bench.condition(symbol)]
-    e = fixed_put_in(put_in(symbol, study), study)
-    if e == symbol or not e.free_symbols <= set(bench.symbols):
-        return None
-    f = sympy.lambdify(list(bench.symbols), e, modules="numpy")
-    return np.broadcast_to(
-        np.asarray(f(*bench.measurements.conditions.T), float), (bench.measurements.n,)
+# ---- a bench that holds what the laws do not ---------------------------------------------------
+
+
+def _new_bases(bench: Bench, tries: Sequence[Proxy]) -> list[Base]:
+    out: dict[Any, Base] = {}
+    for p in tries:
+        for b in p.bases:
+            if b.column is not None and b.expression not in bench.symbols:
+                out.setdefault(b.expression, b)
+    return list(out.values())
+
+
+def _widened(bench: Bench, tries: Sequence[Proxy]) -> Bench:
+    """The bench with the columns of the proxies as further conditions, without errors yet."""
+    new = _new_bases(bench, tries)
+    if not new:
+        return bench
+    data = bench.measurements
+    conditions = np.column_stack([data.conditions, *(b.values for b in new)])
+    symbols = (*bench.symbols, *(b.expression for b in new))
+    units = dict(bench.units)
+    for b in new:
+        assert b.column is not None
+        units[b.expression] = b.column.unit
+    wide = replace(data, conditions=conditions, condition_names=tuple(s.name for s in symbols))
+    return replace(bench, measurements=wide, symbols=symbols, units=units)
+
+
+def _wider(
+    own: Measurements, bench: Bench, wide: Bench, tries: Sequence[Proxy], about: str
+) -> Measurements:
+    """The measurements that the candidate was fitted to, with the conditions of the proxies.
+
+    A column without a stated error has that of the species in whose place it is put: taken as exact it
+    would be ruled out by its own scatter.
+    """
+    new = _new_bases(bench, tries)
+    if not new:
+        return own
+    n, m = own.n, own.m
+    sources: list[ErrorSource] = []
+    theirs = []
+    if amount(about) in bench.symbols:
+        j = bench.condition(amount(about))
+        theirs = [s for s in own.of_conditions if s.target == j]
+        value = own.conditions[..., j]
+    origin = next((s.origin for s in theirs), "measured")
+    for k, b in enumerate(new):
+        assert b.column is not None
+        if b.column.errors and b.column.role is not Role.GROUP:
+            for part in b.column.errors:
+                groups = part.groups[bench.runs]
+                sources.append(
+                    ErrorSource(
+                        m + k,
+                        np.full(n, float(part.relative)),
+                        np.asarray(part.absolute, float)[bench.runs],
+                        None,
+                        part.origin or origin,
+                        groups,
+                        len(np.unique(groups)) == n,
+                    )
+                )
+        elif theirs:
+            for s in theirs:
+                with np.errstate(divide="ignore", invalid="ignore"):
+                    relative = np.where(value > 0, s.sd(value) / value, 0.0)
+                sources.append(
+                    replace(s, target=m + k, relative=relative, absolute=np.zeros(n), bound=None)
+                )
+        else:
+            sources.append(source(m + k, n, relative=b.relative, origin=origin))
+    conditions = np.column_stack([own.conditions, *(b.values for b in new)])
+    return replace(
+        own,
+        conditions=conditions,
+        sources=(*own.of_conditions, *sources, *own.of_observations),
+        condition_names=wide.measurements.condition_names,
     )
 
 
-def _proxies(
-    about: str, study: Study, bench: Bench, values: np.ndarray
-) -> list[tuple[str, Any, np.ndarray, tuple[Any, ...]]]:
-    """What moved with the species: (name, expression, values, symbols), closest first.
-
-    Powers of the species itself are left out: where they explain the runs, it still takes part.
-    """
-    base: list[tuple[str, Any, np.ndarray]] = []
-    for col in study.runs.columns:
-        if col.role in (Role.RATE_OF, Role.CONSUMPTION_OF, Role.K_OBS_OF, Role.RUN):
-            continue
-        if col.role is Role.CONVERSION:
-            continue  # it comes out of a run: no cause of its rate
-        if col.role is Role.SPECIES and col.about == about:
-            continue
-        x = col.values[bench.runs]
-        if not np.isfinite(x).all() or (x < 0).any() or not (x > 0).any():
-            continue
-        label = col.about if col.role is Role.SPECIES else f"column “{col.name}”"
-        base.append((label, symbol_of(col), x))
-    for d in study.derived:
-        if d.name == about:
-            continue
-        x = _values_of(d.name, study, bench)
-        if x is not None and np.isfinite(x).all() and (x > 0).any():
-            formula = fixed_put_in(put_in(amount(d.name), study), study)
-            base.append((d.name, formula, np.asarray(x)))
-    tries = list(base)
-    species = [b for b in base if not b[0].startswith("column")]
-    tries += [(f"{n} squared", e**2, x**2) for n, e, x in species]
-    tries += [
-        (f"{a[0]} times {b[0]}", a[1] * b[1], a[2] * b[2]) for a, b in combinations(species, 2)
-    ]
-    out = []
-    for name, e, x in tries:
-        r2 = _follows(x, values)
-        if r2 >= STAND_IN_CORRELATION:
-            out.append((r2, name, e, x, tuple(sorted(e.free_symbols, key=lambda s: s.name))))
-    out.sort(key=lambda t: -t[0])
-    return [(n, e, x, s) for _, n, e, x, s in out]
-
-
-def _follows(x: np.ndarray, y: np.ndarray) -> float:
-    """Squared correlation of logarithms (of the values themselves where there are zeros)."""
-    if (x > 0).all() and (y > 0).all():
-        x, y = np.log(x), np.log(y)
-    elif ((x == 0) != (y == 0)).any():
-        return 0.0
-    if np.ptp(y) <= 1e-9 * max(np.abs(y).max(), 1e-300):
-        return 1.0 if np.ptp(x) <= 1e-9 * max(np.abs(x).max(), 1e-300) else 0.0
-    if np.ptp(x) == 0:
-        return 0.0
-    return float(np.corrcoef(x, y)[0, 1] ** 2)
+# ---- laws --------------------------------------------------------------------------------------
 
 
 def _swapped(law: RateLaw, about: str, by: Any) -> RateLaw:
@@ -197,19 +232,6 @@ def _swapped(law: RateLaw, about: str, by: Any) -> RateLaw:
     )
 
 
-def _already(a: RateLaw, b: RateLaw) -> bool:
-    return bool(a.rate == b.rate)
-
-
-def _same_errors(new: Measurements, own: Measurements, here: Bench, bench: Bench) -> Measurements:
-    """The wider table, its observations with the scale that the original fit had."""
-    return replace(new, scale=own.scale, scale_df=own.scale_df)
-
-
 def bind_law(law: RateLaw, study: Study, bench: Bench) -> Bound:
     seen = [observed_expression(col, law, study) for col in bench.responses]
     return bind(law, bench, [put_in(e, study) for e in seen], with_units=False)
-
-
-def symbol_of(col: Column) -> Any:
-    return amount(col.about) if col.role is Role.SPECIES else quantity(col.name)
