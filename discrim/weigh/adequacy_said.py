@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from discrim.evidence.patterns import Pattern
+from discrim.evidence.patterns import FEWEST_LEFT, Pattern
 from discrim.runs.model import ErrorBasis, Role
 from discrim.verdict.thresholds import (
     ALONE,
@@ -268,7 +268,8 @@ def _far(w: Weighed, found: Found) -> list[Finding]:
     pulls: dict[str, list[int]] = {}
     for i, a in found:
         of = a.influence
-        if of.p_largest is not None and of.p_largest < FAR_RUN:
+        enough = w.assessments[i].fit.degrees_of_freedom >= FEWEST_LEFT
+        if enough and of.p_largest is not None and of.p_largest < FAR_RUN:
             k = _largest(np.abs(of.studentised))
             far.setdefault(labels[k], []).append((i, of.p_largest))
         for k in np.flatnonzero(of.leverage > ALONE).tolist():
@@ -290,25 +291,38 @@ def _far(w: Weighed, found: Found) -> list[Finding]:
                 "found there",
             )
         )
-    for run, ones in alone.items():
+    for where, ones in _together(alone):
+        each = "each alone fixes" if where.startswith("runs") else "alone fixes"
         out.append(
             (
                 "note",
-                f"run {run}",
-                f"alone fixes a constant of {_names(w, ones)}: no other run checks what it reads; "
-                "repeat it",
+                where,
+                f"{each} a constant of {_names(w, ones)}: no other run checks what it reads; repeat it",
             )
         )
-    for run, ones in pulls.items():
+    for where, ones in _together(pulls):
+        each = "each moves" if where.startswith("runs") else "moves"
         out.append(
             (
                 "note",
-                f"run {run}",
-                f"moves the constants of {_names(w, ones)} most: without it they lie outside the "
-                "middle of their confidence region (Cook's distance above 1); repeat it",
+                where,
+                f"{each} the constants of {_names(w, ones)} far (Cook's distance above "
+                f"{MOVES_CONSTANTS:g}): without it they lie outside the middle of their confidence "
+                "region; repeat it",
             )
         )
     return out
+
+
+def _together(by_run: dict[str, list[int]]) -> list[tuple[str, tuple[int, ...]]]:
+    """Runs of which the same is said, in one line."""
+    runs: dict[tuple[int, ...], list[str]] = {}
+    for run, ones in by_run.items():
+        runs.setdefault(tuple(dict.fromkeys(ones)), []).append(run)
+    return [
+        (f"run {r[0]}" if len(r) == 1 else f"runs {', '.join(r[:-1])} and {r[-1]}", ones)
+        for ones, r in runs.items()
+    ]
 
 
 def _replicates(w: Weighed, found: Found) -> list[Finding]:

@@ -14,6 +14,7 @@ from discrim.ratelaw.printing import plain
 from discrim.study.model import Study
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
+from discrim.weigh.chemistry import remarks, scene_before
 from discrim.weigh.document_candidates import lockstep_words
 from discrim.weigh.document_values import column_record, is_words, number
 from discrim.weigh.run import prepare
@@ -48,6 +49,10 @@ def checked(study: Study) -> dict[str, Any]:
                 "says": "some runs have no measured rate: the table is judged as planned",
             }
         )
+    findings += [
+        {"severity": severity, "where": where, "says": says}
+        for severity, where, says in remarks(scene_before(study, bench, laws, bounds))
+    ]
     runs = study.runs
     return {
         "title": study.title,

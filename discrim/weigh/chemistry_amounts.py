@@ -25,8 +25,8 @@ def amounts_findings(at: Scene) -> Iterator[Finding]:
 def _bound_by_catalyst(at: Scene) -> Iterator[Finding]:
     """More than a tenth of a species can sit on the catalyst, while its amount is taken as free."""
     done: set[tuple[str, str]] = set()
-    species = at.w.study.runs.species()
-    for law in at.w.laws:
+    species = at.study.runs.species()
+    for law in at.laws:
         mechanism = law.candidate.mechanism
         if mechanism is None:
             continue
@@ -54,7 +54,7 @@ def _bound_by_catalyst(at: Scene) -> Iterator[Finding]:
 
 
 def _total_of(at: Scene, catalyst: str, mechanism: Mechanism) -> Column | None:
-    columns = at.w.study.runs.columns
+    columns = at.study.runs.columns
     for c in columns:
         if c.role is Role.TOTAL and c.about == catalyst:
             return c
@@ -99,7 +99,7 @@ def _sd(c: Column, at: Scene) -> np.ndarray:
 
 def _used(at: Scene) -> Iterator[tuple[str, np.ndarray]]:
     """(species, amount of it that reacts during a run over the observations) where the table says."""
-    columns = at.w.study.runs.columns
+    columns = at.study.runs.columns
     first = {c.about: c for c in columns if c.role is Role.SPECIES}
     first |= {c.about: c for c in columns if c.role in (Role.INITIAL, Role.INLET)}
     n = at.bench.measurements.n
@@ -114,10 +114,10 @@ def _used(at: Scene) -> Iterator[tuple[str, np.ndarray]]:
 
 def _flooded(at: Scene) -> Iterator[Finding]:
     """A reagent taken as constant, of which more reacts than its error."""
-    species = at.w.study.runs.species()
+    species = at.study.runs.species()
     done: set[tuple[str, str]] = set()
     for about, used in _used(at):
-        for law in at.w.laws:
+        for law in at.laws:
             changes = _changes(law.law)
             per = changes.get(about, 0.0)
             for name, n in changes.items():
@@ -146,7 +146,7 @@ def _flooded(at: Scene) -> Iterator[Finding]:
 
 def _conversion(at: Scene) -> Iterator[Finding]:
     """Conversions at which a rate is no longer that at the stated amounts: |n| X/2 over its error."""
-    for c in at.w.study.runs.columns:
+    for c in at.study.runs.columns:
         if c.role is not Role.CONVERSION:
             continue
         order = _order_in(at, c.about)
@@ -158,7 +158,7 @@ def _conversion(at: Scene) -> Iterator[Finding]:
         if not far.any():
             continue
         worst = int(np.argmax(np.where(far, change, -1.0)))
-        along = "along the bed" if at.w.study.reactor == "differential" else "while it is measured"
+        along = "along the bed" if at.study.reactor == "differential" else "while it is measured"
         yield (
             "warning",
             at.runs(np.flatnonzero(far)),
@@ -172,7 +172,7 @@ def _conversion(at: Scene) -> Iterator[Finding]:
 def _order_in(at: Scene, species: str) -> np.ndarray | None:
     """Apparent order of the best law in a species, d ln r/d ln [species], shape (N,)."""
     symbol = amount(species)
-    if symbol not in at.bench.symbols:
+    if at.fit is None or symbol not in at.bench.symbols:
         return None
     data = at.fit.data
     pred = at.fit.predictor.predict(at.fit.theta[None], data.conditions, conditions_too=True)
@@ -187,13 +187,13 @@ def _order_in(at: Scene, species: str) -> np.ndarray | None:
 def _near_equilibrium(at: Scene) -> Iterator[Finding]:
     """Laws without a reverse reaction in runs near an equilibrium that another candidate knows."""
     known = {
-        n: s.value for n, s in at.w.study.constants.items() if s.value is not None and s.value > 0
+        n: s.value for n, s in at.study.constants.items() if s.value is not None and s.value > 0
     }
     if not known:
         return
     for name, value in known.items():
         overall = next(
-            (law.law for law in at.w.laws if _is_equilibrium_constant(law.law, name)), None
+            (law.law for law in at.laws if _is_equilibrium_constant(law.law, name)), None
         )
         if overall is None:
             continue
@@ -208,7 +208,7 @@ def _near_equilibrium(at: Scene) -> Iterator[Finding]:
         near = np.isfinite(q) & (q > NEAR_EQUILIBRIUM * value)
         one_way = [
             i
-            for i, law in enumerate(at.w.laws)
+            for i, law in enumerate(at.laws)
             if _alike(_changes(law.law), changes) and not _goes_back(law.law)
         ]
         if near.any() and one_way:

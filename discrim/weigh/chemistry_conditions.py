@@ -66,7 +66,7 @@ def _temperature(at: Scene) -> Iterator[Finding]:
 
 def _one_value_each(at: Scene, i: int, t: np.ndarray) -> bool:
     """Whether the candidate has constants of their own for every temperature."""
-    column_of = at.w.bounds[i].column_of
+    column_of = at.bounds[i].column_of
     split = [q for q in range(column_of.shape[1]) if len(np.unique(column_of[:, q])) > 1]
     return any(
         all(float(np.ptp(t[column_of[:, q] == j])) == 0.0 for j in np.unique(column_of[:, q]))
@@ -93,12 +93,12 @@ def _ph(at: Scene) -> Iterator[Finding]:
 def _ionic_strength(at: Scene) -> Iterator[Finding]:
     charges = {
         name: z
-        for law in at.w.laws
+        for law in at.laws
         if law.candidate.mechanism is not None
         for name, z in law.candidate.mechanism.charges.items()
         if z
     }
-    ions = sorted({s for law in at.w.laws for s in law.law.species if s in charges})
+    ions = sorted({s for law in at.laws for s in law.law.species if s in charges})
     if not ions:
         return
     pair = _charged_pair(at, charges)
@@ -138,7 +138,7 @@ def _ionic_strength(at: Scene) -> Iterator[Finding]:
 def _charged_pair(at: Scene, charges: dict[str, int]) -> tuple[str, str] | None:
     """The two ions of highest charges that react in one step."""
     pairs: list[tuple[int, str, str]] = []
-    for law in at.w.laws:
+    for law in at.laws:
         if law.candidate.mechanism is None:
             continue
         for step in law.candidate.mechanism.steps:
@@ -172,7 +172,10 @@ def _nothing_read(at: Scene) -> Iterator[Finding]:
     for k, c in enumerate(at.bench.responses):
         if not c.errors or any(np.asarray(e.absolute).any() for e in c.errors):
             continue
-        mine = np.flatnonzero(at.bench.response == k)
+        measured = np.isfinite(at.bench.measurements.y)
+        mine = np.flatnonzero((at.bench.response == k) & measured)
+        if not len(mine):
+            continue
         y = at.bench.measurements.y[mine]
         small = mine[y <= NEXT_TO_NOTHING * float(np.median(np.abs(y)))]
         if len(small):
@@ -196,7 +199,7 @@ def _absolute(c: Column) -> str:
 def _blank(at: Scene) -> Iterator[Finding]:
     if at.control("blank"):
         return
-    for c in at.w.study.runs.columns:
+    for c in at.study.runs.columns:
         if c.role is not Role.CATALYST and not _is_catalyst(at, c):
             continue
         x = c.values[at.bench.runs]
@@ -212,14 +215,14 @@ def _blank(at: Scene) -> Iterator[Finding]:
 def _is_catalyst(at: Scene, c: Column) -> bool:
     return c.role is Role.TOTAL and any(
         law.candidate.mechanism is not None and c.about in law.candidate.mechanism.catalyst
-        for law in at.w.laws
+        for law in at.laws
     )
 
 
 def _never_without(at: Scene) -> Iterator[Finding]:
     """Questions about an additive term whose species is plentiful in every run."""
     added = (KnockOutKind.ZERO, KnockOutKind.VANISH, KnockOutKind.SEVERAL)
-    for answer in at.w.answers:
+    for answer in at.answers:
         about = answer.question.about
         if answer.what != "species" or not any(
             k.knock_out is not None and k.knock_out.kind in added for k in answer.per_candidate

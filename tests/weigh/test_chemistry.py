@@ -16,6 +16,7 @@ import pytest
 
 import discrim
 from discrim.units import Unit
+from discrim.weigh.checked import checked
 from discrim.weigh.chemistry import chemistry_findings
 from discrim.weigh.chemistry_conditions import molar, salt_effect
 from discrim.weigh.run import run
@@ -272,3 +273,21 @@ def test_species_that_no_run_is_nearly_without(tmp_path: Path) -> None:
             # 2 of 9
             assert "the least B in any run is 22 % of the most" in found[0][2]
             assert "if a review of their hazards allows" in found[0][2]
+
+
+def test_check_remarks_before_any_fit(tmp_path: Path) -> None:
+    """Also where the rates are still to be measured."""
+    columns = {
+        "A": given("A", A),
+        "T": ('is = "temperature"\nerror = { sd = "0.01 K", origin = "measured" }', "K",
+              np.linspace(298.0, 308.0, 8)),
+        "rate": rate(0.3 * A * NOISE),
+    }  # fmt: skip
+    told = remarks(tmp_path, columns, FIRST)
+    before = checked(discrim.load(tmp_path / "study.toml"))["findings"]
+    assert [(f["severity"], f["where"], f["says"]) for f in before] == told
+    table = (tmp_path / "runs.csv").read_text().splitlines()
+    planned = [table[0]] + [line.rpartition(",")[0] + "," for line in table[1:]]
+    (tmp_path / "runs.csv").write_text("\n".join(planned) + "\n")
+    again = checked(discrim.load(tmp_path / "study.toml"))["findings"]
+    assert told[0][2] in [f["says"] for f in again]
