@@ -10,6 +10,7 @@ freed from either side.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -19,7 +20,8 @@ from discrim.fit.scout import starting_values
 
 # the score takes out what is left of the gradient of the others, so 1e-6 is plenty
 OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
-BRIEF = Options(max_iterations=20, gradient_tolerance=1e-6, step_tolerance=1e-9)
+BRIEF = replace(OPTIONS, max_iterations=20)
+SHORT = replace(OPTIONS, max_iterations=10)
 # fewer values than this of one constant have no neighbours worth hearing from
 FEW = 3
 # how far the objective may be from that of a linear law to be taken for it
@@ -164,30 +166,22 @@ def _searched(
     close = np.abs(line - plain) <= 0.5 * np.abs(plain)
     near = (close | fixed).all(axis=1)
     alone = np.concatenate([np.full(len(v), len(v) < FEW) for v in values])
-    start = np.where((near & ~alone)[:, None], line, plain)
-    sol = solve(problem, start, fixed=fixed, options=BRIEF)
+    hints, hinted = _hints(trails, values, parts)
+    other = np.flatnonzero(alone)
+    fresh = np.tile(np.arange(s), afresh)
+    spread = np.repeat(starting_values(problem.predictor, afresh, seed=1), s, axis=0)
+    rows = np.concatenate([np.arange(s), other, hinted, fresh])
+    start = np.concatenate(
+        [np.where((near & ~alone)[:, None], line, plain), line[other], hints, spread]
+    )
+    start = np.where(fixed[rows], plain[rows], start)
+    every = solve(problem, start, fixed=fixed[rows], options=BRIEF)
+    sol, _ = improved(
+        problem, every.take(np.arange(s)), rows[s:], every.take(np.arange(s, len(rows)))
+    )
     rows = np.flatnonzero((sol.state == STEP_LIMIT) & (alone | (sol.objective <= hopeless)))
     if len(rows):
-        further = solve(
-            problem,
-            sol.theta[rows],
-            fixed=fixed[rows],
-            options=OPTIONS,
-            conditions=sol.conditions[rows],
-        )
-        sol, _ = improved(problem, sol, rows, further)
-    starts, rows = _hints(trails, values, parts)
-    other = np.flatnonzero(alone)
-    starts, rows = np.concatenate([line[other], starts]), np.concatenate([other, rows])
-    if len(rows):
-        again = solve(problem, starts, fixed=fixed[rows], options=OPTIONS)
-        sol, _ = improved(problem, sol, rows, again)
-    if afresh:
-        rows = np.tile(np.arange(s), afresh)
-        spread = np.repeat(starting_values(problem.predictor, afresh, seed=1), s, axis=0)
-        spread = np.where(fixed[rows], plain[rows], spread)
-        again = solve(problem, spread, fixed=fixed[rows], options=BRIEF)
-        sol, _ = improved(problem, sol, rows, again)
+        sol, _ = improved(problem, sol, rows, _further(problem, sol.take(rows), fixed[rows]))
     if is_linear(problem):
         return sol
     straight = np.zeros(s, bool)
@@ -195,6 +189,10 @@ def _searched(
         for trail, v, part in zip(trails, values, parts, strict=True):
             straight[part] = _straight(trail, v, sol.objective[part])
     return _swept(problem, sol, values, parts, plain, fixed, hopeless, straight)
+
+
+def _further(problem: Problem, sol: Solution, fixed: np.ndarray) -> Solution:
+    return solve(problem, sol.theta, fixed=fixed, options=OPTIONS, conditions=sol.conditions)
 
 
 def _straight(trail: Trail, values: np.ndarray, objective: np.ndarray) -> np.ndarray:
@@ -236,8 +234,14 @@ def _swept(
             break
         start = np.where(fixed[row], plain[row], sol.theta[origin])
         again = solve(
-            problem, start, fixed=fixed[row], options=OPTIONS, conditions=sol.conditions[origin]
+            problem, start, fixed=fixed[row], options=SHORT, conditions=sol.conditions[origin]
         )
+        # what is lower already is worth carrying on
+        on = (again.state == STEP_LIMIT) & (problem.merit(again) < problem.merit(sol)[row])
+        on &= again.objective <= hopeless
+        if on.any():
+            again = joined([again])  # own, writable arrays
+            again.put(np.flatnonzero(on), _further(problem, again.take(on), fixed[row[on]]))
         sol, came = improved(problem, sol, row, again)
         if not came.any():
             break

@@ -144,15 +144,24 @@ class Problem:
                 add_source(w, s, s.sd(conditions[..., s.target]), by_conditions[..., s.target])
         return w
 
+    def errors_of(self, conditions: np.ndarray) -> list[np.ndarray]:
+        """Standard deviations of the measured conditions, one array for each source."""
+        return [s.sd(conditions[..., s.target]) for s in self.measured]
+
     def with_measured(
-        self, w: np.ndarray, conditions: np.ndarray, by_conditions: np.ndarray | None
+        self,
+        w: np.ndarray,
+        conditions: np.ndarray,
+        by_conditions: np.ndarray | None,
+        sds: list[np.ndarray] | None = None,
     ) -> np.ndarray:
-        """V = W + F S_measured F', the errors taken at ``conditions``."""
+        """V = W + F S_measured F', the errors taken at ``conditions`` (``sds``, where known)."""
         if by_conditions is None or not self.measured:
             return w
         v = w.copy()
-        for s in self.measured:
-            add_source(v, s, s.sd(conditions[..., s.target]), by_conditions[..., s.target])
+        sds = sds or self.errors_of(conditions)
+        for s, sd in zip(self.measured, sds, strict=True):
+            add_source(v, s, sd, by_conditions[..., s.target])
         return v
 
     def moved(
@@ -161,12 +170,13 @@ class Problem:
         conditions: np.ndarray,
         by_conditions: np.ndarray,
         weighted: np.ndarray,
+        sds: list[np.ndarray] | None = None,
     ) -> np.ndarray:
-        """Reconciled conditions: nominal + S_c F' V^-1 e, the errors S_c taken at ``conditions``;
-        ``weighted`` = V^-1 e, shape (S, N)."""
+        """Reconciled conditions: nominal + S_c F' V^-1 e, the errors S_c taken at ``conditions``
+        (``sds``, where known); ``weighted`` = V^-1 e, shape (S, N)."""
         out = np.array(np.broadcast_to(nominal, conditions.shape))
-        for s in self.measured:
-            sd = s.sd(conditions[..., s.target])
+        sds = sds or self.errors_of(conditions)
+        for s, sd in zip(self.measured, sds, strict=True):
             pull = sd * by_conditions[..., s.target] * weighted
             if not s.individual:
                 same = (s.groups[:, None] == s.groups[None, :]).astype(float)
@@ -225,6 +235,7 @@ class Problem:
             r = white.vector(error)
             g = white.matrix(pred.by_constants)
         else:
+            sds = [] if errors_at is None else self.errors_of(errors_at)
             for k in range(passes):
                 pred, conditions = self._predicted(theta, conditions)
                 pred = _silenced(pred, absent)
@@ -238,14 +249,16 @@ class Problem:
                     error = error - np.einsum("snm,snm->sn", f_c, nominal - conditions)
                 error = _zeroed(error, absent)
                 there = conditions if errors_at is None else errors_at
-                cov = self.with_measured(w, there, f_c)
+                if errors_at is None:
+                    sds = self.errors_of(conditions)
+                cov = self.with_measured(w, there, f_c, sds)
                 if absent is not None:
                     cov = not_counting(cov, absent)
                 white = Whitener(cov)
                 r = white.vector(error)
                 if not self.measured or k == passes - 1:
                     break
-                conditions = self.moved(nominal, there, f_c, white.transposed(r))
+                conditions = self.moved(nominal, there, f_c, white.transposed(r), sds)
             by_constants = pred.by_constants
             assert by_constants is not None
             g = white.matrix(by_constants)
