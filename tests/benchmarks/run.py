@@ -17,7 +17,7 @@ from pathlib import Path
 
 import numpy as np
 
-from tests.benchmarks import derive_speed
+from tests.benchmarks import derive_speed, interval_speed
 from tests.benchmarks.fit_speed import RUNS, STARTS, ratios
 
 HERE = Path(__file__).parent
@@ -37,6 +37,7 @@ def seconds(command: list[str], times: int = 5) -> float:
 
 def main() -> None:
     fit = ratios()
+    intervals = interval_speed.ratios()
     with tempfile.TemporaryDirectory() as folder:
         weigh = seconds(
             [sys.executable, "-m", "discrim", "weigh", str(DEMO), "--out", f"{folder}/results"]
@@ -62,6 +63,11 @@ def main() -> None:
         f"| times faster than plain | {fit['times faster than plain']:.0f} | 50 |",
         f"| times faster than expert | {fit['times faster than expert']:.1f} | 5 |",
         f"| tables with an optimum as good as any | {100 * fit['best optimum reached']:.0f} % | |",
+        f"| all intervals of five constants, 24 runs with condition errors | "
+        f"{1e3 * intervals['interval seconds']:.0f} ms | |",
+        f"| its fit from {interval_speed.STARTS} starts | {1e3 * intervals['fit seconds']:.1f} ms | |",
+        f"| intervals over fit, median of nine tables (worst {intervals['worst']:.0f}) | "
+        f"{intervals['intervals over fit']:.0f} | at most 30 |",
         f"| `discrim weigh` on the first demo | {weigh:.2f} s | |",
         f"| bare imports (`{IMPORTS}`) | {bare:.2f} s | |",
         f"| weigh over imports | {weigh / bare:.2f} | at most 4 |",
