@@ -62,11 +62,12 @@ def _follows(found: Any) -> tuple[str, str]:
     if not trends:
         return MISSING, MISSING
     first = min(trends, key=lambda t: read.value(t, "p") or 0.0)
-    slope = read.text(first, "slope")
+    together = read.value(first, "p_all")
+    slope = read.text(first, "slope") if together is not None and together < 0.05 else ""
     names = ", ".join(read.texts(first, "columns"))
     return (
         f"{names} ({slope})" if slope else names,
-        probability(read.value(first, "p_all")),
+        probability(together),
     )
 
 

@@ -20,7 +20,7 @@ FEW_RUNS = 3
 # beside the verdict and as a finding, since how often verdicts are wrong already counts such tables.
 ONE_RUN_STOPS = False
 # Findings about residuals: a trend is called one below this p (all trends of one law together), and
-# so are the other patterns, each by itself.
+# so are the other patterns, each by itself: about one study in twenty gets one of them by chance.
 TREND = 0.01
 PATTERN = 0.01
 # A run further off than chance would throw the farthest of them.

@@ -175,7 +175,7 @@ def _moves_with_error(c: Column, bench: Bench) -> bool:
 
 
 def _one(c: Column, bench: Bench) -> Followed | None:
-    n = bench.measurements.n
+    n = len(np.unique(bench.runs))
     if c.role is Role.RUN and not _numbers_in_order(c):
         return None
     x = c.values[bench.runs]

@@ -31,6 +31,7 @@ from discrim.mechanism.model import Mechanism
 from discrim.ratelaw.model import constant_symbol
 from discrim.runs.model import Role
 from discrim.units import Unit
+from discrim.weigh.document_values import number
 
 if TYPE_CHECKING:
     from discrim.weigh.run import Weighed
@@ -327,9 +328,9 @@ def magnitudes_record(w: Weighed, i: int) -> list[dict[str, Any]]:
         {
             "name": m.name,
             "step_constant": m.step,
-            "value": m.value,
-            "low": m.low,
-            "limit": m.limit,
+            "value": number(m.value),
+            "low": number(m.low),
+            "limit": number(m.limit),
             "units": m.units,
             "limit_is": m.words,
             "above": m.above,

@@ -13,6 +13,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 import statsmodels.api as sm
+from scipy import stats
 from statsmodels.sandbox.stats.runs import runstest_1samp
 from statsmodels.stats.diagnostic import het_breuschpagan, normal_ad
 from statsmodels.stats.multitest import multipletests
@@ -212,13 +213,21 @@ def test_runs_are_counted_as_statsmodels_counts_them() -> None:
 
 
 def test_reference_of_runs_without_constants_is_the_table() -> None:
-    """With nothing fitted the drawn reference is that of random signs: (n - 1)/2 + 1 runs."""
+    """With nothing fitted the changes of random signs are binomial, n - 1 of one half each."""
     n = 16
     null = draws(n, 1, 40_000)
     plain = Residuals(null[0], np.zeros((n, 0)), np.ones(n), np.eye(n), np.ones(n))
     found = runs_of_signs(plain, np.arange(n), projected(plain, null))
     assert found is not None
     assert found.expected == pytest.approx((n - 1) / 2 + 1, abs=0.03)
+    for k in range(1, 8):
+        alike = np.where(np.arange(n) * k // n % 2 == 0, 1.0, -1.0)
+        few = Residuals(alike, np.zeros((n, 0)), np.ones(n), np.eye(n), np.ones(n))
+        seen = runs_of_signs(few, np.arange(n), projected(few, null))
+        assert seen is not None
+        assert seen.statistic == k
+        exact = stats.binom.cdf(k - 1, n - 1, 0.5)
+        assert seen.p == pytest.approx(exact, abs=3 * np.sqrt(exact / 40_000) + 5e-5)
 
 
 def test_patterns_are_found_where_they_are() -> None:
