@@ -11,6 +11,7 @@ from discrim.evidence.distributions import (
     normal_quantile,
     t_quantile,
 )
+from discrim.evidence.score import NO_INFORMATION
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 
@@ -80,9 +81,13 @@ class Acceptance:
         # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
         # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960)
         # 41), which never binds for a linear law, so nothing is spent on it. Else void.
-        self.guard, self.unit = np.inf, 1.0
+        self.guard, self.alone, self.unit = np.inf, np.inf, 1.0
         if fit.data.scale is Scale.STATED:
-            self.guard = chi2_quantile_upper(self.spend, max(n - (p - 1), 1))
+            df = max(n - (p - 1), 1)
+            self.guard = chi2_quantile_upper(self.spend, df)
+            # where the constant is in exact lockstep with others no score can be had, at any value:
+            # the objective has all of alpha to itself
+            self.alone = chi2_quantile_upper(1.0 - self.level, df)
             self.unit = max(self.guard, 1.0)
         elif free and dof > 0 and base > 0:
             f = f_quantile_upper(min(FAR, 0.2 * (1.0 - self.level)), p, dof)
@@ -97,7 +102,8 @@ class Acceptance:
 
     def _q_ok(self, pts: Points) -> np.ndarray:
         with np.errstate(invalid="ignore"):
-            margin = self.guard - pts.objective
+            untestable = pts.score.information <= NO_INFORMATION
+            margin = np.where(untestable, min(self.alone, self.guard), self.guard) - pts.objective
         return np.where(np.isfinite(pts.objective), margin, -np.inf)
 
     def profile(self, pts: Points) -> np.ndarray:

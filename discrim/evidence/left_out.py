@@ -14,11 +14,17 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from discrim.evidence.distributions import chi2_upper, f_upper, normal_of_tail, normal_quantile
+from discrim.evidence.distributions import (
+    chi2_upper,
+    normal_of_tail,
+    normal_quantile,
+    normal_upper,
+)
 from discrim.evidence.effect import t_of
 from discrim.evidence.intervals import guard_level
-from discrim.evidence.rivals import Standing, studentised
+from discrim.evidence.rivals import SHARE_OVERALL, Standing, studentised
 from discrim.evidence.score import NO_INFORMATION, basis, score, to_normal, without
+from discrim.evidence.several import several
 from discrim.evidence.term import Kind, Participation, Term
 from discrim.evidence.term_effect import chosen_point, in_effect
 from discrim.evidence.term_tests import vanishing
@@ -117,7 +123,7 @@ def term_left_out(
         wider = _each(data.with_condition_errors_times(factor), run_of, absence)
     below = np.full(n_runs, np.nan)
     if matters_above is not None and _may_be_small(term, data, whole, matters_above):
-        below = _each(data, run_of, lambda d: _below(term, d, full, matters_above))
+        below = _each(data, run_of, lambda d: still_below(term, d, full, matters_above))
     return TermLeftOut(z + shift, wider + shift, below)
 
 
@@ -137,29 +143,52 @@ def _may_be_small(
 
 def law_left_out(fit: Fit, whole: Standing, run_of: np.ndarray) -> LawLeftOut:
     """What could reject a law with each run left out, along the directions that it has with all."""
+
+    def both(table: Measurements) -> np.ndarray:
+        found = law_again(fit, whole, table)
+        return np.stack([found.fit, found.along], axis=1)
+
+    out = _each(fit.data, run_of, both)
+    return LawLeftOut(out[:, 0], out[:, 1])
+
+
+def law_again(fit: Fit, whole: Standing, table: Measurements) -> LawLeftOut:
+    """What could reject a law on each table of a batch, along the directions that ``whole`` has."""
     data = fit.data
-    known = data.scale is not Scale.ESTIMATED
-    estimated = not known and not fit.problem.with_conditions
+    estimated = data.scale is Scale.ESTIMATED and not fit.problem.with_conditions
     lines = np.array([a.direction for a in whole.against]).reshape(-1, data.n).T
-    lines = _unwhitened(fit, lines)
+    sol = _solved(Problem(fit.predictor, table), fit, None)
+    df = table.count - fit.p
+    q = sol.objective
+    of_fit = np.full(len(q), np.nan)
+    if data.scale is Scale.STATED and df > 0:
+        of_fit = normal_of_tail([chi2_upper(float(x), df) for x in q])
+    z = np.abs(_along(sol, _unwhitened(fit, lines), np.arange(fit.p)))
+    if estimated:
+        z = to_normal(studentised(z, q[:, None], df), float(max(df - 1, 1)))
+    elif data.scale is Scale.REPLICATES:
+        z = to_normal(z, float(data.scale_df))
+    return LawLeftOut(of_fit, z.max(axis=1, initial=0.0))
 
-    def tested(table: Measurements) -> np.ndarray:
-        problem = Problem(fit.predictor, table)
-        sol = _solved(problem, fit, None)
-        df = table.count - fit.p
-        q = sol.objective
-        of_fit = np.full(len(q), np.nan)
-        if data.scale is Scale.STATED and df > 0:
-            of_fit = normal_of_tail([chi2_upper(float(x), df) for x in q])
-        z = np.abs(_along(sol, lines, np.arange(fit.p)))
-        if estimated:
-            z = to_normal(studentised(z, q[:, None], df), float(max(df - 1, 1)))
-        elif data.scale is Scale.REPLICATES:
-            z = to_normal(z, float(data.scale_df))
-        return np.stack([of_fit, z.max(axis=1, initial=0.0)], axis=1)
 
-    both = _each(data, run_of, tested)
-    return LawLeftOut(both[:, 0], both[:, 1])
+def slack_of(left: LawLeftOut, whole: Standing, fit: Fit, alpha: float) -> np.ndarray:
+    """By how many standard deviations a law stands, shape (R,); negative where it is rejected."""
+    spend = alpha if whole.p_fit is None else alpha * (1.0 - SHARE_OVERALL)
+    slack = np.full(len(left.fit), np.inf)
+    if whole.p_fit is not None:
+        slack = float(normal_of_tail(alpha * SHARE_OVERALL)) - left.fit
+    if whole.against:
+        df = float("inf")
+        if fit.data.scale is Scale.REPLICATES:
+            df = float(fit.data.scale_df)
+        elif fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions:
+            df = float(max(fit.degrees_of_freedom - 1, 1))
+        # several directions count as this many independent ones
+        largest = float(to_normal(np.array([whole.largest]), df)[0])
+        single = 2.0 * float(normal_upper(largest))
+        several = float(np.clip(whole.p_joint / max(single, 1e-300), 1.0, len(whole.against)))
+        slack = np.fmin(slack, float(normal_of_tail(spend / several / 2.0)) - left.along)
+    return np.where(np.isnan(slack), np.inf, slack)
 
 
 # ---- pieces -----------------------------------------------------------------------------------
@@ -282,28 +311,10 @@ def _or_objective(
 def _several(term: Term, table: Measurements, full: Fit) -> np.ndarray:
     problem = Problem(term.full, table)
     sol = _solved(problem, full, dict.fromkeys(term.psi, 0.0))
-    others = [j for j in range(full.p) if j not in term.psi]
-    space = basis(sol.jacobian[:, :, others])
-    g = np.stack([without(space, sol.jacobian[:, :, j]) for j in term.psi], axis=2)
-    own = basis(g)
-    k = (np.einsum("snq,sn->sq", own, sol.residual) ** 2).sum(axis=1)
-    q = (np.abs(own).sum(axis=1) > 0).sum(axis=1)
-    df = table.count - full.p
-    estimated = table.scale is Scale.ESTIMATED and not problem.with_conditions
-    out = np.full(len(k), np.nan)
-    for i in range(len(k)):
-        if not q[i] or not np.isfinite(sol.objective[i]) or (estimated and df < 1):
-            continue
-        if estimated:
-            rest = max(float(sol.objective[i] - k[i]), 1e-300) / df
-            tail = f_upper(float(k[i] / q[i] / rest), float(q[i]), float(df))
-        else:
-            tail = chi2_upper(float(k[i]), float(q[i]))
-        out[i] = float(normal_of_tail(min(tail, 1.0) / 2))
-    return out
+    return several(problem, sol, term.psi)[0]
 
 
-def _below(term: Term, table: Measurements, full: Fit, matters_above: float) -> np.ndarray:
+def still_below(term: Term, table: Measurements, full: Fit, matters_above: float) -> np.ndarray:
     """Equivalent normal of the test of an effect of ``matters_above``, towards a smaller one."""
     assert table.absent is not None
     wrapped = in_effect(term, full.theta, chosen_point(term, full.theta))
