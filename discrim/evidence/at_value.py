@@ -159,6 +159,7 @@ def _test(
         seed=seed,
         matters_above=None,
         brief=brief,
+        flips=False,
     )
     return found, ""
 
