@@ -65,6 +65,8 @@ class InEffect:
         self.scale = inner.scale.copy()
         self.scale[psi] = 0.1
         self.starts = np.zeros((0, len(inner.names)))
+        # the constants solved last: each step asks for the same ones several times over
+        self._last: tuple[np.ndarray, np.ndarray, np.ndarray] | None = None
 
     def to_inner(self, theta: np.ndarray) -> np.ndarray:
         """Constants of the inner predictor, shape (S, p): solves f = exp(T) f0 for psi."""
@@ -72,49 +74,52 @@ class InEffect:
 
     def _solved(self, theta: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Inner constants and the derivatives of psi by (T, others), both shape (S, p)."""
+        last = self._last
+        if last is None or not np.array_equal(last[0], theta):
+            self._last = last = (theta.copy(), *self._solve(theta))
+        return last[1].copy(), last[2]
+
+    def _solve(self, theta: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         psi = self.psi
         out = theta.copy()
         t = theta[:, psi]
+
+        def full(values: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+            out[:, psi] = values
+            return self.knocked.with_gradient(out, self.condition, knocked_out=False)
+
         out[:, psi] = 1.0 if self.logarithmic else 0.0
         f0, g0 = self.knocked.with_gradient(out, self.condition, knocked_out=True)
-        f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+        now = out[:, psi].copy()
+        f, g = full(now)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             ratio = np.exp(t)
             target = ratio * f0
             if self.logarithmic:  # an order: log f is linear in psi, one step is exact
-                out[:, psi] = t / np.log(f / f0)
-                f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+                f, g = full(t / np.log(f / f0))
             else:
                 for _ in range(60):
                     slope = g[:, psi]
                     # what adds is close to linear in psi, what inhibits has 1/f close to linear
-                    up = (target - f) / slope
-                    down = (1.0 / target - 1.0 / f) * (-(f**2) / slope)
-                    step = np.where(t >= 0, up, down)
-                    # what is subtracted is linear too: there the other step runs past f = 0
-                    past = self._value(out, psi, step) <= 0
-                    step = np.where(past & (t < 0), up, step)
-                    step = np.where(np.isfinite(step), step, 0.0)
-                    new = np.maximum(out[:, psi] + step, 0.0)
-                    moved = np.abs(new - out[:, psi]) > 1e-13 * np.abs(new)
+                    up = _finite((target - f) / slope)
+                    down = _finite((1.0 / target - 1.0 / f) * (-(f**2) / slope))
+                    new = np.maximum(now + np.where(t >= 0, up, down), 0.0)
+                    moved = np.abs(new - now) > 1e-13 * np.abs(new)
                     if not moved.any():
                         break
-                    out[:, psi] = new
-                    f, g = self.knocked.with_gradient(out, self.condition, knocked_out=False)
+                    f, g = full(new)
+                    # what is subtracted is linear too: there the other step runs past f = 0
+                    past = (f <= 0) & (t < 0) & moved
+                    if past.any():
+                        new = np.where(past, np.maximum(now + up, 0.0), new)
+                        f, g = full(new)
+                    now = new
                     if (np.abs(f - target) <= 1e-13 * np.abs(target)).all():
                         break
             slope = g[:, psi]
             row = -(g - ratio[:, None] * g0) / slope[:, None]
             row[:, psi] = target / slope
-        return out, np.where(np.isfinite(row), row, 0.0)
-
-    def _value(self, inner: np.ndarray, psi: int, step: np.ndarray) -> np.ndarray:
-        """f where psi is moved by ``step``."""
-        if not (step != 0).any() or self.sign > 0:
-            return np.ones(len(inner))
-        moved = inner.copy()
-        moved[:, psi] += np.where(np.isfinite(step), step, 0.0)
-        return self.knocked.rates(moved, self.condition[None])[0][:, 0]
+        return out, _finite(row)
 
     def from_inner(self, theta: np.ndarray) -> np.ndarray:
         """The other way, shape (S, p)."""
@@ -148,3 +153,7 @@ class InEffect:
             by_both = by_both + own_b[..., None] * row[:, None, None, :]
             by_both[..., self.psi] = own_b * row[:, None, None, self.psi]
         return Prediction(pred.values, by_constants, pred.by_conditions, by_both)
+
+
+def _finite(x: np.ndarray) -> np.ndarray:
+    return np.where(np.isfinite(x), x, 0.0)
