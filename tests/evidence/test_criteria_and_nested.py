@@ -17,7 +17,8 @@ from scipy import stats
 from discrim.evidence.adequacy import lack_of_fit
 from discrim.evidence.criteria import Criteria, criteria, weights
 from discrim.evidence.curve import Curve
-from discrim.evidence.score import p_one_sided
+from discrim.evidence.score import p_one_sided, score
+from discrim.evidence.several import several
 from discrim.evidence.term_tests import nested_f
 from discrim.fit.engine import Problem, solve
 from discrim.fit.fit import Fit, fit
@@ -184,6 +185,8 @@ def test_criteria_against_statsmodels(q: int) -> None:
     assert digits(mine.log_likelihood, other.llf) >= 10
     assert digits(mine.aic - 2, other.aic) >= 10
     assert digits(mine.bic - np.log(20), other.bic) >= 10
+    tools = pytest.importorskip("statsmodels.tools.eval_measures")
+    assert digits(mine.aicc, tools.aicc(other.llf, 20, q + 2)) >= 10
 
 
 @pytest.mark.parametrize(("small", "large"), [(1, 2), (1, 3), (2, 3)])
@@ -193,8 +196,8 @@ def test_nested_f_against_statsmodels(small: int, large: int) -> None:
     found = nested_f(b, a, edge=False)
     assert found is not None
     assert found.df == (int(df), b.degrees_of_freedom)
-    assert digits(found.statistic, f) >= 9
-    assert digits(found.p, p) >= 9
+    assert digits(found.statistic, f) >= 10
+    assert digits(found.p, p) >= 10
 
 
 @pytest.mark.parametrize("q", [1, 2, 3])
@@ -211,10 +214,31 @@ def test_score_is_the_extra_sum_of_squares_for_linear_laws(q: int, value: float)
         restriction[0, j] = 1.0
         test = other.f_test((restriction, [value]))
         t = float(at.score.raw[0])
-        assert digits(t**2, float(np.squeeze(test.fvalue))) >= 8
+        assert digits(t**2, float(np.squeeze(test.fvalue))) >= 10
         assert np.sign(t) == np.sign(other.params[j] - value)
         p = 2 * p_one_sided(abs(float(at.z[0])))
-        assert digits(p, float(test.pvalue)) >= 8
+        assert digits(p, float(test.pvalue)) >= 10
+
+
+@pytest.mark.parametrize(("small", "large"), [(1, 2), (1, 3), (2, 3)])
+def test_extra_sum_of_squares_is_the_reconciled_test_for_linear_laws(
+    small: int, large: int
+) -> None:
+    """Two ways that share no arithmetic: F of two fits, and K of the larger law at the restricted
+    optimum, for one constant and for two at once; the p-value of both is that of statsmodels."""
+    (a, a_other), (b, b_other) = _linear(small), _linear(large)
+    tested = list(range(small + 1, large + 1))
+    start = np.insert(a.theta, small + 1, np.zeros(len(tested)))[None]
+    held = np.isin(np.arange(b.p), tested)
+    restricted = solve(b.problem, start, fixed=held)
+    z, _ = several(b.problem, restricted, tested)
+    two_fits = nested_f(b, a, edge=False)
+    assert two_fits is not None
+    assert digits(2 * p_one_sided(float(z[0])), two_fits.p) >= 10
+    assert digits(2 * p_one_sided(float(z[0])), b_other.compare_f_test(a_other)[1]) >= 10
+    if len(tested) == 1:
+        t = float(score(b.problem, restricted, tested[0]).raw[0])
+        assert digits(t**2, two_fits.statistic) >= 10
 
 
 def test_score_with_stated_errors_is_the_wald_z_for_linear_laws() -> None:
