@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cache, cached_property
 from typing import Any
 
 import numpy as np
@@ -60,6 +60,9 @@ class Law:
 
     def predictor(self, observations: int, *, with_term: bool = True) -> RatePredictor:
         """What is observed, less what is computed from the conditions where the law has `formula`."""
+        return _predictor(self, observations, with_term)
+
+    def _made(self, observations: int, with_term: bool) -> RatePredictor:
         expression = self.rate if with_term else self.without
         if self.formula is not None:
             expression = expression - self.formula
@@ -77,6 +80,7 @@ class Law:
             starts=np.zeros((0, len(constants))),
         )
 
+    @cached_property
     def knocked(self) -> KnockedOut:
         """Rates with and without the term."""
         both = [
@@ -84,6 +88,11 @@ class Law:
             for x in (self.rate, self.without)
         ]
         return KnockedOut(both[0], both[1], np.arange(len(self.constants)))
+
+
+@cache
+def _predictor(law: Law, observations: int, with_term: bool) -> RatePredictor:
+    return law._made(observations, with_term)
 
 
 def _amount(rng: np.random.Generator, shape: tuple[int, int]) -> Array:

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
+from discrim.evidence.acceptance import guard_level
 from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile
-from discrim.evidence.intervals import guard_level
 from discrim.evidence.score import basis, score, without
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, Solution
@@ -15,9 +15,12 @@ from tests.calibration.simulate import Drawn
 ALPHA = 0.05
 
 
-def score_z(problem: Problem, held: Solution, psi: int = 0) -> np.ndarray:
-    """Equivalent normal of the score at the restricted fits ``held``, shape (S,)."""
-    return score(problem, held, psi).z
+def score_z(
+    problem: Problem, held: Solution, psi: int = 0, *, conditional: bool = True
+) -> np.ndarray:
+    """Equivalent normal of the test at the restricted fits ``held``, shape (S,): the conditional
+    likelihood ratio where the package uses it, K in its place with ``conditional`` False."""
+    return score(problem, held, psi, conditional=conditional).z
 
 
 def excluded(problem: Problem, held: Solution, z: np.ndarray, *, two_sided: bool) -> np.ndarray:
@@ -38,19 +41,20 @@ def oracle(drawn: Drawn) -> tuple[np.ndarray, np.ndarray]:
     """z of an oracle, and its mean for each unit of the constant in question, shape (S,) each.
 
     The score along the true sensitivities with the noise of the tables: e = y - f(printed conditions;
-    term at zero, others true); V and the sensitivities are taken at the truth, which no one knows. The
-    other constants are projected out, as they have to be estimated.
+    term at zero, others true); V and the sensitivities are taken at the true constants and at what the
+    errors of the conditions are independent of, which no one knows. The other constants are projected
+    out, as they have to be estimated.
     """
     problem, truth = drawn.problem, drawn.truth
     null = truth.copy()
     null[:, 0] = 0.0
     shown = problem.data.conditions
     e = problem.data.y - problem.predictor.predict(null, shown, constants=False).values
-    at = problem.predictor.predict(truth, drawn.conditions, conditions_too=True)
+    at = problem.predictor.predict(truth, drawn.base, conditions_too=True)
     assert at.by_constants is not None
     scale2 = np.full(drawn.studies, drawn.variance)
-    v = problem.own_covariance(at.values, drawn.conditions, at.by_conditions, scale2)
-    white = Whitener(problem.with_measured(v, drawn.conditions, at.by_conditions))
+    v = problem.own_covariance(at.values, drawn.base, at.by_conditions, scale2)
+    white = Whitener(problem.with_measured(v, drawn.base, at.by_conditions))
     g = white.matrix(at.by_constants)
     along = without(basis(g[:, :, 1:]), g[:, :, 0])
     length = np.sqrt(np.einsum("sn,sn->s", along, along))

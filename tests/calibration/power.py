@@ -33,7 +33,9 @@ def run_power(cell: Cell, studies: int, seed: int) -> Counts:
     need = normal_quantile(1 - ALPHA)
     out = Counts(cell, studies)
     out.false["oracle"] = int((oracle(drawn)[0] > need).sum())
-    out.false["score"] = int((score_z(drawn.problem, held) > need).sum())
+    for name, conditional in (("K", False), ("conditional", True)):
+        z = score_z(drawn.problem, held, conditional=conditional)
+        out.false[name] = int((z > need).sum())
     if drawn.problem.data.scale is Scale.STATED:
         fall = held.objective - free.objective
         up = free.theta[:, 0] > 0

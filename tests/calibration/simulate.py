@@ -8,7 +8,7 @@ import numpy as np
 
 from discrim.evidence.term import Kind, Term
 from discrim.fit.engine import Options, Problem, Solution, solve
-from discrim.fit.fit import Fit, fit, of_solution
+from discrim.fit.fit import Fit, of_solution
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
 from tests.calibration.cells import Cell
 from tests.calibration.laws import LAWS, Law
@@ -26,7 +26,8 @@ class Drawn:
     """A batch of S studies of one cell.
 
     ``truth`` shape (S, p), the constant in question first; ``conditions`` true, shape (S, N, m);
-    ``variance`` the true one of the observations where it is unknown to the studies.
+    ``base`` what their errors are independent of, true values of measured and nominal ones of set
+    conditions; ``variance`` the true one of the observations where it is unknown to the studies.
     """
 
     cell: Cell
@@ -34,6 +35,7 @@ class Drawn:
     problem: Problem
     truth: np.ndarray
     conditions: np.ndarray
+    base: np.ndarray
     variance: float = 0.0
 
     @property
@@ -61,13 +63,19 @@ class Drawn:
         data = self.problem.data
         return replace(data, y=data.y[i], conditions=data.conditions[i])
 
-    def fits(self, i: int, free: Solution) -> tuple[Fit, Fit]:
+    def without(self) -> Solution:
+        """Fits of the law without the term, as one batch."""
+        reduced = self.law.predictor(self.problem.data.n, with_term=False)
+        return solve(Problem(reduced, self.problem.data), self.truth[:, 1:].copy(), options=OPTIONS)
+
+    def fits(self, i: int, free: Solution, without: Solution) -> tuple[Fit, Fit]:
         """Study i with and without the term, as records of the package."""
-        table = self.table(i)
-        full = of_solution(Problem(self.problem.predictor, table), free.take(np.array([i])))
-        without = self.law.predictor(table.n, with_term=False)
-        reduced = fit(without, table, starts=4, near=self.truth[i : i + 1, 1:])
-        return full, reduced
+        table, row = self.table(i), np.array([i])
+        reduced = self.law.predictor(table.n, with_term=False)
+        return (
+            of_solution(Problem(self.problem.predictor, table), free.take(row)),
+            of_solution(Problem(reduced, table), without.take(row)),
+        )
 
     def term(self, at: np.ndarray) -> Term:
         """The term in question with named conditions ``at``, shape (K, m)."""
@@ -75,7 +83,7 @@ class Drawn:
         n = self.problem.data.n
         labels = tuple(f"point {j + 1}" for j in range(len(at)))
         reduced = self.law.predictor(n, with_term=False)
-        knocked = self.law.knocked()
+        knocked = self.law.knocked
         return Term(kind, self.problem.predictor, reduced, (0,), (), knocked, at, labels)
 
 
@@ -120,7 +128,7 @@ def draw(cell: Cell, studies: int, rng: np.random.Generator, psi: float | None =
         cell.scale_df,
     )
     variance = (cell.rate_error * MEAN_RATE) ** 2
-    return Drawn(cell, law, Problem(predictor, data), truth, true, variance)
+    return Drawn(cell, law, Problem(predictor, data), truth, true, base, variance)
 
 
 def _groups(cell: Cell, n: int, samples: int, *, shared: int) -> np.ndarray:

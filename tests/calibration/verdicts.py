@@ -61,9 +61,12 @@ class VerdictResult:
     counts: Counter[str]
 
     @property
+    def wrong_count(self) -> int:
+        return self.counts["participates" if self.cell.share == 0 else "negligible"]
+
+    @property
     def wrong(self) -> float:
-        bad = "participates" if self.cell.share == 0 else "negligible"
-        return self.counts[bad] / self.studies
+        return self.wrong_count / self.studies
 
 
 def run_verdicts(cell: VerdictCell, studies: int, seed: int) -> VerdictResult:
@@ -88,16 +91,19 @@ def run_verdicts(cell: VerdictCell, studies: int, seed: int) -> VerdictResult:
                 f"{x:.5g},{y:.5g},{r:.6g}\n" for x, y, r in zip(*shown, rate, strict=True)
             )
             (path.parent / "runs.csv").write_text("a,b,rate\n" + rows, encoding="utf-8")
-            counts[run(load(path), seed=1).answers[0].verdict.outcome] += 1
+            counts[run(load(path), seed=1, lattices=False).answers[0].verdict.outcome] += 1
     return VerdictResult(cell, studies, counts)
 
 
 VERDICT_CELLS = (
     VerdictCell(0.003, 0.02, 0.0),
     VerdictCell(0.01, 0.02, 0.0),
+    VerdictCell(0.05, 0.02, 0.0),
     VerdictCell(0.5, 0.01, 0.0),
     VerdictCell(0.003, 0.02, 0.2),
+    VerdictCell(0.05, 0.02, 0.2),
     VerdictCell(0.5, 0.01, 0.2),
     VerdictCell(0.5, 0.01, 0.06),
     VerdictCell(0.01, 0.02, 0.0, "set"),
+    VerdictCell(0.1, 0.02, 0.06, "set"),
 )
