@@ -11,14 +11,13 @@ from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile
 from discrim.evidence.effect import effect_of, t_of
 from discrim.evidence.flip_distance import flip_distance
 from discrim.evidence.intervals import guard_level
+from discrim.evidence.margin import factor_where
 from discrim.evidence.term import Kind, Term
 from discrim.evidence.term_effect import chosen_point, in_effect
 from discrim.evidence.term_tests import absence_test, at_zero
 from discrim.fit.engine import Problem
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
-
-MARGIN_FACTORS = (1.0, 1.25, 1.5, 2.0, 3.0, 5.0, 10.0)
 
 
 def error_margin(
@@ -45,17 +44,11 @@ def error_margin(
             again = fit(term.full, problem.data, starts=4, near=full.theta[None])
         return absence_test(term, problem, again, reduced, seed, alpha)[0]
 
-    last, last_z = 1.0, float("nan")
-    for factor in MARGIN_FACTORS:
+    def rejects(factor: float) -> bool:
         z = z_at(factor)
-        value = abs(z) if two_sided else z
-        if not value > critical:
-            if factor == 1.0 or not np.isfinite(last_z) or not np.isfinite(value):
-                return last
-            share = (last_z - critical) / max(last_z - value, 1e-12)
-            return last + (factor - last) * float(np.clip(share, 0.0, 1.0))
-        last, last_z = factor, value
-    return float("inf")
+        return bool((abs(z) if two_sided else z) > critical)
+
+    return factor_where(rejects)
 
 
 def typical_flip(

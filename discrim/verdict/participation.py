@@ -25,7 +25,9 @@ class Reading:
 
     ``p``: that it is absent (one-sided unless ``two_sided``); ``bound``: one-sided bound of the
     size of its effect; ``information``: fraction of the sensitivity outside lockstep; ``weak``:
-    combinations of the other constants that are in lockstep with one another.
+    combinations of the other constants that are in lockstep with one another; ``margin`` and
+    ``margin_of_bound``: factors on the errors of conditions at which the test no longer rejects, and at
+    which an effect that matters is no longer ruled out.
     """
 
     origin: str
@@ -34,11 +36,15 @@ class Reading:
     information: float
     margin: float
     weak: int = 0
+    margin_of_bound: float = float("nan")
 
 
 @dataclass(frozen=True, slots=True)
 class CandidateFacts:
-    """One candidate in a participation question."""
+    """One candidate in a participation question.
+
+    ``stands_at``: of one that is rejected, the factor on the errors of conditions at which it would stand.
+    """
 
     name: str
     stands: bool
@@ -48,6 +54,7 @@ class CandidateFacts:
     assumed_errors: tuple[str, ...]  # columns of the term whose error was only assumed
     factor: bool = False  # it multiplies every pathway
     untestable: str = ""
+    stands_at: float = float("inf")
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,7 +71,9 @@ class Verdict:
     """The answer to a participation question.
 
     ``why``: short reasons with numbers; ``because``: tags of what is to blame when undecided;
-    ``below_what_matters``: participates, yet its effect is under the smallest that matters.
+    ``below_what_matters``: participates, yet its effect is under the smallest that matters;
+    ``error_margin``: the factor on all errors of conditions at which a decided verdict changes, nan where
+    that is not known or conditions are exact.
     """
 
     outcome: Outcome
@@ -74,6 +83,7 @@ class Verdict:
     because: tuple[str, ...] = ()
     below_what_matters: bool = False
     votes: tuple[tuple[str, str], ...] = field(default=())
+    error_margin: float = float("nan")
 
 
 def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[str, list[str]]:
@@ -159,10 +169,17 @@ def judge_participation(
         )
     others = [s for s in stand_ins if s.stands]
     agree = {said[c.name] for c in standing}
-    if agree == {"participates"} and not others:
-        return _participates(subject, about, standing, alpha, matters_above, votes)
+    returns = min((c.stands_at for c in candidates if not c.stands), default=float("inf"))
+    if agree == {"participates"} and returns < ERROR_MARGIN:
+        name = min((c for c in candidates if not c.stands), key=lambda c: c.stands_at).name
+        stops.append(
+            f"“{name}”, which says otherwise, would stand if the condition errors were {returns:.2g} "
+            f"times as large as stated (at least {ERROR_MARGIN:g} is asked)"
+        )
+    elif agree == {"participates"} and not others:
+        return _participates(subject, about, standing, alpha, matters_above, votes, returns)
     if agree == {"negligible"} and matters_above is not None:
-        return _negligible(about, what, standing, matters_above, is_reactant, votes)
+        return _negligible(about, what, standing, matters_above, is_reactant, votes, returns)
     return _undecided(
         about,
         subject,
@@ -186,19 +203,19 @@ def _participates(
     alpha: float,
     matters_above: float | None,
     votes: list[tuple[str, str]],
+    returns: float,
 ) -> Verdict:
     worst = max(r.p for c in standing for r in c.readings)
+    exact = all(c.exact_conditions for c in standing)
     margins = [r.margin for c in standing for r in c.readings if r.margin == r.margin]
+    margins += [] if exact else [returns]
     how = f"the one candidate that stands contains {about}"
     if len(standing) > 1:
         both = "both" if len(standing) == 2 else f"all {len(standing)}"
         how = f"{both} candidates that stand contain {about}"
     rejects = "rejects" if len(standing) == 1 else "each rejects"
     why = [f"{how}, and {rejects} a rate without {about} ({p_value(worst)}, limit {alpha:g})"]
-    if margins:
-        m = min(margins)
-        at_least = "more than 10" if m == float("inf") else f"{m:.2g}"
-        why.append(f"this holds until the condition errors are {at_least} times as large as stated")
+    why += _margin(margins)
     below = False
     sentence = f"The rate depends on {subject}."
     if matters_above is not None:
@@ -209,8 +226,21 @@ def _participates(
                 "that matters."
             )
     return Verdict(
-        "participates", sentence, tuple(why), below_what_matters=below, votes=tuple(votes)
+        "participates",
+        sentence,
+        tuple(why),
+        below_what_matters=below,
+        votes=tuple(votes),
+        error_margin=min(margins, default=float("nan")),
     )
+
+
+def _margin(margins: Sequence[float]) -> list[str]:
+    if not margins:
+        return []
+    m = min(margins)
+    at_least = "more than 10" if m == float("inf") else f"{m:.2g}"
+    return [f"this holds until the condition errors are {at_least} times as large as stated"]
 
 
 def _negligible(
@@ -220,6 +250,7 @@ def _negligible(
     matters_above: float,
     is_reactant: bool,
     votes: list[tuple[str, str]],
+    returns: float,
 ) -> Verdict:
     with_it = [c for c in standing if c.contains]
     bounds = [r.bound for c in with_it for r in c.readings]
@@ -243,7 +274,18 @@ def _negligible(
         )
     else:
         why = (f"no candidate that stands contains {about}",)
-    return Verdict("negligible", sentence, why, votes=tuple(votes))
+    found = [r.margin_of_bound for c in with_it for r in c.readings]
+    margins: list[float] = []
+    # one that is not known leaves the whole unknown
+    if not all(c.exact_conditions for c in standing) and all(m == m for m in found):
+        margins = [*found, returns]
+    return Verdict(
+        "negligible",
+        sentence,
+        (*why, *_margin(margins)),
+        votes=tuple(votes),
+        error_margin=min(margins, default=float("nan")),
+    )
 
 
 def _undecided(

@@ -51,7 +51,8 @@ _KIND = {
 class InCandidate:
     """One candidate in a participation question; ``by_origin`` empty when it does not contain it.
 
-    ``term`` and ``without``: what was tested, and the fits of the law without it, by origin.
+    ``term``: what was tested; ``with_it`` and ``without``: the fits of the law with and without it, by
+    origin.
     """
 
     index: int
@@ -61,6 +62,7 @@ class InCandidate:
     reduced: Bound | None
     note: str = ""
     term: Term | None = None
+    with_it: Mapping[str, Fit] = field(default_factory=dict)
     without: Mapping[str, Fit] = field(default_factory=dict)
 
 
@@ -248,7 +250,7 @@ def _in_candidate(
             if effect is not None:
                 by_origin[origin] = replace(by_origin[origin], effect=effect)
         without[origin] = small
-    return InCandidate(index, True, ko, by_origin, reduced, "", term, without)
+    return InCandidate(index, True, ko, by_origin, reduced, "", term, dict(fits), without)
 
 
 def _lumped(law: RateLaw) -> RateLaw:

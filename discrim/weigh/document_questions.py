@@ -154,6 +154,8 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
         flip, typical = distance(first.flip), distance(first.flip_typical)
         matters = distance(first.flip_matters)
         detectable = number(max((r.detectable for r in readings), default=float("nan")))
+    if v.outcome != "undecided":
+        margin = number(v.error_margin)
     flip_shown = matters if v.outcome == "negligible" else flip
     return {
         "asks": q.asks,

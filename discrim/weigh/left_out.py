@@ -7,7 +7,7 @@ that run; what is said then is what the study would say with it under [[exclude]
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from itertools import product
 from typing import Any
@@ -15,12 +15,10 @@ from typing import Any
 import numpy as np
 
 from discrim.errors import DiscrimError
-from discrim.evidence.distributions import normal_of_tail, normal_upper
-from discrim.evidence.left_out import LawLeftOut, TermLeftOut, law_left_out, term_left_out
-from discrim.evidence.rivals import SHARE_OVERALL, Standing
-from discrim.evidence.score import to_normal
+from discrim.evidence.distributions import normal_upper
+from discrim.evidence.left_out import TermLeftOut, law_left_out, slack_of, term_left_out
+from discrim.evidence.rivals import Standing
 from discrim.fit.fit import Fit
-from discrim.fit.measurements import Scale
 from discrim.study.model import Study
 from discrim.verdict import ERROR_MARGIN, CandidateFacts, with_one_run
 from discrim.verdict.words import listed
@@ -70,7 +68,6 @@ class Situation:
     same: Sequence[tuple[int, int]]
     stands: Sequence[bool]
     answers: Sequence[Answer]
-    fits: Sequence[Mapping[str, Fit]]
 
 
 Again = Callable[[int], tuple[Sequence[bool], Sequence[Answer]]]
@@ -166,30 +163,11 @@ def _standing_slack(s: Situation) -> np.ndarray:
                 continue
             whole = s.readings[r][i]
             out[:, i] = np.maximum(
-                out[:, i], _slack(law_left_out(fit, whole, s.runs), whole, fit, alpha)
+                out[:, i], slack_of(law_left_out(fit, whole, s.runs), whole, fit, alpha)
             )
     for i, j in s.same:
         out[:, i] = out[:, j] = np.maximum(out[:, i], out[:, j])
     return out
-
-
-def _slack(left: LawLeftOut, whole: Standing, fit: Fit, alpha: float) -> np.ndarray:
-    spend = alpha if whole.p_fit is None else alpha * (1.0 - SHARE_OVERALL)
-    slack = np.full(len(left.fit), np.inf)
-    if whole.p_fit is not None:
-        slack = float(normal_of_tail(alpha * SHARE_OVERALL)) - left.fit
-    if whole.against:
-        df = float("inf")
-        if fit.data.scale is Scale.REPLICATES:
-            df = float(fit.data.scale_df)
-        elif fit.data.scale is Scale.ESTIMATED and not fit.problem.with_conditions:
-            df = float(max(fit.degrees_of_freedom - 1, 1))
-        # several directions count as this many independent ones
-        largest = float(to_normal(np.array([whole.largest]), df)[0])
-        single = 2.0 * float(normal_upper(largest))
-        several = float(np.clip(whole.p_joint / max(single, 1e-300), 1.0, len(whole.against)))
-        slack = np.fmin(slack, float(normal_of_tail(spend / several / 2.0)) - left.along)
-    return np.where(np.isnan(slack), np.inf, slack)
 
 
 # ---- the answers -----------------------------------------------------------------------------
@@ -202,7 +180,7 @@ def _tests(s: Situation, a: Answer) -> dict[tuple[int, str], TermLeftOut]:
         if k.term is None or not s.stands[k.index]:
             continue
         for origin, whole in k.by_origin.items():
-            full = s.fits[k.index][origin]
+            full = k.with_it[origin]
             out[k.index, origin] = term_left_out(
                 k.term,
                 full.data,

@@ -36,6 +36,7 @@ from discrim.weigh.knock_outs import KnockOuts, knock_outs
 from discrim.weigh.laws import CandidateLaw, laws_of
 from discrim.weigh.left_out import LeftOut, Situation, hanging, left_out
 from discrim.weigh.magnitudes import Magnitude, magnitudes
+from discrim.weigh.margins import with_margins
 from discrim.weigh.reported import ReportedValue, check_reported, reported_of
 from discrim.weigh.sameness import Relations, relations
 from discrim.weigh.variances import with_estimated_errors
@@ -239,6 +240,7 @@ def _run(
     for k, q in enumerate(asked):
         say("answering", k, len(asked))
         answers.append(answer(q, study, bench, laws, bounds, fits, stands, seed=seed))
+    answers = with_margins(answers, common_fits, readings, alpha=alpha)
     singly = None
     if one_by_one:
         say("leaving out single runs", 0, 1)
@@ -252,7 +254,6 @@ def _run(
                 list(related.same),
                 stands,
                 answers,
-                fits,
             ),
             lambda one: _without_run(one, study, laws, fits, related, bench.errors, seed),
         )
@@ -334,12 +335,12 @@ def _without_run(
     again = _no_larger_law_worse(bounds, again, related, study, seed)
     shared = _common_scale(again, data)
     common = [_on_common(b, f, shared, data, seed) for b, f in zip(bounds, again, strict=True)]
-    _, stands = _standing(common, related, 1.0 - study.level, seed)
+    readings, stands = _standing(common, related, 1.0 - study.level, seed)
     asked = [q for q in study.questions if q.asks in TAKEN_OUT]
     answers = [
         answer(q, study, bench, laws, bounds, again, stands, seed=seed, flips=False) for q in asked
     ]
-    return stands, answers
+    return stands, with_margins(answers, common, readings, alpha=1.0 - study.level)
 
 
 def _no_larger_law_worse(
