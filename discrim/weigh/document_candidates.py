@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from discrim.evidence.conditioning import Lockstep, collinearity_index
+from discrim.evidence.conditioning import Lockstep, TradeOff, collinearity_index
 from discrim.evidence.delta import propagated
 from discrim.evidence.intervals import Interval, quantile
 from discrim.fit.fit import Fit
@@ -16,6 +16,7 @@ from discrim.fit.measurements import Scale
 from discrim.runs.model import Column, Role
 from discrim.study.lookup import to_shown
 from discrim.weigh.adequacy_said import adequacy_record
+from discrim.weigh.combinations import combination_record, combination_words
 from discrim.weigh.derived import law_keys
 from discrim.weigh.document_knock_outs import knock_outs_record
 from discrim.weigh.document_pairs import share_keys
@@ -75,14 +76,7 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
                 [number(x) for x in row] for row in a.conditioning.proportions
             ],
             "correlations": {"names": list(bound.names), "matrix": _correlations(fit)},
-            "trade_offs": [
-                {
-                    "singular_value": number(t.singular_value),
-                    "words": trade_off_words(bound, t, fit.theta),
-                    "direction": {n: number(x) for n, x in zip(bound.names, t.change, strict=True)},
-                }
-                for t in a.trade_offs
-            ],
+            "trade_offs": [_trade_off(w, i, t) for t in a.trade_offs],
             "lockstep": lockstep_keys(w, i) if fit.ok else [],
             "constants": [_constant(w, i, j) for j in range(len(bound.names))],
             "fitted": _fitted(w, i) if fit.ok else [],
@@ -96,6 +90,18 @@ def candidate_record(w: Weighed, i: int) -> dict[str, Any]:
         }
     )
     return out
+
+
+def _trade_off(w: Weighed, i: int, t: TradeOff) -> dict[str, Any]:
+    a, bound = w.assessments[i], w.bounds[i]
+    words = trade_off_words(bound, t, a.fit.theta)
+    fixed = combination_record(a, t, w.study.level) if w.stands[i] else None
+    return {
+        "singular_value": number(t.singular_value),
+        "words": words if fixed is None else f"{words}: {combination_words(fixed)}",
+        "direction": {n: number(x) for n, x in zip(bound.names, t.change, strict=True)},
+        "combination": fixed,
+    }
 
 
 def _reasons(w: Weighed, i: int) -> list[str]:
