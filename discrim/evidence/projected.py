@@ -15,6 +15,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
+from enum import Enum
 
 import numpy as np
 
@@ -34,12 +35,22 @@ OUTSIDE_SHARE = 0.2
 # more weak directions than this are searched along so many constants only
 MOST = 3
 _OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
-_CLOSER = 2  # rounds about the extremes
 _LATTICE = (0.0, 1e-3, 0.02, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.75, 1.0, 2.0)
 _DRAWN = 400
 
 # signed (or positive) equivalent normals of restricted optima, shape (S,); nan where there is none
 Statistic = Callable[[Problem, Solution], np.ndarray]
+
+
+class Effort(Enum):
+    """How closely extremes are looked for."""
+
+    FULL = "full"
+    SOME = "some"
+    LITTLE = "little"
+
+
+_CLOSER = {Effort.FULL: 2, Effort.SOME: 1, Effort.LITTLE: 0}  # rounds about the extremes
 
 
 def outside_level(alpha: float) -> float:
@@ -90,11 +101,16 @@ def weak_nuisance(problem: Problem, solution: Solution, tested: int | Sequence[i
     turns = pred.by_both[0][:, :, others[free]] / lengths[free]
     v = solution.covariance[0]
     variance = v if v.ndim == 1 else np.diagonal(v)
-    noise = np.zeros(len(vt))
+    noise, rounding = np.zeros(len(vt)), np.zeros(len(vt))
     for src in problem.measured:
         sd = np.broadcast_to(src.sd(solution.conditions[0][:, src.target]), variance.shape)
         along = turns[:, src.target, :] @ vt.T
-        noise += ((sd**2 / variance)[:, None] * np.nan_to_num(along) ** 2).sum(axis=0)
+        weight = (sd**2 / variance)[:, None]
+        noise += (weight * np.nan_to_num(along) ** 2).sum(axis=0)
+        parts = np.abs(np.nan_to_num(turns[:, src.target, :])) @ np.abs(vt.T)
+        rounding += (weight * parts**2).sum(axis=0)
+    # constants that the law itself does not tell apart: no error of a condition does
+    noise = np.where(noise > 1e-20 * rounding, noise, 0.0)
     with np.errstate(divide="ignore", invalid="ignore"):
         ratio = np.where(noise > 0, s**2 / noise, np.inf)
     weak = np.flatnonzero(ratio < TOLD_APART)
@@ -119,11 +135,13 @@ def reach(
     statistic: Statistic,
     *,
     outside: float,
+    effort: Effort = Effort.FULL,
 ) -> Reach:
     """Extremes of ``statistic`` over the values of the weak constants that the objective allows.
 
     ``solution``: restricted optima, the constants ``tested`` held, any batch axis S. ``outside``:
-    level at which the objective may rule values out, to be added to the p-value.
+    level at which the objective may rule values out, to be added to the p-value. ``effort``: how
+    closely the extremes are looked for; a verdict needs all of it.
     """
     s = len(solution.theta)
     limit = _limit(problem, solution, len(tested), len(weak.constants), outside)
@@ -133,13 +151,14 @@ def reach(
         problem = Problem(problem.predictor, problem.data.with_variance(variance, df))
     fixed = np.zeros(solution.theta.shape[1], bool)
     fixed[[*tested, *weak.constants]] = True
-    points = _first(problem, solution, weak.constants)
+    points = _first(problem, solution, weak.constants, effort)
     z = np.full(points.shape[:2], np.nan)
     todo = slice(0, points.shape[1])
-    for k in range(_CLOSER + 1):
+    rounds = _CLOSER[effort]
+    for k in range(rounds + 1):
         q, new = _solved(problem, solution, weak.constants, fixed, points[:, todo], statistic)
         z[:, todo] = np.where(q <= limit[:, None], new, np.nan)
-        if k < _CLOSER:
+        if k < rounds:
             more = _closer(problem, points, z, weak.constants, 0.35**k)
             todo = slice(points.shape[1], points.shape[1] + more.shape[1])
             points = np.concatenate([points, more], axis=1)
@@ -173,26 +192,34 @@ def _most(problem: Problem, solution: Solution, constants: Sequence[int]) -> np.
     return np.where(np.isfinite(most), most, problem.predictor.scale[list(constants)])
 
 
-def _first(problem: Problem, solution: Solution, constants: tuple[int, ...]) -> np.ndarray:
+def _first(
+    problem: Problem, solution: Solution, constants: tuple[int, ...], effort: Effort
+) -> np.ndarray:
     """Values to begin with, shape (S, G, q), the restricted estimate among them."""
     pick = list(constants)
     lower, upper = problem.predictor.lower[pick], problem.predictor.upper[pick]
     most = _most(problem, solution, constants)[:, None, :]
     here = solution.theta[:, None, pick]
     if len(pick) == 1:
-        spread = np.r_[np.linspace(0.0, 1.0, 33), np.logspace(-4, 0, 9)]
+        spread, about = np.r_[np.linspace(0.0, 1.0, 33), np.logspace(-4, -1, 7)], 13
+        if effort is Effort.SOME:
+            spread, about = spread[::2], 5
+        elif effort is Effort.LITTLE:
+            spread, about = np.array([0.0, 0.1, 0.3, 0.6]), 3
         points = np.concatenate(
-            [most * spread[None, :, None], here * np.logspace(-1, 1, 13)[None, :, None], here], 1
+            [most * spread[None, :, None], here * np.logspace(-1, 1, about)[None, :, None], here], 1
         )
         if lower[0] < 0:
             points = np.concatenate([points, -points, here - most * spread[None, :, None]], axis=1)
     else:
         if len(pick) == 2:
-            axes = np.meshgrid(_LATTICE, _LATTICE, indexing="ij")
+            one = _LATTICE if effort is Effort.FULL else _LATTICE[::2]
+            axes = np.meshgrid(one, one, indexing="ij")
             share = np.stack([a.ravel() for a in axes], axis=1)
         else:
             rng = np.random.default_rng(1)
-            share = rng.uniform(0.0, 1.0, (_DRAWN, len(pick)))
+            drawn = _DRAWN if effort is Effort.FULL else _DRAWN // 4
+            share = rng.uniform(0.0, 1.0, (drawn, len(pick)))
             share *= rng.uniform(0.0, 1.0, share.shape) > 1 / 3
         points = np.concatenate([0.5 * most * share[None], here], axis=1)
         if (lower < 0).any():

@@ -12,13 +12,16 @@ import numpy as np
 
 from discrim.evidence.curve import Curve, Points
 from discrim.evidence.distributions import normal_quantile
-from discrim.evidence.projected import Weak, outside_level, reach, weak_nuisance
+from discrim.evidence.projected import Effort, Weak, outside_level, reach, weak_nuisance
 from discrim.evidence.score import score
 from discrim.fit.engine import Problem, Solution
 
 # distances from the estimate at which an end is tried, in units of that of the plain end
-WIDER = (1.0, 1.05, 1.15, 1.3, 1.5, 2.0, 3.0, 5.0, 10.0, 30.0, 100.0)
-_FIRST = 4
+WIDER = (1.0, 1.07, 1.2, 1.4, 1.8, 3.0, 10.0, 100.0)
+# so many of them first, most often enough
+_FIRST = 3
+# a score that moves less than this over the weak constants is as good as the plain one
+STEADY = 0.05
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +57,8 @@ def widened(
     outside = outside_level(alpha)
     two = normal_quantile(1.0 - (alpha - outside) / 2)
     one = normal_quantile(1.0 - (alpha - outside))
+    if _steady(curve, weak, ends, outside):
+        return ends
     out = {}
     todo = [n for n in Ends.__slots__ if np.isfinite(getattr(ends, n))]
     todo = [n for n in todo if lower < getattr(ends, n) < upper]
@@ -94,6 +99,23 @@ def widened(
     return replace(ends, **out)
 
 
+def _steady(curve: Curve, weak: Weak, ends: Ends, outside: float) -> bool:
+    """Whether the score at both ends hardly moves with the weak constants."""
+    values = np.unique([v for v in (ends.low, ends.high) if np.isfinite(v)])
+    if not len(values):
+        return True
+    pts = curve.at(values, careful=False)
+    psi = curve.psi
+
+    def scores(there: Problem, sol: Solution) -> np.ndarray:
+        return score(there, sol, psi).z
+
+    found = reach(
+        curve.problem, pts.solution, (psi,), weak, scores, outside=outside, effort=Effort.LITTLE
+    )
+    return bool(found.allowed.all() and (found.high - found.low < STEADY).all())
+
+
 def _accepted(
     curve: Curve, weak: Weak, values: np.ndarray, outside: float
 ) -> tuple[np.ndarray, np.ndarray]:
@@ -105,7 +127,9 @@ def _accepted(
     def scores(there: Problem, sol: Solution) -> np.ndarray:
         return score(there, sol, psi).z
 
-    found = reach(curve.problem, pts.solution, (psi,), weak, scores, outside=outside)
+    found = reach(
+        curve.problem, pts.solution, (psi,), weak, scores, outside=outside, effort=Effort.SOME
+    )
     low = np.where(found.allowed, np.minimum(found.low, pts.z), np.inf)
     high = np.where(found.allowed, np.maximum(found.high, pts.z), -np.inf)
     back = np.searchsorted(order, values)
