@@ -84,7 +84,7 @@ def one(seed: int, number: int) -> Outcome:
     """Study ``number``, weighed."""
     design = draw(seed, number)
     with tempfile.TemporaryDirectory() as folder:
-        weighed = run(load(write(design, Path(folder))), seed=1, lattices=False)
+        weighed = run(load(write(design, Path(folder))), seed=1, lattices=False, one_by_one=False)
     verdict = weighed.answers[0].verdict
     effects = design.effects(float(design.truth[0]))
     largest = float(effects[int(np.argmax(np.abs(effects)))])

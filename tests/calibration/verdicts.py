@@ -91,7 +91,9 @@ def run_verdicts(cell: VerdictCell, studies: int, seed: int) -> VerdictResult:
                 f"{x:.5g},{y:.5g},{r:.6g}\n" for x, y, r in zip(*shown, rate, strict=True)
             )
             (path.parent / "runs.csv").write_text("a,b,rate\n" + rows, encoding="utf-8")
-            counts[run(load(path), seed=1, lattices=False).answers[0].verdict.outcome] += 1
+            counts[
+                run(load(path), seed=1, lattices=False, one_by_one=False).answers[0].verdict.outcome
+            ] += 1
     return VerdictResult(cell, studies, counts)
 
 
