@@ -18,6 +18,7 @@ from scipy import special
 from discrim.evidence.residuals import Residuals
 
 DRAWS = 999
+FEWEST_DRAWS, MOST_NUMBERS = 199, 4_000_000  # of a long table
 FEWEST = 8  # runs: below this no shape or scatter can be told
 FEWEST_LEFT = 4  # degrees of freedom
 
@@ -33,7 +34,10 @@ class Pattern:
 
 
 def draws(n: int, seed: int, count: int = DRAWS) -> np.ndarray:
-    """Standard normal numbers, shape (count, n), the same for all laws of a study."""
+    """Standard normal numbers, shape (count, n), the same for all laws of a study; fewer rows where n
+    is very large."""
+    if count * n > MOST_NUMBERS:
+        count = max(FEWEST_DRAWS, MOST_NUMBERS // n)
     return np.random.default_rng([seed, n]).standard_normal((count, n))
 
 
@@ -110,6 +114,8 @@ def anderson_darling(r: np.ndarray) -> np.ndarray:
 def normality(of: Residuals, null: np.ndarray) -> Pattern | None:
     """Do the residuals look like normal errors?"""
     if of.n < FEWEST or of.df < FEWEST_LEFT:
+        return None
+    if float(np.ptp(of.r)) == 0.0:
         return None
     seen = float(anderson_darling(of.r))
     drawn = anderson_darling(null)

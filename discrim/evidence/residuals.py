@@ -32,7 +32,7 @@ class Residuals:
     r : shape (N,) whitened, without what lies along the sensitivities
     basis : shape (N, k) orthonormal basis of the sensitivities to the constants off their bounds
     values : shape (N,) predictions, in the units of the observations
-    unit : shape (N, N), column i is w_i
+    unit : L^-1, shape (N,) where V is diagonal, else (N, N); its column i is w_i
     root : shape (N,) or (N, N), L: a whitened residual times this is one in the units observed
     """
 
@@ -54,6 +54,10 @@ class Residuals:
     def outside(self, x: np.ndarray) -> np.ndarray:
         """The part of whitened vectors, shape (N,) or (N, q), that the constants cannot take up."""
         return x - self.basis @ (self.basis.T @ x)
+
+    def white(self, x: np.ndarray) -> np.ndarray:
+        """Directions in the units of the observations, shape (N, q), whitened."""
+        return x * self.unit[:, None] if self.unit.ndim == 1 else self.unit @ x
 
 
 def orthonormal(columns: np.ndarray) -> np.ndarray:
@@ -88,8 +92,12 @@ def whitened(
     white = Whitener(covariance[None])
     if not bool(white.ok.all()):
         return None
-    unit = white.matrix(np.eye(n)[None])[0]
-    root = np.sqrt(covariance) if covariance.ndim == 1 else np.linalg.inv(unit)
+    if covariance.ndim == 1:
+        unit = white.vector(np.ones((1, n)))[0]
+        root = np.sqrt(covariance)
+    else:
+        unit = white.matrix(np.eye(n)[None])[0]
+        root = np.linalg.inv(unit)
     r = residual - basis @ (basis.T @ residual)
     if float(r @ r) <= 1e-20 * max(float(residual @ residual), 1e-300):
         return None
@@ -119,13 +127,18 @@ class Influence:
 def influence(of: Residuals) -> Influence:
     """Leverage, externally studentised residuals and Cook's distances."""
     n, k = of.n, of.basis.shape[1]
-    along = of.basis.T @ of.unit
-    size = (of.unit**2).sum(axis=0)
-    taken = (along**2).sum(axis=0)
-    left = (of.outside(of.unit) ** 2).sum(axis=0)
+    if of.unit.ndim == 1:
+        size = of.unit**2
+        taken = size * (of.basis**2).sum(axis=1)
+        left = np.maximum(size - taken, 0.0)
+        pull = of.unit * of.r
+    else:
+        size = (of.unit**2).sum(axis=0)
+        taken = ((of.basis.T @ of.unit) ** 2).sum(axis=0)
+        left = (of.outside(of.unit) ** 2).sum(axis=0)
+        pull = of.unit.T @ of.r
     leverage = np.clip(taken / size, 0.0, 1.0)
     seen = left > RANK * size
-    pull = of.unit.T @ of.r
     q = float(of.r @ of.r)
     s2 = q / of.df
     with np.errstate(divide="ignore", invalid="ignore"):

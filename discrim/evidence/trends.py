@@ -79,7 +79,7 @@ def scores(x: np.ndarray) -> np.ndarray:
 def trend(of: Residuals, x: np.ndarray) -> Added | None:
     """Do the residuals, relative to the predictions, rise or fall with x, shape (N,)?"""
     f = of.values
-    white = of.unit @ np.column_stack([f * scores(x), f])
+    white = of.white(np.column_stack([f * scores(x), f]))
     return added(of, white[:, :1], white[:, 1:])
 
 
@@ -87,7 +87,7 @@ def groups(of: Residuals, labels: np.ndarray) -> Added | None:
     """Do the residuals differ between groups (labels of shape (N,)) by more than within them?"""
     f = of.values
     each = [np.where(labels == g, f, 0.0) for g in np.unique(labels)]
-    white = of.unit @ np.column_stack([*each, f])
+    white = of.white(np.column_stack([*each, f]))
     return added(of, white[:, :-1], white[:, -1:])
 
 

@@ -86,7 +86,8 @@ class Scene:
         if e == symbol or not e.free_symbols <= set(self.bench.symbols):
             return None
         f = sympy.lambdify(list(self.bench.symbols), e, modules="numpy")
-        values = np.asarray(f(*self.bench.measurements.conditions.T), float)
+        with np.errstate(all="ignore"):
+            values = np.asarray(f(*self.bench.measurements.conditions.T), float)
         return np.broadcast_to(values, (self.bench.measurements.n,))
 
 
