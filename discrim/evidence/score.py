@@ -26,6 +26,7 @@ import numpy as np
 from discrim.evidence.conditional import signed, strength_of
 from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
 from discrim.evidence.unknown_scale import scale_weights
+from discrim.evidence.unknown_variances import added_variance
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
@@ -125,6 +126,10 @@ def score(
     n, p_nuisance = data.count, nuisance.shape[2]
     if data.scale is Scale.REPLICATES:
         df = float(data.scale_df)
+        if data.patterns and problem.measured and direction is None:
+            extra = added_variance(problem, solution, [psi])[:, 0, 0]
+            with np.errstate(divide="ignore", invalid="ignore"):
+                z = np.where(information > NO_INFORMATION, s / np.sqrt(size**2 + extra), 0.0)
     elif data.scale is Scale.ESTIMATED and not problem.with_conditions:
         # F = (K/1)/((N - p_l - K)/(N - p)) with the scale from the restricted fit
         df = float(n - p_nuisance - 1)

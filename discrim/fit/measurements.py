@@ -99,6 +99,8 @@ class Measurements:
     replicate_of : shape (N,) equal numbers are replicates
     absent : shape (S, N) True for observations that do not count in that member of a batch (a run
         left out), the same number of them in each member; None when all count
+    patterns : derivative of V by each variance or covariance of the observations that was estimated
+        with other constants than those of a fit at hand, shape (N,) of its diagonal or (N, N)
     """
 
     y: np.ndarray
@@ -109,6 +111,7 @@ class Measurements:
     scale_df: float = 0
     replicate_of: np.ndarray | None = None
     absent: np.ndarray | None = None
+    patterns: tuple[np.ndarray, ...] = ()
 
     @property
     def n(self) -> int:
@@ -204,4 +207,7 @@ class Measurements:
                 for s in self.sources
             ),
             replicate_of=None if self.replicate_of is None else self.replicate_of[rows],
+            patterns=tuple(
+                e[rows] if e.ndim == 1 else e[np.ix_(rows, rows)] for e in self.patterns
+            ),
         )

@@ -120,7 +120,22 @@ def with_covariance(
         sources=(*data.sources, *_sources(unknown, matrix)),
         scale=Scale.REPLICATES,
         scale_df=df,
+        patterns=_patterns(unknown),
     )
+
+
+def _patterns(unknown: Unknown) -> tuple[np.ndarray, ...]:
+    """Where V holds each unknown variance, shape (N,), or covariance, shape (N, N)."""
+    of = [(unknown.response == r).astype(float) for r in range(unknown.count)]
+    if not unknown.together:
+        return tuple(of[r] for r in np.flatnonzero(unknown.open))
+    same = unknown.run[:, None] == unknown.run[None, :]
+    out = []
+    for r in range(unknown.count):
+        for k in range(r + 1):
+            block = of[r][:, None] * of[k][None, :]
+            out.append(np.where(same, np.maximum(block, block.T), 0.0))
+    return tuple(out)
 
 
 def _sources(unknown: Unknown, matrix: np.ndarray) -> tuple[ErrorSource, ...]:
