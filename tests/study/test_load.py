@@ -369,12 +369,19 @@ def test_a_link_out_of_the_folder_is_not_followed(tmp_path):
         load(folder / "study.toml")
 
 
-def test_questions_that_are_not_answered_yet_are_findings(tmp_path):
-    text = BUFFER + '[[questions]]\nequal = ["k_a", "k_b"]\n[[questions]]\nreversible = true\n'
-    findings = study(tmp_path, text).findings
-    assert 'Question 3 ("equal") was read, but is not answered yet.' in findings
-    assert 'Question 4 ("reversible") was read, but is not answered yet.' in findings
-    assert any("empty in 1 of 5 runs" in f for f in findings)
+def test_questions_about_constants_and_the_reverse_reaction(tmp_path):
+    text = (
+        BUFFER
+        + '[[questions]]\nequal = ["k_a", "k_b"]\nmatters_above = "10 %"\n'
+        + "[[questions]]\nreversible = true\n"
+        + '[[questions]]\nconstant = "k_a"\nvalue = "0.5 1/s"\n'
+    )
+    equal, reverse, value = study(tmp_path, text).questions[-3:]
+    assert (equal.asks, equal.names, equal.matters_above) == ("equal", ("k_a", "k_b"), 0.1)
+    assert (reverse.asks, reverse.about) == ("reversible", "")
+    assert (value.about, value.value, value.value_text) == ("k_a", 0.5, "0.5 1/s")
+    assert value.value_units is not None
+    assert value.value_units.text == "1/s"
 
 
 LIBRARY = """\
