@@ -96,7 +96,9 @@ def widened(
             else:
                 out[name] = float(ladder[0])
         todo = left
-    return replace(ends, **out)
+    new = replace(ends, **out)
+    # the steps of the two ladders differ; a two-sided set holds both one-sided ones
+    return replace(new, low=min(new.low, new.low_one_sided), high=max(new.high, new.high_one_sided))
 
 
 def _steady(curve: Curve, weak: Weak, ends: Ends, outside: float) -> bool:
