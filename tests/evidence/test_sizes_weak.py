@@ -2,7 +2,8 @@
 
 r = k_A A + k_C C (+ k_E E), only k_A not zero, C = 2 A (1 + 2 % d), E = 1.5 A (1 + 2 % d'),
 B = 2.5 A (1 - 30 % d): B moves along the direction in which A and C are not told apart.
-Concentrations measured within 3 %, 30 runs, rate error 1 %; tables simulated with a seed, so that every claim of B is false.
+Concentrations measured within 3 %, 30 runs, rate error 1 %; tables simulated with a seed, so that
+every claim of B is false.
 """
 
 from __future__ import annotations
