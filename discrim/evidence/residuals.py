@@ -1,12 +1,14 @@
 """What the residuals of one fit say: how far each run lies off, and how much it pulls.
 
-Everything is done on whitened quantities, r = L^-1 e and G = L^-1 df/dtheta with V = L L', so that
-errors in the conditions and errors shared by runs are allowed for. With M = I - Q Q' (Q an
-orthonormal basis of the columns of G, by SVD) and w_i = L^-1 u_i (u_i the unit vector of run i), the
-shift of run i alone that the other runs ask for is delta_i = w_i' r / (w_i' M w_i). For a diagonal V
-these are the usual leverages, studentised residuals and Cook's distances (Cook & Weisberg, Residuals
-and Influence in Regression, Chapman & Hall 1982, ch. 2 and 3; from memory); for a full V they are
-those of the generalised least-squares fit with run i left out.
+Everything is done on whitened quantities, r = R^-1 e and G = R^-1 df/dtheta with V = R R, so that
+errors in the conditions and errors shared by runs are allowed for. R is the symmetric root: with
+another the residuals of runs that share an error would depend on the order of the table. With
+M = I - Q Q' (Q an orthonormal basis of the columns of G, by SVD) and w_i = R^-1 u_i (u_i the unit
+vector of run i), the shift of run i alone that the other runs ask for is
+delta_i = w_i' r / (w_i' M w_i). For a diagonal V these are the usual leverages, studentised residuals
+and Cook's distances (Cook & Weisberg, Residuals and Influence in Regression, Chapman & Hall 1982, ch. 2
+and 3; from memory); for a full V they are those of the generalised least-squares fit with run i left
+out.
 """
 
 from __future__ import annotations
@@ -32,8 +34,8 @@ class Residuals:
     r : shape (N,) whitened, without what lies along the sensitivities
     basis : shape (N, k) orthonormal basis of the sensitivities to the constants off their bounds
     values : shape (N,) predictions, in the units of the observations
-    unit : L^-1, shape (N,) where V is diagonal, else (N, N); its column i is w_i
-    root : shape (N,) or (N, N), L: a whitened residual times this is one in the units observed
+    unit : R^-1, shape (N,) where V is diagonal, else (N, N); its column i is w_i
+    root : shape (N,) or (N, N), R: a whitened residual times this is one in the units observed
     """
 
     r: np.ndarray
@@ -81,23 +83,27 @@ def residuals_of(fit: Fit) -> Residuals | None:
 def whitened(
     residual: np.ndarray, jacobian: np.ndarray, values: np.ndarray, covariance: np.ndarray
 ) -> Residuals | None:
-    """From a whitened residual, shape (N,), and sensitivities to the constants off their bounds,
-    shape (N, k), with V, shape (N,) or (N, N); None where nothing is left to look at."""
+    """From a residual, shape (N,), and sensitivities to the constants off their bounds, shape (N, k),
+    as a fit whitens them (by the triangular root L of V), and V, shape (N,) or (N, N); None where
+    nothing is left to look at."""
     if not (np.isfinite(residual).all() and np.isfinite(covariance).all()):
         return None
-    basis = orthonormal(jacobian)
     n = len(residual)
-    if n - basis.shape[1] < 1:
-        return None
-    white = Whitener(covariance[None])
-    if not bool(white.ok.all()):
-        return None
     if covariance.ndim == 1:
-        unit = white.vector(np.ones((1, n)))[0]
         root = np.sqrt(covariance)
+        unit = 1.0 / root
     else:
-        unit = white.matrix(np.eye(n)[None])[0]
-        root = np.linalg.inv(unit)
+        white = Whitener(covariance[None])
+        if not bool(white.ok.all()):
+            return None
+        sizes, vectors = np.linalg.eigh(covariance)
+        sizes = np.sqrt(np.maximum(sizes, RANK**2 * sizes[-1]))
+        root, unit = (vectors * sizes) @ vectors.T, (vectors / sizes) @ vectors.T
+        turn = white.matrix(root[None])[0].T  # R^-1 L, a rotation
+        residual, jacobian = turn @ residual, turn @ jacobian
+    basis = orthonormal(jacobian)
+    if n - basis.shape[1] < 1 or not np.isfinite(unit).all():
+        return None
     r = residual - basis @ (basis.T @ residual)
     if float(r @ r) <= 1e-20 * max(float(residual @ residual), 1e-300):
         return None

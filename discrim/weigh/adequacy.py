@@ -80,7 +80,7 @@ def adequacies(
     """For each candidate; None where it did not fit, or no degrees of freedom are left."""
     columns = followed(bench)
     order, name = run_order(bench)
-    normal = draws(bench.measurements.n, seed)
+    normal = draws(bench.measurements.n, seed)[:, places(bench)]
     out: list[Adequacy | None] = []
     for bound, fit, ok in zip(bounds, fits, stands, strict=True):
         of = residuals_of(fit) if ok or len(fits) <= MOST else None
@@ -120,6 +120,14 @@ def _adequacy(
 
 def _response(fit: Fit, bound: Bound) -> np.ndarray:
     return np.asarray(bound.predictor.response) if fit.n else np.zeros(0)
+
+
+def places(bench: Bench) -> np.ndarray:
+    """Where each observation stands when they are sorted by what was read, shape (N,): drawn numbers
+    then belong to runs, whatever the order of the table and of its columns."""
+    data = bench.measurements
+    alike = sum((scores(data.conditions[:, j]) for j in range(data.m)), np.zeros(data.n))
+    return np.argsort(np.lexsort((np.round(alike, 9), data.y, bench.response)))
 
 
 def run_order(bench: Bench) -> tuple[np.ndarray, str]:

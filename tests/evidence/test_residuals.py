@@ -121,6 +121,32 @@ def test_influence_with_shared_errors_is_that_of_leaving_a_run_out() -> None:
         assert found.studentised[i] == pytest.approx(t, rel=1e-9)
 
 
+def test_shared_errors_do_not_depend_on_the_order_of_the_table() -> None:
+    """V, residuals and sensitivities in another order: the same residuals in that order."""
+    n = 10
+    rng = np.random.default_rng(8)
+    stock = np.arange(n) % 3
+    v = np.diag(rng.uniform(1, 2, n)) + 2.0 * (stock[:, None] == stock[None, :])
+    e, g = rng.standard_normal(n), rng.standard_normal((n, 2))
+    first: list[np.ndarray] = []
+    second: list[np.ndarray] = []
+    for order, out in ((np.arange(n), first), (rng.permutation(n), second)):
+        lower = np.linalg.cholesky(v[np.ix_(order, order)])
+        found = whitened(
+            np.linalg.solve(lower, e[order]), np.linalg.solve(lower, g[order]), e[order],
+            v[np.ix_(order, order)],
+        )  # fmt: skip
+        assert found is not None
+        back = np.argsort(order)
+        out += [found.r[back], found.outside(np.eye(n))[np.ix_(back, back)]]
+        # L r is R R^-1 e less what the sensitivities take up
+        bare = whitened(np.linalg.solve(lower, e[order]), g[order] * 0, e, v[np.ix_(order, order)])
+        assert bare is not None
+        assert bare.root @ bare.r == pytest.approx(e[order], rel=1e-9)
+    assert second[0] == pytest.approx(first[0], rel=1e-9)
+    assert second[1] == pytest.approx(first[1], abs=1e-12)
+
+
 def test_a_run_that_alone_fixes_a_constant_has_leverage_one() -> None:
     n = 9
     rng = np.random.default_rng(2)
