@@ -59,11 +59,12 @@ class CandidateFacts:
 
 @dataclass(frozen=True, slots=True)
 class StandIn:
-    """Something else that explains the runs as well, in words."""
+    """Something else that could explain the runs as well, in words; ``stands_at`` as of candidates."""
 
     name: str
     words: str
     stands: bool
+    stands_at: float = float("inf")
 
 
 @dataclass(frozen=True, slots=True)
@@ -169,12 +170,13 @@ def judge_participation(
         )
     others = [s for s in stand_ins if s.stands]
     agree = {said[c.name] for c in standing}
-    returns = min((c.stands_at for c in candidates if not c.stands), default=float("inf"))
+    back = [(c.stands_at, f"“{c.name}”, which says otherwise,") for c in candidates if not c.stands]
+    back += [(x.stands_at, f"{x.name} in place of {about}") for x in stand_ins if not x.stands]
+    returns, returning = min(back, default=(float("inf"), ""))
     if agree == {"participates"} and returns < ERROR_MARGIN:
-        name = min((c for c in candidates if not c.stands), key=lambda c: c.stands_at).name
         stops.append(
-            f"“{name}”, which says otherwise, would stand if the condition errors were {returns:.2g} "
-            f"times as large as stated (at least {ERROR_MARGIN:g} is asked)"
+            f"{returning} would stand if the condition errors were {returns:.2g} times as large as "
+            f"stated (at least {ERROR_MARGIN:g} is asked)"
         )
     elif agree == {"participates"} and not others:
         return _participates(subject, about, standing, alpha, matters_above, votes, returns)

@@ -33,7 +33,7 @@ from discrim.weigh.bind import Bound
 from discrim.weigh.effects import knocked_out, named_conditions
 from discrim.weigh.laws import CandidateLaw
 from discrim.weigh.reversed import check_reversible, known_effect, reverse_in, reverse_words
-from discrim.weigh.stand_ins import bind_law, stand_ins, symbol_of
+from discrim.weigh.stand_ins import Tried, bind_law, stand_ins, symbol_of
 
 # questions about a part of the law, answered by taking it out
 TAKEN_OUT = ("participates", "reversible")
@@ -70,7 +70,8 @@ class InCandidate:
 class Answer:
     """A participation question with everything behind its verdict.
 
-    ``judge`` says what the verdict would be were the ``facts`` others.
+    ``judge`` says what the verdict would be were the ``facts`` (and ``stand_ins=``) others; ``tried``: the
+    stand-ins with their fits.
     """
 
     question: Question
@@ -79,7 +80,8 @@ class Answer:
     per_candidate: tuple[InCandidate, ...]
     stand_ins: tuple[tuple[StandIn, float], ...]
     facts: tuple[CandidateFacts, ...] = ()
-    judge: Callable[[Sequence[CandidateFacts]], Verdict] | None = None
+    judge: Callable[..., Verdict] | None = None
+    tried: tuple[Tried, ...] = ()
 
 
 def check_questions(study: Study, laws: Sequence[CandidateLaw]) -> None:
@@ -141,7 +143,7 @@ def answer(
             )
         )
     facts = [_facts(study, bench, laws[k.index], k, stands[k.index]) for k in per]
-    tried = []
+    tried: list[Tried] = []
     if what == "species":
         votes = {vote(c, 1.0 - level, question.matters_above)[0] for c in facts if c.stands}
         every = votes == {"participates"}
@@ -157,7 +159,7 @@ def answer(
         _judged,
         about,
         what=what,
-        stand_ins=[s for s, _ in tried],
+        stand_ins=[t.stand_in for t in tried],
         level=level,
         matters_above=question.matters_above,
         n_runs=bench.measurements.n,
@@ -167,7 +169,10 @@ def answer(
         detectable=max(detect, default=float("nan")),
         is_reactant=_is_reactant(about, laws),
     )
-    return Answer(question, what, judge(facts), tuple(per), tuple(tried), tuple(facts), judge)
+    shown = tuple((t.stand_in, t.chance) for t in tried)
+    return Answer(
+        question, what, judge(facts), tuple(per), shown, tuple(facts), judge, tuple(tried)
+    )
 
 
 def _judged(about: str, facts: Sequence[CandidateFacts], **rest: Any) -> Verdict:

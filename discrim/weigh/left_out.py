@@ -84,13 +84,14 @@ def left_out(s: Situation, again: Again) -> LeftOut:
         return LeftOut(0, tuple(() for _ in s.answers), ())
     slack = _standing_slack(s)
     tests = [_tests(s, a) for a in s.answers]
+    fallen = [_stand_in_slack(s, a) for a in s.answers]
     now = _outcome(s.stands, s.answers)
     suspects: list[tuple[float, int]] = []
     batch: dict[int, tuple[Outcome, list[float]]] = {}
     for r in range(len(runs)):
-        plain = _predicted(s, slack, tests, r, 0.0, 0.0)
+        plain = _predicted(s, slack, tests, fallen, r, 0.0, 0.0)
         shifted = [
-            _predicted(s, slack, tests, r, a, b)[0]
+            _predicted(s, slack, tests, fallen, r, a, b)[0]
             for a, b in product((-NEAR, 0.0, NEAR), repeat=2)
         ]
         if plain[0] != now:
@@ -170,6 +171,18 @@ def _standing_slack(s: Situation) -> np.ndarray:
     return out
 
 
+def _stand_in_slack(s: Situation, a: Answer) -> np.ndarray:
+    """The same of stand-ins that fell, shape (R, stand-ins), where they alone are what a verdict needs."""
+    out = np.full((len(np.unique(s.runs)), len(a.tried)), -np.inf)
+    if a.verdict.outcome != "participates":
+        return out
+    for k, t in enumerate(a.tried):
+        for fit, whole in t.judged:
+            slack = slack_of(law_left_out(fit, whole, s.runs), whole, fit, 1.0 - s.study.level)
+            out[:, k] = np.maximum(out[:, k], slack)
+    return out
+
+
 # ---- the answers -----------------------------------------------------------------------------
 
 
@@ -199,6 +212,7 @@ def _predicted(
     s: Situation,
     slack: np.ndarray,
     tests: Sequence[dict[tuple[int, str], TermLeftOut]],
+    fallen: Sequence[np.ndarray],
     r: int,
     of_laws: float,
     of_tests: float,
@@ -207,13 +221,20 @@ def _predicted(
     stands = [bool(x + of_laws >= 0) for x in slack[r]]
     verdicts: list[str] = []
     ps: list[float] = []
-    for a, found in zip(s.answers, tests, strict=True):
+    for a, found, others in zip(s.answers, tests, fallen, strict=True):
         assert a.judge is not None
         facts = [
             _facts(a, c, k.index, stands[k.index], found, r, of_tests, s)
             for c, k in zip(a.facts, a.per_candidate, strict=True)
         ]
-        verdicts.append(a.judge(facts).outcome)
+        again = {}
+        if len(a.tried):
+            tried = [
+                replace(t.stand_in, stands=t.stand_in.stands or bool(x + of_laws >= 0))
+                for t, x in zip(a.tried, others[r], strict=True)
+            ]
+            again = {"stand_ins": tried}
+        verdicts.append(a.judge(facts, **again).outcome)
         ps.append(
             max(
                 (x.p for c in facts if c.stands and c.contains for x in c.readings),

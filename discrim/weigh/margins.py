@@ -2,7 +2,7 @@
 
 Larger errors can change it in three ways: a law that stands no longer rejects a rate without the term
 (`Participation.error_margin`), an effect as large as what matters is no longer ruled out, or a law that
-is rejected and speaks otherwise comes to stand.
+is rejected and speaks otherwise, or a stand-in, comes to stand.
 """
 
 from __future__ import annotations
@@ -13,7 +13,9 @@ from dataclasses import replace
 from discrim.evidence.margin import bound_margin, standing_margin
 from discrim.evidence.rivals import Standing
 from discrim.fit.fit import Fit
+from discrim.verdict import StandIn
 from discrim.weigh.asked import Answer
+from discrim.weigh.stand_ins import Tried
 
 
 def with_margins(
@@ -58,8 +60,16 @@ def with_margins(
                 if k.index not in comes:
                     comes[k.index] = _comes_to_stand(k.index, common_fits, readings, alpha)
                 facts[i] = replace(c, stands_at=comes[k.index])
-        out.append(replace(a, verdict=a.judge(facts), facts=tuple(facts)))
+        again = {}
+        if outcome == "participates" and a.tried:
+            again = {"stand_ins": [_with_margin(t, alpha) for t in a.tried]}
+        out.append(replace(a, verdict=a.judge(facts, **again), facts=tuple(facts)))
     return out
+
+
+def _with_margin(t: Tried, alpha: float) -> StandIn:
+    found = [standing_margin(fit, whole, alpha) for fit, whole in t.judged]
+    return replace(t.stand_in, stands_at=min((f for f in found if f == f), default=float("inf")))
 
 
 def _comes_to_stand(

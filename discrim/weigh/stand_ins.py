@@ -8,14 +8,14 @@ of the law with the species (`evidence.rivals`), under any reading of the errors
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import sympy
 
 from discrim.errors import DiscrimError
-from discrim.evidence.rivals import standing
+from discrim.evidence.rivals import Standing, standing
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import ErrorSource, Measurements, source
 from discrim.ratelaw.model import RateLaw, amount
@@ -36,6 +36,16 @@ if TYPE_CHECKING:
     from discrim.weigh.asked import InCandidate
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Tried:
+    """A stand-in with the chance of its largest score; ``judged``: of one that fell, its fit and how it
+    was rejected, in each candidate and under each reading of the errors."""
+
+    stand_in: StandIn
+    chance: float
+    judged: tuple[tuple[Fit, Standing], ...]
+
+
 def stand_ins(
     about: str,
     study: Study,
@@ -47,9 +57,8 @@ def stand_ins(
     seed: int,
     *,
     every: bool,
-) -> list[tuple[StandIn, float]]:
-    """Columns, orders and products that move with the species, put in its place, closest first, each
-    with the chance of its largest score.
+) -> list[Tried]:
+    """Columns, orders and products that move with the species, put in its place, closest first.
 
     ``every``: in every candidate that stands and contains it until one stands, which a verdict that the
     species takes part needs; else in the first of them only.
@@ -58,16 +67,20 @@ def stand_ins(
     values = values_of(about, study, bench) if asking else None
     if values is None:
         return []
-    found: dict[str, tuple[StandIn, float]] = {}
+    found: dict[str, Tried] = {}
     tries = proxies(about, study, bench)[: 2 * MOST_STAND_INS]
     for k in asking if every else asking[:1]:
-        left = [p for p in tries if p.name not in found or not found[p.name][0].stands]
+        left = [p for p in tries if p.name not in found or not found[p.name].stand_in.stands]
         if not left:
             break
-        for p, ok, chance in _in_law(about, study, bench, laws[k.index], fits[k.index], left, seed):
+        for p, ok, chance, judged in _in_law(
+            about, study, bench, laws[k.index], fits[k.index], left, seed
+        ):
             before = found.get(p.name)
-            if before is None or (ok and not before[0].stands):
-                found[p.name] = _told(p.name, about, ok, chance)
+            if before is None or ok:
+                found[p.name] = _told(p.name, about, ok, chance, judged)
+            else:
+                found[p.name] = replace(before, judged=(*before.judged, *judged))
     order = [p.name for p in tries]
     return [found[name] for name in sorted(found, key=order.index)]
 
@@ -80,14 +93,14 @@ def _in_law(
     fits: Mapping[str, Fit],
     tries: Sequence[Proxy],
     seed: int,
-) -> list[tuple[Proxy, bool, float]]:
-    """Each proxy in the place of the species in one candidate: whether it stands, and p."""
+) -> list[tuple[Proxy, bool, float, list[tuple[Fit, Standing]]]]:
+    """Each proxy in the place of the species in one candidate: whether it stands, p, and by what."""
     values = values_of(about, study, bench)
     assert values is not None
     used_here = set().union(*(e.free_symbols for e in c.bound))
     wide = _widened(bench, tries)
     host = bind_law(c.law, study, wide)
-    out: list[tuple[Proxy, bool, float]] = []
+    out: list[tuple[Proxy, bool, float, list[tuple[Fit, Standing]]]] = []
     own: dict[str, Fit] = {}
     for p in tries:
         if len(out) == MOST_STAND_INS:
@@ -101,6 +114,7 @@ def _in_law(
         except (DiscrimError, ValueError):
             continue
         ok, chance, fitted = False, 0.0, True
+        by: list[tuple[Fit, Standing]] = []
         for origin, first in fits.items():
             data = _wider(first.data, bench, wide, tries, about)
             if origin not in own:
@@ -114,16 +128,19 @@ def _in_law(
             both = [own[origin], f_rival]
             judged = standing(both, {}, {}, alpha=1.0 - study.level, seed=seed, only=[1])[0]
             ok, chance = judged.stands, max(chance, judged.p_joint)
+            by.append((f_rival, judged))
             if ok:  # under one reading of the errors is enough
                 break
         if fitted:
-            out.append((p, ok, chance))
+            out.append((p, ok, chance, [] if ok else by))
     return out
 
 
-def _told(name: str, about: str, ok: bool, chance: float) -> tuple[StandIn, float]:
+def _told(
+    name: str, about: str, ok: bool, chance: float, judged: Sequence[tuple[Fit, Standing]]
+) -> Tried:
     verb = "explains these runs as well" if ok else "does not explain these runs"
-    return StandIn(name, f"{name} in place of {about} {verb}", ok), chance
+    return Tried(StandIn(name, f"{name} in place of {about} {verb}", ok), chance, tuple(judged))
 
 
 def _adds_nothing(f: Fit) -> bool:
