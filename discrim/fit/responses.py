@@ -196,7 +196,6 @@ def _agreed(
     if not begin.ok:
         return None
     sol = begin.solution
-    # residuals that rounding alone leaves say nothing of an error
     converged = False
     freedom = np.zeros(unknown.count)
     for _ in range(ROUNDS):
@@ -332,11 +331,11 @@ def _record(
     criterion = log_det + float(sol.objective[0])
     if unknown.together:
         r = unknown.count
-        nu = freedom[0]
-        runs = min(np.bincount(unknown.response, minlength=r))
+        nu = float(freedom[0])
+        runs = int(min(np.bincount(unknown.response, minlength=r)))
         plain = matrix * runs / nu if nu > 0 else matrix
         larger, df = enlargement(nu, r)
-        held = plain * larger
+        held = plain * larger if df > 0 else plain  # without freedom it is not used
         on_least = np.diag(matrix) <= unknown.least**2 * (1 + 1e-9)
         values = np.linalg.eigvalsh(matrix / np.outer(unknown.least, unknown.least))
         on_least |= values[0] <= 1 + 1e-9
