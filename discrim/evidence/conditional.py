@@ -41,7 +41,7 @@ def tail(statistic: np.ndarray, strength: np.ndarray, df: np.ndarray | float) ->
 
     P = P(chi2_1 > m) + integral of 2 phi(t) P(chi2_(k-1) > (r + m)(1 - t^2/m)) over t^2 < m
 
-    (the same integral over an angle: Andrews, Moreira & Stock, J. Econometrics 139 (2007) 116).
+    (the same integral over an angle: Andrews, Moreira & Stock, Econometrica 74 (2006) 715, from memory).
     """
     m, r, k = np.broadcast_arrays(
         np.asarray(statistic, float), np.asarray(strength, float), np.asarray(df, float)

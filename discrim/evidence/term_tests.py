@@ -10,7 +10,7 @@ from discrim.evidence.distributions import chi2_upper, f_upper, normal_of_tail, 
 from discrim.evidence.mimic import mimics
 from discrim.evidence.projected import Reach, Weak, outside_level, reach, weak_nuisance
 from discrim.evidence.rivals import directions, joint_p, studentised
-from discrim.evidence.score import basis, p_one_sided, score, without
+from discrim.evidence.score import basis, p_one_sided, score, uses_strength, without
 from discrim.evidence.several import several
 from discrim.evidence.term import Kind, NestedF, Term
 from discrim.fit.covariance import Whitener
@@ -45,7 +45,10 @@ def absence_test(
     if term.kind in (Kind.ZERO, Kind.ORDER):
         pts = Curve(problem, full.theta, term.psi[0], full.jacobian).at(np.array([0.0]))
         z, weak = at_zero(term, problem, pts, alpha)
-        words = "reconciled score test" + (LEAST if weak else "")
+        words = "reconciled score test"
+        if uses_strength(problem):
+            words = "conditional likelihood ratio at the reconciled conditions"
+        words += LEAST if weak else ""
         return z, float(pts.score.information[0]), words, weak
     if term.kind is Kind.SEVERAL:
         words = "reconciled score test, several constants at once"

@@ -408,7 +408,7 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         out.append(("Detectable effect", f"{percent(detectable)} (power 80 %)"))
     p = read.value(read.part(read.part(question, "tests"), "reconciled"), "p")
     if p is not None:
-        out.append(("Reconciled score test", f"p {_equals(probability(p))}"))
+        out.append(("Reconciled test", f"p {_equals(probability(p))}"))
     return out
 
 

@@ -444,13 +444,13 @@ def behind(question: Mapping[str, Any]) -> tuple[Table, ...]:
 
 
 def _tests(question: Mapping[str, Any]) -> Table | None:
-    names = {"nested_F": "extra sum of squares (F)", "reconciled": "reconciled score"}
+    names = {"nested_F": "extra sum of squares (F)", "reconciled": "reconciled test"}
     rows = []
     tests = read.part(question, "tests")
     origins = read.part(question, "by_origin")
     listed = [(names.get(str(k), read.clean(k)), read.part(tests, k)) for k in tests]
     listed += [
-        (f"reconciled score, conditions taken as {read.clean(k)}", read.part(origins, k))
+        (f"reconciled test, conditions taken as {read.clean(k)}", read.part(origins, k))
         for k in origins
     ]
     for name, t in listed:

@@ -108,8 +108,10 @@ def references(w: Weighed) -> list[dict[str, str]]:
             "Luecke, Technometrics 15 (1973) 233",
         ),
         (
-            "Score test that holds where runs are in lockstep",
-            "Kleibergen, Econometrica 70 (2002) 1781; 73 (2005) 1103",
+            "Tests that hold where runs are in lockstep",
+            "score: Kleibergen, Econometrica 70 (2002) 1781; 73 (2005) 1103; conditional likelihood "
+            "ratio: Moreira, Econometrica 71 (2003) 1027; other constants in lockstep: Chaudhuri & "
+            "Zivot, J. Econometrics 164 (2011) 239",
         ),
         (
             "Extra sum of squares, profile intervals",
