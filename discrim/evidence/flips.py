@@ -42,7 +42,12 @@ def error_margin(
         again = full
         if term.kind is Kind.FACTOR:
             again = fit(term.full, problem.data, starts=4, near=full.theta[None])
-        return absence_test(term, problem, again, reduced, seed, alpha)[0]
+        z = absence_test(term, problem, again, reduced, seed, alpha)[0]
+        df = reduced.degrees_of_freedom
+        if not (abs(z) if two_sided else z) > critical and data.scale is Scale.STATED and df > 0:
+            if reduced.objective > chi2_quantile_upper(guard_level(alpha), df):
+                return float("inf")
+        return z
 
     def rejects(factor: float) -> bool:
         z = z_at(factor)
