@@ -96,7 +96,8 @@ def error_findings(bench: Bench) -> list[tuple[str, str, str]]:
             "note",
             "errors",
             f"the error of {every} is not stated: {what} estimated with “{bench.errors_from}” and "
-            "held for all candidates, so lack of fit cannot be told from noise",
+            f"held for all candidates (tests by t with {errors.reference_df:.3g} degrees of freedom), "
+            "so lack of fit cannot be told from noise",
         )
     ]
     if errors.reference_df < FEW:
