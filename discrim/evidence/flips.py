@@ -44,9 +44,9 @@ def error_margin(
             again = fit(term.full, problem.data, starts=4, near=full.theta[None])
         z = absence_test(term, problem, again, reduced, seed, alpha)[0]
         df = reduced.degrees_of_freedom
-        if not (abs(z) if two_sided else z) > critical and data.scale is Scale.STATED and df > 0:
-            if reduced.objective > chi2_quantile_upper(guard_level(alpha), df):
-                return float("inf")
+        known = data.scale is Scale.STATED and df > 0
+        if known and reduced.objective > chi2_quantile_upper(guard_level(alpha), max(df, 1)):
+            return float("inf")  # see by_objective
         return z
 
     def rejects(factor: float) -> bool:
