@@ -132,6 +132,11 @@ def references(w: Weighed) -> list[dict[str, str]]:
             "score of each law towards its rivals, after Fisher & McAleer, J. Econometrics 16 (1981) 103",
         ),
         (
+            "Rivals two at a time, tables drawn with the reconciled conditions held",
+            "Cox, J. R. Stat. Soc. B 24 (1962) 406; Williams, Biometrics 26 (1970) 23; as a guide Vuong, "
+            "Econometrica 57 (1989) 307; when to stop drawing: Gandy, J. Am. Stat. Assoc. 104 (2009) 1504",
+        ),
+        (
             "Residuals: influence of single runs, trends of all columns together, patterns with "
             "references drawn for each fit",
             "Cook & Weisberg, Residuals and Influence in Regression, Chapman & Hall 1982; Holm, Scand. "
