@@ -163,8 +163,10 @@ POWER_CELLS = (
         )
     ),
     *(
-        Cell("two pathways", 12, spread, error)
-        for spread, error in ((0.003, 0.02), (0.01, 0.01), (0.05, 0.02))
+        Cell("two pathways", 12, spread, error, share=share)
+        for (spread, error), share in product(
+            ((0.003, 0.02), (0.01, 0.01), (0.05, 0.02)), (0.3, 0.8)
+        )
     ),
     *(
         Cell(law, 12, 0.5, 0.01)

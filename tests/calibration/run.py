@@ -2,7 +2,7 @@
 
 Writes ``figures.md``, ``figures.csv`` and ``size_by_spread.svg`` beside this file, each part as it is
 finished, so that an interruption loses one part at most; ``--only PART`` makes one part anew and leaves
-the others. About half an hour on two cores.
+the others. About forty minutes on two cores.
 """
 
 from __future__ import annotations
@@ -136,7 +136,7 @@ def power(work: Work) -> Made:
 
 
 def rivals(work: Work) -> Made:
-    n = [work.studies(600 * c.studies) for c in RIVAL_CELLS]
+    n = [work.studies(400 * c.studies) for c in RIVAL_CELLS]
     results = work.each(run_rivals, "rivals", RIVAL_CELLS, n, [work.seed] * len(n))
     intro = [
         "## The true law among its rivals",
@@ -148,7 +148,7 @@ def rivals(work: Work) -> Made:
 
 
 def verdicts(work: Work) -> Made:
-    n, m = work.studies(100), len(VERDICT_CELLS)
+    n, m = work.studies(80), len(VERDICT_CELLS)
     results = work.each(run_verdicts, "verdicts", VERDICT_CELLS, [n] * m, [work.seed] * m)
     intro = [
         "## Verdicts of whole studies",
