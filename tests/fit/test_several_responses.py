@@ -427,3 +427,27 @@ def _size(together: bool, n: int, studies: int) -> float:
         sol = solve(problem, begin, fixed=np.array([[False, False, True]]))
         hits += int(score(problem, sol, 2).z[0] > 1.6449)
     return hits / studies
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("rate_error", [0.01, 0.003])
+def test_size_in_lockstep_with_measured_conditions(rate_error: float) -> None:
+    """A and B measured at 2 %, B = 2.5 A within 1 %, two rates that both could hold B and do not."""
+    studies, hits = 500, 0
+    for seed in range(studies):
+        table = Table([K[0] * A + K[1] * B, K[2] * A + K[1] * B], 3, 20, 5000 + seed)
+        a = table.conditions[:20, 0]
+        b = 2.5 * a * (1 + 0.01 * table.rng.standard_normal(20))
+        table.conditions = np.vstack([np.column_stack([a, b])] * 2)
+        y = table.draw([1.0, 0.0, 0.5], rate_error**2 * np.eye(2))
+        noise = 1 + 0.02 * table.rng.standard_normal((20, 2))
+        table.conditions = table.conditions * np.vstack([noise, noise])
+        sources = tuple(source(j, 40, relative=0.02, groups=table.run) for j in (0, 1))
+        data, unknown = table.data(y, sources), table.unknown(together=False)
+        e = estimate(table.predictor, data, unknown)
+        assert e is not None
+        held = with_covariance(data, unknown, e.held, e.reference_df)
+        problem = Problem(table.predictor, held)
+        sol = solve(problem, np.array([[1.0, 0.0, 0.5]]), fixed=np.array([[False, True, False]]))
+        hits += int(score(problem, sol, 1).z[0] > 1.6449)
+    assert hits / studies <= 0.06 + 2 * np.sqrt(0.06 * 0.94 / studies)
