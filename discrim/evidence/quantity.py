@@ -19,6 +19,7 @@ from typing import Any
 import numpy as np
 
 from discrim.evidence.curve import Curve, Points
+from discrim.evidence.restricted import Trail
 from discrim.evidence.score import Score, score
 from discrim.fit.engine import CONVERGED, Options, Problem, Solution, solve
 from discrim.fit.fit import Fit
@@ -47,7 +48,9 @@ class InQuantity:
     def __init__(
         self, inner: Predictor, quantity: Quantity, which: int, reference: np.ndarray
     ) -> None:
-        self.inner, self.quantity, self.reference = inner, quantity, reference
+        self.inner, self.quantity = inner, quantity
+        # one on its bound could leave the quantity without a value (0/0)
+        self.reference = np.where(reference <= inner.lower, inner.scale, reference)
         self.which = which
         every = quantity.inverses
         self.chain = (every[which], *(i for k, i in enumerate(every) if k != which))
@@ -159,6 +162,44 @@ class InQuantity:
         return Prediction(values, by_constants, pred.by_conditions, by_both)
 
 
+class _Trail(Trail):
+    """Starts at values far away move the constant that moves the predictions least.
+
+    A ratio goes to zero with its numerator: with the numerator held its denominator would start at
+    infinity.
+    """
+
+    def __init__(self, found: Fit, fit: Fit) -> None:
+        wrapped = found.predictor
+        assert isinstance(wrapped, InQuantity)
+        super().__init__(found.problem, found.theta, wrapped.psi, found.jacobian)
+        self.fit, self.wrapped = fit, wrapped
+
+    def starts(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        plain, line = super().starts(values)
+        norms = np.sqrt((self.fit.jacobian**2).sum(axis=0))
+        least = np.full(len(values), np.inf)
+        for base in (self.fit.theta, self.wrapped.reference):
+            for inverse in self.wrapped.chain:
+                j = inverse.psi
+                trial = np.tile(base, (len(values), 1))
+                trial[:, j] = values
+                x = self.wrapped.quantity.solve(inverse, trial)
+                trial[:, j] = x
+                with np.errstate(invalid="ignore"):
+                    fits = (x >= self.fit.predictor.lower[j]) & (x <= self.fit.predictor.upper[j])
+                    gap = np.abs(self.wrapped.quantity.value(trial) - values)
+                    fits &= gap <= SAME * np.maximum(np.abs(values), self.wrapped.scale[self.psi])
+                    moved = np.where(fits, np.abs(x - self.fit.theta[j]) * norms[j], np.inf)
+                better = moved < least
+                least = np.where(better, moved, least)
+                trial[:, self.psi] = values
+                plain = np.where(better[:, None], trial, plain)
+            if np.isfinite(least).all():
+                break
+        return plain, line
+
+
 class AlongQuantity(Curve):
     """Restricted fits along a quantity of the constants of ``fit``.
 
@@ -176,6 +217,7 @@ class AlongQuantity(Curve):
         assert isinstance(wrapped, InQuantity)
         self.wrapped, self.fit_in_it, self.which = wrapped, found, wrapped.which
         super().__init__(found.problem, found.theta, wrapped.psi, found.jacobian)
+        self.trail = _Trail(found, fit)
 
     def points(self, values: np.ndarray, sol: Solution) -> Points:
         pts = self._scored(values, sol)
@@ -233,6 +275,8 @@ class AlongQuantity(Curve):
         near = ON_BOUND * base.scale[e]
         with np.errstate(invalid="ignore"):
             on = (inner[:, e] <= base.lower[e] + near) | (inner[:, e] >= base.upper[e] - near)
+        # where the replaced constant cannot follow at all, it was only held somewhere
+        on |= self.wrapped.follows(pts.solution.theta) != 0
         ends = np.flatnonzero(on & np.isfinite(inner).all(axis=1))
         if not len(ends):
             return []

@@ -75,7 +75,15 @@ def quantity_facts(
     if brief:
         return without("the law is rejected by these runs")
     if not np.isfinite(value):
-        return without("it has no finite value at the best fit")
+        upside_down = _inverse(fit, quantity, level, closeness)
+        if upside_down is None:
+            return without("it has no finite value at the best fit")
+        return replace(
+            upside_down,
+            value=value,
+            standard_error=float("inf"),
+            linearised=wald,
+        )
     if not quantity.involved:
         return without("it holds no constant that these runs estimate")
     if fit.data.scale is Scale.ESTIMATED and fit.degrees_of_freedom < 1:
@@ -84,11 +92,53 @@ def quantity_facts(
     if not curve.possible:
         return without("at the best fit it moves with no constant")
     found = along(curve.fit_in_it, curve, level, se=se, closeness=closeness)
-    profile, reconciled = (_ended(i, curve) for i in (found.profile, found.reconciled))
+    step = max(STEP, 10.0 * closeness)
+    profile, reconciled = (_ended(i, curve, step) for i in (found.profile, found.reconciled))
     return QuantityFacts(value, se, wald, profile, reconciled, found)
 
 
-def _ended(interval: Interval, curve: AlongQuantity) -> Interval:
+def _inverse(fit: Fit, quantity: Quantity, level: float, closeness: float) -> QuantityFacts | None:
+    """A quotient whose denominator is zero at the best fit, from its inverse."""
+    over = Quantity(
+        1 / quantity.expression, quantity.symbols, quantity.conditions, quantity.at, quantity.scale
+    )
+    if not quantity.nonnegative or not np.isfinite(over.value(fit.theta[None])[0]):
+        return None
+    found = quantity_facts(fit, over, level, closeness=closeness)
+    result = found.result
+    if result is not None:
+        result = replace(
+            result,
+            lower_one_sided=_one_over(result.upper_one_sided),
+            upper_one_sided=_one_over(result.lower_one_sided),
+        )
+    return replace(
+        found,
+        profile=_turned_over(found.profile),
+        reconciled=_turned_over(found.reconciled),
+        result=result,
+    )
+
+
+def _one_over(side: Side) -> Side:
+    if side.end == FAILED:
+        return side
+    if side.value == 0:
+        return Side(np.inf, OPEN)
+    return Side(0.0, BOUND) if np.isinf(side.value) else Side(1.0 / side.value, side.end)
+
+
+def _turned_over(interval: Interval) -> Interval:
+    pieces = tuple(
+        (_one_over(Side(b, CROSSED)).value, _one_over(Side(a, CROSSED)).value)
+        for a, b in reversed(interval.pieces)
+    )
+    return replace(
+        interval, low=_one_over(interval.high), high=_one_over(interval.low), pieces=pieces
+    )
+
+
+def _ended(interval: Interval, curve: AlongQuantity, step: float) -> Interval:
     """An end beyond which no constants give a value at all is a bound."""
     if interval.empty:
         return interval
@@ -97,7 +147,7 @@ def _ended(interval: Interval, curve: AlongQuantity) -> Interval:
         side: Side = getattr(interval, name)
         if side.end != CROSSED or not np.isfinite(side.value):
             continue
-        beyond = side.value + sign * STEP * max(
+        beyond = side.value + sign * step * max(
             abs(side.value), 1e-3 * curve.wrapped.scale[curve.psi]
         )
         if np.isinf(curve.at(np.array([beyond]), careful=False).objective[0]):

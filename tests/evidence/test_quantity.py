@@ -274,3 +274,47 @@ def test_what_cannot_be_solved_for_is_found_by_iteration():
     np.testing.assert_allclose(q.solve(inverse, asked), theta[:, 0], rtol=1e-10)
     asked[:, 0] = -1.0
     assert np.isnan(q.solve(inverse, asked)).all()
+
+
+def in_lockstep(seed: int) -> Measurements:
+    """B/A varies by 2 %, both are measured with 2 %, the rate with 1 %."""
+    rng = np.random.default_rng(seed)
+    n = 12
+    a = np.geomspace(0.3, 10, n)
+    x = np.column_stack([a, 2 * a * (1 + 0.02 * rng.standard_normal(n))])
+    y = (x @ [1.0, 0.5]) * (1 + 0.01 * rng.standard_normal(n))
+    read = x * (1 + 0.02 * rng.standard_normal((n, 2)))
+    errors = (
+        source(0, n, relative=0.02),
+        source(1, n, relative=0.02),
+        source(OBSERVATION, n, relative=0.01),
+    )
+    return Measurements(y, read, errors, Scale.STATED, ("A", "B"))
+
+
+@pytest.mark.parametrize("seed", [3, 5, 6])
+def test_a_share_and_a_ratio_say_the_same_in_lockstep(seed: int):
+    """share = 3 r/(2 + 3 r) is a monotone function of r = k_b/k_a: so are the ends of its intervals."""
+    data = in_lockstep(seed)
+    found = fit(bound(LINEAR, TWO, data.n), data)
+    ratio = quantity_facts(found, quantity(k_b / k_a, TWO), 0.95)
+    share = quantity_facts(found, quantity(3 * k_b / (2 * k_a + 3 * k_b), TWO), 0.95)
+    for r, s in ((ratio.profile, share.profile), (ratio.reconciled, share.reconciled)):
+        for end in ("low", "high"):
+            x = getattr(r, end).value
+            expected = 1.0 if np.isinf(x) else 3 * x / (2 + 3 * x)
+            assert getattr(s, end).value == pytest.approx(expected, abs=2e-3)
+
+
+def test_a_ratio_whose_denominator_is_zero_at_the_best_fit_has_a_lower_end():
+    x = table(0.02).conditions
+    noise = 0.05 * np.random.default_rng(2).standard_normal(len(x))
+    y = x[:, 1] - 0.02 * x[:, 0] + noise  # k_a would be negative
+    data = Measurements(y, x, (), Scale.ESTIMATED, ("A", "B"))
+    other = fit(bound(LINEAR, TWO, data.n), data)
+    assert other.theta[0] == 0
+    facts = quantity_facts(other, quantity(k_b / k_a, TWO), 0.95, closeness=1e-9)
+    back = quantity_facts(other, quantity(k_a / k_b, TWO), 0.95, closeness=1e-9)
+    assert np.isinf(facts.value)
+    assert facts.reconciled.high.end == "open"
+    assert facts.reconciled.low.value == pytest.approx(1 / back.reconciled.high.value, rel=1e-6)

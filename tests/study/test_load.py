@@ -376,7 +376,9 @@ def test_questions_about_constants_and_the_reverse_reaction(tmp_path):
         + "[[questions]]\nreversible = true\n"
         + '[[questions]]\nconstant = "k_a"\nvalue = "0.5 1/s"\n'
     )
-    equal, reverse, value = study(tmp_path, text).questions[-3:]
+    read = study(tmp_path, text)
+    assert any("empty in 1 of 5 runs" in f for f in read.findings)
+    equal, reverse, value = read.questions[-3:]
     assert (equal.asks, equal.names, equal.matters_above) == ("equal", ("k_a", "k_b"), 0.1)
     assert (reverse.asks, reverse.about) == ("reversible", "")
     assert (value.about, value.value, value.value_text) == ("k_a", 0.5, "0.5 1/s")
