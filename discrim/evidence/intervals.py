@@ -373,6 +373,10 @@ def _pieces(found: Found, criterion: int, lo: float, hi: float) -> tuple[Interva
         nan = Side(float("nan"), FAILED)
         return Interval("", nan, nan, empty=True), nan, nan
     first = [-np.inf] if yes[0] else []
+    values = found.points.values
+    if len(ends) and not yes[0] and ends[0] - lo < 1e-6 * (values[1] - lo):
+        # the bound itself alone is excluded, as where a law is nothing at all at zero
+        first, ends = [-np.inf], ends[1:]
     last = [np.inf] if yes[-1] else []
     marks = [*first, *ends.tolist(), *last]
     pieces = tuple((marks[k], marks[k + 1]) for k in range(0, len(marks) - 1, 2))

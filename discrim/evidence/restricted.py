@@ -26,8 +26,10 @@ SHORT = replace(OPTIONS, max_iterations=10)
 FEW = 3
 # how far the objective may be from that of a linear law to be taken for it
 STRAIGHT = 0.25
+# the factor by which a constant may be carried on from neighbour to neighbour
+FARTHEST_STEP = 1e3
 # sweeps carry a gain one value further each; most often the first finds none
-SWEEPS = 8
+SWEEPS = 60
 # a restricted fit is in another valley, and its neighbours are to hear of it, when it is lower by
 # this, relative; smaller gains are only taken
 GAIN = 1e-4
@@ -232,7 +234,8 @@ def _swept(
         row, origin = np.concatenate(rows), np.concatenate(source)
         if not len(row):
             break
-        start = np.where(fixed[row], plain[row], sol.theta[origin])
+        beyond = np.concatenate([b[o] for b, o in zip((left, right), source, strict=True)])
+        start = _continued(sol, origin, beyond, plain[row], fixed[row], hopeless)
         again = solve(
             problem, start, fixed=fixed[row], options=SHORT, conditions=sol.conditions[origin]
         )
@@ -246,6 +249,28 @@ def _swept(
         if not came.any():
             break
     return sol
+
+
+def _continued(
+    sol: Solution,
+    near: np.ndarray,
+    far: np.ndarray,
+    plain: np.ndarray,
+    fixed: np.ndarray,
+    hopeless: float,
+) -> np.ndarray:
+    """Starts from the neighbours ``near``, shape (R, p), carried on along the powers by which the
+    constants went from the next ones, ``far`` (-1 for none), to them: where two constants grow
+    together, and their ratio is all that the runs fix, that is the way.
+    """
+    known = (far >= 0) & (sol.objective[far] <= hopeless)
+    one, two = sol.theta[near], sol.theta[far]
+    with np.errstate(all="ignore"):
+        held = [np.where(fixed, x, 1.0).prod(axis=1) for x in (plain, one, two)]
+        power = np.log(held[0] / held[1]) / np.log(held[1] / held[2])
+        factor = (one / two) ** power[:, None]
+    fair = known[:, None] & (factor > 1.0 / FARTHEST_STEP) & (factor < FARTHEST_STEP)
+    return np.where(fixed, plain, np.where(fair, one * np.where(fair, factor, 1.0), one))
 
 
 def _hints(
