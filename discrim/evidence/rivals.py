@@ -143,7 +143,11 @@ def _directions(nulls: Sequence[_Null], rival: Fit, *, thorough: bool) -> list[l
             out.append([])
             continue
         d = without(null.own, null.white.vector(made.values[k : k + 1] - null.fit.values))[0]
-        if float(np.sqrt(d @ d)) > 1e-4 * null.sd * np.sqrt(null.fit.n):
+        # A rival that comes closer than could ever be seen shows in what it has beyond the null: else a
+        # law that ends next to the edge at which both are one law would be tried in no direction at all.
+        # (Simulated: the true law stands as often, 0.97 to 0.99; wrong ones next to an edge in 0.11 of
+        # studies, not 0.20.)
+        if float(np.sqrt(d @ d)) > TOO_SHORT * null.sd:
             out.append([d])
         else:
             out.append(_beyond(null, null.white.matrix(made.by_constants[k : k + 1])))
