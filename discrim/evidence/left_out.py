@@ -141,14 +141,18 @@ def _may_be_small(
     return whole.effect.bound < 1.0
 
 
-def law_left_out(fit: Fit, whole: Standing, run_of: np.ndarray) -> LawLeftOut:
-    """What could reject a law with each run left out, along the directions that it has with all."""
+def law_left_out(
+    fit: Fit, whole: Standing, run_of: np.ndarray, *, factor: float = 1.0
+) -> LawLeftOut:
+    """What could reject a law with each run left out, along the directions that it has with all, the
+    errors of conditions ``factor`` times as large."""
+    data = fit.data if factor == 1.0 else fit.data.with_condition_errors_times(factor)
 
     def both(table: Measurements) -> np.ndarray:
         found = law_again(fit, whole, table)
         return np.stack([found.fit, found.along], axis=1)
 
-    out = _each(fit.data, run_of, both)
+    out = _each(data, run_of, both)
     return LawLeftOut(out[:, 0], out[:, 1])
 
 

@@ -27,6 +27,8 @@ from discrim.weigh.document_values import number
 
 # what is within this of a limit, in standard deviations, is weighed again exactly
 NEAR = 0.25
+# a rejected law that comes to stand at this many times the margin that is asked is far from it
+FAR_FROM_MARGIN = 2.0
 # runs weighed again exactly, those that change most first; beyond, the batch is believed
 MOST_EXACT = 3
 
@@ -83,15 +85,25 @@ def left_out(s: Situation, again: Again) -> LeftOut:
     if len(runs) < 2:
         return LeftOut(0, tuple(() for _ in s.answers), ())
     slack = _standing_slack(s)
+    # rejected laws that larger errors bring back, where that is what a verdict turns on
+    returning = sorted(
+        {
+            i
+            for a in s.answers
+            for i, c in enumerate(a.facts)
+            if not c.stands and c.stands_at < FAR_FROM_MARGIN * ERROR_MARGIN
+        }
+    )
+    wide = _standing_slack(s, factor=ERROR_MARGIN, only=returning) if returning else None
     tests = [_tests(s, a) for a in s.answers]
     fallen = [_stand_in_slack(s, a) for a in s.answers]
     now = _outcome(s.stands, s.answers)
     suspects: list[tuple[float, int]] = []
     batch: dict[int, tuple[Outcome, list[float]]] = {}
     for r in range(len(runs)):
-        plain = _predicted(s, slack, tests, fallen, r, 0.0, 0.0)
+        plain = _predicted(s, slack, wide, tests, fallen, r, 0.0, 0.0)
         shifted = [
-            _predicted(s, slack, tests, fallen, r, a, b)[0]
+            _predicted(s, slack, wide, tests, fallen, r, a, b)[0]
             for a, b in product((-NEAR, 0.0, NEAR), repeat=2)
         ]
         if plain[0] != now:
@@ -152,20 +164,24 @@ def _p(a: Answer) -> float:
 # ---- the laws --------------------------------------------------------------------------------
 
 
-def _standing_slack(s: Situation) -> np.ndarray:
+def _standing_slack(
+    s: Situation, *, factor: float = 1.0, only: Sequence[int] | None = None
+) -> np.ndarray:
     """By how many standard deviations each law stands without each run, shape (R, laws); negative
-    where it is rejected. Under several readings of the errors the one that it stands by most."""
+    where it is rejected. Under several readings of the errors the one that it stands by most.
+
+    ``factor`` on all errors of conditions; -inf for laws that are not in ``only``.
+    """
     alpha = 1.0 - s.study.level
     n_runs = len(np.unique(s.runs))
     out = np.full((n_runs, len(s.names)), -np.inf)
     for i, fits in enumerate(s.common_fits):
         for r, fit in enumerate(fits):
-            if not fit.ok:
+            if not fit.ok or (only is not None and i not in only):
                 continue
             whole = s.readings[r][i]
-            out[:, i] = np.maximum(
-                out[:, i], slack_of(law_left_out(fit, whole, s.runs), whole, fit, alpha)
-            )
+            left = law_left_out(fit, whole, s.runs, factor=factor)
+            out[:, i] = np.maximum(out[:, i], slack_of(left, whole, fit, alpha))
     for i, j in s.same:
         out[:, i] = out[:, j] = np.maximum(out[:, i], out[:, j])
     return out
@@ -211,6 +227,7 @@ def _tests(s: Situation, a: Answer) -> dict[tuple[int, str], TermLeftOut]:
 def _predicted(
     s: Situation,
     slack: np.ndarray,
+    wide: np.ndarray | None,
     tests: Sequence[dict[tuple[int, str], TermLeftOut]],
     fallen: Sequence[np.ndarray],
     r: int,
@@ -227,6 +244,13 @@ def _predicted(
             _facts(a, c, k.index, stands[k.index], found, r, of_tests, s)
             for c, k in zip(a.facts, a.per_candidate, strict=True)
         ]
+        if wide is not None:
+            facts = [
+                replace(c, stands_at=1.0 if x + of_laws >= 0 else float("inf"))
+                if np.isfinite(x)
+                else c
+                for c, x in zip(facts, wide[r], strict=True)
+            ]
         again = {}
         if len(a.tried):
             tried = [
