@@ -58,7 +58,7 @@ def _add_excluded(out: dict[str, Any], w: Weighed, every_run: Weighed | str) -> 
     for q, again in zip(out["questions"], question_records(every_run), strict=True):
         q["with_excluded_runs"] = again["verdict"]
         q["sentence_with_excluded_runs"] = again["sentence"]
-        about = f"question about {q['about']}"
+        about = f"question about {q['about'] or 'the reverse reaction'}"
         if q["asks"] == "stands":
             same = q.get("standing") == again.get("standing")
         else:
