@@ -108,6 +108,35 @@ def standing(
     ]
 
 
+def standing_in_studies(
+    nulls: Sequence[Fit],
+    rivals: Sequence[Fit],
+    contains: Sequence[bool],
+    *,
+    alpha: float,
+    seed: int,
+) -> list[Standing]:
+    """Whether one law stands among its rivals in each of many studies of the same size.
+
+    ``nulls``: its fit to the table of each study; ``rivals``: the other laws, fitted to any one table (only
+    where to begin is taken from it); ``contains``: which of them contain it. To count how often a known
+    truth is kept: all studies are one batch, where `standing` would take a fit for each rival in each.
+    """
+    tried: list[list[int]] = [[] for _ in nulls]
+    found: list[list[np.ndarray]] = [[] for _ in nulls]
+    made = [_Null(f) for f in nulls]
+    for j, rival in enumerate(rivals, start=1):
+        if not rival.ok:
+            continue
+        for k, rows in enumerate(_directions(made, rival, thorough=False)):
+            found[k].extend(rows)
+            tried[k].extend([j] * len(rows))
+    inside = {(j, 0): True for j, c in enumerate(contains, start=1) if c}
+    return [
+        _judge(null, found[k], tried[k], inside, 0, alpha, seed) for k, null in enumerate(nulls)
+    ]
+
+
 def directions(null: Fit, rival: Fit) -> list[np.ndarray]:
     """Whitened directions, orthogonal to the sensitivities of ``null``, in which ``rival`` would show.
 

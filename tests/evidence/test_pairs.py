@@ -14,7 +14,7 @@ from statsmodels.stats.diagnostic import compare_cox
 from discrim.evidence.mimic import mimics
 from discrim.evidence.pairs import pairs, vuong
 from discrim.evidence.quadratic import weighted_chi2_upper
-from discrim.evidence.rivals import apart, directions, standing
+from discrim.evidence.rivals import apart, directions, standing, standing_in_studies
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from tests.reference.outside import predictor, symbols
@@ -241,3 +241,18 @@ def test_laws_alike_on_the_runs_apart_in_a_window() -> None:
     assert apart(fits[0], fits[1]) < 1e-9
     window = np.array([[1.0, 2.0], [1.0, 1.9]])
     assert apart(fits[0], fits[1], window) == pytest.approx(1.0, rel=1e-6)
+
+
+def test_many_studies_at_once_are_judged_as_one_by_one() -> None:
+    """Linear laws, whose fits have one optimum: the same joint p-values from the batch of studies."""
+    nulls, rivals = [], []
+    alone = []
+    for seed in range(3):
+        _, _, fits = linear_pair(20, seed)
+        nulls.append(fits[0])
+        rivals.append(fits[1])
+        alone.append(standing(fits, {}, {}, alpha=0.05, seed=1, only=[0])[0])
+    together = standing_in_studies(nulls, rivals[:1], [False], alpha=0.05, seed=1)
+    for one, other in zip(alone, together, strict=True):
+        assert other.stands == one.stands
+        assert other.p_joint == pytest.approx(one.p_joint, rel=1e-6)
