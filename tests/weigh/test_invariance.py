@@ -300,6 +300,10 @@ def test_units_of_the_columns(name: str, tmp_path: Path) -> None:
         # is the rate at one unit of pressure, which is another constant in another unit
         if name == "adsorbed" and key[-1] == "objective":
             return False
+        # a rival with a free order is tried in several directions at once, and which ones of those that
+        # span the same space depends on the unit: the p-value moves (by a sixth, at 1e-10)
+        if key == ("B held", "p_joint"):
+            return False
         return "A to a power" not in key or key[-1] not in ("low", "high", "condition_number")
 
     same(name, weighed(tmp_path, changed), only=only)
