@@ -40,16 +40,20 @@ def excluded(problem: Problem, held: Solution, z: np.ndarray, *, two_sided: bool
 def oracle(drawn: Drawn) -> tuple[np.ndarray, np.ndarray]:
     """z of an oracle, and its mean for each unit of the constant in question, shape (S,) each.
 
-    The score along the true sensitivities with the noise of the tables: e = y - f(printed conditions;
-    term at zero, others true); V and the sensitivities are taken at the true constants and at what the
-    errors of the conditions are independent of, which no one knows. The other constants are projected
-    out, as they have to be estimated.
+    The score along the true sensitivities: e is the noise of the table at the true constants and what the
+    term adds. V and the sensitivities are taken there too, and at what the errors of the conditions are
+    independent of, which no one knows. The other constants are projected out, as they have to be
+    estimated.
     """
     problem, truth = drawn.problem, drawn.truth
     null = truth.copy()
     null[:, 0] = 0.0
-    shown = problem.data.conditions
-    e = problem.data.y - problem.predictor.predict(null, shown, constants=False).values
+
+    def says(theta: np.ndarray, conditions: np.ndarray) -> np.ndarray:
+        return problem.predictor.predict(theta, conditions, constants=False).values
+
+    noise = problem.data.y - says(truth, problem.data.conditions)
+    e = noise + says(truth, drawn.base) - says(null, drawn.base)
     at = problem.predictor.predict(truth, drawn.base, conditions_too=True)
     assert at.by_constants is not None
     scale2 = np.full(drawn.studies, drawn.variance)

@@ -59,7 +59,11 @@ def oracle(design: Design) -> str:
     problem, truth = design.problem(), design.truth[None]
     null = truth.copy()
     null[0, 0] = 0.0
-    e = design.rate - problem.predictor.predict(null, design.shown, constants=False).values
+
+    def says(theta: np.ndarray, conditions: np.ndarray) -> np.ndarray:
+        return problem.predictor.predict(theta, conditions, constants=False).values
+
+    e = design.rate - says(truth, design.shown) + says(truth, design.base) - says(null, design.base)
     at = problem.predictor.predict(truth, design.base, conditions_too=True)
     assert at.by_constants is not None
     v = problem.own_covariance(at.values, design.base[None], at.by_conditions, np.ones(1))
