@@ -34,7 +34,7 @@ def size_by_spread(results: Sequence[Counts], path: Path) -> None:
     ]
     errors = sorted({r.cell.condition_error for r in chosen})
     with mpl.rc_context({"svg.hashsalt": "calibration", "font.size": 9}):
-        figure = Figure(figsize=(7.2, 3.2), layout="constrained")
+        figure = Figure(figsize=(7.2, 3.5), layout="constrained")
         panels = figure.subplots(1, len(errors), sharey=True, squeeze=False)[0]
         for panel, error in zip(panels, errors, strict=True):
             line = sorted(
@@ -46,11 +46,16 @@ def size_by_spread(results: Sequence[Counts], path: Path) -> None:
                 panel.plot(x, y, color=colour, marker=marker, markersize=4, lw=1.2, label=name)
             panel.axhline(5, color="black", lw=0.6, ls=":")
             panel.set_xscale("log")
+            panel.set_xticks(x, [f"{value:g}" for value in x])
+            panel.minorticks_off()
             panel.set_ylim(0, None)
             panel.set_xlabel("spread of B/A, %")
             panel.set_title(f"condition errors {100 * error:g} %", fontsize=9)
             for side in ("top", "right"):
                 panel.spines[side].set_visible(False)
         panels[0].set_ylabel("false claims that B takes part, %")
-        panels[0].legend(frameon=False, fontsize=8)
+        handles, names = panels[0].get_legend_handles_labels()
+        figure.legend(
+            handles, names, loc="outside lower center", ncols=4, frameon=False, fontsize=8
+        )
         figure.savefig(path, format="svg", metadata={"Date": None})
