@@ -176,39 +176,67 @@ class Brackets:
         return tame(f), merit, settled
 
     def refined(self, closeness: float) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-        """Where the margins change sign, the merit there and whether the fit settled (Illinois
-        method: Dowell & Jarratt, BIT 11 (1971) 168, from memory)."""
+        """Where the margins change sign, the merit there and whether the fit settled.
+
+        Inverse quadratic interpolation through the last three points where these say that it is
+        safe, else halving (Chandrupatla, Adv. Eng. Software 28 (1997) 145, from memory): margins
+        are flat far from an end and steep beside it, where secants creep. A secant comes first; it
+        is all that a nearly straight margin needs.
+        """
+        # the newest point, the one on the other side, and the one before
         a, b = self.a.astype(float).copy(), self.b.astype(float).copy()
         fa, fb = tame(self.fa), tame(self.fb)
-        out = 0.5 * (a + b)
+        c, fc = a.copy(), fa.copy()
         merit, settled = np.full(len(a), np.inf), np.ones(len(a), bool)
         live = np.arange(len(a))
-        for k in range(40):
+        for k in range(60):
             if not len(live):
                 break
             la, lb, lfa, lfb = a[live], b[live], fa[live], fb[live]
-            with np.errstate(divide="ignore", invalid="ignore"):
-                x = (la * lfb - lb * lfa) / (lfb - lfa)
-            # bisection at first where the bracket spans decades, and whenever the secant leaves it
-            wide = (k < 3) & (np.abs(lb - la) > 0.5 * (np.abs(la) + np.abs(lb)))
-            positive = (la > 0) & (lb > 0)
-            mid = np.where(positive, np.sqrt(np.abs(la * lb)), 0.5 * (la + lb))
-            inside = (x > np.minimum(la, lb)) & (x < np.maximum(la, lb))
-            x = np.where(wide | ~inside | (k % 8 == 7), mid, x)
+            x, guessed = _next(la, lb, lfa, lfb, c[live], fc[live], first=k == 0)
+            room = 0.5 * closeness * np.abs(x)
+            x = np.where(
+                guessed, np.clip(x, np.minimum(la, lb) + room, np.maximum(la, lb) - room), x
+            )
             fx, merit[live], settled[live] = self.at(live, x)
             same = (fx > 0) == (lfa > 0)
-            half = 0.5 if k > 2 else 1.0
-            fb[live] = np.where(same, lfb * half, fx)
-            fa[live] = np.where(same, fx, lfa * half)
-            b[live] = np.where(same, lb, x)
-            a[live] = np.where(same, x, la)
-            moved = np.abs(x - out[live])
-            out[live] = x
-            narrow = np.abs(b[live] - a[live]) <= closeness * np.maximum(np.abs(x), 1e-300)
-            # a secant step is far closer than the step before it
-            done = (k > 2) & (moved <= closeness * np.abs(x)) & ~wide
+            c[live], fc[live] = np.where(same, la, lb), np.where(same, lfa, lfb)
+            b[live], fb[live] = np.where(same, lb, la), np.where(same, lfb, lfa)
+            a[live], fa[live] = x, fx
+            narrow = np.abs(b[live] - x) <= closeness * np.maximum(np.abs(x), 1e-300)
+            # an interpolated point is far closer than the one before it
+            done = guessed & (k > 1) & (np.abs(x - la) <= closeness * np.abs(x))
             live = live[~(narrow | (np.abs(fx) <= 0.1 * closeness) | done)]
-        return out, merit, settled
+        # the last points say where the end is more closely than the newest alone
+        x, guessed = _next(a, b, fa, fb, c, fc, first=False)
+        return np.where(guessed, x, a), merit, settled
+
+
+def _next(
+    a: np.ndarray,
+    b: np.ndarray,
+    fa: np.ndarray,
+    fb: np.ndarray,
+    c: np.ndarray,
+    fc: np.ndarray,
+    *,
+    first: bool,
+) -> tuple[np.ndarray, np.ndarray]:
+    """The next point of each bracket, shape (R,), and whether it was interpolated."""
+    # halved in powers where the bracket spans decades
+    middle = np.where((a > 0) & (b > 0), np.sqrt(np.abs(a * b)), 0.5 * (a + b))
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        if first:
+            x = (a * fb - b * fa) / (fb - fa)
+            guessed = np.abs(b - a) <= 0.5 * (np.abs(a) + np.abs(b))
+        else:
+            xi, phi = (a - b) / (c - b), (fa - fb) / (fc - fb)
+            guessed = (phi**2 < xi) & ((1.0 - phi) ** 2 < 1.0 - xi)
+            t = fa / (fb - fa) * fc / (fb - fc)
+            t = t + (c - a) / (b - a) * fa / (fc - fa) * fb / (fc - fb)
+            x = a + t * (b - a)
+    guessed &= (x > np.minimum(a, b)) & (x < np.maximum(a, b))
+    return np.where(guessed, x, middle), guessed
 
 
 def tame(m: np.ndarray) -> np.ndarray:
