@@ -19,8 +19,8 @@ from discrim.evidence.quantity import turned
 from discrim.evidence.quantity_intervals import QuantityFacts, quantity_facts
 from discrim.evidence.term import Kind, Participation, Term
 from discrim.evidence.term_tests import absence_test
-from discrim.fit.engine import Problem
 from discrim.fit.fit import Fit, fit
+from discrim.fit.problem import Problem
 from discrim.reactor.model import Prediction, Predictor
 from discrim.reactor.quantity import Quantity
 

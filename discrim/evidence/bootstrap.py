@@ -22,9 +22,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy import special
 
-from discrim.fit.engine import Options, Problem, Solution, joined, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Problem, Solution, joined
 
 # draws after which it is looked whether the decision is clear
 LOOKS = (100, 200, 400, 800, 1600)

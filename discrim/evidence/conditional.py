@@ -25,8 +25,8 @@ import numpy as np
 
 from discrim.evidence.distributions import chi2_tail, normal_of_tail
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import ErrorSource
+from discrim.fit.problem import Problem, Solution
 
 # strengths beyond this leave nothing of the condition: K decides
 SURE = 1e9

@@ -14,8 +14,8 @@ import numpy as np
 
 from discrim.evidence.restricted import Trail, follow
 from discrim.evidence.score import Score, score
-from discrim.fit.engine import Problem, Solution
 from discrim.fit.fit import Fit
+from discrim.fit.problem import Problem, Solution
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -53,6 +53,10 @@ class Curve:
     @classmethod
     def of(cls, fit: Fit, psi: int) -> Curve:
         return cls(fit.problem, fit.theta, psi, fit.jacobian)
+
+    def on(self, again: Fit) -> tuple[Fit, Curve]:
+        """The same curve of a fit made again with other errors, and that fit in its coordinates."""
+        return again, Curve.of(again, self.psi)
 
     def at(self, values: np.ndarray, *, careful: bool = True) -> Points:
         """Restricted optima at each of ``values``, shape (S,).

@@ -15,9 +15,9 @@ from discrim.evidence.margin import factor_where
 from discrim.evidence.term import Kind, Term
 from discrim.evidence.term_effect import chosen_point, in_effect
 from discrim.evidence.term_tests import absence_test, at_zero
-from discrim.fit.engine import Problem
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Problem
 
 
 def error_margin(

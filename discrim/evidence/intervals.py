@@ -260,8 +260,8 @@ def _profiles_at_variance(
             why = "not computed: the fit with the variance held failed"
     if why:
         return [nothing("profile", why) for _ in curves]
-    held = [Curve.of(again, c.psi) for c in curves]
-    return [one.profile for one in along_all(again, held, level, se=se)]
+    made = [c.on(again) for c in curves]
+    return [one.profile for one in along_all(made[0][0], [c for _, c in made], level, se=se)]
 
 
 def _around(profile: Interval, x: float) -> Interval:

@@ -29,9 +29,10 @@ from discrim.evidence.term import Kind, Participation, Term
 from discrim.evidence.term_effect import chosen_point, in_effect
 from discrim.evidence.term_tests import vanishing
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Options, Problem, Solution, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Problem, Solution
 
 # a score this far below its limit leaves the test with wider errors alone
 MAY_REJECT = 0.5

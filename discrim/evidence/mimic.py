@@ -6,9 +6,10 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from discrim.fit.engine import Options, Problem, Solution, joined, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution, joined
 from discrim.fit.scout import scout, starting_values
 from discrim.reactor.model import Prediction, Predictor
 

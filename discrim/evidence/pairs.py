@@ -36,9 +36,9 @@ from discrim.evidence.distributions import normal_quantile, normal_upper
 from discrim.evidence.mimic import mimicked, mimics
 from discrim.evidence.quadratic import weighted_chi2_upper
 from discrim.evidence.rivals import TOO_SHORT
-from discrim.fit.engine import Solution
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Solution
 
 # criteria closer than this are a tie: nobody would act on the difference
 TIE = 0.01

@@ -12,9 +12,9 @@ from discrim.evidence.score import p_one_sided
 from discrim.evidence.term import Effect, Kind, Participation, Term
 from discrim.evidence.term_effect import detectable_effect, effect_with_interval
 from discrim.evidence.term_tests import absence_test, by_objective, nested_f
-from discrim.fit.engine import Problem
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Problem
 
 
 def participation(

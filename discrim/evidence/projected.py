@@ -20,8 +20,9 @@ from enum import Enum
 import numpy as np
 
 from discrim.evidence.distributions import chi2_quantile_upper, f_quantile_upper
-from discrim.fit.engine import Options, Problem, Solution, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 
 # A combination of nuisance sensitivities counts as told apart when its length over the runs is at least
 # four times what the errors of measured conditions alone would give it (compared as squares). Measured

@@ -21,10 +21,13 @@ import numpy as np
 from discrim.evidence.curve import Curve, Points
 from discrim.evidence.restricted import Trail
 from discrim.evidence.score import Score, score
-from discrim.fit.engine import CONVERGED, Options, Problem, Solution, solve
+from discrim.fit.covariance import Whitener
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit
+from discrim.fit.fit import fit as refit
+from discrim.fit.problem import CONVERGED, Problem, Solution
 from discrim.reactor.model import Prediction, Predictor
-from discrim.reactor.quantity import Quantity
+from discrim.reactor.quantity import Inverse, Quantity
 
 _OPTIONS = Options(max_iterations=60, gradient_tolerance=1e-6, step_tolerance=1e-9)
 # a constant this close to its bound, relative to its typical size, is on it
@@ -163,10 +166,11 @@ class InQuantity:
 
 
 class _Trail(Trail):
-    """Starts at values far away move the constant that moves the predictions least.
+    """Starts at values far away move the constant with which the predictions stay nearest to the fit.
 
     A ratio goes to zero with its numerator: with the numerator held its denominator would start at
-    infinity.
+    infinity. A start far off can stay there: with errors of conditions the objective is flat where
+    the predictions are many times the observations.
     """
 
     def __init__(self, found: Fit, fit: Fit) -> None:
@@ -177,27 +181,41 @@ class _Trail(Trail):
 
     def starts(self, values: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         plain, line = super().starts(values)
-        norms = np.sqrt((self.fit.jacobian**2).sum(axis=0))
         least = np.full(len(values), np.inf)
         for base in (self.fit.theta, self.wrapped.reference):
             for inverse in self.wrapped.chain:
-                j = inverse.psi
-                trial = np.tile(base, (len(values), 1))
-                trial[:, j] = values
-                x = self.wrapped.quantity.solve(inverse, trial)
-                trial[:, j] = x
-                with np.errstate(invalid="ignore"):
-                    fits = (x >= self.fit.predictor.lower[j]) & (x <= self.fit.predictor.upper[j])
-                    gap = np.abs(self.wrapped.quantity.value(trial) - values)
-                    fits &= gap <= SAME * np.maximum(np.abs(values), self.wrapped.scale[self.psi])
-                    moved = np.where(fits, np.abs(x - self.fit.theta[j]) * norms[j], np.inf)
+                trial, fits = self._trial(base, inverse, values)
+                moved = np.where(fits, self._moved(trial), np.inf)
+                trial[:, self.psi] = values
                 better = moved < least
                 least = np.where(better, moved, least)
-                trial[:, self.psi] = values
                 plain = np.where(better[:, None], trial, plain)
-            if np.isfinite(least).all():
-                break
         return plain, line
+
+    def _trial(
+        self, base: np.ndarray, inverse: Inverse, values: np.ndarray
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """``base`` with one constant moved so that the quantity has each of ``values``, (S, p), and
+        where that can be."""
+        j = inverse.psi
+        trial = np.tile(base, (len(values), 1))
+        trial[:, j] = values
+        trial[:, j] = x = self.wrapped.quantity.solve(inverse, trial)
+        lower, upper = self.fit.predictor.lower[j], self.fit.predictor.upper[j]
+        with np.errstate(invalid="ignore"):
+            gap = np.abs(self.wrapped.quantity.value(trial) - values)
+            fits = (x >= lower) & (x <= upper)
+            fits &= gap <= SAME * np.maximum(np.abs(values), self.wrapped.scale[self.psi])
+        return trial, fits
+
+    def _moved(self, trial: np.ndarray) -> np.ndarray:
+        """How far the predictions are from those of the fit, shape (S,), in its standard errors."""
+        some = np.where(np.isfinite(trial), trial, self.fit.theta)
+        with np.errstate(all="ignore"):
+            made = self.fit.predictor.predict(some, self.fit.conditions, constants=False).values
+            gap = Whitener(self.fit.covariance[None]).vector(made - self.fit.values)
+            moved = np.einsum("sn,sn->s", gap, gap)
+        return np.where(np.isfinite(moved), moved, np.inf)
 
 
 class AlongQuantity(Curve):
@@ -218,6 +236,11 @@ class AlongQuantity(Curve):
         self.wrapped, self.fit_in_it, self.which = wrapped, found, wrapped.which
         super().__init__(found.problem, found.theta, wrapped.psi, found.jacobian)
         self.trail = _Trail(found, fit)
+
+    def on(self, again: Fit) -> tuple[Fit, Curve]:
+        inner = self.wrapped.to_inner(again.theta[None])
+        curve = AlongQuantity(refit(self.fit.predictor, again.data, starts=1, near=inner), self.quantity)
+        return (curve.fit_in_it, curve) if curve.possible else super().on(again)
 
     def points(self, values: np.ndarray, sol: Solution) -> Points:
         pts = self._scored(values, sol)

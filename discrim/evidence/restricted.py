@@ -15,7 +15,8 @@ from itertools import pairwise
 
 import numpy as np
 
-from discrim.fit.engine import STEP_LIMIT, Options, Problem, Solution, joined, solve
+from discrim.fit.engine import Options, solve
+from discrim.fit.problem import STEP_LIMIT, Problem, Solution, joined
 from discrim.fit.scout import starting_values
 
 # the score takes out what is left of the gradient of the others, so 1e-6 is plenty

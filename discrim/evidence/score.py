@@ -28,8 +28,8 @@ from discrim.evidence.distributions import normal_of_tail, normal_upper, t_upper
 from discrim.evidence.unknown_scale import scale_weights
 from discrim.evidence.unknown_variances import added_variance
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 
 # columns whose part outside the nuisance space is smaller than this carry only rounding error
 NO_INFORMATION = 1e-9

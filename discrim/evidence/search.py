@@ -14,7 +14,7 @@ import numpy as np
 
 from discrim.evidence.curve import Curve, Points, at_all
 from discrim.evidence.restricted import is_linear
-from discrim.fit.engine import CONVERGED
+from discrim.fit.problem import CONVERGED
 
 Accept = Callable[[Points], np.ndarray]
 

@@ -15,8 +15,8 @@ import numpy as np
 from discrim.evidence.distributions import chi2_tail, f_tail, normal_of_tail
 from discrim.evidence.score import basis, without
 from discrim.evidence.unknown_scale import scale_weights
-from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 
 # columns whose part outside the nuisance space is smaller than this carry only rounding error
 NO_INFORMATION = 1e-9

@@ -10,9 +10,9 @@ from discrim.evidence.effect import FARTHEST, InEffect, effect_of
 from discrim.evidence.intervals import OPEN, Side, along, standard_errors
 from discrim.evidence.score import basis, without
 from discrim.evidence.term import Effect, Kind, Term
-from discrim.fit.engine import Problem
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem
 
 POWER = 0.8
 

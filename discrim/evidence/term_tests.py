@@ -14,9 +14,10 @@ from discrim.evidence.score import basis, p_one_sided, score, uses_strength, wit
 from discrim.evidence.several import several
 from discrim.evidence.term import Kind, NestedF, Term
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 
 LEAST = ", the least significant over other constants in lockstep with one another"
 VANISH_GRID = np.logspace(-2.0, 2.0, 9)

@@ -14,7 +14,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution
+from discrim.fit.problem import Problem, Solution
 
 RANK = 1e-10
 

@@ -14,7 +14,7 @@ from discrim.evidence.curve import Curve, Points
 from discrim.evidence.distributions import normal_quantile
 from discrim.evidence.projected import Effort, Weak, outside_level, reach, weak_nuisance
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, Solution
+from discrim.fit.problem import Problem, Solution
 
 # distances from the estimate at which an end is tried, in units of that of the plain end
 WIDER = (1.0, 1.07, 1.2, 1.4, 1.8, 3.0, 10.0, 100.0)

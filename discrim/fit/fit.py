@@ -7,15 +7,9 @@ from enum import Enum
 
 import numpy as np
 
-from discrim.fit.engine import (
-    CONVERGED,
-    NOT_FINITE,
-    Options,
-    Problem,
-    Solution,
-    solve,
-)
+from discrim.fit.engine import Options, solve
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import CONVERGED, NOT_FINITE, Problem, Solution
 from discrim.fit.scout import scout, starting_values
 from discrim.reactor.model import Predictor
 

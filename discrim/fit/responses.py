@@ -26,9 +26,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale
+from discrim.fit.problem import Problem, Solution
 from discrim.reactor.model import Predictor
 
 ROUNDS = 200

@@ -9,8 +9,9 @@ import numpy as np
 import sympy
 from scipy.optimize import least_squares
 
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.measurements import Measurements, Scale
+from discrim.fit.problem import Problem
 from discrim.fit.scout import scout, starting_values
 from discrim.mechanism.library import load_mechanism
 from discrim.ratelaw.compile import CompiledLaw

@@ -14,9 +14,10 @@ from discrim.evidence.distributions import chi2_quantile_upper, f_quantile_upper
 from discrim.evidence.effect import InEffect, t_of
 from discrim.evidence.intervals import Interval, along, standard_errors
 from discrim.evidence.term_effect import effect_with_interval
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import of_solution
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 from discrim.verdict import MOST_WEAK
 from tests.calibration.cells import Cell
 from tests.calibration.methods import ALPHA, excluded, score_z

@@ -8,8 +8,8 @@ from discrim.evidence.acceptance import guard_level
 from discrim.evidence.distributions import chi2_quantile_upper, normal_quantile
 from discrim.evidence.score import basis, score, without
 from discrim.fit.covariance import Whitener
-from discrim.fit.engine import Problem, Solution
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 from tests.calibration.simulate import Drawn
 
 ALPHA = 0.05

@@ -14,9 +14,10 @@ import numpy as np
 import sympy
 
 from discrim.evidence.rivals import standing
-from discrim.fit.engine import Options, Problem, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit, fit, of_solution
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem
 from discrim.ratelaw.compile import CompiledLaw
 from discrim.reactor.rates import RatePredictor
 from tests.calibration.cells import Cell

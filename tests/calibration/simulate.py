@@ -7,9 +7,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from discrim.evidence.term import Kind, Term
-from discrim.fit.engine import Options, Problem, Solution, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit, of_solution
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution
 from tests.calibration.cells import Cell
 from tests.calibration.laws import LAWS, Law
 

@@ -17,9 +17,10 @@ from discrim.evidence.distributions import (
 )
 from discrim.evidence.participation import participation
 from discrim.evidence.projected import weak_nuisance
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Problem, Solution
 from discrim.verdict import MOST_WEAK
 from tests.calibration.cells import Cell
 from tests.calibration.methods import ALPHA, score_z

@@ -14,7 +14,7 @@ import pytest
 from scipy import stats
 from statsmodels.stats.multitest import multipletests
 
-from discrim.fit.engine import Problem
+from discrim.fit.problem import Problem
 from tests.calibration.bars import LEVEL, too_often
 from tests.calibration.cells import COVERAGE_CELLS, NEGLIGIBLE_CELLS, SIZE_GROUPS, Cell
 from tests.calibration.coverage import run_coverage, run_negligible

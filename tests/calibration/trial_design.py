@@ -12,8 +12,8 @@ from typing import Any
 import numpy as np
 import sympy
 
-from discrim.fit.engine import Problem
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
+from discrim.fit.problem import Problem
 from discrim.ratelaw.compile import CompiledLaw
 from discrim.reactor.knocked import KnockedOut
 from discrim.reactor.rates import RatePredictor

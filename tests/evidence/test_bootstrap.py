@@ -20,9 +20,10 @@ from discrim.evidence.bootstrap import (
     sequential,
     settled,
 )
-from discrim.fit.engine import Problem, joined, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import Fit, fit, of_solution
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, joined
 from discrim.reactor.rates import RatePredictor
 from tests.reference.outside import predictor, symbols
 

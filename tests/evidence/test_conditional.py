@@ -13,8 +13,9 @@ from scipy import stats
 
 from discrim.evidence import conditional
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution
 from tests.evidence.test_size_and_coverage import Cell, draw, law, no_more_than
 from tests.reference.outside import predictor, symbols
 

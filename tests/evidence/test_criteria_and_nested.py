@@ -20,8 +20,9 @@ from discrim.evidence.curve import Curve
 from discrim.evidence.score import p_one_sided, score
 from discrim.evidence.several import several
 from discrim.evidence.term_tests import nested_f
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import Fit, fit
+from discrim.fit.problem import Problem
 from tests.reference.outside import (
     column,
     comparison,

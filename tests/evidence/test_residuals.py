@@ -32,9 +32,10 @@ from discrim.evidence.patterns import (
 )
 from discrim.evidence.residuals import Residuals, influence, residuals_of, whitened
 from discrim.evidence.trends import added, groups, holm, scores, trend
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem
 from tests.reference.outside import column, digits, measurements, predictor, sources, symbols
 
 x1, x2, x3, x4, x5, x6 = symbols("x1 x2 x3 x4 x5 x6")

@@ -17,9 +17,10 @@ from scipy import stats
 from discrim.evidence.curve import Curve
 from discrim.evidence.intervals import along, guard_level, standard_errors
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution
 from discrim.reactor.rates import RatePredictor
 from tests.reference.outside import predictor, symbols
 

@@ -14,8 +14,9 @@ from scipy import stats
 
 from discrim.evidence.score import score
 from discrim.evidence.several import several
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem
 from tests.reference.outside import predictor, symbols
 
 k_A, k_B, k_C, K_A, K_B, A, B, C = symbols("k_A k_B k_C K_A K_B A B C")

@@ -14,8 +14,9 @@ from scipy import stats
 
 from discrim.evidence.projected import TOLD_APART, reach, weak_nuisance
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution
 from tests.reference.outside import predictor, symbols
 
 k_A, k_B, k_C, A, B, C = symbols("k_A k_B k_C A B C")

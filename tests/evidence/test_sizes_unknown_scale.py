@@ -15,9 +15,10 @@ from scipy import stats
 from discrim.evidence.curve import Curve
 from discrim.evidence.intervals import along, standard_errors
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.measurements import Measurements, Scale, source
+from discrim.fit.problem import Problem
 from tests.reference.outside import predictor, symbols
 
 k_A, k_B, A, B = symbols("k_A k_B A B")

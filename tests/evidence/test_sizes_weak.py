@@ -21,9 +21,10 @@ from discrim.evidence.projected import Weak, reach, weak_nuisance
 from discrim.evidence.score import score
 from discrim.evidence.several import several
 from discrim.evidence.term import Kind, Term
-from discrim.fit.engine import Problem, Solution, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.fit.problem import Problem, Solution
 from tests.reference.outside import predictor, symbols
 
 k_A, k_C, k_E, k_B, k_D, K = symbols("k_A k_C k_E k_B k_D K")

@@ -13,8 +13,9 @@ import sympy
 
 from discrim.evidence.unknown_scale import scale_weights
 from discrim.evidence.unknown_variances import added_variance
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.measurements import Measurements, Scale, source
+from discrim.fit.problem import Problem
 from discrim.fit.responses import Unknown, with_covariance
 from discrim.ratelaw.compile import CompiledLaw
 from discrim.reactor.rates import RatePredictor

@@ -13,8 +13,9 @@ import pytest
 import sympy
 
 from discrim.evidence.score import score
-from discrim.fit.engine import Options, Problem, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements, Scale, source
+from discrim.fit.problem import Problem
 from discrim.ratelaw.compile import CompiledLaw
 from discrim.reactor.rates import RatePredictor
 

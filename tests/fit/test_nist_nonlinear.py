@@ -12,8 +12,9 @@ import pytest
 from sympy import cos, exp, pi, sin
 
 from discrim.evidence.intervals import standard_errors
-from discrim.fit.engine import Options, Problem, solve
+from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit, FitStatus, fit, of_solution
+from discrim.fit.problem import Problem
 from tests.reference.outside import column, digits, measurements, model, predictor, symbols
 
 x, x1, x2 = symbols("x x1 x2")

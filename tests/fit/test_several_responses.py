@@ -16,9 +16,10 @@ from scipy.linalg import expm
 from scipy.optimize import minimize
 
 from discrim.evidence.score import score
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.measurements import Measurements, Scale, source
+from discrim.fit.problem import Problem
 from discrim.fit.responses import (
     Estimate,
     Unknown,

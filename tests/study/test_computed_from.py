@@ -14,8 +14,9 @@ import pytest
 from scipy.optimize import least_squares
 
 from discrim.errors import DiscrimError
-from discrim.fit.engine import Problem, solve
+from discrim.fit.engine import solve
 from discrim.fit.fit import fit
+from discrim.fit.problem import Problem
 from discrim.study.load import load
 from discrim.weigh.run import prepare
 
