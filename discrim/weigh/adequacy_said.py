@@ -22,7 +22,7 @@ from discrim.weigh.adequacy import TABLE_ORDER, Adequacy, Trend
 from discrim.weigh.document_values import number
 
 if TYPE_CHECKING:
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 Finding = tuple[str, str, str]
 

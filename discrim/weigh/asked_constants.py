@@ -12,7 +12,7 @@ import sympy
 
 from discrim.errors import DiscrimError, nearest
 from discrim.evidence.at_value import AtValue, Hypothesis, at_value
-from discrim.evidence.intervals import Interval
+from discrim.evidence.intervals import Interval, united
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import OBSERVATION
 from discrim.ratelaw.dimension import find_units
@@ -25,7 +25,6 @@ from discrim.units import Unit
 from discrim.verdict import ConstantVerdict, ValueFacts, ValueReading, judge_value
 from discrim.verdict.words import listed as named
 from discrim.verdict.words import percent
-from discrim.weigh.assess import hull
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.laws import CandidateLaw
@@ -337,7 +336,7 @@ def _in_candidate(
         every = [r.shown[k] for r in readings]
         interval = every[0].reconciled
         for other in every[1:]:
-            interval = hull(interval, other.reconciled)
+            interval = united(interval, other.reconciled)
         measures.append(Measure(name, units, every[0].value, interval))
     return ConstantInCandidate(index, True, by_origin, tuple(measures))
 

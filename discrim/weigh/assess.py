@@ -29,7 +29,7 @@ from discrim.evidence.intervals import (
     united,
 )
 from discrim.evidence.rivals import table_key
-from discrim.fit.fit import Fit, fit
+from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
@@ -68,25 +68,6 @@ class Assessment:
 
 # a point on a profile this much below the fit, relative, says that the fit was not the optimum
 BETTER = 1e-5
-
-
-def fits_of(
-    bound: Bound, data: Measurements, *, seed: int, near: np.ndarray | None = None
-) -> dict[str, Fit]:
-    """One fit for each way to read the condition errors; ``near``, shape (k, p), adds starts."""
-    out: dict[str, Fit] = {}
-    for origin in data.origins():
-        found = fit(
-            bound.predictor,
-            data.as_origin(origin),
-            seed=seed,
-            near=near,
-            starts=16 if near is None else 4,
-        )
-        out[origin] = found
-        if found.ok:
-            near = found.theta[None]
-    return out
 
 
 def assess(
@@ -211,7 +192,3 @@ def cleared_of(bound: Bound) -> Cleared | None:
     if bound.predictor.index is not None:
         return None
     return cleared_law(bound.compiled[0], bound.expressions[0])
-
-
-# whichever of two readings of the condition errors is right
-hull = united

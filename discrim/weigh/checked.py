@@ -17,7 +17,7 @@ from discrim.weigh.bind import Bound
 from discrim.weigh.chemistry import remarks, scene_before
 from discrim.weigh.document_candidates import lockstep_words
 from discrim.weigh.document_values import column_record, is_words, number
-from discrim.weigh.run import prepare
+from discrim.weigh.prepare import prepare
 from discrim.weigh.words import share, trade_off_words
 
 

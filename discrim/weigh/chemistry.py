@@ -25,7 +25,7 @@ from discrim.weigh.bind import Bound
 from discrim.weigh.laws import CandidateLaw
 
 if TYPE_CHECKING:
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 Finding = tuple[str, str, str]
 

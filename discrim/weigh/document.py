@@ -19,7 +19,7 @@ from discrim.weigh.document_reported import reported_records
 from discrim.weigh.document_responses import response_records
 from discrim.weigh.document_values import column_record, is_words, number
 from discrim.weigh.planes import planes
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 from discrim.weigh.words import (
     CAUTIONS,
     CONTROLS,

@@ -23,7 +23,7 @@ from discrim.weigh.document_pairs import share_keys
 from discrim.weigh.document_responses import observed_records
 from discrim.weigh.document_values import number, shown_units
 from discrim.weigh.magnitudes import magnitudes_record
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 from discrim.weigh.words import (
     share,
     trade_off_words,

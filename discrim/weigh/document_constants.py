@@ -7,7 +7,7 @@ from typing import Any
 from discrim.evidence.at_value import AtValue
 from discrim.weigh.asked_constants import ConstantAnswer, ConstantInCandidate
 from discrim.weigh.document_values import number
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 
 
 def constants_record(w: Weighed, a: ConstantAnswer) -> dict[str, Any]:

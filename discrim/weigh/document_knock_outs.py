@@ -8,7 +8,7 @@ from typing import Any
 from discrim.ratelaw.printing import plain
 from discrim.weigh.document_values import number
 from discrim.weigh.knock_outs import KnockOuts
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 
 
 def knock_outs_record(w: Weighed, i: int) -> dict[str, Any] | None:

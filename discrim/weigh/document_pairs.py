@@ -6,7 +6,7 @@ from typing import Any
 
 from discrim.evidence.bootstrap import Simulated
 from discrim.weigh.document_values import number
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 
 
 def comparison_record(w: Weighed, k: int) -> dict[str, Any]:

@@ -9,7 +9,7 @@ from discrim.weigh.asked import TAKEN_OUT, Answer, InCandidate
 from discrim.weigh.document_constants import constants_record
 from discrim.weigh.document_values import distance, number
 from discrim.weigh.left_out import answer_keys, standing_keys, standing_sentences
-from discrim.weigh.run import Weighed
+from discrim.weigh.weighed import Weighed
 
 
 def question_records(w: Weighed) -> list[dict[str, Any]]:

@@ -18,7 +18,7 @@ from discrim.weigh.proxies import alike_labels
 from discrim.weigh.variances import error_findings
 
 if TYPE_CHECKING:
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 # a profile interval this much wider or narrower than the linearised one is a strong disagreement
 DISAGREE = 2.0

@@ -34,7 +34,7 @@ from discrim.units import Unit
 from discrim.weigh.document_values import number
 
 if TYPE_CHECKING:
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 GAS_CONSTANT = 8.314462618  # J/mol/K, CODATA 2018, exact to these digits
 BOLTZMANN_OVER_PLANCK = 1.380649e-23 / 6.62607015e-34  # 1/K/s, both exact by definition

@@ -12,7 +12,7 @@ import numpy as np
 from discrim.fit.measurements import Scale
 
 if TYPE_CHECKING:
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 ACROSS = 33  # points along the horizontal constant
 DOWN = 241  # points tried for the vertical one

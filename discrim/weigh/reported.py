@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from discrim.errors import DiscrimError, nearest
-from discrim.evidence.intervals import Interval, Side
+from discrim.evidence.intervals import Interval, Side, united
 from discrim.evidence.quantity_intervals import guaranteed_quantity, quantity_facts
 from discrim.ratelaw.dimension import find_units
 from discrim.ratelaw.model import ConstantKind, amount, constant_symbol, quantity
@@ -19,7 +19,7 @@ from discrim.study.formulas import unit_of
 from discrim.study.model import Reported, Study
 from discrim.study.reported import observed_symbol
 from discrim.units import Unit
-from discrim.weigh.assess import Assessment, hull
+from discrim.weigh.assess import Assessment
 from discrim.weigh.bench import (
     Bench,
     column_of_symbol,
@@ -291,7 +291,7 @@ def _value(formula: Formula, study: Study, assessment: Assessment, stands: bool)
     first = facts[0]
     reconciled = first.reconciled
     for other in facts[1:]:  # what holds whichever way the errors of the conditions are read
-        reconciled = hull(reconciled, other.reconciled)
+        reconciled = united(reconciled, other.reconciled)
     every = {"linearised": first.linearised, "profile": first.profile, "reconciled": reconciled}
     if stands:
         own = [kinds["guaranteed"] for kinds in assessment.intervals]

@@ -13,10 +13,10 @@ from discrim.fit.fit import Fit
 from discrim.ratelaw.knockout import KnockOut
 from discrim.ratelaw.reverse import reverse_of
 from discrim.study.model import Question, Study
-from discrim.weigh.assess import fits_of
 from discrim.weigh.bench import Bench, fixed_put_in, put_in
 from discrim.weigh.bind import Bound, bind
 from discrim.weigh.effects import knocked_out
+from discrim.weigh.fitted import fits_of
 from discrim.weigh.laws import CandidateLaw, observed
 
 Taken = tuple[CandidateLaw, Bound, Mapping[str, Fit], KnockOut | None, bool, str]

@@ -12,7 +12,7 @@ from discrim.fit.measurements import Scale
 
 if TYPE_CHECKING:
     from discrim.weigh.bind import Bound
-    from discrim.weigh.run import Weighed
+    from discrim.weigh.weighed import Weighed
 
 CAUTIONS = (
     "The verdict concerns these runs, these candidates and the stated errors; it is not permission to "

@@ -18,7 +18,7 @@ from discrim.fit.engine import solve
 from discrim.fit.fit import fit
 from discrim.fit.problem import Problem
 from discrim.study.load import load
-from discrim.weigh.run import prepare
+from discrim.weigh.prepare import prepare
 
 STUDY = """
 title = "a stirred tank"

@@ -123,3 +123,17 @@ def test_a_run_that_alone_rejects_a_law_is_named(tmp_path: Path) -> None:
     assert changed.standing == ("both", "A alone")
     document = weigh(load(path))
     assert any("without run 4" in w for w in document["questions"][1]["why"])
+
+
+def test_the_rest_of_a_rate_on_its_bound_is_no_proof(tmp_path: Path) -> None:
+    """Without run 9 the best fit gives all of the rate to B; the interval of its effect still holds
+    every effect, as the test of a rate without B does not reject, and 0 is an effect of B."""
+    y, a, b = _hanging()
+    document = weigh(load(_written(tmp_path, y[:8], a[:8], b[:8])))
+    question = document["questions"][0]
+    constants = {k["name"]: k for c in document["candidates"] for k in c["constants"]
+                 if c["name"] == "both"}  # fmt: skip
+    assert constants["k_a"]["at_bound"]
+    assert question["tests"]["reconciled"]["p"] > 0.2
+    assert question["effect"]["low"] == 0.0
+    assert question["effect"]["high"] > 0.99

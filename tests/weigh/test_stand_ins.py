@@ -14,8 +14,10 @@ from scipy.stats import norm
 
 from discrim.study import load
 from discrim.weigh import weigh
+from discrim.weigh.prepare import prepare
 from discrim.weigh.proxies import proxies
-from discrim.weigh.run import Weighed, prepare, run
+from discrim.weigh.run import run
+from discrim.weigh.weighed import Weighed
 
 N = 12
 STUDY = """

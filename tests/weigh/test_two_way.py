@@ -12,7 +12,8 @@ import pytest
 
 import discrim
 from discrim.weigh import derive_all
-from discrim.weigh.run import Weighed, run
+from discrim.weigh.run import run
+from discrim.weigh.weighed import Weighed
 
 # (relation, a, b): in a special case, a is that case of b
 PAIRS = [
