@@ -182,7 +182,9 @@ def _searched(
     sol, _ = improved(
         problem, every.take(np.arange(s)), rows[s:], every.take(np.arange(s, len(rows)))
     )
-    rows = np.flatnonzero((sol.state == STEP_LIMIT) & (alone | (sol.objective <= hopeless)))
+    # one optimum only: far from it says nothing but that the start was far
+    on = alone | (sol.objective <= hopeless) | is_linear(problem)
+    rows = np.flatnonzero((sol.state == STEP_LIMIT) & on)
     if len(rows):
         sol, _ = improved(problem, sol, rows, _further(problem, sol.take(rows), fixed[rows]))
     if is_linear(problem):

@@ -61,9 +61,14 @@ def in_effect(term: Term, theta: np.ndarray, point: int) -> InEffect:
 
 
 def _is_all(term: Term, theta: np.ndarray) -> np.ndarray:
-    """Where the rate without the term is zero, shape (K,): of several responses one may be it alone."""
+    """Where the rate without the term is zero, shape (K,): of several responses one may be it alone.
+
+    Zero whatever the constants: that a fit ended with the rest of the rate on its bound says nothing
+    of how large the rest can be.
+    """
     assert term.knocked is not None
-    return np.asarray(term.knocked.rates(theta[None], term.points)[1][0] == 0)
+    present = np.where(theta == 0, np.maximum(term.full.scale, 1e-300), theta)
+    return np.asarray(term.knocked.rates(present[None], term.points)[1][0] == 0)
 
 
 def effect_with_interval(term: Term, problem: Problem, full: Fit, level: float) -> Effect | None:

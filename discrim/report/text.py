@@ -158,7 +158,7 @@ def _formula_only(remark: str) -> str:
 def _with_values(table: Table) -> Table:
     """Quantities that a candidate has; why it lacks others is said in the report."""
     if "Value" not in table.heads:
-        return table
+        return replace(table, rows=())
     at = table.heads.index("Value")
     return replace(table, rows=tuple(row for row in table.rows if row[at] not in ("", MISSING)))
 
