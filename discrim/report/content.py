@@ -6,27 +6,22 @@ summary and the HTML report both draw it and do no arithmetic of their own.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
-from discrim.report import knock_outs, pairs, read, residuals, responses, tables
-from discrim.report.cases import Case, groups
+from discrim.report import constants, knock_outs, pairs, read, residuals, responses, tables
+from discrim.report.answers import Answer, answer, question_words
+from discrim.report.laws import Law, laws_of, quoted
 from discrim.report.numbers import (
     as_number,
     count,
-    factor,
     listed,
     number,
     percent,
-    probability,
     rounded,
-    tiny_is_zero,
 )
 from discrim.report.read import Document
-from discrim.report.tables import Table
-
-__all__ = ["Answer", "Content", "Law", "Table", "build", "not_computed", "rounded"]
+from discrim.report.table import Table
 
 #: Said in every report, whatever the document holds (design: words and cautions).
 STANDING_CAUTIONS = (
@@ -39,65 +34,6 @@ STANDING_CAUTIONS = (
     "Changes go through the site's own hazard review and management of change, local codes, and "
     "qualified, licensed people where the law asks for them.",
 )
-NOT_THE_ONLY_LAWS = "These laws are not the only possible ones."
-
-
-@dataclass(frozen=True, slots=True)
-class Answer:
-    """The verdict on one question.
-
-    ``decided`` says whether the runs carry a verdict; ``facts`` are (what, how much) pairs;
-    ``details`` the tables behind the verdict.
-    """
-
-    asks: str
-    verdict: str
-    decided: bool
-    sentence: str
-    why: tuple[str, ...]
-    settle: tuple[str, ...]
-    facts: tuple[tuple[str, str], ...]
-    details: tuple[Table, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class Law:
-    """One candidate, from its steps to its rate law. ``mathml`` is "" where there is none."""
-
-    name: str
-    outcome: str
-    notes: tuple[str, ...]
-    text: str
-    latex: str
-    mathml: str
-    step_text: str
-    step_mathml: str
-    step_latex: str
-    steps: tuple[tuple[str, str], ...]
-    assumptions: tuple[str, ...]
-    conventions: tuple[str, ...]
-    derivation: tuple[tuple[str, str, str], ...]  # words, text, mathml
-    combinations: tuple[tuple[str, str, str], ...]  # name, definition, words
-    source: str
-    place: str
-    routes: tuple[tuple[str, str], ...] = ()  # overall equation, steps
-    balances: tuple[tuple[str, str], ...] = ()  # text, mathml: what the law's unknowns solve
-    unknowns: tuple[str, ...] = ()  # of these balances
-    limits: tuple[tuple[str, tuple[Case, ...]], ...] = ()  # heading, lines
-    whole_latex: str = ""  # the derivation as one block, several lines
-    observed: tuple[tuple[str, str, str], ...] = ()  # of several columns: what, text, mathml
-
-    @property
-    def balance_words(self) -> str:
-        """How the balances are led in: with [H] and x_Br = k_w*[Br]/k_i from"""
-        whats = {t.partition(" = ")[0]: t for _, t, _ in self.derivation if " = " in t}
-        # An amount in units of constants has a name of its own, which says nothing by itself.
-        *first, last = (u if u.startswith("[") else whats.get(u, u) for u in self.unknowns or ("",))
-        return f"with {', '.join(first)} and {last} from" if first else f"with {last} from"
-
-    def derives(self, text: str) -> bool:
-        """Whether the derivation holds this formula, so that it need not be said again."""
-        return any(_bare(t) == _bare(text) for _, t, _ in self.derivation)
 
 
 @dataclass(frozen=True, slots=True)
@@ -149,7 +85,7 @@ def build(document: Document) -> Content:
     return Content(
         title=read.text(document, "title", "Untitled study"),
         scope=_scope(document, level),
-        answers=tuple(_answer(q, document) for q in read.records(document, "questions")),
+        answers=tuple(answer(q, document) for q in read.records(document, "questions")),
         problems=tuple(not_computed(document)),
         cautions=_cautions(document),
         candidates=tables.candidates(ordered),
@@ -168,8 +104,8 @@ def build(document: Document) -> Content:
         comparisons=tables.comparisons(read.records(document, "comparisons")),
         pairs=pairs.pairs(read.records(document, "pairs")),
         first_places=pairs.first_places(ordered),
-        constants=tables.constants(ordered, level),
-        reported=tables.constants(ordered, level, key="reported"),
+        constants=constants.constants(ordered, level),
+        reported=constants.constants(ordered, level, key="reported"),
         assumed=_assumed(study),
         not_checked=tuple(read.texts(document, "not_checked") or read.texts(study, "not_checked")),
         findings=tuple(
@@ -199,95 +135,10 @@ def not_computed(document: Document) -> list[str]:
     for question in read.records(document, "questions"):
         if not read.text(question, "verdict"):
             sentence = read.text(question, "sentence")
-            out.append(f"{_asks(question)} Not answered{': ' + sentence if sentence else '.'}")
+            out.append(
+                f"{question_words(question)} Not answered{': ' + sentence if sentence else '.'}"
+            )
     return out
-
-
-def laws_of(candidates: Sequence[Document]) -> tuple[tuple[Law, ...], tuple[str, ...]]:
-    """Each candidate's law (also what ``derive`` prints), and the conventions that they share.
-
-    Bare laws come without conventions and do not count.
-    """
-    laws = [law(c) for c in candidates]
-    stated = [item.conventions for item in laws if item.conventions]
-    if len(stated) < 2:
-        return tuple(laws), ()
-    shared = [c for c in stated[0] if all(c in other for other in stated)]
-    own = [
-        replace(item, conventions=tuple(c for c in item.conventions if c not in shared))
-        for item in laws
-    ]
-    return tuple(own), tuple(shared)
-
-
-def law(candidate: Document) -> Law:
-    """One candidate's law and how it follows from the steps."""
-    notes = []
-    reasons = read.texts(candidate, "reasons")
-    same = read.texts(candidate, "same_law_as")
-    if same and not any("the same law as" in reason for reason in reasons):
-        notes.append(
-            f"Same law as {_quoted(same)}: no rate can tell them apart, only isotope effects, labelling, "
-            "trapping or spectroscopy."
-        )
-    near = [n for n in read.texts(candidate, "inseparable_from") if n not in same]
-    if near and not any("cannot separate" in reason for reason in reasons):
-        notes.append(f"Inseparable from {_quoted(near)} by these runs.")
-    special = read.text(candidate, "no_better_than")
-    if special and not any("no better than" in reason for reason in reasons):
-        notes.append(f"Stands, but no better than its special case “{special}”.")
-    notes += reasons + read.texts(candidate, "findings") + read.texts(candidate, "warnings")
-    notes += read.texts(candidate, "note")
-    steps = read.part(candidate, "steps")
-    return Law(
-        name=read.text(candidate, "name", "unnamed"),
-        outcome=tables.outcome(candidate),
-        notes=tuple(notes),
-        text=tables.equation(read.text(candidate, "law")),
-        latex=tables.equation(read.text(candidate, "law_latex")),
-        mathml=_equation_mathml(read.text(candidate, "law_mathml")),
-        step_text=tables.equation(read.text(candidate, "step_law")),
-        step_mathml=_equation_mathml(read.text(candidate, "step_law_mathml")),
-        step_latex=tables.equation(read.text(candidate, "step_law_latex")),
-        steps=tuple((str(read.clean(k)), read.text(steps, k)) for k in steps),
-        assumptions=tuple(read.texts(candidate, "assumptions")),
-        conventions=tuple(read.texts(candidate, "conventions")),
-        derivation=tuple(
-            (read.text(d, "words"), read.text(d, "text"), read.text(d, "mathml"))
-            for d in read.records(candidate, "derivation")
-        ),
-        combinations=tuple(
-            (read.text(c, "name"), read.text(c, "definition"), read.text(c, "words"))
-            for c in read.records(candidate, "combinations")
-        ),
-        source=read.text(candidate, "source"),
-        place=read.text(candidate, "place"),
-        balances=tuple(
-            (read.text(b, "text"), read.text(b, "mathml"))
-            for b in read.records(candidate, "balances")
-        ),
-        unknowns=tuple(read.text(b, "unknown") for b in read.records(candidate, "balances")),
-        routes=tuple(
-            (read.text(r, "equation"), read.text(r, "words"))
-            for r in read.records(candidate, "routes")
-        ),
-        limits=groups(candidate),
-        whole_latex=read.block(candidate, "derivation_latex"),
-        observed=tuple(
-            (read.text(o, "is"), read.text(o, "law"), read.text(o, "law_mathml"))
-            for o in read.records(candidate, "observed")
-        ),
-    )
-
-
-def _bare(formula: str) -> str:
-    return formula.removeprefix("r = ")
-
-
-def _equation_mathml(formula: str) -> str:
-    if not formula or "<mo>=</mo>" in formula:
-        return formula
-    return f"<mrow><mi>r</mi><mo>=</mo>{formula}</mrow>"
 
 
 def _scope(document: Document, level: str) -> str:
@@ -301,119 +152,6 @@ def _scope(document: Document, level: str) -> str:
     if observed:
         words.insert(0, observed)
     return ", ".join(words)
-
-
-def _asks(question: Document) -> str:
-    asks, about = read.text(question, "asks"), read.text(question, "about")
-    names = read.texts(question, "names")
-    if asks == "participates":
-        return f"Does {about or 'it'} take part?"
-    if asks == "stands":
-        return "Which candidates stand?"
-    if asks == "equal":
-        return f"Are {listed(names) or about} equal?"
-    if asks == "constant":
-        value = read.text(question, "value_text") or number(read.value(question, "value"))
-        return f"Is {about} equal to {value}?"
-    if asks == "reversible" and about:
-        return f"Does the reverse of {about} show within these runs?"
-    if asks == "reversible":
-        return "Is the reaction reversible within these runs?"
-    return f"{asks or 'Question'} {about}".strip()
-
-
-def _answer(question: Document, document: Document) -> Answer:
-    verdict = read.text(question, "verdict")
-    asks, about = read.text(question, "asks"), read.text(question, "about", "it")
-    standing, rejected = read.texts(question, "standing"), read.texts(question, "rejected")
-    shown = verdict or "not answered"
-    if asks == "stands" and (standing or rejected):
-        shown = f"{len(standing) or 'none'} of {len(standing) + len(rejected)} stand"
-        if len(standing) == 1:
-            shown += "s"
-    sentence = read.text(question, "sentence") or _sentence(question, verdict, about)
-    if asks == "stands" and NOT_THE_ONLY_LAWS not in sentence:
-        sentence = f"{sentence} {NOT_THE_ONLY_LAWS}".strip()
-    return Answer(
-        asks=_asks(question),
-        verdict=shown,
-        decided=_decided(asks, verdict, len(standing), len(rejected)),
-        sentence=sentence,
-        why=tuple(read.texts(question, "why") or read.texts(question, "reasons")),
-        settle=tuple(read.texts(question, "settle")),
-        facts=tuple(_facts(question, standing, rejected)),
-        details=tables.behind(question),
-    )
-
-
-def _decided(asks: str, verdict: str, standing: int, rejected: int) -> bool:
-    """Whether the runs settled the question; rivals are settled when one alone stands."""
-    if asks == "stands" and standing + rejected:
-        return standing == 1
-    return verdict not in ("", "undecided")
-
-
-def _sentence(question: Document, verdict: str, about: str) -> str:
-    matters = percent(read.value(read.part(question, "effect"), "matters_above"))
-    return {
-        "participates": f"The rate depends on {about}.",
-        "negligible": f"No dependence of the rate on {about} above {matters} within these runs. "
-        f"{about} may still be consumed, enter after the limiting step, or be at saturation; "
-        "rates cannot show that.",
-        "undecided": f"These runs cannot decide whether the rate depends on {about}.",
-    }.get(verdict, "")
-
-
-def _facts(question: Document, standing: list[str], rejected: list[str]) -> list[tuple[str, str]]:
-    out: list[tuple[str, str]] = []
-    if standing:
-        out.append(("Stand" if len(standing) > 1 else "Stands", "; ".join(standing)))
-    if rejected:
-        out.append(("Rejected", "; ".join(rejected)))
-    effect = read.part(question, "effect")
-    if effect:
-        low, high = read.value(effect, "low"), read.value(effect, "high")
-        words = percent(read.value(effect, "value"))
-        if low is not None and high is not None:
-            words += f", interval {percent(low)} to {percent(high)}"
-        bound = read.value(effect, "bound")
-        words += f", one-sided bound {percent(bound)}" if bound is not None else ""
-        run, where = read.text(effect, "run"), read.text(effect, "words")
-        if where:
-            words += f", {where}"
-        elif run:
-            words += f", at {run}" if run.lower().startswith("run") else f", at run {run}"
-        out.append(("Effect on the rate", words))
-        matters = read.value(effect, "matters_above")
-        out.append(
-            (
-                "Matters above",
-                percent(matters)
-                if matters is not None
-                else "not stated, so “negligible” is not possible",
-            )
-        )
-    margin = read.value(question, "error_margin")
-    if margin is not None:
-        out.append(
-            ("Error margin", f"the verdict changes at {factor(margin)} times the stated errors")
-        )
-    flip, typical = read.value(question, "flip_distance"), read.value(question, "flip_typical")
-    if flip is not None:
-        words = f"{number(tiny_is_zero(flip), 2)} times the stated errors"
-        words += f" ({number(typical, 2)} would be ordinary)" if typical is not None else ""
-        out.append(("Flip distance", words))
-    detectable = read.value(question, "detectable")
-    if detectable is not None:
-        out.append(("Detectable effect", f"{percent(detectable)} (power 80 %)"))
-    p = read.value(read.part(read.part(question, "tests"), "reconciled"), "p")
-    if p is not None:
-        out.append(("Reconciled test", f"p {_equals(probability(p))}"))
-    return out
-
-
-def _equals(p: str) -> str:
-    return p if p[0] in "<>" else f"= {p}"
 
 
 def _cautions(document: Document) -> tuple[str, ...]:
@@ -506,7 +244,7 @@ def _other(e: Document) -> str:
     out = read.text(e, "says")
     source = read.text(e, "source")
     out += f" ({source})" if source else ""
-    return out + (f"; speaks against {_quoted(against)}" if against else "")
+    return out + (f"; speaks against {quoted(against)}" if against else "")
 
 
 def _provenance(document: Document) -> tuple[tuple[str, str], ...]:
@@ -516,7 +254,3 @@ def _provenance(document: Document) -> tuple[tuple[str, str], ...]:
     out += [(words.get(str(k), read.clean(k)), read.text(provenance, k)) for k in provenance]
     out.append(("seed", read.text(document, "seed")))
     return tuple((k, v) for k, v in out if v)
-
-
-def _quoted(names: list[str]) -> str:
-    return listed([f"“{n}”" for n in names])

@@ -17,8 +17,8 @@ from typing import Any
 
 from discrim.errors import DiscrimError, Place
 from discrim.report import read
+from discrim.report.constants import KINDS
 from discrim.report.read import Document
-from discrim.report.tables import KINDS
 
 EVIDENCE = "evidence.json"
 #: Names at the top of a results folder that are ours to replace.

@@ -9,7 +9,7 @@ from typing import Any
 from discrim.report import read
 from discrim.report.numbers import MISSING, number, probability
 from discrim.report.read import Document
-from discrim.report.tables import Table, make
+from discrim.report.table import Table, make
 
 MOST_SHOWN = 2  # candidates; what they say is in evidence.json for all
 MOST_NODES = 63

@@ -7,7 +7,7 @@ from typing import Any
 
 from discrim.report import read
 from discrim.report.numbers import MISSING, number, percent, probability
-from discrim.report.tables import Table, make
+from discrim.report.table import Table, make
 
 
 def pairs(found: Sequence[Any]) -> Table | None:

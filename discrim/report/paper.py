@@ -9,7 +9,7 @@ import unicodedata
 from collections.abc import Mapping, Sequence
 from typing import Any, TextIO
 
-from discrim.report.tables import Table
+from discrim.report.table import Table
 from discrim.report.wrapping import wrap
 
 WIDTH = 80

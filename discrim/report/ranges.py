@@ -25,9 +25,9 @@ from discrim.report.canvas import (
     sheet,
     with_units,
 )
+from discrim.report.constants import KINDS
 from discrim.report.numbers import interval, percent
 from discrim.report.read import Document
-from discrim.report.tables import KINDS
 
 
 def effects(name: str, document: Document) -> Picture | None:

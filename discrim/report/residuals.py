@@ -7,7 +7,8 @@ from typing import Any
 
 from discrim.report import read
 from discrim.report.numbers import MISSING, number, probability
-from discrim.report.tables import Table, make, outcome
+from discrim.report.table import Table, make
+from discrim.report.tables import outcome
 
 NOTE = (
     "p is that of so much by chance. Follows: the column that the residuals follow most, p for all "

@@ -5,7 +5,7 @@ from __future__ import annotations
 from discrim.report import read
 from discrim.report.numbers import number
 from discrim.report.read import Document
-from discrim.report.tables import Table, make
+from discrim.report.table import Table, make
 
 
 def table(document: Document) -> Table | None:

@@ -1,11 +1,8 @@
-"""The tables of the report as data: heads, rows of text, and which columns hold numbers."""
+"""The tables of candidates, criteria, columns, runs, conditioning and comparisons."""
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
-from decimal import Decimal
 from typing import Any
 
 from discrim.report import read
@@ -14,72 +11,11 @@ from discrim.report.numbers import (
     as_number,
     as_read,
     factor,
-    interval,
     number,
-    percent,
     probability,
-    rounded,
     tiny_is_zero,
 )
-
-#: The four kinds of interval, in the order in which they are shown, with what each is.
-KINDS = {
-    "linearised": "from the curvature at the best fit, as most programs print it",
-    "profile": "every other constant refitted",
-    "reconciled": "errors of the conditions taken into account; verdicts rest on it",
-    "guaranteed": "every value that hard bounds on all measurements allow",
-}
-
-
-@dataclass(frozen=True, slots=True)
-class Table:
-    """A table as data.
-
-    ``numeric`` marks the columns that are set flush right; ``marks`` one word a row (an outcome)
-    for its look, or "".
-    """
-
-    title: str
-    heads: tuple[str, ...]
-    rows: tuple[tuple[str, ...], ...]
-    numeric: tuple[bool, ...]
-    note: str = ""
-    marks: tuple[str, ...] = ()
-
-    def trimmed(self) -> Table:
-        """Without the columns in which no row has anything."""
-        keep = [
-            i
-            for i in range(len(self.heads))
-            if i == 0 or any(row[i] not in ("", MISSING) for row in self.rows)
-        ]
-        return replace(
-            self,
-            heads=tuple(self.heads[i] for i in keep),
-            rows=tuple(tuple(row[i] for i in keep) for row in self.rows),
-            numeric=tuple(self.numeric[i] for i in keep),
-        )
-
-
-def make(
-    title: str,
-    heads: Sequence[tuple[str, bool]],
-    rows: Sequence[Sequence[str]],
-    *,
-    note: str = "",
-    marks: Sequence[str] = (),
-) -> Table | None:
-    """A trimmed table, or None when it has no rows."""
-    if not rows:
-        return None
-    return Table(
-        title=title,
-        heads=tuple(h for h, _ in heads),
-        rows=tuple(tuple(row) for row in rows),
-        numeric=tuple(flag for _, flag in heads),
-        note=note,
-        marks=tuple(marks),
-    ).trimmed()
+from discrim.report.table import Table, make
 
 
 def outcome(candidate: Any) -> str:
@@ -349,188 +285,6 @@ def _bootstrap(c: Any) -> str:
 def _brief(remark: str) -> str:
     """Remarks that the note below the table makes for all rows are not repeated in each."""
     return "" if remark.startswith("on the edge") else remark
-
-
-def constants(
-    ordered: Sequence[Any], level: str = "95 %", *, key: str = "constants"
-) -> tuple[Table, ...]:
-    """The constants of each candidate with their intervals, or its ``reported`` quantities."""
-    out = []
-    for c in ordered:
-        rows = []
-        for k in read.records(c, key):
-            found, ends = read.part(k, "intervals"), read.part(k, "interval_ends")
-            notes = read.part(k, "interval_notes")
-            value, error = read.value(k, "value"), read.value(k, "standard_error")
-            power = _power([value, *(v for kind in KINDS for v in read.numbers(found, kind))])
-            v, u = rounded(_by(power, value), _by(power, error))
-            row = [
-                read.text(k, "name"),
-                v + (" (bound)" if k.get("at_bound") is True else ""),
-                u,
-                _power_words(power, read.text(k, "units")),
-            ]
-            row += [
-                _interval(kind, found.get(kind), ends.get(kind), power, read.text(notes, kind))
-                for kind in KINDS
-            ]
-            remarks = [f"{kind}: {read.text(notes, kind)}" for kind in KINDS if kind in notes]
-            row.append("; ".join([w for w in [_meaning(k), *remarks] if w]))
-            rows.append(row)
-        heads = [
-            ("Constant" if key == "constants" else "Quantity", False),
-            ("Value", True),
-            ("Standard error", True),
-            ("Units", False),
-            *((kind.capitalize(), True) for kind in KINDS),
-            ("Remark", False),
-        ]
-        table = make(read.text(c, "name"), heads, rows, note=f"Intervals at {level}.", marks=[])
-        if table:
-            out.append(table)
-    return tuple(out)
-
-
-def _meaning(k: Mapping[str, Any]) -> str:
-    """What a constant stands for; of a quantity its formula, its conditions, and why it has no value."""
-    at = read.part(k, "at")
-    where = ", ".join(f"{read.clean(name)} = {read.text(at, name)}" for name in at)
-    formula = read.text(k, "formula")
-    words = [read.text(k, "meaning"), formula + (f" at {where}" if where else "")]
-    return "; ".join(w for w in [*words, read.text(k, "note"), read.text(k, "reason")] if w)
-
-
-def _interval(kind: str, ends: Any, how: Any, power: int, note: str = "") -> str:
-    if not isinstance(ends, list | tuple) or len(ends) != 2:
-        return MISSING
-    if all(end is None for end in ends):
-        for word in ("not computed", "empty"):
-            if note.startswith(word):
-                return word
-    low, high = (_by(power, as_number(end)) for end in ends)
-    # hard bounds on all errors are exact and shown as such; those made from standard deviations not
-    return interval(low, high, how, outward=kind == "guaranteed", digits=None if note else 6)
-
-
-def _power(values: Sequence[float | None]) -> int:
-    """The power of ten that is taken out of one constant and its intervals, 0 for none.
-
-    That of its value; of the largest end where the value is next to nothing beside it.
-    """
-    known = [abs(v) for v in values if v]
-    if not known:
-        return 0
-    first = abs(values[0] or 0.0)
-    power = math.floor(math.log10(first if first > 1e-6 * max(known) else max(known)))
-    return 0 if -3 <= power < 5 or abs(power) > 290 else power
-
-
-def _by(power: int, x: float | None) -> float | None:
-    """``x`` in units of that power; through decimal digits, so that 3e-6 becomes 3 exactly."""
-    return x if x is None or not power else float(Decimal(repr(x)).scaleb(-power))
-
-
-def _power_words(power: int, units: str) -> str:
-    if not power:
-        return units
-    raised = str(power).translate(str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"))
-    return f"10{raised} {'' if units == '1' else units}".strip()
-
-
-def behind(question: Mapping[str, Any]) -> tuple[Table, ...]:
-    """The tables behind one verdict: tests, candidates, stand-ins."""
-    found = [_tests(question), _by_candidate(question), _stand_ins(question)]
-    return tuple(t for t in found if t)
-
-
-def _tests(question: Mapping[str, Any]) -> Table | None:
-    names = {"nested_F": "extra sum of squares (F)", "reconciled": "reconciled test"}
-    rows = []
-    tests = read.part(question, "tests")
-    origins = read.part(question, "by_origin")
-    listed = [(names.get(str(k), read.clean(k)), read.part(tests, k)) for k in tests]
-    listed += [
-        (f"reconciled test, conditions taken as {read.clean(k)}", read.part(origins, k))
-        for k in origins
-    ]
-    for name, t in listed:
-        statistic = tiny_is_zero(read.value(t, "statistic"))
-        df = [read.clean(x) for x in read.items(t, "df")] or read.texts(t, "df")
-        rows.append(
-            [
-                name,
-                number(statistic, 3),
-                ", ".join(df),
-                number(tiny_is_zero(read.value(t, "z")), 3),
-                probability(read.value(t, "p")),
-                read.text(t, "words"),
-            ]
-        )
-    heads = [
-        ("Test", False),
-        ("Statistic", True),
-        ("Degrees of freedom", True),
-        ("z", True),
-        ("p", True),
-        ("Remark", False),
-    ]
-    return make("Tests", heads, rows)
-
-
-def _by_candidate(question: Mapping[str, Any]) -> Table | None:
-    rows = []
-    for c in read.records(question, "by_candidate"):
-        effect = read.numbers(c, "effect")
-        shown = MISSING
-        if len(effect) == 2:
-            shown = f"{percent(effect[0])} to {percent(effect[1])}"
-        measures = read.records(c, "measures")
-        if measures:
-            shown = "; ".join(_measure(m) for m in measures)
-        rows.append(
-            [
-                read.text(c, "candidate"),
-                _yes(c.get("stands"), "stands", "rejected"),
-                _yes(c.get("contains"), "yes", "no"),
-                probability(read.value(c, "p")),
-                shown,
-                read.text(c, "votes"),
-            ]
-        )
-    heads = [
-        ("Candidate", False),
-        ("Outcome", False),
-        ("Contains it", False),
-        ("p", True),
-        ("Effect" if read.part(question, "effect") else "Estimate", True),
-        ("Speaks for", False),
-    ]
-    return make("Candidate by candidate", heads, rows)
-
-
-def _measure(m: Mapping[str, Any]) -> str:
-    """``k_1 / k_2 2.59 (2.40 to 2.80)``."""
-    ends = [read.value(m, "value"), *read.numbers(m, "interval")]
-    shown, units = interval(ends[1], ends[2], read.items(m, "ends")), read.text(m, "units")
-    return f"{read.text(m, 'name')} {number(ends[0], 4)} ({shown})" + (f" {units}" if units else "")
-
-
-def _stand_ins(question: Mapping[str, Any]) -> Table | None:
-    rows = [
-        [
-            read.text(s, "name"),
-            read.text(s, "words"),
-            _yes(s.get("stands"), "stands", "rejected"),
-            probability(read.value(s, "p")),
-        ]
-        for s in read.records(question, "stand_ins")
-    ]
-    heads = [("Stand-in", False), ("In words", False), ("Outcome", False), ("p", True)]
-    return make("Stand-ins: what moved with it and could be the real cause", heads, rows)
-
-
-def _yes(flag: Any, yes: str, no: str) -> str:
-    return yes if flag is True else no if flag is False else MISSING
 
 
 def _fixed(x: float | None, places: int = 1) -> str:

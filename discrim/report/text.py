@@ -7,12 +7,15 @@ from dataclasses import replace
 from typing import Any
 
 from discrim.report import read, tables
+from discrim.report.answers import Answer
 from discrim.report.cases import Case
-from discrim.report.content import Answer, Content, Law, build, laws_of
+from discrim.report.constants import KINDS
+from discrim.report.content import Content, build
+from discrim.report.laws import Law, laws_of
 from discrim.report.numbers import MISSING, factor, number
 from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
-from discrim.report.tables import Table
+from discrim.report.table import Table
 from discrim.report.wrapping import wrap_latex
 
 #: Lines of a long formula that are printed, and where the rest is.
@@ -150,7 +153,7 @@ def _constants(paper: Paper, content: Content) -> None:
 
 def _formula_only(remark: str) -> str:
     """A remark without what is said of single intervals."""
-    for kind in tables.KINDS:
+    for kind in KINDS:
         remark = remark.partition(f"; {kind}: ")[0]
     return remark
 

@@ -13,7 +13,7 @@ from scipy.optimize import brentq
 
 from discrim.errors import Place
 from discrim.ratelaw.expression import parse_expression
-from discrim.report.content import law as law_content
+from discrim.report.laws import law as law_content
 from discrim.report.text import laws
 from discrim.weigh.derived import derive_file
 

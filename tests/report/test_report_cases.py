@@ -9,7 +9,7 @@ import pytest
 from discrim import weigh
 from discrim.mechanism.library import names
 from discrim.report.cases import groups
-from discrim.report.content import law
+from discrim.report.laws import law
 from discrim.report.text import laws
 from discrim.report.wrapping import wrap, wrap_latex
 

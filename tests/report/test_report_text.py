@@ -5,7 +5,7 @@ import io
 import pytest
 
 from discrim.report.paper import Paper, to_ascii, wants_colour, write
-from discrim.report.tables import make
+from discrim.report.table import make
 from discrim.report.text import summary, verdicts
 from tests.report import sample
 
