@@ -152,7 +152,8 @@ def judge_value(
             votes=tuple(votes),
         )
     agree = {said[c.name] for c in standing}
-    measured = [m for c in standing for m in c.measured]
+    several = len([c for c in standing if c.measured]) > 1
+    measured = [f"in “{c.name}” {m}" if several else m for c in standing for m in c.measured]
     if agree == {"differs"}:
         worst = max(r.p for c in standing for r in c.readings)
         margins = [r.margin for c in standing for r in c.readings if r.margin == r.margin]

@@ -351,7 +351,8 @@ def _undecided(
         names = [s.name for s in others]
         verb = "explains" if len(names) == 1 else "each explain"
         why.append(f"in place of {about}, {listed(names)} {verb} these runs as well")
-        settle.append(f"runs that break the link between {about} and {listed(names)}")
+        link = "the link" if len(names) == 1 else "the links"
+        settle.append(f"runs that break {link} of {about} with {listed(names)}")
     kinds = {said[c.name] for c in standing}
     without = [c for c in standing if not c.contains]
     if without and tested:

@@ -24,7 +24,7 @@ from discrim.study.model import Question, Study
 from discrim.units import Unit
 from discrim.verdict import ConstantVerdict, ValueFacts, ValueReading, judge_value
 from discrim.verdict.words import listed as named
-from discrim.verdict.words import percent
+from discrim.verdict.words import percent, power_of, scaled, times
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.laws import CandidateLaw
@@ -129,9 +129,16 @@ def _check_units(q: Question, study: Study, bench: Bench, c: CandidateLaw, bound
     value = value_of(q, study, bench, c, bound)
     j = bound.names.index(q.about)
     if value < bound.predictor.lower[j] or value > bound.predictor.upper[j]:
+        low, high = bound.predictor.lower[j], bound.predictor.upper[j]
+        units = f" {bound.units[j]}" if bound.units[j] else ""
         raise DiscrimError(
-            f"{q.about} cannot be {q.value_text}: it lies between "
-            f"{bound.predictor.lower[j]:g} and {bound.predictor.upper[j]:g}",
+            f"{q.about} cannot be {q.value_text}: it "
+            + (
+                f"lies between {low:g} and {high:g}"
+                if np.isfinite(high)
+                else f"is at least {low:g}"
+            )
+            + units,
             place=q.value_place or q.place,
             do="Ask about a value that it can have.",
         )
@@ -375,12 +382,15 @@ def _facts(
 
 
 def measure_words(m: Measure) -> str:
-    """``k_1 / k_2 is 2.59 (2.40 to 2.80)``."""
-    units = f" {m.units}" if m.units else ""
-    if m.interval.empty or not np.isfinite([m.interval.low.value, m.interval.high.value]).any():
-        return f"{m.name} is {m.value:.4g}{units}, and these runs set it no limits"
-    low, high = (
-        f"{s.value:.4g}" if np.isfinite(s.value) else "no limit"
-        for s in (m.interval.low, m.interval.high)
-    )
-    return f"{m.name} is {m.value:.4g}{units} ({low} to {high})"
+    """``k_1 / k_2 is 2.59 (2.40 to 2.80)``, ``k is 1.913 (1.867 to 1.959) × 10⁻⁵ s⁻¹``."""
+    low, high = m.interval.low.value, m.interval.high.value
+    power = power_of(m.value, low, high)
+    value, behind = scaled(m.value, power), times(power, m.units)
+    known = [not m.interval.empty and bool(np.isfinite(x)) for x in (low, high)]
+    if all(known):
+        return f"{m.name} is {value} ({scaled(low, power)} to {scaled(high, power)}){behind}"
+    if known[0]:
+        return f"{m.name} is {value} (at least {scaled(low, power)}){behind}"
+    if known[1]:
+        return f"{m.name} is {value} (at most {scaled(high, power)}){behind}"
+    return f"{m.name} is {value}{behind}, and these runs set it no limits"

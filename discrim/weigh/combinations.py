@@ -15,6 +15,7 @@ from discrim.evidence.conditioning import TradeOff
 from discrim.evidence.quantity_intervals import quantity_facts
 from discrim.ratelaw.model import ConstantKind, constant_symbol
 from discrim.reactor.quantity import Quantity
+from discrim.verdict.words import power_of, scaled, times
 from discrim.weigh.assess import Assessment
 from discrim.weigh.document_values import number
 
@@ -51,7 +52,11 @@ def combination_record(assessment: Assessment, t: TradeOff, level: float) -> dic
 
 
 def combination_words(record: dict[str, Any]) -> str:
-    """``3.418e-07 ± 3.6e-09 s⁻¹``: its value with the standard error."""
+    """``(3.418 ± 0.036) × 10⁻⁷ s⁻¹``: its value with the standard error."""
     value, error = record["value"], record["standard_error"]
-    shown = f"{value:.4g}" if error is None else f"{value:.4g} ± {error:.2g}"
-    return f"{shown} {record['units']}".strip()
+    power = power_of(value, error or 0.0)
+    shown, behind = scaled(value, power), times(power, record["units"])
+    if error is None:
+        return f"{shown}{behind}"
+    shown = f"{shown} ± {scaled(error, power, 2)}"
+    return f"({shown}){behind}" if power else f"{shown}{behind}"

@@ -124,6 +124,8 @@ def _intervals(where: str, a: object, stands: bool) -> list[Finding]:
         if any(s.end != CROSSED for s in ends):
             continue
         x = float(a.fit.theta[a.bound.names.index(name)])  # type: ignore[attr-defined]
+        # a law that is linear in its constants does not bend: there a bound of another ends the way
+        linear = bool(a.bound.predictor.linear.all())  # type: ignore[attr-defined]
         up = (prof.high.value - x) / max(lin.high.value - x, 1e-300)
         down = (x - prof.low.value) / max(x - lin.low.value, 1e-300)
         for ratio, side in ((up, "upward"), (down, "downward")):
@@ -133,7 +135,12 @@ def _intervals(where: str, a: object, stands: bool) -> list[Finding]:
                         "note",
                         where,
                         f"the profile interval of {name} reaches {ratio:.2g} times as far {side} as "
-                        "the linearised one: the law bends there, and standard errors mislead",
+                        "the linearised one: "
+                        + (
+                            "another constant reaches its bound on the way"
+                            if linear
+                            else "the law bends there, and standard errors mislead"
+                        ),
                     )
                 )
     return out

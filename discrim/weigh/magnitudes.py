@@ -31,6 +31,7 @@ from discrim.mechanism.model import Mechanism
 from discrim.ratelaw.model import constant_symbol
 from discrim.runs.model import Role
 from discrim.units import Unit
+from discrim.verdict.words import measure
 from discrim.weigh.document_values import number
 
 if TYPE_CHECKING:
@@ -291,14 +292,14 @@ def magnitude_findings(w: Weighed) -> list[Finding]:
             if not m.above:
                 continue
             sure = m.low > m.limit
-            unit = f" {m.units}" if m.units else ""
             low = (
-                f" (at least {_short(m.low)})"
+                f" (at least {measure(m.low, digits=3)})"
                 if sure
-                else f" (its interval begins at {_short(m.low)})"
+                else f" (its interval begins at {measure(m.low, digits=3)})"
             )
             is_of = "" if m.step == m.name else f", which cannot exceed {m.step},"
-            says = f"{m.name} = {m.value:.2g}{unit}{low}{is_of} is above {m.limit:.2g}{unit}, {m.words}"
+            value, limit = measure(m.value, m.units, 2), measure(m.limit, m.units, 2)
+            says = f"{m.name} = {value}{low}{is_of} is above {limit}, {m.words}"
             out.append(
                 ("warning" if sure else "note", f"candidate “{w.laws[i].law.name}”",
                  f"{says}. {_do(m)}")
@@ -306,18 +307,13 @@ def magnitude_findings(w: Weighed) -> list[Finding]:
     return out
 
 
-def _short(x: float) -> str:
-    mantissa, e, power = f"{x:.3g}".partition("e")
-    return f"{mantissa}e{int(power)}" if e else mantissa
-
-
 def _do(m: Magnitude) -> str:
     again = "check the units and the steps; the step may stand for several"
     if "Smoluchowski" in m.words:
         return (
             "In another solvent the limit goes with 1/viscosity; ions of opposite charge go beyond "
-            f"it (H+ with OH- to {_short(FASTEST_IONS)} L/mol/s), molecules of a gas to about "
-            f"2e11 L/mol/s. Otherwise {again}"
+            f"it (H+ with OH- to {measure(FASTEST_IONS)} L/mol/s), molecules of a gas to about "
+            f"2 × 10¹¹ L/mol/s. Otherwise {again}"
         )
     return again[0].upper() + again[1:]
 

@@ -9,6 +9,7 @@ import numpy as np
 from discrim import verdict
 from discrim.evidence.conditioning import TradeOff
 from discrim.fit.measurements import Scale
+from discrim.verdict.words import measure
 
 if TYPE_CHECKING:
     from discrim.weigh.bind import Bound
@@ -56,7 +57,7 @@ def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
         unit = f" {_ratio_unit(units[a], units[b])}".rstrip()
         sign = "+" if ratio > 0 else "−"
         # k_a + ratio k_b stays put along the direction
-        number = f"{abs(ratio):.4g}"
+        number = measure(abs(ratio))
         factor = f"({number}{unit})·" if unit else f"{number}·"
         if factor == "1·":
             factor = ""
@@ -65,7 +66,7 @@ def trade_off_words(bound: Bound, t: TradeOff, theta: np.ndarray) -> str:
     for j in involved:
         up = "raising" if t.change[j] > 0 else "lowering"
         size = abs(t.change[j]) / t.singular_value if t.singular_value > 0 else abs(t.change[j])
-        parts.append(f"{up} {names[j]} by {size:.2g}{(' ' + units[j]) if units[j] else ''}")
+        parts.append(f"{up} {names[j]} by {measure(size, units[j], 2)}")
     return (
         f"{', '.join(parts)} together changes the predicted rates by no more than one standard "
         "error in all"
