@@ -9,7 +9,7 @@ import numpy as np
 import sympy
 
 from discrim.evidence.delta import propagated
-from discrim.evidence.guaranteed import bounds_of, coefficient_range, in_law
+from discrim.evidence.error_box import bounds_of, coefficient_range, in_law
 from discrim.evidence.intervals import (
     BOUND,
     CROSSED,

@@ -8,7 +8,6 @@ from dataclasses import dataclass
 import numpy as np
 
 from discrim.evidence.adequacy import LackOfFit, lack_of_fit, objective_p
-from discrim.evidence.cleared_law import cleared_law
 from discrim.evidence.conditioning import (
     Conditioning,
     Lockstep,
@@ -19,7 +18,8 @@ from discrim.evidence.conditioning import (
 )
 from discrim.evidence.criteria import Criteria, criteria
 from discrim.evidence.curve import Curve
-from discrim.evidence.guaranteed import Cleared, guaranteed
+from discrim.evidence.guaranteed import guaranteed
+from discrim.evidence.guaranteed_cleared import Cleared
 from discrim.evidence.intervals import (
     Interval,
     along_all,
@@ -33,6 +33,7 @@ from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
+from discrim.weigh.cleared_law import cleared_law
 
 
 @dataclass(frozen=True, slots=True, eq=False)

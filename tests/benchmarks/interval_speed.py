@@ -12,13 +12,14 @@ from collections.abc import Callable
 
 import numpy as np
 
-from discrim.evidence.cleared_law import cleared_law
 from discrim.evidence.curve import Curve
-from discrim.evidence.guaranteed import Cleared, guaranteed
+from discrim.evidence.guaranteed import guaranteed
+from discrim.evidence.guaranteed_cleared import Cleared
 from discrim.evidence.intervals import along_all, linearised, standard_errors
 from discrim.fit.fit import Fit, fit
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
 from discrim.reactor.rates import RatePredictor
+from discrim.weigh.cleared_law import cleared_law
 from tests.reference.outside import predictor, symbols
 
 RUNS, STARTS, LEVEL = 24, 16, 0.95

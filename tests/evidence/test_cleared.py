@@ -55,7 +55,8 @@ def test_form(law, power, terms):
 def test_range_holds_every_table_within_its_bounds():
     """Saturation law on four runs with hard bounds: constants of tables drawn inside the bounds and
     fitted exactly through two of the runs never lie outside the range (an outer bound)."""
-    from discrim.evidence.guaranteed import Cleared, guaranteed
+    from discrim.evidence.guaranteed import guaranteed
+    from discrim.evidence.guaranteed_cleared import Cleared
     from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
     from discrim.ratelaw.compile import CompiledLaw
     from discrim.reactor.rates import RatePredictor

@@ -14,7 +14,7 @@ import numpy as np
 import pytest
 from sympy import Expr, sqrt
 
-from discrim.evidence.cleared_law import cleared_law
+from discrim.weigh.cleared_law import cleared_law
 from discrim.evidence.guaranteed import guaranteed
 from discrim.evidence.intervals import Interval
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source

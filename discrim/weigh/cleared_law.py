@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from discrim.evidence.guaranteed import Cleared
+from discrim.evidence.guaranteed_cleared import Cleared
 from discrim.ratelaw.cleared import cleared
 from discrim.ratelaw.compile import CompiledLaw
 
