@@ -273,9 +273,15 @@ def _around(profile: Interval, x: float) -> Interval:
     k = min(range(len(pieces)), key=lambda i: max(pieces[i][0] - x, x - pieces[i][1], 0.0))
     low = profile.low if k == 0 else Side(pieces[k][0], CROSSED)
     high = profile.high if k == len(pieces) - 1 else Side(pieces[k][1], CROSSED)
-    elsewhere = "; ".join(f"{a:.4g} to {b:.4g}" for i, (a, b) in enumerate(pieces) if i != k)
+    elsewhere = "; ".join(_stretch(a, b) for i, (a, b) in enumerate(pieces) if i != k)
     words = _together(f"also consistent: {elsewhere}", profile.note)
     return Interval("profile", low, high, pieces, False, words)
+
+
+def _stretch(a: float, b: float) -> str:
+    if not np.isfinite([a, b]).all():
+        return f"below {b:.4g}" if np.isfinite(b) else f"above {a:.4g}"
+    return f"{a:.4g} to {b:.4g}"
 
 
 def _together(*notes: str) -> str:

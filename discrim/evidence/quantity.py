@@ -239,7 +239,9 @@ class AlongQuantity(Curve):
 
     def on(self, again: Fit) -> tuple[Fit, Curve]:
         inner = self.wrapped.to_inner(again.theta[None])
-        curve = AlongQuantity(refit(self.fit.predictor, again.data, starts=1, near=inner), self.quantity)
+        curve = AlongQuantity(
+            refit(self.fit.predictor, again.data, starts=1, near=inner), self.quantity
+        )
         return (curve.fit_in_it, curve) if curve.possible else super().on(again)
 
     def points(self, values: np.ndarray, sol: Solution) -> Points:

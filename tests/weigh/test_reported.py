@@ -119,6 +119,15 @@ def test_values_units_and_intervals(tmp_path: Path) -> None:
     assert float(rows[1]["value"]) == pytest.approx(feed["value"])
 
 
+def test_a_law_that_has_none_of_the_quantities_is_printed(tmp_path: Path) -> None:
+    simulated(tmp_path)
+    document = studied(tmp_path, 'ratio = "k_by_b/k_by_a"')
+    assert (
+        next(c for c in document["candidates"] if c["name"] == "saturation")["outcome"] == "stands"
+    )
+    assert "Quantities, two pathways" in summary(document)
+
+
 def test_the_band_of_the_runs_is_that_of_statsmodels(tmp_path: Path) -> None:
     x, y = simulated(tmp_path)
     document = studied(tmp_path, 'ratio = "k_by_b/k_by_a"')
