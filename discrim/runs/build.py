@@ -274,9 +274,10 @@ def _worked_out(
             values[row] = np.nan
         elif not np.isfinite(value):
             raise DiscrimError(
-                f'the formula of "{d.name}" has no value in {raw.row_words(row)}',
-                place=d.place,
-                do="It may divide by zero there; mend the cells, or take the row out.",
+                f'the formula of "{d.name}" has no value in {raw.row_words(row)} of the table',
+                place=d.formula_place or d.place,
+                do="It divides by zero there, or takes the root or logarithm of a negative number. "
+                "Mend the cells, or take the row out.",
             )
     return values
 

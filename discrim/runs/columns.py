@@ -77,7 +77,8 @@ class Declaration:
         the study gives none
     value : of a condition without a column, else None
     place, unit_place, error_place : where each stands in the study
-    computed_from : formula of an observed column that was worked out from others, as written
+    computed_from : formula of an observed column that was worked out from others, as written, and
+        formula_place : where it stands
     """
 
     name: str
@@ -90,6 +91,7 @@ class Declaration:
     unit_place: Place | None = None
     error_place: Place | None = None
     computed_from: str = ""
+    formula_place: Place | None = None
 
 
 def parse_is(text: str, place: Place | None) -> tuple[Role, str]:

@@ -71,8 +71,9 @@ def read_computed(
         known |= {s: c.unit for s in formula.free_symbols if (c := constants.get(s.name))}
         found = unit_of(formula, known)
         if found is not None and d.unit is not None and found != units[d.name]:
+            has = "has no unit" if found.is_dimensionless else f"is in {found.text()}"
             raise DiscrimError(
-                f'the formula is in {found.text()}, "{d.name}" in {d.unit.text}',
+                f'the formula {has}, "{d.name}" is in {d.unit.text or "1 (no unit)"}',
                 place=place,
                 do="Mend the formula, or the units of the column.",
             )

@@ -69,6 +69,7 @@ def columns(root: Node, raw: RawTable) -> list[Declaration]:
                 node.place("units"),
                 node.place("error"),
                 node.needed("computed_from") if "computed_from" in node.data else "",
+                node.place("computed_from") if "computed_from" in node.data else None,
             )
         )
     return out

@@ -130,7 +130,7 @@ def _check_units(q: Question, study: Study, bench: Bench, c: CandidateLaw, bound
     j = bound.names.index(q.about)
     if value < bound.predictor.lower[j] or value > bound.predictor.upper[j]:
         low, high = bound.predictor.lower[j], bound.predictor.upper[j]
-        units = f" {bound.units[j]}" if bound.units[j] else ""
+        shown = f" {bound.units[j]}" if bound.units[j] else ""
         raise DiscrimError(
             f"{q.about} cannot be {q.value_text}: it "
             + (
@@ -138,7 +138,7 @@ def _check_units(q: Question, study: Study, bench: Bench, c: CandidateLaw, bound
                 if np.isfinite(high)
                 else f"is at least {low:g}"
             )
-            + units,
+            + shown,
             place=q.value_place or q.place,
             do="Ask about a value that it can have.",
         )

@@ -17,7 +17,7 @@ from discrim.errors import DiscrimError
 from discrim.fit.measurements import OBSERVATION, ErrorSource, Measurements
 from discrim.fit.responses import Estimate, Unknown
 from discrim.ratelaw.model import RateLaw, amount, quantity
-from discrim.runs.model import Column, Role
+from discrim.runs.model import Column, ErrorBasis, Role
 from discrim.study.model import Study
 from discrim.units import Unit
 from discrim.weigh.errors_of import scale_of, unknown_of, with_errors
@@ -239,6 +239,7 @@ def build(
                     src.individual,
                 )
             )
+    _check_some_error(responses, computed, ordered, sources)
     measurements = Measurements(
         y,
         conditions,
@@ -270,6 +271,26 @@ def build(
         stated,
         errors,
     )
+
+
+def _check_some_error(
+    responses: Sequence[Column],
+    computed: Sequence[Any],
+    symbols: Sequence[Any],
+    sources: Sequence[ErrorSource],
+) -> None:
+    """A rate without an error of its own has those of what it was worked out from, or none at all."""
+    uncertain = {symbols[s.target] for s in sources if s.target != OBSERVATION}
+    for column, formula in zip(responses, computed, strict=True):
+        if formula is None or column.basis is not ErrorBasis.EXACT:
+            continue
+        if not formula.free_symbols & uncertain:
+            raise DiscrimError(
+                f'"{column.name}" has no error, and nothing that it was worked out from has one',
+                place=column.place,
+                do="Every measured rate has an error: state those of the columns in its formula, "
+                f'or one of "{column.name}" itself.',
+            )
 
 
 def _formula_of(column: Column, study: Study) -> Any:
