@@ -5,10 +5,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from discrim.report import behind, read
-from discrim.report.numbers import factor, listed, number, percent, probability, tiny_is_zero
+from discrim.report.numbers import listed, number, percent, probability, tiny_is_zero
 from discrim.report.read import Document
 from discrim.report.table import Table
 
+#: an effect that is found only when it is all of the rate is none that is found
+NONE_FOUND = 0.995
+#: how reasons begin that say what a single run decides
+_ONE_RUN = ("leaving out run", "leaving out any one of", "without run ", "without any one of runs ")
 NOT_THE_ONLY_LAWS = "These laws are not the only possible ones."
 
 
@@ -17,7 +21,9 @@ class Answer:
     """The verdict on one question.
 
     ``decided`` says whether the runs carry a verdict; ``facts`` are (what, how much) pairs;
-    ``details`` the tables behind the verdict.
+    ``details`` the tables behind the verdict; ``beside`` what must be read with the verdict: the
+    single runs that it rests on, and what excluded runs would make of it; ``kind`` one word for its
+    look.
     """
 
     asks: str
@@ -28,6 +34,8 @@ class Answer:
     settle: tuple[str, ...]
     facts: tuple[tuple[str, str], ...]
     details: tuple[Table, ...]
+    beside: tuple[str, ...] = ()
+    kind: str = ""
 
 
 def question_words(question: Document) -> str:
@@ -58,19 +66,52 @@ def answer(question: Document, document: Document) -> Answer:
         shown = f"{len(standing) or 'none'} of {len(standing) + len(rejected)} stand"
         if len(standing) == 1:
             shown += "s"
+    small = question.get("below_what_matters") is True
+    if small and verdict in ("participates", "differs"):
+        shown = f"{verdict}, too little to matter"
     sentence = read.text(question, "sentence") or _sentence(question, verdict, about)
     if asks == "stands" and NOT_THE_ONLY_LAWS not in sentence:
         sentence = f"{sentence} {NOT_THE_ONLY_LAWS}".strip()
+    decided = _decided(asks, verdict, len(standing), len(rejected))
+    why = read.texts(question, "why") or read.texts(question, "reasons")
+    one_run = _one_run(question, asks, why) if decided else []
+    if one_run:  # said beside the verdict, not again below it
+        why = [line for line in why if not line.startswith(_ONE_RUN)]
     return Answer(
         asks=question_words(question),
         verdict=shown,
-        decided=_decided(asks, verdict, len(standing), len(rejected)),
+        kind=f"{verdict} small" if small else verdict,
+        decided=decided,
+        beside=tuple(one_run + _excluded(question, asks, verdict)),
         sentence=sentence,
-        why=tuple(read.texts(question, "why") or read.texts(question, "reasons")),
+        why=tuple(why),
         settle=tuple(read.texts(question, "settle")),
         facts=tuple(_facts(question, standing, rejected)),
         details=behind.behind(question),
     )
+
+
+def _one_run(question: Document, asks: str, why: list[str]) -> list[str]:
+    """Of a decided question: the single runs that it rests on."""
+    if asks == "stands":
+        return [f"Rests on single runs: {line}." for line in why if line.startswith(_ONE_RUN)]
+    runs: dict[str, list[str]] = {}
+    for left in read.records(question, "left_out"):
+        runs.setdefault(read.text(left, "verdict"), []).append(read.text(left, "run"))
+    return [
+        f"Rests on run {labels[0]}: without it the verdict is {verdict}."
+        if len(labels) == 1
+        else f"Rests on single runs: without any one of {listed(labels)} the verdict is {verdict}."
+        for verdict, labels in runs.items()
+    ]
+
+
+def _excluded(question: Document, asks: str, verdict: str) -> list[str]:
+    """What the verdict would be with the excluded runs, where it is another."""
+    again = read.text(question, "with_excluded_runs")
+    if asks == "stands" or not again or again == verdict:
+        return []
+    return [f"With the excluded runs put back the verdict is {again}."]
 
 
 def _decided(asks: str, verdict: str, standing: int, rejected: int) -> bool:
@@ -100,17 +141,17 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
     effect = read.part(question, "effect")
     if effect:
         low, high = read.value(effect, "low"), read.value(effect, "high")
-        words = percent(read.value(effect, "value"))
-        if low is not None and high is not None:
+        words, bound = percent(read.value(effect, "value")), read.value(effect, "bound")
+        if low is not None and high is not None and percent(low) != percent(high):
             words += f", interval {percent(low)} to {percent(high)}"
-        bound = read.value(effect, "bound")
-        words += f", one-sided bound {percent(bound)}" if bound is not None else ""
+            words += f", one-sided bound {percent(bound)}" if bound is not None else ""
         run, where = read.text(effect, "run"), read.text(effect, "words")
         if where:
             words += f", {where}"
         elif run:
             words += f", at {run}" if run.lower().startswith("run") else f", at run {run}"
-        out.append(("Effect on the rate", words))
+        if read.value(effect, "value") is not None:
+            out.append(("Effect on the rate", words))
         matters = read.value(effect, "matters_above")
         out.append(
             (
@@ -122,8 +163,9 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         )
     margin = read.value(question, "error_margin")
     if margin is not None:
+        # as many digits as in the reasons
         out.append(
-            ("Error margin", f"the verdict changes at {factor(margin)} times the stated errors")
+            ("Error margin", f"the verdict changes at {number(margin, 2)} times the stated errors")
         )
     flip, typical = read.value(question, "flip_distance"), read.value(question, "flip_typical")
     if flip is not None:
@@ -132,7 +174,8 @@ def _facts(question: Document, standing: list[str], rejected: list[str]) -> list
         out.append(("Flip distance", words))
     detectable = read.value(question, "detectable")
     if detectable is not None:
-        out.append(("Detectable effect", f"{percent(detectable)} (power 80 %)"))
+        words = percent(detectable) if detectable < NONE_FOUND else "none of any size"
+        out.append(("Detectable effect", f"{words} (power 80 %)"))
     p = read.value(read.part(read.part(question, "tests"), "reconciled"), "p")
     if p is not None:
         out.append(("Reconciled test", f"p {_equals(probability(p))}"))

@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from discrim.report import read
+from discrim.report.constants import by_power, power_of, power_words
 from discrim.report.numbers import MISSING, interval, number, percent, probability, tiny_is_zero
 from discrim.report.table import Table, make
 
@@ -22,10 +23,11 @@ def _tests(question: Mapping[str, Any]) -> Table | None:
     tests = read.part(question, "tests")
     origins = read.part(question, "by_origin")
     listed = [(names.get(str(k), read.clean(k)), read.part(tests, k)) for k in tests]
-    listed += [
-        (f"reconciled test, conditions taken as {read.clean(k)}", read.part(origins, k))
-        for k in origins
-    ]
+    if len(origins) > 1:  # else the reconciled test is that of the one reading
+        listed += [
+            (f"reconciled test, conditions taken as {read.clean(k)}", read.part(origins, k))
+            for k in origins
+        ]
     for name, t in listed:
         statistic = tiny_is_zero(read.value(t, "statistic"))
         df = [read.clean(x) for x in read.items(t, "df")] or read.texts(t, "df")
@@ -82,10 +84,15 @@ def _by_candidate(question: Mapping[str, Any]) -> Table | None:
 
 
 def _measure(m: Mapping[str, Any]) -> str:
-    """``k_1 / k_2 2.59 (2.40 to 2.80)``."""
-    ends = [read.value(m, "value"), *read.numbers(m, "interval")]
-    shown, units = interval(ends[1], ends[2], read.items(m, "ends")), read.text(m, "units")
-    return f"{read.text(m, 'name')} {number(ends[0], 4)} ({shown})" + (f" {units}" if units else "")
+    """``k_1 / k_2 2.59 (2.40 to 2.80)``; no interval is made for candidates that are rejected."""
+    value, ends = read.value(m, "value"), read.numbers(m, "interval")
+    power = power_of([value, *ends])
+    shown = f"{read.text(m, 'name')} {number(by_power(power, value), 4)}"
+    if any(end is not None for end in ends):
+        low, high = (by_power(power, end) for end in ends)
+        shown += f" ({interval(low, high, read.items(m, 'ends'))})"
+    units = power_words(power, read.text(m, "units"))
+    return f"{shown} {'× ' if power else ''}{units}".rstrip()
 
 
 def _stand_ins(question: Mapping[str, Any]) -> Table | None:

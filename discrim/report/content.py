@@ -6,6 +6,7 @@ summary and the HTML report both draw it and do no arithmetic of their own.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -70,6 +71,7 @@ class Content:
     pairs: Table | None = None  # rivals that stand, two at a time
     first_places: Table | None = None
     knock_outs: tuple[Table, ...] = ()  # the laws of each mechanism with some of its pathways
+    rejected: tuple[str, ...] = ()  # names, where others stand
 
 
 def build(document: Document) -> Content:
@@ -106,12 +108,13 @@ def build(document: Document) -> Content:
         first_places=pairs.first_places(ordered),
         constants=constants.constants(ordered, level),
         reported=constants.constants(ordered, level, key="reported"),
-        assumed=_assumed(study),
-        not_checked=tuple(read.texts(document, "not_checked") or read.texts(study, "not_checked")),
-        findings=tuple(
-            (read.text(f, "severity", "note"), read.text(f, "where"), read.text(f, "says"))
-            for f in read.records(document, "findings")
+        assumed=_assumed(study, read.records(runs, "columns")),
+        not_checked=tuple(
+            line.replace(": not checked (", " (")  # the heading says it
+            for line in read.texts(document, "not_checked") or read.texts(study, "not_checked")
         ),
+        findings=_findings(document),
+        rejected=_rejected(ordered),
         references=tuple(
             (read.text(r, "method"), read.text(r, "source"))
             for r in read.records(document, "references")
@@ -122,6 +125,23 @@ def build(document: Document) -> Content:
             t for t in (knock_outs.table(c) for c in knock_outs.with_pathways(document)) if t
         ),
     )
+
+
+def _rejected(candidates: list[Any]) -> tuple[str, ...]:
+    outcomes = {read.text(c, "name"): tables.outcome(c) for c in candidates}
+    if "stands" not in outcomes.values():
+        return ()
+    return tuple(name for name, outcome in outcomes.items() if outcome != "stands")
+
+
+def _findings(document: Document) -> tuple[tuple[str, str, str], ...]:
+    """(severity, where, says), warnings first; what is said beside a verdict is not said again."""
+    found = [
+        (read.text(f, "severity", "note"), read.text(f, "where"), read.text(f, "says"))
+        for f in read.records(document, "findings")
+    ]
+    found = [f for f in found if not (f[1].startswith("question about") and "leaving out" in f[2])]
+    return tuple(sorted(found, key=lambda f: f[0] != "warning"))
 
 
 def not_computed(document: Document) -> list[str]:
@@ -180,9 +200,11 @@ def _lockstep(item: Document) -> str:
 
 
 def _trade_offs(candidates: list[Any]) -> tuple[tuple[str, str], ...]:
+    """Of the candidates that stand; of all where none does."""
+    standing = [c for c in candidates if tables.outcome(c) == "stands"]
     return tuple(
         (read.text(c, "name"), words)
-        for c in candidates
+        for c in standing or candidates
         for words in (read.text(t, "words") for t in read.records(c, "trade_offs"))
         if words
     )
@@ -203,7 +225,7 @@ def _exclusion(e: Document) -> str:
     return f"{words}: {read.text(e, 'reason', 'no reason given')}"
 
 
-def _assumed(study: Document) -> tuple[tuple[str, tuple[str, ...]], ...]:
+def _assumed(study: Document, columns: Sequence[Any]) -> tuple[tuple[str, tuple[str, ...]], ...]:
     known = []
     for c in read.records(study, "known_constants"):
         v, u = rounded(read.value(c, "value"), read.value(c, "sd"))
@@ -219,6 +241,14 @@ def _assumed(study: Document) -> tuple[tuple[str, tuple[str, ...]], ...]:
             [
                 f"{read.text(d, 'name')} = {read.text(d, 'text')}"
                 for d in read.records(study, "derived")
+            ],
+        ),
+        (
+            "Worked out from other columns, whose errors go with them",
+            [
+                f"{read.text(c, 'name')} = {read.text(c, 'computed_from')}"
+                for c in columns
+                if read.text(c, "computed_from")
             ],
         ),
         ("Constants known beforehand", known),

@@ -24,6 +24,10 @@ _ASCII = {
 }  # fmt: skip
 
 
+# spaces at which no line ends: in p < 0.05, 5 %, 1.9 × 10⁻⁵
+_TOGETHER = re.compile(
+    r"(?<=\bp) (?=[<=>] )|(?<=[<=>]) (?=[\d.])|(?<=\d) (?=%)|(?<=[\d)]) (?=×)|(?<=×) (?=10)"
+)
 _RAISED = re.compile("[⁻⁺⁰¹²³⁴⁵⁶⁷⁸⁹]+")
 _LOWERED = str.maketrans("⁻⁺⁰¹²³⁴⁵⁶⁷⁸⁹", "-+0123456789")
 
@@ -57,13 +61,14 @@ class Paper:
 
     def say(self, text: str, *, indent: int = 0, hang: int | None = None) -> None:
         """A paragraph; its second and further lines are indented by ``hang``."""
-        self.lines += textwrap.wrap(
-            text,
+        lines = textwrap.wrap(
+            _TOGETHER.sub("\N{NO-BREAK SPACE}", text),
             self.width,
             initial_indent=" " * indent,
             subsequent_indent=" " * (indent if hang is None else hang),
             break_on_hyphens=False,
         )
+        self.lines += [line.replace("\N{NO-BREAK SPACE}", " ") for line in lines]
 
     def formula(
         self, text: str, *, indent: int = 0, head: str = "", most: int = 0, rest: str = ""

@@ -11,6 +11,7 @@ from discrim.report.numbers import (
     as_number,
     as_read,
     factor,
+    listed,
     number,
     probability,
     tiny_is_zero,
@@ -122,7 +123,7 @@ def columns(runs: Mapping[str, Any]) -> Table | None:
                 read.text(c, "is") if declared else "not declared",
                 spread,
                 read.text(c, "units"),
-                read.text(c, "error"),
+                _error(c),
                 read.text(c, "origin"),
                 read.text(c, "basis") if declared else "",
             ]
@@ -143,6 +144,16 @@ def columns(runs: Mapping[str, Any]) -> Table | None:
         note="Errors are standard deviations. Origin: set (weighed, pipetted) or measured. Basis: "
         "where the size of the error comes from.",
     )
+
+
+def _error(c: Any) -> str:
+    """The stated error; of a column that was worked out from others, that it carries theirs."""
+    own, formula = read.text(c, "error"), read.text(c, "computed_from")
+    if not formula:
+        return own
+    others = listed(read.texts(c, "carries_errors_of"))
+    carried = f"that of {others} in {formula}" if others else f"none, from {formula}"
+    return f"{carried}; and {own}" if own and own != "exact" else carried
 
 
 def runs(record: Mapping[str, Any]) -> Table | None:
@@ -234,45 +245,44 @@ def _proportions(c: Any) -> Table | None:
 
 
 def comparisons(found: Sequence[Any]) -> Table | None:
-    rows = []
+    rows, remarks = [], []
     for c in found:
         df = [read.clean(x) for x in read.items(c, "df")]
         if c.get("nested") is True:
-            how = "nested, on the edge" if c.get("edge") is True else "nested, inside"
+            how = read.text(c, "restriction") + (" (edge)" if c.get("edge") is True else "")
         else:
-            how = "not nested" if c.get("nested") is False else ""
-        test = number(read.value(c, "F"), 3) + (f" ({', '.join(df)})" if df else "")
+            how = "not nested" if c.get("nested") is False else read.text(c, "restriction")
+        test = number(tiny_is_zero(read.value(c, "F")), 3) + (f" ({', '.join(df)})" if df else "")
+        smaller, larger = read.text(c, "smaller"), read.text(c, "larger")
+        p_of_f = read.value(c, "p_one_sided")
         rows.append(
             [
-                read.text(c, "smaller"),
-                read.text(c, "larger"),
-                read.text(c, "restriction"),
-                how,
+                smaller,
+                larger,
+                how.strip(),
                 test,
-                probability(read.value(c, "p_one_sided") or read.value(c, "p")),
+                probability(read.value(c, "p") if p_of_f is None else p_of_f),
                 probability(read.value(c, "p_reconciled")),
                 _bootstrap(c),
-                _brief(read.text(c, "p_note")),
             ]
         )
+        remark = _brief(read.text(c, "p_note"))
+        remarks += [f"“{smaller}” in “{larger}”: {remark}."] if remark else []
     heads = [
         ("Smaller law", False),
         ("Larger law", False),
         ("What is set", False),
-        ("Relation", False),
         ("F (degrees of freedom)", True),
         ("p of F", True),
         ("p reconciled", True),
         ("p bootstrap", True),
-        ("Remark", False),
     ]
-    return make(
-        "Comparisons of laws",
-        heads,
-        rows,
-        note="F is the extra sum of squares and takes the conditions as exact; on the edge with one "
-        "constant its p is one-sided. Verdicts rest on the reconciled test.",
+    note = (
+        "F is the extra sum of squares and takes the conditions as exact. Edge: the value set is the "
+        "least that the constant can have; with one constant there the p of F is one-sided. Verdicts "
+        "rest on the reconciled test."
     )
+    return make("Comparisons of laws", heads, rows, note=" ".join([note, *remarks]))
 
 
 def _bootstrap(c: Any) -> str:

@@ -9,10 +9,9 @@ from typing import Any
 from discrim.report import read, tables
 from discrim.report.answers import Answer
 from discrim.report.cases import Case
-from discrim.report.constants import KINDS
 from discrim.report.content import Content, build
 from discrim.report.laws import Law, laws_of
-from discrim.report.numbers import MISSING, factor, number
+from discrim.report.numbers import MISSING, count, factor, number
 from discrim.report.paper import WIDTH, Paper
 from discrim.report.read import Document
 from discrim.report.table import Table
@@ -65,12 +64,16 @@ def verdicts(document: Document, *, width: int = WIDTH) -> str:
     paper = Paper(width=width)
     for answer in build(document).answers:
         paper.ends(answer.asks, answer.verdict)
+        for line in answer.beside:
+            paper.say(line, indent=2)
     return str(paper) if paper.lines else ""
 
 
 def _answer(paper: Paper, answer: Answer) -> None:
     paper.blank()
     paper.ends(answer.asks, answer.verdict.upper())
+    for line in answer.beside:
+        paper.say(f"! {line}", indent=2, hang=4)
     paper.say(answer.sentence, indent=2)
     if answer.why:
         paper.blank()
@@ -96,9 +99,13 @@ def _findings(paper: Paper, content: Content) -> None:
         for severity, where, says in content.findings
         if severity == "warning"
     ]
+    notes = len(content.findings) - len(warnings)
     if warnings:
         paper.heading("Warnings")
         paper.bullets(warnings)
+    if notes:
+        paper.blank()
+        paper.say(f"{count(notes, 'note')} on the runs and the fits in the report.", indent=2)
 
 
 def _candidates(paper: Paper, content: Content) -> None:
@@ -143,19 +150,12 @@ def _constants(paper: Paper, content: Content) -> None:
         paper.turned(valued, drop=("Remark",))
         if valued.rows:
             paper.blank()
-        paper.bullets([f"{row[0]}: {_formula_only(row[-1])}" for row in table.rows])
+        paper.bullets([f"{row[0]}: {row[-1]}" for row in table.rows])
     if shown:
         paper.blank()
         paper.say(
             f"Intervals at {content.level}; the reconciled one carries the verdicts.", indent=2
         )
-
-
-def _formula_only(remark: str) -> str:
-    """A remark without what is said of single intervals."""
-    for kind in KINDS:
-        remark = remark.partition(f"; {kind}: ")[0]
-    return remark
 
 
 def _with_values(table: Table) -> Table:

@@ -164,10 +164,25 @@ def _runs(w: Weighed) -> dict[str, Any]:
         "labels": list(runs.labels),
         "kept": [bool(k) for k in runs.kept],
         "observation": "; ".join(is_words(c) for c in w.bench.responses),
-        "columns": [column_record(c) for c in runs.columns],
+        "columns": [{**column_record(c), **_computed(w, c.name)} for c in runs.columns],
         "replicates": [g for g in groups.values() if len(g) > 1],
         "lockstep": lockstep_keys(w, best) if best is not None else [],
     }
+
+
+def _computed(w: Weighed, column: str) -> dict[str, Any]:
+    """Of an observed column that was worked out from others: its formula, and whose errors it carries."""
+    computed = w.study.computed.get(column)
+    if computed is None:
+        return {}
+    held = {str(s).strip("[]{}") for s in computed.formula.free_symbols}
+    with_error = [
+        c.about if c.role is Role.SPECIES else c.name
+        for c in w.study.runs.columns
+        if c.errors and (c.name in held or (c.role is Role.SPECIES and c.about in held))
+    ]
+    with_error += [k for k, c in w.study.constants.items() if k in held and c.sd]
+    return {"computed_from": computed.text, "carries_errors_of": with_error}
 
 
 def _lead(w: Weighed) -> int | None:

@@ -84,9 +84,9 @@ def test_answer_cautions_and_provenance_are_on_the_page():
     document = sample.two_amines()
     text = page(document, draw(document)).partition("<body>")[2]
     order = ["<h1>", "Does B take part?", "undecided", "These runs cannot tell", "Before you act",
-             "How each rate law follows", "The runs and what", "The candidates compared",
-             "Behind the verdicts", "Constants</h2>", "How well the standing", "not checked",
-             "Methods and provenance"]  # fmt: skip
+             "Findings</h2>", "The candidates compared", "Constants</h2>", "The runs and what",
+             "How well the standing", "How each rate law follows", "Behind the verdicts",
+             "not checked", "Methods and provenance"]  # fmt: skip
     places = [text.index(words) for words in order]
     assert places == sorted(places)
     for words in ("valve not flushed", "label found in the acid", "notebook 12, p. 40",
