@@ -13,6 +13,7 @@ from discrim.evidence.distributions import (
 )
 from discrim.evidence.score import NO_INFORMATION
 from discrim.fit.fit import Fit
+from discrim.fit.freedom import on_bounds
 from discrim.fit.measurements import Scale
 
 # The guard of the reconciled set: this share of 1 - confidence is left to the objective alone. It is there
@@ -57,11 +58,11 @@ class Acceptance:
 
     Parameters
     ----------
-    base : the lowest objective known; lower : bound of the constant
+    base : the lowest objective known; lower : bound of the constant; psi : its index
     """
 
-    def __init__(self, fit: Fit, base: float, level: float, lower: float) -> None:
-        self.fit, self.level, self.lower = fit, level, lower
+    def __init__(self, fit: Fit, base: float, level: float, lower: float, psi: int) -> None:
+        self.fit, self.level, self.lower, self.psi = fit, level, lower, psi
         self.known = fit.data.scale is not Scale.ESTIMATED
         self.limit = quantile(fit, level) ** 2
         self.spend = guard_level(1.0 - level) if fit.data.scale is Scale.STATED else 0.0
@@ -81,17 +82,22 @@ class Acceptance:
         # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
         # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960)
         # 41), which never binds for a linear law, so nothing is spent on it. Else void.
-        self.guard, self.alone, self.unit = np.inf, np.inf, 1.0
+        self.guard, self.unit = np.inf, 1.0
+        self.guards = self.alone = np.full(p, np.inf)
         if fit.data.scale is Scale.STATED:
-            df = max(n - (p - 1), 1)
-            self.guard = chi2_quantile_upper(self.spend, df)
+            # one more degree of freedom for each of the others that is on a bound (`fit.freedom`)
+            df = np.maximum(n - (p - 1) + np.arange(p), 1)
+            self.guards = np.array([chi2_quantile_upper(self.spend, d) for d in df])
             # where the constant is in exact lockstep with others no score can be had, at any value:
             # the objective has all of alpha to itself
-            self.alone = chi2_quantile_upper(1.0 - self.level, df)
-            self.unit = max(self.guard, 1.0)
+            alone = np.array([chi2_quantile_upper(1.0 - self.level, d) for d in df])
+            self.alone = np.minimum(alone, self.guards)
+            self.guard = float(self.guards[-1])
+            self.unit = max(float(self.guards[0]), 1.0)
         elif free and dof > 0 and base > 0:
             f = f_quantile_upper(min(FAR, 0.2 * (1.0 - self.level)), p, dof)
             self.guard = self.unit = base * (1.0 + p * f / dof)
+            self.guards = self.alone = np.full(p, self.guard)
 
     @property
     def hopeless(self) -> float:
@@ -103,8 +109,15 @@ class Acceptance:
     def _q_ok(self, pts: Points) -> np.ndarray:
         with np.errstate(invalid="ignore"):
             untestable = pts.score.information <= NO_INFORMATION
-            margin = np.where(untestable, min(self.alone, self.guard), self.guard) - pts.objective
+            k = self._on_bounds(pts)
+            margin = np.where(untestable, self.alone[k], self.guards[k]) - pts.objective
         return np.where(np.isfinite(pts.objective), margin, -np.inf)
+
+    def _on_bounds(self, pts: Points) -> np.ndarray:
+        """How many of the other constants are on a bound at each point, shape (S,)."""
+        predictor = self.fit.predictor
+        on = on_bounds(pts.solution.theta, predictor.lower, predictor.upper)
+        return np.asarray(on.sum(axis=1) - on[:, self.psi])
 
     def profile(self, pts: Points) -> np.ndarray:
         rise = pts.objective - self.base

@@ -67,7 +67,7 @@ def lack_of_fit(fit: Fit) -> LackOfFit | None:
     if found is None:
         return None
     pure, df_pure, n_groups = found
-    df_lack = n_groups - fit.p
+    df_lack = n_groups - (fit.n - fit.objective_df)
     if df_lack < 1 or pure <= 0:
         return None
     total = float(fit.residual @ fit.residual)
@@ -87,8 +87,9 @@ def replicate_scatter(fit: Fit) -> ReplicateScatter | None:
 
 
 def objective_p(fit: Fit) -> float | None:
-    """Upper tail of Q among chi-squared with N - p degrees of freedom; None when the scale is not
-    stated or nothing is left. Very conservative in lockstep: "it fits" is weak evidence there."""
-    if fit.data.scale is not Scale.STATED or fit.degrees_of_freedom < 1:
+    """Upper tail of Q among chi-squared with N - p degrees of freedom, constants on a bound not
+    counted in p (`fit.freedom`); None when the scale is not stated or nothing is left. Very
+    conservative in lockstep: "it fits" is weak evidence there."""
+    if fit.data.scale is not Scale.STATED or fit.objective_df < 1:
         return None
-    return chi2_upper(fit.objective, fit.degrees_of_freedom)
+    return chi2_upper(fit.objective, fit.objective_df)

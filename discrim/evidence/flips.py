@@ -35,7 +35,7 @@ def error_margin(
             if not (abs(z) if two_sided else z) > critical and pts.objective[0] > guard:
                 # see by_objective
                 without_it = fit(term.reduced, problem.data, starts=4)
-                if data.scale is Scale.STATED and without_it.objective > guard:
+                if data.scale is Scale.STATED and _excluded(without_it, alpha):
                     return float("inf")
             return z
         reduced = fit(term.reduced, problem.data, starts=4)
@@ -43,9 +43,7 @@ def error_margin(
         if term.kind is Kind.FACTOR:
             again = fit(term.full, problem.data, starts=4, near=full.theta[None])
         z = absence_test(term, problem, again, reduced, seed, alpha)[0]
-        df = reduced.degrees_of_freedom
-        known = data.scale is Scale.STATED and df > 0
-        if known and reduced.objective > chi2_quantile_upper(guard_level(alpha), max(df, 1)):
+        if data.scale is Scale.STATED and _excluded(reduced, alpha):
             return float("inf")  # see by_objective
         return z
 
@@ -54,6 +52,12 @@ def error_margin(
         return bool((abs(z) if two_sided else z) > critical)
 
     return factor_where(rejects)
+
+
+def _excluded(reduced: Fit, alpha: float) -> bool:
+    """Whether its objective alone excludes the law without the term, as in `by_objective`."""
+    df = reduced.objective_df
+    return df > 0 and reduced.objective > chi2_quantile_upper(guard_level(alpha), df)
 
 
 def typical_flip(

@@ -15,7 +15,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from discrim.evidence.distributions import (
-    chi2_upper,
+    chi2_tail,
     normal_of_tail,
     normal_quantile,
     normal_upper,
@@ -31,8 +31,10 @@ from discrim.evidence.term_tests import vanishing
 from discrim.fit.covariance import Whitener
 from discrim.fit.engine import Options, solve
 from discrim.fit.fit import Fit
+from discrim.fit.freedom import adjusted, on_bounds
 from discrim.fit.measurements import Measurements, Scale
 from discrim.fit.problem import Problem, Solution
+from discrim.reactor.model import Predictor
 
 # a score this far below its limit leaves the test with wider errors alone
 MAY_REJECT = 0.5
@@ -166,8 +168,8 @@ def law_again(fit: Fit, whole: Standing, table: Measurements) -> LawLeftOut:
     df = table.count - fit.p
     q = sol.objective
     of_fit = np.full(len(q), np.nan)
-    if data.scale is Scale.STATED and df > 0:
-        of_fit = normal_of_tail([chi2_upper(float(x), df) for x in q])
+    if data.scale is Scale.STATED and whole.p_fit is not None:
+        of_fit = normal_of_tail(chi2_tail(q, _objective_df(sol, fit.predictor, table)))
     z = np.abs(_along(sol, _unwhitened(fit, lines), np.arange(fit.p)))
     if estimated:
         z = to_normal(studentised(z, q[:, None], df), float(max(df - 1, 1)))
@@ -273,7 +275,7 @@ def _absence(
         problem = Problem(term.full, table)
         sol = _solved(problem, full, {psi: 0.0})
         z = score(problem, sol, psi).z
-        return _or_objective(z, sol, table, full.p - 1, problem, alpha)
+        return _or_objective(z, sol, table, full.p - 1, problem, psi, alpha)
     if term.kind is Kind.SEVERAL:
         return _several(term, table, full)
     null = reduced
@@ -301,16 +303,29 @@ def _or_objective(
     table: Measurements,
     p_nuisance: int,
     problem: Problem,
+    psi: int,
     alpha: float,
 ) -> np.ndarray:
     """The score, or the objective where that alone excludes the law without the term."""
-    df = table.count - p_nuisance
-    if table.scale is not Scale.STATED or not problem.with_conditions or df < 1:
+    if table.scale is not Scale.STATED or not problem.with_conditions:
         return z
-    tails = np.array([chi2_upper(float(q), df) for q in sol.objective])
-    tails = np.where(np.isfinite(sol.objective), tails, 1.0)
+    df = table.count - p_nuisance + _others_on_bounds(sol, problem.predictor, psi)
+    tails = chi2_tail(np.where(np.isfinite(sol.objective), sol.objective, 0.0), np.maximum(df, 1))
+    tails = np.where(np.isfinite(sol.objective) & (df > 0), tails, 1.0)
     alone = normal_of_tail(tails)
     return np.where((tails < guard_level(alpha)) & ~(np.abs(z) > alone), alone, z)
+
+
+def _others_on_bounds(sol: Solution, predictor: Predictor, psi: int) -> np.ndarray:
+    """How many constants but ``psi`` are on a bound, shape (S,): they were not adjusted."""
+    on = on_bounds(sol.theta, predictor.lower, predictor.upper)
+    return np.asarray(on.sum(axis=1) - on[:, psi])
+
+
+def _objective_df(sol: Solution, predictor: Predictor, table: Measurements) -> np.ndarray:
+    """Of Q in each member of a batch, shape (S,), as `Fit.objective_df`; at least 1."""
+    on = on_bounds(sol.theta, predictor.lower, predictor.upper)
+    return np.maximum(table.count - adjusted(sol.jacobian, on), 1)
 
 
 def _several(term: Term, table: Measurements, full: Fit) -> np.ndarray:

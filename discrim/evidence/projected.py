@@ -21,6 +21,7 @@ import numpy as np
 
 from discrim.evidence.distributions import chi2_quantile_upper, f_quantile_upper
 from discrim.fit.engine import Options, solve
+from discrim.fit.freedom import on_bounds
 from discrim.fit.measurements import Scale
 from discrim.fit.problem import Problem, Solution
 
@@ -157,8 +158,8 @@ def reach(
     todo = slice(0, points.shape[1])
     rounds = _CLOSER[effort]
     for k in range(rounds + 1):
-        q, new = _solved(problem, solution, weak.constants, fixed, points[:, todo], statistic)
-        z[:, todo] = np.where(q <= limit[:, None], new, np.nan)
+        q, new, on = _solved(problem, solution, weak.constants, fixed, points[:, todo], statistic)
+        z[:, todo] = np.where(q <= np.take_along_axis(limit, on, axis=1), new, np.nan)
         if k < rounds:
             more = _closer(problem, points, z, weak.constants, 0.35**k)
             todo = slice(points.shape[1], points.shape[1] + more.shape[1])
@@ -173,14 +174,19 @@ def reach(
 def _limit(
     problem: Problem, solution: Solution, tested: int, weak: int, outside: float
 ) -> np.ndarray:
+    """Of the objective, shape (S, K + 1), with 0 to K of the constants that are profiled on bounds."""
     data = problem.data
     n, p = data.count, solution.theta.shape[1]
-    s = len(solution.theta)
+    # the constants tested and the weak ones are held, the rest profiled
+    rest = p - tested - weak
+    out = np.empty((len(solution.theta), rest + 1))
     if data.scale is Scale.STATED:
-        # the constants tested and the weak ones are held, the rest profiled
-        return np.full(s, chi2_quantile_upper(outside, max(n - (p - tested - weak), 1)))
+        df = np.maximum(n - rest + np.arange(rest + 1), 1)
+        out[:] = [chi2_quantile_upper(outside, d) for d in df]
+        return out
     df = n - p + tested if problem.joint_scale else data.scale_df
-    return solution.objective + weak * f_quantile_upper(outside, weak, max(df, 1))
+    out[:] = (solution.objective + weak * f_quantile_upper(outside, weak, max(df, 1)))[:, None]
+    return out
 
 
 def _most(problem: Problem, solution: Solution, constants: Sequence[int]) -> np.ndarray:
@@ -288,8 +294,9 @@ def _solved(
     fixed: np.ndarray,
     points: np.ndarray,
     statistic: Statistic,
-) -> tuple[np.ndarray, np.ndarray]:
-    """Objective and statistic at ``points``, shape (S, G, q), the others profiled; shape (S, G)."""
+) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Objective, statistic and how many of the others, which are profiled, are on a bound at
+    ``points``, shape (S, G, q); shape (S, G) each."""
     s, g, _ = points.shape
     pick = list(constants)
     member = np.repeat(np.arange(s), g)
@@ -314,4 +321,5 @@ def _solved(
     )
     z = statistic(problem, found)
     q = np.where(np.isfinite(z), found.objective, np.inf)
-    return q.reshape(s, g), z.reshape(s, g)
+    on = on_bounds(found.theta, problem.predictor.lower, problem.predictor.upper) & ~fixed
+    return q.reshape(s, g), z.reshape(s, g), on.sum(axis=1).reshape(s, g)

@@ -29,8 +29,6 @@ DRAWS = 20_000
 # Two laws that are less than this many standard errors apart, all runs together, could not be told
 # apart whatever the data; the length does not depend on the residuals, so leaving them out is fair.
 TOO_SHORT = 0.5
-# rivals whose predictions differ by less than this many standard deviations in every run
-INSEPARABLE = 1.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -212,8 +210,8 @@ def _judge(
     known = data.scale is not Scale.ESTIMATED
     df_rest = null.degrees_of_freedom
     p_fit = None
-    if data.scale is Scale.STATED and df_rest > 0:
-        p_fit = chi2_upper(null.objective, df_rest)
+    if data.scale is Scale.STATED and null.objective_df > 0:
+        p_fit = chi2_upper(null.objective, null.objective_df)
     unit, lengths, keep = [], [], []
     scale = 1.0
     if not known and not null.problem.with_conditions and null.scale2 > 0:

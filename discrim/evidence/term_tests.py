@@ -119,9 +119,9 @@ def by_objective(
     ``alpha``), which is all it can add to the size.
     """
     known = problem.data.scale is Scale.STATED and problem.with_conditions
-    if not known or reduced.degrees_of_freedom < 1 or not np.isfinite(p):
+    if not known or reduced.objective_df < 1 or not np.isfinite(p):
         return z, p, words
-    p_objective = chi2_upper(reduced.objective, reduced.degrees_of_freedom)
+    p_objective = chi2_upper(reduced.objective, reduced.objective_df)
     if not p_objective < guard_level(alpha) or p_objective >= p:
         return z, p, words
     both = term.kind in (Kind.ORDER, Kind.FACTOR, Kind.SEVERAL)

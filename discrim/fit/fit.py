@@ -8,6 +8,7 @@ from enum import Enum
 import numpy as np
 
 from discrim.fit.engine import Options, solve
+from discrim.fit.freedom import adjusted
 from discrim.fit.measurements import Measurements, Scale
 from discrim.fit.problem import CONVERGED, NOT_FINITE, Problem, Solution
 from discrim.fit.scout import scout, starting_values
@@ -79,6 +80,12 @@ class Fit:
             return self.objective
         size = max(float(np.mean(self.data.y**2)), 1e-300)
         return self.scale2 * max(self.degrees_of_freedom, 1) / size
+
+    @property
+    def objective_df(self) -> int:
+        """Degrees of freedom of Q as chi-squared: N less the constants that are not on a bound (see
+        `freedom`)."""
+        return self.n - int(adjusted(self.jacobian[None], self.at_bound[None])[0])
 
     @property
     def variances(self) -> np.ndarray:

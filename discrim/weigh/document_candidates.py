@@ -114,11 +114,12 @@ def _reasons(w: Weighed, i: int) -> list[str]:
         word = "fits" if s.p_fit >= 0.2 * alpha else "does not fit"
         out.append(
             f"{word} within the stated errors (Q = {w.assessments[i].fit.objective:.3g} on "
-            f"{w.assessments[i].fit.degrees_of_freedom} degrees of freedom, {_p(s.p_fit)})"
+            f"{w.assessments[i].fit.objective_df} degrees of freedom, {_p(s.p_fit)})"
         )
     if s.worst_rival >= 0:
         name = w.laws[s.worst_rival].law.name
-        how = "rejected in the direction of" if s.p_joint < alpha * 0.8 else "not rejected against"
+        limit = alpha if s.p_fit is None else alpha * 0.8
+        how = "rejected in the direction of" if s.p_joint < limit else "not rejected against"
         out.append(f"{how} “{name}” and all others ({_p(s.p_joint)} jointly)")
     for j in w.inseparable[i]:
         if (min(i, j), max(i, j)) in w.relations.same:

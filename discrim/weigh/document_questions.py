@@ -131,7 +131,7 @@ def _participates(w: Weighed, a: Answer) -> dict[str, Any]:
             )
         for r in readings:
             by_origin[r.origin] = _reading(r)
-        worst = min(readings, key=lambda r: r.z if r.z == r.z else -1e9)
+        worst = max(readings, key=lambda r: r.p if r.p == r.p else 2.0)
         tests["reconciled"] = {
             "p": number(worst.p),
             "z": number(worst.z),
@@ -216,15 +216,17 @@ def _by_candidate(w: Weighed, a: Answer, k: InCandidate) -> dict[str, Any]:
     votes = dict(a.verdict.votes)
     name = w.laws[k.index].law.name
     readings = list(k.by_origin.values())
-    first = readings[0] if readings else None
-    e = first.effect if first is not None else None
+    effects = [r.effect for r in readings if r.effect is not None]
     return {
         "candidate": name,
         "stands": bool(w.stands[k.index]),
         "contains": k.contains,
         "how": k.knock_out.kind.value if k.knock_out is not None else "",
         "p": number(max((r.p for r in readings), default=float("nan"))),
-        "effect": None if e is None else [number(e.low), number(e.high)],
+        # whichever way the errors of the conditions are read
+        "effect": [number(min(e.low for e in effects)), number(max(e.high for e in effects))]
+        if effects
+        else None,
         "votes": votes.get(name, ""),
         "note": k.note,
     }
