@@ -15,12 +15,6 @@ import numpy as np
 from discrim.fit.measurements import Measurements
 from discrim.reactor.model import Predictor
 
-# two terms whose ratio varies by less than this multiple of its own error cannot be told apart
-LOCKSTEP_ERRORS = 3.0
-# or by less than this fraction, whatever the errors are said to be
-LOCKSTEP_RELATIVE = 0.01
-# but never when it varies by more than this: errors that large say that the ratio crosses zero
-LOCKSTEP_MOST = 0.20
 # condition index from which a near-dependency is named (Belsley, Kuh & Welsch 1980, sec. 3.2)
 STRONG_INDEX = 30.0
 # proportion of variance from which a constant counts as involved in it (same place)
@@ -120,11 +114,20 @@ class Lockstep:
 
 
 def lockstep(
-    predictor: Predictor, data: Measurements, theta: np.ndarray, weight: np.ndarray
+    predictor: Predictor,
+    data: Measurements,
+    theta: np.ndarray,
+    weight: np.ndarray,
+    *,
+    errors: float,
+    least: float,
+    most: float,
 ) -> list[Lockstep]:
     """Pairs of terms in lockstep.
 
-    ``theta`` shape (p,), where the sensitivities are taken; ``weight`` shape (N,).
+    ``theta`` shape (p,), where the sensitivities are taken; ``weight`` shape (N,). Their ratio varies
+    by no more than ``errors`` times its own error, or than ``least`` relative, and never by more than
+    ``most``.
     """
     p = len(theta)
     conditions = data.conditions
@@ -164,7 +167,7 @@ def lockstep(
                     rel = dg[use, s.target, k] / g[use, k] - dg[use, s.target, j] / g[use, j]
                 var += (sd * np.nan_to_num(rel)) ** 2
             error = float(np.sqrt((w * var).sum()))
-            limit = min(max(LOCKSTEP_ERRORS * error, LOCKSTEP_RELATIVE), LOCKSTEP_MOST)
+            limit = min(max(errors * error, least), most)
             if variation <= limit:
                 found.append(
                     Lockstep(
@@ -173,7 +176,7 @@ def lockstep(
                         (float(ratio.min()), float(ratio.max())),
                         variation,
                         error,
-                        variation <= LOCKSTEP_ERRORS * error,
+                        variation <= errors * error,
                     )
                 )
     return found

@@ -19,6 +19,15 @@ FEW_RUNS = 3
 # Whether "participates" becomes "undecided" when leaving out one run would change it. False: it is said
 # beside the verdict and as a finding, since how often verdicts are wrong already counts such tables.
 ONE_RUN_STOPS = False
+# Two terms move in lockstep when their ratio varies by less than this multiple of its own error, or by
+# less than this fraction whatever the errors are said to be, but never when it varies by more than the
+# last: errors that large say that the ratio crosses zero.
+LOCKSTEP_ERRORS = 3.0
+LOCKSTEP_RELATIVE = 0.01
+LOCKSTEP_MOST = 0.20
+# Rivals that stand and whose predictions differ by less than this many standard deviations in every run
+# are inseparable.
+INSEPARABLE = 1.0
 # Findings about residuals: a trend is called one below this p (all trends of one law together), and
 # so are the other patterns, each by itself: about one study in twenty gets one of them by chance.
 TREND = 0.01
@@ -42,5 +51,9 @@ NEAR_EQUILIBRIUM = 0.10
 FAR_FROM_ZERO = 0.20
 # a rate below this fraction of the median has next to no error if its error is relative only;
 NEXT_TO_NOTHING = 0.01
+# a range of a column above this many of its errors varies;
+VARIES = 3.0
+# a pH over less than this range is kept;
+KEPT_PH = 0.1
 # an activation energy to judge by what a temperature that varies can do (J/mol).
 TYPICAL_ACTIVATION = 50e3

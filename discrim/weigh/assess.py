@@ -31,6 +31,7 @@ from discrim.evidence.intervals import (
 from discrim.evidence.rivals import table_key
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Measurements, Scale
+from discrim.verdict.thresholds import LOCKSTEP_ERRORS, LOCKSTEP_MOST, LOCKSTEP_RELATIVE
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.cleared_law import cleared_law
@@ -94,7 +95,17 @@ def assess(
     se = standard_errors(one)
     cond = conditioning(one.jacobian, names)
     weight = 1.0 / np.sqrt(one.variances)
-    locks = tuple(lockstep(bound.predictor, data, one.theta, weight)) if one.ok else ()
+    locks: list[Lockstep] = []
+    if one.ok:
+        locks = lockstep(
+            bound.predictor,
+            data,
+            one.theta,
+            weight,
+            errors=LOCKSTEP_ERRORS,
+            least=LOCKSTEP_RELATIVE,
+            most=LOCKSTEP_MOST,
+        )
     below = None
     if not one.ok:
         intervals: tuple[dict[str, Interval], ...] = tuple({} for _ in names)
@@ -117,7 +128,7 @@ def assess(
         se,
         intervals,
         cond,
-        locks,
+        tuple(locks),
         tuple(trade_offs(cond)),
         crit,
         objective_p(one) if one.ok else None,

@@ -12,6 +12,7 @@ from discrim.fit.measurements import Scale
 from discrim.ratelaw.knockout import contains, knock_out
 from discrim.ratelaw.printing import plain
 from discrim.study.model import Study
+from discrim.verdict.thresholds import LOCKSTEP_ERRORS, LOCKSTEP_MOST, LOCKSTEP_RELATIVE
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.chemistry import remarks, scene_before
@@ -99,7 +100,8 @@ def _law(
     columns = pred.by_constants[0] * weight[:, None]
     cond = conditioning(columns, b.names)
     locks = []
-    for lock in lockstep(b.predictor, data, theta, weight):
+    limits = {"errors": LOCKSTEP_ERRORS, "least": LOCKSTEP_RELATIVE, "most": LOCKSTEP_MOST}
+    for lock in lockstep(b.predictor, data, theta, weight, **limits):
         used = [
             s.name.strip("[]{}")
             for j, s in enumerate(bench.symbols)

@@ -11,7 +11,13 @@ from discrim.ratelaw.knockout import KnockOutKind
 from discrim.ratelaw.model import quantity
 from discrim.runs.model import Column, Role
 from discrim.units import Unit
-from discrim.verdict.thresholds import FAR_FROM_ZERO, NEXT_TO_NOTHING, TYPICAL_ACTIVATION
+from discrim.verdict.thresholds import (
+    FAR_FROM_ZERO,
+    KEPT_PH,
+    NEXT_TO_NOTHING,
+    TYPICAL_ACTIVATION,
+    VARIES,
+)
 from discrim.weigh.chemistry import Finding, Scene, share
 from discrim.weigh.magnitudes import GAS_CONSTANT, si_factor
 
@@ -36,7 +42,7 @@ def _varies(c: Column, at: Scene) -> np.ndarray | None:
         return None
     variance = sum((np.asarray(e.absolute)[at.bench.runs] ** 2 for e in c.errors), np.zeros(len(x)))
     variance += sum(((e.relative * x) ** 2 for e in c.errors), np.zeros(len(x)))
-    return x if float(np.ptp(x)) > 3.0 * float(np.sqrt(variance.max(initial=0.0))) else None
+    return x if float(np.ptp(x)) > VARIES * float(np.sqrt(variance.max(initial=0.0))) else None
 
 
 def _without(at: Scene, c: Column) -> list[int]:
@@ -77,7 +83,7 @@ def _one_value_each(at: Scene, i: int, t: np.ndarray) -> bool:
 def _ph(at: Scene) -> Iterator[Finding]:
     c = at.column(Role.PH)
     x = None if c is None else _varies(c, at)
-    if c is None or x is None or float(np.ptp(x)) < 0.1:
+    if c is None or x is None or float(np.ptp(x)) < KEPT_PH:
         return
     missing = _without(at, c)
     if len(missing) == len(at.used):

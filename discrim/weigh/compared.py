@@ -12,12 +12,13 @@ from discrim.evidence.bootstrap import RISK, Simulated, nested_p
 from discrim.evidence.criteria import Criteria
 from discrim.evidence.distributions import t_upper
 from discrim.evidence.pairs import Pairs, pairs
-from discrim.evidence.rivals import INSEPARABLE, Standing, apart
+from discrim.evidence.rivals import Standing, apart
 from discrim.evidence.term import NestedF
 from discrim.evidence.term_tests import nested_f
 from discrim.fit.fit import Fit
 from discrim.fit.measurements import Scale
 from discrim.ratelaw.nesting import Nesting
+from discrim.verdict.thresholds import INSEPARABLE
 from discrim.weigh.bind import Bound
 from discrim.weigh.embedded import embedded
 from discrim.weigh.sameness import Relations

@@ -12,7 +12,10 @@ import numpy as np
 import pytest
 
 from discrim.evidence.conditioning import collinearity_index, conditioning, lockstep, trade_offs
+from discrim.verdict.thresholds import LOCKSTEP_ERRORS, LOCKSTEP_MOST, LOCKSTEP_RELATIVE
 from tests.reference.outside import column, digits, measurements, predictor, sources, symbols
+
+LIMITS = {"errors": LOCKSTEP_ERRORS, "least": LOCKSTEP_RELATIVE, "most": LOCKSTEP_MOST}
 
 
 def _design(table: str, variables: list[str]) -> np.ndarray:
@@ -108,8 +111,8 @@ def test_lockstep_is_judged_on_terms_and_errors() -> None:
     together = predictor(k1 * e + k2 * b, [k1, k2], [e, b], 4, lower=0.0)
     apart = predictor(k1 * e + k2 * e * b, [k1, k2], [e, b], 4, lower=0.0)
     ones = np.ones(4)
-    (found,) = lockstep(together, data, np.ones(2), ones)
+    (found,) = lockstep(together, data, np.ones(2), ones, **LIMITS)
     assert (found.first, found.second) == (0, 1)
     assert found.ratio == pytest.approx((2.5, 2.5))
     assert found.within_errors
-    assert lockstep(apart, data, np.ones(2), ones) == []
+    assert lockstep(apart, data, np.ones(2), ones, **LIMITS) == []
