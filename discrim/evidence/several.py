@@ -15,6 +15,7 @@ import numpy as np
 from discrim.evidence.distributions import chi2_tail, f_tail, normal_of_tail
 from discrim.evidence.score import basis, without
 from discrim.evidence.unknown_scale import scale_weights
+from discrim.evidence.unknown_variances import added_variance
 from discrim.fit.measurements import Scale
 from discrim.fit.problem import Problem, Solution
 
@@ -56,7 +57,19 @@ def several(
         own = np.einsum("sq,sq->s", turned, turned)
         k_all = np.einsum("sq,sq->s", k, k) - twice * cross**2 / (1.0 + twice * own)
     else:
-        k_all = (np.where(seen, along, 0.0) ** 2).sum(axis=1)
+        along = np.where(seen, along, 0.0)
+        k_all = (along**2).sum(axis=1)
+        if data.scale is Scale.REPLICATES and data.patterns and problem.measured:
+            # variances of the observations that were estimated (see `unknown_variances`)
+            turn = (
+                vt / np.where(seen, s, 1.0)[:, :, None] / np.where(whole > 0, whole, 1.0)[:, None]
+            )
+            turn = np.where(seen[:, :, None], turn, 0.0)
+            extra = turn @ added_variance(problem, solution, pick) @ np.swapaxes(turn, 1, 2)
+            usable = np.isfinite(extra).all(axis=(1, 2))
+            extra = np.where(usable[:, None, None], extra, 0.0)
+            weighed = np.linalg.solve(np.eye(len(s[0])) + extra, along[:, :, None])[:, :, 0]
+            k_all = np.where(usable, (along * weighed).sum(axis=1), np.nan)
     tail = _tail(problem, solution, k_all, np.maximum(q, 1), p)
     z = normal_of_tail(np.minimum(tail, 1.0) / 2)
     z = np.where(finite & (q > 0) & np.isfinite(tail), z, np.nan)

@@ -10,7 +10,10 @@ from __future__ import annotations
 import numpy as np
 import pytest
 import sympy
+from scipy import stats
 
+from discrim.evidence.score import score
+from discrim.evidence.several import several
 from discrim.evidence.unknown_scale import scale_weights
 from discrim.evidence.unknown_variances import added_variance
 from discrim.fit.engine import solve
@@ -95,3 +98,20 @@ def test_one_variance_under_equal_errors() -> None:
     c = scale_weights(p, sol, [1])[0, 0]
     assert c != 0
     assert added_variance(p, sol, [1])[0, 0, 0] == pytest.approx(2 * 9 * c**2, rel=1e-9)
+
+
+@pytest.mark.parametrize("together", [False, True])
+def test_several_constants_at_once(together: bool) -> None:
+    """K = S' (I + D' A^-1 D)^-1 S by plain matrix algebra; of one constant the square of its z."""
+    p = problem(BENT, 6, together=together, relative=0.3, absolute=0.0)
+    tested = [1, 2]
+    sol = solve(p, np.array([[1.0, 0.1, 0.5]]), fixed=np.array([[False, True, True]]))
+    g, r = sol.jacobian[0], sol.residual[0]
+    own = g[:, tested] - g[:, :1] @ np.linalg.lstsq(g[:, :1], g[:, tested], rcond=None)[0]
+    added = added_variance(p, sol, tested)[0]
+    assert np.linalg.eigvalsh(added)[-1] > 0.01 * np.linalg.eigvalsh(own.T @ own)[-1]
+    k = (own.T @ r) @ np.linalg.solve(own.T @ own + added, own.T @ r)
+    tail = stats.f.sf(k / 2, 2, p.data.scale_df)
+    assert several(p, sol, tested)[0][0] == pytest.approx(stats.norm.isf(tail / 2), rel=1e-6)
+    one = solve(p, np.array([[1.0, 0.4, 0.5]]), fixed=np.array([[False, False, True]]))
+    assert several(p, one, [2])[0][0] == pytest.approx(abs(score(p, one, 2).z[0]), rel=1e-6)
