@@ -19,6 +19,8 @@ KINDS = {
     "guaranteed": "every value that hard bounds on all measurements allow",
 }
 
+#: the head of the last column: what a constant stands for, or the formula of a quantity
+MEANING = "Meaning"
 NOT_COMPUTED = "not computed"
 
 
@@ -55,7 +57,7 @@ def constants(
             ("Standard error", True),
             ("Units", False),
             *((kind.capitalize(), True) for kind in KINDS),
-            ("Remark", False),
+            (MEANING, False),
         ]
         note = " ".join([f"Intervals at {level}.", *_remarks(said)])
         gone = [i for i in range(len(heads)) if all(row[i] == NOT_COMPUTED for row in rows)]
@@ -116,7 +118,7 @@ def power_of(values: Sequence[float | None]) -> int:
     power = math.floor(math.log10(first if first > 1e-6 * max(known) else max(known)))
     # ends below 0.001 would be written with a power of their own beside a value without one
     small = any(1e-4 * first < x < 1e-3 for x in known)
-    return 0 if (-3 <= power < 5 and not small) or abs(power) > 290 else power
+    return 0 if (-2 <= power < 5 and not small) or abs(power) > 290 else power
 
 
 def by_power(power: int, x: float | None) -> float | None:

@@ -15,6 +15,7 @@ from discrim.report.formulas import safe_mathml
 from discrim.report.read import Document
 
 _EXPONENT = re.compile(r"(?<![\w.])(\d+(?:\.\d+)?)e(-?)(\d+)\b")
+_RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _MINUS = re.compile(r"(?<![\w.)])-(?=[\d.])")
 
 
@@ -28,6 +29,7 @@ def page(document: Document, pictures: Sequence[Picture] = ()) -> str:
         lstrip_blocks=True,
     )
     environment.filters["number"] = numeral
+    environment.filters["units"] = lambda text: Markup(numeral(text).removeprefix("1 × "))
     environment.filters["mathml"] = lambda text: Markup(safe_mathml(text))
     environment.filters["slug"] = slug
     content = build(document)
@@ -53,7 +55,7 @@ def _place(name: str) -> str:
 def numeral(text: str) -> Markup:
     """A number as print sets it: ``1.2e-5`` as 1.2 × 10⁻⁵, a true minus sign."""
     out = _EXPONENT.sub(
-        lambda m: f"{m[1]} × 10<sup>{'−' if m[2] else ''}{m[3]}</sup>", str(escape(text))
+        lambda m: f"{m[1]} × 10{(m[2] + m[3]).translate(_RAISED)}", str(escape(text))
     )
     return Markup(_MINUS.sub("−", out))
 

@@ -13,6 +13,7 @@ from discrim.report.table import Table
 from discrim.report.wrapping import wrap
 
 WIDTH = 80
+NARROWEST = 14  # characters of the first column of a table, where names take several lines
 
 _ASCII = {
     "–": "-", "—": "-", "−": "-", "“": '"', "”": '"', "‘": "'", "’": "'", "·": "*", "×": "x",
@@ -139,7 +140,7 @@ class Paper:
             for i in range(len(keep))
         ]
         over = indent + sum(widths) + 2 * (len(widths) - 1) - self.width
-        if over > 0 and widths[0] - over < 16:
+        if over > 0 and widths[0] - over < NARROWEST:
             self._blocks(heads, rows, indent)
             return
         if over > 0:  # the names take more lines

@@ -18,6 +18,9 @@ from discrim.report.numbers import (
 )
 from discrim.report.table import Table, make
 
+#: columns that only name or order runs, and have no error
+LABELS = ("run", "run order", "group")
+
 
 def outcome(candidate: Any) -> str:
     """``stands``, ``rejected``, or why there is neither."""
@@ -125,7 +128,7 @@ def columns(runs: Mapping[str, Any]) -> Table | None:
                 read.text(c, "units"),
                 _error(c),
                 read.text(c, "origin"),
-                read.text(c, "basis") if declared else "",
+                read.text(c, "basis") if declared and read.text(c, "is") not in LABELS else "",
             ]
         )
     heads = [

@@ -9,6 +9,7 @@ from typing import Any
 from discrim.report import read, tables
 from discrim.report.answers import Answer
 from discrim.report.cases import Case
+from discrim.report.constants import MEANING
 from discrim.report.content import Content, build
 from discrim.report.laws import Law, laws_of
 from discrim.report.numbers import MISSING, count, factor, number
@@ -114,7 +115,18 @@ def _candidates(paper: Paper, content: Content) -> None:
         return
     paper.heading("Candidates")
     has_aicc = content.criteria is not None and "AICc" in content.criteria.heads
-    paper.table(content.criteria, drop=[h for h in _WIDE if h != "AIC" or has_aicc])
+    shared = ", shared"
+    criteria = content.criteria
+    starred = criteria is not None and any(row[-1].endswith(shared) for row in criteria.rows)
+    if criteria is not None and starred:
+        # the word would make the table too wide to stand as one
+        criteria = replace(
+            criteria, rows=tuple((*row[:-1], row[-1].replace(shared, "*")) for row in criteria.rows)
+        )
+    paper.table(criteria, drop=[h for h in _WIDE if h != "AIC" or has_aicc])
+    if starred:
+        paper.blank()
+        paper.say("* of one law under several names, weighed once", indent=2)
     if "Remark" in table.heads:
         i = table.heads.index("Remark")
         notes = [f"{row[0]}: {row[i]}" for row in table.rows if row[i]]
@@ -141,13 +153,13 @@ def _constants(paper: Paper, content: Content) -> None:
     shown = [t for t in content.constants if t.title in standing] or list(content.constants)
     for table in shown[:3]:
         paper.heading(f"Constants, {table.title}")
-        paper.turned(table, drop=("Remark",))
+        paper.turned(table, drop=(MEANING,))
     if len(shown) > 3:
         paper.say(f"Constants of {len(shown) - 3} more candidates are in the report.", indent=2)
     for table in [t for t in content.reported if t.title in standing][:3]:
         paper.heading(f"Quantities, {table.title}")
         valued = _with_values(table)
-        paper.turned(valued, drop=("Remark",))
+        paper.turned(valued, drop=(MEANING,))
         if valued.rows:
             paper.blank()
         paper.bullets([f"{row[0]}: {row[-1]}" for row in table.rows])

@@ -75,7 +75,7 @@ def test_remarks_on_intervals_stand_once_below_the_table() -> None:
     constants = [{"name": n, "value": 1.5, "intervals": ends, "interval_notes": notes}
                  for n in ("k_1", "k_2")]  # fmt: skip
     (table,) = build({"candidates": [{"name": "c", "constants": constants}]}).constants
-    assert "Remark" not in table.heads
+    assert "Meaning" not in table.heads
     assert table.note.count("Guaranteed: an outer bound.") == 1
 
 
