@@ -58,7 +58,14 @@ class Whitener:
             for k, v in enumerate(cov):
                 chol[k], good = _cholesky(v)
                 self.ok[k] &= good
-        self._inverse = np.linalg.inv(chol)
+        try:
+            self._inverse = np.linalg.inv(chol)
+        except np.linalg.LinAlgError:
+            # variances so far apart that a pivot underflows: a trial step far from any fit
+            self._inverse = np.empty_like(chol)
+            for k, v in enumerate(chol):
+                self._inverse[k], good = _inverted(v)
+                self.ok[k] &= good
         if silent.any():
             self._inverse = np.where(silent[:, :, None], 0.0, self._inverse)
 
@@ -112,3 +119,10 @@ def _cholesky(v: np.ndarray) -> tuple[np.ndarray, bool]:
             return np.linalg.cholesky(v + jitter * np.eye(len(v))), True
         except np.linalg.LinAlgError:
             return np.eye(len(v)), False
+
+
+def _inverted(v: np.ndarray) -> tuple[np.ndarray, bool]:
+    try:
+        return np.linalg.inv(v), True
+    except np.linalg.LinAlgError:
+        return np.eye(len(v)), False

@@ -11,6 +11,8 @@ from dataclasses import replace
 
 from discrim.errors import DiscrimError
 from discrim.fit.responses import Estimate, estimate
+from discrim.runs.build import listed
+from discrim.runs.model import ErrorBasis
 from discrim.weigh.bench import Bench
 from discrim.weigh.bind import Bound
 from discrim.weigh.errors_of import with_errors
@@ -33,8 +35,10 @@ def with_estimated_errors(
     Raises
     ------
     DiscrimError
-        When no candidate leaves enough runs to estimate the errors from.
+        When no candidate leaves enough runs to estimate the errors from, or a column whose error is
+        not stated holds nothing but zeros.
     """
+    _check_some_rate(bench)
     unknown, stated = bench.unknown, bench.stated
     if unknown is None or stated is None:
         return bench
@@ -57,10 +61,24 @@ def with_estimated_errors(
     )
 
 
+def _check_some_rate(bench: Bench) -> None:
+    """Nothing but zeros is a result where the error is stated, and says nothing of an unknown one."""
+    y = bench.measurements.y
+    for k, column in enumerate(bench.responses):
+        seen = y[bench.response == k]
+        if column.basis is ErrorBasis.ESTIMATED and len(seen) and not seen.any():
+            raise DiscrimError(
+                f'"{column.name}" is 0 in every run, and its error is not stated',
+                place=column.place,
+                do="An error cannot be estimated from zeros. State it, for example as the smallest "
+                "rate that would have been seen.",
+            )
+
+
 def _too_few(bench: Bench, tried: Sequence[Estimate | None]) -> DiscrimError:
     assert bench.unknown is not None
     missing = [c for c, is_open in zip(bench.responses, bench.unknown.open, strict=True) if is_open]
-    names = " and ".join(f'"{c.name}"' for c in missing)
+    names = listed([c.name for c in missing])
     if all(e is None for e in tried):
         return DiscrimError(
             f"the errors of {names} are not stated, and no candidate could be fitted to estimate them",
@@ -70,8 +88,8 @@ def _too_few(bench: Bench, tried: Sequence[Estimate | None]) -> DiscrimError:
     more = ""
     if bench.unknown.together:
         more = (
-            ' Beside their covariance: take between_responses = "unknown" out, to estimate a variance '
-            "for each alone."
+            ' Or take between_responses = "unknown" out: a variance for each column, without their '
+            "covariance, needs fewer runs."
         )
     return DiscrimError(
         f"the errors of {names} are not stated, and the runs are too few to estimate them beside the "

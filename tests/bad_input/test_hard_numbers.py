@@ -53,6 +53,10 @@ def test_nothing_but_zeros(desk: Desk) -> None:
     assert document["questions"][0]["verdict"] == "undecided"
     none = rows(*(f"{i},0,0,x,{i}" for i in range(1, 7)))
     assert weighed(desk, ALL_RUNS, none)["questions"][0]["verdict"] == "undecided"
+    desk.write(NO_ERROR, table)  # zeros say nothing of an error that is not stated
+    code, _, err = desk.run("weigh", "study.toml")
+    assert code == 2
+    assert '"rate" is 0 in every run, and its error is not stated' in err
 
 
 @pytest.mark.parametrize("study", [ALL_RUNS, NO_ERROR, ONE_CONSTANT], ids=["two", "free", "one"])
