@@ -302,7 +302,8 @@ def _solved(
     member = np.repeat(np.arange(s), g)
     problem = _repeated(problem, member)
     start = solution.theta[member].copy()
-    jac = solution.jacobian
+    # where the law is not finite a point is ruled out by its objective
+    jac = np.where(np.isfinite(solution.jacobian), solution.jacobian, 0.0)
     rest = np.flatnonzero(~fixed)
     moved = points - solution.theta[:, None, pick]
     if len(rest):  # how the others follow

@@ -45,7 +45,8 @@ def scale_weights(problem: Problem, sol: Solution, tested: Sequence[int]) -> np.
             squared = (inverse @ inverse) * same
             d -= np.einsum("sn,snk,skp->sp", u, squared, du)
     pick = list(tested)
-    g_l = np.delete(sol.jacobian, pick, axis=2)
+    # a solution where the law is not finite is ruled out by its objective
+    g_l = np.delete(np.where(np.isfinite(sol.jacobian), sol.jacobian, 0.0), pick, axis=2)
     d_l = np.delete(d, pick, axis=1)
     # regression of the tested columns on the nuisance columns, by the pseudo-inverse of scaled ones
     norms = np.sqrt(np.einsum("snk,snk->sk", g_l, g_l))

@@ -48,7 +48,8 @@ def added_variance(problem: Problem, sol: Solution, tested: Sequence[int]) -> np
         for j, e in enumerate(patterns):
             a[:, k, j] = 0.5 * np.einsum("snk,kn->s", w, e)
     pick = list(tested)
-    g_l = np.delete(sol.jacobian, pick, axis=2)
+    # a solution where the law is not finite is ruled out by its objective
+    g_l = np.delete(np.where(np.isfinite(sol.jacobian), sol.jacobian, 0.0), pick, axis=2)
     norms = np.sqrt(np.einsum("snk,snk->sk", g_l, g_l))
     norms = np.where(norms > 0, norms, 1.0)
     pinv = np.linalg.pinv(g_l / norms[:, None, :], rcond=RANK)
