@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from discrim.errors import DiscrimError
 from discrim.evidence.criteria import weights
 from discrim.evidence.pairs import Pairs
+from discrim.evidence.rivals import Standing
 from discrim.fit.fit import Fit
+from discrim.fit.measurements import Measurements
 from discrim.fit.responses import Estimate
 from discrim.runs.keeping import with_kept
 from discrim.study.lookup import unused_constants
@@ -22,9 +24,10 @@ from discrim.weigh.asked_constants import (
     answer_constants,
 )
 from discrim.weigh.assess import Assessment, assess
-from discrim.weigh.bench import build
-from discrim.weigh.bind import bind
+from discrim.weigh.bench import Bench, build
+from discrim.weigh.bind import Bound, bind
 from discrim.weigh.compared import comparisons, inseparable, no_better, pairs_of
+from discrim.weigh.findings import findings_of
 from discrim.weigh.fitted import (
     common_scale,
     fits_of,
@@ -38,7 +41,7 @@ from discrim.weigh.left_out import Situation, hanging, left_out
 from discrim.weigh.magnitudes import magnitudes
 from discrim.weigh.margins import with_margins
 from discrim.weigh.prepare import prepare
-from discrim.weigh.reported import reported_of
+from discrim.weigh.reported import ReportedValue, reported_of
 from discrim.weigh.sameness import Relations, relations
 from discrim.weigh.variances import with_estimated_errors
 from discrim.weigh.weighed import Weighed
@@ -89,59 +92,16 @@ def _run(
     laws, bench, bounds = prepare(study)
     level, alpha = study.level, 1.0 - study.level
     n = len(laws)
-    data = bench.measurements
-    if data.n == 0:
+    if bench.measurements.n == 0:
         raise DiscrimError(
             f"no run in {study.runs.file} has a measured rate",
             do="`discrim check` judges a planned table; `discrim weigh` needs measured rates.",
         )
     bench = with_estimated_errors(bench, bounds, [c.law.name for c in laws], seed=seed)
-    data = bench.measurements
     related = relations(bounds, study)
-    fits: list[dict[str, Fit]] = []
-    for i, b in enumerate(bounds):
-        say("fitting", i, n)
-        fits.append(fits_of(b, data, seed=seed))
-    fits = no_larger_law_worse(bounds, fits, related, study, seed)
-    shared = common_scale(fits, data)
-    common_fits = [on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
-    common = shared.as_origin(next(iter(fits[0])))
-    assessed: dict[int, Assessment] = {}
-    stands: list[bool] = []
-    for again in range(RESTARTS + 1):
-        say("comparing rivals", 0, 1)
-        readings, now = standings(common_fits, related, alpha, seed)
-        for i, b in enumerate(bounds):
-            if i in assessed and now[i] == stands[i]:
-                continue
-            say("intervals", i, n)
-            assessed[i] = assess(
-                b,
-                bench,
-                fits[i],
-                level=level,
-                common=common,
-                common_fit=common_fits[i][0],
-                stands=now[i],
-            )
-        stands = now
-        # a profile that goes below the optimum: the starts had missed it
-        below = {i: a.below for i, a in assessed.items() if a.below is not None}
-        if not below or again == RESTARTS:
-            break
-        before = list(fits)
-        for i, theta in below.items():
-            new = fits_of(bounds[i], data, seed=seed, near=theta[None])
-            if any(f.badness < fits[i][origin].badness for origin, f in new.items()):
-                fits[i] = new
-        fits = no_larger_law_worse(bounds, fits, related, study, seed)
-        for i, b in enumerate(bounds):
-            if fits[i] is not before[i]:
-                common_fits[i] = on_common(b, fits[i], shared, data, seed)
-                del assessed[i]
-        if len(assessed) == n:
-            break
-    assessments = [assessed[i] for i in range(n)]
+    settled = _settled(study, bench, bounds, related, seed, say)
+    fits, common_fits, stands = settled.fits, settled.common_fits, settled.stands
+    assessments, readings, common = settled.assessments, settled.readings, settled.common
     in_use = [
         f.ok and not any((j, i) in related.same for j in range(i))
         for i, f in enumerate(a.fit for a in assessments)
@@ -198,51 +158,122 @@ def _run(
         say("taking pathways out", 0, 1)
         own = [a.fit for a in assessments]
         without = knock_outs(laws, bounds, own, stands, bench, common, level=level, seed=seed)
-    from discrim.weigh.findings import findings_of
-
+    reported: tuple[tuple[ReportedValue, ...], ...] = ()
+    if study.reported:
+        say("quantities of the constants", 0, 1)
+        every = zip(laws, bounds, assessments, stands, strict=True)
+        reported = tuple(reported_of(study, bench, c, b, a, stands=s) for c, b, a, s in every)
     weighed = Weighed(
-        study,
-        bench,
-        tuple(laws),
-        tuple(bounds),
-        tuple(assessments),
-        related,
-        tuple(readings[0]),
-        tuple(stands),
-        tuple(w),
-        tuple(rank),
-        inseparable(common_fits, related, stands),
-        no_better(compared, stands, alpha),
-        tuple(compared),
-        tuple(answers),
-        common,
-        (),
-        seed,
-        without,
+        study=study,
+        bench=bench,
+        laws=tuple(laws),
+        bounds=tuple(bounds),
+        assessments=tuple(assessments),
+        relations=related,
+        standings=tuple(readings[0]),
+        stands=tuple(stands),
+        weights=tuple(w),
+        rank=tuple(rank),
+        inseparable=inseparable(common_fits, related, stands),
+        no_better=no_better(compared, stands, alpha),
+        comparisons=tuple(compared),
+        answers=tuple(answers),
+        common=common,
+        findings=(),
+        seed=seed,
+        knock_outs=without,
+        adequacy=adequacies(bench, bounds, [a.fit for a in assessments], stands, seed),
         left_out=singly,
         pairs=two_at_a_time,
-        adequacy=adequacies(bench, bounds, [a.fit for a in assessments], stands, seed),
-    )
-    weighed = replace(weighed, magnitudes=magnitudes(weighed))
-    weighed = replace(
-        weighed,
+        reported=reported,
         of_constants={
             k: answer_constants(q, study, bench, laws, bounds, fits, stands, seed=seed)
             for k, q in enumerate(study.questions)
             if q.asks in ASKED
         },
     )
-    if study.reported:
-        say("quantities of the constants", 0, 1)
-        every = zip(laws, bounds, assessments, stands, strict=True)
-        weighed = replace(
-            weighed,
-            reported=tuple(reported_of(study, bench, c, b, a, stands=s) for c, b, a, s in every),
-        )
+    weighed = replace(weighed, magnitudes=magnitudes(weighed))
     names = {name.split("[")[0] for b in bounds for name in b.names}
     names |= {c.name for law in laws for c in law.law.constants}
     unused = unused_constants(study, names | set(bench.known))
     return replace(weighed, findings=findings_of(weighed, unused))
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Settled:
+    """The fits of all candidates when no profile goes below them any more, and what follows.
+
+    Attributes
+    ----------
+    fits : of each candidate, by reading of the errors of conditions
+    common_fits : the same with one scale for all candidates, a list of readings each
+    readings : which laws stand and why, under each reading; stands : under any of them
+    common : the measurements with that scale, under the first reading
+    """
+
+    fits: list[dict[str, Fit]]
+    common_fits: list[list[Fit]]
+    readings: list[list[Standing]]
+    stands: list[bool]
+    assessments: list[Assessment]
+    common: Measurements
+
+
+def _settled(
+    study: Study,
+    bench: Bench,
+    bounds: Sequence[Bound],
+    related: Relations,
+    seed: int,
+    say: Progress,
+) -> Settled:
+    """Fit, see which laws stand, and assess; again from wherever a profile found a better fit."""
+    n = len(bounds)
+    data = bench.measurements
+    fits: list[dict[str, Fit]] = []
+    for i, b in enumerate(bounds):
+        say("fitting", i, n)
+        fits.append(fits_of(b, data, seed=seed))
+    fits = no_larger_law_worse(bounds, fits, related, study, seed)
+    shared = common_scale(fits, data)
+    common_fits = [on_common(b, f, shared, data, seed) for b, f in zip(bounds, fits, strict=True)]
+    common = shared.as_origin(next(iter(fits[0])))
+    assessed: dict[int, Assessment] = {}
+    stands: list[bool] = []
+    for again in range(RESTARTS + 1):
+        say("comparing rivals", 0, 1)
+        readings, now = standings(common_fits, related, 1.0 - study.level, seed)
+        for i, b in enumerate(bounds):
+            if i in assessed and now[i] == stands[i]:
+                continue
+            say("intervals", i, n)
+            assessed[i] = assess(
+                b,
+                bench,
+                fits[i],
+                level=study.level,
+                common=common,
+                common_fit=common_fits[i][0],
+                stands=now[i],
+            )
+        stands = now
+        # a profile that goes below the optimum: the starts had missed it
+        below = {i: a.below for i, a in assessed.items() if a.below is not None}
+        if not below or again == RESTARTS:
+            break
+        before = list(fits)
+        for i, theta in below.items():
+            new = fits_of(bounds[i], data, seed=seed, near=theta[None])
+            if any(f.badness < fits[i][origin].badness for origin, f in new.items()):
+                fits[i] = new
+        fits = no_larger_law_worse(bounds, fits, related, study, seed)
+        for i, b in enumerate(bounds):
+            if fits[i] is not before[i]:
+                common_fits[i] = on_common(b, fits[i], shared, data, seed)
+                del assessed[i]
+        if len(assessed) == n:
+            break
+    return Settled(fits, common_fits, readings, stands, [assessed[i] for i in range(n)], common)
 
 
 def _without_run(
