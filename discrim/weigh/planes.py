@@ -5,6 +5,7 @@ Two runs whose bands are nearly parallel cross nowhere in particular: that pictu
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -49,12 +50,14 @@ def _pair(w: Weighed, i: int) -> tuple[int, int]:
     return 0, 1
 
 
-def _range(w: Weighed, i: int, j: int) -> tuple[float, float]:
+def _range(
+    w: Weighed, i: int, j: int, kinds: Sequence[str] = ("reconciled", "profile", "guaranteed")
+) -> tuple[float, float]:
     a = w.assessments[i]
     x = float(a.fit.theta[j])
     lo_b, hi_b = float(a.bound.predictor.lower[j]), float(a.bound.predictor.upper[j])
     ends = [x]
-    for kind in ("reconciled", "profile", "guaranteed"):
+    for kind in kinds:
         it = a.intervals[j].get(kind)
         if it is not None and not it.empty:
             ends += [e for e in (it.low.value, it.high.value) if np.isfinite(e)]
@@ -99,7 +102,8 @@ def _plane(w: Weighed, i: int) -> dict[str, Any]:
                 "high": _crossings(xs, ys, f[:, :, k], target + 2 * sd[row]),
             }
         )
-    gx, gy = np.linspace(x0, x1, GRID), np.linspace(y0, y1, GRID)
+    # a region that is thin beside a wide guaranteed range would fall between the points
+    gx, gy = (np.linspace(*_range(w, i, j, ("reconciled", "profile")), GRID) for j in (jx, jy))
     theta = np.tile(fit.theta, (GRID * GRID, 1))
     theta[:, jx] = np.tile(gx, GRID)
     theta[:, jy] = np.repeat(gy, GRID)
