@@ -368,13 +368,17 @@ def check(document: Document, *, width: int = WIDTH, colour: bool = False) -> st
     return str(paper)
 
 
+def _or(shown: str, none: str) -> str:
+    return none if shown == MISSING else shown
+
+
 def _conditioning(paper: Paper, item: Any) -> None:
     paper.heading(read.text(item, "name", "unnamed"))
     if read.text(item, "law"):
         paper.say(tables.equation(read.text(item, "law")), indent=2, hang=6)
     paper.pairs([
-        ("condition number", factor(read.value(item, "condition_number"))),
-        ("digits lost", number(read.value(item, "digits_lost"), 2)),
+        ("condition number", _or(factor(read.value(item, "condition_number")), "infinite")),
+        ("digits lost", _or(number(read.value(item, "digits_lost"), 2), "all")),
     ])  # fmt: skip
     lines = read.texts(item, "words")
     lines += [read.text(t, "words") for t in read.records(item, "trade_offs")]
