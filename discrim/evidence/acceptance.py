@@ -12,9 +12,11 @@ from discrim.evidence.distributions import (
     t_quantile,
 )
 from discrim.evidence.score import NO_INFORMATION
+from discrim.fit.covariance import Whitener
 from discrim.fit.fit import Fit
 from discrim.fit.freedom import on_bounds
 from discrim.fit.measurements import Scale
+from discrim.fit.problem import Solution
 
 # The guard of the reconciled set: this share of 1 - confidence is left to the objective alone. It is there
 # for values so far off that the conditions are reconciled to where the score says nothing; the objective
@@ -65,7 +67,9 @@ class Acceptance:
         self.fit, self.level, self.lower, self.psi = fit, level, lower, psi
         self.known = fit.data.scale is not Scale.ESTIMATED
         self.limit = quantile(fit, level) ** 2
-        self.spend = guard_level(1.0 - level) if fit.data.scale is Scale.STATED else 0.0
+        self.held = self._held_variance() if fit.problem.joint_scale else 0.0
+        guarded = self.known or fit.problem.joint_scale
+        self.spend = guard_level(1.0 - level) if guarded else 0.0
         alpha = 1.0 - level
         self.two = normal_quantile(1.0 - (alpha - self.spend) / 2)
         self.one = normal_quantile(1.0 - (alpha - self.spend))
@@ -81,7 +85,10 @@ class Acceptance:
             self.s2 = base / dof
         # A limit on the objective of a restricted fit. Stated scale: chi-squared. Unknown scale and
         # exact conditions: the joint region of all constants (Beale, J. R. Stat. Soc. B 22 (1960)
-        # 41), which never binds for a linear law, so nothing is spent on it. Else void.
+        # 41), which never binds for a linear law, so nothing is spent on it. A variance from replicates:
+        # F. A variance estimated beside errors of conditions: the objective with that of the fit, held,
+        # by F as if the two were independent; they are nearly the same where the value is true, so next
+        # to nothing is spent, and what fits many times worse is still excluded.
         self.guard, self.unit = np.inf, 1.0
         self.guards = self.alone = np.full(p, np.inf)
         if fit.data.scale is Scale.STATED:
@@ -94,6 +101,18 @@ class Acceptance:
             self.alone = np.minimum(alone, self.guards)
             self.guard = float(self.guards[-1])
             self.unit = max(float(self.guards[0]), 1.0)
+        elif self.known or (fit.problem.joint_scale and dof > 0):
+            df = np.maximum(n - (p - 1) + np.arange(p), 1)
+            joint = fit.problem.joint_scale
+            below = float(dof) if joint else float(fit.data.scale_df)
+            unit = max(float(self._scatter(fit.solution)[0]) / dof, 1.0) if joint else 1.0
+            each = np.array([d * f_quantile_upper(self.spend, d, below) for d in df])
+            self.guards = self.alone = unit * each
+            if not joint:
+                alone = np.array([d * f_quantile_upper(1.0 - self.level, d, below) for d in df])
+                self.alone = np.minimum(alone, self.guards)
+            self.guard = float(self.guards[-1])
+            self.unit = max(float(self.guards[0]), 1.0)
         elif free and dof > 0 and base > 0:
             f = f_quantile_upper(min(FAR, 0.2 * (1.0 - self.level)), p, dof)
             self.guard = self.unit = base * (1.0 + p * f / dof)
@@ -102,16 +121,35 @@ class Acceptance:
     @property
     def hopeless(self) -> float:
         """An objective from which no way leads to a value that any of the sets accepts."""
-        if not np.isfinite(self.guard):
+        if not np.isfinite(self.guard) or self.fit.problem.joint_scale:
             return float("inf")
         return float(4.0 * max(self.guard, self.base + self.limit * self.s2))
 
-    def _q_ok(self, pts: Points) -> np.ndarray:
+    def guarded(self, pts: Points) -> np.ndarray:
+        """Margins of the guard alone, shape (S,): negative where the objective excludes a value."""
         with np.errstate(invalid="ignore"):
             untestable = pts.score.information <= NO_INFORMATION
             k = self._on_bounds(pts)
-            margin = np.where(untestable, self.alone[k], self.guards[k]) - pts.objective
+            q = self._scatter(pts.solution) if self.fit.problem.joint_scale else pts.objective
+            margin = np.where(untestable, self.alone[k], self.guards[k]) - q
         return np.where(np.isfinite(pts.objective), margin, -np.inf)
+
+    def _held_variance(self) -> float:
+        """The variance of the fit, kept off zero: conditions may carry no error in some run."""
+        return max(self.fit.scale2, 1e-9 * float(np.var(self.fit.data.y)), 1e-300)
+
+    def _scatter(self, sol: Solution) -> np.ndarray:
+        """The objective with the variance of the fit in place of each point's own, shape (S,)."""
+        v = np.array(sol.covariance)
+        shift = self.held - sol.scale2
+        if v.ndim == 2:
+            v += shift[:, None]
+        else:
+            k = np.arange(v.shape[1])
+            v[:, k, k] += shift[:, None]
+        white = Whitener(v)
+        r = white.vector(sol.error)
+        return np.where(white.ok, np.einsum("sn,sn->s", r, r), np.inf)
 
     def _on_bounds(self, pts: Points) -> np.ndarray:
         """How many of the other constants are on a bound at each point, shape (S,)."""
@@ -141,8 +179,8 @@ class Acceptance:
         m = np.where(np.isfinite(m), m, np.inf if not self.known else -np.inf)
         if not np.isfinite(self.guard):
             return m
-        scaled = self._q_ok(pts) / self.unit
+        scaled = self.guarded(pts) / self.unit
         return np.minimum(m, np.where(np.isfinite(scaled), 10.0 * scaled, -np.inf))
 
     def fits_somewhere(self, pts: Points) -> bool:
-        return bool((self._q_ok(pts) > 0).any())
+        return bool((self.guarded(pts) > 0).any())
