@@ -1,6 +1,7 @@
 """Imports run one way, down the list of layers; the command line starts without numerical libraries."""
 
 import ast
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -41,6 +42,30 @@ def test_imports_run_down_the_layers():
             if LAYERS.index(other) > LAYERS.index(layer):
                 wrong.append(f"{path.relative_to(PACKAGE)}:{line} imports {other}")
     assert not wrong
+
+
+def test_fits_and_evidence_know_of_chemistry_only_the_seam():
+    chemistry = {"units", "mechanism", "ratelaw", "runs"}
+    wrong = [
+        f"{path.relative_to(PACKAGE)}:{line} imports {other}"
+        for layer in ("fit", "evidence")
+        for path in sorted((PACKAGE / layer).glob("*.py"))
+        for other, line in imported(path)
+        if other in chemistry
+    ]
+    assert not wrong
+
+
+def test_the_map_names_every_module():
+    text = (PACKAGE.parent / "DEVELOPERS.md").read_text(encoding="utf-8")
+    map_ = text.partition("## Map")[2].partition("\n## ")[0]
+    named = set(re.findall(r"`([a-z_]+)`", map_))
+    stems = {
+        path.stem
+        for path in PACKAGE.glob("*/*.py")
+        if path.parent.name != "cli" and not path.stem.startswith("_")
+    }
+    assert not stems - named
 
 
 @pytest.mark.parametrize("argument", ["--version", "--help"])
