@@ -14,10 +14,10 @@ import numpy as np
 import pytest
 from sympy import Expr, sqrt
 
-from discrim.weigh.cleared_law import cleared_law
 from discrim.evidence.guaranteed import guaranteed
 from discrim.evidence.intervals import Interval
 from discrim.fit.measurements import OBSERVATION, Measurements, Scale, source
+from discrim.weigh.cleared_law import cleared_law
 from tests.reference.outside import predictor, symbols
 
 k1, k2, A, B = symbols("k1 k2 A B")
