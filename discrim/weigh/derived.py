@@ -21,7 +21,8 @@ def law_keys(c: CandidateLaw) -> dict[str, Any]:
     """The keys of a candidate that come from its law alone."""
     out = _of_law(c.law)
     place = c.candidate.place
-    out["place"] = f"{place.file}, line {place.line}" if place.line else place.file
+    file = Path(place.file).name  # the same from any folder
+    out["place"] = f"{file}, line {place.line}" if place.line else file
     if c.candidate.law_text:
         out["as_written"] = c.candidate.law_text
     return out

@@ -142,3 +142,13 @@ def test_own_files_beside_the_results_are_kept(desk: Desk) -> None:
     assert (code, err) == (0, "")
     assert (desk.folder / "results" / "study" / "notes.txt").read_text() == "mine"
     assert [p.name for p in (desk.folder / "results").iterdir()] == ["study"]
+
+
+def test_records_name_no_folder_of_this_machine(desk: Desk) -> None:
+    """A study named by its whole path gives the same record as one named from beside it."""
+    code, beside, err = desk.run("derive", "study.toml", "--json")
+    assert (code, err) == (0, "")
+    code, whole, err = desk.run("derive", str(desk.folder / "study.toml"), "--json")
+    assert (code, err) == (0, "")
+    assert '"study.toml, line ' in whole
+    assert whole == beside
