@@ -10,10 +10,9 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
+from discrim.verdict.rejection import rejection
 from discrim.verdict.thresholds import (
-    ASSUMED_SPREAD,
     CONDITIONING_FRACTION,
-    ERROR_MARGIN,
     FEW_RUNS,
     MOST_WEAK,
     NOTHING_APART,
@@ -73,36 +72,16 @@ def vote_on_value(c: ValueFacts, alpha: float) -> tuple[str, list[str]]:
         return "", []
     if c.untestable or not c.readings:
         return "undecided", [c.untestable or f"“{c.name}”: the test could not be computed"]
-    stops: list[str] = []
-    rejects = [r.p < alpha for r in c.readings]
-    if all(rejects):
-        for r in c.readings:
-            if not c.exact_conditions and r.margin < ERROR_MARGIN:
-                stops.append(
-                    f"with “{c.name}” the test would fail if the condition errors were "
-                    f"{r.margin:.2g} times as large as stated (at least {ERROR_MARGIN:g} is asked)"
-                )
-                break
-        most = max(r.weak for r in c.readings)
-        if most > MOST_WEAK:
-            stops.append(
-                f"in “{c.name}” {most} combinations of the other constants are in lockstep with one "
-                f"another within the errors of the conditions (the test allows for {MOST_WEAK})"
-            )
-        weakest = min(r.information for r in c.readings)
-        if c.assumed_errors and weakest < ASSUMED_SPREAD:
-            stops.append(
-                f"the error of {listed(c.assumed_errors)} was only assumed, and over these runs the "
-                f"difference shows on its own in {percent(weakest)} of the sensitivity (at least "
-                f"{percent(ASSUMED_SPREAD)} is asked)"
-            )
-        if not stops:
-            return "differs", []
-    elif any(rejects):
-        stops.append(
-            f"with “{c.name}” the answer depends on whether the conditions were set or measured, "
-            "which the study does not say"
-        )
+    rejects, stops = rejection(
+        c.name,
+        c.readings,
+        alpha,
+        exact_conditions=c.exact_conditions,
+        assumed_errors=c.assumed_errors,
+        shows="the difference shows on its own in {} of the sensitivity",
+    )
+    if rejects and not stops:
+        return "differs", []
     if all(r.within for r in c.readings) and all(r.weak <= MOST_WEAK for r in c.readings):
         return "agrees", stops
     return "undecided", stops

@@ -6,8 +6,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
+from discrim.verdict.rejection import rejection
 from discrim.verdict.thresholds import (
-    ASSUMED_SPREAD,
     CONDITIONING_FRACTION,
     ERROR_MARGIN,
     FEW_RUNS,
@@ -93,42 +93,21 @@ def vote(c: CandidateFacts, alpha: float, matters_above: float | None) -> tuple[
         return "negligible", []
     if c.untestable or not c.readings:
         return "undecided", [c.untestable or f"“{c.name}”: the test could not be computed"]
-    rejects = [r.p < alpha for r in c.readings]
     # a bound that rests on two combinations in lockstep among the other constants is not carried
     small = [
         matters_above is not None and r.bound < matters_above and r.weak <= MOST_WEAK
         for r in c.readings
     ]
-    stops: list[str] = []
-    if all(rejects):
-        for r in c.readings:
-            if not c.exact_conditions and r.margin < ERROR_MARGIN:
-                stops.append(
-                    f"with “{c.name}” the test would fail if the condition errors were "
-                    f"{r.margin:.2g} times as large as stated (at least {ERROR_MARGIN:g} is asked)"
-                )
-                break
-        most = max(r.weak for r in c.readings)
-        if most > MOST_WEAK:
-            stops.append(
-                f"in “{c.name}” {most} combinations of the other constants are in lockstep with one "
-                f"another within the errors of the conditions (the test allows for {MOST_WEAK})"
-            )
-        weakest = min(r.information for r in c.readings)
-        if c.assumed_errors and weakest < ASSUMED_SPREAD:
-            stops.append(
-                "the error of "
-                + " and ".join(c.assumed_errors)
-                + " was only assumed, and over these runs the term varies on its own by "
-                f"{percent(weakest)} (at least {percent(ASSUMED_SPREAD)} is asked)"
-            )
-        if not stops:
-            return "participates", []
-    elif any(rejects):
-        stops.append(
-            f"with “{c.name}” the answer depends on whether the conditions were set or measured, "
-            "which the study does not say"
-        )
+    rejects, stops = rejection(
+        c.name,
+        c.readings,
+        alpha,
+        exact_conditions=c.exact_conditions,
+        assumed_errors=c.assumed_errors,
+        shows="the term varies on its own by {}",
+    )
+    if rejects and not stops:
+        return "participates", []
     if all(small) and small and not c.factor:
         return "negligible", stops
     return "undecided", stops
