@@ -6,6 +6,7 @@ as of any quantity of the constants (`[report_constants]`).
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 import numpy as np
@@ -55,8 +56,11 @@ def combination_words(record: dict[str, Any]) -> str:
     """``(3.418 ± 0.036) × 10⁻⁷ s⁻¹``: its value with the standard error."""
     value, error = record["value"], record["standard_error"]
     power = power_of(value, error or 0.0)
-    shown, behind = scaled(value, power), times(power, record["units"])
-    if error is None:
-        return f"{shown}{behind}"
-    shown = f"{shown} ± {scaled(error, power, 2)}"
+    behind = times(power, record["units"])
+    if not error:
+        return f"{scaled(value, power)}{behind}"
+    # both to the place of two digits of the error (JCGM 100:2008, 7.2.6)
+    spread = float(scaled(error, power, 2))
+    places = max(0, 1 - math.floor(math.log10(spread)))
+    shown = f"{float(scaled(value, power, 15)):.{places}f} ± {spread:.{places}f}"
     return f"({shown}){behind}" if power else f"{shown}{behind}"

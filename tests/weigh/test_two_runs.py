@@ -116,8 +116,10 @@ def test_two_runs(folder: Path) -> None:
     assert "conditioning" in answer["undecided_because"]
     assert answer["effect"]["low"] == 0.0
     assert answer["effect"]["high"] == pytest.approx(1.0)
+    # 0.0016: each run alone gives the sum with the error of its rate and amounts, rectangular:
+    # 0.0050 and 0.0017 by hand; together 1/sqrt(1/0.0050^2 + 1/0.0017^2)
     assert law["trade_offs"][0]["words"] == (
-        "these runs fix only k_by_a + 2.502·k_by_b, not the two apart"
+        "these runs fix only k_by_a + 2.502·k_by_b, not the two apart: 3.0000 ± 0.0016 s⁻¹"
     )
 
 
