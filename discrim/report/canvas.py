@@ -17,6 +17,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import matplotlib
+import numpy as np
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.figure import Figure
@@ -112,7 +113,9 @@ _FAST: Any = {"pil_kwargs": {"compress_level": 3}}
 def style(name: str) -> Iterator[None]:
     """The look of the figures, in force inside the block only."""
     settings: Any = _RC | {"svg.hashsalt": name}
-    with warnings.catch_warnings(), matplotlib.rc_context(settings):
+    # the margins of an axis over hundreds of decades overflow where nothing is drawn
+    quiet = np.errstate(over="ignore")
+    with quiet, warnings.catch_warnings(), matplotlib.rc_context(settings):
         # Names in a script that the font lacks are drawn as boxes in the PNG; that is no reason
         # to lose the report.
         warnings.filterwarnings("ignore", message=".*[Gg]lyph.*")
@@ -205,8 +208,10 @@ def few_ticks(axis: Any, n: int = 5) -> None:
 
 
 def log_ticks(axis: Any, low: float, high: float) -> None:
-    """Ticks at 1, 2 and 5 of each decade in range (1 alone when there are many decades)."""
-    decades = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
+    """Ticks at 1, 2 and 5 of each decade in range (1 alone when there are many decades, and of a few
+    of them when there are very many)."""
+    first, last = math.floor(math.log10(low)), min(math.ceil(math.log10(high)), 307)
+    decades = range(first, last + 1, 1 + (last - first) // 5)
     steps = (1,) if len(decades) > 4 else (1, 3) if len(decades) > 2 else (1, 2, 5)
     at = [s * 10.0**d for d in decades for s in steps if low <= s * 10.0**d <= high]
     axis.set_major_locator(FixedLocator(at))

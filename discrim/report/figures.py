@@ -77,7 +77,7 @@ def measured_predicted(name: str, standing: Sequence[Any]) -> Picture | None:
     positive = min(every) > 0 and max(every) / min(every) > 20
     low, high = min(every) * factor, max(every) * factor
     if positive:
-        low, high = low / 1.25, high * 1.25
+        low, high = max(low / 1.25, 1e-300), min(high * 1.25, 1e300)
     else:
         pad = 0.06 * ((high - low) or abs(high) or 1)
         low, high = low - pad, high + pad

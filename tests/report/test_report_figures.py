@@ -76,3 +76,15 @@ def test_labels():
     assert with_units("k", "s⁻¹", "10⁻⁶ ") == "k (10⁻⁶ s⁻¹)"
     assert with_units("x", "1") == "x"
     assert label("a" * 50, 10) == "a" * 9 + "…"
+
+
+@pytest.mark.parametrize("far", [1e200, 1.7e308])
+def test_a_prediction_far_out_of_the_runs_is_drawn(far):
+    """Warnings are errors here, and an axis over hundreds of decades has few ticks."""
+    document = sample.ALL["lockstep"]()
+    for candidate in document["candidates"]:
+        for fitted in candidate["fitted"]:
+            fitted["predicted"] = far
+    picture = by_name(document)["measured-predicted"]
+    assert picture.png().startswith(b"\x89PNG")
+    assert all(len(ax.get_xticks()) <= 8 for ax in picture.figure.axes)
