@@ -1,14 +1,17 @@
 """Makes the speed figures that the repository keeps: ``python -m tests.benchmarks.run``.
 
-Writes ``figures.md`` beside this file (some ten minutes, most of them plain routes that are
-stopped). Run it on an otherwise idle machine.
+Writes ``figures.md`` beside this file (some ten minutes, most of them plain routes of derivation that
+are stopped; ``--only fits`` or ``--only derivation`` makes one part and keeps the other). Run it on
+an otherwise idle machine.
 """
 
 from __future__ import annotations
 
+import argparse
 import datetime
 import os
 import platform
+import re
 import resource
 import subprocess
 import sys
@@ -41,7 +44,15 @@ def seconds(command: list[str], cache: str, times: int = 5) -> float:
     return float(np.median(took[1:]))
 
 
-def main() -> None:
+def made_by(command: str) -> str:
+    return (
+        f"{datetime.date.today().isoformat()}, {platform.machine()}, {os.cpu_count()} cores, Python "
+        f"{platform.python_version()}, numpy {np.__version__}. Made by `{command}`."
+    )
+
+
+def fits() -> list[str]:
+    """Fits, intervals and the first demo."""
     fit = ratios()
     intervals = interval_speed.ratios()
     with tempfile.TemporaryDirectory() as folder:
@@ -50,12 +61,10 @@ def main() -> None:
             f"{folder}/byte code",
         )
         bare = seconds([sys.executable, "-c", IMPORTS], f"{folder}/byte code")
-    lines = [
-        "# Speed",
+    return [
+        "## Fits, intervals and the first demo",
         "",
-        f"{datetime.date.today().isoformat()}, {platform.machine()}, {os.cpu_count()} cores, Python "
-        f"{platform.python_version()}, numpy {np.__version__}. Made by "
-        "`python -m tests.benchmarks.run`.",
+        made_by("python -m tests.benchmarks.run --only fits"),
         "",
         f"One fit of a derived four-constant law (two adsorbed reactants, product inhibits) on {RUNS} "
         f"runs from the same {STARTS} starts; medians over nine tables. Plain: "
@@ -79,9 +88,28 @@ def main() -> None:
         f"| bare imports (`{IMPORTS}`), processor time | {bare:.2f} s | |",
         f"| weigh over imports | {weigh / bare:.2f} | at most 4 |",
         "",
-        *derive_speed.lines(),
     ]
-    (HERE / "figures.md").write_text("\n".join(lines) + "\n", encoding="utf-8")
+
+
+def derivation() -> list[str]:
+    head, _, *rest = derive_speed.lines()
+    return [head, "", made_by("python -m tests.benchmarks.run --only derivation"), "", *rest]
+
+
+PARTS = {"fits": fits, "derivation": derivation}
+
+
+def main() -> None:
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--only", choices=list(PARTS))
+    only = parser.parse_args().only
+    file = HERE / "figures.md"
+    # parts begin with a heading of the second level
+    _, *kept = re.split(r"(?m)^(?=## )", file.read_text(encoding="utf-8"))
+    lines = ["# Speed", ""]
+    for k, (name, make) in enumerate(PARTS.items()):
+        lines += make() if only in (None, name) else [*kept[k].rstrip("\n").split("\n"), ""]
+    file.write_text("\n".join(lines).rstrip("\n") + "\n", encoding="utf-8")
     print("\n".join(lines))
 
 
