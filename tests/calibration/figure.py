@@ -48,11 +48,12 @@ def size_by_spread(results: Sequence[Counts], path: Path) -> None:
             panel.set_xscale("log")
             panel.set_xticks(x, [f"{value:g}" for value in x])
             panel.minorticks_off()
-            panel.set_ylim(0, None)
             panel.set_xlabel("spread of B/A, %")
             panel.set_title(f"condition errors {100 * error:g} %", fontsize=9)
             for side in ("top", "right"):
                 panel.spines[side].set_visible(False)
+        # once all panels are drawn: limits that are set earlier hold for the first one alone
+        panels[0].set_ylim(0, 105 * max(r.rate(m) for r in chosen for m, *_ in SHOWN))
         panels[0].set_ylabel("false claims that B takes part, %")
         handles, names = panels[0].get_legend_handles_labels()
         figure.legend(
