@@ -1,8 +1,8 @@
 """The part of a score's variance that comes from variances that were estimated, beside measured conditions.
 
 Checked against differences of V in the constants, and against the form for one variance where V is a
-multiple of the unit matrix. How it keeps the size of the test is in `tests/fit/test_errors_between_responses.py`
-(slow) and in the calibration. Tables are simulated.
+multiple of the unit matrix. How it keeps the size of the test is in the slow tests of
+`tests/fit/test_errors_between_responses.py`. Tables are simulated.
 """
 
 from __future__ import annotations
