@@ -26,6 +26,9 @@ from discrim.fit.problem import Solution
 GUARD_SHARE = 0.02
 # where nothing is spent on it (unknown scale and exact conditions)
 FAR = 0.01
+# One-sided ends are at least this many standard errors off the edge (the power constraint of Cowan, Cranmer,
+# Gross & Vitells, arXiv:1105.3166 (2011), from memory): wider than asked, never shorter.
+LEAST = 1.0
 
 
 def guard_level(alpha: float) -> float:
@@ -60,11 +63,21 @@ class Acceptance:
 
     Parameters
     ----------
-    base : the lowest objective known; lower : bound of the constant; psi : its index
+    base : the lowest objective known; lower, upper : bounds of the constant; psi : its index
     """
 
-    def __init__(self, fit: Fit, base: float, level: float, lower: float, psi: int) -> None:
-        self.fit, self.level, self.lower, self.psi = fit, level, lower, psi
+    def __init__(
+        self,
+        fit: Fit,
+        base: float,
+        level: float,
+        lower: float,
+        psi: int,
+        upper: float = float("inf"),
+    ) -> None:
+        self.fit, self.level, self.psi = fit, level, psi
+        self.lower, self.upper = lower, upper
+        self.above = self.below = 0.0
         self.known = fit.data.scale is not Scale.ESTIMATED
         self.limit = quantile(fit, level) ** 2
         self.held = self._held_variance() if fit.problem.joint_scale else 0.0
@@ -164,15 +177,31 @@ class Acceptance:
         return np.where(np.isfinite(rise), self.limit - rise, -np.inf)
 
     def reconciled(self, pts: Points) -> np.ndarray:
-        # on a lower bound only evidence for a larger value can exclude the bound itself
-        z = np.where(pts.values <= self.lower, np.maximum(pts.z, 0.0), pts.z)
-        return self._guarded(self.two - np.abs(z), pts)
+        return self._guarded(self.two - np.abs(self._within(pts)), pts)
 
     def not_too_high(self, pts: Points) -> np.ndarray:
-        return self._guarded(self.one + pts.z, pts)
+        self.above = self._kept_off(pts.values <= self.lower, -pts.z, self.above)
+        return self._guarded(self.one + pts.z + self.above, pts)
 
     def not_too_low(self, pts: Points) -> np.ndarray:
-        return self._guarded(self.one - pts.z, pts)
+        self.below = self._kept_off(pts.values >= self.upper, pts.z, self.below)
+        return self._guarded(self.one - pts.z + self.below, pts)
+
+    def _kept_off(self, edge: np.ndarray, outward: np.ndarray, known: float) -> float:
+        """One-sided ends stay ``LEAST`` standard errors off the edge, however far outside it the runs
+        point: else a twentieth of the sets of an absent term would be empty, and others be closed
+        sooner than the runs can tell. What is added to the margin: ``known`` where the edge is not
+        among the points; ``outward``: scores pointing beyond it."""
+        z = outward[edge]
+        if not len(z) or not np.isfinite(z).all():
+            return known
+        return float(max(0.0, z.max() - self.one + LEAST))
+
+    def _within(self, pts: Points) -> np.ndarray:
+        """Scores as evidence within the bounds: only evidence for a larger value can exclude a lower
+        bound."""
+        z = np.where(pts.values <= self.lower, np.maximum(pts.z, 0.0), pts.z)
+        return np.where(pts.values >= self.upper, np.minimum(z, 0.0), z)
 
     def _guarded(self, m: np.ndarray, pts: Points) -> np.ndarray:
         # nan z with an unknown scale: no degrees of freedom, nothing is excluded

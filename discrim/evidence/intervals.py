@@ -165,7 +165,7 @@ def along_all(
         psi = curve.psi
         lo, hi = float(fit.predictor.lower[psi]), float(fit.predictor.upper[psi])
         x, typical = float(fit.theta[psi]), float(fit.predictor.scale[psi])
-        first = Acceptance(fit, fit.objective, level, lo, psi)
+        first = Acceptance(fit, fit.objective, level, lo, psi, hi)
         tests.append(first)
 
         def criteria(pts: Points, one: Acceptance = first) -> Sequence[Accept]:
