@@ -29,7 +29,7 @@ LOCKSTEP_MOST = 0.20
 # are inseparable.
 INSEPARABLE = 1.0
 # Findings about residuals: a trend is called one below this p (all trends of one law together), and
-# so are the other patterns, each by itself: about one study in twenty gets one of them by chance.
+# so are the other patterns, each by itself.
 TREND = 0.01
 PATTERN = 0.01
 # A run further off than chance would throw the farthest of them.

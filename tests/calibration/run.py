@@ -2,7 +2,7 @@
 
 Writes ``figures.md``, ``figures.csv`` and ``size_by_spread.svg`` beside this file, each part as it is
 finished, so that an interruption loses one part at most; ``--only PART`` makes one part anew and leaves
-the others. About forty minutes on two cores.
+the others. How long each part took is said below it.
 """
 
 from __future__ import annotations
